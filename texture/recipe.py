@@ -1,0 +1,352 @@
+"""What the user asked for: one frozen, typed tree of settings, checked once and then trusted.
+
+Every setting that stands here acts; there are no reserved words. Descriptions are kept beside the
+fields so that help, reference and code cannot part. Reading a file into this tree, with its overrides
+and error lines, is the neighbouring module `texture.recipe_file`.
+"""
+
+from __future__ import annotations
+
+import datetime as dt
+from pathlib import Path
+from typing import Annotated, Any, Literal
+
+from pydantic import BaseModel, ConfigDict, Field, model_validator
+
+__all__ = [
+    "Bed",
+    "BedClass",
+    "Composition",
+    "Erosion",
+    "Grain",
+    "Intake",
+    "Layer",
+    "Method",
+    "Outputs",
+    "Recipe",
+    "Rim",
+    "Samples",
+    "TargetSettings",
+    "Validation",
+    "WaterColumn",
+    "WaterSettings",
+]
+
+Fraction = Annotated[float, Field(ge=0.0, le=1.0)]
+Positive = Annotated[float, Field(gt=0.0)]
+
+COLUMN_ROLES = (
+    "id", "survey", "date", "latitude", "longitude", "easting", "northing", "position", "depth",
+    "sample_top", "sample_bottom", "mud", "sand", "gravel", "silt", "clay", "remarks",
+)  # fmt: skip
+
+
+class Settings(BaseModel):
+    """Base of all blocks: immutable, and an unknown key is an error."""
+
+    model_config = ConfigDict(frozen=True, extra="forbid", populate_by_name=True, allow_inf_nan=False)
+
+
+class Samples(Settings):
+    """One `[[samples]]` block: one file, and what has to be known to read it."""
+
+    file: Path = Field(description="spreadsheet or text table, relative to the recipe")
+    sheet: str | None = Field(None, description="sheet name; the first sheet with a table if absent")
+    survey: str | None = Field(None, description="name of the survey; the file's stem if absent")
+    crs: str | None = Field(None, description="EPSG code or WKT of the positions; longitude and latitude if absent")
+    basis: Literal["whole", "below_2mm"] = Field(
+        "whole", description="whether the laboratory saw the whole sample or only what passed 2 mm"
+    )
+    blank_means: Literal["not_measured", "zero"] = Field("not_measured", description="what an empty fraction cell says")
+    unit: Literal["auto", "fraction", "percent"] = Field(
+        "auto", description="unit of the fraction columns; found from the rows' sums if `auto`"
+    )
+    header_row: Annotated[int, Field(ge=1)] | None = Field(
+        None, description="row number of the first header line, as the spreadsheet shows it"
+    )
+    from_: dt.date | None = Field(None, alias="from", description="first day of the survey")
+    to: dt.date | None = Field(None, description="last day of the survey")
+    columns: dict[str, str] = Field(
+        default_factory=dict, description="role = heading, only where recognition needs help"
+    )
+
+    @model_validator(mode="after")
+    def _known_roles(self) -> Samples:
+        for role in self.columns:
+            if role not in COLUMN_ROLES:
+                raise ValueError(f"columns.{role}: unknown role; {_nearest(role, COLUMN_ROLES)}")
+        return self
+
+
+class Intake(Settings):
+    """What counts as a usable row."""
+
+    sum_tolerance: Annotated[float, Field(gt=0.0, lt=0.5)] = Field(
+        0.02, description="rows whose parts sum outside 1 ± this are set aside"
+    )
+    surface_m: Positive = Field(0.10, description="samples that begin deeper than this are not the surface")
+    on_land: Literal["snap", "drop", "keep"] = Field(
+        "snap",
+        description="stations on land: move to the nearest wet cell within one cell, set aside, or keep",
+    )
+
+
+class Composition(Settings):
+    """The parts of the bed and the coordinates they are mapped in."""
+
+    parts: tuple[str, ...] = Field(("mud", "sand", "gravel"), description="parts, finest first")
+    logratio: Literal["tree", "ilr", "alr", "shares"] = Field("tree", description="kind of coordinates")
+    tree: Any = Field(None, description='nested pairs, who is split from whom, e.g. ["mud", ["gravel", "sand"]]')
+    zeros: Literal["replace"] = Field("replace", description="treatment of parts below the detection limit")
+    detection_limit: Annotated[float, Field(gt=0.0, lt=1.0 / 3.0)] = Field(
+        0.005, description="fractions below this are taken as below detection"
+    )
+
+    @model_validator(mode="after")
+    def _parts_we_can_read(self) -> Composition:
+        if self.parts != ("mud", "sand", "gravel"):
+            raise ValueError('parts: only ["mud", "sand", "gravel"] can be read from sample tables')
+        return self
+
+
+class TargetSettings(Settings):
+    """The cells to fill: a grid file, or bounds with a cell size."""
+
+    file: Path | None = Field(None, description="CF NetCDF grid")
+    bounds: tuple[float, float, float, float] | None = Field(None, description="west, south, east, north in `crs`")
+    cell_size: Positive | None = Field(None, description="side of a square cell in units of `crs`")
+    crs: str | None = Field(None, description="EPSG code or WKT of the grid; read from the file if absent")
+    mask: str | None = Field(None, description="mask variable, where CF attributes do not tell")
+    longitude: str | None = Field(
+        None, description="variable of cell-centre longitudes, where CF attributes do not tell"
+    )
+    latitude: str | None = Field(None, description="variable of cell-centre latitudes, where CF attributes do not tell")
+    depth: str | None = Field(None, description="variable of water depth, where CF attributes do not tell")
+    points_per_cell: Literal["auto"] | Annotated[int, Field(ge=1, le=64)] = Field(
+        "auto", description="points inside a cell that its value is averaged over (1, 4, 9, …)"
+    )
+    land: Path | None = Field(None, description="land polygons (GeoJSON, GeoPackage, Shapefile)")
+
+    @model_validator(mode="after")
+    def _one_kind(self) -> TargetSettings:
+        if (self.file is None) == (self.bounds is None):
+            raise ValueError("give either file, or bounds with cell_size and crs")
+        if self.bounds is not None:
+            if self.cell_size is None or self.crs is None:
+                raise ValueError("bounds need cell_size and crs beside them")
+            west, south, east, north = self.bounds
+            if not (west < east and south < north):
+                raise ValueError(f"bounds are west, south, east, north; found {list(self.bounds)}")
+        if self.points_per_cell != "auto" and round(self.points_per_cell**0.5) ** 2 != self.points_per_cell:
+            raise ValueError(f"points_per_cell is 1, 4, 9, 16 …; found {self.points_per_cell}")
+        return self
+
+
+MethodName = Literal["mean", "nearest", "inverse_distance", "kriging"]
+
+
+class Method(Settings):
+    """How values travel from stations to cells."""
+
+    name: MethodName = Field("kriging", description="method of the map")
+    neighbours: Annotated[int, Field(ge=4, le=500)] = Field(32, description="stations around a point")
+    neighbourhood: Literal["tile", "nearest"] = Field(
+        "tile", description="one neighbourhood for each small tile, or exactly `neighbours` for each point"
+    )
+    fit: Literal["likelihood", "variogram"] = Field("likelihood", description="how the covariance is fitted")
+    estimate: Literal["mean", "median"] = Field(
+        "mean", description="expected fraction, or back-transform of the kriged coordinates"
+    )
+
+
+class Validation(Settings):
+    """How the map's error is found out."""
+
+    folds: Literal["matched", "random", "blocks", "each"] = Field("matched", description="how stations are held out")
+    count: Annotated[int, Field(ge=2, le=100)] = Field(10, description="number of folds")
+    compare: tuple[MethodName, ...] = Field(
+        ("nearest", "inverse_distance", "kriging"), description="methods validated beside the chosen one"
+    )
+
+
+class Grain(Settings):
+    """The grain itself."""
+
+    diameter_m: Positive | None = Field(None, description="median diameter in metres")
+    density_kg_m3: Annotated[float, Field(gt=1000.0, lt=10000.0)] = Field(2650.0, description="grain density")
+
+
+class WaterColumn(Settings):
+    """How the class behaves in the water."""
+
+    settling_velocity_m_s: Positive | None = Field(
+        None, description="settling velocity; computed for grains above 63 µm"
+    )
+
+
+class Erosion(Settings):
+    """How the class leaves the bed."""
+
+    critical_stress_pa: Positive | None = Field(None, description="critical stress; computed for grains above 63 µm")
+    rate: Positive | None = Field(None, description="erosion rate, in the unit that `form` tells")
+    form: Literal["excess_ratio", "excess_stress"] = Field(
+        "excess_ratio", description="excess_ratio: kg m-2 s-1; excess_stress: kg m-2 s-1 Pa-1"
+    )
+
+
+class BedClass(Settings):
+    """One sediment class of the model, a share of one part."""
+
+    name: Annotated[str, Field(pattern=r"^[A-Za-z][A-Za-z0-9_]*$")] = Field(description="name of the class")
+    part: str = Field(description="part of the map that it is a share of")
+    share: Fraction = Field(1.0, description="share of that part; the shares of a part sum to 1")
+    kind: Literal["grain", "floc"] = Field("grain", description="single grains, or flocs with given properties")
+    grain: Grain = Field(default_factory=Grain)
+    water_column: WaterColumn = Field(default_factory=WaterColumn)
+    erosion: Erosion = Field(default_factory=Erosion)
+
+
+class Layer(Settings):
+    """One layer of the bed, from the top."""
+
+    thickness_m: Positive = Field(description="thickness where the bed is erodible")
+    fill: Literal["same"] | dict[str, Fraction] = Field(
+        "same", description='"same" as the map, or a composition such as { sand = 0.9, mud = 0.1 }'
+    )
+
+
+class WaterSettings(Settings):
+    """The water that grains settle in."""
+
+    temperature_c: Annotated[float, Field(ge=-2.0, le=40.0)] = Field(10.0, description="temperature")
+    salinity: Annotated[float, Field(ge=0.0, le=42.0)] = Field(35.0, description="practical salinity")
+
+
+def _default_classes() -> tuple[BedClass, ...]:
+    return (
+        BedClass(name="mud", part="mud", grain=Grain(diameter_m=20e-6)),
+        BedClass(name="sand", part="sand", grain=Grain(diameter_m=250e-6)),
+        BedClass(name="gravel", part="gravel", grain=Grain(diameter_m=8e-3)),
+    )
+
+
+class Bed(Settings):
+    """Layers and classes of the model's bed."""
+
+    least_fraction: Annotated[float, Field(ge=0.0, lt=0.2)] = Field(
+        0.005, description="smaller class fractions become zero and the cell is closed again"
+    )
+    land_thickness_m: Annotated[float, Field(ge=0.0)] = Field(
+        0.0, description="erodible thickness given to each layer of land cells"
+    )
+    water: WaterSettings = Field(default_factory=WaterSettings)
+    layers: tuple[Layer, ...] = Field((Layer(thickness_m=0.10),), min_length=1)
+    classes: tuple[BedClass, ...] = Field(default_factory=_default_classes, min_length=1)
+
+    @model_validator(mode="after")
+    def _shares_close(self) -> Bed:
+        names = [c.name for c in self.classes]
+        for name in names:
+            if names.count(name) > 1:
+                raise ValueError(f'classes: the name "{name}" is given twice')
+        sums: dict[str, float] = {}
+        for c in self.classes:
+            sums[c.part] = sums.get(c.part, 0.0) + c.share
+        for part, total in sums.items():
+            if abs(total - 1.0) > 1e-9:  # shares are typed decimals; anything further off is a mistake
+                raise ValueError(f'classes: the shares of part "{part}" sum to {total:g}, expected 1')
+        if self.layers[0].fill != "same":
+            raise ValueError('layers: the first layer is the map, so its fill is "same"')
+        return self
+
+
+SIDES = ("north", "east", "south", "west")
+
+
+class Rim(Settings):
+    """The padded coarse cells along the open boundary."""
+
+    sides: Literal["open"] | tuple[Literal["north", "east", "south", "west"], ...] = Field(
+        "open", description='"open": found from the mask, or compass sides such as ["south", "west"]'
+    )
+    width_cells: Annotated[int, Field(ge=1)] | None = Field(None, description="width in cells")
+    width_m: Positive | None = Field(None, description="width in metres, measured through water")
+    profile: Literal["cosine", "linear", "step"] = Field("cosine", description="how the rim fades into the estimate")
+    classes: dict[str, Fraction] | None = Field(None, description="rim bed in classes, summing to 1")
+    composition: dict[str, Fraction] | None = Field(None, description="rim bed in parts, summing to 1")
+
+    @model_validator(mode="after")
+    def _complete(self) -> Rim:
+        if (self.width_cells is None) == (self.width_m is None):
+            raise ValueError("give either width_cells or width_m")
+        if (self.classes is None) == (self.composition is None):
+            raise ValueError("give either classes or composition")
+        total = sum((self.classes or self.composition or {}).values())
+        if abs(total - 1.0) > 1e-9:  # typed decimals; anything further off is a mistake
+            raise ValueError(f"the rim's fractions sum to {total:g}, expected 1")
+        return self
+
+
+class Outputs(Settings):
+    """What is written."""
+
+    geotiff: bool = Field(True, description="write a GeoTIFF for each part and statistic")
+    geotiff_cell_size_m: Positive | None = Field(
+        None, description="cell size of the resample of a curvilinear grid; its median cell side if absent"
+    )
+    names: Path | None = Field(None, description="the user's own variable and dimension names for bed.nc")
+
+
+class Recipe(Settings):
+    """The whole recipe."""
+
+    title: str = Field("Untitled bed", description="stands on the page and in the files")
+    output: Path = Field(Path("out"), description="output folder, relative to the recipe")
+    seed: Annotated[int, Field(ge=0, lt=2**32)] = Field(1, description="seed of everything that is drawn")
+    samples: tuple[Samples, ...] = Field(min_length=1)
+    intake: Intake = Field(default_factory=Intake)
+    composition: Composition = Field(default_factory=Composition)
+    target: TargetSettings
+    method: Method = Field(default_factory=Method)
+    validation: Validation = Field(default_factory=Validation)
+    bed: Bed = Field(default_factory=Bed)
+    rim: Rim | None = None
+    outputs: Outputs = Field(default_factory=Outputs)
+
+    @model_validator(mode="after")
+    def _names_agree(self) -> Recipe:
+        parts, classes = self.composition.parts, tuple(c.name for c in self.bed.classes)
+        for c in self.bed.classes:
+            if c.part not in parts:
+                raise ValueError(f'bed.classes "{c.name}": part "{c.part}" is not one of {list(parts)}')
+        for part in parts:
+            if part not in {c.part for c in self.bed.classes}:
+                raise ValueError(f'bed.classes: no class takes part "{part}"; its mass would be lost')
+        for i, layer in enumerate(self.bed.layers):
+            if layer.fill != "same":
+                _check_composition(f"bed.layers[{i}].fill", layer.fill, parts)
+        if self.rim is not None and self.rim.classes is not None:
+            _check_names("rim.classes", self.rim.classes, classes)
+        if self.rim is not None and self.rim.composition is not None:
+            _check_names("rim.composition", self.rim.composition, parts)
+        return self
+
+
+def _check_names(where: str, given: dict[str, float], known: tuple[str, ...]) -> None:
+    for name in given:
+        if name not in known:
+            raise ValueError(f'{where}: unknown name "{name}"; {_nearest(name, known)}')
+
+
+def _check_composition(where: str, given: dict[str, float], parts: tuple[str, ...]) -> None:
+    _check_names(where, given, parts)
+    total = sum(given.values())
+    if abs(total - 1.0) > 1e-9:  # typed decimals; anything further off is a mistake
+        raise ValueError(f"{where}: fractions sum to {total:g}, expected 1")
+
+
+def _nearest(word: str, known: tuple[str, ...]) -> str:
+    import difflib
+
+    close = difflib.get_close_matches(word, known, n=1, cutoff=0.5)
+    return f'did you mean "{close[0]}"?' if close else f"known: {', '.join(known)}"
