@@ -126,6 +126,9 @@ class TargetSettings(Settings):
         "auto", description="points inside a cell that its value is averaged over (1, 4, 9, …)"
     )
     land: Path | None = Field(None, description="land polygons (GeoJSON, GeoPackage, Shapefile)")
+    inlet_width_m: Literal["auto"] | Annotated[float, Field(ge=0.0)] = Field(
+        "auto", description="narrower openings are river inlets, not sea; a tenth of the widest if `auto`"
+    )
 
     @model_validator(mode="after")
     def _one_kind(self) -> TargetSettings:

@@ -1,1 +1,1 @@
-"""targets"""
+"""The cells to fill: reading grids, land and water, open boundary."""
