@@ -99,7 +99,7 @@ def _spacing_m(
 
     lon, lat = longitude[ring], latitude[ring]
     step = np.asarray(pyproj.Geod(ellps="WGS84").inv(lon, lat, np.roll(lon, -1), np.roll(lat, -1))[2])
-    return np.nan_to_num((step + np.roll(step, 1)) / 2.0)
+    return np.asarray(np.nan_to_num((step + np.roll(step, 1)) / 2.0))
 
 
 def _run(

@@ -180,8 +180,8 @@ class Target:
         sea = [o for o in self.openings if not o.inlet]
         return (
             f"<Target {self.name}: {self.kind}, {rows} × {columns} cells ({wet:,} water), about {side:,.0f} m, "
-            f"{self.longitude.min():.3f}…{self.longitude.max():.3f} E {self.latitude.min():.3f}…"
-            f"{self.latitude.max():.3f} N, open boundary {sum(o.length_m for o in sea) / 1000:,.1f} km>"
+            f"longitude {np.nanmin(self.longitude):.3f}…{np.nanmax(self.longitude):.3f}, latitude "
+            f"{np.nanmin(self.latitude):.3f}…{np.nanmax(self.latitude):.3f}, open boundary {sum(o.length_m for o in sea) / 1000:,.1f} km>"
         )
 
 

@@ -1,0 +1,63 @@
+"""CF coordinate variables of a target: centres, bounds and grid mapping."""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+if TYPE_CHECKING:
+    import xarray as xr
+
+    from texture.targets.target import Target
+
+__all__ = ["coordinate_dataset"]
+
+
+def coordinate_dataset(target: Target) -> xr.Dataset:
+    """Return the coordinate variables alone; data variables on `target.dims` are added by the writer."""
+    import xarray as xr
+
+    grid_mapping = xr.DataArray(np.int32(0), attrs=target.crs.to_cf())
+    if target.kind == "raster":
+        return _raster(target).assign(crs=grid_mapping)
+    longitude, latitude = (a.reshape(target.shape) for a in (target.longitude, target.latitude))
+    bounds = [a.reshape(*target.shape, 4) for a in target.corners]
+    return xr.Dataset(
+        {
+            "longitude_bounds": ((*target.dims, "corner"), bounds[0]),
+            "latitude_bounds": ((*target.dims, "corner"), bounds[1]),
+        },
+        coords={
+            "longitude": (target.dims, longitude, {**_LONGITUDE, "bounds": "longitude_bounds"}),
+            "latitude": (target.dims, latitude, {**_LATITUDE, "bounds": "latitude_bounds"}),
+        },
+    ).assign(crs=grid_mapping)
+
+
+_LONGITUDE = {"standard_name": "longitude", "long_name": "longitude of the cell centre", "units": "degrees_east"}
+_LATITUDE = {"standard_name": "latitude", "long_name": "latitude of the cell centre", "units": "degrees_north"}
+
+
+def _raster(target: Target) -> xr.Dataset:
+    import xarray as xr
+
+    assert target.x is not None  # a raster has its axes
+    assert target.y is not None
+    if target.crs.is_geographic:
+        x_attrs, y_attrs = {**_LONGITUDE, "axis": "X"}, {**_LATITUDE, "axis": "Y"}
+    else:
+        units = target.crs.axis_info[0].unit_name.replace("metre", "m")
+        x_attrs = {"standard_name": "projection_x_coordinate", "long_name": "easting", "units": units, "axis": "X"}
+        y_attrs = {"standard_name": "projection_y_coordinate", "long_name": "northing", "units": units, "axis": "Y"}
+    half = (target.x[1] - target.x[0]) / 2.0 if target.x.size > 1 else (target.y[0] - target.y[-1]) / 2.0
+    return xr.Dataset(
+        {
+            "x_bounds": (("x", "corner"), np.column_stack([target.x - half, target.x + half])),
+            "y_bounds": (("y", "corner"), np.column_stack([target.y + half, target.y - half])),
+        },
+        coords={
+            "x": ("x", target.x, {**x_attrs, "bounds": "x_bounds"}),
+            "y": ("y", target.y, {**y_attrs, "bounds": "y_bounds"}),
+        },
+    )

@@ -1,0 +1,236 @@
+"""A structured grid from a CF NetCDF file, with one- or two-dimensional longitude and latitude."""
+
+from __future__ import annotations
+
+import difflib
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from texture.errors import TargetError
+from texture.recipe import TargetSettings
+from texture.targets.land import on_land, read_land
+from texture.targets.mask import find_mask
+from texture.targets.raster import corner_table, read_crs
+from texture.targets.target import Target
+
+if TYPE_CHECKING:
+    import xarray as xr
+
+__all__ = ["read_grid"]
+
+DEPTH_NAMES = (
+    "sea_floor_depth_below_mean_sea_level",
+    "sea_floor_depth_below_geoid",
+    "sea_floor_depth_below_sea_surface",
+)
+
+
+def read_grid(settings: TargetSettings) -> Target:
+    """Read a structured grid; coordinates, mask and depth are found by CF attributes or as named.
+
+    A mask decides what is water; land polygons decide only where the file has no mask. Where both are
+    given, the cells that they disagree on are counted in the notes.
+
+    Raises
+    ------
+    TargetError
+        For a file that is not NetCDF, has no longitude and latitude, or whose cells are folded.
+    """
+    path = settings.file
+    assert path is not None
+    with _open(path) as dataset:
+        longitude, latitude, dims, kept = _centres(dataset, settings, path.name)
+        shape = (dataset.sizes[dims[0]], dataset.sizes[dims[1]])
+        notes: list[str] = []
+        active = find_mask(dataset, settings.mask, dims, path.name, notes)
+        depth = _depth(dataset, settings.depth, dims, path.name)
+        corners = _corners(dataset, kept, longitude, latitude, dims, notes)
+    crs = read_crs(settings.crs or "EPSG:4326", "target.crs")
+    if not crs.is_geographic:
+        raise TargetError(
+            f"{path.name}: longitude and latitude are in degrees, but target.crs = {settings.crs} is projected; "
+            "leave crs out, or give a geographic one"
+        )
+    flat_lon, flat_lat = longitude.ravel(), latitude.ravel()
+    land = read_land(settings.land) if settings.land is not None else None
+    active_flat = _active(active, land, flat_lon, flat_lat, path.name, notes)
+    _check_folds(corners, active_flat, path.name)
+    return Target(
+        kind="curvilinear",
+        name=path.name,
+        dims=dims,
+        shape=shape,
+        crs=crs,
+        longitude=flat_lon,
+        latitude=flat_lat,
+        corners=corners,
+        active=active_flat,
+        depth_m=None if depth is None else depth.ravel(),
+        land=land,
+        inlet_width_m=None if settings.inlet_width_m == "auto" else settings.inlet_width_m,
+        notes=tuple(notes),
+    )
+
+
+def _open(path: Path) -> xr.Dataset:
+    import xarray as xr
+
+    try:
+        return xr.open_dataset(path, engine="netcdf4", decode_times=False)
+    except (OSError, ValueError, RuntimeError) as error:
+        raise TargetError(f"{path.name}: cannot be read as NetCDF; expected a CF grid file") from error
+
+
+def _centres(
+    dataset: xr.Dataset, settings: TargetSettings, name: str
+) -> tuple[NDArray[np.float64], NDArray[np.float64], tuple[str, str], tuple[str, str]]:
+    """Cell centres as two-dimensional arrays, their dimensions, and the variables' names."""
+    lon_name = _coordinate(dataset, "longitude", settings.longitude, name)
+    lat_name = _coordinate(dataset, "latitude", settings.latitude, name)
+    lon, lat = dataset[lon_name], dataset[lat_name]
+    if lon.ndim == 1 and lat.ndim == 1:
+        dims = (str(lat.dims[0]), str(lon.dims[0]))
+        if dims[0] == dims[1]:
+            raise TargetError(f'{name}: "{lon_name}" and "{lat_name}" are a list of points, expected a grid')
+        mesh_lon, mesh_lat = np.meshgrid(lon.to_numpy(), lat.to_numpy())
+    elif lon.ndim == 2 and lon.dims == lat.dims:
+        dims = (str(lon.dims[0]), str(lon.dims[1]))
+        mesh_lon, mesh_lat = lon.to_numpy(), lat.to_numpy()
+    else:
+        raise TargetError(
+            f'{name}: "{lon_name}" has dimensions {lon.dims} and "{lat_name}" {lat.dims}; '
+            "expected both one-dimensional, or both on the same two dimensions"
+        )
+    longitude, latitude = mesh_lon.astype(np.float64), mesh_lat.astype(np.float64)
+    if np.nanmax(np.abs(latitude)) > 90.0 or np.nanmax(np.abs(longitude)) > 360.0:
+        raise TargetError(
+            f'{name}: "{lon_name}" and "{lat_name}" reach {np.nanmax(np.abs(longitude)):g} and '
+            f"{np.nanmax(np.abs(latitude)):g}, expected degrees; name the variables under [target]"
+        )
+    return _unwrapped(longitude), latitude, dims, (lon_name, lat_name)
+
+
+def _coordinate(dataset: xr.Dataset, which: str, named: str | None, name: str) -> str:
+    import cf_xarray  # noqa: F401  (registers the accessor)
+
+    if named is not None:
+        if named not in dataset.variables:
+            close = difflib.get_close_matches(named, [str(v) for v in dataset.variables], n=1)
+            hint = f'did you mean "{close[0]}"?' if close else f"it has {', '.join(map(str, dataset.variables))}"
+            raise TargetError(f'{name}: no variable "{named}" for {which}; {hint}')
+        return named
+    found = [str(v) for v in dataset.cf.coordinates.get(which, []) + dataset.cf.standard_names.get(which, [])]
+    found = list(dict.fromkeys(found))
+    if len(found) == 1:
+        return found[0]
+    if not found:
+        raise TargetError(
+            f"{name}: no {which} with CF attributes (units or standard_name); name the variable as target.{which}"
+        )
+    raise TargetError(f"{name}: several variables are {which} ({', '.join(found)}); choose one as target.{which}")
+
+
+def _unwrapped(longitude: NDArray[np.float64]) -> NDArray[np.float64]:
+    """Make longitudes continuous around the grid's middle, in -180…180 unless it crosses the date line."""
+    angle = np.radians(longitude[np.isfinite(longitude)])
+    middle = np.degrees(np.arctan2(np.sin(angle).mean(), np.cos(angle).mean()))
+    return np.asarray(middle + (longitude - middle + 180.0) % 360.0 - 180.0)
+
+
+def _depth(dataset: xr.Dataset, named: str | None, dims: tuple[str, str], name: str) -> NDArray[np.float64] | None:
+    if named is None:
+        found = [v for v, a in dataset.data_vars.items() if a.attrs.get("standard_name") in DEPTH_NAMES]
+        if len(found) != 1:
+            return None
+        named = str(found[0])
+    if named not in dataset:
+        raise TargetError(
+            f'{name}: no variable "{named}" for the depth; it has {", ".join(map(str, dataset.data_vars))}'
+        )
+    if set(dataset[named].dims) != set(dims):
+        raise TargetError(f'{name}: depth "{named}" is on {dataset[named].dims}, the grid on {dims}')
+    return dataset[named].transpose(*dims).to_numpy().astype(np.float64)
+
+
+def _corners(
+    dataset: xr.Dataset,
+    names: tuple[str, str],
+    longitude: NDArray[np.float64],
+    latitude: NDArray[np.float64],
+    dims: tuple[str, str],
+    notes: list[str],
+) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
+    """Corners from CF bounds, else from vertices half-way between centres; counter-clockwise."""
+    bounds = [dataset[n].attrs.get("bounds") or dataset[n].encoding.get("bounds") for n in names]
+    given = [dataset[b].to_numpy() for b in bounds if b in dataset.variables and dataset[b].ndim == 3]
+    if len(given) == 2 and all(g.shape == (*longitude.shape, 4) for g in given):
+        lon = given[0].astype(np.float64).reshape(-1, 4)
+        lat = given[1].astype(np.float64).reshape(-1, 4)
+        middle = longitude.reshape(-1, 1)
+        lon = middle + (lon - middle + 180.0) % 360.0 - 180.0
+        return _counter_clockwise(lon, lat)
+    notes.append("cell corners are not in the file: taken half-way between the centres")
+    lon, lat = corner_table(_vertices(longitude), upward=True), corner_table(_vertices(latitude), upward=True)
+    return _counter_clockwise(lon, lat)
+
+
+def _vertices(centres: NDArray[np.float64]) -> NDArray[np.float64]:
+    """Shared vertices, shape (rows + 1, columns + 1): means of four centres, extended by one beyond."""
+    padded = np.pad(centres, 1, mode="reflect", reflect_type="odd") if min(centres.shape) > 1 else _pad_thin(centres)
+    return np.asarray((padded[:-1, :-1] + padded[1:, :-1] + padded[:-1, 1:] + padded[1:, 1:]) / 4.0)
+
+
+def _pad_thin(centres: NDArray[np.float64]) -> NDArray[np.float64]:
+    raise TargetError(f"a grid of {centres.shape[0]} × {centres.shape[1]} cells needs its corners as CF bounds")
+
+
+def _signed_area(lon: NDArray[np.float64], lat: NDArray[np.float64]) -> NDArray[np.float64]:
+    return np.asarray(sum(lon[:, i] * lat[:, (i + 1) % 4] - lon[:, (i + 1) % 4] * lat[:, i] for i in range(4)))
+
+
+def _counter_clockwise(
+    lon: NDArray[np.float64], lat: NDArray[np.float64]
+) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
+    shifted = lon - lon[:, :1]  # small numbers: the cross products of whole longitudes would cancel
+    if np.nanmedian(_signed_area(shifted, lat - lat[:, :1])) < 0.0:
+        return np.ascontiguousarray(lon[:, ::-1]), np.ascontiguousarray(lat[:, ::-1])
+    return lon, lat
+
+
+def _check_folds(
+    corners: tuple[NDArray[np.float64], NDArray[np.float64]], active: NDArray[np.bool_], name: str
+) -> None:
+    lon, lat = corners
+    folded = active & ~(_signed_area(lon - lon[:, :1], lat - lat[:, :1]) > 0.0)
+    if folded.any():
+        raise TargetError(
+            f"{name}: {int(folded.sum())} water cells are folded or have no area "
+            f"(the first is cell {int(np.flatnonzero(folded)[0])}, counted along rows from 0); check its corners"
+        )
+
+
+def _active(
+    mask: NDArray[np.bool_] | None,
+    land: Any,
+    lon: NDArray[np.float64],
+    lat: NDArray[np.float64],
+    name: str,
+    notes: list[str],
+) -> NDArray[np.bool_]:
+    if mask is not None:
+        active = mask.ravel()
+        if land is not None:
+            wrong = int((active == on_land(land, lon, lat)).sum())
+            if wrong:
+                notes.append(
+                    f"mask and land polygons disagree on {wrong} of {active.size} cells: the mask was followed"
+                )
+        return active
+    if land is not None:
+        notes.append("the file has no mask: cells whose centre is on land are dry")
+        return ~on_land(land, lon, lat) & np.isfinite(lon) & np.isfinite(lat)
+    notes.append(f"{name} has no mask and no land was given: every cell is taken as water")
+    return np.isfinite(lon) & np.isfinite(lat)
