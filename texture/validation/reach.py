@@ -5,17 +5,17 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 
-__all__ = ["beyond_reach", "tested_reach_m"]
+__all__ = ["beyond_reach", "validated_reach_m"]
 
 
-def tested_reach_m(held_out_distances: NDArray[np.float64]) -> float:
+def validated_reach_m(held_out_distances: NDArray[np.float64]) -> float:
     """Return the distance up to which cross-validation has tested the map, metres.
 
     The upper whisker of the held-out distances (third quartile + 1.5 × the interquartile range, no more
     than the largest), the threshold of Meyer & Pebesma (2021), Methods in Ecology and Evolution 12, here
     on position alone.
 
-    >>> tested_reach_m(np.array([1.0, 2.0, 3.0, 4.0, 100.0]))
+    >>> validated_reach_m(np.array([1.0, 2.0, 3.0, 4.0, 100.0]))
     7.0
     """
     low, high = np.quantile(held_out_distances, [0.25, 0.75])

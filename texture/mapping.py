@@ -1,0 +1,98 @@
+"""One method fitted on some stations: from points in the plane to a normal in log-ratio coordinates.
+
+The map and its validation both come through here, so that what is validated is what is mapped.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from texture.observations import Observations
+from texture.recipe import Method
+
+if TYPE_CHECKING:
+    from texture.composition import LogRatio
+    from texture.structure import CovarianceSet
+
+__all__ = ["Mapper", "fit_structure", "make_mapper"]
+
+Floats = NDArray[np.float64]
+
+
+def fit_structure(observations: Observations, method: Method, start: CovarianceSet | None = None) -> CovarianceSet:
+    """Fit the spatial structure of all coordinates; `start` makes it a warm start (inside folds)."""
+    from texture.structure import Covariance
+
+    several = np.unique(observations.survey).size > 1
+    fitted: CovarianceSet = Covariance.fit(
+        observations.points,
+        observations.coordinates,
+        method=method.fit,
+        noise_variance=observations.noise,
+        survey=observations.survey if several else None,
+        start=start,
+    )
+    return fitted
+
+
+@dataclass(frozen=True, eq=False)
+class Mapper:
+    """A fitted method together with the coordinates that it works in."""
+
+    name: str
+    logratio: LogRatio
+    structure: CovarianceSet
+    predictor: Any
+
+    @property
+    def has_variance(self) -> bool:
+        """Tell whether the method says how uncertain it is."""
+        return self.name == "kriging"
+
+    @property
+    def small_scale(self) -> Floats:
+        """Variance of the bed's own patchiness in each coordinate, shape (d,)."""
+        return np.array([c.small_scale for c in self.structure])
+
+    def predict(self, points: Floats) -> tuple[Floats, Floats]:
+        """Mean and variance of the bed at points, shapes (n, d); variance NaN where the method has none."""
+        mean, variance = self.predictor.predict(points)
+        return mean, variance
+
+    def covariance(self, variance: Floats) -> Floats:
+        """Covariance of the coordinates from their variances, shape (n, d, d), by the residual correlation."""
+        sd = np.sqrt(variance)
+        return np.asarray(sd[:, :, None] * sd[:, None, :] * self.structure.correlation)
+
+    def expected(self, mean: Floats, variance: Floats) -> Floats:
+        """Expected fractions, shape (n, parts); the plain back-transform where the method has no variance."""
+        if not self.has_variance:
+            return self.logratio.inverse(mean)
+        return self.logratio.expected(mean, self.covariance(variance))
+
+    def interval(self, mean: Floats, variance: Floats, levels: tuple[float, float] = (0.05, 0.95)) -> Floats:
+        """Quantiles of each part, shape (2, n, parts); NaN where the method has no variance."""
+        if not self.has_variance:
+            return np.full((2, mean.shape[0], len(self.logratio.parts)), np.nan)
+        return self.logratio.quantiles(mean, self.covariance(variance), levels)
+
+
+def make_mapper(
+    name: str, observations: Observations, structure: CovarianceSet, method: Method, logratio: LogRatio
+) -> Mapper:
+    """Fit one method on stations."""
+    from texture.predict import make_predictor
+
+    predictor = make_predictor(name, structure, neighbours=method.neighbours, neighbourhood=method.neighbourhood)
+    several = np.unique(observations.survey).size > 1
+    predictor.fit(
+        observations.points,
+        observations.coordinates,
+        noise_variance=observations.noise,
+        survey=observations.survey if several else None,
+    )
+    return Mapper(name, logratio, structure, predictor)
