@@ -1,1 +1,19 @@
-"""bed"""
+"""From a map of parts to a bed that a model can start from: grains, layers, rim, land."""
+
+from texture.bed.packing import dry_density, porosity
+from texture.bed.roughness import skin_roughness_length
+from texture.bed.settling import settling_velocity
+from texture.bed.threshold import critical_stress
+from texture.bed.water import Water
+from texture.bed.waves import wave_current_stress, wave_stress
+
+__all__ = [
+    "Water",
+    "critical_stress",
+    "dry_density",
+    "porosity",
+    "settling_velocity",
+    "skin_roughness_length",
+    "wave_current_stress",
+    "wave_stress",
+]
