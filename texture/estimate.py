@@ -1,0 +1,106 @@
+"""The map: what the method says in each water cell of the target, as an xarray Dataset."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+import numpy as np
+from numpy.typing import NDArray
+
+from texture.progress import Progress
+from texture.targets import Target, cell_points
+from texture.validation.reach import beyond_reach
+
+if TYPE_CHECKING:
+    import xarray as xr
+
+    from texture.mapping import Mapper
+    from texture.structure.plane import Plane
+
+__all__ = ["EVIDENCE", "Estimate", "estimate_on"]
+
+Floats = NDArray[np.float64]
+
+QUANTILES = (0.05, 0.5, 0.95)
+CELLS_AT_ONCE = 20_000  # bounds the memory of the points inside cells to some tens of megabytes
+SUPPORTED, EXTRAPOLATED, WIDER = 1, 2, 6
+EVIDENCE = {1: "supported_by_samples", 2: "extrapolated", 3: "rim", 4: "filled_under_land", 5: "given_by_the_user", 6: "wider_fall_back"}  # fmt: skip
+
+
+@dataclass(frozen=True, eq=False)
+class Estimate:
+    """The map as flat arrays over all cells of the target; NaN (or 0) outside active cells.
+
+    Attributes
+    ----------
+    fractions : float array, shape (n, parts)
+        Expected mean of each cell.
+    quantiles : float array, shape (3, n, parts)
+        At 0.05, 0.5 and 0.95, of the cell mean; NaN for methods without a variance.
+    mean, variance : float arrays, shape (n, d)
+        Log-ratio coordinates, averaged over the points inside the cell; variance of the bed at a point.
+    evidence : int array, shape (n,)
+        1 supported by samples, 2 extrapolated, 6 wider fall-back; 0 where there is no map.
+    texture_class : int array, shape (n,)
+        Number of the most probable class in the scheme's own order, from 1; 0 where there is no map.
+    class_probability : float array, shape (n,)
+    """
+
+    fractions: Floats
+    quantiles: Floats
+    mean: Floats
+    variance: Floats
+    evidence: NDArray[np.int8]
+    texture_class: NDArray[np.int8]
+    class_probability: Floats
+
+
+def estimate_on(
+    target: Target, mapper: Mapper, plane: Plane, stations: Floats, reach_m: float, per_side: int, progress: Progress,
+    median: bool = False,
+) -> Estimate:
+    """Estimate every active cell.
+
+    Parameters
+    ----------
+    target : Target
+    mapper : Mapper
+        The fitted method.
+    plane : Plane
+        From longitude and latitude to the metres that the method was fitted in.
+    stations : float array, shape (s, 2)
+        Stations in the plane, to tell which cells are beyond the tested reach.
+    reach_m : float
+        Cells whose centre lies further than this from every station are flagged as extrapolated.
+    per_side : int
+        Points along each side of a cell that its value is averaged over.
+    progress : Progress
+    median : bool
+        Back-transform the kriged coordinates instead of taking expected fractions.
+    """
+    cells = np.flatnonzero(target.active)
+    parts, d = mapper.logratio.n_parts, mapper.logratio.n_coordinates
+    n = target.n_cells
+    fractions, quantiles = np.full((n, parts), np.nan), np.full((len(QUANTILES), n, parts), np.nan)
+    mean, variance = np.full((n, d), np.nan), np.full((n, d), np.nan)
+    evidence, classes = np.zeros(n, dtype=np.int8), np.zeros(n, dtype=np.int8)
+    probability = np.full(n, np.nan)
+    with progress.stage("estimate", total=cells.size) as advance:
+        for start in range(0, cells.size, CELLS_AT_ONCE):
+            some = cells[start : start + CELLS_AT_ONCE]
+            inside = cell_points(target, some, per_side, plane.to_plane)
+            m, v, rung = mapper.predict_with_rung(inside.reshape(-1, 2))
+            shape = inside.shape[:2]
+            back = mapper.logratio.inverse(m) if median else mapper.expected(m, v)
+            fractions[some] = back.reshape(*shape, parts).mean(axis=1)
+            fractions[some] /= fractions[some].sum(axis=1, keepdims=True)
+            mean[some], variance[some] = m.reshape(*shape, d).mean(axis=1), v.reshape(*shape, d).mean(axis=1)
+            quantiles[:, some] = mapper.cell_quantiles(mean[some], variance[some], QUANTILES)
+            classes[some], probability[some] = mapper.likely_class(mean[some], variance[some])
+            centre = inside.mean(axis=1)
+            evidence[some] = np.where(beyond_reach(centre, stations, reach_m), EXTRAPOLATED, SUPPORTED)
+            fell_back = rung.reshape(*shape).max(axis=1) > 0
+            evidence[some[fell_back]] = WIDER
+            advance(some.size)
+    return Estimate(fractions, quantiles, mean, variance, evidence, classes, probability)
