@@ -87,9 +87,17 @@ def test_truth_file_holds_cell_means_near_the_centre_values(grid):
     sea = grid["sea"].values == 1
     assert np.array_equal(np.isfinite(means[..., 0]), sea)
     np.testing.assert_allclose(means[sea].sum(axis=1), 1.0, rtol=0.0, atol=2e-7)  # three float32 roundings
-    centres = true_fractions(grid["longitude"].values[sea], grid["latitude"].values[sea])
-    assert np.abs(means[sea] - centres).max() < 0.25  # patches are about two cells wide
-    assert np.abs(means[sea] - centres).mean() < 0.01
+    # Cells without shore or rock, integrated finely between their corners in longitude and latitude.
+    rng = np.random.default_rng(3)
+    row, column = rng.integers(0, 55, 40), rng.integers(60, 120, 40)
+    inside = (np.arange(16) + 0.5) / 16
+    v, u = (w.ravel() for w in np.meshgrid(inside, inside, indexing="ij"))
+    weights = np.stack([(1 - u) * (1 - v), u * (1 - v), u * v, (1 - u) * v])
+    longitude = grid["longitude_vertices"].values[row, column] @ weights
+    latitude = grid["latitude_vertices"].values[row, column] @ weights
+    fine = true_fractions(longitude, latitude).reshape(40, -1, 3).mean(axis=1)
+    # Nine points a cell against 256: the patchiness (1.2 km) is well resolved in cells of 0.5 km.
+    np.testing.assert_allclose(means[row, column], fine, rtol=0.0, atol=0.01)
     at_centre = bare_rock(grid["longitude"].values[sea], grid["latitude"].values[sea])
     assert np.all(rock[sea][at_centre] > 0.0)
     assert 0.005 < rock[sea].mean() < 0.03
@@ -99,7 +107,7 @@ def test_random_field_has_the_covariance_it_names():
     # Matérn 3/2 (e.g. Rasmussen and Williams 2006, eq. 4.17): (1 + x) exp(-x), 0.05 at x = 4.7439.
     field = RandomField(seed=5, range_km=8.0, waves=4096)
     rng = np.random.default_rng(6)
-    x, y = rng.uniform(-5000.0, 5000.0, (2, 6000))
+    x, y = rng.uniform(-5000.0, 5000.0, (2, 3000))
     here = field(x, y)
     assert here.std() == pytest.approx(1.0, abs=0.05)
     for away_km, expected in ((8.0, 0.05), (4.0, 3.37195 * np.exp(-2.37195))):
@@ -148,8 +156,12 @@ def test_depth_raster_holds_the_true_depth():
         assert raster.crs.to_epsg() == 32626
         assert raster.res == (500.0, 500.0)
         depth = raster.read(1, masked=True)
-        rows, columns = np.indices(depth.shape)
-        easting, northing = raster.transform * (columns.ravel() + 0.5, rows.ravel() + 0.5)
+        west, south, east, north = raster.bounds
+    rows, columns = depth.shape
+    easting, northing = np.meshgrid(
+        west + (np.arange(columns) + 0.5) * (east - west) / columns,
+        north - (np.arange(rows) + 0.5) * (north - south) / rows,
+    )
     transformer = Transformer.from_crs("EPSG:32626", "EPSG:4326", always_xy=True)
     expected = depth_m(*transformer.transform(easting, northing)).reshape(depth.shape)
     np.testing.assert_allclose(depth.filled(np.nan), expected, rtol=0.0, atol=0.006)
@@ -230,7 +242,9 @@ def test_1962_words_fit_the_bed_they_name(answers):
     assert len(words) == 60
     assert {"rock", "stiff clay", "muddy sand", "shelly gravel"} <= set(words.values())
     mud = key["true_mud"].groupby(pd.Series(words)).mean()
-    assert mud["mud"] > mud["sandy mud"] > mud["muddy sand"] > mud["sand"]
+    assert mud["soft mud"] > mud["sandy mud"] > mud["muddy sand"] > mud["clean sand"]
+    substrate = key[key["what"] == "substrate"]
+    assert {words[row] for row in substrate.index} == {"stiff clay"}
 
 
 def test_recipe_names_headings_that_the_files_have():

@@ -7,7 +7,6 @@ from typing import Final
 import numpy as np
 import rasterio
 import shapely
-from rasterio.transform import from_origin
 
 from demo_samples.kestrel_bight.make import place
 
@@ -32,7 +31,7 @@ def write_depth(path: Path) -> None:
         count=1,
         dtype="float32",
         crs=place.UTM,
-        transform=from_origin(_WEST_M, _NORTH_M, _CELL_M, _CELL_M),
+        transform=rasterio.Affine(_CELL_M, 0.0, _WEST_M, 0.0, -_CELL_M, _NORTH_M),
         nodata=_NODATA,
     ) as raster:
         raster.write(depth, 1)

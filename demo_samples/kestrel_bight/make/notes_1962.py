@@ -22,8 +22,9 @@ _ROCK_KM: Final = np.array([[22.2, -3.6], [16.3, 5.4], [20.9, -2.9]])
 
 def write_survey(path: Path, rng: np.random.Generator) -> list[Answer]:
     """Write the spreadsheet and return its key."""
-    s, t = scattered(rng, 57, 3.4, (-34.0, -23.0, 34.0, 19.0))
-    s, t = np.append(s, _ROCK_KM[:, 0]), np.append(t, _ROCK_KM[:, 1])
+    wide = scattered(rng, 46, 3.7, (-34.0, -23.0, 34.0, 19.0))
+    belt = scattered(rng, 11, 2.0, (-17.0, 2.0, -3.0, 15.0))
+    s, t = (np.concatenate(v) for v in zip(wide, belt, _ROCK_KM.T, strict=True))
     samples = sample(s, t, rng)
     rows: list[list[str]] = [
         ["Kestrel Bight, notes of the nature of the bottom, summer 1962"],
@@ -65,7 +66,7 @@ def _word(samples: Samples, index: int) -> tuple[str, str]:
     elif mud > 0.5:
         words = ("sandy mud",)
     elif mud > 0.15:
-        words = ("muddy sand",)
+        words = ("muddy sand", "sand and mud", "muddy sand")
     elif gravel > 0.05:
         words = ("gravelly sand", "sand and shells")
     else:

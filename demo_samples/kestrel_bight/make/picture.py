@@ -24,7 +24,7 @@ def write_picture(path: Path, answers: Sequence[Answer]) -> None:
     centre = place.to_degrees(*grid.grid_points(*middle))
     depth = np.where(grid.sea_mask(), place.frame_depth_m(*grid.grid_points(*middle)), np.nan)
     with matplotlib.rc_context({"font.size": 8}):
-        figure = Figure(figsize=(10.5, 4.6), layout="constrained")
+        figure = Figure(figsize=(10.5, 3.9), layout="constrained")
         left, right = figure.subplots(1, 2, sharey=True)
         for axes, part, name in ((left, 0, "mud"), (right, 2, "gravel")):
             axes.set_facecolor("#d9d4c7")
@@ -43,7 +43,7 @@ def write_picture(path: Path, answers: Sequence[Answer]) -> None:
             )
             right.plot([], [], mark, markersize=3, markerfacecolor="none", color="black", label=file)
         right.legend(loc="lower right", fontsize=6)
-        figure.colorbar(mesh, ax=[left, right], shrink=0.85, label="fraction of dry mass")
+        figure.colorbar(mesh, ax=[left, right], label="fraction of dry mass")
         figure.savefig(path, dpi=110, metadata={"Software": None})
     with Image.open(path) as image:  # 128 colours are enough and a third of the size
         small = image.convert("RGB").quantize(128, dither=Image.Dither.NONE)
