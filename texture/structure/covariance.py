@@ -87,9 +87,7 @@ class Structure:
         if self.smoothness is not None:
             nu = float(self.smoothness)
             if not 0.1 <= nu <= 20.0:
-                raise StructureError(
-                    f"smoothness: found {nu:g}, expected 0.1 to 20; above that use the gaussian model"
-                )
+                raise StructureError(f"smoothness: found {nu:g}, expected 0.1 to 20; above that use the gaussian model")
             object.__setattr__(self, "smoothness", nu)
 
     @property
@@ -214,7 +212,9 @@ class Covariance:
     @property
     def packed(self) -> Array:
         """The structures as rows (code, sill, 1 / scale, smoothness) for compiled code."""
-        rows = [(model_code(s.model, s.smoothness), s.sill, 1.0 / s.scale_m, s.smoothness or 0.0) for s in self.structures]
+        rows = [
+            (model_code(s.model, s.smoothness), s.sill, 1.0 / s.scale_m, s.smoothness or 0.0) for s in self.structures
+        ]
         return np.array(rows, dtype=np.float64).reshape(len(rows), 4)
 
     def check_dimensions(self, dimensions: int) -> None:
@@ -314,9 +314,7 @@ class Covariance:
         """
         from texture.structure.fit import fit_covariance
 
-        return fit_covariance(
-            points, values, method, noise_variance, survey, drift, groups, start, seed, **options
-        )
+        return fit_covariance(points, values, method, noise_variance, survey, drift, groups, start, seed, **options)
 
 
 @dataclass(frozen=True)
@@ -352,7 +350,9 @@ class CovarianceSet(Sequence[Covariance]):
             raise StructureError("correlation: expected a symmetric matrix with ones on its diagonal")
         # 1e-9 is what symmetric rounding of a handful of columns can leave below zero.
         if np.linalg.eigvalsh(matrix).min() < -1e-9:
-            raise StructureError("correlation: the matrix is not positive semi-definite; no columns correlate like this")
+            raise StructureError(
+                "correlation: the matrix is not positive semi-definite; no columns correlate like this"
+            )
         matrix.setflags(write=False)
         object.__setattr__(self, "covariances", tuple(covariances))
         object.__setattr__(self, "correlation", matrix)

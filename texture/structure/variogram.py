@@ -169,9 +169,7 @@ def fit_variogram(
     elif weights == "equal":
         w = np.ones_like(h)
     else:
-        raise StructureError(
-            f"weights: found {weights!r}, expected pairs_over_square_distance, pairs or equal"
-        )
+        raise StructureError(f"weights: found {weights!r}, expected pairs_over_square_distance, pairs or equal")
     shape = Structure(model, 1.0, scale_factor(model, smoothness), smoothness)
 
     def solve(log_range: float) -> tuple[Array, float]:
@@ -187,4 +185,6 @@ def fit_variogram(
     (nugget, sill), loss = solve(float(found.x))
     if sill <= 1e-9 * max(nugget, 1e-300):
         return Covariance([], small_scale=max(float(nugget), 1e-300)), loss
-    return Covariance([Structure(model, float(sill), float(np.exp(found.x)), smoothness)], small_scale=float(nugget)), loss
+    return Covariance(
+        [Structure(model, float(sill), float(np.exp(found.x)), smoothness)], small_scale=float(nugget)
+    ), loss

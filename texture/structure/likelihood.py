@@ -1,0 +1,125 @@
+"""Restricted likelihood of one column's covariance parameters, dense: every station against every other."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from texture.structure.models import model_code, scale_factor
+
+__all__ = ["DenseLikelihood", "Family", "Parameters"]
+
+Array = NDArray[np.float64]
+
+
+@dataclass(frozen=True)
+class Family:
+    """A correlation model that a fit may choose."""
+
+    model: str
+    smoothness: float | None = None
+
+    @property
+    def name(self) -> str:
+        """Name for lists: "exponential", "matern 1.5"."""
+        return self.model if self.smoothness is None else f"{self.model} {self.smoothness:g}"
+
+    def correlation(self, distance: Array, range_m: float) -> Array:
+        """Correlation at a C-ordered 2-D array of distances."""
+        from texture.structure.compiled import covariance_matrix
+
+        factor = scale_factor(self.model, self.smoothness)
+        packed = np.array([[model_code(self.model, self.smoothness), 1.0, factor / range_m, self.smoothness or 0.0]])
+        result: Array = covariance_matrix(packed, 0.0, distance)
+        return result
+
+
+@dataclass(frozen=True)
+class Parameters:
+    """What is fitted for one column, in natural units; `range_m` 0 and `sill` 0 mean no structure."""
+
+    range_m: float
+    sill: float
+    small_scale: float
+    survey: float = 0.0
+
+
+class DenseLikelihood:
+    """Restricted log-likelihood and its gradient for one column of values (Patterson & Thompson 1971).
+
+    Parameters
+    ----------
+    distance : float array, shape (n, n)
+    values : float array, shape (n,)
+    noise_variance : float array, shape (n,)
+        Known variance of each value; the fitted remainder is small-scale variation.
+    drift : float array, shape (n, p)
+        Drift columns, the constant among them.
+    survey : int array, shape (n,), optional
+        Survey of each station; its offset is a random effect.
+    """
+
+    def __init__(
+        self,
+        distance: Array,
+        values: Array,
+        noise_variance: Array,
+        drift: Array,
+        survey: NDArray[np.int64] | None,
+    ) -> None:
+        self.distance, self.values, self.noise_variance, self.drift = distance, values, noise_variance, drift
+        self.same = None if survey is None else (survey[:, None] == survey[None, :]).astype(np.float64)
+        self.evaluations = 0
+
+    def __call__(self, family: Family | None, parameters: Parameters, gradient: bool = True) -> tuple[float, Array]:
+        """Negative restricted log-likelihood and its gradient by log range, log sill, log small-scale, log survey.
+
+        A matrix that cannot be factored gives infinity and a zero gradient.
+        """
+        from scipy.linalg import cho_factor, cho_solve
+        from scipy.linalg.lapack import dpotri
+
+        self.evaluations += 1
+        n, p = self.drift.shape
+        k = np.zeros((n, n))
+        if family is not None:
+            rho = family.correlation(self.distance, parameters.range_m)
+            k += parameters.sill * rho
+        if self.same is not None:
+            k += parameters.survey * self.same
+        k[np.diag_indices(n)] += parameters.small_scale + self.noise_variance
+        try:
+            factor = cho_factor(k, lower=True, overwrite_a=True, check_finite=False)
+        except np.linalg.LinAlgError:
+            return np.inf, np.zeros(4)
+        solved = cho_solve(factor, np.column_stack([self.drift, self.values]), check_finite=False)
+        by_drift, by_values = solved[:, :p], solved[:, p]
+        information = self.drift.T @ by_drift
+        sign, log_information = np.linalg.slogdet(information)
+        if sign <= 0:
+            return np.inf, np.zeros(4)
+        coefficients = np.linalg.solve(information, self.drift.T @ by_values)
+        projected = by_values - by_drift @ coefficients
+        log_determinant = 2.0 * np.log(np.diag(factor[0])).sum()
+        quadratic = float(self.values @ projected)
+        loss = 0.5 * (log_determinant + log_information + quadratic + (n - p) * np.log(2.0 * np.pi))
+        if not gradient:
+            return float(loss), np.zeros(4)
+        inverse = dpotri(factor[0], lower=1, overwrite_c=1)[0]
+        inverse = np.tril(inverse) + np.tril(inverse, -1).T
+        inverse -= by_drift @ np.linalg.solve(information, by_drift.T)
+        # d loss / d theta = 1/2 sum of (P - Pz (Pz)') * dK/d theta
+        inverse -= np.outer(projected, projected)
+        slope = np.zeros(4)
+        if family is not None:
+            step = 1e-4  # central difference in log range: its error, 1e-8 relative, is below the optimiser's
+            up = family.correlation(self.distance, parameters.range_m * np.exp(step))
+            down = family.correlation(self.distance, parameters.range_m * np.exp(-step))
+            slope[0] = parameters.sill * np.vdot(inverse, up - down) / (2.0 * step)
+            slope[1] = parameters.sill * np.vdot(inverse, rho)
+        slope[2] = parameters.small_scale * np.trace(inverse)
+        if self.same is not None:
+            slope[3] = parameters.survey * np.vdot(inverse, self.same)
+        return float(loss), 0.5 * slope
