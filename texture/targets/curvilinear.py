@@ -137,7 +137,7 @@ def _unwrapped(longitude: NDArray[np.float64]) -> NDArray[np.float64]:
     """Make longitudes continuous around the grid's middle, in -180…180 unless it crosses the date line."""
     angle = np.radians(longitude[np.isfinite(longitude)])
     middle = np.degrees(np.arctan2(np.sin(angle).mean(), np.cos(angle).mean()))
-    return np.asarray(middle + (longitude - middle + 180.0) % 360.0 - 180.0)
+    return np.asarray(longitude + 360.0 * np.round((middle - longitude) / 360.0))  # whole turns: others stay exact
 
 
 def _depth(dataset: xr.Dataset, named: str | None, dims: tuple[str, str], name: str) -> NDArray[np.float64] | None:
@@ -170,8 +170,10 @@ def _corners(
         lon = given[0].astype(np.float64).reshape(-1, 4)
         lat = given[1].astype(np.float64).reshape(-1, 4)
         middle = longitude.reshape(-1, 1)
-        lon = middle + (lon - middle + 180.0) % 360.0 - 180.0
+        lon = lon + 360.0 * np.round((middle - lon) / 360.0)
         return _counter_clockwise(lon, lat)
+    if min(longitude.shape) < 2:
+        raise TargetError(f"a grid of {longitude.shape[0]} × {longitude.shape[1]} cells needs its corners as CF bounds")
     notes.append("cell corners are not in the file: taken half-way between the centres")
     lon, lat = corner_table(_vertices(longitude), upward=True), corner_table(_vertices(latitude), upward=True)
     return _counter_clockwise(lon, lat)
@@ -179,12 +181,25 @@ def _corners(
 
 def _vertices(centres: NDArray[np.float64]) -> NDArray[np.float64]:
     """Shared vertices, shape (rows + 1, columns + 1): means of four centres, extended by one beyond."""
-    padded = np.pad(centres, 1, mode="reflect", reflect_type="odd") if min(centres.shape) > 1 else _pad_thin(centres)
+    centres = _continued(_continued(centres))
+    padded = np.pad(centres, 1, mode="reflect", reflect_type="odd")
     return np.asarray((padded[:-1, :-1] + padded[1:, :-1] + padded[:-1, 1:] + padded[1:, 1:]) / 4.0)
 
 
-def _pad_thin(centres: NDArray[np.float64]) -> NDArray[np.float64]:
-    raise TargetError(f"a grid of {centres.shape[0]} × {centres.shape[1]} cells needs its corners as CF bounds")
+def _continued(centres: NDArray[np.float64]) -> NDArray[np.float64]:
+    """Continue centres in a straight line into missing neighbours (grids often leave land without positions)."""
+    if np.isfinite(centres).all():
+        return centres
+    padded = np.pad(centres, 2, constant_values=np.nan)
+    rows, columns = centres.shape
+    lines = []
+    for down, across in ((1, 0), (-1, 0), (0, 1), (0, -1)):
+        near, far = (padded[2 + k * down :, 2 + k * across :][:rows, :columns] for k in (1, 2))
+        lines.append(2.0 * near - far)
+    stack = np.stack(lines)
+    known = np.isfinite(stack)
+    mean = np.where(known, stack, 0.0).sum(axis=0) / np.maximum(known.sum(axis=0), 1)
+    return np.where(np.isfinite(centres), centres, np.where(known.any(axis=0), mean, np.nan))
 
 
 def _signed_area(lon: NDArray[np.float64], lat: NDArray[np.float64]) -> NDArray[np.float64]:
@@ -204,7 +219,7 @@ def _check_folds(
     corners: tuple[NDArray[np.float64], NDArray[np.float64]], active: NDArray[np.bool_], name: str
 ) -> None:
     lon, lat = corners
-    folded = active & ~(_signed_area(lon - lon[:, :1], lat - lat[:, :1]) > 0.0)
+    folded = active & np.isfinite(lon).all(axis=1) & ~(_signed_area(lon - lon[:, :1], lat - lat[:, :1]) > 0.0)
     if folded.any():
         raise TargetError(
             f"{name}: {int(folded.sum())} water cells are folded or have no area "
