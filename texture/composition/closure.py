@@ -92,7 +92,7 @@ def close(parts: npt.ArrayLike, total: float = 1.0) -> Array:
     residual = 1.0 - closed.sum(axis=-1, keepdims=True)
     first_largest = np.argmax(closed, axis=-1)[..., None]
     np.put_along_axis(closed, first_largest, np.take_along_axis(closed, first_largest, axis=-1) + residual, axis=-1)
-    return closed * total if total != 1.0 else closed
+    return np.asarray(closed * total if total != 1.0 else closed)
 
 
 def perturb(x: npt.ArrayLike, y: npt.ArrayLike) -> Array:

@@ -41,7 +41,7 @@ from texture.errors import CompositionError
 if TYPE_CHECKING:
     from texture.composition.logratio import LogRatio
 
-__all__ = ["as_moments", "expected", "normal_draws"]
+__all__ = ["as_moments", "expected", "has_nan", "normal_draws", "refuse_matrix"]
 
 SOBOL_DRAWS = 4096
 _SOBOL_SEED = 20240229
@@ -92,7 +92,7 @@ def expected(logratio: "LogRatio", mean: npt.ArrayLike, variance: npt.ArrayLike)
         d = logratio.n_coordinates
         draws = normal_draws(d) if d > 3 else np.empty((0, d))
         _linear_kernel(mean_rows, covariance, logratio.log_basis, draws, fractions, status)
-        _refuse_matrix(status)
+        refuse_matrix(status)
     fractions /= fractions.sum(axis=1, keepdims=True)
     return fractions
 
@@ -131,7 +131,8 @@ def normal_draws(dimension: int, count: int = SOBOL_DRAWS) -> Array:
     return draws
 
 
-def _refuse_matrix(status: npt.NDArray[np.bool_]) -> None:
+def refuse_matrix(status: npt.NDArray[np.bool_]) -> None:
+    """Raise for the first row that a kernel marked as having no covariance."""
     if status.any():
         raise CompositionError(
             f"row {int(np.argmax(status))} (counted from 0): the matrix is not positive semi-definite, expected a "
@@ -149,7 +150,7 @@ def _expected_tree(logratio: "LogRatio", mean: Array, spread: Array, correlated:
     depth = index.shape[1]
     draws = normal_draws(depth - 1) if depth > 3 else np.empty((0, 1))
     _path_kernel(mean, spread, index, sign, draws, fractions, status)
-    _refuse_matrix(status)
+    refuse_matrix(status)
     return fractions
 
 
@@ -171,7 +172,8 @@ def _expected_shares(logratio: "LogRatio", mean: Array, spread: Array, correlate
 
 
 @njit(cache=True)
-def _has_nan(row: Array) -> bool:
+def has_nan(row: Array) -> bool:
+    """Whether any entry is NaN."""
     return bool(np.isnan(row).any())
 
 
@@ -180,7 +182,7 @@ def _independent_kernel(mean, variance, index, sign, out):  # type: ignore[no-un
     n, d = mean.shape
     parts, depth = index.shape
     for row in prange(n):
-        if _has_nan(mean[row]) or _has_nan(variance[row]):
+        if has_nan(mean[row]) or has_nan(variance[row]):
             out[row] = math.nan
             continue
         small = np.empty(d)
@@ -208,7 +210,7 @@ def _path_kernel(mean, covariance, index, sign, draws, out, status):  # type: ig
     n = mean.shape[0]
     parts, depth = index.shape
     for row in prange(n):
-        if _has_nan(mean[row]) or _has_nan(covariance[row]):
+        if has_nan(mean[row]) or has_nan(covariance[row]):
             out[row] = math.nan
             continue
         factor = np.zeros((depth, depth))
@@ -310,7 +312,7 @@ def _linear_kernel(mean, covariance, basis, draws, out, status):  # type: ignore
     n, d = mean.shape
     parts = basis.shape[1]
     for row in prange(n):
-        if _has_nan(mean[row]) or _has_nan(covariance[row]):
+        if has_nan(mean[row]) or has_nan(covariance[row]):
             out[row] = math.nan
             continue
         factor = np.zeros((d, d))
