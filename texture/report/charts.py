@@ -1,0 +1,60 @@
+"""Charts of the fit and of the error: variograms, held-out scatter, errors of the methods."""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from texture.report.style import INK, QUIET, STRONG, new_figure, styled
+
+if TYPE_CHECKING:
+    from matplotlib.figure import Figure
+
+    from texture.validation.cross_validate import HeldOut
+
+__all__ = ["draw_methods", "draw_scatter", "draw_variograms"]
+
+Floats = NDArray[np.float64]
+
+
+def draw_scatter(parts: tuple[str, ...], observed: Floats, held_out: HeldOut) -> Figure:
+    """Draw what was measured against what was predicted when the station was held out."""
+    with styled():
+        figure = new_figure(3.1 * len(parts), 3.1)
+        for axis, part, i in zip(figure.subplots(1, len(parts), sharey=True), parts, range(len(parts)), strict=True):
+            axis.plot([0, 1], [0, 1], color=QUIET, lw=0.8)
+            axis.plot(held_out.predicted[:, i], observed[:, i], "o", ms=3, mfc=INK, mec="none", alpha=0.45)
+            r2, rmse = held_out.score(part, "r_squared"), held_out.score(part, "rmse")
+            axis.set_title(f"{part}: RMSE {rmse:.3f}, R² {r2:.2f}")
+            axis.set(xlim=(-0.02, 1.02), ylim=(-0.02, 1.02), aspect="equal", xlabel="held-out prediction")
+        figure.axes[0].set_ylabel("measured fraction")
+    return figure
+
+
+def draw_methods(parts: tuple[str, ...], methods: list[HeldOut], chosen: str) -> Figure:
+    """Draw the root mean square error of each method and part."""
+    with styled():
+        figure = new_figure(7.0, 0.34 * len(methods) * len(parts) ** 0.5 + 1.0)
+        for axis, part in zip(figure.subplots(1, len(parts), sharey=True), parts, strict=True):
+            rmse = [m.score(part, "rmse") for m in methods]
+            colours = [STRONG if m.method == chosen else QUIET for m in methods]
+            axis.barh([m.method.replace("_", " ") for m in methods], rmse, color=colours, height=0.6)
+            for y, value in enumerate(rmse):
+                axis.text(value, y, f" {value:.3f}", va="center", ha="left")
+            axis.set_xlim(0, max(rmse) * 1.25)
+            axis.set_title(part)
+            axis.set_xlabel("held-out RMSE, fraction")
+        figure.axes[0].invert_yaxis()
+    return figure
+
+
+def draw_variograms(structure: Any, names: tuple[str, ...]) -> Figure:
+    """Draw the empirical variogram of each coordinate with the fitted models."""
+    with styled():
+        figure = new_figure(4.2 * len(names), 2.9)
+        for axis, covariance, name in zip(np.atleast_1d(figure.subplots(1, len(names))), structure, names, strict=True):
+            covariance.fit_record.plot(axis)
+            axis.set_title(name)
+    return figure
