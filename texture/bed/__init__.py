@@ -1,5 +1,7 @@
 """From a map of parts to a bed that a model can start from: grains, layers, rim, land."""
 
+from texture.bed.build import EVIDENCE, Account, Bed, make_bed
+from texture.bed.classes import ClassProperties, class_properties
 from texture.bed.packing import dry_density, porosity
 from texture.bed.roughness import skin_roughness_length
 from texture.bed.settling import settling_velocity
@@ -8,9 +10,15 @@ from texture.bed.water import Water
 from texture.bed.waves import wave_current_stress, wave_stress
 
 __all__ = [
+    "EVIDENCE",
+    "Account",
+    "Bed",
+    "ClassProperties",
     "Water",
+    "class_properties",
     "critical_stress",
     "dry_density",
+    "make_bed",
     "porosity",
     "settling_velocity",
     "skin_roughness_length",

@@ -1,0 +1,54 @@
+"""What the bed needs to know of a target: flat arrays and who touches whom."""
+
+from __future__ import annotations
+
+from typing import Protocol
+
+import numpy as np
+from numpy.typing import NDArray
+
+__all__ = ["Bools", "Cells", "Floats", "Ints"]
+
+Floats = NDArray[np.float64]
+Bools = NDArray[np.bool_]
+Ints = NDArray[np.int64]
+
+
+class Cells(Protocol):
+    """Cells with neighbours; `texture.targets.Target` is one. n counts all cells, land included."""
+
+    @property
+    def name(self) -> str:
+        """File name or description, for messages."""
+
+    @property
+    def active(self) -> Bools:
+        """True where the cell is water, shape (n,)."""
+
+    @property
+    def area_m2(self) -> Floats:
+        """Area, shape (n,)."""
+
+    @property
+    def edges(self) -> Ints:
+        """Pairs of cells that share a side, shape (m, 2)."""
+
+    @property
+    def edge_length_m(self) -> Floats:
+        """Distance between the centres of each pair, shape (m,); NaN where a position is unknown."""
+
+    @property
+    def open_cells(self) -> Bools:
+        """Water cells on the open boundary, river inlets left out, shape (n,)."""
+
+    @property
+    def shape(self) -> tuple[int, int]:
+        """Rows and columns."""
+
+    @property
+    def longitude(self) -> Floats:
+        """Of the cell centres, degrees, shape (n,)."""
+
+    @property
+    def latitude(self) -> Floats:
+        """Of the cell centres, degrees, shape (n,)."""

@@ -1,0 +1,91 @@
+"""Properties of a bed that is a mixture of classes.
+
+Fractions have the class first, shape (class, …), are of dry mass and sum to 1 along it.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+
+from texture.bed.cells import Floats
+from texture.bed.packing import dry_density, porosity
+
+__all__ = ["mean_critical_stress", "median_diameter", "mixture_packing"]
+
+ROUNDING = 1e-15
+"""Fractions smaller than the rounding of their sum are no mass."""
+
+
+def median_diameter(fraction: Floats, diameter_m: Floats) -> Floats:
+    """Median grain diameter of a mixture, between the classes' diameters.
+
+    Each class's own diameter is taken as its median: half of its mass is finer. Between these points of
+    the cumulative curve the logarithm of the diameter is linear, and the median is read at one half.
+
+    Parameters
+    ----------
+    fraction : float array, shape (k, …)
+        NaN gives NaN.
+    diameter_m : float array, shape (k,)
+
+    Returns
+    -------
+    float array, shape (…)
+        Metres, from the smallest to the largest of `diameter_m`; changes smoothly with the fractions.
+
+    Examples
+    --------
+    Half of two sizes: the geometric mean.
+
+    >>> float(median_diameter(np.array([0.5, 0.5]), np.array([1e-4, 1e-2])).round(6))
+    0.001
+    """
+    order = np.argsort(diameter_m, kind="stable")
+    size = np.log(diameter_m[order])
+    below = np.zeros(fraction.shape[1:])
+    result = np.full(fraction.shape[1:], size[0])
+    for i in range(size.size - 1):
+        here, next_ = fraction[order[i]], fraction[order[i + 1]]
+        centre = below + here / 2.0
+        width = (here + next_) / 2.0
+        # Classes without mass stand at one point of the curve: all of the step lies on one side of a half.
+        step = np.divide(0.5 - centre, width, out=np.asarray(centre < 0.5, dtype=np.float64), where=width > ROUNDING)
+        result += (size[i + 1] - size[i]) * np.clip(step, 0.0, 1.0)
+        below = below + here
+    return np.where(np.isnan(fraction).any(axis=0), np.nan, np.exp(result))
+
+
+def mixture_packing(fraction: Floats, density_kg_m3: Floats, median_diameter_m: Floats) -> tuple[Floats, Floats]:
+    """Porosity and dry density of a mixture.
+
+    Porosity by Wu & Wang (2006) from the mixture's median diameter; the grains' volumes add up, so that
+    their joint density is the harmonic mean of the classes' by mass.
+
+    Parameters
+    ----------
+    fraction : float array, shape (k, …)
+    density_kg_m3 : float array, shape (k,)
+        Grain densities.
+    median_diameter_m : float array, shape (…)
+
+    Returns
+    -------
+    porosity, dry_density : float arrays, shape (…)
+        Without unit, and in kg m-3.
+    """
+    pores = porosity(median_diameter_m)
+    grains = 1.0 / np.tensordot(1.0 / density_kg_m3, fraction, axes=1)
+    return pores, dry_density(pores, grains)
+
+
+def mean_critical_stress(fraction: Floats, critical_stress_pa: Floats) -> Floats | None:
+    """Mass-weighted mean of the classes' critical stresses, without hiding and exposure.
+
+    Returns
+    -------
+    float array, shape (…), or None
+        None when a class has no critical stress: a mean over the others would call mud as strong as sand.
+    """
+    if np.isnan(critical_stress_pa).any():
+        return None
+    return np.asarray(np.tensordot(critical_stress_pa, fraction, axes=1))

@@ -1,0 +1,147 @@
+"""The padded coarse cells along the open boundary, so that a run neither erodes nor blooms at its edge."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+
+import numpy as np
+from scipy.sparse import csr_array
+from scipy.sparse.csgraph import dijkstra
+
+from texture.bed.cells import Bools, Cells, Floats
+from texture.errors import BedError
+from texture.recipe import Rim
+
+__all__ = ["blend", "open_boundary", "rim_weight", "water_distance"]
+
+COMPASS = ("north", "east", "south", "west")
+PROFILES: dict[str, Callable[[Floats], Floats]] = {
+    "cosine": lambda t: 0.5 * (1.0 + np.cos(np.pi * t)),
+    "linear": lambda t: 1.0 - t,
+    "step": lambda t: np.ones_like(t),
+}
+
+
+def rim_weight(cells: Cells, rim: Rim) -> Floats:
+    """Weight of the rim's bed in each cell.
+
+    Parameters
+    ----------
+    cells : Cells
+    rim : Rim
+        Sides, width (in cells or metres) and profile.
+
+    Returns
+    -------
+    float array, shape (n,)
+        Exactly 1 in the cells of the open edge, falling to exactly 0 at the width, which is measured from
+        the centres of those cells to other centres, through water from side to side of cells. A width of 6
+        cells touches six rows of cells. 0 on land.
+
+    Raises
+    ------
+    BedError
+        If there is no open boundary on the sides asked for, or the rim would cover every water cell.
+    """
+    in_metres = rim.width_m is not None
+    width = float(rim.width_m if rim.width_m is not None else rim.width_cells or 0)
+    distance = water_distance(cells, open_boundary(cells, rim.sides), in_metres, limit=width)
+    inside = distance < width
+    if inside[cells.active].all():
+        unit = "m" if in_metres else "cells"
+        raise BedError(
+            f"rim: a width of {width:g} {unit} covers every water cell of {cells.name}; "
+            "make it narrower, or name fewer sides"
+        )
+    weight = np.zeros(distance.size)
+    weight[inside] = PROFILES[rim.profile](distance[inside] / width)
+    return weight
+
+
+def open_boundary(cells: Cells, sides: str | tuple[str, ...]) -> Bools:
+    """Cells that the rim starts from: the whole open boundary, or its cells on compass sides.
+
+    A corner cell belongs to both of its sides; river inlets belong to none.
+
+    Raises
+    ------
+    BedError
+        If none of the cells asked for is open water.
+    """
+    opened = cells.open_cells & cells.active
+    if not opened.any():
+        raise BedError(
+            f"rim: {cells.name} has no open boundary: no water on its outer edge is wider than a river inlet; "
+            "leave [rim] out, or lower target.inlet_width_m"
+        )
+    if sides == "open":
+        return opened
+    by_side = _cells_by_side(cells)
+    chosen = np.zeros(opened.size, dtype=bool)
+    for side in sides:
+        found = opened & by_side[side]
+        if not found.any():
+            known = [name for name, mask in by_side.items() if (mask & opened).any()]
+            raise BedError(
+                f"rim.sides: the {side} side of {cells.name} has no open water; open sides: {', '.join(known)}"
+            )
+        chosen |= found
+    return chosen
+
+
+def _cells_by_side(cells: Cells) -> dict[str, Bools]:
+    """Outer cells of each compass side: the point nearest to the way from the grid's middle to that side."""
+    index = np.arange(cells.active.size).reshape(cells.shape)
+    longitude, latitude = np.radians(cells.longitude), np.radians(cells.latitude)
+    # As directions from the centre of the earth, so that no grid is cut by the date line or a pole.
+    xyz = np.stack([np.cos(latitude) * np.cos(longitude), np.cos(latitude) * np.sin(longitude), np.sin(latitude)])
+    middle = np.nanmean(xyz, axis=1)
+    east = np.array([-middle[1], middle[0], 0.0]) / np.hypot(middle[0], middle[1])
+    north = np.cross(middle, east) / np.linalg.norm(middle)
+    by_side = {side: np.zeros(index.size, dtype=bool) for side in COMPASS}
+    for edge in (index[0], index[:, -1], index[-1], index[:, 0]):
+        away = np.nanmean(xyz[:, edge], axis=1) - middle
+        azimuth = np.degrees(np.arctan2(away @ east, away @ north))
+        by_side[COMPASS[round(azimuth % 360.0 / 90.0) % 4]][edge] = True
+    return by_side
+
+
+def water_distance(cells: Cells, start: Bools, in_metres: bool, limit: float = np.inf) -> Floats:
+    """Shortest way through water from the start cells, from side to side of cells.
+
+    Parameters
+    ----------
+    cells : Cells
+    start : bool array, shape (n,)
+        Water cells at distance 0.
+    in_metres : bool
+        Metres between centres, or steps from cell to cell.
+    limit : float
+        Search no farther than this.
+
+    Returns
+    -------
+    float array, shape (n,)
+        Infinite on land, out of reach, and beyond `limit`.
+    """
+    wet = cells.active[cells.edges].all(axis=1)
+    a, b = cells.edges[wet].T
+    length = cells.edge_length_m[wet] if in_metres else np.ones(a.size)
+    graph = csr_array((length, (a, b)), shape=(start.size, start.size))
+    return np.asarray(dijkstra(graph, directed=False, indices=np.flatnonzero(start), min_only=True, limit=limit))
+
+
+def blend(fraction: Floats, weight: Floats, rim_fraction: Floats) -> Floats:
+    """Mix the rim's bed in, (1 − w) · estimate + w · rim; sums stay what they were.
+
+    Parameters
+    ----------
+    fraction : float array, shape (k, layer, n)
+    weight : float array, shape (n,)
+    rim_fraction : float array, shape (k,)
+
+    Returns
+    -------
+    float array, shape (k, layer, n)
+    """
+    return np.asarray((1.0 - weight) * fraction + weight * rim_fraction[:, None, None])
