@@ -18,14 +18,13 @@ if TYPE_CHECKING:
     from texture.mapping import Mapper
     from texture.structure.plane import Plane
 
-__all__ = ["EVIDENCE", "Estimate", "estimate_on"]
+__all__ = ["Estimate", "estimate_on"]
 
 Floats = NDArray[np.float64]
 
 QUANTILES = (0.05, 0.5, 0.95)
 CELLS_AT_ONCE = 20_000  # bounds the memory of the points inside cells to some tens of megabytes
-SUPPORTED, EXTRAPOLATED, WIDER = 1, 2, 6
-EVIDENCE = {1: "supported_by_samples", 2: "extrapolated", 3: "rim", 4: "filled_under_land", 5: "given_by_the_user", 6: "wider_fall_back"}  # fmt: skip
+SUPPORTED, EXTRAPOLATED, WIDER = 1, 2, 6  # of `texture.bed.EVIDENCE`
 
 
 @dataclass(frozen=True, eq=False)
@@ -57,7 +56,13 @@ class Estimate:
 
 
 def estimate_on(
-    target: Target, mapper: Mapper, plane: Plane, stations: Floats, reach_m: float, per_side: int, progress: Progress,
+    target: Target,
+    mapper: Mapper,
+    plane: Plane,
+    stations: Floats,
+    reach_m: float,
+    per_side: int,
+    progress: Progress,
     median: bool = False,
 ) -> Estimate:
     """Estimate every active cell.

@@ -17,7 +17,12 @@ from texture.recipe import Recipe
 __all__ = ["read_recipe", "resolved_toml"]
 
 
-def read_recipe(path: str | Path, overrides: Iterable[str] = (), output: str | Path | None = None) -> Recipe:
+def read_recipe(
+    path: str | Path,
+    overrides: Iterable[str] = (),
+    output: str | Path | None = None,
+    settings: Mapping[str, Any] | None = None,
+) -> Recipe:
     """Read a recipe, apply overrides, check it and make its paths absolute.
 
     Parameters
@@ -29,6 +34,8 @@ def read_recipe(path: str | Path, overrides: Iterable[str] = (), output: str | P
         of tables are reached by their number from 0 (`samples.0.crs=EPSG:4326`).
     output : path, optional
         Output folder, relative to the current folder; replaces the recipe's.
+    settings : mapping, optional
+        Blocks to change, such as `{"method": {"neighbours": 24}}`, merged into the file's.
 
     Raises
     ------
@@ -37,15 +44,15 @@ def read_recipe(path: str | Path, overrides: Iterable[str] = (), output: str | P
         of range, or an input file that does not exist.
     """
     path = Path(path)
-    settings = _load(path)
+    given = _merged(_load(path), settings or {})
     for override in overrides:
-        _apply(settings, override)
+        _apply(given, override)
     if output is not None:
-        settings["output"] = str(Path(output).absolute())
+        given["output"] = str(Path(output).absolute())
     try:
-        recipe = Recipe.model_validate(settings)
+        recipe = Recipe.model_validate(given)
     except ValidationError as error:
-        raise RecipeError(f"{path.name}: {_one_line(error, settings)}") from error
+        raise RecipeError(f"{path.name}: {_one_line(error)}") from error
     return _absolute(recipe, path.absolute().parent, path.name)
 
 
@@ -111,7 +118,16 @@ def _step(here: Any, name: str, override: str) -> Any:
     return below
 
 
-def _one_line(error: ValidationError, settings: Mapping[str, Any]) -> str:
+def _merged(below: dict[str, Any], above: Mapping[str, Any]) -> dict[str, Any]:
+    """Put blocks of settings over those of the file, key by key."""
+    merged = dict(below)
+    for key, value in above.items():
+        inside = merged.get(key)
+        merged[key] = _merged(inside, value) if isinstance(inside, dict) and isinstance(value, Mapping) else value
+    return merged
+
+
+def _one_line(error: ValidationError) -> str:
     """Say the first problem the way a person would; count the others."""
     problems = error.errors()
     # An unknown key is more telling than the missing key that it was meant to be.

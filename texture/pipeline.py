@@ -1,0 +1,143 @@
+"""The whole program on one page: spreadsheets → stations → structure → map → bed → files.
+
+Each step is one call into its own room. Nothing downstream reaches back: validation calls the same
+functions on folds.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterable
+from pathlib import Path
+from typing import Any
+
+from texture.clock import Clock
+from texture.composition import LogRatio
+from texture.estimate import estimate_on
+from texture.mapping import fit_structure, make_mapper
+from texture.observations import observe
+from texture.progress import Progress, Silent
+from texture.recipe import Recipe
+from texture.recipe_file import read_recipe
+from texture.result import Intake, Result, Validated
+from texture.stations import Stations, read_samples
+from texture.structure.plane import Plane
+from texture.targets import Target, points_per_side, read_target
+from texture.placing import place_stations
+from texture.validate import validate_methods
+
+__all__ = ["build", "intake", "read_stations", "validate"]
+
+Where = str | Path
+
+
+def intake(
+    recipe_path: Where, *, overrides: Iterable[str] = (), output: Where | None = None, overwrite: bool = False,
+    progress: Progress | None = None, **settings: Any,
+) -> Intake:  # fmt: skip
+    """Read the samples and account for every row; writes stations and audit."""
+    from texture.output import ResultFolder
+    from texture.writing import write_intake
+
+    recipe, progress = read_recipe(recipe_path, overrides, output, settings), progress or Silent()
+    folder = ResultFolder(recipe.output, overwrite)
+    _, stations = _stations(recipe, progress)
+    result = Intake(recipe, stations)
+    write_intake(result, folder)
+    return result
+
+
+def validate(
+    recipe_path: Where, *, overrides: Iterable[str] = (), output: Where | None = None, overwrite: bool = False,
+    progress: Progress | None = None, **settings: Any,
+) -> Validated:  # fmt: skip
+    """Say by cross-validation how wrong the map is; writes the scores and every held-out prediction."""
+    from texture.output import ResultFolder
+    from texture.writing import write_validation
+
+    recipe, progress = read_recipe(recipe_path, overrides, output, settings), progress or Silent()
+    folder = ResultFolder(recipe.output, overwrite)
+    result = _validated(recipe, progress, Clock())
+    write_validation(result, folder)
+    return result
+
+
+def build(
+    recipe_path: Where, *, overrides: Iterable[str] = (), output: Where | None = None, overwrite: bool = False,
+    progress: Progress | None = None, **settings: Any,
+) -> Result:  # fmt: skip
+    """Build a model's starting bed: the main job.
+
+    Parameters
+    ----------
+    recipe_path : path
+        The recipe (TOML).
+    overrides : iterable of str
+        `key.path=value` pairs, as on the command line.
+    output : path, optional
+        Output folder instead of the recipe's.
+    overwrite : bool
+        Replace the files of an earlier run.
+    progress : Progress, optional
+        Where to show progress; silent by default.
+    **settings
+        Blocks of the recipe to change, such as `method={"neighbours": 24}`.
+
+    Returns
+    -------
+    Result
+        Stations, target, structure, validation, estimate, bed, and the files that were written.
+
+    Raises
+    ------
+    TextureError
+        One of its leaves, with a line that says where, what was found and what to do.
+    """
+    from texture.bed import make_bed
+    from texture.output import ResultFolder
+    from texture.predict.second_opinion import second_opinion
+    from texture.writing import write_all
+
+    clock, progress = Clock(), progress or Silent()
+    recipe = read_recipe(recipe_path, overrides, output, settings)
+    folder = ResultFolder(recipe.output, overwrite)
+    found = _validated(recipe, progress, clock)
+    target, mapper = found.target, found.mapper
+    with clock.stage("estimate"):
+        per_side = points_per_side(recipe.target.points_per_cell, found.cell_side_m, found.range_m)
+        estimate = estimate_on(target, mapper, found.plane, found.observations.points, found.reach_m, per_side,
+                               progress, median=recipe.method.estimate == "median")  # fmt: skip
+    with clock.stage("second opinion"):
+        opinion = second_opinion(mapper.predictor, found.cell_centres, seed=recipe.seed) if mapper.has_variance else None
+    with clock.stage("bed"):
+        bed = make_bed(estimate.fractions, estimate.evidence, target, recipe.bed, recipe.rim, recipe.composition.parts)
+    result = Result(found, estimate, per_side, opinion, bed, clock)
+    with clock.stage("write"), progress.stage("write"):
+        return write_all(result, folder, Path(recipe_path))
+
+
+def read_stations(recipe_path: Where, **settings: Any) -> Stations:
+    """Read the samples of a recipe as stations with their audit, writing nothing."""
+    return _stations(read_recipe(recipe_path, settings=settings), Silent())[1]
+
+
+def _stations(recipe: Recipe, progress: Progress) -> tuple[Target, Stations]:
+    with progress.stage("read the grid"):
+        target = read_target(recipe.target)
+    with progress.stage("read the samples"):
+        return target, place_stations(read_samples(recipe), target, recipe.intake)
+
+
+def _validated(recipe: Recipe, progress: Progress, clock: Clock) -> Validated:
+    with clock.stage("read"):
+        target, stations = _stations(recipe, progress)
+    logratio = LogRatio(
+        recipe.composition.parts, recipe.composition.logratio, recipe.composition.tree, recipe.composition.detection_limit
+    )
+    plane = Plane.around(stations.table["longitude"].to_numpy(), stations.table["latitude"].to_numpy())
+    observations = observe(stations, logratio, plane)
+    with clock.stage("fit"), progress.stage("fit the spatial structure"):
+        structure = fit_structure(observations, recipe.method)
+        mapper = make_mapper(recipe.method.name, observations, structure, recipe.method, logratio)
+    with clock.stage("validate"):
+        validation = validate_methods(observations, target, plane, structure, logratio, recipe, progress)
+    return Validated(recipe, stations, target, plane, observations, mapper, validation)

@@ -1,0 +1,243 @@
+"""What a run found, in words and numbers: for a notebook, the terminal, the page and `--json`."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+from functools import cached_property
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+if TYPE_CHECKING:
+    from texture.bed import Bed
+    from texture.clock import Clock
+    from texture.estimate import Estimate
+    from texture.mapping import Mapper
+    from texture.observations import Observations
+    from texture.recipe import Recipe
+    from texture.stations import Stations
+    from texture.structure.plane import Plane
+    from texture.targets import Target
+    from texture.validate import Validation
+
+__all__ = ["Intake", "Result", "Validated"]
+
+Floats = NDArray[np.float64]
+
+
+@dataclass(frozen=True, eq=False)
+class Intake:
+    """Stations, and what became of every row."""
+
+    recipe: Recipe
+    stations: Stations
+    files: tuple[Path, ...] = ()
+
+    def summary(self) -> dict[str, Any]:
+        """Counts of rows by their fate, and the files written."""
+        return {**self.stations.counts, "files": [p.name for p in self.files]}
+
+    def summary_lines(self) -> list[str]:
+        """Lines for a person."""
+        return [self.recipe.title, *rows_lines(self.stations), *written_line(self.recipe, self.files)]
+
+    def __repr__(self) -> str:
+        return "\n".join(self.summary_lines())
+
+
+@dataclass(frozen=True, eq=False)
+class Validated:
+    """Everything up to the held-out error: the map's method is fitted, the map not yet made."""
+
+    recipe: Recipe
+    stations: Stations
+    target: Target
+    plane: Plane
+    observations: Observations
+    mapper: Mapper
+    validation: Validation
+    files: tuple[Path, ...] = ()
+
+    @property
+    def range_m(self) -> float:
+        """Shortest fitted range among the coordinates, 0 where there is no spatial structure."""
+        return min((c.range_m for c in self.mapper.structure), default=0.0)
+
+    @cached_property
+    def cell_side_m(self) -> float:
+        """Side of a square of the median water cell's area."""
+        return float(np.sqrt(np.median(self.target.area_m2[self.target.active])))
+
+    @cached_property
+    def cell_centres(self) -> Floats:
+        """Water cells in the plane, shape (cells, 2)."""
+        wet = self.target.active
+        return self.plane.to_plane(self.target.longitude[wet], self.target.latitude[wet])
+
+    @property
+    def reach_m(self) -> float:
+        """Distance from the samples up to which the map has been tested."""
+        return self.validation.reach_m
+
+    def scores(self) -> dict[str, dict[str, dict[str, float | None]]]:
+        """method → part → score → value, None where a score could not be made."""
+        table: dict[str, dict[str, dict[str, float | None]]] = {}
+        for method in self.validation.methods:
+            parts = table.setdefault(method.method, {})
+            for row in method.scores:
+                value = float(row["value"])
+                parts.setdefault(str(row["part"]), {})[str(row["score"])] = value if np.isfinite(value) else None
+        return table
+
+    def summary(self) -> dict[str, Any]:
+        """Counts, scores and files."""
+        return {**self.stations.counts, "folds": self.validation.folds.count, "scores": self.scores(),
+                "files": [p.name for p in self.files]}  # fmt: skip
+
+    def summary_lines(self) -> list[str]:
+        """Lines for a person."""
+        lines = [self.recipe.title, *rows_lines(self.stations), f"  folds       {self.validation.folds!r}"]
+        return [*lines, *error_lines(self), *written_line(self.recipe, self.files)]
+
+    def __repr__(self) -> str:
+        return "\n".join(self.summary_lines())
+
+
+@dataclass(frozen=True, eq=False)
+class Result:
+    """A finished build.
+
+    Attributes
+    ----------
+    found : Validated
+        Recipe, stations, target, fitted method and validation.
+    estimate : Estimate
+        The map, flat over the target's cells.
+    points_per_side : int
+        Points along each side of a cell that its value was averaged over.
+    opinion : record or None
+        The second opinion on a handful of cells.
+    bed : Bed
+    clock : Clock
+    files : tuple of Path
+        What was written.
+    """
+
+    found: Validated
+    estimate: Estimate
+    points_per_side: int
+    opinion: Any
+    bed: Bed
+    clock: Clock
+    files: tuple[Path, ...] = field(default=())
+
+    @property
+    def beyond_share(self) -> float:
+        """Share of the water area beyond what the samples support."""
+        wet = self.found.target.active
+        area = self.found.target.area_m2[wet]
+        return float(area[self.estimate.evidence[wet] != 1].sum() / area.sum())
+
+    def answer(self) -> str:
+        """Say the one-line result: stations, error against the controls, support, bed below any sample."""
+        found = self.found
+        controls = {m.method: m for m in found.validation.methods[1:] if m.method in ("nearest", "inverse_distance")}
+        errors = []
+        for part in found.recipe.composition.parts:
+            rmse = found.validation.chosen.score(part, "rmse")
+            beside = ", ".join(f"{name.replace('_', ' ')} {m.score(part, 'rmse'):.3f}" for name, m in controls.items())
+            errors.append(f"{part} {rmse:.3f}" + (f" ({beside})" if beside else ""))
+        return (
+            f"{found.observations.count} stations; held-out RMSE {', '.join(errors)}; "
+            f"{100 * self.beyond_share:.1f} % of the map lies beyond what the samples support; "
+            f"{100 * self.bed.account.share_below_samples:.0f} % of the bed's mass lies below any sample."
+        )
+
+    def summary(self) -> dict[str, Any]:
+        """Counts, scores, seconds and files: the object of `--json`."""
+        account = self.bed.account
+        return {
+            **self.found.stations.counts,
+            "cells": int(self.found.target.active.sum()),
+            "scores": self.found.scores(),
+            "share_beyond_samples": self.beyond_share,
+            "share_of_mass_below_samples": account.share_below_samples,
+            "tonnes": account.tonnes,
+            "rim_tonnes": account.rim_tonnes,
+            "least_fraction_tonnes": account.least_fraction_tonnes,
+            "not_given": list(account.not_given),
+            "second_opinion": None if self.opinion is None else self.opinion.to_dict(),
+            "answer": self.answer(),
+            "seconds": {name: round(value, 3) for name, value in self.clock.seconds.items()},
+            "files": [p.name for p in self.files],
+        }
+
+    def summary_lines(self) -> list[str]:
+        """Lines for a person, at most a dozen."""
+        found, account = self.found, self.bed.account
+        total = sum(account.tonnes.values())
+        mud = [n for n, c in zip(self.bed.classes.names, self.bed.classes.part, strict=True) if c == 0]
+        rim = sum(-account.rim_tonnes[n] for n in mud)
+        bed = f"  bed         {total / 1e6:,.1f} Mt dry in {len(account.tonnes)} classes and {len(self.bed.erodible_thickness)} layers"
+        if account.rim_cells:
+            bed += f"; the rim ({account.rim_cells:,} cells) took out {rim / 1e6:,.2f} Mt of mud"
+        lines = [found.recipe.title, *rows_lines(found.stations), *structure_lines(found), *error_lines(found)]
+        lines.append(f"  support     {100 * self.beyond_share:.1f} % of the water area is further than {found.reach_m / 1000:.1f} km from any sample")
+        lines.append(bed)
+        if account.not_given:
+            lines.append(f"  not given   {', '.join(account.not_given)}")
+        return [*lines, *written_line(found.recipe, self.files), self.answer()]
+
+    def __repr__(self) -> str:
+        return "\n".join(self.summary_lines())
+
+
+def rows_lines(stations: Stations) -> list[str]:
+    """Say what became of the rows."""
+    c = stations.counts
+    return [
+        f"  rows        {c['rows_read']} read: {c['rows_used']} used, {c['rows_merged']} merged, {c['rows_evidence']} hard ground, "
+        f"{c['rows_set_aside']} set aside, {c['rows_not_samples']} not samples → {c['stations']} stations"
+    ]
+
+
+def structure_lines(found: Validated) -> list[str]:
+    """Say the fitted structure of each coordinate."""
+    lines = []
+    for name, covariance in zip(found.mapper.logratio.coordinate_names, found.mapper.structure, strict=True):
+        head = "structure" if not lines else ""
+        if not covariance.structures:
+            lines.append(f"  {head:<11} {name}: no spatial structure, variance {covariance.sill:.2f}")
+            continue
+        model = " + ".join(s.model + (f" {s.smoothness:g}" if s.smoothness else "") for s in covariance.structures)
+        lines.append(
+            f"  {head:<11} {name}: {model}, range {covariance.range_m / 1000:.1f} km, sill "
+            f"{sum(s.sill for s in covariance.structures):.2f}, small-scale {covariance.small_scale:.2f}"
+        )
+    return lines
+
+
+def error_lines(found: Validated) -> list[str]:
+    """Say the held-out error of each method."""
+    lines = []
+    parts = found.recipe.composition.parts
+    for method in found.validation.methods:
+        head = "error" if not lines else ""
+        scores = ", ".join(f"{part} {method.score(part, 'rmse'):.3f}" for part in parts)
+        lines.append(f"  {head:<11} held-out RMSE, {method.method.replace('_', ' ')}: {scores}")
+    return lines
+
+
+def written_line(recipe: Recipe, files: tuple[Path, ...]) -> list[str]:
+    """Name the files that were written."""
+    if not files:
+        return []
+    names: dict[str, int] = {}
+    for path in files:
+        relative = path.relative_to(recipe.output)
+        key = relative.name if len(relative.parts) == 1 else f"{relative.parts[0]}/"
+        names[key] = names.get(key, 0) + 1
+    listed = ", ".join(name + (f" ({count} files)" if count > 1 else "") for name, count in names.items())
+    return [f"  wrote       {recipe.output.name}/: {listed}"]
