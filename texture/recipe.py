@@ -37,7 +37,7 @@ Positive = Annotated[float, Field(gt=0.0)]
 
 COLUMN_ROLES = (
     "id", "survey", "date", "latitude", "longitude", "easting", "northing", "position", "depth",
-    "sample_top", "sample_bottom", "mud", "sand", "gravel", "silt", "clay", "remarks",
+    "sample_top", "sample_bottom", "mud", "sand", "gravel", "silt", "clay", "description", "remarks",
 )  # fmt: skip
 
 
@@ -56,6 +56,9 @@ class Samples(Settings):
     crs: str | None = Field(None, description="EPSG code or WKT of the positions; longitude and latitude if absent")
     basis: Literal["whole", "below_2mm"] = Field(
         "whole", description="whether the laboratory saw the whole sample or only what passed 2 mm"
+    )
+    method: Literal["sieve", "laser", "pipette"] = Field(
+        "sieve", description="how the fractions were measured; becomes the kind of the stations"
     )
     blank_means: Literal["not_measured", "zero"] = Field("not_measured", description="what an empty fraction cell says")
     unit: Literal["auto", "fraction", "percent"] = Field(

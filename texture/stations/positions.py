@@ -1,0 +1,443 @@
+"""Where a sample was taken: degrees in any notation, or metres in a stated system, to WGS 84 degrees.
+
+Hemisphere letters: N, S, E, W and the words they stand for. A lone `O` is refused, since it is west in
+Spanish, French and Italian but east in German and Dutch.
+"""
+
+from __future__ import annotations
+
+import re
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+import numpy.typing as npt
+
+from texture.errors import RecipeError
+from texture.stations.cells import read_numbers, usual_decimals
+from texture.stations.files import Cell, is_blank
+from texture.stations.where import Where, shown
+
+__all__ = ["Positions", "from_metres", "is_projected", "parse_angle", "parse_pair", "read_degrees", "split_pairs"]
+
+FloatArray = npt.NDArray[np.float64]
+METRES_PER_DEGREE = 111_195.0  # along a great circle of the mean earth radius; accuracy needs no more
+
+_SECONDS_MARK = re.compile(r"''|″|”|“|\"|˝")
+_MINUTES_MARK = re.compile(r"′|’|‘|´|`|ʹ|'")
+_DEGREE_MARK = re.compile(r"º|˚|∘|°|\bdeg(?:rees?)?\b")
+_LETTER = re.compile(
+    r"\b(north|south|east|west|norte|sur|este|oeste|nord|sud|est|ouest|ost|sued|süd|oost|zuid|noord)\b|([nsewo])", re.I
+)
+_WORDS = {
+    "north": "N", "norte": "N", "nord": "N", "noord": "N", "south": "S", "sur": "S", "sud": "S", "sued": "S", "süd": "S", "zuid": "S",
+    "east": "E", "este": "E", "est": "E", "ost": "E", "oost": "E", "west": "W", "oeste": "W", "ouest": "W",
+}  # fmt: skip
+_FIELD = re.compile(r"\d+(?:[.,]\d+)?|[.,]\d+")
+_ISO_PAIR = re.compile(r"([+-]\d{2,6}(?:[.,]\d+)?)([+-]\d{2,7}(?:[.,]\d+)?)(?:[+-]\d+(?:[.,]\d+)?)?(?:CRS\S*)?/?")
+
+
+@dataclass(frozen=True)
+class Positions:
+    """Longitude and latitude of WGS 84 and what the digits given are worth.
+
+    Parameters
+    ----------
+    longitude, latitude : float array, shape (n,), degrees
+        NaN where there is no position.
+    accuracy_m : float array, shape (n,), metres
+        Half of the last digit's step, the larger of the two directions.
+    problem : object array of str, shape (n,)
+        Why there is no position; empty where there is one.
+    notes : tuple of str
+    """
+
+    longitude: FloatArray
+    latitude: FloatArray
+    accuracy_m: FloatArray
+    problem: npt.NDArray[np.object_]
+    notes: tuple[str, ...] = ()
+
+
+def parse_angle(text: str, axis: str) -> tuple[float, float]:
+    """Read one latitude or longitude; return degrees and half the step of its last digit, in degrees.
+
+    Understood: decimal degrees, degrees and minutes, degrees, minutes and seconds, with or without marks,
+    a sign or a hemisphere letter, and the packed ISO 6709 forms (±DDMM.m, ±DDMMSS.s, or with a letter).
+
+    Parameters
+    ----------
+    text : str
+    axis : {"latitude", "longitude"}
+
+    Raises
+    ------
+    ValueError
+        With the reason, in words for the row's entry in the table of rows set aside.
+
+    Examples
+    --------
+    >>> round(parse_angle("52°30'15.6\\" N", "latitude")[0], 6), round(parse_angle("0 00 36 W", "longitude")[0], 6)
+    (52.504333, -0.01)
+    """
+    clean = text.strip().replace("−", "-").replace("–", "-").replace("\xa0", " ")
+    clean = _DEGREE_MARK.sub("°", clean)
+    letters: list[str] = []
+
+    def note(match: re.Match[str]) -> str:
+        letters.append(_WORDS.get(match[0].casefold(), match[0].upper()))
+        return " "
+
+    body = _LETTER.sub(note, clean).strip()
+    if "O" in letters:
+        raise ValueError(f'{shown(text)}: "O" is west in some languages and east in others')
+    wanted = "NS" if axis == "latitude" else "EW"
+    if len(letters) > 1 or (letters and letters[0] not in wanted):
+        raise ValueError(f"{shown(text)} is no {axis}")
+    signed = body[:1] in "+-" and body != ""
+    negative = body.startswith("-")
+    body = body.lstrip("+-").strip()
+    if negative and letters and letters[0] in "NE":
+        raise ValueError(f"{shown(text)}: a minus sign contradicts the letter {letters[0]}")
+    body = _MINUTES_MARK.sub("'", _SECONDS_MARK.sub('"', body))
+    fields = _FIELD.findall(body)
+    if not fields or re.sub(r"[\d.,°'\":\s\-/]", "", body):
+        raise ValueError(f"{shown(text)} is no {axis}")
+    if len(fields) == 1 and (signed or letters):
+        fields = _unpack(fields[0], 2 if axis == "latitude" else 3)
+    if len(fields) > 3:
+        raise ValueError(f"{shown(text)} is no {axis}")
+    degrees, half = _add_up(fields, text)
+    if degrees > (90.0 if axis == "latitude" else 360.0):
+        raise ValueError(f"{shown(text)} is no {axis}: more than {90 if axis == 'latitude' else 360} degrees")
+    if negative or (letters and letters[0] in "SW"):
+        degrees = -degrees
+    return degrees, half
+
+
+def parse_pair(text: str) -> tuple[str, str]:
+    """Split one text that holds latitude and longitude into the two.
+
+    Two plain numbers are latitude first, the order in which positions are written.
+
+    >>> parse_pair("+40.20361-75.00417/"), parse_pair("54°12.3'N, 003°24.5'W"), parse_pair("54.2 -3.4")
+    (('+40.20361', '-75.00417'), ("54°12.3'N", "003°24.5'W"), ('54.2', '-3.4'))
+    """
+    clean = text.strip().strip("()[]").strip().replace("−", "-")
+    if match := _ISO_PAIR.fullmatch(clean.replace(" ", "")):
+        return match[1], match[2]
+    if match := re.fullmatch(r"(.*?[NSns])[\s,;/]*([\d+-].*?[EWew])", clean):
+        return match[1].strip(), match[2].strip()
+    if match := re.fullmatch(r"([NSns].*?)[\s,;/]*([EWew].*)", clean):
+        return match[1].strip(), match[2].strip()
+    if match := re.fullmatch(r"([\d+-].*?[EWew])[\s,;/]*([\d+-].*?[NSns])", clean):
+        return match[2].strip(), match[1].strip()
+    for separator in (";", ", ", "/", ","):
+        parts = [p.strip() for p in clean.split(separator)]
+        if len(parts) == 2 and all(_FIELD.search(p) for p in parts):
+            return parts[0], parts[1]
+    parts = clean.split()
+    if len(parts) == 2:
+        return parts[0], parts[1]
+    raise ValueError(f"{shown(text)} is no position")
+
+
+def split_pairs(cells: Sequence[Cell]) -> tuple[list[Cell], list[Cell]]:
+    """Split a column of combined positions; a cell that cannot be split goes to both halves as it is."""
+    latitude: list[Cell] = []
+    longitude: list[Cell] = []
+    for cell in cells:
+        try:
+            pair: tuple[Cell, Cell] = parse_pair(cell) if isinstance(cell, str) and cell.strip() else (cell, cell)
+        except ValueError:
+            pair = (cell, cell)
+        latitude.append(pair[0])
+        longitude.append(pair[1])
+    return latitude, longitude
+
+
+def read_degrees(
+    longitude: Sequence[Cell],
+    latitude: Sequence[Cell],
+    where: tuple[Where, Where],
+    rows: Sequence[int],
+    crs: str | None = None,
+) -> Positions:
+    """Read columns of longitude and latitude in degrees.
+
+    Parameters
+    ----------
+    longitude, latitude : sequence of cells
+    where : (Where, Where)
+        Places of the two columns.
+    rows : sequence of int
+    crs : str, optional
+        Geographic system of the degrees; WGS 84 if absent.
+
+    Raises
+    ------
+    SampleError
+        If most values are far beyond degrees: metres given as degrees.
+    RecipeError
+        If `crs` is unknown or in metres.
+    """
+    lon, lon_half, lon_problem = _angles(longitude, "longitude", where[0], rows)
+    lat, lat_half, lat_problem = _angles(latitude, "latitude", where[1], rows)
+    accuracy = _accuracy_m(lon_half, lat_half, lat)
+    problem = np.where(lat_problem != "", lat_problem, lon_problem)
+    notes: tuple[str, ...] = ()
+    if crs is not None:
+        system = _system(crs)
+        if system.is_projected:
+            raise RecipeError(
+                f'{where[0].text()}: the recipe says crs = "{crs}", which is in metres, but the column holds degrees; '
+                "take crs out, or name easting and northing in columns"
+            )
+        lon, lat, notes = _transform(lon, lat, system, where[0].file)
+    lon = np.where(lon > 180.0, lon - 360.0, lon)
+    lost = np.isnan(lon) | np.isnan(lat)
+    problem = np.where(lost & (problem == ""), "no position", problem)
+    zero = ~lost & (lon == 0.0) & (lat == 0.0)
+    problem = np.where(zero, "position 0, 0, which stands for none", problem)
+    lost |= zero
+    return _positions(lon, lat, accuracy, problem, lost, notes)
+
+
+def from_metres(
+    easting: Sequence[Cell],
+    northing: Sequence[Cell],
+    where: tuple[Where, Where],
+    rows: Sequence[int],
+    crs: str | None,
+) -> Positions:
+    """Read columns of easting and northing in the system `crs` and turn them to degrees.
+
+    Raises
+    ------
+    SampleError
+        If no system is given, if the values are degrees, or if most positions lie far outside the area for which
+        the system is meant (wrong zone, or easting and northing swapped).
+    RecipeError
+        If `crs` is unknown.
+    """
+    x, y = (
+        read_numbers(cells, place, rows, thousands=True)
+        for cells, place in zip((easting, northing), where, strict=True)
+    )
+    known = np.isfinite(x.value) & np.isfinite(y.value)
+    in_degrees = known & (np.abs(x.value) <= 360.0) & (np.abs(y.value) <= 90.0)
+    if known.any() and in_degrees.sum() > known.sum() / 2 and (crs is None or _system(crs).is_projected):
+        i = int(np.argmax(in_degrees))
+        raise where[0].error(
+            f'{shown(x.value[i])} (and {shown(y.value[i])} in "{where[1].column}")',
+            "metres",
+            "these look like degrees: name them longitude and latitude in columns"
+            + (f' and take crs = "{crs}" out' if crs else ""),
+            row=rows[i],
+        )
+    if crs is None:
+        raise where[0].error(
+            "easting and northing without a coordinate system",
+            "one",
+            'add crs = "EPSG:…" to this file\'s samples block',
+        )
+    system = _system(crs)
+    lon, lat, notes = _transform(
+        np.where(known, x.value, np.nan), np.where(known, y.value, np.nan), system, where[0].file
+    )
+    _check_area(lon, lat, known, system, crs, where, x.value, y.value, rows)
+    unit_m = system.axis_info[0].unit_conversion_factor or 1.0
+    # Eastings typed to full hundreds carry no digits after the point; their common step tells.
+    accuracy = np.maximum(x.half_width, y.half_width) * unit_m
+    accuracy = np.where(
+        known, np.maximum(accuracy, 0.5 * unit_m * min(_step(x.value[known]), _step(y.value[known]))), np.nan
+    )
+    lost = np.isnan(lon) | np.isnan(lat)
+    blank = np.array([is_blank(a) and is_blank(b) for a, b in zip(easting, northing, strict=True)], dtype=bool)
+    problem = np.where(lost, np.where(blank, "no position", "easting or northing cannot be read"), "").astype(object)
+    return _positions(lon, lat, accuracy, problem, lost, notes)
+
+
+def is_projected(crs: str) -> bool:
+    """Whether a coordinate system is one of metres (or feet) rather than degrees; RecipeError if it is unknown."""
+    return bool(_system(crs).is_projected)
+
+
+def _positions(
+    lon: FloatArray,
+    lat: FloatArray,
+    accuracy: FloatArray,
+    problem: npt.NDArray[np.object_],
+    lost: npt.NDArray[np.bool_],
+    notes: tuple[str, ...],
+) -> Positions:
+    nan = np.nan
+    return Positions(
+        np.where(lost, nan, lon),
+        np.where(lost, nan, lat),
+        np.where(lost, nan, accuracy),
+        np.where(lost, problem, "").astype(object),
+        notes,
+    )
+
+
+def _angles(
+    cells: Sequence[Cell], axis: str, where: Where, rows: Sequence[int]
+) -> tuple[FloatArray, FloatArray, npt.NDArray[np.object_]]:
+    """Degrees, half steps in degrees and problems of one column."""
+    n = len(cells)
+    value, half = np.full(n, np.nan), np.full(n, np.nan)
+    problem = np.full(n, "", dtype=object)
+    plain = [i for i, c in enumerate(cells) if _is_plain(c)]
+    if plain:
+        numbers = read_numbers([cells[i] for i in plain], where, [rows[i] for i in plain])
+        value[plain], half[plain] = numbers.value, numbers.half_width
+    limit = 90.0 if axis == "latitude" else 360.0
+    outside = np.abs(value) > limit
+    if outside.sum() > 0.5 * np.isfinite(value).sum():
+        i = int(np.argmax(outside))
+        raise where.error(
+            shown(float(value[i])),
+            f"degrees of {axis}, at most {limit:g}",
+            "these look like metres: name easting and northing in columns and give the file's crs",
+            row=rows[i],
+        )
+    for i in map(int, np.flatnonzero(outside)):
+        problem[i] = f"{axis} {value[i]:.10g} is no {axis}: more than {limit:g} degrees"
+    value[outside] = np.nan
+    fields: dict[int, tuple[int, ...]] = {}
+    done = set(plain)
+    for i, cell in enumerate(cells):
+        if i in done or is_blank(cell):
+            continue
+        if not isinstance(cell, str):
+            problem[i] = f"{axis} {shown(cell)} is no {axis}"
+            continue
+        try:
+            value[i], half[i] = parse_angle(cell, axis)
+        except ValueError as error:
+            problem[i] = str(error)
+        else:
+            fields[i] = _digits(cell)
+    _usual_steps(half, fields)
+    return value, half, problem
+
+
+def _is_plain(cell: Cell) -> bool:
+    if isinstance(cell, bool):
+        return False
+    if isinstance(cell, (int, float)):
+        return True
+    return isinstance(cell, str) and bool(
+        re.fullmatch(r"\s*[+\-−]?\d{1,3}(?:[.,]\d*)?\s*|\s*-?\d{4,}(?:[.,]\d*)?\s*", cell)
+    )
+
+
+def _digits(cell: str) -> tuple[int, int]:
+    """Number of fields and digits after the point of the last one."""
+    found = _FIELD.findall(cell)
+    return len(found), len(re.split(r"[.,]", found[-1])[1]) if re.search(r"[.,]", found[-1]) else 0
+
+
+def _usual_steps(half: FloatArray, fields: dict[int, tuple[int, ...]]) -> None:
+    """Give positions with dropped trailing zeros the step of their column."""
+    for count in {f[0] for f in fields.values()}:
+        members = [i for i, f in fields.items() if f[0] == count]
+        decimals = np.array([fields[i][1] for i in members], dtype=np.int16)
+        usual = usual_decimals(decimals)
+        half[members] *= 10.0 ** -(np.maximum(decimals, usual) - decimals).astype(np.float64)
+
+
+def _unpack(field: str, width: int) -> list[str]:
+    """Split a packed ISO 6709 field: `width` digits of degrees, two of minutes, two of seconds."""
+    whole, point, rest = field.replace(",", ".").partition(".")
+    if len(whole) == width + 2:
+        return [whole[:width], whole[width:] + point + rest]
+    if len(whole) == width + 4:
+        return [whole[:width], whole[width : width + 2], whole[width + 2 :] + point + rest]
+    return [field]
+
+
+def _add_up(fields: list[str], text: str) -> tuple[float, float]:
+    numbers = [float(f.replace(",", ".")) for f in fields]
+    if any(not float(n).is_integer() for n in numbers[:-1]):
+        raise ValueError(f"{shown(text)}: only the last of degrees, minutes and seconds may have decimals")
+    for name, number in zip(("minutes", "seconds"), numbers[1:], strict=False):
+        if number >= 60.0:
+            raise ValueError(f"{shown(text)}: {name} of 60 or more")
+    last = fields[-1].replace(",", ".").partition(".")[2]
+    scale = 60.0 ** (len(fields) - 1)
+    return sum(n / 60.0**k for k, n in enumerate(numbers)), 0.5 * 10.0 ** -len(last) / scale
+
+
+def _accuracy_m(lon_half: FloatArray, lat_half: FloatArray, latitude: FloatArray) -> FloatArray:
+    shrink = np.cos(np.radians(np.clip(latitude, -90.0, 90.0)))
+    return np.maximum(lat_half, lon_half * shrink) * METRES_PER_DEGREE
+
+
+def _step(values: FloatArray) -> float:
+    """Largest power of ten, from 1, that nearly all values are multiples of."""
+    step = 1.0
+    if not len(values):
+        return step
+    while step < 10_000.0 and np.mean(np.abs(values / (10 * step) - np.round(values / (10 * step))) < 1e-9) > 0.95:
+        step *= 10.0
+    return step if step > 1.0 else 0.0
+
+
+def _system(crs: str):  # type: ignore[no-untyped-def]
+    import pyproj
+
+    try:
+        return pyproj.CRS.from_user_input(crs)
+    except pyproj.exceptions.CRSError as error:
+        raise RecipeError(
+            f'samples: crs = "{crs}" is no known coordinate system; give an EPSG code such as "EPSG:32630" or WKT'
+        ) from error
+
+
+def _transform(x: FloatArray, y: FloatArray, system, file: str) -> tuple[FloatArray, FloatArray, tuple[str, ...]]:  # type: ignore[no-untyped-def]
+    import pyproj
+
+    target = pyproj.CRS.from_epsg(4326)
+    if system == target:
+        return x, y, ()
+    transformer = pyproj.Transformer.from_crs(system, target, always_xy=True)
+    lon, lat = transformer.transform(x, y)
+    lon, lat = np.asarray(lon, dtype=np.float64), np.asarray(lat, dtype=np.float64)
+    bad = ~(np.isfinite(lon) & np.isfinite(lat))
+    lon[bad] = lat[bad] = np.nan
+    how = transformer.description or "several operations"
+    note = f"{file}: positions from {system.name} to WGS 84 by {how}"
+    if "ballpark" in how.casefold():
+        note += "; the shift between the two datums is not known here, positions may be off by up to 200 m"
+    return lon, lat, (note,)
+
+
+def _check_area(  # type: ignore[no-untyped-def]
+    lon: FloatArray,
+    lat: FloatArray,
+    known: npt.NDArray[np.bool_],
+    system,
+    crs: str,
+    where: tuple[Where, Where],
+    x: FloatArray,
+    y: FloatArray,
+    rows: Sequence[int],
+) -> None:
+    area, margin = system.area_of_use, 5.0  # degrees; surveys reach into the neighbouring zone, not beyond it
+    if area is None or not known.any():
+        return
+    west, east = area.west - margin, area.east + margin
+    if area.west > area.east:
+        east += 360.0
+    turned = np.where(lon < west, lon + 360.0, lon)
+    inside = (turned >= west) & (turned <= east) & (lat >= area.south - margin) & (lat <= area.north + margin)
+    if (known & ~inside).sum() > known.sum() / 2:
+        i = int(np.argmax(known & ~inside))
+        raise where[0].error(
+            f'{shown(float(x[i]))} (and {shown(float(y[i]))} in "{where[1].column}")',
+            f"a position in {system.name}",
+            f'crs = "{crs}" may be the wrong zone, or easting and northing are swapped',
+            row=rows[i],
+        )

@@ -1,0 +1,168 @@
+"""From the files of a recipe to `Stations`: each file read, its rows judged, repeats merged, every row accounted for."""
+
+from __future__ import annotations
+
+import difflib
+from dataclasses import dataclass, field
+
+import numpy as np
+import numpy.typing as npt
+import pandas as pd
+
+from texture.errors import SampleError
+from texture.recipe import Recipe, Samples
+from texture.stations.account import FATES, LEDGER_COLUMNS, TABLE_COLUMNS, Stations, _with_points
+from texture.stations.audit import AuditLog
+from texture.stations.files import Sheet, is_blank, read_sheets
+from texture.stations.repeats import merge_repeats
+from texture.stations.rows import read_rows
+from texture.stations.tables import Table, find_table, no_table
+
+__all__ = ["FEWEST", "read_samples"]
+
+FEWEST = 5  # stations; below this no spatial structure can be told from chance
+
+
+@dataclass
+class _Intake:
+    """What is gathered while the files of a recipe are read."""
+
+    audit: AuditLog = field(default_factory=AuditLog)
+    frames: list[pd.DataFrame] = field(default_factory=list)
+    aside: list[pd.DataFrame] = field(default_factory=list)
+    rows_read: dict[tuple[str, str], int] = field(default_factory=dict)
+    notes: list[str] = field(default_factory=list)
+
+
+def read_samples(recipe: Recipe) -> Stations:
+    """Read all sample files of a recipe into stations.
+
+    Placing stations on the target (land, snapping) is a later step: `Stations.with_changes`.
+
+    Parameters
+    ----------
+    recipe : Recipe
+        Its `samples`, `intake` and `composition.detection_limit` act here. Paths must be absolute or relative to the
+        current folder.
+
+    Returns
+    -------
+    stations : Stations
+
+    Raises
+    ------
+    SampleError
+        If a file cannot be read or understood, or fewer than five stations with sediment remain.
+    """
+    intake = _Intake()
+    for block in recipe.samples:
+        _read_block(block, recipe, intake)
+    rows = pd.concat(intake.frames, ignore_index=True)
+    stations = _assemble(rows, intake)
+    if stations.counts["stations"] < FEWEST:
+        raise _too_few(stations)
+    return stations
+
+
+def _read_block(block: Samples, recipe: Recipe, intake: _Intake) -> None:
+    sheets = read_sheets(block.file)
+    sheet, table = _choose_sheet(sheets, block)
+    place = (sheet.file, sheet.name)
+    if place in intake.rows_read:
+        raise SampleError(
+            f"{table.where.text()}: given twice in the recipe; take one samples block out or name another sheet"
+        )
+    intake.rows_read[place] = sum(any(not is_blank(c) for c in row) for row in sheet.rows)
+    intake.notes.extend(sheet.notes)
+    others = [s.name for s in sheets if s is not sheet]
+    if others:
+        intake.notes.append(f'{sheet.file}: sheet "{sheet.name}" read; not read: {", ".join(others)}')
+    if sheet.hidden_rows:
+        intake.notes.append(f"{table.where.text()}: {sheet.hidden_rows} hidden rows, read like the others")
+    frame, notes = read_rows(table, block, recipe.intake, recipe.composition.detection_limit, intake.audit)
+    intake.notes.extend(notes)
+    intake.frames.append(frame)
+    if table.aside:
+        numbers, reasons = zip(*table.aside, strict=True)
+        intake.aside.append(
+            pd.DataFrame(
+                {
+                    "file": sheet.file,
+                    "sheet": sheet.name,
+                    "row": numbers,
+                    "id": "",
+                    "fate": "not_samples",
+                    "reason": reasons,
+                    "station": -1,
+                }
+            )
+        )
+
+
+def _choose_sheet(sheets: list[Sheet], block: Samples) -> tuple[Sheet, Table]:
+    if block.sheet is not None:
+        named = [s for s in sheets if s.name == block.sheet]
+        if not named:
+            names = [s.name for s in sheets if s.name]
+            near = difflib.get_close_matches(block.sheet, names, n=1, cutoff=0.4)
+            hint = (
+                f'did you mean "{near[0]}"?'
+                if near
+                else f"sheets there: {', '.join(names) or 'none, it is a text table'}"
+            )
+            raise SampleError(f'{block.file.name}: no sheet "{block.sheet}"; {hint}')
+        sheets = named
+    for sheet in sorted(sheets, key=lambda s: s.hidden):
+        table = find_table(sheet, block.columns, block.header_row)
+        if table is not None:
+            return sheet, table
+    raise no_table(sheets)
+
+
+def _assemble(rows: pd.DataFrame, intake: _Intake) -> Stations:
+    """Merge repeats and write the account of rows."""
+    on_map = rows["fate"].isin(["used", "evidence"]).to_numpy()
+    kept = rows[on_map].reset_index(drop=True)
+    merged, member = merge_repeats(kept)
+    station = np.full(len(rows), -1, dtype=np.int64)
+    station[on_map] = member
+    fate = rows["fate"].to_numpy(dtype=object).copy()
+    reason = rows["reason"].to_numpy(dtype=object).copy()
+    lead = _leaders(kept, merged, member)
+    followers = np.flatnonzero(on_map)[~lead]
+    fate[followers] = "merged"
+    for i in followers:
+        head = merged.iloc[station[i]] if len(followers) < 1000 else None
+        reason[i] = f"repeat of row {head['row']} of {head['file']}" if head is not None else "repeat at the same place"
+    ledger = rows[["file", "sheet", "row", "id"]].assign(fate=fate, reason=reason, station=station)
+    ledger = pd.concat([ledger[list(LEDGER_COLUMNS)], *intake.aside], ignore_index=True)
+    ledger = _sorted_ledger(ledger, intake)
+    table = _with_points(merged[list(TABLE_COLUMNS)])
+    return Stations(table, intake.audit.table(), ledger, intake.rows_read, tuple(intake.notes))
+
+
+def _leaders(kept: pd.DataFrame, merged: pd.DataFrame, member: npt.NDArray[np.int64]) -> npt.NDArray[np.bool_]:
+    """Whether a row is the one that its station carries in file, sheet and row."""
+    same = np.ones(len(kept), dtype=bool)
+    for column in ("file", "sheet", "row"):
+        same &= kept[column].to_numpy() == merged[column].to_numpy()[member]
+    return same
+
+
+def _sorted_ledger(ledger: pd.DataFrame, intake: _Intake) -> pd.DataFrame:
+    order = {place: i for i, place in enumerate(intake.rows_read)}
+    place = [order[p] for p in zip(ledger["file"], ledger["sheet"], strict=True)]
+    ledger = ledger.assign(_place=place).sort_values(["_place", "row"], kind="stable", ignore_index=True)
+    ledger["fate"] = pd.Categorical(ledger["fate"], categories=list(FATES)).astype(object)
+    return ledger.drop(columns="_place")
+
+
+def _too_few(stations: Stations) -> SampleError:
+    counts = stations.counts
+    reasons = stations.set_aside["reason"].value_counts()
+    most = f"; most often because: {reasons.index[0]} ({reasons.iloc[0]} rows)" if len(reasons) else ""
+    files = ", ".join(dict.fromkeys(file for file, _ in stations.rows_read))
+    return SampleError(
+        f"{files}: {counts['stations']} usable stations, expected at least {FEWEST}; of {counts['rows_read']} rows read "
+        f"{counts['rows_set_aside']} were set aside{most}"
+    )

@@ -1,0 +1,72 @@
+"""Write stations.csv, stations.gpkg and audit.csv so that they are safe to open in a spreadsheet program."""
+
+from __future__ import annotations
+
+from pathlib import Path
+from typing import TYPE_CHECKING
+
+from texture.errors import OutputError
+from texture.stations.account import Stations
+
+if TYPE_CHECKING:
+    import pandas as pd
+
+__all__ = ["safe_cell", "write_tables"]
+
+_STARTS_A_FORMULA = ("=", "+", "-", "@", "\t", "\r", "\n", "|", "%")
+
+
+def safe_cell(value: object) -> object:
+    """Put an apostrophe before a text that a spreadsheet program would take for a formula.
+
+    Numbers, negative ones included, stay as they are.
+
+    >>> safe_cell("=1+1"), safe_cell("-"), safe_cell("-3.25"), safe_cell("mud"), safe_cell(-1.5)
+    ("'=1+1", "'-", '-3.25', 'mud', -1.5)
+    """
+    if not isinstance(value, str) or not value.lstrip(" ").startswith(_STARTS_A_FORMULA):
+        return value
+    if value[0] in "+-" and "_" not in value:
+        try:
+            float(value)
+        except ValueError:
+            return "'" + value
+        return value
+    return "'" + value
+
+
+def write_tables(stations: Stations, folder: str | Path) -> list[Path]:
+    """Write `stations.csv`, `stations.gpkg` and `audit.csv` to a folder that exists.
+
+    Numbers are written so that reading them back gives the same float64. Unknown parts are blank. Texts that start a
+    formula are led by an apostrophe in all three files.
+
+    Returns
+    -------
+    paths : list of Path
+
+    Raises
+    ------
+    OutputError
+        If a file cannot be written.
+    """
+    import pyogrio
+
+    folder = Path(folder)
+    paths = [folder / "stations.csv", folder / "stations.gpkg", folder / "audit.csv"]
+    table = _safe(stations.table)
+    try:
+        table.drop(columns="geometry").to_csv(paths[0], index=False, encoding="utf-8", lineterminator="\n")
+        paths[1].unlink(missing_ok=True)
+        pyogrio.write_dataframe(table, paths[1], layer="stations", driver="GPKG")
+        _safe(stations.audit).to_csv(paths[2], index=False, encoding="utf-8", lineterminator="\n")
+    except (OSError, RuntimeError) as error:
+        raise OutputError(f"{folder}: the station tables cannot be written ({error})") from error
+    return paths
+
+
+def _safe(table: pd.DataFrame) -> pd.DataFrame:
+    from pandas.api.types import is_object_dtype, is_string_dtype
+
+    texts = [c for c in table if c != "geometry" and (is_object_dtype(table[c]) or is_string_dtype(table[c]))]
+    return table.assign(**{str(c): table[c].map(safe_cell) for c in texts})
