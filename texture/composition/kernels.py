@@ -20,6 +20,7 @@ __all__ = [
     "cholesky",
     "logistic",
     "logistic_normal",
+    "logistic_normal_slope",
     "mixture_scales",
     "normal_cdf",
     "normal_pdf",
@@ -107,6 +108,16 @@ def logistic_normal(mean: float, variance: float) -> float:
         s = _SCALE[k]
         total += _WEIGHT[k] * normal_cdf(mean * s / math.sqrt(1.0 + s * s * variance))
     return min(total, 1.0)
+
+
+@njit(cache=True)
+def logistic_normal_slope(mean: float, variance: float) -> float:
+    """Derivative of `logistic_normal` by the mean."""
+    total = 0.0
+    for k in range(_WEIGHT.size):
+        s = _SCALE[k] / math.sqrt(1.0 + _SCALE[k] * _SCALE[k] * variance)
+        total += _WEIGHT[k] * s * normal_pdf(mean * s)
+    return total
 
 
 @njit(cache=True)
