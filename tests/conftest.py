@@ -1,0 +1,45 @@
+"""What all tests share: tools that only some of them need, and how a skip is treated."""
+
+from __future__ import annotations
+
+import os
+import shutil
+from pathlib import Path
+
+import pytest
+
+ROOT = Path(__file__).resolve().parents[1]
+DEMO = ROOT / "demo_samples" / "kestrel_bight"
+NOT_SHIPPED = "not shipped"  # reference data that the project may read but not carry: the one skip allowed in CI
+
+
+@pytest.fixture(scope="session")
+def demo_recipe() -> Path:
+    return DEMO / "recipe.toml"
+
+
+@pytest.fixture
+def need_tool():
+    """Return the path of a command that only some tests need, or skip and name it."""
+
+    def need(*names: str) -> str:
+        for name in names:
+            found = shutil.which(name)
+            if found:
+                return found
+        pytest.skip(f"needs {' or '.join(names)}, which this machine does not have")
+
+    return need
+
+
+def pytest_sessionfinish(session: pytest.Session, exitstatus: int) -> None:
+    """Where TEXTURE_NO_SKIPS is set, a test that was skipped for want of a tool is a failure."""
+    if not os.environ.get("TEXTURE_NO_SKIPS") or exitstatus != 0:
+        return
+    reporter = session.config.pluginmanager.get_plugin("terminalreporter")
+    skipped = reporter.stats.get("skipped", []) if reporter else []
+    wanting = [r for r in skipped if NOT_SHIPPED not in str(r.longrepr)]
+    if wanting:
+        session.exitstatus = pytest.ExitCode.TESTS_FAILED
+        for report in wanting:
+            reporter.write_line(f"skipped where no skip is allowed: {report.nodeid}", red=True)
