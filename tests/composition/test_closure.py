@@ -79,7 +79,7 @@ def test_closure_refuses_what_is_no_composition(parts, message):
 
 
 def test_clr_refuses_a_zero():
-    with pytest.raises(CompositionError, match="found zero .*replace zeros first"):
+    with pytest.raises(CompositionError, match=r"found zero .*replace zeros first"):
         clr([0.0, 1.0])
 
 

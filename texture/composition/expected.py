@@ -156,8 +156,9 @@ def _expected_tree(logratio: "LogRatio", mean: Array, spread: Array, correlated:
 
 def _expected_shares(logratio: "LogRatio", mean: Array, spread: Array, correlated: bool) -> Array:
     fractions = np.empty((len(mean), logratio.n_parts))
+    shares = np.clip(mean, 0.0, 1.0)
     for part, path in enumerate(logratio.partition.paths):
-        factors = [mean[:, i] if top else 1.0 - mean[:, i] for i, top in path]
+        factors = [shares[:, i] if top else 1.0 - shares[:, i] for i, top in path]
         value = np.prod(factors, axis=0)
         if correlated:
             # E[product] to second order; the sum over parts stays 1.

@@ -89,9 +89,9 @@ def quantiles(
     >>> from texture.composition import LogRatio
     >>> lr = LogRatio(["mud", "sand", "gravel"])
     >>> lr.quantiles([[0.0, -2.0]], [[1.0, 1.0]], [0.05, 0.5, 0.95]).round(3)[:, 0]
-    array([[0.162, 0.418, 0.014],
-           [0.5  , 0.429, 0.059],
-           [0.838, 0.715, 0.201]])
+    array([[0.162, 0.129, 0.009],
+           [0.5  , 0.414, 0.054],
+           [0.838, 0.743, 0.23 ]])
     """
     m, v, correlated = as_moments(logratio, mean, variance)
     q = np.atleast_1d(np.asarray(levels, dtype=np.float64))
