@@ -63,6 +63,18 @@ class Mapper:
         mean, variance = self.predictor.predict(points)
         return mean, variance
 
+    def predict_with_rung(self, points: Floats) -> tuple[Floats, Floats, NDArray[np.int8]]:
+        """Mean, variance, and per point how far the neighbourhood had to look: 0 the usual one, above it wider."""
+        if not self.has_variance:
+            mean, variance = self.predict(points)
+            return mean, variance, np.zeros(len(points), dtype=np.int8)
+        mean, variance, rung = self.predictor.predict_with_support(points)
+        return mean, variance, rung.max(axis=1)
+
+    def sample_variance(self, variance: Floats, noise: Floats) -> Floats:
+        """Variance of a new sample: of the bed, of its analysis (per row) and of its survey's offset."""
+        return np.asarray(variance + noise + np.array([c.noise + c.survey for c in self.structure]))
+
     def covariance(self, variance: Floats) -> Floats:
         """Covariance of the coordinates from their variances, shape (n, d, d), by the residual correlation."""
         sd = np.sqrt(variance)
@@ -77,8 +89,23 @@ class Mapper:
     def interval(self, mean: Floats, variance: Floats, levels: tuple[float, float] = (0.05, 0.95)) -> Floats:
         """Quantiles of each part, shape (2, n, parts); NaN where the method has no variance."""
         if not self.has_variance:
-            return np.full((2, mean.shape[0], len(self.logratio.parts)), np.nan)
+            return np.full((2, mean.shape[0], self.logratio.n_parts), np.nan)
         return self.logratio.quantiles(mean, self.covariance(variance), levels)
+
+    def cell_quantiles(self, mean: Floats, variance: Floats, levels: tuple[float, ...]) -> Floats:
+        """Quantiles of the mean of a cell, shape (q, n, parts): small-scale variation averages out inside it."""
+        if not self.has_variance:
+            return np.full((len(levels), mean.shape[0], self.logratio.n_parts), np.nan)
+        within = np.minimum(variance, self.small_scale)
+        return self.logratio.quantiles(mean, self.covariance(variance - within), levels, within=within)
+
+    def likely_class(self, mean: Floats, variance: Floats) -> tuple[NDArray[np.int8], Floats]:
+        """Most probable texture class of the bed at points, numbered from 1, and its probability."""
+        from texture.composition import class_odds
+
+        spread = self.covariance(variance) if self.has_variance else np.zeros_like(mean)
+        odds = class_odds(self.logratio, mean, spread, "folk")
+        return odds.most_probable, odds.probability
 
 
 def make_mapper(

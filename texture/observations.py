@@ -73,7 +73,7 @@ def observe(stations: Stations, logratio: LogRatio, plane: Plane) -> Observation
     parts = table[list(logratio.parts)].to_numpy(dtype=np.float64)
     rows = np.flatnonzero(np.isfinite(parts).any(axis=1) & (table["kind"] != "hard_ground").to_numpy())
     chosen = table.iloc[rows]
-    step = chosen["resolution"].fillna(0.0).to_numpy(dtype=np.float64)
+    step = 2.0 * chosen["resolution"].fillna(0.0).to_numpy(dtype=np.float64)  # the table holds half a step
     coordinates, noise = logratio.forward_with_noise(parts[rows], step)
     informs = np.isfinite(coordinates).any(axis=1)
     if int(informs.sum()) < LEAST_STATIONS:

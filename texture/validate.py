@@ -87,8 +87,8 @@ def validate_methods(
             inside = refit(train) if name == "kriging" else structure
             mapper = make_mapper(name, observations.take(train), inside, recipe.method, logratio)
             mean, variance = mapper.predict(observations.points[test])
-            # A held-out sample is the bed at its point plus what its analysis adds.
-            return mapper.expected(mean, variance), mapper.interval(mean, variance + observations.noise[test])
+            sample = mapper.sample_variance(variance, observations.noise[test])
+            return mapper.expected(mean, variance), mapper.interval(mean, sample)
 
         return predict
 

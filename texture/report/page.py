@@ -1,0 +1,208 @@
+"""The one offline page: figures, tables and text of a result in a self-contained HTML file."""
+
+from __future__ import annotations
+
+from importlib import resources
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from texture.report.charts import draw_methods, draw_scatter, draw_variograms
+from texture.report.encode import Picture, picture
+from texture.report.maps import Layer, draw_maps
+from texture.report.tables import page_tables
+
+if TYPE_CHECKING:
+    from texture.result import Result
+
+__all__ = ["CAUTIONS", "result_picture", "write_page"]
+
+CAUTIONS = (
+    "The bed shown is smoother than any real bed: it is an expected mean of each cell, not a possible bed.",
+    "Grabs under-sample rock and gravel and lose fines on the way up; gravel shares from small grabs are rough.",
+    "Settling, erosion and strength of mud are not in grain size: the numbers that stand for them were given, not mapped.",
+    "The rim along the open boundary is numerical, not observed.",
+    "Below the depth of the samples the bed is a guess; its share of the mass is stated above.",
+    "Not for navigation, foundations or permits. Local data and licensed practice come first.",
+)
+
+
+def write_page(result: Result, settings: str, versions: str) -> str:
+    """Return the page as HTML text; every value that came from outside is escaped.
+
+    Parameters
+    ----------
+    result : Result
+    settings : str
+        The resolved recipe, shown as it is.
+    versions : str
+        One line of versions and seconds.
+    """
+    import jinja2
+
+    template = resources.files("texture.report").joinpath("template.html").read_text(encoding="utf-8")
+    environment = jinja2.Environment(autoescape=True, undefined=jinja2.StrictUndefined, trim_blocks=True)
+    found = result.found
+    return environment.from_string(template).render(
+        title=found.recipe.title,
+        method_line=_method_line(result),
+        answer=result.answer(),
+        figures=_figures(result),
+        tables=page_tables(result),
+        map_notes=_map_notes(result),
+        folds_line=_folds_line(result),
+        error_notes=_error_notes(result),
+        opinion_line=_opinion_line(result),
+        bed_notes=_bed_notes(result),
+        settings=settings,
+        versions=versions,
+        cautions=CAUTIONS,
+    )
+
+
+def result_picture(result: Result) -> Picture:
+    """Draw the picture of the map alone, for a README or a slide."""
+    return _parts_picture(result)
+
+
+def _figures(result: Result) -> dict[str, Picture]:
+    found, parts = result.found, result.found.recipe.composition.parts
+    figures = {
+        "parts": _parts_picture(result),
+        "trust": _trust_picture(result),
+        "bed": _bed_picture(result),
+        "scatter": picture(
+            draw_scatter(parts, found.observations.fractions, found.validation.chosen),
+            "Each ring is a station, measured against what was predicted while it was held out.",
+            "Scatter of measured against held-out fractions, one panel for each part.",
+        ),
+        "methods": picture(
+            draw_methods(parts, found.validation.methods, found.recipe.method.name),
+            "Held-out root mean square error of the methods.",
+            "Bars of held-out error for each method and part.",
+        ),
+        "variograms": picture(
+            draw_variograms(found.mapper.structure, found.mapper.logratio.coordinate_names),
+            "Variogram of each coordinate: points from the samples, lines as fitted.",
+            "Empirical variogram points and fitted curves for each log-ratio coordinate.",
+        ),
+    }
+    return figures
+
+
+def _parts_picture(result: Result) -> Picture:
+    found, estimate = result.found, result.estimate
+    table = found.stations.table
+    place = table["longitude"].to_numpy(), table["latitude"].to_numpy()
+    layers = [Layer(f"{part} fraction", estimate.fractions[:, i]) for i, part in enumerate(found.recipe.composition.parts)]
+    names = _class_names(result)
+    layers.append(Layer("most probable texture class", np.where(estimate.texture_class > 0, estimate.texture_class - 1.0, np.nan), names=names))
+    return picture(
+        draw_maps(found.target, layers, place),
+        "Expected fractions of dry mass in each water cell, and the most probable texture class (Folk 1954). Rings: stations.",
+        "Four maps: mud, sand and gravel fraction, and texture class, with the stations on them.",
+    )
+
+
+def _trust_picture(result: Result) -> Picture:
+    from texture.bed import EVIDENCE
+
+    found, estimate = result.found, result.estimate
+    layers = []
+    if found.mapper.has_variance:
+        for i, part in enumerate(found.recipe.composition.parts[:1] + found.recipe.composition.parts[2:3]):
+            column = found.recipe.composition.parts.index(part)
+            width = estimate.quantiles[2, :, column] - estimate.quantiles[0, :, column]
+            layers.append(Layer(f"width of the 90 % interval, {part}", width, limits=(0.0, max(0.2, float(np.nanmax(width))))))
+    evidence = np.where(found.target.active, estimate.evidence.astype(float), np.nan)
+    layers.append(Layer("evidence", evidence, names=tuple(EVIDENCE[k] for k in sorted(EVIDENCE))))
+    return picture(
+        draw_maps(found.target, layers, columns=len(layers)),
+        "How uncertain the mean of each cell is, and which cells lie beyond what the samples support.",
+        "Maps of interval width and of evidence.",
+    )
+
+
+def _bed_picture(result: Result) -> Picture:
+    found, bed = result.found, result.bed
+    diameter_um = np.where(found.target.active, bed.mixture_median_diameter[0] * 1e6, np.nan)
+    layers = [
+        Layer("rim weight", np.where(found.target.active, bed.rim_weight, np.nan), label="share of the rim's own bed"),
+        Layer("median diameter of the first layer", np.log10(diameter_um), label="log10 of µm",
+              limits=(float(np.nanmin(np.log10(diameter_um))), float(np.nanmax(np.log10(diameter_um))))),
+    ]  # fmt: skip
+    return picture(
+        draw_maps(found.target, layers),
+        "The bed as the model gets it, with the rim along the open boundary.",
+        "Maps of the rim's weight and of the median diameter.",
+    )
+
+
+def _class_names(result: Result) -> tuple[str, ...]:
+    from texture.composition import class_names
+
+    return class_names("folk")
+
+
+def _method_line(result: Result) -> str:
+    found = result.found
+    wet = int(found.target.active.sum())
+    inside = result.points_per_side**2
+    return (
+        f"{found.target.name}: {found.target.shape[0]} × {found.target.shape[1]} cells, {wet:,} of them water, about "
+        f"{found.cell_side_m:,.0f} m wide. Method: {found.recipe.method.name.replace('_', ' ')} of "
+        f"{len(found.mapper.logratio.coordinate_names)} log-ratio coordinates, {inside} point{'s' * (inside > 1)} a cell."
+    )
+
+
+def _map_notes(result: Result) -> list[str]:
+    found = result.found
+    notes = [
+        f"{100 * result.beyond_share:.1f} % of the water area lies further than {found.reach_m / 1000:.1f} km from every sample, "
+        "further than any held-out station was predicted from; it is flagged as extrapolated."
+    ]
+    notes += [f"{n[0].upper()}{n[1:]}." for n in found.target.notes]
+    notes += ["Outer edge of the grid: " + "; ".join(str(o) for o in found.target.openings) + "."] if found.target.openings else []
+    return notes
+
+
+def _folds_line(result: Result) -> str:
+    folds = result.found.validation.folds
+    line = f"Stations were held out in {folds.count} folds ({folds.kind}), and whatever learns from fractions was fitted anew without them."
+    if np.isfinite(folds.wasserstein):
+        line += (
+            f" Distances from held-out to kept stations differ from those of the map's cells to the stations by {folds.wasserstein:,.0f} m on "
+            f"average (Wasserstein-1; random folds: {folds.wasserstein_random:,.0f} m)."
+        )
+    return line + (f" {folds.note[0].upper()}{folds.note[1:]}." if folds.note else "")
+
+
+def _error_notes(result: Result) -> list[str]:
+    found, notes = result.found, []
+    for part, i in zip(found.recipe.composition.parts, range(9), strict=False):
+        mean = float(np.nanmean(found.observations.fractions[:, i]))
+        error = found.validation.chosen.score(part, "mean_error")
+        if abs(error) > mean / 10.0:
+            notes.append(
+                f"Look at {part}: its mean error {error:+.3f} is more than a tenth of its mean {mean:.3f}; the map has "
+                f"too {'much' if error > 0 else 'little'} of it overall."
+            )
+    return notes
+
+
+def _opinion_line(result: Result) -> str:
+    if result.opinion is None:
+        return "The method has no variance, so no second opinion was sought."
+    return f"Second opinion: {result.opinion}"
+
+
+def _bed_notes(result: Result) -> list[str]:
+    account = result.bed.account
+    notes = [f"{100 * account.share_below_samples:.0f} % of the bed's mass lies below any sample: those layers are what the recipe says, not what was found."]
+    if account.rim_cells:
+        notes.append(f"The rim touches {account.rim_cells:,} cells; it is numerical, not observed.")
+    else:
+        notes.append("No rim was asked for: the open boundary has the estimate itself.")
+    if account.not_given:
+        notes.append(f"Not given, and not to be had from grain size: {', '.join(account.not_given)}. The model needs them.")
+    return notes

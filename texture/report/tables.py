@@ -1,0 +1,168 @@
+"""The page's tables: rows of text from a result, nothing drawn."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+if TYPE_CHECKING:
+    from texture.result import Result
+
+__all__ = ["Table", "page_tables"]
+
+MOST_ROWS = 500  # of the set-aside list on the page; audit.csv holds them all
+
+
+@dataclass(frozen=True)
+class Table:
+    """A table of text: `numeric` lists columns set flush right, `chosen` the row that is the map's own."""
+
+    caption: str
+    head: list[str]
+    rows: list[list[str]]
+    numeric: list[int] = field(default_factory=list)
+    chosen: int = -1
+
+
+def page_tables(result: Result) -> dict[str, Table]:
+    """Make all tables of the page."""
+    return {
+        "methods": _methods(result),
+        "structure": _structure(result),
+        "classes": _classes(result),
+        "inventory": _inventory(result),
+        "rows": _rows(result),
+        "set_aside": _set_aside(result),
+        "audit": _audit(result),
+        "inputs": _inputs(result),
+    }
+
+
+def number(value: float, digits: int = 3) -> str:
+    """Write a number for a person; a dash where there is none."""
+    return f"{value:,.{digits}f}" if np.isfinite(value) else "–"
+
+
+def _methods(result: Result) -> Table:
+    found = result.found
+    parts = found.recipe.composition.parts
+    names = [("rmse", "RMSE"), ("mean_error", "mean error"), ("r_squared", "R²"), ("coverage_90", "90 % cover")]
+    rows = []
+    for method in found.validation.methods:
+        for part in parts:
+            scores = [number(method.score(part, key), 3 if key in ("rmse", "mean_error") else 2) for key, _ in names]
+            rows.append([method.method.replace("_", " "), part, f"{method.score(part, 'n'):.0f}", *scores])
+    return Table(
+        "Held-out scores. RMSE and mean error are fractions of dry mass; mean error is prediction minus measurement. "
+        "90 % cover: share of held-out samples inside their 90 % interval.",
+        ["method", "part", "stations", *[label for _, label in names]],
+        rows,
+        numeric=[2, 3, 4, 5, 6],
+    )
+
+
+def _structure(result: Result) -> Table:
+    mapper = result.found.mapper
+    rows = []
+    for name, c in zip(mapper.logratio.coordinate_names, mapper.structure, strict=True):
+        model = " + ".join(s.model + (f" {s.smoothness:g}" if s.smoothness else "") for s in c.structures) or "none"
+        sill = sum(s.sill for s in c.structures)
+        rows.append(
+            [name, model, number(c.range_m / 1000, 1) if c.structures else "–"]
+            + [number(v, 2) for v in (sill, c.small_scale, c.survey)]
+        )
+    return Table(
+        "Fitted structure of each log-ratio coordinate. Range: where the correlation has fallen to 0.05. Small-scale: "
+        "the bed's own patchiness below the sampling distance. Survey: variance of the offset that samples of one survey share.",
+        ["coordinate", "model", "range, km", "sill", "small-scale", "survey"],
+        rows,
+        numeric=[2, 3, 4, 5],
+    )
+
+
+def _classes(result: Result) -> Table:
+    c = result.bed.classes
+    parts = result.found.recipe.composition.parts
+
+    def sourced(value: float, unit_value: str, source: str) -> str:
+        return f"{unit_value} ({source})" if np.isfinite(value) else "not given"
+
+    rows = [
+        [
+            c.names[i],
+            f"{c.share[i]:g} of {parts[int(c.part[i])]}",
+            f"{c.diameter_m[i] * 1e6:,.0f}",
+            sourced(c.settling_velocity_m_s[i], f"{c.settling_velocity_m_s[i] * 1000:.3g}", c.settling_source[i]),
+            sourced(c.critical_stress_pa[i], f"{c.critical_stress_pa[i]:.3g}", c.stress_source[i]),
+            f"{c.erosion_rate[i]:.3g}" if np.isfinite(c.erosion_rate[i]) else "not given",
+        ]
+        for i in range(len(c.names))
+    ]
+    return Table(
+        "Sediment classes. Computed: Soulsby (1997) settling and Soulsby & Whitehouse (1997) threshold, for single "
+        "grains above 63 µm only.",
+        ["class", "share", "diameter, µm", "settling, mm/s", "critical stress, Pa", "erosion rate"],
+        rows,
+        numeric=[2],
+    )
+
+
+def _inventory(result: Result) -> Table:
+    account = result.bed.account
+    rows = [
+        [
+            name,
+            number(tonnes / 1e6, 3),
+            number(account.rim_tonnes[name] / 1e6, 3),
+            number(-account.least_fraction_tonnes[name] / 1e6, 3),
+        ]
+        for name, tonnes in account.tonnes.items()
+    ]
+    return Table(
+        "Dry mass in water cells, all layers, in million tonnes; what the rim put in (+) or took out (−); what fell "
+        "below the least fraction.",
+        ["class", "mass", "by the rim", "below least fraction"],
+        rows,
+        numeric=[1, 2, 3],
+    )
+
+
+def _rows(result: Result) -> Table:
+    accounts = result.found.stations.accounts
+    fates = [c for c in accounts.columns if c not in ("file", "sheet")]
+    rows = [[str(r["file"]), str(r["sheet"]), *[f"{int(r[f]):,}" for f in fates]] for _, r in accounts.iterrows()]
+    rows.append(["all", "", *[f"{int(accounts[f].sum()):,}" for f in fates]])
+    head = ["file", "sheet", *[f.replace("_", " ") for f in fates]]
+    return Table(
+        "Every filled row of every sheet has one fate; the columns after “rows read” add up to it.",
+        head,
+        rows,
+        numeric=list(range(2, len(head))),
+    )
+
+
+def _set_aside(result: Result) -> Table:
+    table = result.found.stations.set_aside
+    rows = [[str(v) for v in row] for row in table.head(MOST_ROWS).itertuples(index=False)]
+    more = len(table) - len(rows)
+    caption = "Rows set aside, with the reason" + (f"; {more:,} more stand in audit.csv" if more > 0 else "") + "."
+    return Table(caption, ["file", "sheet", "row", "id", "reason"], rows, numeric=[2])
+
+
+def _audit(result: Result) -> Table:
+    audit = result.found.stations.audit
+    counts = audit.groupby(["file", "rule"], sort=True).size() if len(audit) else {}
+    rows = [[file, rule, f"{count:,}"] for (file, rule), count in counts.items()]
+    return Table("Readings that were not plain, and changes, by rule; each one stands in audit.csv.",
+                 ["file", "rule", "cells"], rows, numeric=[2])  # fmt: skip
+
+
+def _inputs(result: Result) -> Table:
+    from texture.output import file_sha256
+
+    recipe = result.found.recipe
+    paths = [s.file for s in recipe.samples] + [p for p in (recipe.target.file, recipe.target.land, recipe.outputs.names) if p]
+    rows = [[p.name, file_sha256(p)[:16]] for p in dict.fromkeys(paths)]
+    return Table("Input files and the first 16 digits of their SHA-256; provenance.json has them in full.", ["file", "SHA-256"], rows)
