@@ -12,10 +12,11 @@ import math
 from typing import Any
 
 import numpy as np
-from llvmlite import ir
-from numba import njit, types
+from llvmlite import ir  # type: ignore[import-untyped]  # ships no annotations
+from numba import types
 from numba.extending import intrinsic
 
+from texture.structure.jit import compiled
 from texture.structure.models import (
     CUBIC,
     EXPONENTIAL,
@@ -53,7 +54,7 @@ def _float_of(typingctx: Any, value: Any) -> Any:
     return types.float64(types.int64), codegen
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@compiled
 def exp_of_negative(x: float) -> float:
     """exp(x) for x <= 0 without a call, so that loops over it become vector code; within 1 ulp or 2.
 
@@ -77,10 +78,10 @@ def exp_of_negative(x: float) -> float:
     p = p * r + 0.5
     p = p * r + 1.0
     p = p * r + 1.0
-    return p * _float_of((_bits_of(shifted) + 1023) << 52)
+    return p * _float_of((_bits_of(shifted) + 1023) << 52)  # type: ignore[call-arg]  # numba adds the typing context
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@compiled
 def _general_matern(x: float, nu: float) -> float:
     """Matérn correlation by the trapezoidal rule on K_nu(x) = int exp(-x cosh t) cosh(nu t) dt.
 
@@ -104,7 +105,7 @@ def _general_matern(x: float, nu: float) -> float:
     return min(1.0, 0.2 * total)
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@compiled
 def add_structures(
     structures: np.ndarray, small_scale: float, distance: np.ndarray, start: int, count: int, out: np.ndarray
 ) -> None:
@@ -146,7 +147,7 @@ def add_structures(
                 out[c] += sill * _general_matern(distance[c] * inverse, nu)
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@compiled
 def correlation(code: int, smoothness: float, x: np.ndarray) -> np.ndarray:
     """Correlation at scaled distances `x` (1-D), for one model code."""
     structures = np.empty((1, 4))
@@ -159,7 +160,7 @@ def correlation(code: int, smoothness: float, x: np.ndarray) -> np.ndarray:
     return out
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@compiled
 def distance_matrix(a: np.ndarray, b: np.ndarray) -> np.ndarray:
     """Distances between rows of a (n, d) and rows of b (m, d), by differences (no cancellation), shape (n, m)."""
     n, m = a.shape[0], b.shape[0]
@@ -178,7 +179,7 @@ def distance_matrix(a: np.ndarray, b: np.ndarray) -> np.ndarray:
     return out
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@compiled
 def covariance_matrix(structures: np.ndarray, small_scale: float, distance: np.ndarray) -> np.ndarray:
     """Covariances for a C-ordered array of distances (n, m)."""
     out = np.empty(distance.shape)

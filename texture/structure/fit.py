@@ -129,7 +129,7 @@ def fit_covariance(
 
 def _one_blas_thread() -> Any:
     """BLAS on one thread: sums in one order, so that a fit is the same on any number of cores."""
-    from threadpoolctl import threadpool_limits
+    from threadpoolctl import threadpool_limits  # type: ignore[import-untyped]  # ships no annotations
 
     return threadpool_limits(limits=1, user_api="blas")
 

@@ -101,18 +101,17 @@ def empirical_variogram(
     >>> v.semivariance
     array([1.875, 1.5  ])
     """
-    points = check_points(points)
-    values = np.asarray(values, dtype=np.float64)
-    known = np.isfinite(values)
-    points, values = points[known], values[known]
+    z = np.asarray(values, dtype=np.float64)
+    known = np.isfinite(z)
+    places, z = check_points(points)[known], z[known]
     labels = None if survey is None else np.asarray(survey)[known]
-    if len(points) < 2:
-        raise StructureError(f"variogram: found {len(points)} stations with a value, expected at least 2")
+    if len(z) < 2:
+        raise StructureError(f"variogram: found {len(z)} stations with a value, expected at least 2")
     if edges_m is None:
-        edges = np.linspace(0.0, float(np.linalg.norm(np.ptp(points, axis=0))) / 3.0, 16)
+        edges = np.linspace(0.0, float(np.linalg.norm(np.ptp(places, axis=0))) / 3.0, 16)
     else:
         edges = np.asarray(edges_m, dtype=np.float64)
-    distance, difference = _pair_differences(points, values, labels, seed)
+    distance, difference = _pair_differences(places, z, labels, seed)
     which = np.searchsorted(edges, distance, side="left") - 1
     inside = (which >= 0) & (which < len(edges) - 1)
     which, distance, difference = which[inside], distance[inside], difference[inside]

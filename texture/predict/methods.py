@@ -1,0 +1,80 @@
+"""The methods by name, and how each is made."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass
+from typing import Any, Protocol
+
+import numpy as np
+from numpy.typing import ArrayLike, NDArray
+
+from texture.errors import RecipeError
+from texture.predict.inverse_distance import InverseDistance
+from texture.predict.kriging import Kriging
+from texture.predict.mean import WholeMean
+from texture.predict.nearest import Nearest
+
+__all__ = ["METHODS", "Method", "Predictor", "make_method"]
+
+
+class Predictor(Protocol):
+    """What every method can do; see `texture.predict.Kriging` for the arguments."""
+
+    def fit(
+        self,
+        points: ArrayLike,
+        values: ArrayLike,
+        noise_variance: ArrayLike | None = None,
+        survey: ArrayLike | None = None,
+        drift: ArrayLike | None = None,
+    ) -> Predictor:
+        """Take in the stations."""
+        ...
+
+    def predict(
+        self, points: ArrayLike, drift: ArrayLike | None = None
+    ) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
+        """Mean and variance (NaN where the method knows none), shape (m, v)."""
+        ...
+
+
+@dataclass(frozen=True)
+class Method:
+    """One method.
+
+    Parameters
+    ----------
+    make : callable
+        Makes an unfitted predictor; the first argument is the covariance, None where it is not needed.
+    needs_covariance : bool
+    has_variance : bool
+    """
+
+    make: Callable[..., Predictor]
+    needs_covariance: bool
+    has_variance: bool
+
+
+METHODS: dict[str, Method] = {
+    "mean": Method(lambda covariance, **settings: WholeMean(**settings), False, False),
+    "nearest": Method(lambda covariance, **settings: Nearest(**settings), False, False),
+    "inverse_distance": Method(lambda covariance, **settings: InverseDistance(**settings), False, False),
+    "kriging": Method(lambda covariance, **settings: Kriging(covariance, **settings), True, True),
+}
+
+
+def make_method(name: str, covariance: Any = None, **settings: Any) -> Predictor:
+    """An unfitted predictor by name.
+
+    Examples
+    --------
+    >>> make_method("inverse_distance", power=3.0).power
+    3.0
+    """
+    if name not in METHODS:
+        raise RecipeError(f"method: found {name!r}, expected one of {', '.join(METHODS)}")
+    method = METHODS[name]
+    if method.needs_covariance and covariance is None:
+        raise RecipeError(f"method {name}: needs a covariance; fit one with Covariance.fit")
+    return method.make(covariance, **settings)

@@ -1,0 +1,205 @@
+"""Compiled k-d tree over stations: building it and finding the nearest stations of a place.
+
+Our own because the kernel asks it from inside compiled loops, where scipy's tree cannot be called.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+
+from texture.structure.jit import compiled
+
+__all__ = ["DEPTH", "build_tree", "nearest"]
+
+# A median split halves the stations, ties aside; 200 levels are never reached by data, and checked.
+DEPTH = 200
+
+
+@compiled
+def _split_value(points: np.ndarray, order: np.ndarray, begin: int, end: int, dim: int) -> float:
+    """Value that cuts the stations of a node nearest to their middle; those below it go left.
+
+    Returns NaN where all are equal.
+    """
+    count = end - begin
+    keys = np.empty(count)
+    for i in range(count):
+        keys[i] = points[order[begin + i], dim]
+    middle: float = np.partition(keys, count // 2)[count // 2]
+    below, above = -np.inf, np.inf  # the neighbours of the middle value, on either side
+    for i in range(count):
+        if keys[i] < middle:
+            below = max(below, keys[i])
+        elif keys[i] > middle:
+            above = min(above, keys[i])
+    if below > -np.inf:
+        value = 0.5 * (below + middle)
+        return value if value > below else middle
+    if above < np.inf:
+        value = 0.5 * (above + middle)
+        return value if value > middle else above
+    return np.nan
+
+
+@compiled
+def partition(points: np.ndarray, order: np.ndarray, begin: int, end: int, dim: int, value: float) -> int:
+    """Move stations below `value` to the front of their node, keeping their order; returns where the rest begins."""
+    rest = np.empty(end - begin, dtype=np.int64)
+    front, held = begin, 0
+    for i in range(begin, end):
+        s = order[i]
+        if points[s, dim] < value:
+            order[front] = s
+            front += 1
+        else:
+            rest[held] = s
+            held += 1
+    for i in range(held):
+        order[front + i] = rest[i]
+    return front
+
+
+@compiled
+def build_tree(points: np.ndarray, leaf: int) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
+    """k-d tree by median splits across the widest extent, at most `leaf` stations in a leaf (more where they coincide).
+
+    Returns
+    -------
+    nodes : int64 array, shape (m, 5)
+        Split dimension (-1 in a leaf), left child, right child, begin and end of its stations in `order`.
+    splits : float64 array, shape (m,)
+    order : int64 array, shape (n,)
+    """
+    n, d = points.shape
+    order = np.arange(n)
+    nodes = np.empty((2 * n + 1, 5), dtype=np.int64)
+    splits = np.zeros(2 * n + 1)
+    nodes[0, 3], nodes[0, 4] = 0, n
+    count, todo = 1, 0
+    while todo < count:
+        begin, end = nodes[todo, 3], nodes[todo, 4]
+        nodes[todo, 0] = -1
+        if end - begin > leaf:
+            widest, dim = 0.0, -1
+            for k in range(d):
+                low, high = np.inf, -np.inf
+                for i in range(begin, end):
+                    x = points[order[i], k]
+                    low, high = min(low, x), max(high, x)
+                if high - low > widest:
+                    widest, dim = high - low, k
+            if dim >= 0:
+                value = _split_value(points, order, begin, end, dim)
+                middle = partition(points, order, begin, end, dim, value)
+                nodes[todo, 0], nodes[todo, 1], nodes[todo, 2] = dim, count, count + 1
+                splits[todo] = value
+                nodes[count, 3], nodes[count, 4] = begin, middle
+                nodes[count + 1, 3], nodes[count + 1, 4] = middle, end
+                count += 2
+        todo += 1
+    return nodes[:count].copy(), splits[:count].copy(), order
+
+
+@compiled
+def _sift_down(heap: np.ndarray, index: np.ndarray, size: int) -> None:
+    """Restore the max-heap after its root was replaced."""
+    at = 0
+    key, which = heap[0], index[0]
+    while True:
+        child = 2 * at + 1
+        if child >= size:
+            break
+        if child + 1 < size and heap[child + 1] > heap[child]:
+            child += 1
+        if heap[child] <= key:
+            break
+        heap[at], index[at] = heap[child], index[child]
+        at = child
+    heap[at], index[at] = key, which
+
+
+@compiled
+def _sift_up(heap: np.ndarray, index: np.ndarray, at: int) -> None:
+    key, which = heap[at], index[at]
+    while at > 0:
+        parent = (at - 1) // 2
+        if heap[parent] >= key:
+            break
+        heap[at], index[at] = heap[parent], index[parent]
+        at = parent
+    heap[at], index[at] = key, which
+
+
+@compiled
+def nearest(
+    points: np.ndarray,
+    nodes: np.ndarray,
+    splits: np.ndarray,
+    order: np.ndarray,
+    place: np.ndarray,
+    k: int,
+    bound2: float,
+    heap: np.ndarray,
+    index: np.ndarray,
+    stack: np.ndarray,
+    offsets: np.ndarray,
+) -> int:
+    """The k stations nearest to `place` and within the squared distance `bound2`; unsorted, the farthest first.
+
+    Parameters
+    ----------
+    heap, index : float64 and int64 arrays, length >= k
+        Filled with squared distances and station numbers.
+    stack : int64 array (DEPTH,); offsets : float64 array (DEPTH, d + 1)
+        Workspace: nodes still to visit and the box distance to each, by dimension and in total.
+
+    Returns
+    -------
+    int
+        Stations found; fewer than k where the bound or the number of stations stops it.
+    """
+    d = points.shape[1]
+    found = 0
+    worst = bound2
+    stack[0] = 0
+    for i in range(d + 1):
+        offsets[0, i] = 0.0
+    depth = 1
+    while depth > 0:
+        depth -= 1
+        if offsets[depth, d] > worst:
+            continue
+        node = stack[depth]
+        while nodes[node, 0] >= 0:
+            dim = nodes[node, 0]
+            step = place[dim] - splits[node]
+            near, far = (nodes[node, 1], nodes[node, 2]) if step < 0.0 else (nodes[node, 2], nodes[node, 1])
+            # The near child keeps this slot's offsets, the far one waits in the slot above it.
+            away = offsets[depth, d] - offsets[depth, dim] + step * step
+            if away <= worst:
+                for i in range(d + 1):
+                    offsets[depth + 1, i] = offsets[depth, i]
+                # Swap: the waiting child takes the lower slot so that the stack stays dense.
+                offsets[depth, dim] = step * step
+                offsets[depth, d] = away
+                stack[depth] = far
+                depth += 1
+            node = near
+        for i in range(nodes[node, 3], nodes[node, 4]):
+            s = order[i]
+            d2 = 0.0
+            for j in range(d):
+                step = place[j] - points[s, j]
+                d2 += step * step
+            if d2 <= worst:
+                if found < k:
+                    heap[found], index[found] = d2, s
+                    _sift_up(heap, index, found)
+                    found += 1
+                    if found == k:
+                        worst = min(worst, heap[0])
+                elif d2 < worst:
+                    heap[0], index[0] = d2, s
+                    _sift_down(heap, index, k)
+                    worst = heap[0]
+    return found

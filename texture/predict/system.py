@@ -1,0 +1,359 @@
+"""Columns that share stations and metric, prepared for the compiled kernel and run on threads."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+from concurrent.futures import ThreadPoolExecutor
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from texture.predict.inputs import Stations
+from texture.structure.covariance import Covariance
+
+__all__ = ["MOST_DENSE", "Rule", "System"]
+
+Array = NDArray[np.float64]
+Ints = NDArray[np.int64]
+Rule = tuple[float, int, int]  # squared radius, least stations, most per sector (0: any)
+
+# All-station mode holds one n x n factor per column: 72 MB at this size.
+MOST_DENSE = 3000
+
+# Cells that are sorted and predicted together: bounds the memory beside the results to some 100 MB.
+CHUNK = 1 << 21
+
+
+class System:
+    """Stations, tiles and factors for the columns that share them; made by `System.make`."""
+
+    def __init__(
+        self,
+        columns: list[int],
+        rows: Ints,
+        stations: Stations,
+        covariances: list[Covariance],
+        means: Array | None,
+        neighbours: int | None,
+        mode: str,
+        drift: str,
+    ) -> None:
+        self.columns, self.rows, self.mode = columns, rows, mode
+        self.covariances = covariances
+        self.neighbours = len(rows) if neighbours is None else neighbours
+        self.points = covariances[0].metric(stations.points[rows])
+        self._metric = covariances[0].metric
+        v, n = len(columns), len(rows)
+        values = stations.values[rows][:, columns]
+        self.survey = np.zeros(n, dtype=np.int64) if stations.survey is None else stations.survey[rows]
+        own = np.array([c.noise for c in covariances])
+        self.noise = np.ascontiguousarray((stations.noise_variance[rows][:, columns] + own).T)
+        values = _average_coincident(self.points, values, self.noise, self.survey, covariances)
+        most = max(1, max(len(c.structures) for c in covariances))
+        self.structures = np.zeros((v, most, 4))
+        self.structure_count = np.array([len(c.structures) for c in covariances], dtype=np.int64)
+        self.variances = np.array([[c.small_scale, c.survey] for c in covariances])
+        for k, c in enumerate(covariances):
+            self.structures[k, : len(c.structures)] = c.packed
+        # Values are kriged as departures from a plain number, so that large means cost no digits.
+        self.centre = values.mean(axis=0) if means is None else means[columns]
+        departures = values - self.centre
+        self._drift_centre, self._drift_scale, station_drift = _standardised(stations.drift, rows)
+        self.local = np.empty((n, 0)) if means is not None else np.ones((n, 1))
+        self.coefficients = np.zeros((v, 0))
+        self.global_columns = np.empty((n, 0))
+        self.global_covariance = np.zeros((v, 0, 0))
+        if station_drift is not None:
+            if drift == "local" or mode == "all":
+                self.local = np.column_stack([self.local, station_drift])
+            else:
+                from texture.predict.drift import global_drift
+
+                self.global_columns = station_drift
+                self.coefficients, self.global_covariance = global_drift(
+                    self.points, departures, self.noise, self.survey, covariances, station_drift
+                )
+                departures = departures - station_drift @ self.coefficients.T
+        self.drifts = self.local.shape[1]
+        self.station_columns = np.empty((v, n, self.drifts + 1 + self.global_columns.shape[1]))
+        for k in range(v):
+            self.station_columns[k, :, : self.drifts] = self.local
+            self.station_columns[k, :, self.drifts] = departures[:, k]
+            self.station_columns[k, :, self.drifts + 1 :] = self.global_columns
+        self._tiles: Any = None
+        self._tree: Any = None
+        self._factors: list[Any] | None = None
+
+    @classmethod
+    def make(
+        cls,
+        stations: Stations,
+        covariances: Sequence[Covariance],
+        means: Array | None,
+        neighbours: int | None,
+        mode: str,
+        drift: str,
+    ) -> list[System]:
+        """One system for each set of columns known at the same stations and measured in the same metric."""
+        sets: dict[Any, list[int]] = {}
+        known = np.isfinite(stations.values)
+        for v, c in enumerate(covariances):
+            key = (known[:, v].tobytes(), c.anisotropy, c.axis_scales)
+            sets.setdefault(key, []).append(v)
+        return [
+            cls(members, np.flatnonzero(known[:, members[0]]), stations, [covariances[v] for v in members], means,
+                neighbours, mode, drift)
+            for members in sets.values()
+        ]  # fmt: skip
+
+    # ---- prediction -------------------------------------------------------------------------------------------
+
+    def predict(
+        self, cells: Array, drift: Array | None, rule: Rule, mean: Array, variance: Array, rung: NDArray[np.int8]
+    ) -> Ints:
+        """Fill this system's columns of mean, variance and rung; returns counts of repaired neighbourhoods, stations."""
+        repairs = np.zeros(2, dtype=np.int64)
+        for begin in range(0, len(cells), CHUNK):
+            part = slice(begin, begin + CHUNK)
+            own = self._metric(cells[part])
+            local, wide = self._cell_columns(len(own), None if drift is None else drift[part])
+            if len(self.rows) < rule[1]:
+                kriged, spread = self._whole_mean(local, wide)
+                rung[part, self.columns] = 2
+            elif self.mode == "tile":
+                kriged, spread = self._by_tiles(own, local, wide, repairs)
+            elif self.mode == "all":
+                kriged, spread = self._by_all(own, local, wide, repairs)
+            else:
+                kriged, spread, fell = self._by_nearest(own, local, wide, rule, repairs)
+                rung[part, self.columns] = fell[:, None]
+            mean[part, self.columns] = kriged + self.centre + wide @ self.coefficients.T
+            variance[part, self.columns] = spread
+        return repairs
+
+    def support(self, cells: Array, rule: Rule, rung: NDArray[np.int8]) -> None:
+        """Fill this system's columns of rung without kriging."""
+        if len(self.rows) < rule[1]:
+            rung[:, self.columns] = 2
+        elif self.mode == "nearest" and (np.isfinite(rule[0]) or rule[2]):
+            own = self._metric(cells)
+            fell = [len(self._chosen(own[i], rule)) < rule[1] for i in range(len(own))]
+            rung[:, self.columns] = np.array(fell, dtype=np.int8)[:, None]
+
+    def stations_of(self, place: Array, rule: Rule) -> Ints:
+        """Rows of the stations that serve one place (1, d)."""
+        own = self._metric(place)
+        if self.mode == "all" or len(self.rows) < rule[1]:
+            return self.rows
+        if self.mode == "tile":
+            tiles = self._get_tiles()
+            return np.asarray(self.rows[tiles.stations(int(tiles.locate(own)[0]))])
+        chosen = self._chosen(own[0], rule)
+        if len(chosen) < rule[1]:
+            chosen = self._chosen(own[0], (np.inf, 1, 0))
+        return self.rows[chosen]
+
+    def _chosen(self, place: Array, rule: Rule) -> Ints:
+        from texture.predict.kernel import choose_nearest
+        from texture.predict.neighbours import DEPTH
+
+        k = min(self.neighbours, len(self.rows))
+        station = np.empty(k, dtype=np.int64)
+        stack, offsets = np.empty(DEPTH, dtype=np.int64), np.empty((DEPTH, self.points.shape[1] + 1))
+        nodes, splits, order = self._get_tree()
+        count = choose_nearest(self.points, nodes, splits, order, place, k, rule[0], rule[2], stack, offsets, station)
+        return station[:count]
+
+    def _cell_columns(self, count: int, drift: Array | None) -> tuple[Array, Array]:
+        constant = np.ones((count, min(1, self.drifts)))
+        if drift is None:
+            return constant, np.empty((count, 0))
+        scaled = (drift - self._drift_centre) / self._drift_scale
+        if self.global_columns.shape[1]:
+            return constant, scaled
+        return np.column_stack([constant, scaled]), np.empty((count, 0))
+
+    def _get_tiles(self) -> Any:
+        if self._tiles is None:
+            from texture.predict.tiles import build_tiles
+
+            self._tiles = build_tiles(self.points, self.neighbours)
+        return self._tiles
+
+    def _get_tree(self) -> Any:
+        if self._tree is None:
+            from texture.predict.neighbours import build_tree
+            from texture.predict.tiles import LEAF
+
+            self._tree = build_tree(self.points, LEAF)
+        return self._tree
+
+    def _by_tiles(self, cells: Array, local: Array, wide: Array, repairs: Ints) -> tuple[Array, Array]:
+        from texture.predict.kernel import krige_tiles
+        from texture.predict.tiles import probe_capacity
+
+        tiles = self._get_tiles()
+        tile = tiles.locate(cells)
+        which = np.argsort(tile, kind="stable")
+        used, begins = np.unique(tile[which], return_index=True)
+        begins = np.append(begins, len(cells)).astype(np.int64)
+        mean, variance = np.empty((len(cells), len(self.columns), 1)), np.empty((len(cells), len(self.columns)))
+        capacity = probe_capacity(self.points.shape[1], self.neighbours, len(self.points))
+
+        def run(first: int, last: int) -> Ints:
+            repaired = np.zeros(2, dtype=np.int64)
+            krige_tiles(
+                used[first:last], begins[first : last + 1], which, cells, local, wide, self.points, tiles.nodes,
+                tiles.splits, tiles.order, tiles.low, tiles.high, tiles.own, self.neighbours, capacity,
+                self.structures, self.structure_count, self.variances, self.noise, self.survey, self.station_columns,
+                self.drifts, self.global_covariance, mean, variance, repaired,
+            )  # fmt: skip
+            return repaired
+
+        # A tile costs about what 60 of its cells cost.
+        repairs += _on_threads(run, np.diff(begins) + 60)
+        return mean[:, :, 0], variance
+
+    def _by_nearest(
+        self, cells: Array, local: Array, wide: Array, rule: Rule, repairs: Ints
+    ) -> tuple[Array, Array, NDArray[np.int8]]:
+        from texture.predict.kernel import krige_nearest
+
+        mean, variance = np.empty((len(cells), len(self.columns), 1)), np.empty((len(cells), len(self.columns)))
+        rung = np.zeros(len(cells), dtype=np.int8)
+        nodes, splits, order = self._get_tree()
+
+        def run(first: int, last: int) -> Ints:
+            repaired = np.zeros(2, dtype=np.int64)
+            krige_nearest(
+                first, last, cells, local, wide, self.points, nodes, splits, order, self.neighbours, rule[0], rule[1], rule[2],
+                self.structures, self.structure_count, self.variances, self.noise, self.survey, self.station_columns,
+                self.drifts, self.global_covariance, mean, variance, rung, repaired,
+            )  # fmt: skip
+            return repaired
+
+        repairs += _on_threads(run, np.ones(len(cells), dtype=np.int64))
+        return mean[:, :, 0], variance, rung
+
+    def _get_factors(self) -> list[Any]:
+        if self._factors is None:
+            from texture.predict.kernel import factor_stations
+
+            n, q = len(self.rows), self.station_columns.shape[2]
+            m = (n + 3) // 4 * 4
+            self._factors = []
+            for k in range(len(self.columns)):
+                u, dropped = np.empty(m * m), np.empty(2 * m)
+                columns, normal = np.empty((m, q)), np.zeros((q, max(self.drifts, 1)))
+                redundant = factor_stations(
+                    self.points, self._nested(k), self.variances[k, 0], self.variances[k, 1], self.noise[k], self.survey,
+                    self.station_columns[k], self.drifts, u, dropped, columns, normal,
+                )  # fmt: skip
+                self._factors.append((u, dropped, columns, normal, redundant))
+        return self._factors
+
+    def _nested(self, k: int) -> Array:
+        return self.structures[k, : self.structure_count[k]]
+
+    def _by_all(self, cells: Array, local: Array, wide: Array, repairs: Ints) -> tuple[Array, Array]:
+        from texture.predict.kernel import krige_stations
+
+        mean, variance = np.empty((len(cells), len(self.columns))), np.empty((len(cells), len(self.columns)))
+        for k, (u, dropped, columns, normal, redundant) in enumerate(self._get_factors()):
+            one_mean, one_variance = np.empty((len(cells), 1)), np.empty(len(cells))
+
+            def run(first: int, last: int, *, factors: Any = (u, dropped, columns, normal), k: int = k) -> Ints:
+                u, dropped, columns, normal = factors
+                krige_stations(
+                    first, last, cells, local, wide, self.points, self._nested(k), self.variances[k, 0], u, dropped,
+                    columns, self.drifts, normal, self.global_covariance[k], one_mean, one_variance,  # noqa: B023
+                )  # fmt: skip
+                return np.zeros(2, dtype=np.int64)
+
+            _on_threads(run, np.ones(len(cells), dtype=np.int64))
+            mean[:, k], variance[:, k] = one_mean[:, 0], one_variance
+            repairs += np.array([redundant > 0, redundant])
+        return mean, variance
+
+    def _whole_mean(self, local: Array, wide: Array) -> tuple[Array, Array]:
+        """Generalised least squares mean of the few stations there are, and the bed's variance about it."""
+        mean, variance = np.zeros((len(local), len(self.columns))), np.zeros((len(local), len(self.columns)))
+        for k, c in enumerate(self.covariances):
+            covariance = station_covariance(c, self.points, self.noise[k], self.survey)
+            weight = np.linalg.lstsq(covariance, np.ones(len(self.rows)), rcond=None)[0]
+            if self.drifts:
+                mean[:, k] = weight @ self.station_columns[k, :, self.drifts] / weight.sum()
+                variance[:, k] = 1.0 / weight.sum()
+            variance[:, k] += c.sill
+        return mean, variance
+
+
+def station_covariance(c: Covariance, metric_points: Array, noise: Array, survey: Ints) -> Array:
+    """Covariance of the samples: of the bed, noise and survey offsets; points are in the covariance's metric."""
+    from texture.structure.compiled import covariance_matrix, distance_matrix
+
+    k: Array = covariance_matrix(c.packed, c.small_scale, distance_matrix(metric_points, metric_points))
+    k += np.diag(noise)
+    if c.survey > 0.0:
+        k += c.survey * (survey[:, None] == survey[None, :])
+    return k
+
+
+def _standardised(drift: Array | None, rows: Ints) -> tuple[Any, Any, Array | None]:
+    """Drift columns centred and scaled at the stations, so that their normal matrix is well conditioned."""
+    if drift is None:
+        return None, None, None
+    own = drift[rows]
+    centre, scale = own.mean(axis=0), own.std(axis=0)
+    scale = np.where(scale > 0.0, scale, 1.0)
+    return centre, scale, (own - centre) / scale
+
+
+def _average_coincident(
+    points: Array, values: Array, noise: Array, survey: Ints, covariances: Sequence[Covariance]
+) -> Array:
+    """Samples at one place that claim to be exact contradict one another unless equal: each gets their average.
+
+    The kernel then keeps one of them and drops the rest as redundant.
+    """
+    from scipy.sparse import coo_array
+    from scipy.sparse.csgraph import connected_components
+    from scipy.spatial import cKDTree
+
+    from texture.structure.compiled import COINCIDENT_M
+
+    pairs = cKDTree(points).query_pairs(COINCIDENT_M, output_type="ndarray")
+    if len(pairs) == 0:
+        return values
+    values = values.copy()
+    for k, c in enumerate(covariances):
+        exact = (noise[k, pairs] == 0.0).all(axis=1)
+        if c.survey > 0.0:
+            exact &= survey[pairs[:, 0]] == survey[pairs[:, 1]]
+        i, j = pairs[exact].T
+        label = connected_components(coo_array((np.ones(len(i)), (i, j)), shape=(len(points),) * 2), directed=False)[1]
+        values[:, k] = (np.bincount(label, values[:, k]) / np.bincount(label))[label]
+    return values
+
+
+def _on_threads(run: Callable[[int, int], Ints], cost: Ints) -> Ints:
+    """Run pieces of about equal cost on threads (the kernel lets go of the interpreter) and add up what they return.
+
+    Each piece writes its own cells only, so the number of threads cannot change a result.
+    """
+    from numba import get_num_threads
+
+    threads = int(get_num_threads())
+    total = np.cumsum(cost)
+    if len(cost) == 0:
+        return np.zeros(2, dtype=np.int64)
+    pieces = 1 if threads == 1 or total[-1] < 2000 else 8 * threads
+    ends = np.searchsorted(total, np.linspace(0.0, float(total[-1]), pieces + 1)[1:])
+    ends[-1] = len(cost) - 1
+    bounds = np.unique(np.concatenate([[0], ends + 1]))
+    if len(bounds) == 2:
+        return run(0, len(cost))
+    with ThreadPoolExecutor(threads) as pool:
+        results = list(pool.map(run, bounds[:-1].tolist(), bounds[1:].tolist()))
+    return np.asarray(np.sum(results, axis=0))
