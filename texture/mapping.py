@@ -51,7 +51,9 @@ class Mapper:
     @property
     def has_variance(self) -> bool:
         """Tell whether the method says how uncertain it is."""
-        return self.name == "kriging"
+        from texture.predict import METHODS
+
+        return METHODS[self.name].has_variance
 
     @property
     def small_scale(self) -> Floats:
@@ -93,11 +95,16 @@ class Mapper:
         return self.logratio.quantiles(mean, self.covariance(variance), levels)
 
     def cell_quantiles(self, mean: Floats, variance: Floats, levels: tuple[float, ...]) -> Floats:
-        """Quantiles of the mean of a cell, shape (q, n, parts): small-scale variation averages out inside it."""
+        """Quantiles of the mean of a cell, shape (q, n, parts): small-scale variation averages out inside it.
+
+        In coordinates without shares (ilr, alr) there is no such form: it is then left out of the variance.
+        """
         if not self.has_variance:
             return np.full((len(levels), mean.shape[0], self.logratio.n_parts), np.nan)
         within = np.minimum(variance, self.small_scale)
-        return self.logratio.quantiles(mean, self.covariance(variance - within), levels, within=within)
+        if not self.logratio.amalgamates:
+            return self.logratio.quantiles(mean, self.covariance(variance - within), levels)
+        return self.logratio.quantiles(mean, self.covariance(variance), levels, within=within)
 
     def likely_class(self, mean: Floats, variance: Floats) -> tuple[NDArray[np.int8], Floats]:
         """Most probable texture class of the bed at points, numbered from 1, and its probability."""
@@ -112,9 +119,10 @@ def make_mapper(
     name: str, observations: Observations, structure: CovarianceSet, method: Method, logratio: LogRatio
 ) -> Mapper:
     """Fit one method on stations."""
-    from texture.predict import make_predictor
+    from texture.predict import make_method
 
-    predictor = make_predictor(name, structure, neighbours=method.neighbours, neighbourhood=method.neighbourhood)
+    settings = {"neighbours": method.neighbours, "neighbourhood": method.neighbourhood} if name == "kriging" else {}
+    predictor = make_method(name, structure, **settings)
     several = np.unique(observations.survey).size > 1
     predictor.fit(
         observations.points,

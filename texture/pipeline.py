@@ -41,9 +41,7 @@ def intake(
     recipe, progress = read_recipe(recipe_path, overrides, output, settings), progress or Silent()
     folder = ResultFolder(recipe.output, overwrite)
     _, stations = _stations(recipe, progress)
-    result = Intake(recipe, stations)
-    write_intake(result, folder)
-    return result
+    return write_intake(Intake(recipe, stations), folder)
 
 
 def validate(
@@ -56,9 +54,7 @@ def validate(
 
     recipe, progress = read_recipe(recipe_path, overrides, output, settings), progress or Silent()
     folder = ResultFolder(recipe.output, overwrite)
-    result = _validated(recipe, progress, Clock())
-    write_validation(result, folder)
-    return result
+    return write_validation(_validated(recipe, progress, Clock()), folder)
 
 
 def build(

@@ -1,0 +1,144 @@
+"""Put a result on disk: every file of the output folder, written aside and moved into place whole."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable
+from dataclasses import replace
+from pathlib import Path
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from texture.result import Intake, Result, Validated
+
+if TYPE_CHECKING:
+    import pandas as pd
+
+    from texture.output import ResultFolder
+    from texture.recipe import Recipe
+
+__all__ = ["write_all", "write_intake", "write_validation"]
+
+
+def write_intake(result: Intake, folder: ResultFolder) -> Intake:
+    """Write stations and audit; return the result with its files."""
+    from texture.stations import write_tables
+
+    with folder.filling() as aside:
+        write_tables(result.stations, aside)
+    return replace(result, files=folder.files)
+
+
+def write_validation(result: Validated, folder: ResultFolder) -> Validated:
+    """Write the scores and every held-out prediction; return the result with its files."""
+    with folder.filling() as aside:
+        _write_scores(result, aside)
+    return replace(result, files=folder.files)
+
+
+def write_all(result: Result, folder: ResultFolder, recipe_path: Path) -> Result:
+    """Write everything a build makes; return the result with its files."""
+    from texture.output import provenance, write_json
+    from texture.recipe_file import resolved_toml
+    from texture.report import versions_line, write_page
+    from texture.stations import write_tables
+
+    found, recipe = result.found, result.found.recipe
+    base = recipe_path.absolute().parent
+    settings = resolved_toml(recipe, base)
+    with folder.filling() as aside:
+        write_tables(found.stations, aside)
+        _write_scores(found, aside)
+        _write_grids(result, aside)
+        (aside / "recipe_resolved.toml").write_text(settings, encoding="utf-8")
+        (aside / "report.html").write_text(write_page(result, settings, versions_line(result)), encoding="utf-8")
+        made = sorted(p for p in aside.rglob("*") if p.is_file())
+        record = provenance(
+            [recipe_path.absolute(), *input_files(recipe)],
+            base,
+            counts=found.stations.counts,
+            seconds=result.clock.seconds,
+            files=made,
+            seed=recipe.seed,
+            structure=found.mapper.structure.to_dict(),
+            second_opinion=None if result.opinion is None else result.opinion.to_dict(),
+        )
+        write_json(aside / "provenance.json", record)
+    return replace(result, files=folder.files)
+
+
+def input_files(recipe: Recipe) -> list[Path]:
+    """List every file that a recipe names, each once."""
+    paths: Iterable[Path | None] = (
+        *(s.file for s in recipe.samples), recipe.target.file, recipe.target.land, recipe.outputs.names,
+    )  # fmt: skip
+    return list(dict.fromkeys(p for p in paths if p is not None))
+
+
+def _write_grids(result: Result, aside: Path) -> None:
+    from texture.composition import class_colours, class_words
+    from texture.output import apply_names, bed_dataset, read_names, texture_dataset, write_dataset, write_geotiffs
+
+    found, recipe = result.found, result.found.recipe
+    words = class_words("folk")
+    support = (
+        f"mean over {result.points_per_side**2} points inside each cell"
+        if result.points_per_side > 1
+        else "value at the cell centre, which stands for the small cell"
+    )
+    attributes = {
+        "coordinates_partition": repr(found.mapper.logratio),
+        "fraction_support": support,
+        "quantile_support": "cell mean: small-scale variation averages out inside the cell",
+    }
+    names = found.mapper.logratio.coordinate_names
+    write_dataset(aside / "texture.nc", texture_dataset(result.estimate, found.target, recipe, words, names, attributes))
+    bed = bed_dataset(result.bed, found.target, recipe)
+    if recipe.outputs.names is not None:
+        bed = apply_names(bed, read_names(recipe.outputs.names), found.target)
+    write_dataset(aside / "bed.nc", bed)
+    if recipe.outputs.geotiff:
+        colours = class_colours("folk")
+        parts, size = recipe.composition.parts, recipe.outputs.geotiff_cell_size_m
+        write_geotiffs(aside / "geotiff", result.estimate, found.target, parts, words, colours, size)
+
+
+def _write_scores(result: Validated, aside: Path) -> None:
+    from texture.output import write_csv
+
+    write_csv(aside / "validation.csv", _scores(result))
+    write_csv(aside / "held_out.csv", _held_out(result))
+
+
+def _scores(result: Validated) -> pd.DataFrame:
+    """One row for each method, part and score."""
+    import pandas as pd
+
+    folds = result.validation.folds
+    rows = [
+        {"method": method.method, "folds": folds.kind, "count": folds.count, **score}
+        for method in result.validation.methods
+        for score in method.scores
+    ]
+    return pd.DataFrame(rows)
+
+
+def _held_out(result: Validated) -> pd.DataFrame:
+    """Every station's held-out prediction, interval and source row, for each method."""
+    import pandas as pd
+
+    parts, observations = result.recipe.composition.parts, result.observations
+    table = result.stations.table.iloc[observations.rows].reset_index(drop=True)
+    distance = result.validation.folds.held_out_distances(observations.points)
+    blocks = []
+    for method in result.validation.methods:
+        block = table[["id", "survey", "longitude", "latitude", "file", "sheet", "row"]].copy()
+        block.insert(0, "method", method.method)
+        block["fold"] = result.validation.folds.labels
+        block["nearest_kept_m"] = np.round(distance, 1)
+        for i, part in enumerate(parts):
+            block[f"{part}_measured"] = observations.fractions[:, i]
+            block[f"{part}_predicted"] = method.predicted[:, i]
+            block[f"{part}_low"], block[f"{part}_high"] = method.low[:, i], method.high[:, i]
+        blocks.append(block)
+    return pd.concat(blocks, ignore_index=True)
