@@ -58,25 +58,18 @@ class Numbers:
     decimal_comma: bool = False
 
 
-_MISSING = frozenset(
-    "- -- --- – — . .. ? * / n/a na n.a. n.a nd n.d. n.d nan null none nil #n/a n/d s/d s.d. k.a. nv n.v. nm n.m. x".split()
-    + [
-        "not measured",
-        "not analysed",
-        "not analyzed",
-        "no data",
-        "not determined",
-        "not sampled",
-        "missing",
-        "no value",
-    ]
-    + ["sin datos", "keine angabe", "pas de donnees", "geen gegevens", "sem dados", "nessun dato"]
-    + ["#div/0!", "#value!", "#ref!", "#name?", "#num!", "#null!"]
-)
-_TRACE = frozenset(
-    "trace traces tr tr. trazas traza traccia tracce spur spuren sp. spoor vestigios vestígios bdl b.d.l. <dl <lod".split()
-    + ["trace amount", "below detection", "below detection limit", "not detected", "< dl", "< lod"]
-)
+# fmt: off
+_MISSING = frozenset((
+    "-", "--", "---", "–", "—", ".", "..", "?", "*", "/", "x", "n/a", "na", "n.a.", "n.a", "nd", "n.d.", "n.d", "n/d", "nan", "null", "none",
+    "nil", "#n/a", "s/d", "s.d.", "k.a.", "nv", "n.v.", "nm", "n.m.", "not measured", "not analysed", "not analyzed", "no data",
+    "not determined", "not sampled", "missing", "no value", "sin datos", "keine angabe", "pas de donnees", "geen gegevens", "sem dados",
+    "nessun dato", "#div/0!", "#value!", "#ref!", "#name?", "#num!", "#null!",
+))
+_TRACE = frozenset((
+    "trace", "traces", "trace amount", "tr", "tr.", "trazas", "traza", "traccia", "tracce", "spur", "spuren", "sp.", "spoor", "vestigios",
+    "vestígios", "bdl", "b.d.l.", "<dl", "< dl", "<lod", "< lod", "below detection", "below detection limit", "not detected",
+))
+# fmt: on
 # Codes that stand for "no value" in old files; none can be a share, a depth or a position.
 MISSING_CODES = (-9.0, -99.0, -999.0, -9999.0, -99999.0, -99.9, -999.9, -999.99, -999.25)
 

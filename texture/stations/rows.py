@@ -9,6 +9,7 @@ import numpy.typing as npt
 import pandas as pd
 
 from texture.recipe import Intake, Samples
+from texture.stations.angles import split_pairs
 from texture.stations.audit import AuditLog
 from texture.stations.bottoms import is_hard_ground, is_total
 from texture.stations.cells import Numbers, read_numbers
@@ -17,7 +18,7 @@ from texture.stations.dates import read_dates
 from texture.stations.files import Cell, is_blank
 from texture.stations.fractions import Shares, share_out
 from texture.stations.headings import PARTS
-from texture.stations.positions import Positions, from_metres, read_degrees, split_pairs
+from texture.stations.positions import Positions, from_metres, is_projected, read_degrees
 from texture.stations.tables import Table
 
 __all__ = ["read_rows"]
@@ -93,8 +94,6 @@ def _positions(table: Table, columns: Mapping[str, Column], block: Samples, rows
     degrees = "latitude" in columns and "longitude" in columns
     metres = "easting" in columns and "northing" in columns
     if degrees and metres and block.crs is not None:
-        from texture.stations.positions import is_projected
-
         degrees = not is_projected(block.crs)
     if degrees:
         return read_degrees(

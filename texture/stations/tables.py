@@ -142,13 +142,14 @@ def _sample_rows(
 
 
 def _best_header(rows: list[list[Cell]], named: set[str]) -> int | None:
-    best, most = None, 1
+    """The first row that names nearly as many kinds of column as any row does; a repeated header may name more."""
+    scores: list[tuple[int, int]] = []
     for i, row in enumerate(rows[:LOOKED_AT]):
         score = len(roles_in(row) | {plain(c) for c in row if isinstance(c, str) and plain(c) in named})
-        texts = sum(isinstance(c, str) and not is_blank(c) for c in row)
-        if score > most and texts >= 2 and not _mostly_values(row):
-            best, most = i, score
-    return best
+        if score >= 2 and not _mostly_values(row):
+            scores.append((i, score))
+    most = max((score for _, score in scores), default=0)
+    return next((i for i, score in scores if score >= 0.6 * most), None)
 
 
 def _mostly_values(row: list[Cell]) -> bool:

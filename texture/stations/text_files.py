@@ -92,12 +92,11 @@ def read_text(path: Path) -> Sheet:
         text = raw.decode(encoding)
     except UnicodeError as error:
         raise SampleError(
-            f"{path.name}: neither a spreadsheet nor a text table (the file holds {error.reason if isinstance(error, UnicodeDecodeError) else error}); "
-            "export it as xlsx, ods or csv"
+            f"{path.name}: neither a spreadsheet nor a text table; export it as xlsx, ods or csv"
         ) from error
     del raw
-    if "\0" in text:
-        text = text.replace("\0", "")
+    if _is_binary(text):
+        raise SampleError(f"{path.name}: neither a spreadsheet nor a text table; export it as xlsx, ods or csv")
     lines = _first_lines(text)
     delimiter = find_delimiter(lines)
     csv.field_size_limit(CELL_LIMIT)
@@ -117,6 +116,12 @@ def read_text(path: Path) -> Sheet:
     return Sheet(
         path.name, "", rows, notes=(f"{path.name}: {encoding}, cells separated by {NAMES.get(delimiter, delimiter)}",)
     )
+
+
+def _is_binary(text: str) -> bool:
+    """Whether the beginning holds control characters, which no table does."""
+    head = text[:4096]
+    return sum(ord(c) < 32 and c not in "\t\r\n\f\x1a" for c in head) > 0.005 * len(head)
 
 
 def _first_lines(text: str) -> list[str]:
