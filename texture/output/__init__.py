@@ -1,1 +1,30 @@
-"""output"""
+"""Files out: CF NetCDF, GeoTIFF, tables, provenance, all put in place together or not at all."""
+
+from texture.output.bed_nc import bed_dataset
+from texture.output.cf import write_netcdf
+from texture.output.folder import ResultFolder
+from texture.output.geotiff import pixel_grid, write_geotiff, write_geotiffs
+from texture.output.names import Names, read_names
+from texture.output.open_bed import open_bed
+from texture.output.provenance import provenance, write_json
+from texture.output.renaming import apply_names
+from texture.output.tables import write_csv, write_stations
+from texture.output.texture_nc import texture_dataset
+
+__all__ = [
+    "Names",
+    "ResultFolder",
+    "apply_names",
+    "bed_dataset",
+    "open_bed",
+    "pixel_grid",
+    "provenance",
+    "read_names",
+    "texture_dataset",
+    "write_csv",
+    "write_geotiff",
+    "write_geotiffs",
+    "write_json",
+    "write_netcdf",
+    "write_stations",
+]

@@ -1,0 +1,120 @@
+"""`bed.nc`: the bed as a CF NetCDF file."""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+
+from texture.output.bed_variables import BED_VARIABLES, FORMS, KINDS, SOURCES
+from texture.output.cf import global_attributes, on_cells
+
+if TYPE_CHECKING:
+    import xarray as xr
+
+    from texture.bed import Bed, ClassProperties
+    from texture.recipe import Recipe
+    from texture.targets import Target
+
+__all__ = ["bed_dataset"]
+
+REFERENCES = (
+    "Settling velocity: Soulsby (1997), Dynamics of Marine Sands. Critical stress of single grains: Soulsby and "
+    "Whitehouse (1997). Porosity: Wu and Wang (2006), J. Hydraul. Eng. 132, 858-862. Sea water: UNESCO (1983), "
+    "Sharqawy et al. (2010)."
+)
+COMMENT = (
+    "Interpolated from grab samples: smoother than any real bed. Settling, erosion and strength of mud are not in "
+    "grain size; values of classes finer than 63 micrometres and of flocs are the user's own or missing. Cells "
+    "flagged as rim in evidence are numerical padding, not observed. Not for navigation, foundations or permits."
+)
+
+
+def bed_dataset(bed: Bed, target: Target, recipe: Recipe) -> xr.Dataset:
+    """Lay the bed out as a CF dataset on the target's dimensions.
+
+    Parameters
+    ----------
+    bed : Bed
+    target : Target
+    recipe : Recipe
+        Title, method and surveys for the attributes.
+
+    Returns
+    -------
+    xarray.Dataset
+        `class_fraction` and `class_mass_content` on (class, layer, …), the mixture's properties and
+        `evidence` on (layer, …), `rim_weight`, `skin_roughness_length` and `water` on the cells, and the
+        classes' properties on (class). No value of a cell is missing; `critical_stress_for_erosion` is left
+        out when a class has no critical stress.
+    """
+    import xarray as xr
+
+    layers = bed.erodible_thickness.shape[0]
+    along_class = {
+        name: xr.Variable(("class",), values, {**BED_VARIABLES[name], "coordinates": "class_name"})
+        for name, values in _class_values(bed.classes, recipe.composition.parts).items()
+    }
+    dataset = target.coordinates().assign({**along_class, **_cell_variables(bed, target)})
+    dataset = dataset.assign_coords(
+        class_name=("class", _strings(bed.classes.names), BED_VARIABLES["class_name"]),
+        layer=("layer", np.arange(1, layers + 1, dtype=np.int32), BED_VARIABLES["layer"]),
+    )
+    samples = ", ".join(s.survey or s.file.stem for s in recipe.samples)
+    method = recipe.method.name.replace("_", " ")
+    dataset.attrs = global_attributes(
+        recipe.title, f"{method} of grab samples ({samples}) on {target.name}", COMMENT, REFERENCES
+    )
+    return dataset
+
+
+def _cell_variables(bed: Bed, target: Target) -> dict[str, xr.Variable]:
+    with_class = ("class_fraction", "class_mass_content")
+    with_layer = (
+        "erodible_thickness", "dry_density", "porosity", "mixture_median_diameter", "critical_stress_for_erosion",
+        "evidence",
+    )  # fmt: skip
+    variables = {}
+    for name in with_class:
+        values = getattr(bed, name)
+        variables[name] = on_cells(target, ("class", "layer"), values, "class_name", **BED_VARIABLES[name])
+    for name in with_layer:
+        values = getattr(bed, name)
+        if values is not None:
+            variables[name] = on_cells(target, ("layer",), values, **BED_VARIABLES[name])
+    for name, values in (
+        ("skin_roughness_length", bed.skin_roughness_length),
+        ("rim_weight", bed.rim_weight),
+        ("water", target.active.astype(np.int8)),
+    ):
+        variables[name] = on_cells(target, (), values, **BED_VARIABLES[name])
+    return variables
+
+
+def _class_values(classes: ClassProperties, parts: tuple[str, ...]) -> dict[str, Any]:
+    ratio = np.array([form == "excess_ratio" for form in classes.form])
+    values = {
+        "class_part": _strings(tuple(parts[i] for i in classes.part)),
+        "class_share": classes.share,
+        "class_kind": _codes(classes.kind, KINDS),
+        "grain_diameter": classes.diameter_m,
+        "grain_density": classes.density_kg_m3,
+        "settling_velocity": classes.settling_velocity_m_s,
+        "settling_velocity_source": _codes(classes.settling_source, SOURCES),
+        "critical_stress": classes.critical_stress_pa,
+        "critical_stress_source": _codes(classes.stress_source, SOURCES),
+        "erosion_form": _codes(classes.form, FORMS),
+        "erosion_rate": np.where(ratio, classes.erosion_rate, np.nan),
+    }
+    if not ratio.all():
+        values["erosion_rate_per_stress"] = np.where(ratio, np.nan, classes.erosion_rate)
+    return values
+
+
+def _strings(words: tuple[str, ...]) -> Any:
+    return np.array(words, dtype=object)
+
+
+def _codes(words: tuple[str, ...], meanings: dict[int, str]) -> Any:
+    code = {word: value for value, word in meanings.items()}
+    return np.array([code[word] for word in words], dtype=np.int8)

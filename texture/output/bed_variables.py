@@ -1,0 +1,84 @@
+"""Every variable of `bed.nc` with its CF attributes: one table for writing, renaming and reading back."""
+
+from __future__ import annotations
+
+from typing import Any
+
+from texture.bed.build import EVIDENCE
+from texture.output.cf import flags
+
+__all__ = ["BED_VARIABLES", "FORMS", "KINDS", "SOURCES"]
+
+FORMS = {1: "excess_ratio", 2: "excess_stress"}
+KINDS = {1: "grain", 2: "floc"}
+SOURCES = {0: "not given", 1: "given", 2: "computed"}
+
+BED_VARIABLES: dict[str, dict[str, Any]] = {
+    # on (class, layer, cells)
+    "class_fraction": {
+        "long_name": "fraction of the dry mass of the bed in each sediment class",
+        "units": "1",
+        "cell_methods": "area: mean",
+        "ancillary_variables": "evidence rim_weight",
+    },
+    "class_mass_content": {
+        "long_name": "dry mass of each sediment class in the layer, by area",
+        "units": "kg m-2",
+    },
+    # on (layer, cells)
+    "erodible_thickness": {"long_name": "thickness of the layer that can erode", "units": "m"},
+    "dry_density": {"long_name": "dry mass in a volume of bed", "units": "kg m-3"},
+    "porosity": {
+        "long_name": "share of pores in the volume of the bed",
+        "units": "1",
+        "comment": "Wu and Wang (2006) from the median diameter of the mixture",
+    },
+    "mixture_median_diameter": {
+        "standard_name": "sea_floor_sediment_grain_size",
+        "long_name": "median grain diameter of the mixture",
+        "units": "m",
+    },
+    "critical_stress_for_erosion": {
+        "long_name": "critical bed shear stress for erosion of the mixture",
+        "units": "Pa",
+        "comment": "mass-weighted mean of the critical stresses of the classes, without hiding and exposure",
+    },
+    "evidence": {"long_name": "where the bed of the cell comes from", **flags(EVIDENCE)},
+    # on the cells
+    "skin_roughness_length": {
+        "long_name": "roughness length of the grains at the surface",
+        "units": "m",
+        "comment": "z0 = d50 / 12; roughness of the grains, not total drag",
+    },
+    "rim_weight": {
+        "long_name": "weight of the padded rim in the cell, 1 at the open boundary and 0 outside the rim",
+        "units": "1",
+    },
+    "water": {
+        "standard_name": "sea_binary_mask",
+        "long_name": "1 where the cell is water, 0 where it is land",
+        "units": "1",
+    },
+    # on (class)
+    "class_name": {"long_name": "name of the sediment class"},
+    "class_part": {"long_name": "part of the map that the class is a share of"},
+    "class_share": {"long_name": "share of that part", "units": "1"},
+    "class_kind": {"long_name": "single grains or flocs", **flags(KINDS)},
+    "grain_diameter": {"long_name": "median grain diameter", "units": "m"},
+    "grain_density": {"long_name": "density of the grains", "units": "kg m-3"},
+    "settling_velocity": {"long_name": "settling velocity, positive downward", "units": "m s-1"},
+    "settling_velocity_source": {"long_name": "where the settling velocity comes from", **flags(SOURCES)},
+    "critical_stress": {"long_name": "critical bed shear stress of the class alone", "units": "Pa"},
+    "critical_stress_source": {"long_name": "where the critical stress comes from", **flags(SOURCES)},
+    "erosion_form": {"long_name": "form of the erosion law", **flags(FORMS)},
+    "erosion_rate": {
+        "long_name": "erosion rate, to be multiplied by excess stress over critical stress",
+        "units": "kg m-2 s-1",
+    },
+    "erosion_rate_per_stress": {
+        "long_name": "erosion rate for each pascal of excess stress",
+        "units": "kg m-2 s-1 Pa-1",
+    },
+    # on (layer)
+    "layer": {"long_name": "layer of the bed, 1 at the top"},
+}
