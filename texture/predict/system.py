@@ -117,7 +117,7 @@ class System:
         for begin in range(0, len(cells), CHUNK):
             part = slice(begin, begin + CHUNK)
             own = self._metric(cells[part])
-            local, wide = self._cell_columns(len(own), None if drift is None else drift[part])
+            local, wide = self.cell_columns(len(own), None if drift is None else drift[part])
             if len(self.rows) < rule[1]:
                 kriged, spread = self._whole_mean(local, wide)
                 rung[part, self.columns] = 2
@@ -147,7 +147,7 @@ class System:
         if self.mode == "all" or len(self.rows) < rule[1]:
             return self.rows
         if self.mode == "tile":
-            tiles = self._get_tiles()
+            tiles = self.tiles
             return np.asarray(self.rows[tiles.stations(int(tiles.locate(own)[0]))])
         chosen = self._chosen(own[0], rule)
         if len(chosen) < rule[1]:
@@ -165,7 +165,8 @@ class System:
         count = choose_nearest(self.points, nodes, splits, order, place, k, rule[0], rule[2], stack, offsets, station)
         return station[:count]
 
-    def _cell_columns(self, count: int, drift: Array | None) -> tuple[Array, Array]:
+    def cell_columns(self, count: int, drift: Array | None) -> tuple[Array, Array]:
+        """Local and global drift columns at cells, scaled as at the stations."""
         constant = np.ones((count, min(1, self.drifts)))
         if drift is None:
             return constant, np.empty((count, 0))
@@ -174,7 +175,9 @@ class System:
             return constant, scaled
         return np.column_stack([constant, scaled]), np.empty((count, 0))
 
-    def _get_tiles(self) -> Any:
+    @property
+    def tiles(self) -> Any:
+        """Tiles of these stations, made when first asked for."""
         if self._tiles is None:
             from texture.predict.tiles import build_tiles
 
@@ -193,7 +196,7 @@ class System:
         from texture.predict.kernel import krige_tiles
         from texture.predict.tiles import probe_capacity
 
-        tiles = self._get_tiles()
+        tiles = self.tiles
         tile = tiles.locate(cells)
         which = np.argsort(tile, kind="stable")
         used, begins = np.unique(tile[which], return_index=True)

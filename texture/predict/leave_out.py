@@ -1,0 +1,120 @@
+"""Held-out predictions without refitting or re-solving: leave one out, leave groups out.
+
+With B the inverse of the bordered kriging matrix, the errors of the samples of a left-out group g are
+``inv(B_gg) (B z)_g`` and ``inv(B_gg)`` is their covariance (Dubrule 1983 for one sample; Ginsbourger & Schärer 2024 for
+groups). One inverse serves all groups.
+"""
+
+from __future__ import annotations
+
+from typing import Any
+
+import numpy as np
+from numpy.typing import ArrayLike, NDArray
+
+from texture.errors import StructureError
+from texture.predict.kriging import Kriging
+from texture.predict.system import System, station_covariance
+
+__all__ = ["leave_out"]
+
+Array = NDArray[np.float64]
+
+
+def leave_out(kriging: Kriging, groups: ArrayLike | None = None) -> tuple[Array, Array]:
+    """Predict each sample from all others, or from all outside its group.
+
+    Parameters
+    ----------
+    kriging : Kriging
+        Fitted. With ``neighbours=None`` the answer is that of all stations. With tiles each station is left out of
+        the neighbourhood of its own tile, and groups are refused: a whole group is seldom inside one.
+    groups : int array, shape (n,), optional
+        Samples with equal numbers are left out together; each alone by default.
+
+    Returns
+    -------
+    mean, variance : float arrays, shape (n, v)
+        Of the left-out *sample*: noise is in the variance, and so is its survey's offset as far as the rest of that
+        survey does not tell it. NaN where a column is unknown, and where the rest cannot support the drift.
+
+    Raises
+    ------
+    StructureError
+        Groups with tiles; the "nearest" neighbourhood, whose stations change when one is left out.
+    """
+    stations = kriging.stations
+    mean = np.full(stations.values.shape, np.nan)
+    variance = np.full(stations.values.shape, np.nan)
+    labels = np.arange(stations.count) if groups is None else np.asarray(groups)
+    if labels.shape != (stations.count,):
+        raise StructureError(f"groups: found shape {labels.shape}, expected ({stations.count},)")
+    if kriging.neighbourhood == "nearest":
+        raise StructureError(
+            "leave_out: works with all stations or tiles; predict folds with the nearest neighbourhood"
+        )
+    for system in kriging.systems:
+        if kriging.neighbourhood == "all":
+            _leave_groups_out(system, labels, mean, variance)
+        elif groups is not None:
+            raise StructureError("leave_out: groups need neighbours=None (all stations)")
+        else:
+            _leave_out_of_tiles(system, mean, variance)
+    return mean, variance
+
+
+def _bordered_inverse(system: System, k: int, rows: Any) -> tuple[Array, Array]:
+    """Upper left block of the inverse of the bordered matrix for some stations, and that block times the values.
+
+    By way of the covariance's own inverse: B = inv(K) - inv(K) F inv(F' inv(K) F) F' inv(K).
+    """
+    from scipy.linalg import cho_factor, cho_solve
+
+    covariance = station_covariance(
+        system.covariances[k], system.points[rows], system.noise[k][rows], system.survey[rows]
+    )
+    # The same relative floor as the kernel's: a redundant sample must not spoil the inverse of the others.
+    covariance[np.diag_indices(len(covariance))] *= 1.0 + 1e-12
+    inverse = cho_solve(cho_factor(covariance, lower=True), np.eye(len(covariance)))
+    drift = system.station_columns[k][rows][:, : system.drifts]
+    if system.drifts:
+        weighted = inverse @ drift
+        inverse = inverse - weighted @ np.linalg.pinv(drift.T @ weighted, hermitian=True) @ weighted.T
+    return inverse, inverse @ system.station_columns[k][rows, system.drifts]
+
+
+def _restore(system: System, k: int, row: Any, departure: Any) -> Any:
+    """From a departure to the value: the centre and, where there is global drift, the drift at the station."""
+    wide = system.global_columns[row] @ system.coefficients[k] if system.global_columns.shape[1] else 0.0
+    return departure + system.centre[k] + wide
+
+
+def _leave_groups_out(system: System, labels: NDArray[np.int64], mean: Array, variance: Array) -> None:
+    own = labels[system.rows]
+    members = [np.flatnonzero(own == g) for g in np.unique(own)]
+    for k, column in enumerate(system.columns):
+        inverse, weighted = _bordered_inverse(system, k, np.arange(len(system.rows)))
+        value = system.station_columns[k, :, system.drifts]
+        for group in members:
+            block = inverse[np.ix_(group, group)]
+            # A singular block means that without the group the drift (or the mean) is not known.
+            if np.linalg.cond(block) > 1e12:
+                continue
+            spread = np.linalg.inv(block)
+            error = spread @ weighted[group]
+            mean[system.rows[group], column] = _restore(system, k, group, value[group] - error)
+            variance[system.rows[group], column] = np.diag(spread)
+
+
+def _leave_out_of_tiles(system: System, mean: Array, variance: Array) -> None:
+    tiles = system.tiles
+    tile_of = tiles.locate(system.points)
+    for tile in np.unique(tile_of):
+        rows = tiles.stations(int(tile))
+        here = np.flatnonzero(tile_of[rows] == tile)
+        for k, column in enumerate(system.columns):
+            inverse, weighted = _bordered_inverse(system, k, rows)
+            spread = 1.0 / np.diag(inverse)[here]
+            departure = system.station_columns[k, rows[here], system.drifts] - spread * weighted[here]
+            mean[system.rows[rows[here]], column] = _restore(system, k, rows[here], departure)
+            variance[system.rows[rows[here]], column] = spread

@@ -1,0 +1,224 @@
+"""A seeded handful of places solved again by a library that shares no code with the kernel."""
+
+from __future__ import annotations
+
+from dataclasses import asdict, dataclass
+from typing import Any
+
+import numpy as np
+from numpy.typing import ArrayLike, NDArray
+
+from texture.predict.kriging import Kriging
+from texture.predict.system import System, station_covariance
+from texture.structure.compiled import COINCIDENT_M
+from texture.structure.covariance import check_points
+
+__all__ = ["SecondOpinion", "second_opinion"]
+
+Array = NDArray[np.float64]
+
+# Differences up to this part of the sill (variance) or of its root (mean) are rounding in ordinary cases.
+ORDINARY = 1e-6
+
+
+@dataclass(frozen=True)
+class SecondOpinion:
+    """What came out.
+
+    Parameters
+    ----------
+    places : int
+        Places that were solved again, each in every column.
+    solver : str
+        "PyKrige", "dense solve (why)", or both.
+    mean_difference : float
+        Largest difference of means over the root of the sill.
+    variance_difference : float
+        Largest difference of variances over the sill.
+    tolerance : float
+        1e-6, or more where the condition number of a neighbourhood costs more digits than that.
+    agrees : bool
+        Whether the kernel stands: within tolerance, or a dense solve sides with it.
+    """
+
+    places: int
+    solver: str
+    mean_difference: float
+    variance_difference: float
+    tolerance: float
+    agrees: bool
+
+    def __str__(self) -> str:
+        verdict = "agrees" if self.agrees else "DISAGREES"
+        return (
+            f"second opinion by {self.solver} on {self.places} places {verdict}: largest difference "
+            f"{self.mean_difference:.1e} of the standard deviation, {self.variance_difference:.1e} of the sill"
+        )
+
+    def to_dict(self) -> dict[str, Any]:
+        """Plain numbers and strings for JSON."""
+        return asdict(self)
+
+
+def second_opinion(
+    kriging: Kriging, points: ArrayLike, seed: int, count: int = 8, drift: ArrayLike | None = None
+) -> SecondOpinion:
+    """Solve a seeded handful of points again on exactly the stations that served them.
+
+    Parameters
+    ----------
+    kriging : Kriging
+        Fitted.
+    points : float array, shape (m, d)
+        Where the map was made; `count` of them are drawn.
+    seed : int
+    count : int
+    drift : float array, shape (m, p), optional
+        Drift columns at the points, where the stations had them.
+
+    Returns
+    -------
+    SecondOpinion
+        PyKrige (ordinary kriging and specified drift, two and three dimensions) does it where it can express the
+        case; a dense scipy solve does it for known means, noise that differs between stations, survey offsets,
+        global drift, places on top of noisy stations and more than three dimensions.
+    """
+    places = check_points(points)
+    rng = np.random.default_rng(seed)
+    picked = np.sort(rng.choice(len(places), min(count, len(places)), replace=False))
+    places = places[picked]
+    columns = (
+        None if drift is None else np.asarray(drift, dtype=np.float64).reshape(len(np.asarray(points)), -1)[picked]
+    )
+    mean, variance = kriging.predict(places, columns)
+    solvers: set[str] = set()
+    worst_mean = worst_variance = 0.0
+    tolerance, agrees = ORDINARY, True
+    for system in kriging.systems:
+        local, wide = system.cell_columns(len(places), columns)
+        for i, place in enumerate(places):
+            rows = np.searchsorted(system.rows, kriging.stations_of(place, system.columns[0]))
+            metric = system.covariances[0].metric(place[None])[0]
+            for k, column in enumerate(system.columns):
+                problem = _Problem(system, k, rows, metric, local[i], wide[i])
+                base = system.centre[k] + wide[i] @ system.coefficients[k]
+                ours = (mean[i, column] - base, variance[i, column])
+                why = problem.beyond_pykrige()
+                theirs = problem.dense() if why else problem.by_pykrige()
+                solvers.add(f"dense solve ({why})" if why else "PyKrige")
+                allowed = problem.tolerance()
+                gap = problem.gap(ours, theirs)
+                if max(gap) > allowed and not why:
+                    gap_dense = problem.gap(ours, problem.dense())
+                    agrees = agrees and max(gap_dense) <= allowed
+                elif max(gap) > allowed:
+                    agrees = False
+                worst_mean, worst_variance = max(worst_mean, gap[0]), max(worst_variance, gap[1])
+                tolerance = max(tolerance, allowed)
+    return SecondOpinion(
+        len(places), " and ".join(sorted(solvers)), worst_mean, worst_variance, tolerance, bool(agrees)
+    )
+
+
+class _Problem:
+    """One place, one column, the stations that served it."""
+
+    def __init__(self, system: System, k: int, rows: Any, place: Array, local: Array, wide: Array) -> None:
+        self.covariance = system.covariances[k]
+        self.points, self.place = system.points[rows], place
+        self.noise, self.survey = system.noise[k][rows], system.survey[rows]
+        block = system.station_columns[k][rows]
+        self.drift, self.values = block[:, : system.drifts], block[:, system.drifts]
+        self.wide_columns = block[:, system.drifts + 1 :]
+        self.local, self.wide = local, wide
+        self.wide_covariance = system.global_covariance[k]
+        self.matrix = station_covariance(self.covariance, self.points, self.noise, self.survey)
+
+    def gap(self, ours: tuple[float, float], theirs: tuple[float, float]) -> tuple[float, float]:
+        sill = max(self.covariance.sill, 1e-300)
+        return abs(ours[0] - theirs[0]) / np.sqrt(sill), abs(ours[1] - theirs[1]) / sill
+
+    def tolerance(self) -> float:
+        # Each digit of the condition number is a digit lost; 100 is the growth that a few hundred terms add.
+        return max(ORDINARY, 100.0 * np.finfo(np.float64).eps * float(np.linalg.cond(self.matrix)))
+
+    def beyond_pykrige(self) -> str:
+        """Why PyKrige cannot express the case; empty when it can."""
+        if self.drift.shape[1] == 0:
+            return "known mean"
+        if len(self.points) < 3:
+            return "fewer than three stations"
+        if self.points.shape[1] > 3:
+            return f"{self.points.shape[1]} dimensions"
+        if np.ptp(self.noise) > 0.0:
+            return "noise differs between stations"
+        if self.covariance.survey > 0.0:
+            return "survey offsets"
+        if self.wide.size:
+            return "global drift"
+        nearest = np.sqrt(((self.points - self.place) ** 2).sum(axis=1)).min()
+        if nearest <= 1e-3 and self.noise[0] > 0.0:
+            return "place on a noisy station"
+        return ""
+
+    def dense(self) -> tuple[float, float]:
+        """The bordered system as it stands in the books, by LU."""
+        from scipy.linalg import solve
+
+        from texture.structure.compiled import covariance_matrix, distance_matrix
+
+        c = self.covariance
+        k0 = covariance_matrix(c.packed, c.small_scale, distance_matrix(self.points, self.place[None]))[:, 0]
+        n, p = self.drift.shape
+        bordered = np.block([[self.matrix, self.drift], [self.drift.T, np.zeros((p, p))]])
+        right = np.concatenate([k0, self.local])
+        weight = solve(bordered, right, assume_a="sym")
+        variance = c.sill - weight @ right
+        if self.wide.size:
+            rest = self.wide - self.wide_columns.T @ weight[:n]
+            variance += rest @ self.wide_covariance @ rest
+        return float(weight[:n] @ self.values), float(variance)
+
+    def by_pykrige(self) -> tuple[float, float]:
+        """PyKrige on the same stations, in the covariance's own metric, with the covariance as a custom variogram."""
+        from pykrige.ok import OrdinaryKriging
+        from pykrige.ok3d import OrdinaryKriging3D
+        from pykrige.uk import UniversalKriging
+        from pykrige.uk3d import UniversalKriging3D
+
+        noise = float(self.noise[0])
+        total = self.covariance.sill + noise
+        plain = self.covariance.packed
+        d = self.points.shape[1]
+
+        def gamma(_: Any, h: Any) -> Any:
+            from texture.structure.compiled import covariance_matrix
+
+            flat = np.ascontiguousarray(np.atleast_1d(h).reshape(1, -1))
+            return (total - covariance_matrix(plain, 0.0, flat)).reshape(np.shape(h))
+
+        # PyKrige has no one-dimensional class; a constant second coordinate changes no distance.
+        points = self.points if d > 1 else np.column_stack([self.points, np.zeros(len(self.points))])
+        place = self.place if d > 1 else np.array([self.place[0], 0.0])
+        settings = {
+            "variogram_model": "custom",
+            "variogram_parameters": [],
+            "variogram_function": gamma,
+            "exact_values": True,
+        }
+        extra, at = {}, {}
+        if self.drift.shape[1] > 1:
+            settings["drift_terms"] = ["specified"]
+            extra["specified_drift"] = list(self.drift[:, 1:].T)
+            at["specified_drift_arrays"] = [np.array([x]) for x in self.local[1:]]
+        coordinates = [np.ascontiguousarray(column) for column in points.T]
+        three = points.shape[1] == 3
+        if self.drift.shape[1] > 1:
+            solver = UniversalKriging3D if three else UniversalKriging
+        else:
+            solver = OrdinaryKriging3D if three else OrdinaryKriging
+        fitted = solver(*coordinates, self.values, **settings, **extra)
+        mean, variance = fitted.execute("points", *[np.array([x]) for x in place], **at)
+        at_station = bool(np.sqrt(((self.points - self.place) ** 2).sum(axis=1)).min() <= COINCIDENT_M)
+        # PyKrige's nugget is part of what it predicts away from stations; our noise is not.
+        return float(mean[0]), float(variance[0]) - (0.0 if at_station else noise)
