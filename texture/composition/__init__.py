@@ -1,5 +1,14 @@
 """Fractions and log-ratio coordinates, size curves, texture classes and words for them."""
 
+from texture.composition.classes import (
+    ClassOdds,
+    Scheme,
+    class_numbers,
+    class_odds,
+    classify,
+    find_scheme,
+    scheme_names,
+)
 from texture.composition.closure import (
     centre,
     close,
@@ -15,16 +24,23 @@ from texture.composition.partition import Partition, default_tree
 from texture.composition.zeros import replace
 
 __all__ = [
+    "ClassOdds",
     "LogRatio",
     "Partition",
+    "Scheme",
     "centre",
+    "class_numbers",
+    "class_odds",
+    "classify",
     "close",
     "clr",
     "default_tree",
     "distance",
+    "find_scheme",
     "perturb",
     "power",
     "replace",
+    "scheme_names",
     "total_variance",
     "variation_matrix",
 ]

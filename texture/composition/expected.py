@@ -31,6 +31,7 @@ from numba import njit, prange
 from texture.composition.closure import Array
 from texture.composition.kernels import (
     cholesky,
+    has_nan,
     logistic,
     logistic_normal,
     mixture_scales,
@@ -41,7 +42,7 @@ from texture.errors import CompositionError
 if TYPE_CHECKING:
     from texture.composition.logratio import LogRatio
 
-__all__ = ["as_moments", "expected", "has_nan", "normal_draws", "refuse_matrix"]
+__all__ = ["as_moments", "expected", "normal_draws", "refuse_matrix"]
 
 SOBOL_DRAWS = 4096
 _SOBOL_SEED = 20240229
@@ -170,12 +171,6 @@ def _expected_shares(logratio: "LogRatio", mean: Array, spread: Array, correlate
         fractions[:, part] = np.clip(value, 0.0, 1.0)
     fractions[np.isnan(mean).any(axis=1) | np.isnan(spread.reshape(len(mean), -1)).any(axis=1)] = np.nan
     return fractions
-
-
-@njit(cache=True)
-def has_nan(row: Array) -> bool:
-    """Whether any entry is NaN."""
-    return bool(np.isnan(row).any())
 
 
 @njit(cache=True, parallel=True)

@@ -18,6 +18,8 @@ from texture.composition.closure import Array
 
 __all__ = [
     "cholesky",
+    "has_nan",
+    "inverse_row",
     "logistic",
     "logistic_normal",
     "logistic_normal_slope",
@@ -172,3 +174,49 @@ def cholesky(covariance: Array, out: Array) -> bool:
                 value -= out[i, k] * out[j, k]
             out[i, j] = value / root
     return True
+
+
+@njit(cache=True)
+def has_nan(row: Array) -> bool:
+    """Whether any entry is NaN."""
+    return bool(np.isnan(row).any())
+
+
+@njit(cache=True)
+def inverse_row(y, index, sign, basis, clipped, shares, out):  # type: ignore[no-untyped-def]
+    """Parts of one row of coordinates: closed exp(y @ basis), or, where `basis` is empty, products along paths.
+
+    `clipped` takes coordinates as shares, clipped to [0, 1], rather than as their logits; `shares` (2, d) is scratch.
+    """
+    parts, depth = index.shape
+    if basis.size:
+        top = -math.inf
+        for p in range(parts):
+            out[p] = 0.0
+            for i in range(y.size):
+                out[p] += y[i] * basis[i, p]
+            top = max(top, out[p])
+        total = 0.0
+        for p in range(parts):
+            out[p] = math.exp(out[p] - top)
+            total += out[p]
+        for p in range(parts):
+            out[p] /= total
+        return
+    for i in range(y.size):
+        if clipped:
+            shares[0, i] = min(max(y[i], 0.0), 1.0)
+            shares[1, i] = 1.0 - shares[0, i]
+        else:
+            decay = math.exp(-abs(y[i]))
+            large = 1.0 / (1.0 + decay)
+            small = decay * large
+            shares[0, i] = large if y[i] >= 0.0 else small
+            shares[1, i] = small if y[i] >= 0.0 else large
+    for p in range(parts):
+        out[p] = 1.0
+        for a in range(depth):
+            i = index[p, a]
+            if i < 0:
+                break
+            out[p] *= shares[0, i] if sign[p, a] > 0.0 else shares[1, i]

@@ -24,9 +24,11 @@ import numpy.typing as npt
 from numba import njit, prange
 
 from texture.composition.closure import Array
-from texture.composition.expected import as_moments, has_nan, normal_draws, refuse_matrix
+from texture.composition.expected import as_moments, normal_draws, refuse_matrix
 from texture.composition.kernels import (
     cholesky,
+    has_nan,
+    inverse_row,
     logistic,
     logistic_normal,
     logistic_normal_slope,
@@ -431,7 +433,7 @@ def _path_quantiles(m, sign, factor, inside, table, q, draws, out):  # type: ign
 def _draw_kernel(mean, covariance, index, sign, basis, q, draws, out, status):  # type: ignore[no-untyped-def]
     """Order statistics of draws: closed exp(y @ basis), or products of clipped shares where basis is empty."""
     n, d = mean.shape
-    parts, depth = index.shape
+    parts = index.shape[0]
     count = draws.shape[0]
     for row in prange(n):
         if has_nan(mean[row]) or has_nan(covariance[row]):
@@ -442,33 +444,16 @@ def _draw_kernel(mean, covariance, index, sign, basis, q, draws, out, status):  
             continue
         values = np.empty((parts, count))
         y = np.empty(d)
+        x = np.empty(parts)
+        shares = np.empty((2, d))
         for k in range(count):
             for i in range(d):
                 y[i] = mean[row, i]
                 for j in range(i + 1):
                     y[i] += factor[i, j] * draws[k, j]
-            if basis.size:
-                top = -math.inf
-                for p in range(parts):
-                    values[p, k] = 0.0
-                    for i in range(d):
-                        values[p, k] += y[i] * basis[i, p]
-                    top = max(top, values[p, k])
-                total = 0.0
-                for p in range(parts):
-                    values[p, k] = math.exp(values[p, k] - top)
-                    total += values[p, k]
-                for p in range(parts):
-                    values[p, k] /= total
-            else:
-                for p in range(parts):
-                    values[p, k] = 1.0
-                    for a in range(depth):
-                        i = index[p, a]
-                        if i < 0:
-                            break
-                        share = min(max(y[i], 0.0), 1.0)
-                        values[p, k] *= share if sign[p, a] > 0.0 else 1.0 - share
+            inverse_row(y, index, sign, basis, True, shares, x)
+            for p in range(parts):
+                values[p, k] = x[p]
         for p in range(parts):
             ordered = np.sort(values[p])
             for level in range(q.size):

@@ -1,0 +1,46 @@
+"""The compiled loop behind `texture.composition.classes.class_odds`."""
+
+import math
+
+import numpy as np
+from numba import njit, prange
+
+from texture.composition.kernels import cholesky, has_nan, inverse_row
+
+__all__ = ["odds_kernel"]
+
+
+@njit(cache=True, parallel=True)
+def odds_kernel(  # type: ignore[no-untyped-def]
+    mean, covariance, index, sign, basis, clipped, coefficients, lookup, draws, tie, out, status
+):
+    """Share of draws in each class, row by row, into `out` (n, n_classes); NaN rows where moments are unknown."""
+    n, d = mean.shape
+    parts = index.shape[0]
+    for row in prange(n):
+        if has_nan(mean[row]) or has_nan(covariance[row]):
+            out[row] = math.nan
+            continue
+        factor = np.zeros((d, d))
+        if not cholesky(covariance[row], factor):
+            status[row] = True
+            continue
+        y = np.empty(d)
+        x = np.empty(parts)
+        shares = np.empty((2, d))
+        weight = 1.0 / draws.shape[0]
+        for k in range(draws.shape[0]):
+            for i in range(d):
+                y[i] = mean[row, i]
+                for j in range(i + 1):
+                    y[i] += factor[i, j] * draws[k, j]
+            inverse_row(y, index, sign, basis, clipped, shares, x)
+            pattern = 0
+            for c in range(coefficients.shape[0]):
+                total = tie
+                for p in range(parts):
+                    total += coefficients[c, p] * x[p]
+                if total >= 0.0:
+                    pattern |= 1 << c
+            if lookup[pattern] >= 0:
+                out[row, lookup[pattern]] += weight
