@@ -70,6 +70,8 @@ def test_without_polygons_the_dry_cells_are_land(scene, tmp_path):
 
 def test_no_overlap_is_refused_with_both_extents(scene):
     stations, target = scene([x + 80_000 for x in EASTINGS])
-    with pytest.raises(SampleError, match=r"none of 7 stations lies on the grid: stations are at longitude -25\.\d+") as caught:
+    with pytest.raises(
+        SampleError, match=r"none of 7 stations lies on the grid: stations are at longitude -25\.\d+"
+    ) as caught:
         place_stations(stations, target, Intake())
     assert "check the samples' crs" in str(caught.value)

@@ -13,8 +13,6 @@ from texture.targets import Target, cell_points
 from texture.validation.reach import beyond_reach
 
 if TYPE_CHECKING:
-    import xarray as xr
-
     from texture.mapping import Mapper
     from texture.structure.plane import Plane
 
@@ -94,7 +92,7 @@ def estimate_on(
     with progress.stage("estimate", total=cells.size) as advance:
         for start in range(0, cells.size, CELLS_AT_ONCE):
             some = cells[start : start + CELLS_AT_ONCE]
-            inside = cell_points(target, some, per_side, plane.to_plane)
+            inside = cell_points(target, some, per_side, plane.to_metres)
             m, v, rung = mapper.predict_with_rung(inside.reshape(-1, 2))
             shape = inside.shape[:2]
             back = mapper.logratio.inverse(m) if median else mapper.expected(m, v)

@@ -21,6 +21,9 @@ if TYPE_CHECKING:
 __all__ = ["Mapper", "fit_structure", "make_mapper"]
 
 Floats = NDArray[np.float64]
+LEAST_TRACE = (
+    0.01  # gravel below it names no class of the map; some mapping practice takes this (common practice, no source)
+)
 
 
 def fit_structure(observations: Observations, method: Method, start: CovarianceSet | None = None) -> CovarianceSet:
@@ -111,8 +114,8 @@ class Mapper:
         from texture.composition import class_odds
 
         spread = self.covariance(variance) if self.has_variance else np.zeros_like(mean)
-        odds = class_odds(self.logratio, mean, spread, "folk")
-        return odds.most_probable, odds.probability
+        odds = class_odds(self.logratio, mean, spread, "folk", trace=max(LEAST_TRACE, self.logratio.detection_limit))
+        return odds.number, odds.probability
 
 
 def make_mapper(

@@ -83,7 +83,7 @@ def observe(stations: Stations, logratio: LogRatio, plane: Plane) -> Observation
         )
     names = sorted(chosen["survey"].unique())
     return Observations(
-        points=plane.to_plane(chosen["longitude"].to_numpy(), chosen["latitude"].to_numpy()),
+        points=plane.to_metres(chosen["longitude"].to_numpy(), chosen["latitude"].to_numpy()),
         fractions=parts[rows],
         coordinates=coordinates,
         noise=np.nan_to_num(noise),

@@ -15,6 +15,7 @@ from texture.composition import LogRatio
 from texture.estimate import estimate_on
 from texture.mapping import fit_structure, make_mapper
 from texture.observations import observe
+from texture.placing import place_stations
 from texture.progress import Progress, Silent
 from texture.recipe import Recipe
 from texture.recipe_file import read_recipe
@@ -22,7 +23,6 @@ from texture.result import Intake, Result, Validated
 from texture.stations import Stations, read_samples
 from texture.structure.plane import Plane
 from texture.targets import Target, points_per_side, read_target
-from texture.placing import place_stations
 from texture.validate import validate_methods
 
 __all__ = ["build", "intake", "read_stations", "validate"]
@@ -103,7 +103,9 @@ def build(
         estimate = estimate_on(target, mapper, found.plane, found.observations.points, found.reach_m, per_side,
                                progress, median=recipe.method.estimate == "median")  # fmt: skip
     with clock.stage("second opinion"):
-        opinion = second_opinion(mapper.predictor, found.cell_centres, seed=recipe.seed) if mapper.has_variance else None
+        opinion = (
+            second_opinion(mapper.predictor, found.cell_centres, seed=recipe.seed) if mapper.has_variance else None
+        )
     with clock.stage("bed"):
         bed = make_bed(estimate.fractions, estimate.evidence, target, recipe.bed, recipe.rim, recipe.composition.parts)
     result = Result(found, estimate, per_side, opinion, bed, clock)
@@ -127,9 +129,12 @@ def _validated(recipe: Recipe, progress: Progress, clock: Clock) -> Validated:
     with clock.stage("read"):
         target, stations = _stations(recipe, progress)
     logratio = LogRatio(
-        recipe.composition.parts, recipe.composition.logratio, recipe.composition.tree, recipe.composition.detection_limit
+        recipe.composition.parts,
+        recipe.composition.logratio,
+        recipe.composition.tree,
+        recipe.composition.detection_limit,
     )
-    plane = Plane.around(stations.table["longitude"].to_numpy(), stations.table["latitude"].to_numpy())
+    plane = Plane.choose(stations.table["longitude"].to_numpy(), stations.table["latitude"].to_numpy(), target.crs)
     observations = observe(stations, logratio, plane)
     with clock.stage("fit"), progress.stage("fit the spatial structure"):
         structure = fit_structure(observations, recipe.method)

@@ -1,4 +1,4 @@
-"""Stations meet the target: do they overlap, and which of them stand on land?"""
+"""Stations meet the target: whether they overlap, and which of them stand on land."""
 
 from __future__ import annotations
 
@@ -54,7 +54,9 @@ def place_stations(stations: Stations, target: Target, intake: Intake) -> Statio
             changed=moved,
             rule="on land: moved to the nearest water cell, which is within one cell",
         )
-    return stations.with_changes(drop=lost, reason="on land, further than one cell from water") if lost.any() else stations
+    return (
+        stations.with_changes(drop=lost, reason="on land, further than one cell from water") if lost.any() else stations
+    )
 
 
 def _same_turn(longitude: Floats, like: Floats) -> Floats:

@@ -74,7 +74,7 @@ class Validated:
     def cell_centres(self) -> Floats:
         """Water cells in the plane, shape (cells, 2)."""
         wet = self.target.active
-        return self.plane.to_plane(self.target.longitude[wet], self.target.latitude[wet])
+        return self.plane.to_metres(self.target.longitude[wet], self.target.latitude[wet])
 
     @property
     def reach_m(self) -> float:
@@ -82,7 +82,7 @@ class Validated:
         return self.validation.reach_m
 
     def scores(self) -> dict[str, dict[str, dict[str, float | None]]]:
-        """method → part → score → value, None where a score could not be made."""
+        """Method → part → score → value, None where a score could not be made."""
         table: dict[str, dict[str, dict[str, float | None]]] = {}
         for method in self.validation.methods:
             parts = table.setdefault(method.method, {})
@@ -184,7 +184,9 @@ class Result:
         if account.rim_cells:
             bed += f"; the rim ({account.rim_cells:,} cells) took out {rim / 1e6:,.2f} Mt of mud"
         lines = [found.recipe.title, *rows_lines(found.stations), *structure_lines(found), *error_lines(found)]
-        lines.append(f"  support     {100 * self.beyond_share:.1f} % of the water area is further than {found.reach_m / 1000:.1f} km from any sample")
+        lines.append(
+            f"  support     {100 * self.beyond_share:.1f} % of the water area is further than {found.reach_m / 1000:.1f} km from any sample"
+        )
         lines.append(bed)
         if account.not_given:
             lines.append(f"  not given   {', '.join(account.not_given)}")

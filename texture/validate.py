@@ -113,4 +113,4 @@ def _map_points(target: Target, plane: Plane, seed: int) -> Floats:
     cells = np.flatnonzero(target.active)
     if cells.size > MOST_MAP_POINTS:
         cells = np.sort(np.random.default_rng(seed).choice(cells, MOST_MAP_POINTS, replace=False))
-    return plane.to_plane(target.longitude[cells], target.latitude[cells])
+    return plane.to_metres(target.longitude[cells], target.latitude[cells])

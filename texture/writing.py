@@ -76,11 +76,20 @@ def input_files(recipe: Recipe) -> list[Path]:
 
 
 def _write_grids(result: Result, aside: Path) -> None:
-    from texture.composition import class_colours, class_words
-    from texture.output import apply_names, bed_dataset, read_names, texture_dataset, write_dataset, write_geotiffs
+    from texture.composition import find_scheme
+    from texture.output import (
+        apply_names,
+        bed_dataset,
+        class_colours,
+        read_names,
+        texture_dataset,
+        write_geotiffs,
+        write_netcdf,
+    )
 
     found, recipe = result.found, result.found.recipe
-    words = class_words("folk")
+    scheme = find_scheme("folk")
+    words = dict(zip(scheme.numbers, scheme.words, strict=True))
     support = (
         f"mean over {result.points_per_side**2} points inside each cell"
         if result.points_per_side > 1
@@ -92,13 +101,13 @@ def _write_grids(result: Result, aside: Path) -> None:
         "quantile_support": "cell mean: small-scale variation averages out inside the cell",
     }
     names = found.mapper.logratio.coordinate_names
-    write_dataset(aside / "texture.nc", texture_dataset(result.estimate, found.target, recipe, words, names, attributes))
+    write_netcdf(texture_dataset(result.estimate, found.target, recipe, words, names, attributes), aside / "texture.nc")
     bed = bed_dataset(result.bed, found.target, recipe)
     if recipe.outputs.names is not None:
-        bed = apply_names(bed, read_names(recipe.outputs.names), found.target)
-    write_dataset(aside / "bed.nc", bed)
+        bed = apply_names(bed, read_names(recipe.outputs.names), recipe.outputs.names.name)
+    write_netcdf(bed, aside / "bed.nc")
     if recipe.outputs.geotiff:
-        colours = class_colours("folk")
+        colours = class_colours(scheme.numbers)
         parts, size = recipe.composition.parts, recipe.outputs.geotiff_cell_size_m
         write_geotiffs(aside / "geotiff", result.estimate, found.target, parts, words, colours, size)
 

@@ -113,4 +113,7 @@ def test_mistakes():
 
 def test_public_form_gives_index_pairs():
     pairs = matched_folds(STATIONS, CELLS, 2, seed=1)
-    assert [(train.tolist(), test.tolist()) for train, test in pairs] == [([4, 5], [0, 1, 2, 3]), ([0, 1, 2, 3], [4, 5])]
+    assert [(train.tolist(), test.tolist()) for train, test in pairs] == [
+        ([4, 5], [0, 1, 2, 3]),
+        ([0, 1, 2, 3], [4, 5]),
+    ]

@@ -2,6 +2,7 @@
 
 from texture.output.bed_nc import bed_dataset
 from texture.output.cf import write_netcdf
+from texture.output.class_colours import class_colours
 from texture.output.folder import ResultFolder
 from texture.output.geotiff import pixel_grid, write_geotiff, write_geotiffs
 from texture.output.names import Names, read_names
@@ -16,6 +17,7 @@ __all__ = [
     "ResultFolder",
     "apply_names",
     "bed_dataset",
+    "class_colours",
     "open_bed",
     "pixel_grid",
     "provenance",

@@ -2,13 +2,14 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from collections.abc import Mapping
+from dataclasses import dataclass, field
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
 from numpy.typing import NDArray
 
-from texture.report.style import INK, LAND, PART_MAP, new_figure, qualitative, styled
+from texture.report.style import INK, LAND, PART_MAP, new_figure, styled
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
@@ -16,9 +17,18 @@ if TYPE_CHECKING:
 
     from texture.targets import Target
 
-__all__ = ["Layer", "draw_maps"]
+__all__ = ["EVIDENCE_COLOURS", "Layer", "draw_maps"]
 
 Floats = NDArray[np.float64]
+EVIDENCE_COLOURS = {
+    0: (235, 232, 225),
+    1: (63, 107, 125),
+    2: (222, 170, 96),
+    3: (122, 90, 140),
+    4: (200, 196, 186),
+    5: (140, 150, 90),
+    6: (176, 65, 62),
+}
 MOST_CELLS_ACROSS = 600  # more would not be seen, and would make the file large; the caption says so
 
 
@@ -26,17 +36,20 @@ MOST_CELLS_ACROSS = 600  # more would not be seen, and would make the file large
 class Layer:
     """One map: values over all cells, NaN or -1 where there is none.
 
-    `names` makes it a map of classes: values are positions in `names`.
+    `names` and `colours` (red, green, blue of 0–255) make it a map of classes: values are their keys.
     """
 
     title: str
     values: Floats
     label: str = "fraction of dry mass"
     limits: tuple[float, float] = (0.0, 1.0)
-    names: tuple[str, ...] = ()
+    names: Mapping[int, str] = field(default_factory=dict)
+    colours: Mapping[int, tuple[int, int, int]] = field(default_factory=dict)
 
 
-def draw_maps(target: Target, layers: list[Layer], stations: tuple[Floats, Floats] | None = None, columns: int = 2) -> Figure:
+def draw_maps(
+    target: Target, layers: list[Layer], stations: tuple[Floats, Floats] | None = None, columns: int = 2
+) -> Figure:
     """Draw layers side by side on one scale of distance.
 
     Parameters
@@ -83,18 +96,24 @@ def _draw(figure: Figure, axis: Axes, target: Target, layer: Layer) -> None:
     lon, lat, values = _thinned(target, np.where(target.active, layer.values, np.nan))
     if layer.names:
         used = sorted({int(v) for v in values[np.isfinite(values)]})
-        colours = qualitative(len(used))
+        colours = [tuple(c / 255 for c in layer.colours[v]) for v in used]
         position = {v: i for i, v in enumerate(used)}
-        values = np.vectorize(lambda v: position.get(int(v), np.nan) if np.isfinite(v) else np.nan, otypes=[float])(values)
+        values = np.vectorize(lambda v: position.get(int(v), np.nan) if np.isfinite(v) else np.nan, otypes=[float])(
+            values
+        )
         norm = BoundaryNorm(np.arange(len(used) + 1) - 0.5, len(used))
-        mesh = axis.pcolormesh(lon, lat, np.ma.masked_invalid(values), cmap=ListedColormap(colours), norm=norm, rasterized=True)
+        mesh = axis.pcolormesh(
+            lon, lat, np.ma.masked_invalid(values), cmap=ListedColormap(colours), norm=norm, rasterized=True
+        )
         bar = figure.colorbar(mesh, ax=axis, shrink=0.9, pad=0.02, ticks=range(len(used)))
         bar.ax.set_yticklabels([layer.names[v] for v in used])
         bar.ax.tick_params(length=0)
     else:
         colour_map: Any = getattr(cm, PART_MAP)
         low, high = layer.limits
-        mesh = axis.pcolormesh(lon, lat, np.ma.masked_invalid(values), cmap=colour_map, vmin=low, vmax=high, rasterized=True)
+        mesh = axis.pcolormesh(
+            lon, lat, np.ma.masked_invalid(values), cmap=colour_map, vmin=low, vmax=high, rasterized=True
+        )
         figure.colorbar(mesh, ax=axis, shrink=0.9, pad=0.02, label=layer.label)
 
 

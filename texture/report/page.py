@@ -9,13 +9,13 @@ import numpy as np
 
 from texture.report.charts import draw_methods, draw_scatter, draw_variograms
 from texture.report.encode import Picture, picture
-from texture.report.maps import Layer, draw_maps
+from texture.report.maps import EVIDENCE_COLOURS, Layer, draw_maps
 from texture.report.tables import page_tables
 
 if TYPE_CHECKING:
     from texture.result import Result
 
-__all__ = ["CAUTIONS", "result_picture", "write_page"]
+__all__ = ["CAUTIONS", "result_picture", "versions_line", "write_page"]
 
 CAUTIONS = (
     "The bed shown is smoother than any real bed: it is an expected mean of each cell, not a possible bed.",
@@ -60,6 +60,19 @@ def write_page(result: Result, settings: str, versions: str) -> str:
     )
 
 
+def versions_line(result: Result) -> str:
+    """Say versions and seconds in one line."""
+    from importlib import metadata
+
+    from texture import __version__
+
+    packages = ", ".join(
+        f"{name} {metadata.version(name)}" for name in ("numpy", "scipy", "numba", "pyproj", "rasterio")
+    )
+    seconds = ", ".join(f"{name} {value:.1f} s" for name, value in result.clock.seconds.items())
+    return f"Seabed Texture {__version__}; {packages}. {seconds}."
+
+
 def result_picture(result: Result) -> Picture:
     """Draw the picture of the map alone, for a README or a slide."""
     return _parts_picture(result)
@@ -94,9 +107,10 @@ def _parts_picture(result: Result) -> Picture:
     found, estimate = result.found, result.estimate
     table = found.stations.table
     place = table["longitude"].to_numpy(), table["latitude"].to_numpy()
-    layers = [Layer(f"{part} fraction", estimate.fractions[:, i]) for i, part in enumerate(found.recipe.composition.parts)]
-    names = _class_names(result)
-    layers.append(Layer("most probable texture class", np.where(estimate.texture_class > 0, estimate.texture_class - 1.0, np.nan), names=names))
+    layers = [
+        Layer(f"{part} fraction", estimate.fractions[:, i]) for i, part in enumerate(found.recipe.composition.parts)
+    ]
+    layers.append(_class_layer(result))
     return picture(
         draw_maps(found.target, layers, place),
         "Expected fractions of dry mass in each water cell, and the most probable texture class (Folk 1954). Rings: stations.",
@@ -110,14 +124,15 @@ def _trust_picture(result: Result) -> Picture:
     found, estimate = result.found, result.estimate
     layers = []
     if found.mapper.has_variance:
-        for i, part in enumerate(found.recipe.composition.parts[:1] + found.recipe.composition.parts[2:3]):
-            column = found.recipe.composition.parts.index(part)
+        for column, part in enumerate(found.recipe.composition.parts):
             width = estimate.quantiles[2, :, column] - estimate.quantiles[0, :, column]
-            layers.append(Layer(f"width of the 90 % interval, {part}", width, limits=(0.0, max(0.2, float(np.nanmax(width))))))
+            layers.append(
+                Layer(f"width of the 90 % interval, {part}", width, limits=(0.0, max(0.2, float(np.nanmax(width)))))
+            )
     evidence = np.where(found.target.active, estimate.evidence.astype(float), np.nan)
-    layers.append(Layer("evidence", evidence, names=tuple(EVIDENCE[k] for k in sorted(EVIDENCE))))
+    layers.append(Layer("evidence", evidence, names=EVIDENCE, colours=EVIDENCE_COLOURS))
     return picture(
-        draw_maps(found.target, layers, columns=len(layers)),
+        draw_maps(found.target, layers),
         "How uncertain the mean of each cell is, and which cells lie beyond what the samples support.",
         "Maps of interval width and of evidence.",
     )
@@ -138,10 +153,14 @@ def _bed_picture(result: Result) -> Picture:
     )
 
 
-def _class_names(result: Result) -> tuple[str, ...]:
-    from texture.composition import class_names
+def _class_layer(result: Result) -> Layer:
+    from texture.composition import find_scheme
+    from texture.output import class_colours
 
-    return class_names("folk")
+    scheme = find_scheme("folk")
+    values = np.where(result.estimate.texture_class > 0, result.estimate.texture_class.astype(float), np.nan)
+    names = dict(zip(scheme.numbers, scheme.words, strict=True))
+    return Layer("most probable texture class", values, names=names, colours=class_colours(scheme.numbers))
 
 
 def _method_line(result: Result) -> str:
@@ -162,7 +181,11 @@ def _map_notes(result: Result) -> list[str]:
         "further than any held-out station was predicted from; it is flagged as extrapolated."
     ]
     notes += [f"{n[0].upper()}{n[1:]}." for n in found.target.notes]
-    notes += ["Outer edge of the grid: " + "; ".join(str(o) for o in found.target.openings) + "."] if found.target.openings else []
+    notes += (
+        ["Outer edge of the grid: " + "; ".join(str(o) for o in found.target.openings) + "."]
+        if found.target.openings
+        else []
+    )
     return notes
 
 
@@ -198,11 +221,15 @@ def _opinion_line(result: Result) -> str:
 
 def _bed_notes(result: Result) -> list[str]:
     account = result.bed.account
-    notes = [f"{100 * account.share_below_samples:.0f} % of the bed's mass lies below any sample: those layers are what the recipe says, not what was found."]
+    notes = [
+        f"{100 * account.share_below_samples:.0f} % of the bed's mass lies below any sample: those layers are what the recipe says, not what was found."
+    ]
     if account.rim_cells:
         notes.append(f"The rim touches {account.rim_cells:,} cells; it is numerical, not observed.")
     else:
         notes.append("No rim was asked for: the open boundary has the estimate itself.")
     if account.not_given:
-        notes.append(f"Not given, and not to be had from grain size: {', '.join(account.not_given)}. The model needs them.")
+        notes.append(
+            f"Not given, and not to be had from grain size: {', '.join(account.not_given)}. The model needs them."
+        )
     return notes

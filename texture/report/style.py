@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING, Any
 if TYPE_CHECKING:
     from matplotlib.figure import Figure
 
-__all__ = ["INK", "LAND", "PART_MAP", "QUIET", "STRONG", "new_figure", "qualitative", "styled"]
+__all__ = ["INK", "LAND", "PART_MAP", "QUIET", "STRONG", "new_figure", "styled"]
 
 INK = "#22303a"
 QUIET = "#8a969e"
@@ -52,11 +52,3 @@ def new_figure(width: float, height: float) -> Figure:
     from matplotlib.figure import Figure
 
     return Figure(figsize=(width, height), layout="constrained")
-
-
-def qualitative(count: int) -> list[tuple[float, float, float, float]]:
-    """Return `count` distinct colours for classes."""
-    from cmcrameri import cm
-
-    colours = cm.batlowS
-    return [tuple(colours(i % colours.N)) for i in range(2, count + 2)]

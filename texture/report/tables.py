@@ -160,9 +160,15 @@ def _audit(result: Result) -> Table:
 
 
 def _inputs(result: Result) -> Table:
-    from texture.output import file_sha256
+    from texture.output.provenance import file_record
 
     recipe = result.found.recipe
-    paths = [s.file for s in recipe.samples] + [p for p in (recipe.target.file, recipe.target.land, recipe.outputs.names) if p]
-    rows = [[p.name, file_sha256(p)[:16]] for p in dict.fromkeys(paths)]
-    return Table("Input files and the first 16 digits of their SHA-256; provenance.json has them in full.", ["file", "SHA-256"], rows)
+    paths = [s.file for s in recipe.samples] + [
+        p for p in (recipe.target.file, recipe.target.land, recipe.outputs.names) if p
+    ]
+    rows = [[p.name, str(file_record(p, p.parent)["sha256"])[:16]] for p in dict.fromkeys(paths)]
+    return Table(
+        "Input files and the first 16 digits of their SHA-256; provenance.json has them in full.",
+        ["file", "SHA-256"],
+        rows,
+    )

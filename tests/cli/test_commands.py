@@ -1,0 +1,171 @@
+"""Each command in a process of its own: words, exit codes, and the output folder left as it was."""
+
+import json
+import os
+import subprocess
+import sys
+import tomllib
+
+import pytest
+import tomli_w
+
+DONE, FAILED, WRONG_INPUT, INTERRUPTED = 0, 1, 2, 130
+
+
+def texture(*arguments, **environment):
+    return subprocess.run(
+        [sys.executable, "-m", "texture_cli", *map(str, arguments)],
+        capture_output=True, text=True, check=False, env={**os.environ, "COLUMNS": "100", "NO_COLOR": "1", **environment},
+    )  # fmt: skip
+
+
+@pytest.fixture
+def small(tmp_path):
+    """A recipe of thirty stations on a small raster."""
+    import numpy as np
+
+    rng = np.random.default_rng(5)
+    x, y = rng.uniform(500_500, 509_500, 30), rng.uniform(4_900_500, 4_905_500, 30)
+    mud = 1 / (1 + np.exp(-(x - 505_000) / 2000 + rng.normal(0, 0.3, 30)))
+    gravel = (1 - mud) * rng.uniform(0.02, 0.3, 30)
+    rows = [f"S{i},{x[i]:.0f},{y[i]:.0f},{mud[i]:.4f},{1 - mud[i] - gravel[i]:.4f},{gravel[i]:.4f}" for i in range(30)]
+    (tmp_path / "grabs.csv").write_text("id,easting,northing,mud,sand,gravel\n" + "\n".join(rows) + "\n")
+    recipe = {
+        "title": "Small",
+        "samples": [{"file": "grabs.csv", "crs": "EPSG:32626"}],
+        "target": {"bounds": [500_000.0, 4_900_000.0, 510_000.0, 4_906_000.0], "cell_size": 500.0, "crs": "EPSG:32626"},
+        "validation": {"count": 4},
+        "rim": {"width_cells": 2, "sides": ["south"], "classes": {"sand": 1.0}},
+    }
+    path = tmp_path / "recipe.toml"
+    path.write_text(tomli_w.dumps(recipe))
+    return path
+
+
+def test_intake_accounts_for_rows_and_prints_one_object(small):
+    done = texture("intake", small, "--json")
+    assert done.returncode == DONE, done.stderr
+    data = json.loads(done.stdout)
+    assert data["rows_read"] == 31
+    assert data["rows_read"] == sum(
+        data[f"rows_{f}"] for f in ("used", "merged", "evidence", "set_aside", "not_samples")
+    )
+    assert data["stations"] == 30
+    assert set(data["files"]) == {"stations.csv", "stations.gpkg", "audit.csv"}
+    assert "31 read: 30 used" in done.stderr
+
+
+@pytest.mark.slow
+def test_build_on_a_raster_says_what_it_wrote(small):
+    done = texture("build", small)
+    assert done.returncode == DONE, done.stderr
+    assert done.stdout == ""
+    lines = done.stderr.splitlines()
+    assert lines[0] == "Small"
+    assert "wrote       out/: " in done.stderr
+    assert "30 stations; held-out RMSE mud 0." in done.stderr
+    assert "beyond what the samples support" in done.stderr
+    again = texture("build", small)
+    assert again.returncode == WRONG_INPUT
+    assert "use --overwrite to replace them" in again.stderr
+    quiet = texture("build", small, "--overwrite", "--quiet", "--json", "--set", "method.name=inverse_distance")
+    assert quiet.returncode == DONE, quiet.stderr
+    assert quiet.stderr == ""
+    data = json.loads(quiet.stdout)
+    assert data["cells"] == 240
+    assert "scores" in data
+    assert data["second_opinion"] is None
+
+
+@pytest.mark.slow
+def test_validate_prints_the_error_of_each_method(small):
+    done = texture("validate", small, "--output", small.parent / "scores")
+    assert done.returncode == DONE, done.stderr
+    for method in ("kriging", "nearest", "inverse distance"):
+        assert f"held-out RMSE, {method}: mud 0." in done.stderr
+    assert {p.name for p in (small.parent / "scores").iterdir()} == {"validation.csv", "held_out.csv"}
+
+
+def edit(path, change):
+    settings = tomllib.loads(path.read_text())
+    change(settings)
+    path.write_text(tomli_w.dumps(settings))
+
+
+def rows_of(path):
+    return (path.parent / "grabs.csv").read_text().splitlines()
+
+
+def put_rows(path, rows):
+    (path.parent / "grabs.csv").write_text("\n".join(rows) + "\n")
+
+
+MISTAKES = {
+    "missing file": (lambda p: (p.parent / "grabs.csv").unlink(), r'samples[0].file = "grabs.csv" does not exist'),
+    "unknown key": (lambda p: edit(p, lambda s: s.update(methid={})), 'unknown key "methid"; did you mean "method"?'),
+    "missing column": (
+        lambda p: edit(p, lambda s: s["samples"][0].update(columns={"mud": "Schlick"})),
+        "grabs.csv",
+    ),
+    "fractions above 1": (
+        lambda p: put_rows(p, [*rows_of(p)[:5], "S9,505000,4903000,1.5,0.2,0.1", *rows_of(p)[6:]]),
+        "row 6",
+    ),
+    "no overlap": (
+        lambda p: edit(p, lambda s: s["target"].update(bounds=[600_000.0, 4_900_000.0, 610_000.0, 4_906_000.0])),
+        "none of 30 stations lies on the grid",
+    ),
+    "too few stations": (lambda p: put_rows(p, rows_of(p)[:5]), "expected at least 5"),
+    "degrees given as metres": (
+        lambda p: put_rows(
+            p, ["id,easting,northing,mud,sand,gravel", *[f"S{i},-26.{i},44.{i},0.2,0.7,0.1" for i in range(9)]]
+        ),
+        "degrees",
+    ),
+    "bounds in degrees": (
+        lambda p: edit(p, lambda s: s["target"].update(bounds=[-27.0, 44.0, -26.0, 45.0], cell_size=0.1)),
+        "these look like degrees, but EPSG:32626 is in metres",
+    ),
+    "no such recipe": (lambda p: p.unlink(), "no such recipe"),
+    "rim wider than the grid": (lambda p: edit(p, lambda s: s["rim"].update(width_cells=500)), "rim"),
+}
+
+
+@pytest.mark.slow
+@pytest.mark.parametrize("name", MISTAKES)
+def test_mistakes_give_one_line_code_2_and_leave_the_folder(small, name):
+    out = small.parent / "out"
+    out.mkdir()
+    (out / "bed.nc").write_text("of an earlier run")
+    spoil, words = MISTAKES[name]
+    spoil(small)
+    done = texture("build", small, "--overwrite")
+    assert done.returncode == WRONG_INPUT, done.stderr
+    assert words in done.stderr
+    assert done.stdout == ""
+    assert len(done.stderr.strip().splitlines()) == 1, done.stderr
+    assert done.stderr.startswith("texture: ")
+    assert [(p.name, p.read_text()) for p in out.iterdir()] == [("bed.nc", "of an earlier run")]
+    assert not [p for p in small.parent.iterdir() if p.name.startswith(".")]
+
+
+def test_wrong_usage_is_code_2():
+    assert texture("build").returncode == WRONG_INPUT
+    assert texture("bild").returncode == WRONG_INPUT
+    assert "No such command" in texture("bild").stderr
+
+
+def test_help_names_the_commands_and_an_example():
+    done = texture("--help")
+    assert done.returncode == DONE
+    for command in ("intake", "validate", "build"):
+        assert command in done.stdout
+        assert "Example: texture" in texture(command, "--help").stdout
+    assert texture("--version").stdout.startswith("texture 0.")
+
+
+def test_output_that_is_a_file_is_refused(small):
+    (small.parent / "out").write_text("a file")
+    done = texture("intake", small)
+    assert done.returncode == FAILED
+    assert "expected a folder" in done.stderr
