@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from texture import __version__
+import texture
 from texture.errors import OutputError
 
 if TYPE_CHECKING:
@@ -43,7 +43,7 @@ def global_attributes(title: str, summary: str, comment: str, references: str) -
         "title": title,
         "institution": "not stated",
         "source": summary,
-        "history": f"made by Seabed Texture {__version__}; inputs and settings are in provenance.json beside this file",
+        "history": f"made by Seabed Texture {texture.__version__}; inputs and settings are in provenance.json beside this file",
         "references": references,
         "comment": comment,
     }

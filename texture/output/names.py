@@ -147,10 +147,12 @@ def read_names(path: Path, cell_dimensions: Iterable[str] | None = None) -> Name
 
 
 def _first(error: ValidationError) -> str:
-    first = error.errors()[0]
+    # An unknown key explains a missing one, so it goes first.
+    first = min(error.errors(), key=lambda e: e["type"] != "extra_forbidden")
     where = ".".join(str(key) for key in first["loc"])
     if first["type"] == "extra_forbidden":
-        model = _MODELS.get((len(first["loc"]) == 1 and "top") or str(first["loc"][0]), Names)
+        blocks: dict[str, type[BaseModel]] = {"variables": VariableName, "values": Values}
+        model = blocks.get(str(first["loc"][0]), Names)
         return f'unknown key "{where}"; {_nearest(str(first["loc"][-1]), list(model.model_fields))}'
     message = first["msg"].removeprefix("Value error, ")
     return f"{where}: {message}"

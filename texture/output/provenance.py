@@ -10,7 +10,7 @@ from importlib import metadata
 from pathlib import Path
 from typing import Any
 
-from texture import __version__
+import texture
 
 __all__ = ["file_record", "provenance", "write_json"]
 
@@ -60,7 +60,7 @@ def provenance(
         Further entries, such as `seed=1`.
     """
     return {
-        "program": {"name": "Seabed Texture", "version": __version__},
+        "program": {"name": "Seabed Texture", "version": texture.__version__},
         "python": platform.python_version(),
         "packages": {name: metadata.version(name) for name in PACKAGES},
         "inputs": [file_record(path, base) for path in inputs],

@@ -61,7 +61,7 @@ def apply_names(dataset: xr.Dataset, names: Names, where: str = "names") -> xr.D
             variable.values[..., land] = np.nan
             variable.encoding["_FillValue"] = names.values.land
         if spec is None or spec.split is None:
-            pieces = {_plain_name(name, spec, names, where): variable}
+            pieces = {_plain_name(name, spec, names, name in dataset.sizes, where): variable}
         else:
             pieces = _split(name, variable, spec, classes, where)
         for new, piece in pieces.items():
@@ -89,15 +89,17 @@ def _structural(dataset: xr.Dataset) -> set[str]:
     return {str(name) for name in dataset.coords} | referred
 
 
-def _plain_name(name: str, spec: VariableName | None, names: Names, where: str) -> str:
+def _plain_name(name: str, spec: VariableName | None, names: Names, is_dimension: bool, where: str) -> str:
     """A dimension and the coordinate variable that bears its name are renamed together."""
-    by_dimension = names.dimensions.get(name)
-    if spec is not None and by_dimension is not None and spec.name != by_dimension:
+    if not is_dimension:
+        return name if spec is None else spec.name
+    by_dimension = names.dimensions.get(name, name)
+    if spec is not None and spec.name != by_dimension:
         raise RecipeError(
             f'{where}: "{name}" is a dimension called "{by_dimension}" and a variable called "{spec.name}"; '
             "a coordinate variable has its dimension's name"
         )
-    return spec.name if spec is not None else by_dimension or name
+    return by_dimension
 
 
 def _split(
