@@ -55,7 +55,7 @@ def test_every_file_is_there(plain):
     out = plain.found.recipe.output
     expected = {
         "stations.csv", "stations.gpkg", "audit.csv", "texture.nc", "bed.nc", "validation.csv", "held_out.csv",
-        "report.html", "provenance.json", "recipe_resolved.toml",
+        "report.html", "map.png", "provenance.json", "recipe_resolved.toml",
     }  # fmt: skip
     assert {p.name for p in out.iterdir()} == expected | {"geotiff"}
     assert {p.relative_to(out).as_posix() for p in plain.files} == {

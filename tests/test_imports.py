@@ -11,7 +11,7 @@ ROOT = Path(__file__).resolve().parents[1]
 TEXTURE = ROOT / "texture"
 
 # What each room may import of ours, besides itself. `recipe` and `errors` are the ground that all stand on.
-GROUND = {"errors", "recipe"}
+GROUND = {"errors", "recipe", "__version__"}
 ALLOWED = {
     "composition": GROUND,
     "structure": GROUND,
@@ -21,7 +21,7 @@ ALLOWED = {
     "stations": GROUND | {"composition"},
     "targets": GROUND,
     "output": GROUND | {"targets", "stations", "bed", "composition"},
-    "report": GROUND | {"targets", "stations", "bed", "composition", "validation", "structure", "output"},
+    "report": GROUND | {"targets", "stations", "bed", "composition", "validation", "structure", "output", "result"},
 }
 ARRAY_ROOMS = ["composition", "structure", "predict", "validation", "bed"]
 FILE_LIBRARIES = {"pandas", "geopandas", "rasterio", "xarray", "netCDF4", "pyogrio", "python_calamine", "pathlib"}

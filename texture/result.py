@@ -207,7 +207,7 @@ def rows_lines(stations: Stations) -> list[str]:
 
 def structure_lines(found: Validated) -> list[str]:
     """Say the fitted structure of each coordinate."""
-    lines = []
+    lines: list[str] = []
     for name, covariance in zip(found.mapper.logratio.coordinate_names, found.mapper.structure, strict=True):
         head = "structure" if not lines else ""
         if not covariance.structures:
@@ -223,7 +223,7 @@ def structure_lines(found: Validated) -> list[str]:
 
 def error_lines(found: Validated) -> list[str]:
     """Say the held-out error of each method."""
-    lines = []
+    lines: list[str] = []
     parts = found.recipe.composition.parts
     for method in found.validation.methods:
         head = "error" if not lines else ""

@@ -40,7 +40,7 @@ def write_all(result: Result, folder: ResultFolder, recipe_path: Path) -> Result
     """Write everything a build makes; return the result with its files."""
     from texture.output import provenance, write_json
     from texture.recipe_file import resolved_toml
-    from texture.report import versions_line, write_page
+    from texture.report import result_picture, versions_line, write_page
     from texture.stations import write_tables
 
     found, recipe = result.found, result.found.recipe
@@ -52,6 +52,7 @@ def write_all(result: Result, folder: ResultFolder, recipe_path: Path) -> Result
         _write_grids(result, aside)
         (aside / "recipe_resolved.toml").write_text(settings, encoding="utf-8")
         (aside / "report.html").write_text(write_page(result, settings, versions_line(result)), encoding="utf-8")
+        (aside / "map.png").write_bytes(result_picture(result).content)
         made = sorted(p for p in aside.rglob("*") if p.is_file())
         record = provenance(
             [recipe_path.absolute(), *input_files(recipe)],
@@ -137,7 +138,7 @@ def _held_out(result: Validated) -> pd.DataFrame:
     import pandas as pd
 
     parts, observations = result.recipe.composition.parts, result.observations
-    table = result.stations.table.iloc[observations.rows].reset_index(drop=True)
+    table: pd.DataFrame = result.stations.table.iloc[observations.rows].reset_index(drop=True)
     distance = result.validation.folds.held_out_distances(observations.points)
     blocks = []
     for method in result.validation.methods:

@@ -43,6 +43,10 @@ def test_coverage_counts_ends_as_inside():
     observed = np.array([0.1, 0.2, 0.3, 0.4])
     scores = part_scores(observed, observed, np.array([0.1, 0.25, 0.0, 0.0]), np.array([0.2, 0.3, 0.3, 0.39]))
     assert scores["coverage_90"] == 0.5
+    zeros = part_scores(
+        np.zeros(4), np.full(4, 0.01), np.array([0.001, 0.004, 0.006, 0.1]), np.full(4, 0.2), limit=0.005
+    )
+    assert zeros["coverage_90"] == 0.5
 
 
 def test_aitchison_distance_of_a_published_pair():

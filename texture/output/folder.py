@@ -16,7 +16,7 @@ __all__ = ["RESULTS", "ResultFolder"]
 
 RESULTS = (
     "stations.csv", "stations.gpkg", "audit.csv", "texture.nc", "bed.nc", "geotiff", "validation.csv",
-    "held_out.csv", "report.html", "provenance.json", "recipe_resolved.toml",
+    "held_out.csv", "report.html", "map.png", "provenance.json", "recipe_resolved.toml",
 )  # fmt: skip
 """What a run writes into its folder; other files there are the user's and are never touched."""
 

@@ -15,13 +15,18 @@ __all__ = ["Picture", "picture"]
 
 @dataclass(frozen=True)
 class Picture:
-    """A PNG as base64 text, its size on the page in CSS pixels, caption and text alternative."""
+    """A PNG, its size on the page in CSS pixels, caption and text alternative."""
 
-    png: str
+    content: bytes
     width: int
     height: int
     caption: str
     alt: str
+
+    @property
+    def png(self) -> str:
+        """The PNG as base64 text, for a page."""
+        return base64.b64encode(self.content).decode()
 
 
 def picture(figure: Figure, caption: str, alt: str, dpi: int = 150) -> Picture:
@@ -29,4 +34,4 @@ def picture(figure: Figure, caption: str, alt: str, dpi: int = 150) -> Picture:
     stream = io.BytesIO()
     figure.savefig(stream, format="png", dpi=dpi, facecolor="white", metadata={"Software": None})
     width, height = figure.get_size_inches()
-    return Picture(base64.b64encode(stream.getvalue()).decode(), round(96 * width), round(96 * height), caption, alt)
+    return Picture(stream.getvalue(), round(96 * width), round(96 * height), caption, alt)

@@ -67,7 +67,7 @@ def draw_maps(
     wide = np.ptp(target.longitude[target.active]) / stretch
     tall = np.ptp(target.latitude[target.active])
     width = 4.9
-    height = min(max(width * tall / wide * 0.86, 1.8), 6.5) + 0.55
+    height = min(max(0.68 * width * tall / wide, 1.6), 6.5) + 0.65  # the map beside its bar, and room for labels
     with styled():
         figure = new_figure(width * columns, height * rows)
         axes = figure.subplots(rows, columns, squeeze=False, sharex=True, sharey=True)
@@ -152,11 +152,6 @@ def _scale_bar(axis: Axes, latitude: float) -> None:
     axis.plot([x, x + length_m / degree_m], [y, y], color=INK, lw=2.5, solid_capstyle="butt", clip_on=False)
     label = f"{length_m / 1000:g} km" if length_m >= 1000 else f"{length_m:g} m"
     axis.text(x + length_m / degree_m / 2, y + 0.02 * (north - south), label, ha="center", va="bottom")
-    axis.annotate(
-        "N",
-        (x, y + 0.24 * (north - south)),
-        (x, y + 0.10 * (north - south)),
-        ha="center",
-        va="top",
-        arrowprops={"arrowstyle": "-|>", "color": INK, "lw": 1.2},
-    )
+    foot, head = y + 0.13 * (north - south), y + 0.25 * (north - south)
+    axis.annotate("", (x, head), (x, foot), arrowprops={"arrowstyle": "-|>", "color": INK, "lw": 1.2})
+    axis.text(x, head, "N", ha="center", va="bottom")

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 from contextlib import contextmanager
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING, Any, cast
 
 if TYPE_CHECKING:
     from matplotlib.figure import Figure
@@ -43,7 +43,7 @@ def styled() -> Iterator[None]:
 
     with mpl.rc_context():
         mpl.rcdefaults()
-        mpl.rcParams.update(_SETTINGS)
+        mpl.rcParams.update(cast(Any, _SETTINGS))  # its keys are typed as a list of literals
         yield
 
 

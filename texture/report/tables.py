@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections import Counter
 from dataclasses import dataclass, field
 from typing import TYPE_CHECKING
 
@@ -153,8 +154,8 @@ def _set_aside(result: Result) -> Table:
 
 def _audit(result: Result) -> Table:
     audit = result.found.stations.audit
-    counts = audit.groupby(["file", "rule"], sort=True).size() if len(audit) else {}
-    rows = [[file, rule, f"{count:,}"] for (file, rule), count in counts.items()]
+    counts = Counter(zip(audit["file"], audit["rule"], strict=True))
+    rows = [[str(file), str(rule), f"{count:,}"] for (file, rule), count in sorted(counts.items())]
     return Table("Readings that were not plain, and changes, by rule; each one stands in audit.csv.",
                  ["file", "rule", "cells"], rows, numeric=[2])  # fmt: skip
 

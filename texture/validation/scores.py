@@ -34,13 +34,18 @@ def concordance(observed: Floats, predicted: Floats) -> float:
     return np.float64(2.0 * covariance / spread) if spread > 0.0 else np.float64(np.nan)
 
 
-def coverage(observed: Floats, low: Floats, high: Floats) -> float:
-    """Share of the observed inside their intervals; NaN where no interval was given."""
+def coverage(observed: Floats, low: Floats, high: Floats, limit: float = 0.0) -> float:
+    """Share of the observed inside their intervals; NaN where no interval was given.
+
+    An interval that begins below the detection limit reaches down to zero: a laboratory that writes 0
+    says no more than that.
+    """
     known = np.isfinite(low) & np.isfinite(high)
-    return float(((observed >= low) & (observed <= high))[known].mean()) if known.any() else np.nan
+    inside = (observed >= np.where(low < limit, 0.0, low)) & (observed <= high)
+    return float(inside[known].mean()) if known.any() else np.nan
 
 
-def part_scores(observed: Floats, predicted: Floats, low: Floats, high: Floats) -> dict[str, float]:
+def part_scores(observed: Floats, predicted: Floats, low: Floats, high: Floats, limit: float = 0.0) -> dict[str, float]:
     """Scores of one part; arrays of shape (n,), rows with a NaN observation or prediction left out."""
     known = np.isfinite(observed) & np.isfinite(predicted)
     if not known.any():
@@ -54,7 +59,7 @@ def part_scores(observed: Floats, predicted: Floats, low: Floats, high: Floats) 
         "rmse": float(np.sqrt((error**2).mean())),
         "r_squared": r_squared(o, p),
         "concordance": float(concordance(o, p)),
-        "coverage_90": coverage(o, low[known], high[known]),
+        "coverage_90": coverage(o, low[known], high[known], limit),
     }
 
 
@@ -91,8 +96,8 @@ def score_table(
     observed, predicted, low, high : float arrays, shape (n, parts)
         Fractions, and the ends of the 90 % interval of a sample (NaN where the method has none).
     limit : float
-        Detection limit: the trace below which gravel does not name a class, and the floor of the
-        Aitchison distance.
+        Detection limit: the trace below which gravel does not name a class, the floor of the Aitchison
+        distance, and the level below which an interval reaches down to zero.
 
     Returns
     -------
@@ -101,7 +106,7 @@ def score_table(
     """
     rows: list[dict[str, str | float]] = []
     for i, part in enumerate(parts):
-        for score, value in part_scores(observed[:, i], predicted[:, i], low[:, i], high[:, i]).items():
+        for score, value in part_scores(observed[:, i], predicted[:, i], low[:, i], high[:, i], limit).items():
             rows.append({"part": part, "score": score, "value": value})
     rows.append({"part": "all", "score": "aitchison_distance", "value": aitchison_error(observed, predicted, limit)})
     rows.append(
