@@ -20,6 +20,7 @@ __all__ = [
     "Erosion",
     "Grain",
     "Intake",
+    "Join",
     "Layer",
     "Method",
     "Outputs",
@@ -47,6 +48,14 @@ class Settings(BaseModel):
     model_config = ConfigDict(frozen=True, extra="forbid", populate_by_name=True, allow_inf_nan=False)
 
 
+class Join(Settings):
+    """Where the positions stand if the samples block names a table of results without them."""
+
+    sheet: str | None = Field(None, description="sheet of the positions; the first that has them if absent")
+    file: Path | None = Field(None, description="file of the positions; the same workbook if absent")
+    on: str | None = Field(None, description="heading of the id among the positions; recognised if absent")
+
+
 class Samples(Settings):
     """One `[[samples]]` block: one file, and what has to be known to read it."""
 
@@ -64,6 +73,7 @@ class Samples(Settings):
     unit: Literal["auto", "fraction", "percent"] = Field(
         "auto", description="unit of the fraction columns; found from the rows' sums if `auto`"
     )
+    join: Join | None = Field(None, description="the table of positions; found in the same workbook if absent")
     header_row: Annotated[int, Field(ge=1)] | None = Field(
         None, description="row number of the first header line, as the spreadsheet shows it"
     )
@@ -87,6 +97,8 @@ class Intake(Settings):
     sum_tolerance: Annotated[float, Field(gt=0.0, lt=0.5)] = Field(
         0.02, description="rows whose parts sum outside 1 ± this are set aside"
     )
+    mud_below_mm: Positive = Field(0.063, description="cut between mud and sand for columns of size classes")
+    gravel_above_mm: Positive = Field(2.0, description="cut between sand and gravel for columns of size classes")
     surface_m: Positive = Field(0.10, description="samples that begin deeper than this are not the surface")
     on_land: Literal["snap", "drop", "keep"] = Field(
         "snap",

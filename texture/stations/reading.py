@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import difflib
 from dataclasses import dataclass, field
 
 import numpy as np
@@ -13,10 +12,10 @@ from texture.errors import SampleError
 from texture.recipe import Recipe, Samples
 from texture.stations.account import FATES, LEDGER_COLUMNS, TABLE_COLUMNS, Stations, _with_points
 from texture.stations.audit import AuditLog
-from texture.stations.files import Sheet, is_blank, read_sheets
+from texture.stations.files import is_blank
 from texture.stations.repeats import merge_repeats
-from texture.stations.rows import read_rows
-from texture.stations.tables import Table, find_table, no_table
+from texture.stations.rows import bare_places, read_rows
+from texture.stations.sources import find_source
 
 __all__ = ["FEWEST", "read_samples"]
 
@@ -65,58 +64,33 @@ def read_samples(recipe: Recipe) -> Stations:
 
 
 def _read_block(block: Samples, recipe: Recipe, intake: _Intake) -> None:
-    sheets = read_sheets(block.file)
-    sheet, table = _choose_sheet(sheets, block)
+    source = find_source(block)
+    sheet, table = source.sheet, source.table
     place = (sheet.file, sheet.name)
     if place in intake.rows_read:
         raise SampleError(
             f"{table.where.text()}: given twice in the recipe; take one samples block out or name another sheet"
         )
     intake.rows_read[place] = sum(any(not is_blank(c) for c in row) for row in sheet.rows)
-    intake.notes.extend(sheet.notes)
-    others = [s.name for s in sheets if s is not sheet]
-    if others:
-        intake.notes.append(f'{sheet.file}: sheet "{sheet.name}" read; not read: {", ".join(others)}')
+    intake.notes.extend((*sheet.notes, *source.notes))
     if sheet.hidden_rows:
         intake.notes.append(f"{table.where.text()}: {sheet.hidden_rows} hidden rows, read like the others")
-    frame, notes = read_rows(table, block, recipe.intake, recipe.composition.detection_limit, intake.audit)
+    frame, notes = read_rows(source, block, recipe.intake, recipe.composition.detection_limit, intake.audit)
     intake.notes.extend(notes)
     intake.frames.append(frame)
+    if source.joined is not None:
+        bare = bare_places(source.joined, block)
+        if len(bare):
+            home = source.joined.places.where
+            intake.rows_read[(home.file, home.sheet)] = len(bare)
+            intake.frames.append(bare)
+            intake.notes.append(
+                f"{home.text()}: {len(bare)} position rows without results tell of hard ground and are kept as evidence"
+            )
     if table.aside:
         numbers, reasons = zip(*table.aside, strict=True)
-        intake.aside.append(
-            pd.DataFrame(
-                {
-                    "file": sheet.file,
-                    "sheet": sheet.name,
-                    "row": numbers,
-                    "id": "",
-                    "fate": "not_samples",
-                    "reason": reasons,
-                    "station": -1,
-                }
-            )
-        )
-
-
-def _choose_sheet(sheets: list[Sheet], block: Samples) -> tuple[Sheet, Table]:
-    if block.sheet is not None:
-        named = [s for s in sheets if s.name == block.sheet]
-        if not named:
-            names = [s.name for s in sheets if s.name]
-            near = difflib.get_close_matches(block.sheet, names, n=1, cutoff=0.4)
-            hint = (
-                f'did you mean "{near[0]}"?'
-                if near
-                else f"sheets there: {', '.join(names) or 'none, it is a text table'}"
-            )
-            raise SampleError(f'{block.file.name}: no sheet "{block.sheet}"; {hint}')
-        sheets = named
-    for sheet in sorted(sheets, key=lambda s: s.hidden):
-        table = find_table(sheet, block.columns, block.header_row)
-        if table is not None:
-            return sheet, table
-    raise no_table(sheets)
+        fate = {"fate": "not_samples", "reason": reasons, "station": -1}
+        intake.aside.append(pd.DataFrame({"file": sheet.file, "sheet": sheet.name, "row": numbers, "id": "", **fate}))
 
 
 def _assemble(rows: pd.DataFrame, intake: _Intake) -> Stations:

@@ -10,6 +10,7 @@ from dataclasses import dataclass, field
 from texture.errors import SampleError
 from texture.stations.files import Cell, Sheet, is_blank
 from texture.stations.headings import is_unit, plain, role_of, roles_in
+from texture.stations.sizes import FEWEST, count_sizes
 from texture.stations.where import Where
 
 __all__ = ["Table", "find_table", "looks_like_value"]
@@ -146,6 +147,7 @@ def _best_header(rows: list[list[Cell]], named: set[str]) -> int | None:
     scores: list[tuple[int, int]] = []
     for i, row in enumerate(rows[:LOOKED_AT]):
         score = len(roles_in(row) | {plain(c) for c in row if isinstance(c, str) and plain(c) in named})
+        score += 2 * (count_sizes(row) >= FEWEST)
         if score >= 2 and not _mostly_values(row):
             scores.append((i, score))
     most = max((score for _, score in scores), default=0)
@@ -154,7 +156,7 @@ def _best_header(rows: list[list[Cell]], named: set[str]) -> int | None:
 
 def _mostly_values(row: list[Cell]) -> bool:
     filled = [c for c in row if not is_blank(c)]
-    values = [c for c in filled if looks_like_value(c) and not (isinstance(c, str) and role_of(c))]
+    values = [c for c in filled if looks_like_value(c) and not (isinstance(c, str) and _is_heading(c))]
     texts = [c for c in filled if isinstance(c, str) and role_of(c) is not None]
     return len(values) > len(filled) / 2 and len(texts) < 3
 
@@ -188,15 +190,20 @@ def _grow_down(sheet: Sheet, first: int, named: set[str]) -> int:
     if not filled or any(not isinstance(cell, str) for _, cell in filled) or _is_units_row(row):
         return first
     texts = [(c, str(cell)) for c, cell in filled]
-    if any(looks_like_value(cell) and role_of(cell) is None and plain(cell) not in named for _, cell in texts):
+    if any(looks_like_value(cell) and not _is_heading(cell) and plain(cell) not in named for _, cell in texts):
         return first
     # A data row of words ("muddy sand", "trace") also names roles: a heading stands under a blank or a merged cell,
     # or repeats none of the roles above it.
     gaps = sum(c >= len(head) or is_blank(head[c]) for c, _ in texts)
-    new = roles_in(cell for _, cell in texts) - roles_in(head)
+    new = bool(roles_in(cell for _, cell in texts) - roles_in(head)) or count_sizes(row) >= FEWEST
     spans = any(top == first and right > left for top, left, _, right in sheet.merged)
-    known = sum(role_of(cell) is not None or is_unit(cell) or plain(cell) in named for _, cell in texts)
+    known = sum(_is_heading(cell) or is_unit(cell) or plain(cell) in named for _, cell in texts)
     return below if new and (gaps or spans) and known >= len(texts) / 2 else first
+
+
+def _is_heading(cell: str) -> bool:
+    """Whether a text that begins like a value ("63-125 µm", "-4 to -3") is a heading all the same."""
+    return role_of(cell) is not None or count_sizes([cell]) > 0
 
 
 def _is_units_row(row: list[Cell]) -> bool:

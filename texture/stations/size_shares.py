@@ -1,0 +1,229 @@
+"""From the columns of a size analysis to mud, sand and gravel at the cut sizes of the recipe."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+
+import numpy as np
+import numpy.typing as npt
+
+from texture.recipe import Intake, Samples
+from texture.stations.audit import AuditLog
+from texture.stations.cells import Reading, read_numbers, unreadable_hint
+from texture.stations.fractions import OF_LIMIT, Shares
+from texture.stations.headings import plain, unit_in
+from texture.stations.sizes import SAME_LIMIT_PHI, SizeColumn
+from texture.stations.tables import Table
+
+__all__ = ["shares_from_sizes"]
+
+FloatArray = npt.NDArray[np.float64]
+CUMULATIVE = 0.95  # share of rows that must rise steadily to 100 for single sizes to be read as cumulative
+
+
+def shares_from_sizes(
+    table: Table, columns: Sequence[SizeColumn], block: Samples, intake: Intake, audit: AuditLog
+) -> Shares:
+    """Turn size classes into fractions of 1.
+
+    Weights and percents alike are closed to 1 by their sum; percents must sum to 100 within the tolerance first, weights
+    to the sheet's own total where it has one. A cut that coincides with a class limit (within 0.03 phi) is summed;
+    otherwise the cumulative curve is interpolated.
+
+    Parameters
+    ----------
+    table : Table
+    columns : sequence of SizeColumn
+        Coarse to fine.
+    block, intake : Samples, Intake
+        `basis`, `blank_means`, `mud_below_mm`, `gravel_above_mm` and `sum_tolerance` act here.
+    audit : AuditLog
+
+    Returns
+    -------
+    shares : Shares
+        `resolution` is the rounding of one class over the row's sum times the root of the number of classes.
+
+    Raises
+    ------
+    SampleError
+        If a cut lies outside all classes.
+    """
+    n = len(table.rows)
+    rows = np.asarray(table.rows, dtype=np.int64)
+    problem = np.full(n, "", dtype=object)
+    amounts, half, given = _amounts(table, columns, block, rows, problem, audit)
+    limits, amounts, note = _as_classes(table, columns, amounts, given & (problem == ""), intake.sum_tolerance)
+    negative = (amounts < -1e-9).any(axis=1) & given
+    problem[negative & (problem == "")] = "a size class is negative"
+    total = amounts.sum(axis=1)
+    _check_sums(table, columns, total, given, intake.sum_tolerance, problem)
+    with np.errstate(invalid="ignore", divide="ignore"):
+        fractions = amounts / total[:, None]
+    used = given & (problem == "")
+    coarser_2mm, gravel_note = _coarser_than(limits, fractions, -math.log2(intake.gravel_above_mm), table)
+    coarser_63, mud_note = _coarser_than(limits, fractions, -math.log2(intake.mud_below_mm), table)
+    mud, sand, gravel = 1.0 - coarser_63, coarser_63 - coarser_2mm, coarser_2mm
+    if block.basis == "below_2mm" and not (np.nan_to_num(gravel[used]) > 0).any():
+        gravel = np.full(n, np.nan)
+    parts = np.where(used[:, None], np.column_stack([mud, sand, gravel]), np.nan)
+    parts = np.where(np.abs(parts) < 1e-15, 0.0, parts)  # differences of sums, not grains
+    resolution = np.where(used, half * math.sqrt(len(columns)) / np.where(total > 0.0, total, np.nan), np.nan)
+    notes = [f"{table.where.text()}: mud, sand and gravel from {len(columns)} size columns"]
+    notes += [x for x in (note, mud_note, gravel_note) if x]
+    if (
+        block.basis == "whole"
+        and limits[0] > -math.inf
+        and limits[0] >= -math.log2(intake.gravel_above_mm) - SAME_LIMIT_PHI
+    ):
+        notes.append(
+            f"{table.where.text()}: the coarsest class ends at {2.0 ** -limits[0]:.4g} mm and basis is whole: gravel is taken as none; "
+            'say basis = "below_2mm" if the laboratory took it off before'
+        )
+    return Shares(parts[:, 0], parts[:, 1], parts[:, 2], resolution, given, problem, tuple(notes))
+
+
+def _amounts(
+    table: Table,
+    columns: Sequence[SizeColumn],
+    block: Samples,
+    rows: npt.NDArray[np.int64],
+    problem: npt.NDArray[np.object_],
+    audit: AuditLog,
+) -> tuple[FloatArray, FloatArray, npt.NDArray[np.bool_]]:
+    """Numbers of all size columns, half width of the roundest one, and which rows give anything."""
+    n, k = len(rows), len(columns)
+    amounts, half = np.full((n, k), np.nan), np.full((n, k), np.nan)
+    given = np.zeros(n, dtype=bool)
+    for j, column in enumerate(columns):
+        cells = table.columns[column.index]
+        place = table.where.at(column.heading)
+        numbers = read_numbers(cells, place, table.rows)
+        value = np.where(numbers.reading == Reading.BELOW, OF_LIMIT * numbers.value, numbers.value)
+        value = np.where(numbers.reading == Reading.TRACE, 0.0, value)
+        given |= np.isfinite(value)
+        for reading, rule in ((Reading.BELOW, "below a limit: 0.65 of the limit"), (Reading.TRACE, "trace in a size class: nothing"), (Reading.ABOUT, "about: the number itself"), (Reading.MARKED, "number with a mark or unit: the number")):  # fmt: skip
+            hit = [int(i) for i in np.flatnonzero(numbers.reading == reading)]
+            audit.add(place, rows[hit], [cells[i] for i in hit], value[hit], rule)
+        for i in map(int, np.flatnonzero((numbers.reading == Reading.UNREADABLE) & (problem == ""))):
+            problem[i] = f'column "{column.heading}": cannot read {unreadable_hint(cells[i])}'
+        amounts[:, j], half[:, j] = value, numbers.half_width
+    blank = np.isnan(amounts) & given[:, None]
+    if block.blank_means == "zero":
+        amounts[blank] = 0.0
+    for i in map(int, np.flatnonzero((np.isnan(amounts) & given[:, None]).any(axis=1) & (problem == ""))):
+        j = int(np.argmax(np.isnan(amounts[i])))
+        problem[i] = f'size class "{columns[j].heading}" is blank; say blank_means = "zero" if that is what blank says'
+    amounts[~given | (problem != "")] = np.nan
+    return amounts, np.nanmax(np.where(np.isfinite(half), half, 0.0), axis=1), given
+
+
+def _as_classes(
+    table: Table, columns: Sequence[SizeColumn], amounts: FloatArray, used: npt.NDArray[np.bool_], tolerance: float
+) -> tuple[FloatArray, FloatArray, str]:
+    """Limits (k + 1, phi, coarse to fine, open ends infinite) and amounts of adjoining classes."""
+    kinds = {c.meaning for c in columns}
+    if kinds <= {"class"}:
+        limits = [columns[0].coarse_phi, *(c.fine_phi for c in columns)]
+        return np.array(limits), amounts, ""
+    sizes = np.array([c.coarse_phi for c in columns if c.meaning != "pan"])
+    note = ""
+    if kinds <= {"single", "pan"} and "pan" not in kinds:
+        rising = _share_rising(amounts[used])
+        if max(rising) >= CUMULATIVE:
+            kinds = {"finer"} if rising[0] >= rising[1] else {"coarser"}
+            note = f"{table.where.text()}: the values of every row run steadily to 100 with size: read as {'passing' if kinds == {'finer'} else 'retained'}, cumulative"
+    if kinds == {"finer"}:
+        top = np.where(np.isfinite(amounts[:, :1]), _whole_of(amounts), np.nan)
+        steps = np.column_stack([top - amounts[:, :1], -np.diff(amounts, axis=1), amounts[:, -1:]])
+        return np.array([-math.inf, *sizes, math.inf]), steps, note
+    if kinds == {"coarser"}:
+        steps = np.column_stack([amounts[:, :1], np.diff(amounts, axis=1), _whole_of(amounts) - amounts[:, -1:]])
+        return np.array([-math.inf, *sizes, math.inf]), steps, note
+    if kinds <= {"single", "pan", "class"}:
+        # a stack of sieves: what lies on a sieve is coarser than it and passed the one above
+        fine = [c.fine_phi for c in columns]
+        return (
+            np.array([-math.inf, *fine]),
+            amounts,
+            f"{table.where.text()}: single sizes read as what was retained on each sieve",
+        )
+    raise table.where.error(
+        "size columns of several kinds (" + ", ".join(sorted(kinds)) + ")",
+        "one kind",
+        "name mud, sand and gravel under columns",
+    )
+
+
+def _share_rising(amounts: FloatArray) -> tuple[float, float]:
+    """Share of rows that fall steadily to fine from 100 (passing), or rise steadily to 100 (retained)."""
+    if not len(amounts):
+        return 0.0, 0.0
+    steps = np.diff(amounts, axis=1)
+    whole = np.where(amounts.max(axis=1) > 1.5, 100.0, 1.0)
+    full = np.abs(amounts.max(axis=1) / whole - 1.0) < 0.02
+    falling, rising = (steps <= 1e-9).all(axis=1) & full, (steps >= -1e-9).all(axis=1) & full
+    return float(falling.mean()), float(rising.mean())
+
+
+def _whole_of(amounts: FloatArray) -> FloatArray:
+    largest = np.nanmax(amounts, initial=0.0)
+    return np.full((len(amounts), 1), 100.0 if largest > 1.5 else 1.0)
+
+
+def _check_sums(
+    table: Table,
+    columns: Sequence[SizeColumn],
+    total: FloatArray,
+    given: npt.NDArray[np.bool_],
+    tolerance: float,
+    problem: npt.NDArray[np.object_],
+) -> None:
+    ok = given & (problem == "")
+    if not ok.any():
+        return
+    empty = ok & ~(total > 0.0)
+    problem[empty] = "all size classes are zero"
+    middle = float(np.median(total[ok]))
+    units = {unit_in(table.units[c.index]) or unit_in(c.heading) for c in columns}
+    weights = "g" in units
+    whole = next((w for w in (1.0, 100.0) if not weights and abs(middle / w - 1.0) < 0.1), None)
+    stated = _total_column(table, columns)
+    if whole is not None:
+        off = ok & ~empty & (np.abs(total / whole - 1.0) > tolerance)
+        for i in map(int, np.flatnonzero(off)):
+            problem[i] = f"size classes sum to {total[i]:.5g}, expected {whole:g} ± {tolerance * whole:g}"
+    elif stated is not None:
+        off = ok & ~empty & np.isfinite(stated) & (np.abs(total - stated) > tolerance * np.abs(stated))
+        for i in map(int, np.flatnonzero(off)):
+            problem[i] = f"size classes sum to {total[i]:.5g}, the sheet's total says {stated[i]:.5g}"
+
+
+def _total_column(table: Table, columns: Sequence[SizeColumn]) -> FloatArray | None:
+    taken = {c.index for c in columns}
+    for index, heading in enumerate(table.headings):
+        words = plain(table.lowest[index])
+        if index not in taken and (words.startswith(("total", "sum")) or words.endswith(" total")):
+            return read_numbers(table.columns[index], table.where.at(heading), table.rows).value
+    return None
+
+
+def _coarser_than(limits: FloatArray, fractions: FloatArray, cut_phi: float, table: Table) -> tuple[FloatArray, str]:
+    """Fraction of each row that is coarser than a cut, and a note where the cut is not a class limit."""
+    nearest = int(np.argmin(np.abs(limits - cut_phi)))
+    mm = 2.0**-cut_phi
+    if abs(limits[nearest] - cut_phi) <= SAME_LIMIT_PHI:
+        used_mm = 2.0 ** -limits[nearest]
+        note = (
+            f"{table.where.text()}: cut at {used_mm:.4g} mm for {mm:.4g} mm" if abs(used_mm / mm - 1.0) > 1e-6 else ""
+        )
+        return fractions[:, :nearest].sum(axis=1), note
+    if cut_phi <= limits[0]:  # nothing coarser was seen
+        return np.where(np.isnan(fractions[:, 0]), np.nan, 0.0), ""
+    closed = limits[np.isfinite(limits)]
+    raise table.where.error(
+        f"class limits {', '.join(f'{2.0**-x:.4g}' for x in closed)} mm",
+        f"one within 2 % of {mm:.4g} mm",
+        "set intake.mud_below_mm and intake.gravel_above_mm to limits of the classes",
+    )

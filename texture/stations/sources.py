@@ -1,0 +1,162 @@
+"""Which sheets of a file hold the samples: one table, or results and positions that are joined on an id."""
+
+from __future__ import annotations
+
+import difflib
+from collections.abc import Mapping
+from dataclasses import dataclass, field, replace
+
+from texture.errors import SampleError
+from texture.recipe import Samples
+from texture.stations.columns import Column, assign_columns
+from texture.stations.files import Sheet, read_sheets
+from texture.stations.headings import PARTS, plain, role_of
+from texture.stations.joins import Joined, join_tables
+from texture.stations.sizes import SizeColumn, size_columns
+from texture.stations.tables import Table, find_table, no_table
+
+__all__ = ["Source", "find_source"]
+
+
+@dataclass(frozen=True)
+class Source:
+    """One table of samples with the roles of its columns, and the table of their positions where that is another."""
+
+    sheet: Sheet
+    table: Table
+    columns: dict[str, Column]
+    sizes: list[SizeColumn] = field(default_factory=list)
+    joined: Joined | None = None
+    notes: tuple[str, ...] = ()
+
+    @property
+    def has_position(self) -> bool:
+        """Whether the table itself tells where its samples were taken."""
+        pairs = (("latitude", "longitude"), ("easting", "northing"), ("position",))
+        return any(all(role in self.columns for role in pair) for pair in pairs)
+
+    @property
+    def has_shares(self) -> bool:
+        """Whether the table tells what its samples consist of."""
+        return bool(self.sizes) or any(role in self.columns for role in (*PARTS, "description"))
+
+
+def find_source(block: Samples) -> Source:
+    """Find the samples of one block of the recipe.
+
+    A sheet that tells both where and what is taken first. Otherwise a sheet of results and a sheet of positions that
+    share an id are joined.
+
+    Raises
+    ------
+    SampleError
+        If there is no such sheet, no table, or a table that cannot be understood.
+    """
+    sheets = read_sheets(block.file)
+    candidates = _named(sheets, block.sheet, block.file.name)
+    found = [look for look in (_look(sheet, block) for sheet in candidates) if look is not None]
+    if not found:
+        raise no_table(candidates)
+    sources = [s for s in found if isinstance(s, Source)]
+    results = next((s for s in sources if s.has_shares and "id" in s.columns), None)
+    source = None
+    if block.join is None:
+        source = next((s for s in sources if s.has_position and s.has_shares), None)
+    if source is None and results is not None:
+        source = _joined(results, _places(block, sheets, results), block)
+    if source is None:
+        if isinstance(found[0], SampleError):
+            raise found[0]
+        source = found[0]
+    _check_mapped(source, block.columns)
+    return _with_unread(source, sheets)
+
+
+def _named(sheets: list[Sheet], name: str | None, file: str) -> list[Sheet]:
+    if name is None:
+        return sorted(sheets, key=lambda s: s.hidden)
+    if hits := [s for s in sheets if s.name == name]:
+        return hits
+    names = [s.name for s in sheets if s.name]
+    near = difflib.get_close_matches(name, names, n=1, cutoff=0.4)
+    hint = f'did you mean "{near[0]}"?' if near else f"sheets there: {', '.join(names) or 'none, it is a text table'}"
+    raise SampleError(f'{file}: no sheet "{name}"; {hint}')
+
+
+def _look(sheet: Sheet, block: Samples, header_row: bool = True) -> Source | SampleError | None:
+    """Understand one sheet; an error is kept, for it matters only if no other sheet will do."""
+    table = find_table(sheet, block.columns, block.header_row if header_row else None)
+    if table is None:
+        return None
+    # A heading that this sheet lacks may stand in the sheet it is joined with; `_check_mapped` sees to it.
+    here = {role: heading for role, heading in block.columns.items() if _has_heading(table, heading)}
+    try:
+        columns = assign_columns(table, here)
+        sizes = _sizes(table, columns)
+    except SampleError as error:
+        return error
+    if sizes:
+        columns = {role: c for role, c in columns.items() if role not in PARTS}
+    return Source(sheet, table, columns, sizes)
+
+
+def _sizes(table: Table, columns: Mapping[str, Column]) -> list[SizeColumn]:
+    """Size classes, unless parts are named in so many words: "<63 µm" beside "63-125 µm" is a class, "mud" is not."""
+    parts = [c for role, c in columns.items() if role in PARTS]
+    if any(c.named or (role_of(c.heading) or ("", 0))[1] >= 3 for c in parts):
+        return []
+    taken = {c.index for role, c in columns.items() if role not in PARTS}
+    return size_columns(table.headings, table.lowest, table.units, taken, table.where)
+
+
+def _has_heading(table: Table, heading: str) -> bool:
+    return any(plain(h) == plain(heading) for h in (*table.headings, *table.lowest) if h)
+
+
+def _places(block: Samples, sheets: list[Sheet], results: Source) -> Source | None:
+    """Find the sheet of positions, as the recipe's `join` says or the first that has positions and ids."""
+    join = block.join
+    others = [s for s in sheets if s is not results.sheet]
+    if join is not None and join.file is not None:
+        others = read_sheets(join.file)
+    if join is not None and join.sheet is not None:
+        others = _named(others, join.sheet, (join.file or block.file).name)
+    for sheet in others:
+        found = _look(sheet, block, header_row=False)
+        if isinstance(found, Source) and found.has_position and ("id" in found.columns or (join and join.on)):
+            return found
+        if isinstance(found, SampleError) and join is not None:
+            raise found
+    if join is not None:
+        names = ", ".join(s.name or s.file for s in others)
+        raise SampleError(
+            f"{block.file.name}: no table of positions with ids to join in {names}; correct join in the recipe"
+        )
+    return None
+
+
+def _joined(results: Source, places: Source | None, block: Samples) -> Source | None:
+    if places is None:
+        return None
+    columns = dict(places.columns)
+    if block.join is not None and block.join.on is not None:
+        columns["id"] = assign_columns(places.table, {"id": block.join.on})["id"]
+    joined = join_tables(results.table, results.columns["id"], places.table, columns)
+    return Source(results.sheet, results.table, results.columns, results.sizes, joined, joined.notes)
+
+
+def _check_mapped(source: Source, mapped: Mapping[str, str]) -> None:
+    """Raise for a mapped heading that stands in none of the tables."""
+    tables = [source.table] + ([source.joined.places] if source.joined else [])
+    for role, heading in mapped.items():
+        if not any(_has_heading(table, heading) for table in tables):
+            assign_columns(source.table, {role: heading})
+
+
+def _with_unread(source: Source, sheets: list[Sheet]) -> Source:
+    read = {source.table.where.sheet} | ({source.joined.places.where.sheet} if source.joined else set())
+    unread = [s.name for s in sheets if s.name not in read]
+    if not unread:
+        return source
+    note = f"{source.table.where.text()} read; not read: {', '.join(unread)}"
+    return replace(source, notes=(*source.notes, note))
