@@ -1,38 +1,10 @@
 import hashlib
 import json
 
-import geopandas
 import pandas as pd
 import pytest
-from shapely.geometry import Point
 
-from texture.output import provenance, write_csv, write_json, write_stations
-
-
-def stations():
-    frame = pd.DataFrame(
-        {"id": ["a", "b"], "survey": ["s", "s"], "longitude": [5.1, 5.2], "latitude": [53.0, 53.1],
-         "mud": [0.1, 1 / 3], "sand": [0.9, None], "gravel": [0.0, None], "kind": ["sieve", "partial"]}
-    )  # fmt: skip
-    return geopandas.GeoDataFrame(
-        frame, geometry=[Point(*p) for p in zip(frame.longitude, frame.latitude, strict=True)], crs=4326
-    )
-
-
-def test_stations_come_back_and_have_the_same_bytes(tmp_path):
-    audit = pd.DataFrame({"file": ["x.csv"], "sheet": [""], "row": [3], "column": ["mud"], "old": ["10,0"], "new": ["0.1"], "rule": ["percent"]})  # fmt: skip
-    for name in ("one", "two"):
-        (tmp_path / name).mkdir()
-        write_stations(tmp_path / name, stations(), audit)
-    text = (tmp_path / "one" / "stations.csv").read_text()
-    assert text.splitlines()[0] == "id,survey,longitude,latitude,mud,sand,gravel,kind"
-    assert text.splitlines()[2] == "b,s,5.2,53.1,0.3333333333333333,,,partial"
-    back = geopandas.read_file(tmp_path / "one" / "stations.gpkg")
-    assert back.crs.to_epsg() == 4326
-    assert back["mud"].tolist() == [0.1, 1 / 3]
-    assert (back.geometry.x.tolist(), back.geometry.y.tolist()) == ([5.1, 5.2], [53.0, 53.1])
-    for name in ("stations.csv", "stations.gpkg", "audit.csv"):
-        assert (tmp_path / "one" / name).read_bytes() == (tmp_path / "two" / name).read_bytes()
+from texture.output import provenance, write_csv, write_json
 
 
 def test_csv_has_points_and_line_feeds(tmp_path):

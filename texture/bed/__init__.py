@@ -3,6 +3,7 @@
 from texture.bed.build import EVIDENCE, Account, Bed, make_bed
 from texture.bed.classes import ClassProperties, class_properties
 from texture.bed.packing import dry_density, porosity
+from texture.bed.readiness import BedArrays, Check, check_bed
 from texture.bed.roughness import skin_roughness_length
 from texture.bed.settling import settling_velocity
 from texture.bed.threshold import critical_stress
@@ -13,8 +14,11 @@ __all__ = [
     "EVIDENCE",
     "Account",
     "Bed",
+    "BedArrays",
+    "Check",
     "ClassProperties",
     "Water",
+    "check_bed",
     "class_properties",
     "critical_stress",
     "dry_density",

@@ -6,16 +6,17 @@ from texture.output.class_colours import class_colours
 from texture.output.folder import ResultFolder
 from texture.output.geotiff import pixel_grid, write_geotiff, write_geotiffs
 from texture.output.names import Names, read_names
-from texture.output.open_bed import open_bed
+from texture.output.open_bed import bed_arrays, open_bed
 from texture.output.provenance import provenance, write_json
 from texture.output.renaming import apply_names
-from texture.output.tables import write_csv, write_stations
+from texture.output.tables import write_csv
 from texture.output.texture_nc import texture_dataset
 
 __all__ = [
     "Names",
     "ResultFolder",
     "apply_names",
+    "bed_arrays",
     "bed_dataset",
     "class_colours",
     "open_bed",
@@ -28,5 +29,4 @@ __all__ = [
     "write_geotiffs",
     "write_json",
     "write_netcdf",
-    "write_stations",
 ]

@@ -17,4 +17,4 @@ def class_colours(numbers: Sequence[int]) -> dict[int, tuple[int, int, int]]:
 
     ordered = sorted(numbers)
     last = max(len(ordered) - 1, 1)
-    return {n: tuple(round(255 * c) for c in cm.batlow(i / last)[:3]) for i, n in enumerate(ordered)}  # type: ignore[misc]
+    return {n: tuple(round(255 * c) for c in cm.batlow(i / last)[:3]) for i, n in enumerate(ordered)}

@@ -3,8 +3,11 @@
 from __future__ import annotations
 
 from pathlib import Path
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
+import numpy as np
+
+from texture.bed.readiness import BedArrays
 from texture.errors import BedError
 from texture.output.names import Names, read_names
 from texture.output.renaming import undo_names
@@ -12,7 +15,7 @@ from texture.output.renaming import undo_names
 if TYPE_CHECKING:
     import xarray as xr
 
-__all__ = ["open_bed"]
+__all__ = ["bed_arrays", "open_bed"]
 
 
 def open_bed(path: str | Path, names: Names | str | Path | None = None) -> xr.Dataset:
@@ -55,3 +58,42 @@ def open_bed(path: str | Path, names: Names | str | Path | None = None) -> xr.Da
             "file that it was written through"
         )
     return dataset
+
+
+def bed_arrays(dataset: xr.Dataset) -> BedArrays:
+    """Take the arrays that `texture.bed.readiness.check_bed` looks at out of an opened bed.
+
+    Raises
+    ------
+    BedError
+        If the class fractions do not lie on classes, layers and two dimensions of cells.
+    """
+    fraction = dataset["class_fraction"]
+    cells = [str(d) for d in fraction.dims if d not in ("class", "layer")]
+    if len(cells) != 2 or fraction.ndim != 4:
+        raise BedError(
+            f"class_fraction lies on ({', '.join(map(str, fraction.dims))}), expected class, layer and two dimensions "
+            "of cells"
+        )
+
+    def take(name: str, *leading: str) -> Any:
+        if name not in dataset:
+            return None
+        return dataset[name].transpose(*leading, *(cells if leading != ("class",) else ())).values
+
+    names = dataset["class_name"].values if "class_name" in dataset else np.arange(1, dataset.sizes["class"] + 1)
+    water = take("water")
+    return BedArrays(
+        names=tuple(str(name) for name in names),
+        class_fraction=take("class_fraction", "class", "layer"),
+        water=None if water is None else water == 1,
+        erodible_thickness=take("erodible_thickness", "layer"),
+        dry_density=take("dry_density", "layer"),
+        porosity=take("porosity", "layer"),
+        class_mass_content=take("class_mass_content", "class", "layer"),
+        evidence=take("evidence", "layer"),
+        rim_weight=take("rim_weight"),
+        diameter_m=take("grain_diameter", "class"),
+        settling_velocity_m_s=take("settling_velocity", "class"),
+        critical_stress_pa=take("critical_stress", "class"),
+    )
