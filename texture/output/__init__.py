@@ -5,6 +5,7 @@ from texture.output.cf import write_netcdf
 from texture.output.class_colours import class_colours
 from texture.output.folder import ResultFolder
 from texture.output.geotiff import pixel_grid, write_geotiff, write_geotiffs
+from texture.output.into import check_into, write_into
 from texture.output.names import Names, read_names
 from texture.output.open_bed import bed_arrays, open_bed
 from texture.output.provenance import provenance, write_json
@@ -18,6 +19,7 @@ __all__ = [
     "apply_names",
     "bed_arrays",
     "bed_dataset",
+    "check_into",
     "class_colours",
     "open_bed",
     "pixel_grid",
@@ -27,6 +29,7 @@ __all__ = [
     "write_csv",
     "write_geotiff",
     "write_geotiffs",
+    "write_into",
     "write_json",
     "write_netcdf",
 ]

@@ -53,7 +53,8 @@ def pixel_grid(target: Target, cell_size_m: float | None = None) -> PixelGrid:
     ----------
     target : Target
     cell_size_m : float, optional
-        Pixel size of the resample; by default the side of a square of the median water cell's area.
+        Pixel size of the resample; by default the side of a square of the median water cell's area, to two
+        digits.
 
     Returns
     -------
@@ -92,7 +93,7 @@ def _resample(target: Target, cell_size_m: float | None) -> PixelGrid:
     from rasterio.features import rasterize
     from rasterio.transform import Affine
 
-    size = cell_size_m or float(np.sqrt(np.median(target.area_m2[target.active])))
+    size = cell_size_m or _round_size(float(np.sqrt(np.median(target.area_m2[target.active]))))
     crs = _metric_crs(target)
     x, y = pyproj.Transformer.from_crs(4326, crs, always_xy=True).transform(
         target.corner_longitude, target.corner_latitude
@@ -116,6 +117,11 @@ def _resample(target: Target, cell_size_m: float | None) -> PixelGrid:
     number = rasterize(shapes, out_shape=(rows, columns), transform=transform, fill=0, dtype="int32")
     note = f"resampled from a curvilinear grid: each pixel of {size:g} m shows the cell that its centre lies in"
     return PixelGrid(number - 1, tuple(transform)[:6], crs, note)
+
+
+def _round_size(size: float) -> float:
+    """Two significant digits: nobody wants pixels of 573.2914 m."""
+    return float(f"{size:.2g}")
 
 
 def _metric_crs(target: Target) -> pyproj.CRS:

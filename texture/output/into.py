@@ -1,0 +1,121 @@
+"""Put the bed into a copy of the user's own initial file, everything else untouched."""
+
+from __future__ import annotations
+
+import shutil
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+
+from texture.errors import OutputError
+from texture.output.names import Names
+
+if TYPE_CHECKING:
+    import xarray as xr
+
+__all__ = ["check_into", "write_into"]
+
+
+def check_into(bed: xr.Dataset, names: Names, source: Path, record: int | None = None) -> dict[str, tuple[Any, ...]]:
+    """Check that every variable of the names file fits into the initial file.
+
+    Parameters
+    ----------
+    bed : xarray.Dataset
+        Through the names file already (`apply_names`).
+    names : Names
+        Its `[variables]` are what is replaced.
+    source : path
+        The user's file.
+    record : int, optional
+        Which record to fill, from 0, where the file's variable has one dimension more (time); needed when it
+        has several.
+
+    Returns
+    -------
+    dict
+        Name of each variable and the index of the part of it that is filled.
+
+    Raises
+    ------
+    OutputError
+        If the file cannot be read, a variable is absent, or its dimensions or their lengths differ.
+    """
+    import netCDF4
+
+    wanted = _wanted(bed, names)
+    if not wanted:
+        raise OutputError(f"{source.name}: the names file lists no variable of the bed to put into it")
+    try:
+        file = netCDF4.Dataset(source)
+    except OSError as error:
+        raise OutputError(f"{source.name}: cannot be read as NetCDF ({error.strerror or error})") from error
+    with file:
+        return {name: _place(name, bed.variables[name], file, source.name, record) for name in wanted}
+
+
+def write_into(bed: xr.Dataset, names: Names, source: Path, path: Path, record: int | None = None) -> None:
+    """Copy the user's file and replace the bed in the copy.
+
+    Parameters
+    ----------
+    bed, names, source, record
+        As for `check_into`.
+    path : path
+        The copy. Values are stored in the type, packing and fill value that the user's file has; attributes
+        are not touched.
+    """
+    import netCDF4
+
+    places = check_into(bed, names, source, record)
+    shutil.copyfile(source, path)
+    with netCDF4.Dataset(path, "r+") as file:
+        for name, index in places.items():
+            values = bed.variables[name].values
+            if values.dtype.kind == "f":
+                values = np.ma.masked_invalid(values)  # land, where the names file gave it a value
+            file.variables[name][index] = values
+
+
+def _wanted(bed: xr.Dataset, names: Names) -> list[str]:
+    """Names in the file of what the names file lists; coordinates stay the user's own."""
+    listed = set()
+    for own, spec in names.variables.items():
+        if spec.split:
+            labels = {str(n): v.attrs.get("sediment_class") for n, v in bed.variables.items()}
+            listed |= {n for n, label in labels.items() if label and n in _of_all(spec, label, len(bed.variables))}
+        elif own not in bed.coords:
+            listed.add(spec.name)
+    return [str(name) for name in bed.data_vars if name in listed]
+
+
+def _of_all(spec: Any, label: str, most: int) -> set[str]:
+    return {spec.of(label, i + 1) for i in range(most)}
+
+
+def _place(name: str, variable: xr.Variable, file: Any, source: str, record: int | None) -> tuple[Any, ...]:
+    if name not in file.variables:
+        known = ", ".join(list(file.variables)[:8])
+        raise OutputError(f'{source}: has no variable "{name}", found {known}; correct the names file')
+    theirs = file.variables[name]
+    lengths = dict(zip(theirs.dimensions, theirs.shape, strict=True))
+    extra = [d for d in theirs.dimensions if d not in variable.dims]
+    if [d for d in theirs.dimensions if d in variable.dims] != list(variable.dims) or len(extra) > 1:
+        raise OutputError(
+            f'{source}: "{name}" lies on {list(theirs.dimensions)}, the bed\'s on {[str(d) for d in variable.dims]}; '
+            "give dimensions and order in the names file"
+        )
+    for dimension, length in zip(variable.dims, variable.shape, strict=True):
+        if lengths[str(dimension)] != length:
+            raise OutputError(
+                f'{source}: "{name}" has {lengths[str(dimension)]} along {dimension}, the bed has {length}; '
+                "it was made for another grid or other classes or layers"
+            )
+    if extra and lengths[extra[0]] > 1 and record is None:
+        raise OutputError(
+            f'{source}: "{name}" has {lengths[extra[0]]} records along {extra[0]}; say which one to fill, from 0'
+        )
+    if extra and not 0 <= (record or 0) < lengths[extra[0]]:
+        raise OutputError(f'{source}: "{name}" has {lengths[extra[0]]} records along {extra[0]}, asked for {record}')
+    return tuple((record or 0) if d in extra else slice(None) for d in theirs.dimensions)
