@@ -37,8 +37,9 @@ Fraction = Annotated[float, Field(ge=0.0, le=1.0)]
 Positive = Annotated[float, Field(gt=0.0)]
 
 COLUMN_ROLES = (
-    "id", "survey", "date", "latitude", "longitude", "easting", "northing", "position", "depth",
-    "sample_top", "sample_bottom", "mud", "sand", "gravel", "silt", "clay", "description", "remarks",
+    "id", "survey", "date", "latitude", "latitude_minutes", "latitude_seconds", "latitude_hemisphere", "longitude",
+    "longitude_minutes", "longitude_seconds", "longitude_hemisphere", "easting", "northing", "zone", "position", "depth",
+    "sample_interval", "sample_top", "sample_bottom", "mud", "sand", "gravel", "silt", "clay", "description", "remarks",
 )  # fmt: skip
 
 

@@ -9,10 +9,10 @@ from __future__ import annotations
 import re
 from collections.abc import Sequence
 
-from texture.stations.files import Cell
+from texture.stations.files import Cell, is_blank
 from texture.stations.where import shown
 
-__all__ = ["angle_digits", "parse_angle", "parse_pair", "split_pairs"]
+__all__ = ["angle_digits", "join_fields", "parse_angle", "parse_pair", "split_pairs"]
 
 _SECONDS_MARK = re.compile(r"''|″|”|“|\"|˝")
 _MINUTES_MARK = re.compile(r"′|’|‘|´|`|ʹ|'")
@@ -152,3 +152,16 @@ def _add_up(fields: list[str], text: str) -> tuple[float, float]:
     last = fields[-1].replace(",", ".").partition(".")[2]
     scale = 60.0 ** (len(fields) - 1)
     return sum(n / 60.0**k for k, n in enumerate(numbers)), 0.5 * 10.0 ** -len(last) / scale
+
+
+def join_fields(*columns: Sequence[Cell]) -> list[Cell]:
+    """Join columns of degrees, minutes, seconds and hemisphere to one column of texts; blank where degrees are blank.
+
+    >>> join_fields([54, "55", None], [12.5, "", 3.0], ["N", "S", "N"])
+    ['54 12.5 N', '55 S', None]
+    """
+    joined: list[Cell] = []
+    for cells in zip(*columns, strict=True):
+        texts = [f"{c:.10g}" if isinstance(c, float) else str(c).strip() for c in cells if not is_blank(c)]
+        joined.append(" ".join(texts) if texts and not is_blank(cells[0]) else None)
+    return joined

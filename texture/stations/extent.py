@@ -14,7 +14,7 @@ __all__ = ["Extent", "scan_extent"]
 
 CHUNK = 2**20
 UNPACKED_MOST = 2 * 2**30  # bytes of all members; 200,000 rows of 12 columns unpack to about 0.1 GiB
-AREA_MOST = 60_000_000  # cells of the rectangle that the library would allocate
+AREA_MOST = 25_000_000  # cells of the rectangle that the library would allocate
 TEXT_MOST = 64 * 2**20  # bytes between two tags: a single cell that large is no measurement
 CELL = re.compile(rb'<(?:\w+:)?c\s[^>]*?\br="([A-Z]{1,3})([0-9]{1,7})"')
 ROW = re.compile(rb"<(?:\w+:)?row\b[^>]*>")
@@ -36,7 +36,7 @@ def scan_extent(path: Path) -> Extent:
     ------
     SampleError
         If the archive is damaged, unpacks to more than 2 GiB, or two of its cells are so far apart that
-        the rectangle between them has more than sixty million cells.
+        the rectangle between them has more than twenty-five million cells.
     """
     if not zipfile.is_zipfile(path):
         with path.open("rb") as stream:
@@ -84,7 +84,7 @@ def _sheet_names(archive: zipfile.ZipFile) -> list[str]:
 def _scan_sheet(path: Path, archive: zipfile.ZipFile, member: zipfile.ZipInfo) -> tuple[int, int]:
     """Return the area of the rectangle around all cells and the number of hidden rows."""
     bottom, right, far_column = 0, 0, b"A"
-    hidden, read, tail = 0, 0, b""
+    cells, hidden, read, tail = 0, 0, 0, b""
     with archive.open(member) as stream:
         while piece := stream.read(CHUNK):
             read += len(piece)
@@ -97,6 +97,7 @@ def _scan_sheet(path: Path, archive: zipfile.ZipFile, member: zipfile.ZipInfo) -
                 block, tail = b"", block
             if len(tail) > TEXT_MOST:
                 raise _too_long(path)
+            cells += block.count(b"<c ") + block.count(b"<c>")
             found = CELL.findall(block)
             if found:
                 lowest = max({digits for _, digits in found}, key=int)
@@ -112,7 +113,11 @@ def _scan_sheet(path: Path, archive: zipfile.ZipFile, member: zipfile.ZipInfo) -
             f"{path.name}, {Path(member.filename).stem}: cells as far as {far_column.decode()}{bottom} make a sheet of {bottom} rows × {right} columns; "
             "delete what stands far from the table, or save the table as csv"
         )
-    return area, hidden
+    if cells > AREA_MOST:
+        raise SampleError(
+            f"{path.name}, {Path(member.filename).stem}: more than {AREA_MOST:,} cells; save the table as csv"
+        )
+    return max(area, cells), hidden
 
 
 def _scan_text(path: Path, archive: zipfile.ZipFile, member: zipfile.ZipInfo) -> None:

@@ -25,6 +25,8 @@ _OVER_2 = r"(>|over|more than|coarser than|retained|above|groesser|superieur a|m
 _PATTERNS: tuple[tuple[str, int, str], ...] = (
     ("latitude_minutes", 4, r"\blat\w*\b.*\bmin(utes?|uten|utos?)?\b(?!.*\bdeg)"),
     ("longitude_minutes", 4, r"\blon\w*\b.*\bmin(utes?|uten|utos?)?\b(?!.*\bdeg)"),
+    ("latitude_seconds", 4, r"\blat\w*\b.*\bsec(onds?)?\b(?!.*\bdeg)"),
+    ("longitude_seconds", 4, r"\blon\w*\b.*\bsec(onds?)?\b(?!.*\bdeg)"),
     ("latitude_hemisphere", 4, r"\blat\w*\b.*\b(hemisphere|hem|dir|direction|n/s|ns)\b|^n ?/ ?s$"),
     ("longitude_hemisphere", 4, r"\blon\w*\b.*\b(hemisphere|hem|dir|direction|e/w|ew)\b|^[ew] ?/ ?[ew]$"),
     ("position", 4, r"\blat\w*\b.*\b(lon|long|longitude|lng)\b|\blon\w*\b.*\b(lat|latitude)\b"),

@@ -15,7 +15,7 @@ from texture.stations.cells import read_numbers, usual_decimals
 from texture.stations.files import Cell, is_blank
 from texture.stations.where import Where, shown
 
-__all__ = ["Positions", "from_metres", "is_projected", "read_degrees"]
+__all__ = ["Positions", "from_metres", "from_zones", "is_projected", "read_degrees"]
 
 FloatArray = npt.NDArray[np.float64]
 METRES_PER_DEGREE = 111_195.0  # along a great circle of the mean earth radius; accuracy needs no more
@@ -143,6 +143,60 @@ def from_metres(
     blank = np.array([is_blank(a) and is_blank(b) for a, b in zip(easting, northing, strict=True)], dtype=bool)
     problem = np.where(lost, np.where(blank, "no position", "easting or northing cannot be read"), "").astype(object)
     return _positions(lon, lat, accuracy, problem, lost, notes)
+
+
+def from_zones(
+    easting: Sequence[Cell],
+    northing: Sequence[Cell],
+    zone: Sequence[Cell],
+    where: tuple[Where, Where],
+    rows: Sequence[int],
+    zone_where: Where,
+) -> Positions:
+    """Read easting and northing whose UTM zone (WGS 84) stands in a column: `31N`, `31 north`, `31U`.
+
+    A letter other than N and S is a latitude band: C to M south, N to X north. A lone number does not tell the
+    hemisphere, and `S` is both "south" and the band from 32° N to 40° N; both are refused.
+
+    Raises
+    ------
+    SampleError
+        If a zone cannot be told.
+    """
+    n = len(rows)
+    nan = np.full(n, np.nan)
+    found = Positions(nan.copy(), nan.copy(), nan.copy(), np.full(n, "no zone", dtype=object))
+    notes: list[str] = []
+    for text in dict.fromkeys(str(z).strip() for z in zone if not is_blank(z)):
+        members = [i for i, z in enumerate(zone) if not is_blank(z) and str(z).strip() == text]
+        match = re.fullmatch(
+            r"(?:utm\s*)?(?:zone\s*)?(\d{1,2})\s*°?\s*(n|north|norte|s|south|sur|[c-hj-mp-rt-x])", text, re.I
+        )
+        number = int(match[1]) if match else 0
+        if match is None or match[2].casefold() == "s" or not 1 <= number <= 60:
+            raise zone_where.error(
+                shown(text),
+                "a UTM zone such as 31N or 31 south",
+                'say crs = "EPSG:326.." (north) or "EPSG:327.." (south) for the file',
+                row=rows[members[0]],
+            )
+        word = match[2].casefold()
+        north = word in ("n", "north", "norte") or (len(word) == 1 and "p" <= word <= "x")
+        part = from_metres(
+            [easting[i] for i in members],
+            [northing[i] for i in members],
+            where,
+            [rows[i] for i in members],
+            f"EPSG:{(32600 if north else 32700) + number}",
+        )
+        for whole, piece in zip(
+            (found.longitude, found.latitude, found.accuracy_m, found.problem),
+            (part.longitude, part.latitude, part.accuracy_m, part.problem),
+            strict=True,
+        ):
+            whole[members] = piece
+        notes.extend(part.notes)
+    return Positions(found.longitude, found.latitude, found.accuracy_m, found.problem, tuple(notes))
 
 
 def is_projected(crs: str) -> bool:

@@ -10,7 +10,7 @@ import pandas as pd
 
 from texture.errors import SampleError
 from texture.recipe import Intake, Samples
-from texture.stations.angles import split_pairs
+from texture.stations.angles import join_fields, split_pairs
 from texture.stations.audit import AuditLog
 from texture.stations.bottoms import is_hard_ground, is_total
 from texture.stations.cells import Numbers, read_numbers
@@ -19,8 +19,9 @@ from texture.stations.dates import read_dates
 from texture.stations.files import Cell, Sheet, is_blank
 from texture.stations.fractions import Shares, share_out
 from texture.stations.headings import PARTS
+from texture.stations.intervals import read_intervals
 from texture.stations.joins import POSITION_ROLES, Joined
-from texture.stations.positions import Positions, from_metres, is_projected, read_degrees
+from texture.stations.positions import Positions, from_metres, from_zones, is_projected, read_degrees
 from texture.stations.size_shares import shares_from_sizes
 from texture.stations.sources import Source
 from texture.stations.tables import Table
@@ -56,7 +57,7 @@ def read_rows(
     notes.extend((*positions.notes, *shares.notes))
     fate, reason = _judge(source, positions, shares)
     depth = _metres(source, "depth", notes)
-    _set_aside_deep(_metres(source, "sample_top", notes), intake, fate, reason)
+    _set_aside_deep(_top_of(source, notes), intake, fate, reason)
     dates = _dates(source, block, notes)
     hard = fate == "evidence"
     parts = np.where(hard[:, None], np.nan, np.column_stack([shares.mud, shares.sand, shares.gravel]))
@@ -131,7 +132,10 @@ def _positions_of(source: Source, block: Samples) -> Positions:
 
 def _positions(table: Table, columns: Mapping[str, Column], block: Samples) -> Positions:
     def cells(role: str) -> list[Cell]:
-        return table.columns[columns[role].index]
+        # degrees, minutes, seconds and hemisphere may stand in columns of their own
+        fields = [f"{role}{end}" for end in ("", "_minutes", "_seconds", "_hemisphere") if f"{role}{end}" in columns]
+        found = [table.columns[columns[f].index] for f in fields]
+        return join_fields(*found) if len(found) > 1 else found[0]
 
     def place(role: str) -> Where:
         return table.where.at(columns[role].heading)
@@ -143,6 +147,10 @@ def _positions(table: Table, columns: Mapping[str, Column], block: Samples) -> P
     if degrees:
         where = place("longitude"), place("latitude")
         return read_degrees(cells("longitude"), cells("latitude"), where, table.rows, block.crs)
+    if metres and "zone" in columns and block.crs is None:
+        where = place("easting"), place("northing")
+        zone = table.columns[columns["zone"].index]
+        return from_zones(cells("easting"), cells("northing"), zone, where, table.rows, place("zone"))
     if metres:
         where = place("easting"), place("northing")
         return from_metres(cells("easting"), cells("northing"), where, table.rows, block.crs)
@@ -259,6 +267,24 @@ def _home_of(source: Source, role: str) -> tuple[Table, Column, npt.NDArray[np.i
     if source.joined is not None and role in source.joined.columns:
         return source.joined.places, source.joined.columns[role], source.joined.match
     return None
+
+
+def _top_of(source: Source, notes: list[str]) -> npt.NDArray[np.float64]:
+    """How far below the surface of the bed each sample begins, in metres; NaN where nothing is said."""
+    top = _metres(source, "sample_top", notes)
+    home = _home_of(source, "sample_interval")
+    if home is None:
+        return top
+    table, column, match = home
+    found, _, unread = read_intervals(table.columns[column.index], column.unit)
+    if unread:
+        i = unread[0]
+        notes.append(
+            f'{table.where.at(column.heading).text()}: {len(unread)} entries are no intervals, such as "{table.columns[column.index][i]}" '
+            f"in row {table.rows[i]}: taken as surface samples"
+        )
+    found = found if match is None else np.where(match >= 0, found[match], np.nan)
+    return np.where(np.isnan(top), found, top)
 
 
 def _metres(source: Source, role: str, notes: list[str]) -> npt.NDArray[np.float64]:

@@ -19,6 +19,7 @@ SPACES = " "  # stands for runs of white space
 LOOKED_AT = 300  # lines that decide the delimiter
 WIDEST = 16_384  # columns of the widest spreadsheet; a wider text table is a mistake
 CELL_LIMIT = 1_000_000  # characters; the longest remark seen is far below, a broken quote is above
+LINES_IN_CELL = 20  # a remark may hold a few lines; an unclosed quotation mark swallows the rest of the file
 NAMES = {",": "commas", ";": "semicolons", "\t": "tabs", "|": "bars", SPACES: "spaces"}
 
 
@@ -62,7 +63,10 @@ def find_delimiter(lines: list[str]) -> str:
         return lines[0].strip()[4]
 
     def merit(delimiter: str) -> tuple[int, float]:
-        rows = [row for row in _split(lines, delimiter) if any(c.strip() for c in row)]
+        try:
+            rows = [row for row in _split(lines, delimiter) if any(c.strip() for c in row)]
+        except csv.Error:  # not split by this delimiter, the text is one endless cell
+            return 0, 0.0
         if not rows:
             return 0, 0.0
         known = max(len(roles_in(row)) for row in rows[:60])
@@ -97,16 +101,20 @@ def read_text(path: Path) -> Sheet:
     del raw
     if _is_binary(text):
         raise SampleError(f"{path.name}: neither a spreadsheet nor a text table; export it as xlsx, ods or csv")
-    lines = _first_lines(text)
-    delimiter = find_delimiter(lines)
     csv.field_size_limit(CELL_LIMIT)
     rows: list[list[Cell]] = []
     try:
+        delimiter = find_delimiter(_first_lines(text))
         for row in _split(io.StringIO(text, newline=""), delimiter):
             if len(row) > WIDEST:
                 raise SampleError(
                     f"{path.name}, row {len(rows) + 1}: {len(row)} columns, expected at most {WIDEST}; "
                     "check the delimiter and the export"
+                )
+            if any("\n" in cell and cell.count("\n") > LINES_IN_CELL for cell in row):
+                raise SampleError(
+                    f"{path.name}, row {len(rows) + 1}: one cell runs over {LINES_IN_CELL} lines; "
+                    "look for an unclosed quotation mark"
                 )
             rows.append(row)  # type: ignore[arg-type]
     except csv.Error as error:
