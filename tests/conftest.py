@@ -4,9 +4,14 @@ from __future__ import annotations
 
 import os
 import shutil
+import tomllib
 from pathlib import Path
+from typing import TYPE_CHECKING
 
 import pytest
+
+if TYPE_CHECKING:
+    from texture.result import Result
 
 ROOT = Path(__file__).resolve().parents[1]
 DEMO = ROOT / "demo_samples" / "kestrel_bight"
@@ -16,6 +21,23 @@ NOT_SHIPPED = "not shipped"  # reference data that the project may read but not 
 @pytest.fixture(scope="session")
 def demo_recipe() -> Path:
     return DEMO / "recipe.toml"
+
+
+@pytest.fixture(scope="session")
+def plain(demo_recipe: Path, tmp_path_factory: pytest.TempPathFactory) -> Result:
+    """The demo's bed under the program's own names, built once for all tests that look at it."""
+    import tomli_w
+
+    from texture import build
+
+    folder = tmp_path_factory.mktemp("plain")
+    for path in demo_recipe.parent.iterdir():
+        if path.is_file():
+            shutil.copy(path, folder / path.name)
+    settings = tomllib.loads(demo_recipe.read_text())
+    del settings["outputs"]["names"]
+    (folder / "recipe.toml").write_text(tomli_w.dumps(settings))
+    return build(folder / "recipe.toml", output=folder / "out")
 
 
 @pytest.fixture

@@ -3,9 +3,7 @@
 from __future__ import annotations
 
 import json
-import shutil
 import subprocess
-import tomllib
 from pathlib import Path
 
 import numpy as np
@@ -17,7 +15,6 @@ import xarray as xr
 from texture import build
 from texture.bed import EVIDENCE
 from texture.mapping import make_mapper
-from texture.result import Result
 
 pytestmark = pytest.mark.slow
 
@@ -25,30 +22,9 @@ RIM, LAND = 3, 4
 
 
 @pytest.fixture(scope="module")
-def plain(demo_recipe, tmp_path_factory) -> Result:
-    """The demo's bed under the program's own names."""
-    settings = tomllib.loads(demo_recipe.read_text())
-    del settings["outputs"]["names"]
-    folder = tmp_path_factory.mktemp("plain")
-    return build(write_recipe(demo_recipe, folder, settings), output=folder / "out")
-
-
-@pytest.fixture(scope="module")
 def truth(demo_recipe) -> np.ndarray:
     with xr.open_dataset(demo_recipe.parent / "truth.nc") as data:
         return np.stack([data[part].to_numpy().ravel() for part in ("mud", "sand", "gravel")], axis=1)
-
-
-def write_recipe(demo_recipe: Path, folder: Path, settings: dict) -> Path:
-    """A changed copy of the demo's recipe beside copies of its files."""
-    import tomli_w
-
-    for path in demo_recipe.parent.iterdir():
-        if path.is_file():
-            shutil.copy(path, folder / path.name)
-    path = folder / "recipe.toml"
-    path.write_text(tomli_w.dumps(settings))
-    return path
 
 
 def test_every_file_is_there(plain):

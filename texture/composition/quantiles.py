@@ -115,6 +115,9 @@ def quantiles(
         basis = np.zeros((0, 0)) if logratio.kind == "shares" else logratio.log_basis
         _draw_kernel(m, covariance, index, sign, basis, q, normal_draws(logratio.n_coordinates), out, status)
     refuse_matrix(status)
+    # Each level is found by itself, to 1e-4; where the whole spread is smaller than that they must still not cross.
+    order = np.argsort(q)
+    out[order] = np.maximum.accumulate(out[order], axis=0)
     return out
 
 

@@ -55,6 +55,12 @@ def draw_variograms(structure: Any, names: tuple[str, ...]) -> Figure:
     with styled():
         figure = new_figure(4.2 * len(names), 2.9)
         for axis, covariance, name in zip(np.atleast_1d(figure.subplots(1, len(names))), structure, names, strict=True):
-            covariance.fit_record.plot(axis)
-            axis.set_title(name)
+            record = covariance.fit_record
+            seen = record.variogram
+            far = np.linspace(0.0, float(seen.distance_m.max()), 200)[1:]
+            for (label, gamma), line in zip(record.curves(far).items(), (INK, QUIET), strict=True):
+                axis.plot(far / 1000, gamma, color=line, label=f"fit by {label}")
+            axis.plot(seen.distance_m / 1000, seen.semivariance, "o", color=STRONG, ms=4, label="pairs of stations")
+            axis.set(xlabel="distance, km", ylabel="semivariance", xlim=(0, None), ylim=(0, None), title=name)
+            axis.legend()
     return figure

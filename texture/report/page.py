@@ -86,7 +86,7 @@ def _figures(result: Result) -> dict[str, Picture]:
         "bed": _bed_picture(result),
         "scatter": picture(
             draw_scatter(parts, found.observations.fractions, found.validation.chosen),
-            "Each ring is a station, measured against what was predicted while it was held out.",
+            "Each dot is a station, measured against what was predicted while it was held out.",
             "Scatter of measured against held-out fractions, one panel for each part.",
         ),
         "methods": picture(
@@ -216,7 +216,8 @@ def _error_notes(result: Result) -> list[str]:
 def _opinion_line(result: Result) -> str:
     if result.opinion is None:
         return "The method has no variance, so no second opinion was sought."
-    return f"Second opinion: {result.opinion}"
+    opinion = str(result.opinion)
+    return f"{opinion[0].upper()}{opinion[1:]}."
 
 
 def _bed_notes(result: Result) -> list[str]:
@@ -230,6 +231,6 @@ def _bed_notes(result: Result) -> list[str]:
         notes.append("No rim was asked for: the open boundary has the estimate itself.")
     if account.not_given:
         notes.append(
-            f"Not given, and not to be had from grain size: {', '.join(account.not_given)}. The model needs them."
+            f"Not given, and not to be had from grain size: {', '.join(account.not_given)}. The model has to be told."
         )
     return notes

@@ -42,8 +42,15 @@ def page_tables(result: Result) -> dict[str, Table]:
 
 
 def number(value: float, digits: int = 3) -> str:
-    """Write a number for a person; a dash where there is none."""
-    return f"{value:,.{digits}f}" if np.isfinite(value) else "–"
+    """Write a number for a person; a dash where there is none, and no sign on a zero.
+
+    >>> number(-0.0001), number(-1234.5, 1), number(float("nan"))
+    ('0.000', '−1,234.5', '–')
+    """
+    if not np.isfinite(value):
+        return "–"
+    text = f"{abs(value):,.{digits}f}"
+    return f"−{text}" if value < 0.0 and any(c in text for c in "123456789") else text
 
 
 def _methods(result: Result) -> Table:

@@ -1,0 +1,82 @@
+"""The page: self-contained, safe with hostile text, and readable in a real browser."""
+
+import re
+from dataclasses import replace
+
+import pytest
+
+from texture.report import CAUTIONS, versions_line, write_page
+
+pytestmark = pytest.mark.slow
+
+HOSTILE = "<script>document.title='taken'</script> =1+1 \u202eright to left " + "x" * 500
+
+
+@pytest.fixture(scope="module")
+def page(plain):
+    return (plain.found.recipe.output / "report.html").read_text(encoding="utf-8")
+
+
+def test_page_asks_for_nothing_from_outside(page):
+    assert len(page.encode()) < 8_000_000
+    assert not re.search(r"""(?:src|href)\s*=\s*["']?(?:https?:)?//""", page)
+    assert "<script" not in page
+    assert "@import" not in page
+
+
+def test_page_says_what_matters(page, plain):
+    assert plain.answer().split(";")[0] in page
+    for caution in CAUTIONS:
+        assert caution.split("'")[0] in page
+    assert "parts sum to 1.37, expected 1 ± 0.02" in page
+    assert "KB87-077" in page
+    assert "river inlet, not rimmed" in page
+    assert all(re.search(r'alt="[^"]{20,}"', tag) for tag in re.findall(r"<img[^>]*>", page))
+
+
+def test_hostile_text_is_shown_as_text(plain):
+    recipe = plain.found.recipe.model_copy(update={"title": HOSTILE})
+    page = write_page(replace(plain, found=replace(plain.found, recipe=recipe)), HOSTILE, versions_line(plain))
+    assert "<script>" not in page
+    assert page.count("&lt;script&gt;") >= 3  # title, heading, settings
+
+
+@pytest.mark.browser
+def test_page_in_a_browser(plain, need_tool):
+    from playwright.sync_api import sync_playwright
+
+    chromium = need_tool("chromium", "chromium-browser", "google-chrome")
+    address = (plain.found.recipe.output / "report.html").as_uri()
+    quiet = ["--no-sandbox", "--disable-gpu", "--disable-quic", "--no-first-run", "--disable-background-networking",
+             "--disable-component-update", "--disable-sync"]  # fmt: skip
+    with sync_playwright() as playwright:
+        browser = playwright.chromium.launch(executable_path=chromium, args=quiet)
+        for width, scheme in ((1440, "light"), (390, "dark")):
+            context = browser.new_context(viewport={"width": width, "height": 900}, color_scheme=scheme)
+            view = context.new_page()
+            problems, requests = [], []
+            view.on("console", lambda message, found=problems: found.append(message.text))
+            view.on("pageerror", lambda error, found=problems: found.append(str(error)))
+            view.on("request", lambda request, found=requests: found.append(request.url))
+            view.goto(address)
+            assert view.title() == "Kestrel Bight, starting bed"
+            assert problems == []
+            assert [r for r in requests if not r.startswith(("file:", "data:"))] == []
+            assert view.evaluate("document.documentElement.scrollWidth") <= width
+            assert view.evaluate("[...document.images].every(i => i.complete && i.naturalWidth > 0)")
+            # The two schemes differ, and text stands out from its ground by at least 4.5 : 1 (WCAG AA).
+            assert view.evaluate(CONTRAST) >= 4.5
+            context.close()
+        browser.close()
+
+
+CONTRAST = """() => {
+  const light = c => { const v = c.match(/[\\d.]+/g).slice(0, 3).map(x => x / 255)
+      .map(x => x <= 0.03928 ? x / 12.92 : ((x + 0.055) / 1.055) ** 2.4);
+    return 0.2126 * v[0] + 0.7152 * v[1] + 0.0722 * v[2]; };
+  const ground = light(getComputedStyle(document.body).backgroundColor);
+  const ratios = [...document.querySelectorAll('p, td, th, li, h1, h2, figcaption, caption, summary')].map(e => {
+    const ink = light(getComputedStyle(e).color);
+    return (Math.max(ink, ground) + 0.05) / (Math.min(ink, ground) + 0.05); });
+  return Math.min(...ratios);
+}"""
