@@ -6,7 +6,7 @@ import sys
 import pytest
 
 from texture.errors import OutputError
-from texture.output import ResultFolder
+from texture.output import ResultFolder, provenance, write_json
 
 
 def content(path):
@@ -50,6 +50,44 @@ def test_files_of_others_do_not_forbid_a_first_run(tmp_path):
     assert content(tmp_path) == {"bed.nc": "new", "my notes.txt": "mine"}
 
 
+def build(folder, **files):
+    with folder.filling() as aside:
+        for name, text in files.items():
+            file = aside / name.replace("__", "/").replace("_", ".")
+            file.parent.mkdir(parents=True, exist_ok=True)
+            file.write_text(text)
+        made = sorted(p for p in aside.rglob("*") if p.is_file())
+        write_json(aside / "provenance.json", provenance([], aside, counts={}, seconds={}, files=made))
+
+
+def test_a_new_build_leaves_no_map_of_the_old_one(tmp_path):
+    build(ResultFolder(tmp_path), bed_nc="old", geotiff__mud_tif="old", geotiff__low_tif="old", geotiff__high_tif="old")
+    (tmp_path / "geotiff" / "high.tif").write_text("changed by hand")
+    (tmp_path / "geotiff" / "mine.tif").write_text("mine")
+    build(ResultFolder(tmp_path, overwrite=True), bed_nc="new", geotiff__mud_tif="new")
+    found = content(tmp_path)
+    del found["provenance.json"]
+    assert found == {
+        "bed.nc": "new", "geotiff/mud.tif": "new", "geotiff/high.tif": "changed by hand", "geotiff/mine.tif": "mine",
+    }  # fmt: skip
+
+
+def test_an_intake_leaves_the_bed_of_a_build(tmp_path):
+    build(ResultFolder(tmp_path), bed_nc="old", audit_csv="old")
+    fill(ResultFolder(tmp_path, overwrite=True), audit_csv="new")
+    assert content(tmp_path)["bed.nc"] == "old"
+
+
+def test_a_strange_provenance_removes_nothing(tmp_path):
+    (tmp_path / "provenance.json").write_text('{"results": [{"file": "../secret", "sha256": "0"}]}')
+    (tmp_path / "bed.nc").write_text("old")
+    build(ResultFolder(tmp_path, overwrite=True), audit_csv="new")
+    assert content(tmp_path)["bed.nc"] == "old"
+    (tmp_path / "provenance.json").write_text("[]")
+    build(ResultFolder(tmp_path, overwrite=True), audit_csv="newer")
+    assert content(tmp_path)["audit.csv"] == "newer"
+
+
 @pytest.mark.parametrize("failure", [ValueError("a fault"), KeyboardInterrupt()])
 def test_a_failed_run_changes_nothing(tmp_path, failure):
     (tmp_path / "bed.nc").write_text("old")
@@ -71,7 +109,7 @@ def test_failure_while_moving_puts_the_old_files_back(tmp_path, monkeypatch):
 
     def fails_at_the_fourth(source, to):
         calls.append(to)
-        if len(calls) == 4:  # audit aside, audit in, bed aside, bed in
+        if len(calls) == 4:  # audit aside, bed aside, audit in, bed in
             raise OSError(28, "No space left on device")
         real(source, to)
 

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import errno
+import json
 import os
 import shutil
 import tempfile
@@ -11,6 +12,7 @@ from contextlib import contextmanager
 from pathlib import Path
 
 from texture.errors import OutputError, TextureError
+from texture.output.provenance import file_record
 
 __all__ = ["RESULTS", "ResultFolder"]
 
@@ -29,7 +31,8 @@ class ResultFolder:
     path : path
         Made when the results are put in place, with its parents.
     overwrite : bool
-        Replace the results of an earlier run, file by file; files that are not results stay.
+        Replace the results of an earlier run, file by file. A build also removes what an earlier build wrote
+        and it does not, as far as provenance.json lists it and it is unchanged. All other files stay.
 
     Raises
     ------
@@ -91,11 +94,12 @@ class ResultFolder:
 
     def _put_in_place(self, fresh: Path, old: Path) -> tuple[Path, ...]:
         names = sorted(p.relative_to(fresh) for p in fresh.rglob("*") if p.is_file())
+        stale = _stale(self.path, names)
         made = _make_folders({self.path, *(self.path / name.parent for name in names)})
         placed: list[Path] = []
         saved: list[Path] = []
         try:
-            for name in names:
+            for name in [*names, *stale]:
                 if (self.path / name).exists():
                     if not self.overwrite:
                         raise OutputError(
@@ -104,6 +108,7 @@ class ResultFolder:
                     (old / name).parent.mkdir(parents=True, exist_ok=True)
                     os.replace(self.path / name, old / name)
                     saved.append(name)
+            for name in names:
                 os.replace(fresh / name, self.path / name)
                 placed.append(name)
         except BaseException:
@@ -115,6 +120,23 @@ class ResultFolder:
                 folder.rmdir()
             raise
         return tuple(self.path / name for name in names)
+
+
+def _stale(path: Path, names: list[Path]) -> list[Path]:
+    """Files that an earlier build wrote and this one does not, unless somebody has changed them since.
+
+    Without this, a map of an earlier run would stand beside the new ones.
+    """
+    record = path / "provenance.json"
+    if Path(record.name) not in names or not record.is_file():
+        return []
+    try:
+        results = json.loads(record.read_text(encoding="utf-8"))["results"]
+        known = {Path(entry["file"]): entry["sha256"] for entry in results}
+    except (ValueError, KeyError, TypeError):
+        return []  # not ours: nothing is known, so nothing is removed
+    found = [name for name in known if name not in names and not name.is_absolute() and ".." not in name.parts]
+    return [n for n in found if (path / n).is_file() and file_record(path / n, path)["sha256"] == known[n]]
 
 
 def _ground(path: Path) -> Path:

@@ -55,10 +55,12 @@ def provenance(
     seconds : mapping
         Time of each stage.
     files : paths
-        Results, named with their hashes.
+        Results, named from the folder of the outermost one, with their hashes.
     **more
         Further entries, such as `seed=1`.
     """
+    results = list(files)
+    folder = min((path.parent for path in results), key=lambda p: len(p.parts), default=base)
     return {
         "program": {"name": "Seabed Texture", "version": texture.__version__},
         "python": platform.python_version(),
@@ -67,7 +69,7 @@ def provenance(
         "counts": dict(counts),
         "seconds": {name: round(value, 3) for name, value in seconds.items()},
         **more,
-        "results": [{**file_record(path, path.parent)} for path in files],
+        "results": [file_record(path, folder) for path in results],
     }
 
 
