@@ -19,15 +19,22 @@ from texture.composition.closure import (
     total_variance,
     variation_matrix,
 )
+from texture.composition.cumulative import parts_from_weights
+from texture.composition.curves import SizeCurve
 from texture.composition.logratio import LogRatio
 from texture.composition.partition import Partition, default_tree
+from texture.composition.sizes import grade, m_from_phi, phi_from_m
+from texture.composition.statistics import FolkWard, Moments
 from texture.composition.zeros import replace
 
 __all__ = [
     "ClassOdds",
+    "FolkWard",
     "LogRatio",
+    "Moments",
     "Partition",
     "Scheme",
+    "SizeCurve",
     "centre",
     "class_numbers",
     "class_odds",
@@ -37,7 +44,11 @@ __all__ = [
     "default_tree",
     "distance",
     "find_scheme",
+    "grade",
+    "m_from_phi",
+    "parts_from_weights",
     "perturb",
+    "phi_from_m",
     "power",
     "replace",
     "scheme_names",
