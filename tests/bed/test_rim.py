@@ -107,14 +107,26 @@ def test_river_inlets_are_not_rimmed(target_of):
 @pytest.mark.parametrize(
     ("settings", "message"),
     [
-        ({"width_cells": 8}, "rim: a width of 8 cells covers every water cell of little grid; make it narrower"),
-        ({"width_m": 5000.0}, "rim: a width of 5000 m covers every water cell"),
+        (
+            {"width_cells": 8},
+            "rim: a width of 8 cells covers all water that the sea reaches in little grid; make it narrower",
+        ),
+        ({"width_m": 5000.0}, "rim: a width of 5000 m covers all water"),
         ({"width_cells": 1, "sides": ("north",)}, "the north side of little grid has no open water; open sides: south"),
     ],
 )
 def test_a_rim_that_does_not_fit(target_of, settings, message):
     with pytest.raises(BedError, match=message):
         rim_weight(target_of(land_on_three_sides()), rim(**settings))
+
+
+def test_a_pond_is_no_room_for_the_rim_to_fade(target_of):
+    active = land_on_three_sides()
+    active[0, 2] = False
+    pond = np.pad(active, ((3, 0), (0, 0)))
+    pond[1, 2] = True
+    with pytest.raises(BedError, match="covers all water that the sea reaches"):
+        rim_weight(target_of(pond), rim(width_cells=8))
 
 
 def test_a_lake_has_no_rim(target_of):

@@ -41,16 +41,17 @@ def rim_weight(cells: Cells, rim: Rim) -> Floats:
     Raises
     ------
     BedError
-        If there is no open boundary on the sides asked for, or the rim would cover every water cell.
+        If there is no open boundary on the sides asked for, or the rim would cover all water that it reaches.
     """
     in_metres = rim.width_m is not None
     width = float(rim.width_m if rim.width_m is not None else rim.width_cells or 0)
     distance = water_distance(cells, open_boundary(cells, rim.sides), in_metres, limit=width)
     inside = distance < width
-    if inside[cells.active].all():
+    # No way leads from the rim into other water: ponds that the sea does not reach do not count.
+    if not (inside[cells.edges].any(axis=1) & (cells.active & ~inside)[cells.edges].any(axis=1)).any():
         unit = "m" if in_metres else "cells"
         raise BedError(
-            f"rim: a width of {width:g} {unit} covers every water cell of {cells.name}; "
+            f"rim: a width of {width:g} {unit} covers all water that the sea reaches in {cells.name}; "
             "make it narrower, or name fewer sides"
         )
     weight = np.zeros(distance.size)
