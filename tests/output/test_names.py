@@ -57,6 +57,9 @@ def test_names_order_units_land_and_layers(tmp_path):
         assert share.encoding["coordinates"] == "place_x latitude"
         assert share.attrs["grid_mapping"] == "map_system"
         assert raw["settling_velocity"].dims == ("sort",)
+        for name in ("place_x", "latitude", "longitude_bounds"):  # land has a place too
+            assert np.isfinite(raw[name].values).all()
+            assert np.abs(raw[name].values).max() < 90.0
 
 
 def test_read_back_through_the_names_file(tmp_path):

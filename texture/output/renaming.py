@@ -56,7 +56,8 @@ def apply_names(dataset: xr.Dataset, names: Names, where: str = "names") -> xr.D
         spec = names.variables.get(name)
         if spec is None and names.values.only_named and name not in structural:
             continue
-        if names.values.land is not None and variable.dtype.kind == "f" and variable.dims[-len(cells) :] == cells:
+        on_cells = variable.dims[-len(cells) :] == cells and name not in structural
+        if names.values.land is not None and variable.dtype.kind == "f" and on_cells:
             variable = variable.copy()
             variable.values[..., land] = np.nan
             variable.encoding["_FillValue"] = names.values.land
