@@ -25,10 +25,12 @@ from texture.composition.logratio import LogRatio
 from texture.composition.partition import Partition, default_tree
 from texture.composition.sizes import grade, m_from_phi, phi_from_m
 from texture.composition.statistics import FolkWard, Moments
+from texture.composition.words import Described, class_moments, read_words
 from texture.composition.zeros import replace
 
 __all__ = [
     "ClassOdds",
+    "Described",
     "FolkWard",
     "LogRatio",
     "Moments",
@@ -36,6 +38,7 @@ __all__ = [
     "Scheme",
     "SizeCurve",
     "centre",
+    "class_moments",
     "class_numbers",
     "class_odds",
     "classify",
@@ -50,6 +53,7 @@ __all__ = [
     "perturb",
     "phi_from_m",
     "power",
+    "read_words",
     "replace",
     "scheme_names",
     "total_variance",
