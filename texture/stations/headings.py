@@ -11,7 +11,7 @@ import re
 import unicodedata
 from collections.abc import Iterable
 
-__all__ = ["PARTS", "is_unit", "plain", "role_of", "roles_in", "unit_in"]
+__all__ = ["PARTS", "is_unit", "is_weight", "plain", "role_of", "roles_in", "unit_in"]
 
 PARTS = ("mud", "sand", "gravel", "silt", "clay")
 
@@ -152,6 +152,15 @@ def unit_in(text: str) -> str | None:
         if pattern.search(low):
             return unit
     return None
+
+
+def is_weight(heading: str) -> bool:
+    """Whether a heading says that its column was weighed, in grams, whatever other unit it names.
+
+    >>> is_weight(">2 mm (g)"), is_weight("weight %"), is_weight("63-125 µm")
+    (True, False, False)
+    """
+    return bool(re.search(r"\b(g|gr|grams?|weights?|wt)\b", plain(heading))) and unit_in(heading) != "percent"
 
 
 def is_unit(cell: object) -> bool:

@@ -9,10 +9,11 @@ import numpy.typing as npt
 
 from texture.stations.columns import Column
 from texture.stations.files import Cell, is_blank
+from texture.stations.headings import role_of
 from texture.stations.tables import Table
 from texture.stations.where import shown
 
-__all__ = ["POSITION_ROLES", "Joined", "join_tables", "same_id"]
+__all__ = ["POSITION_ROLES", "Joined", "best_ids", "join_tables", "same_id"]
 
 
 POSITION_ROLES = ("latitude", "longitude", "easting", "northing", "position")
@@ -51,6 +52,25 @@ def same_id(cell: Cell) -> str:
     if isinstance(cell, float) and cell.is_integer():
         cell = int(cell)
     return "".join(str(cell).split()).casefold()
+
+
+def best_ids(results: Table, result_id: Column, places: Table, place_id: Column) -> tuple[Column, Column]:
+    """Choose the pair of id columns that meet most often; a column that the recipe names is not exchanged.
+
+    A sheet of results often carries two ids, the laboratory's own and the sampler's.
+    """
+
+    def candidates(table: Table, first: Column) -> list[Column]:
+        named = [i for i, h in enumerate(table.headings) if (role_of(h) or ("",))[0] == "id" and i != first.index]
+        return [first] + ([] if first.named else [Column("id", i, table.headings[i]) for i in named])
+
+    known = [(c, {same_id(x) for x in places.columns[c.index]} - {""}) for c in candidates(places, place_id)]
+    pairs = [
+        (sum(same_id(x) in ids for x in results.columns[a.index]), a, b)
+        for a in candidates(results, result_id)
+        for b, ids in known
+    ]
+    return max(pairs, key=lambda pair: pair[0])[1:]
 
 
 def join_tables(results: Table, result_id: Column, places: Table, columns: dict[str, Column]) -> Joined:

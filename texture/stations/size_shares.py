@@ -8,11 +8,13 @@ from collections.abc import Sequence
 import numpy as np
 import numpy.typing as npt
 
+from texture.composition.cumulative import parts_from_weights
+from texture.errors import CompositionError
 from texture.recipe import Intake, Samples
 from texture.stations.audit import AuditLog
 from texture.stations.cells import Reading, read_numbers, unreadable_hint
 from texture.stations.fractions import OF_LIMIT, Shares
-from texture.stations.headings import plain, unit_in
+from texture.stations.headings import is_weight, plain
 from texture.stations.sizes import SAME_LIMIT_PHI, SizeColumn
 from texture.stations.tables import Table
 
@@ -59,19 +61,17 @@ def shares_from_sizes(
     problem[negative & (problem == "")] = "a size class is negative"
     total = amounts.sum(axis=1)
     _check_sums(table, columns, total, given, intake.sum_tolerance, problem)
-    with np.errstate(invalid="ignore", divide="ignore"):
-        fractions = amounts / total[:, None]
     used = given & (problem == "")
-    coarser_2mm, gravel_note = _coarser_than(limits, fractions, -math.log2(intake.gravel_above_mm), table)
-    coarser_63, mud_note = _coarser_than(limits, fractions, -math.log2(intake.mud_below_mm), table)
-    mud, sand, gravel = 1.0 - coarser_63, coarser_63 - coarser_2mm, coarser_2mm
+    parts = np.full((n, 3), np.nan)
+    parts[used], cut_notes = _parts(limits, np.maximum(amounts[used], 0.0), intake, table)
+    mud, sand, gravel = parts.T
     if block.basis == "below_2mm" and not (np.nan_to_num(gravel[used]) > 0).any():
         gravel = np.full(n, np.nan)
-    parts = np.where(used[:, None], np.column_stack([mud, sand, gravel]), np.nan)
-    parts = np.where(np.abs(parts) < 1e-15, 0.0, parts)  # differences of sums, not grains
+    parts = np.column_stack([mud, sand, gravel])
+    parts[parts < 1e-15] = 0.0  # differences of sums, not grains
     resolution = np.where(used, half * math.sqrt(len(columns)) / np.where(total > 0.0, total, np.nan), np.nan)
     notes = [f"{table.where.text()}: mud, sand and gravel from {len(columns)} size columns"]
-    notes += [x for x in (note, mud_note, gravel_note) if x]
+    notes += [x for x in (note, *cut_notes) if x]
     if (
         block.basis == "whole"
         and limits[0] > -math.inf
@@ -186,12 +186,11 @@ def _check_sums(
     empty = ok & ~(total > 0.0)
     problem[empty] = "all size classes are zero"
     middle = float(np.median(total[ok]))
-    units = {unit_in(table.units[c.index]) or unit_in(c.heading) for c in columns}
-    weights = "g" in units
+    weights = any(is_weight(table.units[c.index]) or is_weight(c.heading) for c in columns)
     whole = next((w for w in (1.0, 100.0) if not weights and abs(middle / w - 1.0) < 0.1), None)
     stated = _total_column(table, columns)
-    if whole is not None:
-        off = ok & ~empty & (np.abs(total / whole - 1.0) > tolerance)
+    if whole is not None and stated is None:
+        off = ok & ~empty & (np.abs(total / whole - 1.0) > tolerance + 1e-9)
         for i in map(int, np.flatnonzero(off)):
             problem[i] = f"size classes sum to {total[i]:.5g}, expected {whole:g} ± {tolerance * whole:g}"
     elif stated is not None:
@@ -209,21 +208,22 @@ def _total_column(table: Table, columns: Sequence[SizeColumn]) -> FloatArray | N
     return None
 
 
-def _coarser_than(limits: FloatArray, fractions: FloatArray, cut_phi: float, table: Table) -> tuple[FloatArray, str]:
-    """Fraction of each row that is coarser than a cut, and a note where the cut is not a class limit."""
-    nearest = int(np.argmin(np.abs(limits - cut_phi)))
-    mm = 2.0**-cut_phi
-    if abs(limits[nearest] - cut_phi) <= SAME_LIMIT_PHI:
-        used_mm = 2.0 ** -limits[nearest]
-        note = (
-            f"{table.where.text()}: cut at {used_mm:.4g} mm for {mm:.4g} mm" if abs(used_mm / mm - 1.0) > 1e-6 else ""
-        )
-        return fractions[:, :nearest].sum(axis=1), note
-    if cut_phi <= limits[0]:  # nothing coarser was seen
-        return np.where(np.isnan(fractions[:, 0]), np.nan, 0.0), ""
-    closed = limits[np.isfinite(limits)]
-    raise table.where.error(
-        f"class limits {', '.join(f'{2.0**-x:.4g}' for x in closed)} mm",
-        f"one within 2 % of {mm:.4g} mm",
-        "set intake.mud_below_mm and intake.gravel_above_mm to limits of the classes",
-    )
+def _parts(limits: FloatArray, amounts: FloatArray, intake: Intake, table: Table) -> tuple[FloatArray, list[str]]:
+    """Mud, sand and gravel of each row, and notes on how the cuts were made."""
+    cuts, notes = [], []
+    for mm in (intake.mud_below_mm, intake.gravel_above_mm):
+        phi = -math.log2(mm)
+        nearest = float(limits[np.argmin(np.abs(limits - phi))])
+        cuts.append(2.0**-nearest * 1e-3 if abs(nearest - phi) <= SAME_LIMIT_PHI else mm * 1e-3)
+        if abs(nearest - phi) > SAME_LIMIT_PHI and limits[np.isfinite(limits)][0] < phi:
+            notes.append(f"{table.where.text()}: {mm:.4g} mm lies between class limits: taken from the size curve")
+        elif abs(nearest - phi) > 1e-6 and math.isfinite(nearest) and limits[0] < phi:
+            notes.append(f"{table.where.text()}: cut at {2.0**-nearest:.4g} mm for {mm:.4g} mm")
+    try:
+        return parts_from_weights(limits, amounts, cuts), notes
+    except CompositionError as error:
+        raise table.where.error(
+            f"size classes that cannot be cut at {intake.mud_below_mm:g} and {intake.gravel_above_mm:g} mm ({error})",
+            "classes on both sides of the cuts",
+            "set intake.mud_below_mm and intake.gravel_above_mm to limits of the classes",
+        ) from error

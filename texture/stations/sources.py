@@ -11,7 +11,7 @@ from texture.recipe import Samples
 from texture.stations.columns import Column, assign_columns
 from texture.stations.files import Sheet, read_sheets
 from texture.stations.headings import PARTS, plain, role_of
-from texture.stations.joins import Joined, join_tables
+from texture.stations.joins import Joined, best_ids, join_tables
 from texture.stations.sizes import SizeColumn, size_columns
 from texture.stations.tables import Table, find_table, no_table
 
@@ -141,8 +141,11 @@ def _joined(results: Source, places: Source | None, block: Samples) -> Source | 
     columns = dict(places.columns)
     if block.join is not None and block.join.on is not None:
         columns["id"] = assign_columns(places.table, {"id": block.join.on})["id"]
-    joined = join_tables(results.table, results.columns["id"], places.table, columns)
-    return Source(results.sheet, results.table, results.columns, results.sizes, joined, joined.notes)
+    result_id, columns["id"] = best_ids(results.table, results.columns["id"], places.table, columns["id"])
+    joined = join_tables(results.table, result_id, places.table, columns)
+    return Source(
+        results.sheet, results.table, {**results.columns, "id": result_id}, results.sizes, joined, joined.notes
+    )
 
 
 def _check_mapped(source: Source, mapped: Mapping[str, str]) -> None:
