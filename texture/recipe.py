@@ -64,6 +64,9 @@ class Samples(Settings):
     sheet: str | None = Field(None, description="sheet name; the first sheet with a table if absent")
     survey: str | None = Field(None, description="name of the survey; the file's stem if absent")
     crs: str | None = Field(None, description="EPSG code or WKT of the positions; longitude and latitude if absent")
+    hemisphere: Literal["", "N", "S", "E", "W", "NE", "NW", "SE", "SW"] = Field(
+        "", description="half of the globe of degrees that carry neither sign nor letter; north and east if empty"
+    )
     basis: Literal["whole", "below_2mm"] = Field(
         "whole", description="whether the laboratory saw the whole sample or only what passed 2 mm"
     )

@@ -49,6 +49,7 @@ def read_degrees(
     where: tuple[Where, Where],
     rows: Sequence[int],
     crs: str | None = None,
+    hemisphere: str = "",
 ) -> Positions:
     """Read columns of longitude and latitude in degrees.
 
@@ -60,6 +61,8 @@ def read_degrees(
     rows : sequence of int
     crs : str, optional
         Geographic system of the degrees; WGS 84 if absent.
+    hemisphere : str, default ""
+        Letters of the halves of the globe in which unsigned degrees lie: "W" makes 3.2 to 3.2 degrees west.
 
     Raises
     ------
@@ -71,6 +74,8 @@ def read_degrees(
     lon, lon_half, lon_problem = _angles(longitude, "longitude", where[0], rows)
     lat, lat_half, lat_problem = _angles(latitude, "latitude", where[1], rows)
     accuracy = _accuracy_m(lon_half, lat_half, lat)
+    lon = np.where(_bare(longitude) & ("W" in hemisphere), -lon, lon)
+    lat = np.where(_bare(latitude) & ("S" in hemisphere), -lat, lat)
     problem = np.where(lat_problem != "", lat_problem, lon_problem)
     notes: tuple[str, ...] = ()
     if crs is not None:
@@ -262,6 +267,19 @@ def _angles(
             fields[i] = angle_digits(cell)
     _usual_steps(half, fields)
     return value, half, problem
+
+
+def _bare(cells: Sequence[Cell]) -> npt.NDArray[np.bool_]:
+    """Whether a cell carries neither a sign nor a letter."""
+    return np.array(
+        [
+            c > 0
+            if isinstance(c, (int, float))
+            else isinstance(c, str) and not re.search(r"[+\-−]\s*\d|[nsewo]", c, re.I)
+            for c in cells
+        ],
+        dtype=bool,
+    )
 
 
 def _is_plain(cell: Cell) -> bool:

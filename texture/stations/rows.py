@@ -146,7 +146,7 @@ def _positions(table: Table, columns: Mapping[str, Column], block: Samples) -> P
         degrees = not is_projected(block.crs)
     if degrees:
         where = place("longitude"), place("latitude")
-        return read_degrees(cells("longitude"), cells("latitude"), where, table.rows, block.crs)
+        return read_degrees(cells("longitude"), cells("latitude"), where, table.rows, block.crs, block.hemisphere)
     if metres and "zone" in columns and block.crs is None:
         where = place("easting"), place("northing")
         zone = table.columns[columns["zone"].index]
@@ -156,7 +156,9 @@ def _positions(table: Table, columns: Mapping[str, Column], block: Samples) -> P
         return from_metres(cells("easting"), cells("northing"), where, table.rows, block.crs)
     if "position" in columns:
         latitude, longitude = split_pairs(cells("position"))
-        return read_degrees(longitude, latitude, (place("position"), place("position")), table.rows, block.crs)
+        return read_degrees(
+            longitude, latitude, (place("position"), place("position")), table.rows, block.crs, block.hemisphere
+        )
     raise _no_column(table, "columns of latitude and longitude, or of easting and northing", "name them")
 
 

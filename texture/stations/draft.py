@@ -1,0 +1,283 @@
+"""Look at files of samples and write a starting recipe: what was recognised, an example of each, and every doubt."""
+
+from __future__ import annotations
+
+import json
+import os
+from collections.abc import Sequence
+from dataclasses import dataclass, field
+from pathlib import Path
+
+import numpy as np
+import numpy.typing as npt
+
+from texture.errors import RecipeError, SampleError
+from texture.recipe import COLUMN_ROLES, Intake, Samples
+from texture.stations.audit import AuditLog
+from texture.stations.columns import Column
+from texture.stations.files import Cell, is_blank
+from texture.stations.headings import plain
+from texture.stations.rows import read_rows
+from texture.stations.sources import Source, find_source
+from texture.stations.tables import Table
+from texture.stations.where import shown
+
+__all__ = ["Extent", "draft_recipe"]
+
+Extent = tuple[float, float, float, float]
+DETECTION_LIMIT = 0.005  # of the recipe's default; a draft only counts rows with it
+MARGIN = 0.25  # of an extent's own size; surveys reach beyond a model's edge
+_ORDER = {role: i for i, role in enumerate(COLUMN_ROLES)}
+
+
+@dataclass
+class _Look:
+    """What was found in one file."""
+
+    file: Path
+    block: Samples
+    source: Source | None = None
+    error: str = ""
+    counts: dict[str, int] = field(default_factory=dict)
+    notes: list[str] = field(default_factory=list)
+    doubts: list[str] = field(default_factory=list)
+    extent: Extent | None = None
+
+
+def draft_recipe(
+    files: Sequence[str | Path],
+    base: str | Path,
+    grid: str | Path | None = None,
+    grid_extent: Extent | None = None,
+    title: str = "Untitled bed",
+) -> str:
+    """Write a starting recipe as TOML text.
+
+    Nothing is guessed silently: what was taken for what stands in the recipe, each with an example, and what is in
+    doubt stands there as a comment. A file that cannot be read as it is becomes a comment with its reason.
+
+    Parameters
+    ----------
+    files : sequence of path
+    base : path
+        Folder in which the recipe will lie; paths are written relative to it.
+    grid : path, optional
+        Grid file of the target; without one, a raster around the stations is proposed.
+    grid_extent : (west, south, east, north), optional, degrees
+        Extent of the grid, by which a projection that no file names can be told.
+    title : str
+
+    Returns
+    -------
+    text : str
+
+    Raises
+    ------
+    SampleError
+        If not one of the files can be read.
+    """
+    looks = [_look(Path(file)) for file in files]
+    known = _together([look.extent for look in looks if look.extent] + ([grid_extent] if grid_extent else []))
+    looks = [_with_projection(look, grid_extent or known) for look in looks]
+    for look in looks:
+        _doubt_position(look, grid_extent)
+    if all(look.source is None or look.error for look in looks):
+        raise SampleError("; ".join(look.error for look in looks))
+    lines = [
+        "# A draft: read it through, above all where it says DOUBT. Paths are relative to this file.",
+        "",
+        f"title = {_toml(title)}",
+        'output = "out"',
+        "",
+    ]
+    for look in looks:
+        lines += _block_lines(look, Path(base))
+    lines += _target_lines(looks, Path(base), grid)
+    return "\n".join(lines) + "\n"
+
+
+def _look(file: Path, crs: str | None = None) -> _Look:
+    look = _Look(file, Samples(file=file, crs=crs))
+    try:
+        look.source = find_source(look.block)
+        frame, notes = read_rows(look.source, look.block, Intake(), DETECTION_LIMIT, AuditLog())
+    except (SampleError, RecipeError) as error:
+        look.error = str(error)
+        return look
+    look.notes = [*look.source.sheet.notes, *look.source.notes, *notes]
+    look.counts = {str(k): int(v) for k, v in frame["fate"].value_counts().items()}
+    lon, lat = frame["longitude"].to_numpy(), frame["latitude"].to_numpy()
+    look.extent = _extent(lon, lat)
+    return look
+
+
+def _extent(lon: npt.NDArray[np.float64], lat: npt.NDArray[np.float64]) -> Extent | None:
+    """Extent of most positions: one lost sign must not stretch it."""
+    keep = np.isfinite(lon) & np.isfinite(lat)
+    if not keep.any():
+        return None
+    west, east = np.percentile(lon[keep], [2, 98])
+    south, north = np.percentile(lat[keep], [2, 98])
+    return float(west), float(south), float(east), float(north)
+
+
+def _together(extents: list[Extent]) -> Extent | None:
+    if not extents:
+        return None
+    west, south, east, north = zip(*extents, strict=True)
+    return min(west), min(south), max(east), max(north)
+
+
+def _overlap(one: Extent, other: Extent) -> bool:
+    dx, dy = MARGIN * (other[2] - other[0]) + 1e-3, MARGIN * (other[3] - other[1]) + 1e-3
+    x, y = (one[0] + one[2]) / 2, (one[1] + one[3]) / 2
+    return other[0] - dx <= x <= other[2] + dx and other[1] - dy <= y <= other[3] + dy
+
+
+def _with_projection(look: _Look, around: Extent | None) -> _Look:
+    """Try the UTM zones of WGS 84 on metres without a system; the one that falls on the grid is proposed."""
+    if "without a coordinate system" not in look.error:
+        return look
+    if around is None:
+        look.doubts.append(
+            "DOUBT: easting and northing without a system; give crs, no other file or grid tells where this is"
+        )
+        return look
+    fits: list[_Look] = []
+    first, last = (int((x + 180.0) // 6.0) + 1 for x in (around[0], around[2]))
+    for zone in range(max(1, first - 1), min(60, last + 1) + 1):
+        for code in (32600 + zone, 32700 + zone):
+            tried = _look(look.file, f"EPSG:{code}")
+            if not tried.error and tried.extent is not None and _overlap(tried.extent, around):
+                fits.append(tried)
+    if not fits:
+        look.doubts.append("DOUBT: easting and northing in no UTM zone around here; give crs")
+        return look
+    found = fits[0]
+    also = ", ".join(str(f.block.crs) for f in fits[1:])
+    found.doubts.append(
+        f"DOUBT: no file says which system these metres are in; {found.block.crs} puts them where the others are"
+        + (f", and so do {also}" if also else "")
+    )
+    return found
+
+
+def _doubt_position(look: _Look, grid: Extent | None) -> None:
+    """Say what would bring positions that miss the grid onto it: swapped columns, a lost sign."""
+    if grid is None or look.extent is None or _overlap(look.extent, grid):
+        return
+    west, south, east, north = look.extent
+    tries = {
+        "latitude and longitude may be swapped: exchange them under columns": (south, west, north, east),
+        'longitudes may be west: hemisphere = "W"': (-east, south, -west, north),
+        'latitudes may be south: hemisphere = "S"': (west, -north, east, -south),
+        'positions may be south and west: hemisphere = "SW"': (-east, -north, -west, -south),
+    }
+    fitting = [words for words, extent in tries.items() if _overlap(extent, grid)]
+    found = f"{west:.3f} to {east:.3f}, {south:.3f} to {north:.3f}"
+    look.doubts.append(f"DOUBT: positions ({found}) miss the grid" + ("; " + "; ".join(fitting) if fitting else ""))
+
+
+def _block_lines(look: _Look, base: Path) -> list[str]:
+    source = look.source
+    lines = [f"# {note}" for note in look.notes]
+    lines += [f"# {doubt}" for doubt in look.doubts]
+    if look.counts:
+        fates = ", ".join(f"{look.counts[f]} {f.replace('_', ' ')}" for f in look.counts)
+        lines.append(f"# rows: {fates}")
+    if source is None or look.error:
+        lines += [f"# NOT READ: {look.error}", "# [[samples]]", f"# file = {_path(look.file, base)}", ""]
+        return lines
+    lines += ["[[samples]]", f"file = {_path(look.file, base)}"]
+    if source.table.where.sheet:
+        lines.append(f"sheet = {_toml(source.table.where.sheet)}")
+    if look.block.crs:
+        lines.append(f"crs = {_toml(look.block.crs)}")
+    lines += [
+        'basis = "whole"                 # "below_2mm" if the laboratory saw only what passed 2 mm',
+        'blank_means = "not_measured"    # "zero" if an empty cell says that there is none',
+    ]
+    if source.joined is not None and source.joined.places.where.sheet:
+        lines.append(f"join = {{ sheet = {_toml(source.joined.places.where.sheet)} }}")
+    lines += ["", "[samples.columns]", *_column_lines(source), ""]
+    return lines
+
+
+def _column_lines(source: Source) -> list[str]:
+    """One line for each column recognised, with an example; the others are listed."""
+    lines: list[str] = []
+    tables: list[tuple[Table, dict[str, Column]]] = [(source.table, source.columns)]
+    if source.joined is not None:
+        places = {r: c for r, c in source.joined.columns.items() if r not in source.columns}
+        tables.append((source.joined.places, places))
+    for table, columns in tables:
+        sizes = {s.index for s in source.sizes} if table is source.table else set()
+        for role, column in sorted(columns.items(), key=lambda item: _ORDER.get(item[0], len(_ORDER))):
+            if role not in _ORDER:
+                continue
+            example = _example(table.columns[column.index])
+            unit = f"{column.unit}, " if column.unit else ""
+            line = f"{role} = {_toml(column.heading)}"
+            if sum(plain(h) == plain(column.heading) for h in table.headings) > 1:
+                line = f"# {line}  (this heading stands there more than once)"
+            lines.append(f"{line:<40} # {unit}such as {example}")
+        if sizes:
+            names = ", ".join(table.headings[i] for i in sorted(sizes))
+            lines.append(f"# size classes: {names}")
+        used = {c.index for c in columns.values()} | sizes
+        if table is source.table and source.joined is not None:
+            used |= {source.columns["id"].index}
+        idle = [h for i, h in enumerate(table.headings) if h and i not in used and (table is source.table or h != "")]
+        idle = (
+            [h for h in idle if not (table is not source.table and h == source.joined.columns["id"].heading)]
+            if source.joined
+            else idle
+        )
+        if idle:
+            lines.append(f"# not used: {', '.join(idle)}")
+    return lines
+
+
+def _example(cells: list[Cell]) -> str:
+    return next((shown(c) for c in cells if not is_blank(c)), "nothing, it is empty")
+
+
+def _target_lines(looks: list[_Look], base: Path, grid: str | Path | None) -> list[str]:
+    if grid is not None:
+        return ["[target]", f"file = {_path(Path(grid), base)}"]
+    extent = _together([look.extent for look in looks if look.extent])
+    if extent is None:
+        return ["# [target]: no positions found to propose a raster around"]
+    west, south, east, north = extent
+    code = (32600 if south + north >= 0 else 32700) + int(((west + east) / 2 + 180.0) // 6.0) + 1
+    bounds, size = _metric_bounds(extent, code)
+    return [
+        "# No grid was given: a raster around the stations, in the UTM zone of their middle.",
+        "[target]",
+        f"bounds = [{', '.join(f'{b:.0f}.0' for b in bounds)}]  # west, south, east, north in metres",
+        f"cell_size = {size:.0f}.0",
+        f'crs = "EPSG:{code}"',
+    ]
+
+
+def _metric_bounds(extent: Extent, code: int) -> tuple[tuple[float, ...], float]:
+    """Bounds in whole cells around an extent in degrees, and a cell size of about a hundredth of the longer side."""
+    import pyproj
+
+    transformer = pyproj.Transformer.from_crs(4326, code, always_xy=True)
+    west, south, east, north = transformer.transform_bounds(*extent)
+    side = max(east - west, north - south, 1000.0)
+    step = 10.0 ** np.floor(np.log10(side / 100.0))
+    size = float(step * min((1, 2, 5, 10), key=lambda m: abs(m * step - side / 100.0)))
+    margin = 0.05 * side
+    low = [np.floor((v - margin) / size) * size for v in (west, south)]
+    high = [np.ceil((v + margin) / size) * size for v in (east, north)]
+    return (low[0], low[1], high[0], high[1]), size
+
+
+def _path(file: Path, base: Path) -> str:
+    return _toml(Path(os.path.relpath(file.absolute(), base.absolute())).as_posix())
+
+
+def _toml(text: str) -> str:
+    return json.dumps(text, ensure_ascii=False)  # a JSON string is a TOML basic string
