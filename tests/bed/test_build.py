@@ -149,6 +149,16 @@ def test_mixture_stress_needs_all_classes():
     assert bed.account.not_given[0] == "flocs: settling velocity"
 
 
+def test_groups_of_cells_change_nothing(monkeypatch):
+    target = coast()
+    whole = make_bed(*random_map(target), target, settings_of(STRONG), SOUTH)
+    monkeypatch.setattr("texture.bed.build.CELLS_AT_ONCE", 5)
+    parts = make_bed(*random_map(target), target, settings_of(STRONG), SOUTH)
+    for name in ("class_fraction", "class_mass_content", "porosity", "critical_stress_for_erosion"):
+        np.testing.assert_array_equal(getattr(parts, name), getattr(whole, name))
+    assert parts.account.tonnes == pytest.approx(whole.account.tonnes, rel=1e-12)
+
+
 def test_the_same_bed_twice_and_a_useful_repr():
     target = coast()
     one, two = (make_bed(*random_map(target), target, settings_of(), SOUTH) for _ in range(2))

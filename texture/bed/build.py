@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, field
 
 import numpy as np
@@ -44,6 +44,9 @@ EVIDENCE = {
 
 SUM_TOLERANCE = 1e-6
 """Sums of the map's parts further from 1 than this are a mistake upstream, not rounding."""
+
+CELLS_AT_ONCE = 100_000
+"""Keeps what is between the steps within some tens of megabytes, whatever the size of the grid."""
 
 RIM, LAND, SAME, GIVEN = 3, 4, 2, 5
 
@@ -156,39 +159,44 @@ def make_bed(
     """
     n = cells.active.size
     _check_map(fractions, evidence, cells, len(parts))
-    wet = np.flatnonzero(cells.active)
     water = Water(settings.water.temperature_c, settings.water.salinity)
     classes = class_properties(settings.classes, water, parts)
     thickness = layer_thickness(settings.layers, cells.active, settings.land_thickness_m)
-    mapped = layer_fractions(to_classes(fractions[wet], classes), settings.layers, classes, parts)
     weight = np.zeros(n) if rim is None else rim_weight(cells, rim)
-    rimmed = mapped if rim is None else close_classes(blend(mapped, weight[wet], _rim_bed(rim, classes, parts)))
-    final, dropped = drop_small(rimmed, settings.least_fraction)
+    rim_bed = None if rim is None else _rim_bed(rim, classes, parts)
 
-    area_thickness = cells.area_m2[wet] * thickness[:, wet]
-    before, after = _tonnes(mapped, classes, area_thickness), _tonnes(rimmed, classes, area_thickness)
-    lost = _tonnes(rimmed, classes, area_thickness, of=dropped)
-    mass = _tonnes(final, classes, area_thickness)
-
-    source = nearest_water(cells)
-    position = np.full(n, -1, dtype=np.int64)
-    position[wet] = np.arange(wet.size)
-    return _assemble(
-        final[:, :, position[source]],
-        classes,
-        thickness,
-        _flags(evidence, settings, cells, weight),
-        weight,
-        Account(
-            tonnes=_named(classes, mass.sum(axis=1)),
-            rim_tonnes=_named(classes, (after - before).sum(axis=1)),
-            least_fraction_tonnes=_named(classes, lost.sum(axis=1)),
-            share_below_samples=float(mass[:, 1:].sum() / mass.sum()),
-            rim_cells=int((weight > 0.0).sum()),
-            land_cells=int(n - wet.size),
-            not_given=classes.not_given,
-        ),
+    fraction = np.empty((len(classes.names), len(settings.layers), n))
+    mapped, rimmed, dropped, final = np.zeros((4, *fraction.shape[:2]))  # tonnes by class and layer
+    for some in _blocks(np.flatnonzero(cells.active)):
+        volume = cells.area_m2[some] * thickness[:, some]
+        layers = layer_fractions(to_classes(fractions[some], classes), settings.layers, classes, parts)
+        before = _tonnes(layers, classes, volume)
+        if rim_bed is not None:
+            layers = blend(layers, weight[some], rim_bed)
+        kept, small = drop_small(layers, settings.least_fraction)
+        fraction[:, :, some] = kept
+        mapped += before
+        rimmed += _tonnes(layers, classes, volume) if rim_bed is not None else before
+        dropped += _tonnes(layers, classes, volume, of=small)
+        final += _tonnes(kept, classes, volume)
+    land = np.flatnonzero(~cells.active)
+    fraction[:, :, land] = fraction[:, :, nearest_water(cells)[land]]
+    account = Account(
+        tonnes=_named(classes, final.sum(axis=1)),
+        rim_tonnes=_named(classes, (rimmed - mapped).sum(axis=1)),
+        least_fraction_tonnes=_named(classes, dropped.sum(axis=1)),
+        share_below_samples=float(final[:, 1:].sum() / final.sum()),
+        rim_cells=int((weight > 0.0).sum()),
+        land_cells=int(land.size),
+        not_given=classes.not_given,
     )
+    return _with_mixture(fraction, classes, thickness, _flags(evidence, settings, cells, weight), weight, account)
+
+
+def _blocks(cells: NDArray[np.int64]) -> Iterator[NDArray[np.int64]]:
+    """Cells in groups that bound the memory of what is between the steps."""
+    for start in range(0, cells.size, CELLS_AT_ONCE):
+        yield cells[start : start + CELLS_AT_ONCE]
 
 
 def _check_map(fractions: Floats, evidence: NDArray[np.integer], cells: Cells, n_parts: int) -> None:
@@ -245,21 +253,31 @@ def _flags(evidence: NDArray[np.integer], settings: BedSettings, cells: Cells, w
     return flags
 
 
-def _assemble(
+def _with_mixture(
     fraction: Floats, classes: ClassProperties, thickness: Floats, flags: Flags, weight: Floats, account: Account
 ) -> Bed:
-    diameter = median_diameter(fraction, classes.diameter_m)
-    pores, density = mixture_packing(fraction, classes.density_kg_m3, diameter)
+    """The bed with what follows from its fractions, worked out in groups of cells."""
+    content = np.empty_like(fraction)
+    diameter, pores, density = (np.empty(fraction.shape[1:]) for _ in range(3))
+    strong = not np.isnan(classes.critical_stress_pa).any()
+    stress = np.empty(fraction.shape[1:]) if strong else None
+    for some in _blocks(np.arange(fraction.shape[2])):
+        here = fraction[:, :, some]
+        diameter[:, some] = median_diameter(here, classes.diameter_m)
+        pores[:, some], density[:, some] = mixture_packing(here, classes.density_kg_m3, diameter[:, some])
+        content[:, :, some] = thickness[:, some] * density[:, some] * here
+        if stress is not None:
+            stress[:, some] = mean_critical_stress(here, classes.critical_stress_pa)
     return Bed(
         classes=classes,
         class_fraction=fraction,
         erodible_thickness=thickness,
-        class_mass_content=thickness * density * fraction,
+        class_mass_content=content,
         dry_density=density,
         porosity=pores,
         mixture_median_diameter=diameter,
         skin_roughness_length=skin_roughness_length(diameter[0]),
-        critical_stress_for_erosion=mean_critical_stress(fraction, classes.critical_stress_pa),
+        critical_stress_for_erosion=stress,
         evidence=flags,
         rim_weight=weight,
         account=account,

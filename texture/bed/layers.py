@@ -99,4 +99,4 @@ def drop_small(fraction: Floats, least_fraction: float) -> tuple[Floats, Floats]
     """
     small = (fraction < least_fraction) & (fraction > 0.0) & (fraction < fraction.max(axis=0))
     dropped = np.where(small, fraction, 0.0)
-    return close_classes(fraction - dropped) if small.any() else fraction.copy(), dropped
+    return close_classes(fraction - dropped), dropped

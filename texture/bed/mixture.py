@@ -74,18 +74,18 @@ def mixture_packing(fraction: Floats, density_kg_m3: Floats, median_diameter_m: 
         Without unit, and in kg m-3.
     """
     pores = porosity(median_diameter_m)
-    grains = 1.0 / np.tensordot(1.0 / density_kg_m3, fraction, axes=1)
+    grains = 1.0 / _weighted(1.0 / density_kg_m3, fraction)
     return pores, dry_density(pores, grains)
 
 
-def mean_critical_stress(fraction: Floats, critical_stress_pa: Floats) -> Floats | None:
-    """Mass-weighted mean of the classes' critical stresses, without hiding and exposure.
+def mean_critical_stress(fraction: Floats, critical_stress_pa: Floats) -> Floats:
+    """Mass-weighted mean of the classes' critical stresses, without hiding and exposure, shape (…).
 
-    Returns
-    -------
-    float array, shape (…), or None
-        None when a class has no critical stress: a mean over the others would call mud as strong as sand.
+    NaN when a class has none: a mean over the others would call mud as strong as sand.
     """
-    if np.isnan(critical_stress_pa).any():
-        return None
-    return np.asarray(np.tensordot(critical_stress_pa, fraction, axes=1))
+    return _weighted(critical_stress_pa, fraction)
+
+
+def _weighted(values: Floats, fraction: Floats) -> Floats:
+    # Not a matrix product: its last digits depend on the shape of the block and the number of threads.
+    return np.asarray(np.einsum("k,k...->...", values, fraction))
