@@ -15,7 +15,7 @@ if TYPE_CHECKING:
 
 ROOT = Path(__file__).resolve().parents[1]
 DEMO = ROOT / "demo_samples" / "kestrel_bight"
-NOT_SHIPPED = "not shipped"  # reference data that the project may read but not carry: the one skip allowed in CI
+NOT_SHIPPED = "not beside this repository"  # reference data that the project may read but not carry: the one skip allowed in CI
 
 
 @pytest.fixture(scope="session")

@@ -167,5 +167,5 @@ def test_help_names_the_commands_and_an_example():
 def test_output_that_is_a_file_is_refused(small):
     (small.parent / "out").write_text("a file")
     done = texture("intake", small)
-    assert done.returncode == FAILED
+    assert done.returncode == WRONG_INPUT
     assert "expected a folder" in done.stderr

@@ -5,7 +5,7 @@ import sys
 
 import pytest
 
-from texture.errors import OutputError
+from texture.errors import OutputError, RecipeError
 from texture.output import ResultFolder, provenance, write_json
 
 
@@ -38,7 +38,7 @@ def test_a_new_folder_with_its_parents(tmp_path):
 def test_results_are_not_replaced_unless_asked(tmp_path):
     (tmp_path / "bed.nc").write_text("old")
     (tmp_path / "my notes.txt").write_text("mine")
-    with pytest.raises(OutputError, match=r"holds results of an earlier run \(bed.nc\); use --overwrite"):
+    with pytest.raises(RecipeError, match=r"holds results of an earlier run \(bed.nc\); use --overwrite"):
         ResultFolder(tmp_path)
     fill(ResultFolder(tmp_path, overwrite=True), bed_nc="new")
     assert content(tmp_path) == {"bed.nc": "new", "my notes.txt": "mine"}
@@ -122,7 +122,7 @@ def test_failure_while_moving_puts_the_old_files_back(tmp_path, monkeypatch):
 
 def test_a_file_in_the_way(tmp_path):
     (tmp_path / "out").write_text("a file")
-    with pytest.raises(OutputError, match="is a file, expected a folder"):
+    with pytest.raises(RecipeError, match="is a file, expected a folder"):
         ResultFolder(tmp_path / "out")
 
 

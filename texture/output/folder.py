@@ -11,7 +11,7 @@ from collections.abc import Iterator
 from contextlib import contextmanager
 from pathlib import Path
 
-from texture.errors import OutputError, TextureError
+from texture.errors import OutputError, RecipeError, TextureError
 from texture.output.provenance import file_record
 
 __all__ = ["RESULTS", "ResultFolder"]
@@ -36,8 +36,10 @@ class ResultFolder:
 
     Raises
     ------
+    RecipeError
+        If the path is a file, or holds results and `overwrite` is off.
     OutputError
-        If the path is a file, holds results and `overwrite` is off, or cannot be written.
+        If it cannot be written.
 
     Examples
     --------
@@ -56,11 +58,11 @@ class ResultFolder:
         self.overwrite = overwrite
         self.files: tuple[Path, ...] = ()
         if self.path.exists() and not self.path.is_dir():
-            raise OutputError(f"{self.path}: is a file, expected a folder for the results; choose another output")
+            raise RecipeError(f"{self.path}: is a file, expected a folder for the results; choose another output")
         found = [name for name in RESULTS if (self.path / name).exists()]
         if found and not overwrite:
             more = f" and {len(found) - 3} more" if len(found) > 3 else ""
-            raise OutputError(
+            raise RecipeError(
                 f"{self.path}: holds results of an earlier run ({', '.join(found[:3])}{more}); "
                 "use --overwrite to replace them, or choose another output"
             )
