@@ -11,7 +11,14 @@ def rows(*values, **columns):
     """A frame of rows (mud, sand, gravel) at one place, with columns overridden."""
     n = len(values)
     frame = pd.DataFrame(values, columns=["mud", "sand", "gravel"], dtype=float)
-    defaults = {"survey": "a", "longitude": 3.0, "latitude": 54.0, "kind": "sieve", "resolution": 0.005}
+    defaults = {
+        "survey": "a",
+        "longitude": 3.0,
+        "latitude": 54.0,
+        "kind": "sieve",
+        "described_class": "",
+        "resolution": 0.005,
+    }
     for name, value in {**defaults, **columns}.items():
         frame[name] = value if isinstance(value, list) else [value] * n
     return frame

@@ -28,7 +28,7 @@ LEDGER_COLUMNS = ("file", "sheet", "row", "id", "fate", "reason", "station")
 TABLE_COLUMNS = (
     "id", "survey", "longitude", "latitude", "mud", "sand", "gravel", "kind", "file", "sheet", "row",
     "date", "depth_m", "resolution", "repeats", "repeat_sd_mud", "repeat_sd_sand", "repeat_sd_gravel",
-    "position_accuracy_m", "description",
+    "position_accuracy_m", "description", "described_class",
 )  # fmt: skip
 
 
@@ -41,7 +41,8 @@ class Stations:
     table : GeoDataFrame, EPSG:4326, index 0 … n-1
         One row for each station, `TABLE_COLUMNS` first. Fractions of 1, NaN where a part is not known: a row
         that knows only its mud has sand and gravel NaN; mud and sand without gravel are shares of what passed
-        2 mm. Rows of kind `hard_ground` have no fractions.
+        2 mm. Rows of kind `hard_ground` have no fractions, and those of kind `description` none either: their words
+        name a class in `described_class`.
     audit : DataFrame
         file, sheet, row, column, old, new, rule: every reading that was not plain and every change.
     ledger : DataFrame

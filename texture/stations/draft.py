@@ -16,7 +16,7 @@ from texture.recipe import COLUMN_ROLES, Intake, Samples
 from texture.stations.audit import AuditLog
 from texture.stations.columns import Column
 from texture.stations.files import Cell, is_blank
-from texture.stations.headings import plain
+from texture.stations.headings import PARTS, plain
 from texture.stations.rows import read_rows
 from texture.stations.sources import Source, find_source
 from texture.stations.tables import Table
@@ -216,7 +216,11 @@ def _column_lines(source: Source) -> list[str]:
             if role not in _ORDER:
                 continue
             example = _example(table.columns[column.index])
-            unit = f"{column.unit}, " if column.unit else ""
+            unit = (
+                f"{column.unit}, "
+                if column.unit and (role not in PARTS or column.unit in ("percent", "fraction", "g"))
+                else ""
+            )
             line = f"{role} = {_toml(column.heading)}"
             if sum(plain(h) == plain(column.heading) for h in table.headings) > 1:
                 line = f"# {line}  (this heading stands there more than once)"

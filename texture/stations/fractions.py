@@ -19,7 +19,7 @@ from texture.stations.columns import Column
 from texture.stations.files import Cell
 from texture.stations.where import Where, shown
 
-__all__ = ["OF_LIMIT", "Shares", "find_unit", "share_out"]
+__all__ = ["OF_LIMIT", "Shares", "find_unit", "no_shares", "share_out"]
 
 FloatArray = npt.NDArray[np.float64]
 BoolArray = npt.NDArray[np.bool_]
@@ -56,6 +56,12 @@ class Shares:
     given: BoolArray
     problem: npt.NDArray[np.object_]
     notes: tuple[str, ...] = ()
+
+
+def no_shares(n: int) -> Shares:
+    """Shares of a table that gives none, only words."""
+    mud, sand, gravel, resolution = np.full((4, n), np.nan)
+    return Shares(mud, sand, gravel, resolution, np.zeros(n, dtype=bool), np.full(n, "", dtype=object))
 
 
 def find_unit(

@@ -36,12 +36,12 @@ def merge_repeats(rows: pd.DataFrame) -> tuple[pd.DataFrame, npt.NDArray[np.int6
     Examples
     --------
     >>> rows = pd.DataFrame({"survey": "a", "longitude": [3.0, 3.0], "latitude": [54.0, 54.0], "mud": [0.2, 0.4],
-    ...     "sand": [0.8, 0.2], "gravel": [0.0, 0.4], "kind": "sieve", "resolution": 0.005})
+    ...     "sand": [0.8, 0.2], "gravel": [0.0, 0.4], "kind": "sieve", "described_class": "", "resolution": 0.005})
     >>> merge_repeats(rows)[0][["mud", "sand", "gravel", "repeats"]].values.round(6).tolist()
     [[0.3, 0.5, 0.2, 2.0]]
     """
     n = len(rows)
-    hard = (rows["kind"] == "hard_ground").to_numpy()
+    hard, words = ((rows["kind"] == kind).to_numpy() for kind in ("hard_ground", "description"))
     key = pd.DataFrame(
         {
             "survey": rows["survey"].to_numpy(),
@@ -50,10 +50,14 @@ def merge_repeats(rows: pd.DataFrame) -> tuple[pd.DataFrame, npt.NDArray[np.int6
             "alone": np.where(hard, np.arange(n), -1),
         }
     )
-    group = key.groupby(["survey", "x", "y", "alone"], sort=False).ngroup().to_numpy().astype(np.int64)
+    place = _numbered(key)
+    n_places = int(place.max()) + 1 if n else 0
+    measured = np.bincount(place, weights=~words, minlength=n_places) > 0
+    # Where nothing was measured, different words stay apart: each is a reading of its own.
+    told = np.where(words & ~measured[place], rows["described_class"].to_numpy(), "")
+    group = _numbered(key.assign(told=told))
     size = np.bincount(group, minlength=group.max() + 1 if n else 0)
     # A measured row leads its group even where a description of the same place was read first.
-    words = (rows["kind"] == "description").to_numpy()
     measured = np.bincount(group, weights=~words, minlength=len(size)) > 0
     counts = ~(words & measured[group])
     leader = _first_of_each(group, counts, len(size))
@@ -65,6 +69,11 @@ def merge_repeats(rows: pd.DataFrame) -> tuple[pd.DataFrame, npt.NDArray[np.int6
     if several.any():
         _average(rows, stations, group, counts, several)
     return stations, group
+
+
+def _numbered(key: pd.DataFrame) -> npt.NDArray[np.int64]:
+    """Number of each row's group, in order of first appearance."""
+    return key.groupby(list(key.columns), sort=False).ngroup().to_numpy().astype(np.int64)
 
 
 def _first_of_each(group: npt.NDArray[np.int64], counts: npt.NDArray[np.bool_], n_groups: int) -> npt.NDArray[np.int64]:
