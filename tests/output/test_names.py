@@ -118,6 +118,7 @@ def test_only_named_keeps_the_place_on_earth(tmp_path):
         ('[variables]\nlayer = { name = "a" }\n[dimensions]\nlayer = "b"', "a coordinate variable has its dimension's name"),
         ('[variables]\nlayer = { name = "a" }', "a coordinate variable has its dimension's name"),
         ('[variables]\nerosion_rate_per_stress = { name = "a" }', '"erosion_rate_per_stress" is not in this bed'),
+        ('[variables]\nporosity = "a"', "variables.porosity: found 'a', expected a table such as { name = "),
         ("[variables", "names.toml: not TOML"),
     ],
 )  # fmt: skip

@@ -154,6 +154,8 @@ def _first(error: ValidationError) -> str:
         blocks: dict[str, type[BaseModel]] = {"variables": VariableName, "values": Values}
         model = blocks.get(str(first["loc"][0]), Names)
         return f'unknown key "{where}"; {_nearest(str(first["loc"][-1]), list(model.model_fields))}'
+    if first["type"] == "model_type":
+        return f'{where}: found {first["input"]!r}, expected a table such as {{ name = "bed_height" }}'
     message = first["msg"].removeprefix("Value error, ")
     return f"{where}: {message}"
 
