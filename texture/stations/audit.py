@@ -60,6 +60,18 @@ class AuditLog:
             }
         )
 
+    def take_over(self, other: AuditLog, without: npt.NDArray[np.int64]) -> None:
+        """Take the rows of another log, except those of some spreadsheet rows (totals, notes)."""
+        for block in other._blocks:
+            keep = ~np.isin(block["row"], without)
+            if keep.any():
+                lists = {
+                    k: [v for v, ok in zip(block[k], keep, strict=True) if ok]
+                    for k in ("old", "new", "rule")
+                    if isinstance(block[k], list)
+                }
+                self._blocks.append({**block, **lists, "row": block["row"][keep]})
+
     def table(self) -> pd.DataFrame:
         """Return all rows as a DataFrame with the columns of `AUDIT_COLUMNS`."""
         import pandas as pd

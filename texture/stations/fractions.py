@@ -136,6 +136,7 @@ def share_out(
     where: Where,
     rows: npt.NDArray[np.int64],
     audit: AuditLog,
+    placed: BoolArray | None = None,
     sum_tolerance: float = 0.02,
     detection_limit: float = 0.005,
 ) -> Shares:
@@ -150,6 +151,8 @@ def share_out(
     rows : int array, shape (n,)
     audit : AuditLog
         Receives a row for each reading that is not plain, each completion and each closing.
+    placed : bool array, shape (n,), optional
+        Rows that have a position; only in these is a share above 1 refused, for totals stand in the others.
     sum_tolerance : float
         Rows whose parts sum outside 1 ± this are refused.
     detection_limit : float
@@ -171,7 +174,8 @@ def share_out(
         place = where.at(columns[role].heading)
         given |= (column.reading > Reading.MISSING) | (column.reading == Reading.PLAIN)
         if unit != "weight":
-            _refuse_above_one(part.value, cells[role], sum_tolerance, unit, place, rows)
+            checked = part.value if placed is None else np.where(placed, part.value, np.nan)
+            _refuse_above_one(checked, cells[role], sum_tolerance, unit, place, rows)
         _note_readings(column, part.value, cells[role], place, rows, audit)
         unreadable = column.reading == Reading.UNREADABLE
         for i in map(int, np.flatnonzero(unreadable & (problem == ""))):

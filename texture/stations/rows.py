@@ -51,10 +51,12 @@ def read_rows(
     rows = np.asarray(table.rows, dtype=np.int64)
     notes: list[str] = []
     positions = _positions_of(source, block)
-    shares = _shares(source, block, intake, detection_limit, rows, audit)
+    log = AuditLog()
+    shares = _shares(source, positions, block, intake, detection_limit, rows, log)
     notes.extend((*positions.notes, *shares.notes))
-    fates = judge(source, positions, shares, audit)
+    fates = judge(source, positions, shares, log)
     fate, reason = fates.fate, fates.reason
+    audit.take_over(log, without=rows[fate == "not_samples"])
     depth = metres_of(source, "depth", notes)
     _set_aside_deep(top_of(source, notes), intake, fate, reason)
     dates = days_of(source, block, notes)
@@ -173,6 +175,7 @@ def _no_column(table: Table, expected: str, do: str) -> SampleError:
 
 def _shares(
     source: Source,
+    positions: Positions,
     block: Samples,
     intake: Intake,
     detection_limit: float,
@@ -193,8 +196,9 @@ def _shares(
         cells[role] = table.columns[columns[role].index]
         numbers[role] = read_numbers(cells[role], table.where.at(columns[role].heading), table.rows)
         _check_numeric(table, columns[role], numbers[role])
+    placed = np.isfinite(positions.longitude)
     tolerance = intake.sum_tolerance
-    return share_out(numbers, cells, columns, block, table.where, rows, audit, tolerance, detection_limit)
+    return share_out(numbers, cells, columns, block, table.where, rows, audit, placed, tolerance, detection_limit)
 
 
 def _check_numeric(table: Table, column: Column, numbers: Numbers) -> None:

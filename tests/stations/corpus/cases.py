@@ -1,0 +1,245 @@
+"""The corpus: small awkward files, one trouble each, with the table, the account and the audit that they must give.
+
+All are variations of one invented survey of six grabs, exact in tenths of a percent. A case lists only what differs from it.
+"""
+
+import datetime as dt
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass, field
+from typing import Any
+
+from tests.stations.corpus.makers import ods, stale_dimension, text, xlsx
+
+HEAD = ["Station", "Latitude", "Longitude", "Mud (%)", "Sand (%)", "Gravel (%)", "Remarks"]
+BASE: list[list[Any]] = [
+    ["A1", 54.101, 3.201, 12.5, 80.0, 7.5, ""],
+    ["A2", 54.112, 3.212, 30.0, 65.0, 5.0, ""],
+    ["A3", 54.123, 3.223, 5.5, 94.5, 0.0, ""],
+    ["A4", 54.134, 3.234, 60.0, 40.0, 0.0, "soft"],
+    ["A5", 54.145, 3.245, 1.5, 48.5, 50.0, ""],
+    ["A6", 54.156, 3.256, 22.2, 77.7, 0.1, ""],
+]
+NAN = float("nan")
+Row = list[Any]
+
+
+@dataclass(frozen=True)
+class Case:
+    """One awkward file.
+
+    `changed` gives, for an id, what differs from the base in the stations table; `gone` the ids that are no stations; `counts`
+    the account where it is not "six used, one header"; `aside` the reasons of rows set aside; `audit` rows as
+    (row, column, old, new).
+    """
+
+    name: str
+    content: bytes
+    file: str = "survey.csv"
+    block: dict[str, Any] = field(default_factory=dict)
+    changed: dict[str, dict[str, Any]] = field(default_factory=dict)
+    gone: tuple[str, ...] = ()
+    counts: dict[str, int] = field(default_factory=dict)
+    aside: tuple[str, ...] = ()
+    audit: tuple[tuple[int, str, str, str], ...] = ()
+    notes: tuple[str, ...] = ()
+    atol: float = 1e-12
+
+
+def rows(change: Callable[[Row], Row] | None = None, **cells: Any) -> list[Row]:
+    """The base rows, each changed by a function, or single cells replaced: `A1_3="<1"` is A1's column 3."""
+    out = [list(r) for r in BASE]
+    for key, value in cells.items():
+        name, _, column = key.partition("_")
+        next(r for r in out if r[0] == name)[int(column)] = value
+    return [change(r) for r in out] if change else out
+
+
+def table(head: Sequence[Any] = HEAD, change: Callable[[Row], Row] | None = None, **cells: Any) -> list[Row]:
+    return [list(head), *rows(change, **cells)]
+
+
+def comma(row: Row) -> Row:
+    return [str(c).replace(".", ",") if isinstance(c, float) else c for c in row]
+
+
+def dm(value: float, digits: int = 4) -> str:
+    return f"{int(value)} {(value - int(value)) * 60:.{digits}f}"
+
+
+def dms(value: float, letter: str) -> str:
+    minutes = (value - int(value)) * 60
+    return f"{int(value)}°{int(minutes):02d}'{(minutes - int(minutes)) * 60:05.2f}\"{letter}"
+
+
+def with_place(head: Sequence[str], place: Callable[[float, float], Sequence[Any]]) -> list[Row]:
+    """The base table with its two position columns replaced."""
+    return [[HEAD[0], *head, *HEAD[3:]], *[[r[0], *place(r[1], r[2]), *r[3:]] for r in BASE]]
+
+
+def utm(latitude: float, longitude: float) -> tuple[float, float]:
+    import pyproj
+
+    east, north = pyproj.Transformer.from_crs(4326, 32631, always_xy=True).transform(longitude, latitude)
+    return round(east, 3), round(north, 3)
+
+
+def everywhere(**values: Any) -> dict[str, dict[str, Any]]:
+    return {r[0]: values for r in BASE}
+
+
+FILES = (
+    Case("plain", text(table())),
+    Case("semicolons and decimal commas", text(table(change=comma), ";")),
+    Case("tabs", text(table(), "\t"), "survey.txt"),
+    Case("bars", text(table(), "|"), "survey.txt"),
+    Case("runs of spaces", "\n".join("   ".join(str(c) for c in r[:6]) for r in table([h.replace(" (%)", "%") for h in HEAD])).encode(), "survey.txt"),
+    Case("byte-order mark", text(table(), encoding="utf-8-sig")),
+    Case("UTF-16", text(table(), "\t", "utf-16"), "survey.txt"),
+    Case("UTF-16 without mark", text(table(), "\t", "utf-16-le"), "survey.txt"),
+    Case("Windows code page with degree signs and micro signs", text(table(["Station", "Latitude °N", "Longitude °E", "Mud <63 µm %", "Sand %", "Gravel %", "Remarks"]), encoding="cp1252"), notes=("cp1252",)),
+    Case("carriage returns", text(table(), newline="\r\n")),
+    Case("line breaks inside quotes", text(table(A2_6="two\nlines")), counts={"rows_read": 7}),
+    Case("a first line that names the delimiter", b"sep=;\n" + text(table(change=comma), ";"), counts={"rows_read": 8, "rows_not_samples": 2}),
+    Case("a workbook", xlsx(table()), "survey.xlsx"),
+    Case("an open-document sheet", ods(table()), "survey.ods"),
+    Case("a workbook under a wrong name", xlsx(table()), "survey.csv"),
+    Case("a text table that claims to be a workbook", text(table(), "\t"), "survey.xls"),
+    Case("a hidden sheet before the data", xlsx({"Old": table(A1_3=99.0), "Data": table()}, hidden_sheets=["Old"]), "survey.xlsx", notes=("not read: Old",)),
+    Case("a cover sheet", xlsx({"Cover": [["Report on grain size"], ["Laboratory", "of the bight"]], "Data": table()}), "survey.xlsx"),
+    Case("a stale sheet dimension", stale_dimension(xlsx(table())), "survey.xlsx"),
+    Case("hidden rows", xlsx(table(), hidden_rows=[3, 4]), "survey.xlsx", notes=("2 hidden rows",)),
+    Case("empty columns", text([[x for c in r for x in (c, "")] for r in table()])),
+    Case("a table that begins at D4", text([[], [], [], *[["", "", "", *r] for r in table()]])),
+    Case("blank rows between", text([*table()[:3], [], ["", "", ""], *table()[3:]])),
+    Case("numbers stored as text", xlsx(table(change=lambda r: [str(c) for c in r])), "survey.xlsx"),
+)  # fmt: skip
+
+TITLES = [["Survey of the bight"], ["Grain size, percent of dry weight"], []]
+TABLES = (
+    Case("title lines", text([*TITLES, *table()]), counts={"rows_read": 9, "rows_not_samples": 3}),
+    Case("a merged header of two lines", xlsx([["Station", "Position", "", "Grain size (%)", "", "", "Remarks"], ["", "Latitude", "Longitude", "Mud", "Sand", "Gravel", ""], *rows()], merged=["B1:C1", "D1:F1", "A1:A2"]), "survey.xlsx", counts={"rows_read": 8, "rows_not_samples": 2}),
+    Case("a header of two lines without merging", text([["Station", "Position", "", "Grain size (%)", "", "", "Remarks"], ["", "Latitude", "Longitude", "Mud", "Sand", "Gravel", ""], *rows()]), counts={"rows_read": 8, "rows_not_samples": 2}),
+    Case("a second header line under one group only", text([["Station", "Latitude", "Longitude", "Grain size", "", "", "Remarks"], ["", "", "", "Mud", "Sand", "Gravel", ""], *rows()]), counts={"rows_read": 8, "rows_not_samples": 2}),
+    Case("a units row", text([["Station", "Latitude", "Longitude", "Mud", "Sand", "Gravel", "Remarks"], ["", "deg N", "deg E", "%", "%", "%", ""], *rows()]), counts={"rows_read": 8, "rows_not_samples": 2}),
+    Case("repeated header lines", text([*table()[:3], HEAD, *table()[3:5], HEAD, *table()[5:]]), counts={"rows_read": 9, "rows_not_samples": 3}),
+    Case("totals and notes below", text([*table(), ["Mean", "", "", 22.0, 67.6, 10.4, ""], [], ["* wet sieved"], ["Analyst: initials"]]), counts={"rows_read": 10, "rows_not_samples": 4}),
+    Case("a total between blocks", text([*table()[:4], ["Total", "", "", 48.0, 239.5, 12.5], *table()[4:]]), counts={"rows_read": 8, "rows_not_samples": 2}),
+    Case("a table of contents above that looks like a header", text([["Sample", "Date", "Depth"], ["see sheet 2"], [], *table()]), block={"header_row": 4}, counts={"rows_read": 9, "rows_not_samples": 3}),
+    Case("two depths, of which the first counts", text([[*HEAD, "Depth (m)", "Depth corrected"], *[[*r, 10.5, 99] for r in rows()]]), changed=everywhere(depth_m=10.5)),
+    Case("headings that only the recipe knows", text([["S", "P", "Q", "F1", "F2", "F3", "Z"], *rows()]), block={"columns": {"id": "S", "latitude": "P", "longitude": "Q", "mud": "F1", "sand": "F2", "gravel": "F3"}}),
+    Case("columns in another order", text([[r[i] for i in (5, 2, 3, 0, 4, 1)] for r in table()])),
+)  # fmt: skip
+
+LANGUAGES = (
+    Case("Spanish", text(table(["Estación", "Latitud", "Longitud", "Fango (%)", "Arena (%)", "Grava (%)", "Observaciones"]))),
+    Case("Portuguese", text(table(["Estação", "Latitude", "Longitude", "Lama (%)", "Areia (%)", "Cascalho (%)", "Observações"]))),
+    Case("French", text(table(["Échantillon", "Latitude", "Longitude", "Vase (%)", "Sable (%)", "Gravier (%)", "Remarques"]))),
+    Case("German", text(table(["Probe", "Breite", "Länge", "Schlick (%)", "Sand (%)", "Kies (%)", "Bemerkungen"]), encoding="cp1252")),
+    Case("Italian", text(table(["Campione", "Latitudine", "Longitudine", "Pelite (%)", "Sabbia (%)", "Ghiaia (%)", "Osservazioni"]))),
+    Case("Dutch", text(table(["Monster", "Breedtegraad", "Lengtegraad", "Slib (%)", "Zand (%)", "Grind (%)", "Opmerkingen"]))),
+)  # fmt: skip
+
+COLUMNS = (
+    Case("silt and clay", text([["Station", "Latitude", "Longitude", "Silt %", "Clay %", "Sand %", "Gravel %"], *[[*r[:3], round(r[3] - 1, 1), 1.0, *r[4:6]] for r in rows()]]), audit=tuple((i + 2, "Silt % + Clay %", f"{round((r[3] - 1) / 100, 5):.7g} + 0.01", f"{r[3] / 100:.7g}") for i, r in enumerate(BASE))),
+    Case("sand in sub-classes beside the sand", text([[*HEAD, "Fine sand %", "Coarse sand %"], *[[*r, 1.0, 2.0] for r in rows()]])),
+    Case("weights beside percents", text([["Station", "Latitude", "Longitude", "Mud (g)", "Mud (%)", "Sand (g)", "Sand (%)", "Gravel (%)"], *[[*r[:3], 9.9, r[3], 8.8, r[4], r[5]] for r in rows()]])),
+    Case("statistics named after parts", text([[*HEAD, "Median of the sand (mm)", "Mud colour", "Sand D50"], *[[*r, 0.2, "grey", 0.2] for r in rows()]])),
+    Case("weights alone", text([["Station", "Latitude", "Longitude", "Mud (g)", "Sand (g)", "Gravel (g)"], *[[*r[:3], *(round(2.5 * v, 3) for v in r[3:6])] for r in rows()]])),
+    Case("size classes", text([["Station", "Latitude", "Longitude", ">2 mm (g)", "0.5-2 mm (g)", "0.063-0.5 mm (g)", "<0.063 mm (g)"], *[[*r[:3], r[5], 10.0 if r[4] > 10 else 0.0, r[4] - 10.0 if r[4] > 10 else r[4], r[3]] for r in rows()]])),
+)  # fmt: skip
+
+LIMIT = {"mud": 0.0065, "sand": 0.945 * 0.9935, "gravel": 0.055 * 0.9935}
+CELLS = (
+    Case("below a limit", text(table(A3_3="<1", A3_5=5.5)), changed={"A3": LIMIT}, audit=((4, "Mud (%)", "<1", "0.0065"), (4, "mud + sand + gravel", "1.0065", "1"))),
+    Case("a trace", text(table(A3_3="trace", A3_5=5.5)), changed={"A3": {"mud": 0.0025, "sand": 0.945 * 0.9975, "gravel": 0.055 * 0.9975}}, audit=((4, "Mud (%)", "trace", "0.0025"), (4, "mud + sand + gravel", "1.0025", "1"))),
+    Case("not determined", text(table(A2_5="nd", A2_4="n.d.")), changed={"A2": {"sand": NAN, "gravel": NAN, "kind": "partial"}}, audit=((3, "Sand (%)", "n.d.", ""), (3, "Gravel (%)", "nd", ""))),
+    Case("a dash", text(table(A2_5="-")), audit=((3, "Gravel (%)", "-", ""), (3, "gravel", "", "0.05"))),
+    Case("a range", text(table(A2_3="25-35")), audit=((3, "Mud (%)", "25-35", "0.3"),)),
+    Case("about", text(table(A2_3="~30", A1_3="c. 12.5")), audit=((2, "Mud (%)", "c. 12.5", "0.125"), (3, "Mud (%)", "~30", "0.3"))),
+    Case("above a limit", text(table(A4_3=">95", A4_4="", A4_5="")), changed={"A4": {"mud": 0.975, "sand": NAN, "gravel": NAN, "kind": "partial"}}, audit=((5, "Mud (%)", ">95", "0.975"),)),
+    Case("percent signs in cells", text(table(["Station", "Latitude", "Longitude", "Mud", "Sand", "Gravel", "Remarks"], change=lambda r: [*r[:3], *(f"{v} %" for v in r[3:6]), r[6]]))),
+    Case("footnote marks", text(table(A2_3="30.0*", A5_5="50 a")), audit=((3, "Mud (%)", "30.0*", "0.3"), (6, "Gravel (%)", "50 a", "0.5"))),
+    Case("codes for missing", text(table(A2_5=-999, A4_5=-99.9)), audit=((3, "Gravel (%)", "-999", ""), (3, "gravel", "", "0.05"), (5, "Gravel (%)", "-99.9", ""), (5, "gravel", "", "0"))),
+    Case("a range that became a date", xlsx(table(A2_3=dt.date(2024, 10, 5))), "survey.xlsx", gone=("A2",), counts={"rows_used": 5, "rows_set_aside": 1, "stations": 5}, aside=("the date 2024-10-05, to which spreadsheets turn entries such as 5-10",)),
+    Case("a blank part of a whole sample", text(table(A2_5="")), audit=((3, "gravel", "", "0.05"),)),
+    Case("a survey in which blank is zero", text(table(A3_5="", A4_5="")), block={"blank_means": "zero"}, audit=((4, "Gravel (%)", "", "0"), (5, "Gravel (%)", "", "0"))),
+    Case("fractions that the spreadsheet shows as percent", xlsx(table(change=lambda r: [*r[:3], *(v / 100 for v in r[3:6]), r[6]]), formats={"D2": "0.0%"}), "survey.xlsx", notes=("headings say percent, the sums of the rows say fractions of 1",)),
+    Case("per mille", text(table(["Station", "Latitude", "Longitude", "Mud", "Sand", "Gravel", "Remarks"], change=lambda r: [*r[:3], *(10 * v for v in r[3:6]), r[6]]))),
+    Case("a decimal comma in text beside numbers", xlsx(table(A2_3="30,0", A5_3="1,5")), "survey.xlsx"),
+    Case("sums that need closing", text(table(A2_3=30.5)), changed={"A2": {"mud": 0.305 / 1.005, "sand": 0.65 / 1.005, "gravel": 0.05 / 1.005}}, audit=((3, "mud + sand + gravel", "1.005", "1"),)),
+    # the spreadsheet library shows an error cell as an empty one
+    Case("a formula's error", xlsx(table(A2_5="#DIV/0!")), "survey.xlsx", audit=((3, "gravel", "", "0.05"),)),
+)  # fmt: skip
+
+TENTH_MM = 2e-9  # degrees: positions typed to a millimetre or a ten-thousandth of a minute
+POSITIONS = (
+    Case("degrees and minutes with letters", text(with_place(["Latitude", "Longitude"], lambda a, o: (f"{dm(a)} N", f"{dm(o)} E"))), atol=TENTH_MM * 500),
+    Case("degrees, minutes and seconds", text(with_place(["Latitude", "Longitude"], lambda a, o: (dms(a, "N"), dms(o, "E")))), atol=3e-6),
+    Case("one column after ISO 6709", text(with_place(["Position"], lambda a, o: (f"+{a:.3f}+{o:07.3f}/",)))),
+    Case("one column of latitude and longitude", text(with_place(["Lat/Long"], lambda a, o: (f"{a}, {o}",)))),
+    Case("columns of degrees, minutes and hemisphere", text(with_place(["Lat deg", "Lat min", "N/S", "Lon deg", "Lon min", "E/W"], lambda a, o: (int(a), round((a % 1) * 60, 5), "N", int(o), round((o % 1) * 60, 5), "E"))), atol=1e-6),
+    Case("metres in a stated system", text(with_place(["Easting", "Northing"], utm)), block={"crs": "EPSG:32631"}, atol=TENTH_MM * 10, notes=("UTM zone 31N",)),
+    Case("metres with signs of thousands", text(with_place(["Easting", "Northing"], lambda a, o: tuple(f"{round(v):,}" for v in utm(a, o)))), block={"crs": "EPSG:32631"}, atol=1e-5),
+    Case("a zone in a column", text(with_place(["Easting", "Northing", "Zone"], lambda a, o: (*utm(a, o), "31N"))), atol=TENTH_MM * 10),
+    Case("metres and degrees side by side", text([[*HEAD, "Easting", "Northing"], *[[*r, 1.0, 2.0] for r in rows()]])),
+    Case("longitudes from 0 to 360", text(with_place(["Latitude", "Longitude"], lambda a, o: (a, 360.0 - o))), changed={r[0]: {"longitude": -r[2]} for r in BASE}),
+    Case("a hemisphere that only the recipe knows", text(table()), block={"hemisphere": "SW"}, changed={r[0]: {"longitude": -r[2], "latitude": -r[1]} for r in BASE}),
+    Case("position zero", text(table(A2_1=0, A2_2=0)), gone=("A2",), counts={"rows_used": 5, "rows_set_aside": 1, "stations": 5}, aside=("position 0, 0, which stands for none",)),
+    Case("seventy minutes", text(table(A2_1="54 71.0 N")), gone=("A2",), counts={"rows_used": 5, "rows_set_aside": 1, "stations": 5}, aside=("minutes of 60 or more",)),
+    Case("a lone O", text(table(A2_2="3 12.0 O")), gone=("A2",), counts={"rows_used": 5, "rows_set_aside": 1, "stations": 5}, aside=("west in some languages and east in others",)),
+    Case("another geographic system", text(table()), block={"crs": "EPSG:4258"}, notes=("ETRS89",), atol=1e-8),
+    Case("plain X and Y of a stated system", text(with_place(["X", "Y"], utm)), block={"crs": "EPSG:32631"}, atol=TENTH_MM * 10),
+)  # fmt: skip
+
+FATES = (
+    Case("a sum of 137 percent", text(table(A2_5=42.0)), gone=("A2",), counts={"rows_used": 5, "rows_set_aside": 1, "stations": 5}, aside=("parts sum to 1.37, expected 1 ± 0.02",)),
+    Case("no recovery", text([*table(), ["A7", 54.2, 3.3, "", "", "", "no recovery, rock"], ["A8", 54.2, 3.3, "", "", "", "grab failed twice"]]), changed={"A7": {"kind": "hard_ground", "longitude": 3.3, "latitude": 54.2, "mud": NAN, "sand": NAN, "gravel": NAN}, "A8": {"kind": "hard_ground", "longitude": 3.3, "latitude": 54.2, "mud": NAN, "sand": NAN, "gravel": NAN}}, counts={"rows_read": 9, "rows_evidence": 2}),
+    Case("hard ground noted in a column of shares", text([*table(), ["A7", 54.2, 3.3, "rock", "", "", ""]]), changed={"A7": {"kind": "hard_ground", "longitude": 3.3, "latitude": 54.2, "mud": NAN, "sand": NAN, "gravel": NAN}}, counts={"rows_read": 8, "rows_evidence": 1}),
+    Case("stiff clay and a lost jar", text([*table(), ["A7", 54.2, 3.3, "", "", "", "stiff clay"], ["A8", 54.3, 3.3, "", "", "", "jar lost"]]), counts={"rows_read": 9, "rows_set_aside": 2}, aside=("old, firm ground", "no share of mud, sand or gravel")),
+    Case("words where nothing was measured", text([*table(), ["A7", 54.2, 3.3, "", "", "", "muddy sand"]]), changed={"A7": {"kind": "description", "described_class": "mS", "longitude": 3.3, "latitude": 54.2, "mud": NAN, "sand": NAN, "gravel": NAN}}, counts={"rows_read": 8, "rows_used": 7, "stations": 7}, audit=((8, "Remarks", "muddy sand", "mS"),)),
+    Case("three grabs at one place", text([*table(), ["A1b", 54.101, 3.201, 22.5, 70.0, 7.5, ""], ["A1c", 54.101, 3.201, 17.5, 75.0, 7.5, ""]]), changed={"A1": {"mud": 0.175, "sand": 0.75, "repeats": 3, "repeat_sd_mud": 0.05}}, counts={"rows_read": 9, "rows_merged": 2}),
+    Case("mud alone", text(table(A2_4="", A2_5="")), changed={"A2": {"sand": NAN, "gravel": NAN, "kind": "partial"}}),
+    Case("sand alone", text(table(A2_3="", A2_5="")), changed={"A2": {"mud": NAN, "gravel": NAN, "kind": "partial"}}),
+    Case("a laboratory that saw what passed 2 mm", text([r[:5] for r in table(change=lambda r: [*r[:3], r[3], round(100 - r[3], 1), *r[5:]])]), block={"basis": "below_2mm"}, changed={r[0]: {"sand": 1 - r[3] / 100, "gravel": NAN, "kind": "partial"} for r in BASE}),
+    Case("slices of a core", text([[*HEAD, "Sample interval"], *[[*r, "0-2 cm"] for r in rows()], ["A7", 54.2, 3.3, 50, 50, 0, "", "20-22cm"]]), counts={"rows_read": 8, "rows_set_aside": 1}, aside=("begins 0.2 m below the surface of the bed",)),
+    Case("shares without a place", text([*table(), ["A7", "", "", 50, 50, 0, ""]]), counts={"rows_read": 8, "rows_set_aside": 1}, aside=("no position",)),
+    Case("one id at two places", text([*table(), ["A1", 54.3, 3.4, 12.5, 80.0, 7.5, ""]]), counts={"rows_read": 8, "rows_used": 7, "stations": 7}),
+    Case("a negative share", text(table(A2_5=-5.0, A2_4=75.0)), gone=("A2",), counts={"rows_used": 5, "rows_set_aside": 1, "stations": 5}, aside=("a negative share",)),
+    Case("mud that is not its silt and clay", text([[*HEAD, "Silt %", "Clay %"], *[[*r, r[3] - 1.0, 1.0] for r in rows(A2_3=30.0)][:1], *[[*r, r[3] + 9.0, 1.0] for r in rows()[1:2]], *[[*r, r[3] - 1.0, 1.0] for r in rows()[2:]]]), gone=("A2",), counts={"rows_used": 5, "rows_set_aside": 1, "stations": 5}, aside=("mud 0.3 is not silt + clay 0.4",)),
+)  # fmt: skip
+
+DATES = (
+    Case("day before month", text([[*HEAD, "Date"], *[[*r, f"{d}/05/1987"] for r, d in zip(rows(), range(11, 17), strict=True)]]), changed={f"A{k + 1}": {"date": f"1987-05-{11 + k}"} for k in range(6)}),
+    Case("month before day", text([[*HEAD, "Date"], *[[*r, f"5/{d}/87"] for r, d in zip(rows(), range(11, 17), strict=True)]]), changed={f"A{k + 1}": {"date": f"1987-05-{11 + k}"} for k in range(6)}),
+    Case("an order that nothing tells", text([[*HEAD, "Date"], *[[*r, "05/06/1987"] for r in rows()]]), changed=everywhere(date=""), notes=("the order of day and month cannot be told",)),
+    Case("months in words", text([[*HEAD, "Date"], *[[*r, d] for r, d in zip(rows(), ["5 May 1987", "6. Mai 1987", "7 mayo 1987", "8-MAY-87", "May 9, 1987", "10 mai 1987"], strict=True)]]), changed={f"A{k + 1}": {"date": f"1987-05-{5 + k:02d}"} for k in range(6)}),
+    # the 1900 date system: serial 36526 is 2000-01-01 (general knowledge of the format, checked with openpyxl)
+    Case("dates of a workbook", xlsx([[*HEAD, "Date"], *[[*r, dt.datetime(2000, 1, 1 + k)] for k, r in enumerate(rows())]]), "survey.xlsx", changed={f"A{k + 1}": {"date": f"2000-01-0{1 + k}"} for k in range(6)}),
+)  # fmt: skip
+
+TOGETHER = (
+    Case(
+        "everything at once",
+        xlsx(
+            [
+                ["Bight survey", "", "", "", "", "", "", ""],
+                [],
+                ["Estación", "Posición", "", "Granulometría", "", "", "", "Observaciones"],
+                ["", "Latitud", "Longitud", "Fango", "Arena", "Grava", "Profundidad", ""],
+                ["", "", "", "%", "%", "%", "m", ""],
+                *[[r[0], f"{dm(r[1])} N", f"{dm(r[2])} E", *(str(v).replace(".", ",") for v in r[3:6]), -12, ""] for r in BASE],
+                ["A7", "54 12 N", "3 18 E", "", "", "", -3, "roca"],
+                ["Media", "", "", "22", "67,6", "10,4", "", ""],
+                ["* muestras húmedas"],
+            ],
+            merged=["B3:C3", "D3:F3", "A1:H1"],
+        ),
+        "survey.xlsx",
+        changed={**everywhere(depth_m=12.0), "A7": {"kind": "hard_ground", "longitude": 3.3, "latitude": 54.2, "mud": NAN, "sand": NAN, "gravel": NAN}},
+        counts={"rows_read": 13, "rows_evidence": 1, "rows_not_samples": 6},
+        notes=("heights turned to depths",),
+        atol=1e-6,
+    ),
+)  # fmt: skip
+
+CASES = (*FILES, *TABLES, *LANGUAGES, *COLUMNS, *CELLS, *POSITIONS, *FATES, *DATES, *TOGETHER)
