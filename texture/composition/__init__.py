@@ -1,5 +1,6 @@
 """Fractions and log-ratio coordinates, size curves, texture classes and words for them."""
 
+from texture.composition.censoring import censored_site, censoring_bounds
 from texture.composition.classes import (
     ClassOdds,
     Scheme,
@@ -21,8 +22,10 @@ from texture.composition.closure import (
 )
 from texture.composition.cumulative import parts_from_weights
 from texture.composition.curves import SizeCurve
+from texture.composition.inexact import from_intervals, from_median, from_mud_and_sand
 from texture.composition.logratio import LogRatio
 from texture.composition.partition import Partition, default_tree
+from texture.composition.presence import presence_expected, presence_forward
 from texture.composition.sizes import grade, m_from_phi, phi_from_m
 from texture.composition.statistics import FolkWard, Moments
 from texture.composition.words import Described, class_moments, read_words
@@ -37,6 +40,8 @@ __all__ = [
     "Partition",
     "Scheme",
     "SizeCurve",
+    "censored_site",
+    "censoring_bounds",
     "centre",
     "class_moments",
     "class_numbers",
@@ -47,12 +52,17 @@ __all__ = [
     "default_tree",
     "distance",
     "find_scheme",
+    "from_intervals",
+    "from_median",
+    "from_mud_and_sand",
     "grade",
     "m_from_phi",
     "parts_from_weights",
     "perturb",
     "phi_from_m",
     "power",
+    "presence_expected",
+    "presence_forward",
     "read_words",
     "replace",
     "scheme_names",

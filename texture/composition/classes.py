@@ -73,7 +73,7 @@ class Scheme:
 
     @classmethod
     def from_table(cls, table: Mapping[str, Any]) -> "Scheme":
-        """Build a scheme from a parsed table (see the files in ``texture/composition/tables`` for the form).
+        """Build a scheme from a parsed table (see the files in ``texture/composition/tables/classes`` for the form).
 
         Raises
         ------
@@ -207,7 +207,7 @@ class ClassOdds(NamedTuple):
 
 def scheme_names() -> tuple[str, ...]:
     """Names of the schemes that are shipped."""
-    folder = resources.files("texture.composition") / "tables"
+    folder = resources.files("texture.composition") / "tables" / "classes"
     return tuple(sorted(f.name.removesuffix(".toml") for f in folder.iterdir() if f.name.endswith(".toml")))
 
 
@@ -216,7 +216,7 @@ def find_scheme(name: str) -> Scheme:
     """A shipped scheme by name: folk, folk_7, folk_5, folk_ssc, shepard."""
     if name not in scheme_names():
         raise CompositionError(f"scheme = {name!r}, expected one of {', '.join(scheme_names())}, or a Scheme")
-    text = (resources.files("texture.composition") / "tables" / f"{name}.toml").read_text(encoding="utf-8")
+    text = (resources.files("texture.composition") / "tables" / "classes" / f"{name}.toml").read_text(encoding="utf-8")
     return Scheme.from_table(tomllib.loads(text))
 
 

@@ -216,6 +216,21 @@ class LogRatio:
         out = (*shape, self.n_coordinates)
         return coords.reshape(out), noise.reshape(out)
 
+    def side_totals(self, fractions: npt.ArrayLike) -> list[tuple[Array, Array]]:
+        """Sums of both sides of each split in fractions of the whole, before any replacement; NaN where unknown.
+
+        Parameters
+        ----------
+        fractions : array-like, shape (n, D)
+            As for `forward`.
+
+        Returns
+        -------
+        sides : list of (numerator, denominator), each of shape (n,)
+        """
+        rows, _ = self._rows(fractions)
+        return [(_total(rows, s.numerator), _total(rows, s.denominator)) for s in self.splits]
+
     def inverse(self, coords: npt.ArrayLike) -> Array:
         """Fractions of coordinates; rows sum to 1.
 
@@ -337,9 +352,8 @@ class LogRatio:
     def _sides(self, rows: Array) -> list[tuple[Array, Array]]:
         """Both sides of every split, after replacement; NaN where unknown."""
         if self.amalgamates:
-            pairs = [(_total(rows, s.numerator), _total(rows, s.denominator)) for s in self.splits]
             limit = 0.0 if self.kind == "shares" else self.detection_limit
-            pairs = [replace_pair(top, bottom, limit) for top, bottom in pairs]
+            pairs = [replace_pair(_total(rows, s.numerator), _total(rows, s.denominator), limit) for s in self.splits]
         else:
             replaced = replace(rows, self.detection_limit)
             pairs = []

@@ -1,7 +1,8 @@
-"""Zeros and parts below a detection limit.
+"""Zeros and parts below a detection limit: replaced in place.
 
 A logarithm has no zero. The plain treatment is multiplicative replacement: a part below the limit becomes
-0.65 × limit, and the others give way in proportion, so that their ratios stay (Martín-Fernández et al. 2003).
+0.65 × limit, and the others give way in proportion, so that their ratios stay (Martín-Fernández et al. 2003). Other
+treatments: `texture.composition.censoring`, `texture.composition.presence`, and the coordinates of kind ``shares``.
 
 References
 ----------
