@@ -15,7 +15,9 @@ if TYPE_CHECKING:
 
 ROOT = Path(__file__).resolve().parents[1]
 DEMO = ROOT / "demo_samples" / "kestrel_bight"
-NOT_SHIPPED = "not beside this repository"  # reference data that the project may read but not carry: the one skip allowed in CI
+NOT_SHIPPED = (
+    "not beside this repository"  # reference data that the project may read but not carry: the one skip allowed in CI
+)
 
 
 @pytest.fixture(scope="session")
@@ -38,6 +40,30 @@ def plain(demo_recipe: Path, tmp_path_factory: pytest.TempPathFactory) -> Result
     del settings["outputs"]["names"]
     (folder / "recipe.toml").write_text(tomli_w.dumps(settings))
     return build(folder / "recipe.toml", output=folder / "out")
+
+
+@pytest.fixture
+def small(tmp_path: Path) -> Path:
+    """A recipe of thirty stations on a small raster."""
+    import numpy as np
+    import tomli_w
+
+    rng = np.random.default_rng(5)
+    x, y = rng.uniform(500_500, 509_500, 30), rng.uniform(4_900_500, 4_905_500, 30)
+    mud = 1 / (1 + np.exp(-(x - 505_000) / 2000 + rng.normal(0, 0.3, 30)))
+    gravel = (1 - mud) * rng.uniform(0.02, 0.3, 30)
+    rows = [f"S{i},{x[i]:.0f},{y[i]:.0f},{mud[i]:.4f},{1 - mud[i] - gravel[i]:.4f},{gravel[i]:.4f}" for i in range(30)]
+    (tmp_path / "grabs.csv").write_text("id,easting,northing,mud,sand,gravel\n" + "\n".join(rows) + "\n")
+    recipe = {
+        "title": "Small",
+        "samples": [{"file": "grabs.csv", "crs": "EPSG:32626"}],
+        "target": {"bounds": [500_000.0, 4_900_000.0, 510_000.0, 4_906_000.0], "cell_size": 500.0, "crs": "EPSG:32626"},
+        "validation": {"count": 4},
+        "rim": {"width_cells": 2, "sides": ["south"], "classes": {"sand": 1.0}},
+    }
+    path = tmp_path / "recipe.toml"
+    path.write_text(tomli_w.dumps(recipe))
+    return path
 
 
 @pytest.fixture

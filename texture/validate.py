@@ -72,7 +72,7 @@ def validate_methods(
         recipe.validation.count,
         recipe.seed,
         targets=_map_points(target, plane, recipe.seed),
-        block_m=max(c.range_m for c in structure) or None,
+        block_m=_block_m(observations.points, structure, recipe.validation.count),
     )
     structures: dict[bytes, CovarianceSet] = {}
 
@@ -107,6 +107,14 @@ def validate_methods(
             for name in names
         ]
     return Validation(folds, methods, validated_reach_m(folds.held_out_distances(observations.points)))
+
+
+def _block_m(points: Floats, structure: CovarianceSet, count: int) -> float:
+    """Side of a block: the longest fitted range, but small enough for two blocks a fold."""
+    extent = np.ptp(points[:, :2], axis=0)
+    most = float(np.sqrt(extent[0] * extent[1] / (2.0 * count))) or float(extent.max()) / (2.0 * count)
+    longest = max(c.range_m for c in structure)
+    return min(longest, most) if longest > 0.0 else most
 
 
 def _map_points(target: Target, plane: Plane, seed: int) -> Floats:

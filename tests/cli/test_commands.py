@@ -19,29 +19,6 @@ def texture(*arguments, **environment):
     )  # fmt: skip
 
 
-@pytest.fixture
-def small(tmp_path):
-    """A recipe of thirty stations on a small raster."""
-    import numpy as np
-
-    rng = np.random.default_rng(5)
-    x, y = rng.uniform(500_500, 509_500, 30), rng.uniform(4_900_500, 4_905_500, 30)
-    mud = 1 / (1 + np.exp(-(x - 505_000) / 2000 + rng.normal(0, 0.3, 30)))
-    gravel = (1 - mud) * rng.uniform(0.02, 0.3, 30)
-    rows = [f"S{i},{x[i]:.0f},{y[i]:.0f},{mud[i]:.4f},{1 - mud[i] - gravel[i]:.4f},{gravel[i]:.4f}" for i in range(30)]
-    (tmp_path / "grabs.csv").write_text("id,easting,northing,mud,sand,gravel\n" + "\n".join(rows) + "\n")
-    recipe = {
-        "title": "Small",
-        "samples": [{"file": "grabs.csv", "crs": "EPSG:32626"}],
-        "target": {"bounds": [500_000.0, 4_900_000.0, 510_000.0, 4_906_000.0], "cell_size": 500.0, "crs": "EPSG:32626"},
-        "validation": {"count": 4},
-        "rim": {"width_cells": 2, "sides": ["south"], "classes": {"sand": 1.0}},
-    }
-    path = tmp_path / "recipe.toml"
-    path.write_text(tomli_w.dumps(recipe))
-    return path
-
-
 def test_intake_accounts_for_rows_and_prints_one_object(small):
     done = texture("intake", small, "--json")
     assert done.returncode == DONE, done.stderr

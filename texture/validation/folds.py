@@ -34,7 +34,7 @@ class Folds:
         Wasserstein-1 distance in metres between the distances held-out → kept stations and the distances
         map → stations, for these folds and for random ones; NaN where no map was given.
     note : str
-        What was changed from what was asked, empty if nothing.
+        Size of the blocks, and what was changed from what was asked; empty if there is nothing to say.
     """
 
     labels: Ints
@@ -124,9 +124,9 @@ def make_folds(
     if places < 2:
         raise StructureError(f"stations stand at {places} place; expected at least 2 to hold some out")
     rng = np.random.default_rng(seed)
-    note = ""
+    note = f"blocks of {block_m:,.0f} m" if kind == "blocks" and block_m else ""
     if kind != "each" and places < count:
-        note = f"{count} folds were asked, but stations stand at {places} places: {places} folds"
+        note = _also(note, f"{count} folds were asked, but stations stand at {places} places: {places} folds")
         count = places
     random = _deal(places, count, rng)[place]
     if kind == "each":
@@ -160,6 +160,10 @@ def _matched(points: Floats, targets: Floats, place: Ints, count: int, random: I
     return Folds(labels, "matched", statistic, by_chance, note)
 
 
+def _also(note: str, more: str) -> str:
+    return f"{note}; {more}" if note else more
+
+
 def _places(points: Floats) -> Ints:
     """Number the places; stations within half a metre of a lattice of a metre are at one place."""
     _, place = np.unique(np.round(points), axis=0, return_inverse=True)
@@ -182,7 +186,7 @@ def _blocks(points: Floats, block_m: float, count: int, rng: np.random.Generator
     if sizes.size < 2:
         raise StructureError(f"one block of {block_m:g} m holds all stations; choose a smaller block size")
     if sizes.size < count:
-        note = f"{count} folds were asked, but there are {sizes.size} blocks of {block_m:g} m: {sizes.size} folds"
+        note = _also(note, f"{count} folds were asked, but there are {sizes.size} blocks: {sizes.size} folds")
         count = sizes.size
     order = rng.permutation(sizes.size)
     order = order[np.argsort(-sizes[order], kind="stable")]
