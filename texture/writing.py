@@ -51,8 +51,10 @@ def write_all(result: Result, folder: ResultFolder, recipe_path: Path) -> Result
         _write_scores(found, aside)
         _write_grids(result, aside)
         (aside / "recipe_resolved.toml").write_text(settings, encoding="utf-8")
-        (aside / "report.html").write_text(write_page(result, settings, versions_line(result)), encoding="utf-8")
-        (aside / "map.png").write_bytes(result_picture(result).content)
+        picture = result_picture(result)
+        (aside / "map.png").write_bytes(picture.content)
+        page = write_page(result, picture, settings, versions_line(result))
+        (aside / "report.html").write_text(page, encoding="utf-8")
         made = sorted(p for p in aside.rglob("*") if p.is_file())
         record = provenance(
             [recipe_path.absolute(), *input_files(recipe)],

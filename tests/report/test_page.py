@@ -5,7 +5,7 @@ from dataclasses import replace
 
 import pytest
 
-from texture.report import CAUTIONS, versions_line, write_page
+from texture.report import CAUTIONS, result_picture, versions_line, write_page
 
 pytestmark = pytest.mark.slow
 
@@ -36,7 +36,8 @@ def test_page_says_what_matters(page, plain):
 
 def test_hostile_text_is_shown_as_text(plain):
     recipe = plain.found.recipe.model_copy(update={"title": HOSTILE})
-    page = write_page(replace(plain, found=replace(plain.found, recipe=recipe)), HOSTILE, versions_line(plain))
+    hostile = replace(plain, found=replace(plain.found, recipe=recipe))
+    page = write_page(hostile, result_picture(plain), HOSTILE, versions_line(plain))
     assert "<script>" not in page
     assert page.count("&lt;script&gt;") >= 3  # title, heading, settings
 

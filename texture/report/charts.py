@@ -1,4 +1,4 @@
-"""Charts of the fit and of the error: variograms, held-out scatter, errors of the methods."""
+"""Charts of the fit and of the error: variograms and held-out scatter."""
 
 from __future__ import annotations
 
@@ -14,7 +14,7 @@ if TYPE_CHECKING:
 
     from texture.validation.cross_validate import HeldOut
 
-__all__ = ["draw_methods", "draw_scatter", "draw_variograms"]
+__all__ = ["draw_scatter", "draw_variograms"]
 
 Floats = NDArray[np.float64]
 
@@ -30,23 +30,6 @@ def draw_scatter(parts: tuple[str, ...], observed: Floats, held_out: HeldOut) ->
             axis.set_title(f"{part}: RMSE {rmse:.3f}, R² {r2:.2f}")
             axis.set(xlim=(-0.02, 1.02), ylim=(-0.02, 1.02), aspect="equal", xlabel="held-out prediction")
         figure.axes[0].set_ylabel("measured fraction")
-    return figure
-
-
-def draw_methods(parts: tuple[str, ...], methods: list[HeldOut], chosen: str) -> Figure:
-    """Draw the root mean square error of each method and part."""
-    with styled():
-        figure = new_figure(7.0, 0.34 * len(methods) * len(parts) ** 0.5 + 1.0)
-        for axis, part in zip(figure.subplots(1, len(parts), sharey=True), parts, strict=True):
-            rmse = [m.score(part, "rmse") for m in methods]
-            colours = [STRONG if m.method == chosen else QUIET for m in methods]
-            axis.barh([m.method.replace("_", " ") for m in methods], rmse, color=colours, height=0.6)
-            for y, value in enumerate(rmse):
-                axis.text(value, y, f" {value:.3f}", va="center", ha="left")
-            axis.set_xlim(0, max(rmse) * 1.25)
-            axis.set_title(part)
-            axis.set_xlabel("held-out RMSE, fraction")
-        figure.axes[0].invert_yaxis()
     return figure
 
 

@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from texture.report.charts import draw_methods, draw_scatter, draw_variograms
+from texture.report.charts import draw_scatter, draw_variograms
 from texture.report.encode import Picture, picture
 from texture.report.maps import EVIDENCE_COLOURS, Layer, draw_maps
 from texture.report.tables import page_tables
@@ -27,12 +27,14 @@ CAUTIONS = (
 )
 
 
-def write_page(result: Result, settings: str, versions: str) -> str:
+def write_page(result: Result, map_picture: Picture, settings: str, versions: str) -> str:
     """Return the page as HTML text; every value that came from outside is escaped.
 
     Parameters
     ----------
     result : Result
+    map_picture : Picture
+        As `result_picture` draws it.
     settings : str
         The resolved recipe, shown as it is.
     versions : str
@@ -47,7 +49,7 @@ def write_page(result: Result, settings: str, versions: str) -> str:
         title=found.recipe.title,
         method_line=_method_line(result),
         answer=result.answer(),
-        figures=_figures(result),
+        figures={"parts": map_picture, **_figures(result)},
         tables=page_tables(result),
         map_notes=_map_notes(result),
         folds_line=_folds_line(result),
@@ -73,26 +75,15 @@ def versions_line(result: Result) -> str:
     return f"Seabed Texture {__version__}; {packages}. {seconds}."
 
 
-def result_picture(result: Result) -> Picture:
-    """Draw the picture of the map alone, for a README or a slide."""
-    return _parts_picture(result)
-
-
 def _figures(result: Result) -> dict[str, Picture]:
     found, parts = result.found, result.found.recipe.composition.parts
     figures = {
-        "parts": _parts_picture(result),
         "trust": _trust_picture(result),
         "bed": _bed_picture(result),
         "scatter": picture(
             draw_scatter(parts, found.observations.fractions, found.validation.chosen),
             "Each dot is a station, measured against what was predicted while it was held out.",
             "Scatter of measured against held-out fractions, one panel for each part.",
-        ),
-        "methods": picture(
-            draw_methods(parts, found.validation.methods, found.recipe.method.name),
-            "Held-out root mean square error of the methods.",
-            "Bars of held-out error for each method and part.",
         ),
         "variograms": picture(
             draw_variograms(found.mapper.structure, found.mapper.logratio.coordinate_names),
@@ -103,7 +94,8 @@ def _figures(result: Result) -> dict[str, Picture]:
     return figures
 
 
-def _parts_picture(result: Result) -> Picture:
+def result_picture(result: Result) -> Picture:
+    """Draw the map itself: the parts and the most probable class, for the page, a README or a slide."""
     found, estimate = result.found, result.estimate
     table = found.stations.table
     place = table["longitude"].to_numpy(), table["latitude"].to_numpy()

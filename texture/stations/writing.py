@@ -11,7 +11,7 @@ from texture.stations.account import Stations
 if TYPE_CHECKING:
     import pandas as pd
 
-__all__ = ["safe_cell", "write_tables"]
+__all__ = ["safe_cell", "safe_table", "write_tables"]
 
 _STARTS_A_FORMULA = ("=", "+", "-", "@", "\t", "\r", "\n", "|", "%")
 
@@ -54,18 +54,24 @@ def write_tables(stations: Stations, folder: str | Path) -> list[Path]:
 
     folder = Path(folder)
     paths = [folder / "stations.csv", folder / "stations.gpkg", folder / "audit.csv"]
-    table = _safe(stations.table)
+    table = safe_table(stations.table)
     try:
         table.drop(columns="geometry").to_csv(paths[0], index=False, encoding="utf-8", lineterminator="\n")
         paths[1].unlink(missing_ok=True)
-        pyogrio.write_dataframe(table, paths[1], layer="stations", driver="GPKG")
-        _safe(stations.audit).to_csv(paths[2], index=False, encoding="utf-8", lineterminator="\n")
+        # A GeoPackage holds its own date; a fixed one keeps the bytes the same for the same stations.
+        pyogrio.set_gdal_config_options({"OGR_CURRENT_DATE": "2000-01-01T00:00:00.000Z"})
+        try:
+            pyogrio.write_dataframe(table, paths[1], layer="stations", driver="GPKG")
+        finally:
+            pyogrio.set_gdal_config_options({"OGR_CURRENT_DATE": None})
+        safe_table(stations.audit).to_csv(paths[2], index=False, encoding="utf-8", lineterminator="\n")
     except (OSError, RuntimeError) as error:
         raise OutputError(f"{folder}: the station tables cannot be written ({error})") from error
     return paths
 
 
-def _safe(table: pd.DataFrame) -> pd.DataFrame:
+def safe_table(table: pd.DataFrame) -> pd.DataFrame:
+    """Return the table with every text made safe by `safe_cell`."""
     from pandas.api.types import is_object_dtype, is_string_dtype
 
     texts = [c for c in table if c != "geometry" and (is_object_dtype(table[c]) or is_string_dtype(table[c]))]
