@@ -1,15 +1,7 @@
 """Fractions and log-ratio coordinates, size curves, texture classes and words for them."""
 
 from texture.composition.censoring import censored_site, censoring_bounds
-from texture.composition.classes import (
-    ClassOdds,
-    Scheme,
-    class_numbers,
-    class_odds,
-    classify,
-    find_scheme,
-    scheme_names,
-)
+from texture.composition.classes import ClassOdds, class_numbers, class_odds, classify
 from texture.composition.closure import (
     centre,
     close,
@@ -26,6 +18,7 @@ from texture.composition.inexact import from_intervals, from_median, from_mud_an
 from texture.composition.logratio import LogRatio
 from texture.composition.partition import Partition, default_tree
 from texture.composition.presence import presence_expected, presence_forward
+from texture.composition.schemes import Scheme, find_scheme, scheme_names
 from texture.composition.sizes import grade, m_from_phi, phi_from_m
 from texture.composition.statistics import FolkWard, Moments
 from texture.composition.words import Described, class_moments, read_words

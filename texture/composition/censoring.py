@@ -64,21 +64,35 @@ def censoring_bounds(logratio: LogRatio, fractions: npt.ArrayLike) -> tuple[Arra
 def truncated_moments(
     mean: npt.ArrayLike, variance: npt.ArrayLike, low: npt.ArrayLike, high: npt.ArrayLike
 ) -> tuple[Array, Array]:
-    """Mean and variance of a normal that is known to lie between two bounds.
+    """Mean and variance of a normal that is known to lie below, or above, a bound; arrays broadcast.
 
-    One-sided bounds far in the tail are computed without loss of digits; arrays broadcast.
+    Parameters
+    ----------
+    mean, variance : array-like
+    low, high : array-like
+        One of each pair is infinite.
+
+    Raises
+    ------
+    CompositionError
+        For variances that are not above zero, or two finite bounds.
     """
-    m, v = np.asarray(mean, dtype=np.float64), np.asarray(variance, dtype=np.float64)
-    lo, hi = np.asarray(low, dtype=np.float64), np.asarray(high, dtype=np.float64)
-    if (v <= 0).any() or (lo > hi).any():
-        raise CompositionError("truncated normal: expected variances above zero and bounds in order")
-    sd = np.sqrt(v)
-    # SciPy's truncnorm works in logarithms, so that far tails keep their digits.
-    from scipy.stats import truncnorm
+    # SciPy's special functions: only where zeros are censored.
+    from scipy.special import log_ndtr
 
-    a, b = np.broadcast_arrays((lo - m) / sd, (hi - m) / sd)
-    first, second = truncnorm.stats(a, b, moments="mv")
-    return np.asarray(m + sd * first), np.asarray(v * second)
+    m, v, lo, hi = np.broadcast_arrays(*(np.asarray(x, dtype=np.float64) for x in (mean, variance, low, high)))
+    below, above = np.isneginf(lo) & np.isfinite(hi), np.isposinf(hi) & np.isfinite(lo)
+    if (v <= 0).any() or not (below | above).all():
+        raise CompositionError("truncated normal: expected variances above zero, and one bound finite, one infinite")
+    sd = np.sqrt(v)
+    # Turned so that the normal lies below the bound, z standard deviations from its mean.
+    side = np.where(below, 1.0, -1.0)
+    z = side * (np.where(below, hi, lo) - m) / sd
+    # Density over probability, in logarithms: both vanish in the tail, their ratio does not.
+    ratio = np.exp(-0.5 * z * z - 0.5 * np.log(2 * np.pi) - log_ndtr(z))
+    # Far in the tail 1 - z r - r² loses its digits; there it is 1 / z² to better than 1 in 1000.
+    shrink = np.where(z < -100.0, 1.0 / np.maximum(z * z, 1.0), 1.0 - z * ratio - ratio * ratio)
+    return m - side * sd * ratio, v * shrink
 
 
 def censored_site(

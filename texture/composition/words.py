@@ -19,9 +19,10 @@ from typing import Any
 import numpy as np
 import numpy.typing as npt
 
-from texture.composition.classes import classify, find_scheme
+from texture.composition.classes import classify
 from texture.composition.closure import Array
 from texture.composition.logratio import LogRatio
+from texture.composition.schemes import find_scheme
 from texture.errors import CompositionError
 
 __all__ = ["DESCRIBER_VARIANCE", "Described", "class_moments", "languages", "read_words"]
