@@ -92,7 +92,7 @@ def test_a_missing_projection_is_told_by_the_other_files(files, tmp_path):
     import pyproj
 
     to_metres = pyproj.Transformer.from_crs(4326, 32631, always_xy=True)
-    metres = [[r[0], *(round(v, 1) for v in to_metres.transform(r[2], r[1])), *r[3:6]] for r in ROWS]
+    metres = [[r[0], *(round(v, 1) for v in to_metres.transform(r[2], r[1] + 0.01)), *r[3:6]] for r in ROWS]
     head = ["Station", "Easting", "Northing", *HEADER[3:6]]
     alone = files(metres=[head, *metres])
     with pytest.raises(SampleError, match="easting and northing without a coordinate system"):

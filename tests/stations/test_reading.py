@@ -196,3 +196,35 @@ def test_no_row_is_ever_lost(read, extra):
     whole = stations.samples[["mud", "sand", "gravel"]].dropna().to_numpy()
     np.testing.assert_allclose(whole.sum(axis=1), 1.0, atol=1e-12)
     assert (whole >= 0).all()
+
+
+def test_the_same_survey_in_two_spreadsheets_is_counted_once(tmp_path):
+    (tmp_path / "a.csv").write_text(as_csv(GOOD))
+    renamed = [[f"Lab{i}", *r[1:]] for i, r in enumerate(ROWS)]
+    (tmp_path / "b.csv").write_text(as_csv([HEADER, *renamed, ["New", 54.5, 3.5, 10, 90, 0, ""]]))
+    stations = read_samples(recipe_for({"file": tmp_path / "a.csv"}, {"file": tmp_path / "b.csv"}))
+    assert stations.counts["rows_merged"] == 6
+    assert stations.table["repeats"].tolist() == [1] * 7
+    assert (
+        stations.ledger.loc[stations.ledger["fate"] == "merged", "reason"].iloc[0]
+        == "the same sample as row 2 of a.csv"
+    )
+    assert 'surveys "a" and "b" share 6 samples of the same place and fractions: counted once' in stations.notes
+
+
+def test_a_few_samples_that_agree_by_chance_are_kept(tmp_path):
+    (tmp_path / "a.csv").write_text(as_csv(GOOD))
+    other = [[r[0], r[1] + 1, *r[2:]] for r in ROWS]
+    (tmp_path / "b.csv").write_text(as_csv([HEADER, *other, *ROWS[:3]]))
+    stations = read_samples(recipe_for({"file": tmp_path / "a.csv"}, {"file": tmp_path / "b.csv"}))
+    assert (stations.counts["rows_merged"], stations.counts["stations"]) == (0, 15)
+
+
+def test_two_files_of_one_name_are_told_apart_by_their_folders(tmp_path):
+    for folder, shift in (("north", 1.0), ("south", 0.0)):
+        (tmp_path / folder).mkdir()
+        (tmp_path / folder / "grabs.csv").write_text(as_csv([HEADER, *[[r[0], r[1] + shift, *r[2:]] for r in ROWS]]))
+    stations = read_samples(
+        recipe_for(*({"file": tmp_path / f / "grabs.csv", "survey": f} for f in ("north", "south")))
+    )
+    assert stations.accounts["file"].tolist() == ["north/grabs.csv", "south/grabs.csv"]

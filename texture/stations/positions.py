@@ -18,6 +18,7 @@ from texture.stations.where import Where, shown
 __all__ = ["Positions", "from_metres", "from_zones", "is_projected", "read_degrees"]
 
 FloatArray = npt.NDArray[np.float64]
+_PLAIN = re.compile(r"\s*[+\-−]?\d{1,3}(?:[.,]\d*)?\s*|\s*-?\d{4,}(?:[.,]\d*)?\s*")
 METRES_PER_DEGREE = 111_195.0  # along a great circle of the mean earth radius; accuracy needs no more
 
 
@@ -74,8 +75,10 @@ def read_degrees(
     lon, lon_half, lon_problem = _angles(longitude, "longitude", where[0], rows)
     lat, lat_half, lat_problem = _angles(latitude, "latitude", where[1], rows)
     accuracy = _accuracy_m(lon_half, lat_half, lat)
-    lon = np.where(_bare(longitude) & ("W" in hemisphere), -lon, lon)
-    lat = np.where(_bare(latitude) & ("S" in hemisphere), -lat, lat)
+    if "W" in hemisphere:
+        lon = np.where(_bare(longitude), -lon, lon)
+    if "S" in hemisphere:
+        lat = np.where(_bare(latitude), -lat, lat)
     problem = np.where(lat_problem != "", lat_problem, lon_problem)
     notes: tuple[str, ...] = ()
     if crs is not None:
@@ -283,13 +286,8 @@ def _bare(cells: Sequence[Cell]) -> npt.NDArray[np.bool_]:
 
 
 def _is_plain(cell: Cell) -> bool:
-    if isinstance(cell, bool):
-        return False
-    if isinstance(cell, (int, float)):
-        return True
-    return isinstance(cell, str) and bool(
-        re.fullmatch(r"\s*[+\-−]?\d{1,3}(?:[.,]\d*)?\s*|\s*-?\d{4,}(?:[.,]\d*)?\s*", cell)
-    )
+    kind = type(cell)
+    return kind is float or kind is int or (kind is str and _PLAIN.fullmatch(cell) is not None)  # type: ignore[call-overload]
 
 
 def _usual_steps(half: FloatArray, fields: dict[int, tuple[int, ...]]) -> None:

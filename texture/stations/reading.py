@@ -2,7 +2,10 @@
 
 from __future__ import annotations
 
+import os
+from collections.abc import Sequence
 from dataclasses import dataclass, field
+from pathlib import Path
 
 import numpy as np
 import numpy.typing as npt
@@ -12,6 +15,7 @@ from texture.errors import SampleError
 from texture.recipe import Recipe, Samples
 from texture.stations.account import FATES, LEDGER_COLUMNS, TABLE_COLUMNS, Stations, _with_points
 from texture.stations.audit import AuditLog
+from texture.stations.copies import find_copies
 from texture.stations.files import is_blank
 from texture.stations.repeats import merge_repeats
 from texture.stations.rows import bare_places, read_rows
@@ -54,8 +58,8 @@ def read_samples(recipe: Recipe) -> Stations:
         If a file cannot be read or understood, or fewer than five stations with sediment remain.
     """
     intake = _Intake()
-    for block in recipe.samples:
-        _read_block(block, recipe, intake)
+    for block, label in zip(recipe.samples, _labels([b.file for b in recipe.samples]), strict=True):
+        _read_block(block, label, recipe, intake)
     rows = pd.concat(intake.frames, ignore_index=True)
     stations = _assemble(rows, intake)
     if stations.counts["stations"] < FEWEST:
@@ -63,8 +67,20 @@ def read_samples(recipe: Recipe) -> Stations:
     return stations
 
 
-def _read_block(block: Samples, recipe: Recipe, intake: _Intake) -> None:
-    source = find_source(block)
+def _labels(paths: Sequence[Path]) -> list[str]:
+    """File names; with their folders where two files share a name."""
+    full = [p.absolute() for p in paths]
+    labels = [p.name for p in full]
+    for name in {n for n in labels if len({p for p in full if p.name == n}) > 1}:
+        members = [i for i, n in enumerate(labels) if n == name]
+        common = Path(os.path.commonpath([full[i].parent for i in members]))
+        for i in members:
+            labels[i] = full[i].relative_to(common).as_posix()
+    return labels
+
+
+def _read_block(block: Samples, label: str, recipe: Recipe, intake: _Intake) -> None:
+    source = find_source(block, label)
     sheet, table = source.sheet, source.table
     place = (sheet.file, sheet.name)
     if place in intake.rows_read:
@@ -94,25 +110,29 @@ def _read_block(block: Samples, recipe: Recipe, intake: _Intake) -> None:
 
 
 def _assemble(rows: pd.DataFrame, intake: _Intake) -> Stations:
-    """Merge repeats and write the account of rows."""
+    """Merge repeats and copies and write the account of rows."""
     on_map = rows["fate"].isin(["used", "evidence"]).to_numpy()
     kept = rows[on_map].reset_index(drop=True)
-    merged, member = merge_repeats(kept)
+    original, notes = find_copies(kept)
+    copies = original >= 0
+    for column in ("survey", "longitude", "latitude"):
+        kept[column] = kept[column].to_numpy()[np.where(copies, original, np.arange(len(kept)))]
+    merged, member = merge_repeats(kept, copies)
     station = np.full(len(rows), -1, dtype=np.int64)
     station[on_map] = member
-    fate = rows["fate"].to_numpy(dtype=object).copy()
-    reason = rows["reason"].to_numpy(dtype=object).copy()
-    lead = _leaders(kept, merged, member)
-    followers = np.flatnonzero(on_map)[~lead]
-    fate[followers] = "merged"
-    for i in followers:
-        head = merged.iloc[station[i]] if len(followers) < 1000 else None
-        reason[i] = f"repeat of row {head['row']} of {head['file']}" if head is not None else "repeat at the same place"
+    fate, reason = (rows[c].to_numpy(dtype=object).copy() for c in ("fate", "reason"))
+    follows = ~_leaders(kept, merged, member)
+    fate[np.flatnonzero(on_map)[follows]] = "merged"
+    heads = merged.iloc[member[follows]]
+    what = np.where(copies[follows], "the same sample as", "repeat of")
+    reason[np.flatnonzero(on_map)[follows]] = [
+        f"{w} row {row} of {file}" for w, row, file in zip(what, heads["row"], heads["file"], strict=True)
+    ]
     ledger = rows[["file", "sheet", "row", "id"]].assign(fate=fate, reason=reason, station=station)
     ledger = pd.concat([ledger[list(LEDGER_COLUMNS)], *intake.aside], ignore_index=True)
     ledger = _sorted_ledger(ledger, intake)
     table = _with_points(merged[list(TABLE_COLUMNS)])
-    return Stations(table, intake.audit.table(), ledger, intake.rows_read, tuple(intake.notes))
+    return Stations(table, intake.audit.table(), ledger, intake.rows_read, (*intake.notes, *notes))
 
 
 def _leaders(kept: pd.DataFrame, merged: pd.DataFrame, member: npt.NDArray[np.int64]) -> npt.NDArray[np.bool_]:

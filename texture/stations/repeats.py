@@ -13,7 +13,9 @@ SAME_PLACE_DEGREES = 1e-6  # 0.1 m: equal positions that went through a projecti
 PARTS = ("mud", "sand", "gravel")
 
 
-def merge_repeats(rows: pd.DataFrame) -> tuple[pd.DataFrame, npt.NDArray[np.int64]]:
+def merge_repeats(
+    rows: pd.DataFrame, copies: npt.NDArray[np.bool_] | None = None
+) -> tuple[pd.DataFrame, npt.NDArray[np.int64]]:
     """Merge rows of one survey at one place by the arithmetic mean of their fractions.
 
     Mass is what a patch of bed shares out, so fractions are averaged, not log-ratios: the log-ratio mean of 0
@@ -24,7 +26,10 @@ def merge_repeats(rows: pd.DataFrame) -> tuple[pd.DataFrame, npt.NDArray[np.int6
     ----------
     rows : DataFrame
         Used and evidence rows in reading order, with survey, longitude, latitude, mud, sand, gravel, kind,
-        resolution and weight.
+        described_class and resolution.
+    copies : bool array, shape (n_rows,), optional
+        Rows that stand in another spreadsheet too, under the survey and place of their original; they join its group
+        without counting.
 
     Returns
     -------
@@ -60,12 +65,14 @@ def merge_repeats(rows: pd.DataFrame) -> tuple[pd.DataFrame, npt.NDArray[np.int6
     # A measured row leads its group even where a description of the same place was read first.
     measured = np.bincount(group, weights=~words, minlength=len(size)) > 0
     counts = ~(words & measured[group])
+    if copies is not None:
+        counts &= ~copies
     leader = _first_of_each(group, counts, len(size))
     stations = rows.iloc[leader].copy().reset_index(drop=True)
     stations["repeats"] = np.bincount(group, weights=counts, minlength=len(size)).astype(np.int64)
     for part in PARTS:
         stations[f"repeat_sd_{part}"] = np.nan
-    several = size > 1
+    several = np.bincount(group, weights=counts, minlength=len(size)) > 1
     if several.any():
         _average(rows, stations, group, counts, several)
     return stations, group

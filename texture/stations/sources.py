@@ -41,18 +41,24 @@ class Source:
         return bool(self.sizes) or any(role in self.columns for role in (*PARTS, "description"))
 
 
-def find_source(block: Samples) -> Source:
+def find_source(block: Samples, label: str | None = None) -> Source:
     """Find the samples of one block of the recipe.
 
     A sheet that tells both where and what is taken first. Otherwise a sheet of results and a sheet of positions that
     share an id are joined.
+
+    Parameters
+    ----------
+    block : Samples
+    label : str, optional
+        What the file is called in tables and messages; its name if absent.
 
     Raises
     ------
     SampleError
         If there is no such sheet, no table, or a table that cannot be understood.
     """
-    sheets = read_sheets(block.file)
+    sheets = [replace(s, file=label or s.file) for s in read_sheets(block.file)]
     candidates = _named(sheets, block.sheet, block.file.name)
     found = [look for look in (_look(sheet, block) for sheet in candidates) if look is not None]
     if not found:

@@ -125,21 +125,26 @@ def _sample_rows(
     words = set().union(*shapes) if shapes else set()
     for i in range(start, len(rows)):
         row = rows[i]
-        filled = [c for c in row if c is not None and c != "" and not is_blank(c)]
-        if not filled:
+        first = next((c for c in row if not is_blank(c)), None)
+        if first is None:
             continue
-        first = filled[0]
-        if isinstance(first, str) and first.strip().casefold() in words:
-            cells = {str(c).strip().casefold() for c in filled}
-            if any(len(cells & shape) >= max(2, 0.6 * len(shape)) for shape in shapes):
-                aside.append((i + 1, "repeated header line"))
-                continue
-        if isinstance(first, str) and len(filled) > 1 and is_unit(first) and _is_units_row(row):
-            aside.append((i + 1, "units row"))
+        # Only a row that begins with a word can be a header or units row again; most begin with an id or a number.
+        if isinstance(first, str) and (reason := _repeats_header(first, row, words, shapes)):
+            aside.append((i + 1, reason))
             continue
         kept.append(row)
         numbers.append(i + 1)
     return kept, numbers
+
+
+def _repeats_header(first: str, row: list[Cell], words: set[str], shapes: list[set[str]]) -> str:
+    if first.strip().casefold() in words:
+        cells = {str(c).strip().casefold() for c in row if not is_blank(c)}
+        if any(len(cells & shape) >= max(2, 0.6 * len(shape)) for shape in shapes):
+            return "repeated header line"
+    if not any(ch.isdigit() for ch in first) and is_unit(first) and len(row) > 1 and _is_units_row(row):
+        return "units row"
+    return ""
 
 
 def _best_header(rows: list[list[Cell]], named: set[str]) -> int | None:
