@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass, field
+import itertools
+from dataclasses import dataclass, field, replace
 from pathlib import Path
 
 from texture.errors import SampleError
@@ -28,6 +29,8 @@ class Sheet:
         Merged ranges, counted from 0, both ends included.
     hidden_rows, hidden : int, bool
         Number of hidden rows; whether the whole sheet is hidden.
+    across : bool
+        Whether rows and columns were exchanged.
     notes : tuple of str
         What had to be found out to read it (encoding, delimiter).
     """
@@ -39,6 +42,13 @@ class Sheet:
     hidden_rows: int = 0
     hidden: bool = False
     notes: tuple[str, ...] = ()
+    across: bool = False
+
+    def turned(self) -> Sheet:
+        """The sheet with rows and columns exchanged, for samples that stand side by side."""
+        rows = [list(column) for column in itertools.zip_longest(*self.rows)]
+        merged = tuple((left, top, right, bottom) for top, left, bottom, right in self.merged)
+        return replace(self, rows=rows, merged=merged, across=True)
 
 
 def is_blank(cell: Cell) -> bool:

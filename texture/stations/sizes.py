@@ -8,14 +8,14 @@ from __future__ import annotations
 import itertools
 import math
 import re
-from collections.abc import Iterable
+from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 
 from texture.stations.files import Cell, is_blank
 from texture.stations.headings import plain, unit_in
 from texture.stations.where import Where
 
-__all__ = ["SizeColumn", "count_sizes", "size_columns", "size_in"]
+__all__ = ["SizeColumn", "count_sizes", "is_size_header", "size_columns", "size_in"]
 
 FEWEST = 3  # columns; with fewer, headings such as "<63 µm" are parts by themselves
 SAME_LIMIT_PHI = 0.03  # 62.5 and 63 µm are 0.012 apart, 60 and 62.5 µm 0.06
@@ -26,6 +26,7 @@ _BETWEEN = re.compile(rf"(?<![\d.]){_N}\s*{_U}\s*(?:to|-|–|a|bis|and)\s*{_N}\s
 _LESS = re.compile(rf"(?:<=?|≤|less than|finer than|under|below|smaller than)\s*{_N}\s*{_U}")
 _MORE = re.compile(rf"(?:>=?|≥|more than|coarser than|over|above|larger than|greater than)\s*{_N}\s*{_U}")
 _SINGLE = re.compile(rf"(?:phi)?\s*{_N}\s*{_U}")
+_SCALE = re.compile(r"\b(size|sieve|sieves|diameter|aperture|mesh|grain|phi|korngroesse|tamiz|tamis)\b")
 _PAN = re.compile(r"\b(pan|finest|rest|residue|bottom pan|passing last)\b")
 _FINER = re.compile(r"\b(passing|finer|undersize|cum\w* (finer|passing)|durchgang|passant)\b")
 _COARSER = re.compile(r"\b(cum\w*( \w+)? retained|retained cum\w*|oversize|cum\w* coarser)\b")
@@ -98,6 +99,38 @@ def count_sizes(row: Iterable[Cell]) -> int:
     return found
 
 
+def is_size_header(row: Sequence[Cell]) -> bool:
+    """Whether a row is a scale of bare sizes led by a word with their unit: "Sieve (mm)", 4, 2, 1, 0.5.
+
+    >>> is_size_header(["Size, mm", 4, 2, 1, "0.5", "pan"]), is_size_header(["S1", 4, 2, 1, 0.5])
+    (True, False)
+    """
+    filled = [c for c in row if not is_blank(c)]
+    if not filled or not isinstance(filled[0], str) or _scale_unit([filled[0]]) is None:
+        return False
+    numbers = [n for n in map(_number, filled[1:]) if n is not None]
+    steps = [b - a for a, b in itertools.pairwise(numbers)]
+    return len(numbers) >= FEWEST and (all(s > 0 for s in steps) or all(s < 0 for s in steps))
+
+
+def _number(cell: Cell) -> float | None:
+    if isinstance(cell, (int, float)) and not isinstance(cell, bool):
+        return float(cell)
+    if isinstance(cell, str) and re.fullmatch(_N, cell.strip()):
+        return float(cell.strip().replace(",", "."))
+    return None
+
+
+def _scale_unit(headings: Iterable[str]) -> str | None:
+    """Unit of a heading that names a scale of sizes rather than a size."""
+    for heading in headings:
+        if _SCALE.search(plain(heading)) and not any(ch.isdigit() for ch in heading):
+            unit = unit_in(heading)
+            if unit in ("phi", "mm", "um"):
+                return unit
+    return None
+
+
 def size_columns(
     headings: list[str], lowest: list[str], units: list[str], taken: Iterable[int], where: Where
 ) -> list[SizeColumn]:
@@ -109,10 +142,13 @@ def size_columns(
         If there are size classes but no unit, or classes that overlap or leave a gap.
     """
     skip, found = set(taken), []
+    scale = _scale_unit(headings)
     for index, heading in enumerate(headings):
         if index in skip or is_blank(heading):
             continue
         unit = next((u for u in map(unit_in, (lowest[index], units[index], heading)) if u in ("phi", "mm", "um")), None)
+        if (unit is None and re.fullmatch(_N, lowest[index].strip())) or (unit is None and _PAN.search(plain(heading))):
+            unit = scale
         size = size_in(lowest[index], unit) or size_in(heading, unit)
         if size is None and unit is None and _looks_open(lowest[index]):
             raise where.at(heading).error(

@@ -17,6 +17,8 @@ from texture.stations.tables import Table, find_table, no_table
 
 __all__ = ["Source", "find_source"]
 
+SIDE_BY_SIDE = 5000  # rows and columns up to which a sheet is tried with the two exchanged
+
 
 @dataclass(frozen=True)
 class Source:
@@ -90,6 +92,19 @@ def _named(sheets: list[Sheet], name: str | None, file: str) -> list[Sheet]:
 
 
 def _look(sheet: Sheet, block: Samples, header_row: bool = True) -> Source | SampleError | None:
+    """Understand one sheet as it stands or, where that tells nothing, with rows and columns exchanged."""
+    upright = _understand(sheet, block, header_row)
+    if isinstance(upright, Source) and (upright.has_shares or upright.has_position):
+        return upright
+    small = len(sheet.rows) <= SIDE_BY_SIDE and max((len(r) for r in sheet.rows), default=0) <= SIDE_BY_SIDE
+    turned = _understand(sheet.turned(), block, header_row) if small and block.header_row is None else None
+    if isinstance(turned, Source) and turned.has_shares and (turned.has_position or "id" in turned.columns):
+        note = f"{sheet.file}: samples stand side by side; what is called a row of it is a column of the sheet"
+        return replace(turned, notes=(*turned.notes, note))
+    return upright
+
+
+def _understand(sheet: Sheet, block: Samples, header_row: bool) -> Source | SampleError | None:
     """Understand one sheet; an error is kept, for it matters only if no other sheet will do."""
     table = find_table(sheet, block.columns, block.header_row if header_row else None)
     if table is None:
@@ -103,6 +118,8 @@ def _look(sheet: Sheet, block: Samples, header_row: bool = True) -> Source | Sam
         return error
     if sizes:
         columns = {role: c for role, c in columns.items() if role not in PARTS}
+        if "id" not in columns and table.headings[0] and all(s.index != 0 for s in sizes):
+            columns["id"] = Column("id", 0, table.headings[0])  # under "Size (mm)" stand the samples' names
     return Source(sheet, table, columns, sizes)
 
 
@@ -122,7 +139,7 @@ def _has_heading(table: Table, heading: str) -> bool:
 def _places(block: Samples, sheets: list[Sheet], results: Source) -> Source | None:
     """Find the sheet of positions, as the recipe's `join` says or the first that has positions and ids."""
     join = block.join
-    others = [s for s in sheets if s is not results.sheet]
+    others = [s for s in sheets if s.name != results.sheet.name]
     if join is not None and join.file is not None:
         others = read_sheets(join.file)
     if join is not None and join.sheet is not None:
@@ -150,7 +167,12 @@ def _joined(results: Source, places: Source | None, block: Samples) -> Source | 
     result_id, columns["id"] = best_ids(results.table, results.columns["id"], places.table, columns["id"])
     joined = join_tables(results.table, result_id, places.table, columns)
     return Source(
-        results.sheet, results.table, {**results.columns, "id": result_id}, results.sizes, joined, joined.notes
+        results.sheet,
+        results.table,
+        {**results.columns, "id": result_id},
+        results.sizes,
+        joined,
+        (*results.notes, *joined.notes),
     )
 
 

@@ -10,7 +10,7 @@ from dataclasses import dataclass, field
 from texture.errors import SampleError
 from texture.stations.files import Cell, Sheet, is_blank
 from texture.stations.headings import is_unit, plain, role_of, roles_in
-from texture.stations.sizes import FEWEST, count_sizes
+from texture.stations.sizes import FEWEST, count_sizes, is_size_header
 from texture.stations.where import Where
 
 __all__ = ["Table", "find_table", "looks_like_value"]
@@ -80,7 +80,7 @@ def find_table(sheet: Sheet, mapped: Mapping[str, str] | None = None, header_row
         If `header_row` lies outside the sheet or on an empty row.
     """
     rows = sheet.rows
-    where = Where(sheet.file, sheet.name)
+    where = Where(sheet.file, sheet.name, across=sheet.across)
     named = {plain(heading) for heading in (mapped or {}).values()}
     if header_row is not None:
         if header_row > len(rows) or all(is_blank(c) for c in rows[header_row - 1]):
@@ -152,8 +152,9 @@ def _best_header(rows: list[list[Cell]], named: set[str]) -> int | None:
     scores: list[tuple[int, int]] = []
     for i, row in enumerate(rows[:LOOKED_AT]):
         score = len(roles_in(row) | {plain(c) for c in row if isinstance(c, str) and plain(c) in named})
-        score += 2 * (count_sizes(row) >= FEWEST)
-        if score >= 2 and not _mostly_values(row):
+        scale = is_size_header(row)
+        score += 2 * (scale or count_sizes(row) >= FEWEST)
+        if score >= 2 and (scale or not _mostly_values(row)):
             scores.append((i, score))
     most = max((score for _, score in scores), default=0)
     return next((i for i, score in scores if score >= 0.6 * most), None)

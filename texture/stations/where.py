@@ -27,15 +27,19 @@ def shown(cell: object) -> str:
 
 @dataclass(frozen=True)
 class Where:
-    """A file, a sheet (empty for text tables) and the heading of a column (empty for the whole row)."""
+    """A file, a sheet (empty for text tables) and the heading of a column (empty for the whole row).
+
+    `across` tells that samples stand side by side: their "rows" are the sheet's columns.
+    """
 
     file: str
     sheet: str = ""
     column: str = ""
+    across: bool = False
 
     def at(self, column: str) -> Where:
         """Return the same file and sheet with another column."""
-        return Where(self.file, self.sheet, column)
+        return Where(self.file, self.sheet, column, self.across)
 
     def text(self, row: int | None = None) -> str:
         """Words for the place; rows are numbered as the spreadsheet shows them, from 1."""
@@ -43,9 +47,9 @@ class Where:
         if self.sheet:
             words += f', sheet "{self.sheet}"'
         if row is not None:
-            words += f", row {row}"
+            words += f", {'column' if self.across else 'row'} {row}"
         if self.column:
-            words += f', column "{self.column}"'
+            words += f', {"row" if self.across else "column"} "{self.column}"'
         return words
 
     def error(self, found: str, expected: str, do: str, row: int | None = None) -> SampleError:

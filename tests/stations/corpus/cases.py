@@ -208,6 +208,19 @@ FATES = (
     Case("mud that is not its silt and clay", text([[*HEAD, "Silt %", "Clay %"], *[[*r, r[3] - 1.0, 1.0] for r in rows(A2_3=30.0)][:1], *[[*r, r[3] + 9.0, 1.0] for r in rows()[1:2]], *[[*r, r[3] - 1.0, 1.0] for r in rows()[2:]]]), gone=("A2",), counts={"rows_used": 5, "rows_set_aside": 1, "stations": 5}, aside=("mud 0.3 is not silt + clay 0.4",)),
 )  # fmt: skip
 
+POSITIONS_OF_ALL = [r[:3] for r in table()]
+LAYOUTS = (
+    Case("samples side by side", text([list(c) for c in zip(*table(), strict=True)])),
+    Case("samples side by side below a title", xlsx([["Report of the bight's laboratory"], [], *[list(c) for c in zip(*table(), strict=True)]]), "survey.xlsx"),
+    Case(
+        "sieve sizes down the rows, places on another sheet",
+        xlsx({"Places": POSITIONS_OF_ALL, "Sieves": [["Sieve (mm), g retained", *[r[0] for r in BASE]], [2, *[r[5] for r in BASE]], [0.25, *[20.0] * 6], [0.063, *[r[4] - 20.0 for r in BASE]], ["pan", *[r[3] for r in BASE]]]}),
+        "survey.xlsx",
+        notes=("samples stand side by side", "single sizes read as what was retained"),
+    ),
+    Case("a scale of bare sizes", text([["Station", "Latitude", "Longitude", "Sieve mm:", 2, 0.25, 0.063, "pan"], *[[*r[:3], "", r[5], 20.0, r[4] - 20.0, r[3]] for r in BASE]])),
+)  # fmt: skip
+
 DATES = (
     Case("day before month", text([[*HEAD, "Date"], *[[*r, f"{d}/05/1987"] for r, d in zip(rows(), range(11, 17), strict=True)]]), changed={f"A{k + 1}": {"date": f"1987-05-{11 + k}"} for k in range(6)}),
     Case("month before day", text([[*HEAD, "Date"], *[[*r, f"5/{d}/87"] for r, d in zip(rows(), range(11, 17), strict=True)]]), changed={f"A{k + 1}": {"date": f"1987-05-{11 + k}"} for k in range(6)}),
@@ -242,4 +255,4 @@ TOGETHER = (
     ),
 )  # fmt: skip
 
-CASES = (*FILES, *TABLES, *LANGUAGES, *COLUMNS, *CELLS, *POSITIONS, *FATES, *DATES, *TOGETHER)
+CASES = (*FILES, *TABLES, *LANGUAGES, *COLUMNS, *CELLS, *POSITIONS, *FATES, *LAYOUTS, *DATES, *TOGETHER)
