@@ -190,10 +190,10 @@ def test_names_file_gives_the_model_its_own_words(demo_recipe, tmp_path, plain):
 def test_provenance_tells_inputs_and_no_path_of_this_machine(plain):
     out = plain.found.recipe.output
     record = json.loads((out / "provenance.json").read_text())
-    assert {"recipe.toml", "survey_1987.xlsx", "survey_2004.csv", "model_grid.nc", "coast.geojson"} <= {
+    assert {"recipe.toml", "survey_1987.xlsx", "notes_1962.ods", "model_grid.nc", "coast.geojson"} <= {
         i["file"] for i in record["inputs"]
     }
-    assert record["counts"]["rows_read"] == 335
+    assert record["counts"]["rows_read"] == 522
     for path in out.rglob("*"):
         if path.suffix in {".json", ".html", ".toml", ".csv", ".nc"}:
             content = path.read_bytes()

@@ -5,6 +5,7 @@ from __future__ import annotations
 import typer
 
 from texture_cli.build import build
+from texture_cli.draft import draft
 from texture_cli.intake import intake
 from texture_cli.validate import validate
 
@@ -20,6 +21,7 @@ app = typer.Typer(
     rich_markup_mode="rich",
     context_settings={"help_option_names": ["-h", "--help"]},
 )
+app.command()(draft)
 app.command()(intake)
 app.command()(validate)
 app.command()(build)

@@ -135,7 +135,7 @@ def test_wrong_usage_is_code_2():
 def test_help_names_the_commands_and_an_example():
     done = texture("--help")
     assert done.returncode == DONE
-    for command in ("intake", "validate", "build"):
+    for command in ("draft", "intake", "validate", "build"):
         assert command in done.stdout
         assert "Example: texture" in texture(command, "--help").stdout
     assert texture("--version").stdout.startswith("texture 0.")

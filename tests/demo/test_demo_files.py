@@ -249,7 +249,10 @@ def test_1962_words_fit_the_bed_they_name(answers):
 
 def test_recipe_names_headings_that_the_files_have():
     recipe = tomllib.loads((DEMO / "recipe.toml").read_text(encoding="utf-8"))
-    first, second = recipe["samples"]
+    first, second, *_ = recipe["samples"]
+    assert [block["file"] for block in recipe["samples"]] == [
+        "survey_1987.xlsx", "survey_2004.csv", "lab_2016.xlsx", "notes_1962.ods",
+    ]  # fmt: skip
     rows = (
         python_calamine.CalamineWorkbook.from_path(DEMO / first["file"]).get_sheet_by_name(first["sheet"]).to_python()
     )

@@ -1,0 +1,95 @@
+"""A starting recipe from files of samples and a grid, for a person to read through."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from pathlib import Path
+
+import numpy as np
+
+from texture.errors import RecipeError, TargetError
+from texture.recipe import TargetSettings
+from texture.stations.draft import draft_recipe
+from texture.targets import Target, read_target
+
+__all__ = ["draft"]
+
+RIM = """
+# A coarse rim along the open boundary. Choose its width and bed, and take the # away.
+# [rim]
+# sides = "open"
+# width_cells = 6
+# classes = { sand = 1.0 }
+"""
+CLASSES = """
+# The bed gets one class for each part unless [[bed.classes]] says more. Settling, threshold and erosion of
+# mud are not in grain size: give them there, or the model will have to be told.
+"""
+
+
+def draft(
+    files: Sequence[str | Path], recipe_path: str | Path, grid: str | Path | None = None, overwrite: bool = False
+) -> str:
+    """Look at files of samples (and a grid) and write a recipe that names everything recognised and every doubt.
+
+    Parameters
+    ----------
+    files : sequence of path
+    recipe_path : path
+        Where the recipe is written; the paths in it are relative to its folder.
+    grid : path, optional
+        Grid of the model; without one a raster around the stations is proposed.
+    overwrite : bool
+        Replace a recipe that is there.
+
+    Returns
+    -------
+    text : str
+        What was written.
+
+    Raises
+    ------
+    RecipeError
+        If the recipe exists and `overwrite` is off, or a file is missing.
+    SampleError
+        If none of the files can be read.
+    """
+    recipe_path = Path(recipe_path)
+    if recipe_path.exists() and not overwrite:
+        raise RecipeError(f"{recipe_path}: exists already; use --overwrite to replace it, or choose another name")
+    for path in (*files, *([grid] if grid is not None else [])):
+        if not Path(path).is_file():
+            raise RecipeError(f"{path}: no such file")
+    target, problem = _look_at(grid)
+    extent = _extent(target) if target is not None else None
+    text = draft_recipe(files, recipe_path.absolute().parent, grid, extent)
+    text += _grid_lines(target, problem) + RIM + CLASSES
+    aside = recipe_path.with_name(f".{recipe_path.name}.new")
+    aside.write_text(text, encoding="utf-8")
+    aside.replace(recipe_path)
+    return text
+
+
+def _look_at(grid: str | Path | None) -> tuple[Target | None, str]:
+    if grid is None:
+        return None, ""
+    try:
+        return read_target(TargetSettings(file=Path(grid))), ""
+    except TargetError as error:
+        return None, str(error)
+
+
+def _extent(target: Target) -> tuple[float, float, float, float]:
+    lon, lat = target.corners
+    return float(np.nanmin(lon)), float(np.nanmin(lat)), float(np.nanmax(lon)), float(np.nanmax(lat))
+
+
+def _grid_lines(target: Target | None, problem: str) -> str:
+    if target is None:
+        return f"# DOUBT: {problem}\n" if problem else ""
+    lines = [
+        f"# {target.shape[0]} × {target.shape[1]} cells, {int(target.active.sum()):,} of them water, found by the file's own attributes",
+        *(f"# {note}" for note in target.notes),
+        *(f"# outer edge, {opening}" for opening in target.openings),
+    ]
+    return "\n".join(lines) + "\n"
