@@ -155,3 +155,26 @@ def test_levels_do_not_cross_where_there_is_next_to_no_spread():
     low, middle, high = lr.quantiles([[-3.41886928, -1.2017394]], [[5.89257e-03, 1.81458624e-06]], [0.05, 0.5, 0.95])
     assert (low <= middle).all()
     assert (middle <= high).all()
+
+
+@pytest.mark.parametrize("variance", [0.0, 1e-14, 100.0, 1e4])
+@pytest.mark.parametrize("rho", [0.0, 0.999999])
+def test_extreme_moments_stay_finite_and_in_order(variance, rho):
+    lr = LogRatio(PARTS)
+    mean = np.array([[50.0, -50], [-50, 50], [-700, 700], [800, 800], [0, 0], [-30, -30]])
+    spread = np.full((6, 2), variance)
+    matrix = np.stack([covariance(np.sqrt(s), rho) for s in spread])
+    for within in (None, 0.5 * spread):
+        got = lr.quantiles(mean, matrix if rho else spread, [0.001, 0.5, 0.999], within=within)
+        assert ((got >= 0) & (got <= 1)).all()
+        assert (np.diff(got, axis=0) >= -1e-4).all()
+    assert np.abs(lr.expected(mean, matrix).sum(axis=1) - 1).max() < 1e-12
+
+
+@pytest.mark.parametrize("kind", ["tree", "ilr", "alr", "shares"])
+def test_no_rows_give_no_rows(kind):
+    lr, none = LogRatio(PARTS, kind), np.empty((0, 2))
+    assert lr.forward(np.empty((0, 3))).shape == (0, 2)
+    assert lr.inverse(none).shape == (0, 3)
+    assert lr.expected(none, none).shape == lr.expected(none, np.empty((0, 2, 2))).shape == (0, 3)
+    assert lr.quantiles(none, none, LEVELS).shape == (3, 0, 3)

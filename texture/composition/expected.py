@@ -72,8 +72,8 @@ def expected(logratio: "LogRatio", mean: npt.ArrayLike, variance: npt.ArrayLike)
 
     Notes
     -----
-    Largest errors measured against adaptive quadrature over means in [-8, 8], variances up to 100 and correlations
-    up to 0.95 are given in the tests beside each method: below 1e-5 for three parts.
+    Three parts: the largest error measured was 7e-6, over 150 random rows with means in [-8, 8], variances from 0.01 to 100
+    and correlations to 0.95, against a dense grid of 801 x 801 nodes. By draws (six parts): below 8e-4.
 
     Examples
     --------
@@ -169,7 +169,7 @@ def _expected_shares(logratio: "LogRatio", mean: Array, spread: Array, correlate
                     same = 1.0 if path[a][1] == path[b][1] else -1.0
                     value = value + same * spread[:, path[a][0], path[b][0]] * np.prod(others, axis=0)
         fractions[:, part] = np.clip(value, 0.0, 1.0)
-    fractions[np.isnan(mean).any(axis=1) | np.isnan(spread.reshape(len(mean), -1)).any(axis=1)] = np.nan
+    fractions[np.isnan(mean).any(axis=1) | np.isnan(spread).any(axis=tuple(range(1, spread.ndim)))] = np.nan
     return fractions
 
 

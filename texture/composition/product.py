@@ -47,10 +47,10 @@ def pair_quantiles(m, sign, sub, shared, table_a, table_b, z, q, out):  # type: 
     sv = max(sv, _LEAST_SPREAD)
     centre_u, bend_u = from_table(mu, eu, table_u, False)
     centre_v, bend_v = from_table(mv, ev, table_v, False)
-    A, B = logistic(centre_u), logistic(centre_v)
-    w = A * B
+    less_a, less_b = logistic(-centre_u), logistic(-centre_v)
     # Spread of logit W to first order, for the first guess only.
-    da, db = bend_u * (1.0 - A) / (1.0 - w), bend_v * (1.0 - B) / (1.0 - w)
+    less_w = max(less_a + less_b - less_a * less_b, 1e-300)
+    da, db = bend_u * less_a / less_w, bend_v * less_b / less_w
     slope = math.sqrt(max((da * su) ** 2 + (db * sv) ** 2 + 2.0 * rho * da * db * su * sv, 1e-12))
     omega = _logit_product(centre_u, centre_v)
     last_z = 0.0
@@ -73,7 +73,7 @@ def pair_quantiles(m, sign, sub, shared, table_a, table_b, z, q, out):  # type: 
             else:
                 low = omega
             here = logistic(omega)
-            reached = 0.0
+            reached = math.inf
             following = math.inf
             if 1e-12 < F < 1.0 - 1e-12 and dF > 0.0:
                 # Newton on the normal score of F, which is close to a line.
@@ -97,7 +97,7 @@ def pair_quantiles(m, sign, sub, shared, table_a, table_b, z, q, out):  # type: 
 def _logit_product(a: float, b: float) -> float:
     """Logit of logistic(a) logistic(b)."""
     x, y = math.exp(-max(a, -300.0)), math.exp(-max(b, -300.0))
-    return -math.log(x + y + x * y)
+    return -math.log(max(x + y + x * y, 1e-300))
 
 
 @njit(cache=True)
@@ -135,33 +135,32 @@ def _pair_cdf(omega, mu, su, mv, sv, rho, eu, ev, shared, table_u, table_v):  # 
     steepest_u, steepest_v = _steepest(table_u), _steepest(table_v)
     density = 0.0
     t = t_lo
-    s0 = _slope(t, R)
+    s0 = _curve(t, R)[2]
     while t < t_hi:
         # The slope of u grows along t, that of v falls: look at both ends of the panel.
         bend = abs((s0 - 1.0) * steepest_v - beta * s0 * steepest_u)
         length = min(_LONGEST, t_hi - t, _PANEL / max(s0 * steepest_u / su, bend / sc, 1e-9))
-        s1 = _slope(t + length, R)
+        s1 = _curve(t + length, R)[2]
         bend = max(bend, abs((s1 - 1.0) * steepest_v - beta * s1 * steepest_u))
         shorter = _PANEL / max(s1 * steepest_u / su, bend / sc, 1e-9)
         if shorter < length:
             length = shorter
-            s1 = _slope(t + length, R)
+            s1 = _curve(t + length, R)[2]
         for k in range(_NODES.size):
             tt = t + 0.5 * length * (1.0 + _NODES[k])
-            E = math.exp(tt)
-            x = 2.0 * R / ((1.0 + E) + math.sqrt((1.0 + E) ** 2 + 4.0 * R * E))
+            e, x, dp = _curve(tt, R)
             p = -math.log(x)
             u, du = from_table(p, eu, table_u, True)
             v, dv = from_table(p - tt, ev, table_v, True)
             if shared != 0.0:
                 # d ln(mean of the first factor) / du = (1 - A) dT/du, and 1 - A = x / (1 + x).
                 v -= shared * x / (1.0 + x) / du
-            du *= E * (x + 1.0) / (2.0 * E * x + 1.0 + E)
+            du *= dp
             g = (v - mv - beta * (u - mu)) / sc
             weight = 0.5 * length * _NODE_WEIGHTS[k] * du * normal_pdf((u - mu) / su) / su
             height = normal_pdf(g)
             above += weight * upper_tail(g, height)
-            density += weight * height * dv * (1.0 - w) * (1.0 + 1.0 / (x * E)) / sc
+            density += weight * height * dv * (1.0 - w) * (1.0 + (e / x if tt > 0.0 else 1.0 / (e * x))) / sc
         t += length
         s0 = s1
     return 1.0 - above, density
@@ -174,11 +173,15 @@ def _steepest(table: Array) -> float:
 
 
 @njit(cache=True)
-def _slope(t: float, R: float) -> float:
-    """Slope of p along the curve, by t."""
-    E = math.exp(t)
-    x = 2.0 * R / ((1.0 + E) + math.sqrt((1.0 + E) ** 2 + 4.0 * R * E))
-    return E * (x + 1.0) / (2.0 * E * x + 1.0 + E)
+def _curve(t, R):  # type: ignore[no-untyped-def]
+    """exp(-|t|), x = exp(-p) and dp / dt on the curve x + y + x y = R with y = x exp(t); no overflow."""
+    e = math.exp(-abs(t))
+    root = (1.0 + e) + math.sqrt((1.0 + e) ** 2 + 4.0 * R * e)
+    if t > 0.0:
+        x = 2.0 * R * e / root
+        return e, x, (x + 1.0) / (2.0 * x + e + 1.0)
+    x = 2.0 * R / root
+    return e, x, e * (x + 1.0) / (2.0 * e * x + 1.0 + e)
 
 
 @njit(cache=True)

@@ -3,7 +3,7 @@
 - A part with one split on its path is a monotone function of one normal: closed form.
 - A part with two is a product of two logistic functions, W = logistic(a) logistic(b). P(W > w) is an integral along
   the curve logistic(a) logistic(b) = w. With t = a - b as parameter the curve is smooth on the scale of 1 everywhere, so that
-  panels of six Gauss-Legendre nodes no longer than the integrand's own scale reach 1e-5 at any pair of variances
+  panels of six Gauss-Legendre nodes no longer than the integrand's own scale follow any pair of variances
   and any correlation; a Newton iteration between sure brackets then finds the quantile.
 - Three and more: the last split is integrated exactly given 1024 Sobol normal draws of the others.
 - ``ilr``, ``alr``, and products of ``shares``: order statistics of 4096 Sobol normal draws.
@@ -71,6 +71,14 @@ def quantiles(
     CompositionError
         For levels outside (0, 1), shapes that do not fit, or more variance within cells than there is.
 
+    Notes
+    -----
+    Largest errors measured, three parts, levels 0.05, 0.5 and 0.95: 6e-5 for quantiles of a point (60 random rows with means
+    in [-5, 5], variances from 0.01 to 31 and correlations to 0.95, against dense integration); for the cell mean
+    (80 rows with means in [-4, 4], standard deviations from 0.5 to 3, a quarter to three quarters of the variance within)
+    4e-4 uncorrelated and 3.7e-3 (root mean square 8e-4) correlated, of which the 32,768 draws it was held against are a
+    part. Paths of three or more splits and the kinds other than ``tree`` rest on draws, to about 3e-3 in probability.
+
     Examples
     --------
     >>> from texture.composition import LogRatio
@@ -127,11 +135,27 @@ def _share_out(logratio: "LogRatio", covariance: Array, within: npt.ArrayLike) -
     return covariance * outer[:, :, None] * outer[:, None, :], covariance * inner[:, :, None] * inner[:, None, :]
 
 
+@njit(cache=True)
+def _tamed(mean, covariance, inside):  # type: ignore[no-untyped-def]
+    """Moments without the extremes that would overflow: means of at most 120, standard deviations of at most 25.
+
+    Larger spreads are scaled down together with the means: every quantile that is not 0 or 1 to many digits is then
+    a matter of the sign of a coordinate, which scaling keeps.
+    """
+    most = 0.0
+    for i in range(mean.size):
+        most = max(most, covariance[i, i] + inside[i, i])
+    factor = 1.0 if most <= 625.0 else 25.0 / math.sqrt(most)
+    centre = np.minimum(np.maximum(mean * factor, -120.0), 120.0)
+    return centre, covariance * factor**2, inside * factor**2
+
+
 @njit(cache=True, parallel=True)
 def _tree_kernel(mean, covariance, inside, index, sign, z, q, draws, out, status):  # type: ignore[no-untyped-def]
     n, d = mean.shape
     parts, depth = index.shape
     smoothed = inside.shape[0] > 0
+    inside_none = np.zeros((d, d))
     for row in prange(n):
         if has_nan(mean[row]) or has_nan(covariance[row]) or (smoothed and has_nan(inside[row])):
             continue
@@ -139,10 +163,11 @@ def _tree_kernel(mean, covariance, inside, index, sign, z, q, draws, out, status
         s = np.zeros(depth)
         sub = np.zeros((depth, depth))
         sub_in = np.zeros((depth, depth))
+        centre, between, within = _tamed(mean[row], covariance[row], inside[row] if smoothed else inside_none)
         tables = np.zeros((d, KNOTS if smoothed else 0, 3))
         if smoothed:
             for i in range(d):
-                fill_table(mean[row, i], math.sqrt(covariance[row, i, i]), inside[row, i, i], tables[i])
+                fill_table(centre[i], math.sqrt(between[i, i]), within[i, i], tables[i])
         for part in range(parts):
             length = 0
             while length < depth and index[part, length] >= 0:
@@ -150,11 +175,11 @@ def _tree_kernel(mean, covariance, inside, index, sign, z, q, draws, out, status
             for a in range(length):
                 i = index[part, a]
                 s[a] = sign[part, a]
-                m[a] = s[a] * mean[row, i]
+                m[a] = s[a] * centre[i]
                 for b in range(length):
                     both = s[a] * sign[part, b]
-                    sub[a, b] = both * covariance[row, i, index[part, b]]
-                    sub_in[a, b] = both * inside[row, i, index[part, b]] if smoothed else 0.0
+                    sub[a, b] = both * between[i, index[part, b]]
+                    sub_in[a, b] = both * within[i, index[part, b]]
             if length == 1:
                 for k in range(z.size):
                     out[k, row, part] = logistic_normal(m[0] + z[k] * math.sqrt(sub[0, 0]), sub_in[0, 0])

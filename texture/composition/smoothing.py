@@ -10,6 +10,8 @@ from texture.composition.kernels import logistic_normal, logistic_normal_slope
 __all__ = ["KNOTS", "fill_table", "from_table"]
 
 KNOTS = 17
+_LEAST = 1e-100
+_LEAST_SLOPE = 0.01
 _REACH = 5.0  # standard deviations that the knots cover; straight on beyond
 
 
@@ -19,11 +21,17 @@ def fill_table(mean: float, spread: float, variance: float, table: Array) -> Non
     reach = max(_REACH * spread, 0.5)
     for k in range(KNOTS):
         b = mean + reach * (2.0 * k / (KNOTS - 1.0) - 1.0)
-        small = max(logistic_normal(-abs(b), variance), 1e-300)
-        value = math.log((1.0 - small) / small)
+        small = logistic_normal(-abs(b), variance)
+        slope = logistic_normal_slope(b, variance)
+        if small > _LEAST:
+            value = math.log((1.0 - small) / small)
+            slope = min(max(slope / (small * (1.0 - small)), _LEAST_SLOPE), 1.0)
+        else:  # no fraction worth the name: only keep rising
+            value = -math.log(_LEAST) + _LEAST_SLOPE * abs(b)
+            slope = _LEAST_SLOPE
         table[k, 0] = b
         table[k, 1] = value if b >= 0.0 else -value
-        table[k, 2] = min(max(logistic_normal_slope(b, variance) / (small * (1.0 - small)), 1e-6), 1.0)
+        table[k, 2] = slope
 
 
 @njit(cache=True)
@@ -56,8 +64,10 @@ def from_table(value, sign, table, backwards):  # type: ignore[no-untyped-def]
         return sign * (y0 + s0 * (x - x0)), s0
     if x >= x1:
         return sign * (y1 + s1 * (x - x1)), s1
-    # Cubic Hermite between knots.
+    # Cubic Hermite between knots, with slopes that keep it rising (Fritsch & Carlson 1980).
     h = x1 - x0
+    steepest = 3.0 * (y1 - y0) / h
+    s0, s1 = min(s0, steepest), min(s1, steepest)
     r = (x - x0) / h
     bend = 3.0 * (y1 - y0) / h - 2.0 * s0 - s1
     twist = s0 + s1 - 2.0 * (y1 - y0) / h

@@ -125,15 +125,16 @@ def class_moments(codes: Sequence[str] | npt.NDArray[np.str_], logratio: LogRati
     CompositionError
         For a code that is not Folk's, or parts that the classes say nothing about.
     """
-    unknown = sorted(set(map(str, codes)) - set(find_scheme("folk").codes))
+    kinds, place = np.unique(np.asarray(codes, dtype=np.str_), return_inverse=True)
+    unknown = [str(code) for code in kinds if code not in find_scheme("folk").codes]
     if unknown:
         raise CompositionError(f"class {unknown[0]!r}, expected one of {', '.join(find_scheme('folk').codes)}")
     find_scheme("folk").mixing(logratio.parts)
-    mean = np.empty((len(codes), logratio.n_coordinates))
-    covariance = np.empty((len(codes), logratio.n_coordinates, logratio.n_coordinates))
-    for k, code in enumerate(codes):
+    mean = np.empty((len(kinds), logratio.n_coordinates))
+    covariance = np.empty((len(kinds), logratio.n_coordinates, logratio.n_coordinates))
+    for k, code in enumerate(kinds):
         mean[k], covariance[k] = _one_class(str(code), logratio)
-    return mean, covariance
+    return mean[place], covariance[place]
 
 
 @cache
