@@ -2,13 +2,14 @@
 
 from __future__ import annotations
 
+import warnings
 from collections.abc import Sequence
 from typing import Any
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-from texture.errors import StructureError
+from texture.errors import StructureError, TextureWarning
 from texture.predict.inputs import Stations, check_drift, check_stations
 from texture.predict.system import MOST_DENSE, System
 from texture.structure.covariance import Covariance, CovarianceSet, check_points
@@ -154,6 +155,7 @@ class Kriging:
                     f"column {v}: the covariance has survey offsets (variance {covariance.survey:g}); "
                     "give the survey of each station"
                 )
+            _warn_if_too_smooth(covariance, v, float(stations.noise_variance[:, v].min()))
         self._stations = stations
         self._systems = System.make(stations, covariances, means, self.neighbours, self.neighbourhood, self.drift)
         return self
@@ -277,3 +279,14 @@ class Kriging:
     def stations(self) -> Stations:
         """The stations as `fit` took them in."""
         return self._ready()[0]
+
+
+def _warn_if_too_smooth(covariance: Covariance, column: int, least_noise: float) -> None:
+    names = {s.model for s in covariance.structures}
+    if names == {"gaussian"} and covariance.small_scale + covariance.noise + least_noise < 1e-6 * covariance.sill:
+        warnings.warn(
+            f"column {column}: gaussian model without small-scale variation or noise; nearby stations then nearly "
+            "determine one another and redundant ones are left out; add a little of either or use matern",
+            TextureWarning,
+            stacklevel=3,
+        )

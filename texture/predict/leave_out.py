@@ -63,8 +63,8 @@ def leave_out(kriging: Kriging, groups: ArrayLike | None = None) -> tuple[Array,
     return mean, variance
 
 
-def _bordered_inverse(system: System, k: int, rows: Any) -> tuple[Array, Array]:
-    """Upper left block of the inverse of the bordered matrix for some stations, and that block times the values.
+def _bordered_inverse(system: System, k: int, rows: Any) -> tuple[Array, Array, Array]:
+    """Upper left block of the inverse of the bordered matrix for some stations, that block times the values, inv(K).
 
     By way of the covariance's own inverse: B = inv(K) - inv(K) F inv(F' inv(K) F) F' inv(K).
     """
@@ -77,10 +77,9 @@ def _bordered_inverse(system: System, k: int, rows: Any) -> tuple[Array, Array]:
     covariance[np.diag_indices(len(covariance))] *= 1.0 + 1e-12
     inverse = cho_solve(cho_factor(covariance, lower=True), np.eye(len(covariance)))
     drift = system.station_columns[k][rows][:, : system.drifts]
-    if system.drifts:
-        weighted = inverse @ drift
-        inverse = inverse - weighted @ np.linalg.pinv(drift.T @ weighted, hermitian=True) @ weighted.T
-    return inverse, inverse @ system.station_columns[k][rows, system.drifts]
+    weighted = inverse @ drift
+    bordered = inverse - weighted @ np.linalg.pinv(drift.T @ weighted, hermitian=True) @ weighted.T
+    return bordered, bordered @ system.station_columns[k][rows, system.drifts], inverse
 
 
 def _restore(system: System, k: int, row: Any, departure: Any) -> Any:
@@ -90,15 +89,17 @@ def _restore(system: System, k: int, row: Any, departure: Any) -> Any:
 
 
 def _leave_groups_out(system: System, labels: NDArray[np.int64], mean: Array, variance: Array) -> None:
+    from scipy.linalg import eigh
+
     own = labels[system.rows]
     members = [np.flatnonzero(own == g) for g in np.unique(own)]
     for k, column in enumerate(system.columns):
-        inverse, weighted = _bordered_inverse(system, k, np.arange(len(system.rows)))
+        bordered, weighted, inverse = _bordered_inverse(system, k, np.arange(len(system.rows)))
         value = system.station_columns[k, :, system.drifts]
         for group in members:
-            block = inverse[np.ix_(group, group)]
-            # A singular block means that without the group the drift (or the mean) is not known.
-            if np.linalg.cond(block) > 1e12:
+            block = bordered[np.ix_(group, group)]
+            # The drift took away from inv(K) all that the group tells: without it the drift (or the mean) is not known.
+            if eigh(block, inverse[np.ix_(group, group)], eigvals_only=True)[0] < 1e-10:
                 continue
             spread = np.linalg.inv(block)
             error = spread @ weighted[group]
@@ -113,8 +114,9 @@ def _leave_out_of_tiles(system: System, mean: Array, variance: Array) -> None:
         rows = tiles.stations(int(tile))
         here = np.flatnonzero(tile_of[rows] == tile)
         for k, column in enumerate(system.columns):
-            inverse, weighted = _bordered_inverse(system, k, rows)
-            spread = 1.0 / np.diag(inverse)[here]
+            bordered, weighted, inverse = _bordered_inverse(system, k, rows)
+            told = np.diag(bordered)[here] > 1e-10 * np.diag(inverse)[here]
+            spread = 1.0 / np.where(told, np.diag(bordered)[here], np.nan)
             departure = system.station_columns[k, rows[here], system.drifts] - spread * weighted[here]
             mean[system.rows[rows[here]], column] = _restore(system, k, rows[here], departure)
             variance[system.rows[rows[here]], column] = spread
