@@ -114,7 +114,7 @@ def test_tiles_stay_small_and_hold_the_nearest_stations(name):
 
 
 @pytest.mark.slow
-@pytest.mark.parametrize(("name", "most"), [("uniform", 0.02), ("gap", 0.08), ("transects", 0.12), ("clusters", 0.15)])
+@pytest.mark.parametrize(("name", "most"), [("uniform", 0.02), ("gap", 0.11), ("transects", 0.12), ("clusters", 0.15)])
 def test_close_to_the_answer_of_all_stations(name, most):
     # Cells anywhere, in the gaps too; what 0.03 kriging standard deviations would be beside stations is not
     # reached between clusters, where any 80 stations know less of the mean than all do.

@@ -35,7 +35,7 @@ def compiled(function: F) -> F:
     Division follows IEEE (no Python exceptions), the interpreter lock is let go, and fast-math stays off: sums keep
     their order, so that results do not depend on vector width or on where in a block a value stands.
     """
-    dispatcher = njit(cache=True, nogil=True, error_model="numpy")(function)
+    dispatcher: Any = njit(cache=True, nogil=True, error_model="numpy")(function)
     # numba keeps a compiled function as long as its own file is unchanged, although functions of other files were
     # compiled into it; here it is kept as long as all of them are.
     dispatcher._cache._cache_file._source_stamp = _stamp()

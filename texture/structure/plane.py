@@ -68,7 +68,7 @@ class Plane:
     ('local', 2)
     >>> points = plane.to_metres([3.0, 3.2], [55.0, 55.1])
     >>> float(np.hypot(*(points[1] - points[0])).round(1))
-    16950.4
+    16950.9
     """
 
     kind: str
