@@ -119,6 +119,36 @@ def test_samples_from_below_the_surface_are_set_aside(read):
     ]
 
 
+def test_slices_of_a_core_make_one_station_above_the_surface_depth(read):
+    slices = [
+        ["C1", 54.5, 3.5, 50, 50, 0, "", 0, 5],
+        ["C1", 54.5, 3.5, 20, 80, 0, "", 5, 20],
+        ["C1", 54.5, 3.5, 90, 10, 0, "", 20, 30],
+    ]
+    stations = read([[*HEADER, "Top (cm)", "Bottom (cm)"], *[[*r, "", ""] for r in ROWS], *slices])
+    core = stations.table.set_index("id").loc["C1"]
+    assert core["mud"] == pytest.approx(0.35)  # 5 cm each above 10 cm
+    assert core["repeats"] == 1
+    assert stations.set_aside["row"].tolist() == [10]
+
+
+def test_a_sample_depth_without_unit_is_refused(read):
+    with pytest.raises(
+        SampleError,
+        match=r'row 7, column "Sample top": found "30" without a unit, expected a heading that says cm or m',
+    ):
+        read([[*HEADER, "Sample top"], *[[*r, t] for r, t in zip(ROWS, [0, 0, 0, 0, 0, 30], strict=True)]])
+
+
+def test_n_and_e_that_hold_degrees_and_a_geographic_system_for_x_and_y(read):
+    head = ["Station", "N", "E", *HEADER[3:]]
+    assert read([head, *ROWS]).table["latitude"].tolist() == [r[1] for r in ROWS]
+    head = ["Station", "Y", "X", *HEADER[3:]]
+    assert read([head, *ROWS], block={"crs": "EPSG:4326"}).table["longitude"].tolist() == [r[2] for r in ROWS]
+    with pytest.raises(SampleError, match="these look like degrees: name them longitude and latitude"):
+        read([head, *ROWS])
+
+
 def test_survey_days_fill_missing_dates(read):
     rows = [[*r, d] for r, d in zip(ROWS, ["17/05/1987", "", "18/05/1987", "", "", ""], strict=True)]
     stations = read([[*HEADER, "Date"], *rows], block={"from": "1987-05-11", "to": "1987-05-22"})
@@ -182,13 +212,13 @@ cell = st.one_of(
 def test_no_row_is_ever_lost(read, extra):
     """Whatever stands below five good rows: read and accounted for, or refused in one line."""
     try:
-        stations = read([*GOOD, *extra], "any.xlsx")
+        stations = read([*GOOD, *extra], "any.csv")
     except SampleError as error:
         said = str(error)
     else:
         said = ""
     if said:  # a single share above 100 % stops the file
-        assert re.search(r'any\.xlsx, sheet "Stations", row \d+, column ".*expected a share of at most 100 %', said)
+        assert re.search(r'any\.csv, row \d+, column ".*expected a share of at most 100 %', said)
         return
     assert law(stations)
     filled = sum(any(c not in (None, "") for c in row) for row in [*GOOD, *extra])

@@ -18,6 +18,8 @@ def rows(*values, **columns):
         "kind": "sieve",
         "described_class": "",
         "resolution": 0.005,
+        "top_m": 0.0,
+        "thickness_m": np.nan,
     }
     for name, value in {**defaults, **columns}.items():
         frame[name] = value if isinstance(value, list) else [value] * n
@@ -71,3 +73,11 @@ def test_hard_ground_is_never_merged():
 def test_merging_equal_rows_changes_nothing(n):
     stations, _ = merge_repeats(rows(*[(0.25, 0.5, 0.25)] * n))
     assert stations[["mud", "sand", "gravel"]].to_numpy().tolist() == [[0.25, 0.5, 0.25]]
+
+
+def test_slices_of_a_core_are_weighted_by_their_thickness_and_are_one_sample():
+    # 0-2 cm and 2-10 cm above a surface of 10 cm: one fifth and four fifths
+    stations, _ = merge_repeats(rows((0.5, 0.5, 0.0), (0.0, 0.5, 0.5), top_m=[0.0, 0.02], thickness_m=[0.02, 0.08]))
+    np.testing.assert_allclose(stations[["mud", "sand", "gravel"]].to_numpy(), [[0.1, 0.5, 0.4]])
+    assert stations["repeats"].tolist() == [1]
+    assert stations["repeat_sd_mud"].isna().all()

@@ -81,18 +81,19 @@ def _recognise(table: Table, index: int) -> tuple[str, int] | None:
         # "Position Latitude": the lower line is the column's own name, the upper one its group's.
         tries.insert(0, role_of(table.lowest[index]))
     found = next((t for t in tries if t is not None), None)
-    if found is None or not _content_agrees(found[0], table.columns[index]):
+    if found is None or not _content_agrees(*found, table.columns[index]):
         return None
     return found
 
 
-def _content_agrees(role: str, cells: list[Cell]) -> bool:
+def _content_agrees(role: str, weight: int, cells: list[Cell]) -> bool:
     filled = [c for c in cells[:LOOKED_AT] if not is_blank(c)]
     if not filled:
         return role not in _STRICT or role in PARTS
     if role in _NUMERIC:
-        # "no recovery", "trace" and the like may fill much of a column of shares
-        return sum(looks_like_value(c) for c in filled) >= (0.2 if role in PARTS else 0.5) * len(filled)
+        # "no recovery", "trace" and notes may fill much of a column that its heading names plainly
+        least = 0.0 if weight >= 3 and role in _STRICT else 0.5 * len(filled)
+        return sum(looks_like_value(c) for c in filled) > least
     if role == "date":
         return any(looks_like_value(c) for c in filled)
     if role in ("description", "remarks"):

@@ -15,9 +15,9 @@ from texture.stations.files import Cell, is_blank
 from texture.stations.intervals import read_intervals
 from texture.stations.sources import Source
 from texture.stations.tables import Table
-from texture.stations.where import Where
+from texture.stations.where import Where, shown
 
-__all__ = ["days_of", "metres_of", "texts_of", "top_of"]
+__all__ = ["days_of", "interval_of", "metres_of", "texts_of"]
 
 METRES = {"cm": 0.01, "mm": 0.001, "ft": 0.3048, "fathom": 1.8288}
 
@@ -31,22 +31,23 @@ def _home_of(source: Source, role: str) -> tuple[Table, Column, npt.NDArray[np.i
     return None
 
 
-def top_of(source: Source, notes: list[str]) -> npt.NDArray[np.float64]:
-    """How far below the surface of the bed each sample begins, in metres; NaN where nothing is said."""
-    top = metres_of(source, "sample_top", notes)
+def interval_of(source: Source, notes: list[str]) -> tuple[npt.NDArray[np.float64], npt.NDArray[np.float64]]:
+    """Where each sample begins and ends, in metres below the surface of the bed; NaN where nothing is said."""
+    top, bottom = (metres_of(source, role, notes) for role in ("sample_top", "sample_bottom"))
     home = _home_of(source, "sample_interval")
     if home is None:
-        return top
+        return top, bottom
     table, column, match = home
-    found, _, unread = read_intervals(table.columns[column.index], column.unit)
+    begins, ends, unread = read_intervals(table.columns[column.index], column.unit)
     if unread:
         i = unread[0]
         notes.append(
             f'{table.where.at(column.heading).text()}: {len(unread)} entries are no intervals, such as "{table.columns[column.index][i]}" '
             f"in row {table.rows[i]}: taken as surface samples"
         )
-    found = found if match is None else np.where(match >= 0, found[match], np.nan)
-    return np.where(np.isnan(top), found, top)
+    if match is not None:
+        begins, ends = (np.where(match >= 0, v[match], np.nan) for v in (begins, ends))
+    return np.where(np.isnan(top), begins, top), np.where(np.isnan(bottom), ends, bottom)
 
 
 def metres_of(source: Source, role: str, notes: list[str]) -> npt.NDArray[np.float64]:
@@ -57,6 +58,14 @@ def metres_of(source: Source, role: str, notes: list[str]) -> npt.NDArray[np.flo
     table, column, match = home
     place = table.where.at(column.heading)
     value = read_numbers(table.columns[column.index], place, table.rows).value
+    if role != "depth" and column.unit is None and np.nanmax(value, initial=0.0) > 0.0:
+        i = int(np.nanargmax(value))
+        raise place.error(
+            f"{shown(table.columns[column.index][i])} without a unit",
+            "a heading that says cm or m",
+            "write the unit into the heading",
+            row=table.rows[i],
+        )
     unit = column.unit if column.unit in METRES else "m"
     if unit != "m":
         notes.append(f"{place.text()}: {unit} turned to metres")

@@ -20,13 +20,14 @@ def merge_repeats(
 
     Mass is what a patch of bed shares out, so fractions are averaged, not log-ratios: the log-ratio mean of 0
     and 40 % gravel is 4.5 %. A row that knows only some parts counts for those; the others are scaled to what is
-    left. Rows told only in words give way to a measured row. Hard ground is never merged.
+    left. Slices of one core (rows that begin at different depths) are weighted by their thickness above the recipe's
+    `surface_m` and count as one sample. Rows told only in words give way to a measured row. Hard ground is never merged.
 
     Parameters
     ----------
     rows : DataFrame
         Used and evidence rows in reading order, with survey, longitude, latitude, mud, sand, gravel, kind,
-        described_class and resolution.
+        described_class, resolution, top_m and thickness_m (down to `surface_m`; NaN where the lower end is unknown).
     copies : bool array, shape (n_rows,), optional
         Rows that stand in another spreadsheet too, under the survey and place of their original; they join its group
         without counting.
@@ -41,7 +42,8 @@ def merge_repeats(
     Examples
     --------
     >>> rows = pd.DataFrame({"survey": "a", "longitude": [3.0, 3.0], "latitude": [54.0, 54.0], "mud": [0.2, 0.4],
-    ...     "sand": [0.8, 0.2], "gravel": [0.0, 0.4], "kind": "sieve", "described_class": "", "resolution": 0.005})
+    ...     "sand": [0.8, 0.2], "gravel": [0.0, 0.4], "kind": "sieve", "described_class": "", "resolution": 0.005,
+    ...     "top_m": 0.0, "thickness_m": 0.1})
     >>> merge_repeats(rows)[0][["mud", "sand", "gravel", "repeats"]].values.round(6).tolist()
     [[0.3, 0.5, 0.2, 2.0]]
     """
@@ -74,8 +76,22 @@ def merge_repeats(
         stations[f"repeat_sd_{part}"] = np.nan
     several = np.bincount(group, weights=counts, minlength=len(size)) > 1
     if several.any():
-        _average(rows, stations, group, counts, several)
+        slices = _are_slices(rows["top_m"].to_numpy(), group, counts, len(size))
+        stations.loc[slices, "repeats"] = 1
+        weight = np.where(slices[group], rows["thickness_m"].fillna(rows["thickness_m"].median()).fillna(1.0), 1.0)
+        _average(rows, stations, group, counts, several, weight)
+        stations.loc[slices, [f"repeat_sd_{part}" for part in PARTS]] = np.nan
     return stations, group
+
+
+def _are_slices(
+    top: FloatArray, group: npt.NDArray[np.int64], counts: npt.NDArray[np.bool_], n_groups: int
+) -> npt.NDArray[np.bool_]:
+    """Whether the rows of a group begin at different depths below the surface of the bed."""
+    highest, lowest = np.full(n_groups, -np.inf), np.full(n_groups, np.inf)
+    np.maximum.at(highest, group[counts], top[counts])
+    np.minimum.at(lowest, group[counts], top[counts])
+    return highest > lowest
 
 
 def _numbered(key: pd.DataFrame) -> npt.NDArray[np.int64]:
@@ -96,21 +112,22 @@ def _average(
     group: npt.NDArray[np.int64],
     counts: npt.NDArray[np.bool_],
     several: npt.NDArray[np.bool_],
+    weight: FloatArray,
 ) -> None:
     take = several[group] & counts
-    index, n = group[take], len(several)
+    index, n, weight = group[take], len(several), weight[take]
     values = rows.loc[:, list(PARTS)].to_numpy(dtype=np.float64)[take]
     known = np.isfinite(values)
     mean, spread = np.full((n, 3), np.nan), np.full((n, 3), np.nan)
     for k in range(3):
         number = np.bincount(index, weights=known[:, k], minlength=n)
-        total = np.bincount(index, weights=np.where(known[:, k], values[:, k], 0.0), minlength=n)
+        total = np.bincount(index, weights=np.where(known[:, k], weight * values[:, k], 0.0), minlength=n)
         with np.errstate(invalid="ignore", divide="ignore"):
-            mean[:, k] = total / number
+            mean[:, k] = total / np.bincount(index, weights=weight * known[:, k], minlength=n)
             away = np.where(known[:, k], values[:, k] - mean[index, k], 0.0)
             spread[:, k] = np.sqrt(np.bincount(index, weights=away**2, minlength=n) / (number - 1.0))
         spread[number < 2, k] = np.nan
-    mean = _consistent(mean, values, index, n)
+    mean = _consistent(mean, values, index, n, weight)
     for k, part in enumerate(PARTS):
         stations.loc[several, part] = mean[several, k]
         stations.loc[several, f"repeat_sd_{part}"] = spread[several, k]
@@ -123,7 +140,9 @@ def _average(
         stations.loc[full, "kind"] = better.reindex(np.flatnonzero(full)).fillna("partial").to_numpy()
 
 
-def _consistent(mean: FloatArray, values: FloatArray, index: npt.NDArray[np.int64], n: int) -> FloatArray:
+def _consistent(
+    mean: FloatArray, values: FloatArray, index: npt.NDArray[np.int64], n: int, weight: FloatArray
+) -> FloatArray:
     """Make the means of groups in which some rows know more than others sum to 1.
 
     Beside complete rows, a row that knows less moves the mean of what it knows, mud say; the others keep the
@@ -132,9 +151,10 @@ def _consistent(mean: FloatArray, values: FloatArray, index: npt.NDArray[np.int6
     full = np.isfinite(values).all(axis=1)
     rows, complete = np.bincount(index, minlength=n), np.bincount(index, weights=full, minlength=n)
     own: FloatArray = np.column_stack(
-        [np.bincount(index, weights=np.where(full, values[:, k], 0.0), minlength=n) for k in range(3)]
+        [np.bincount(index, weights=np.where(full, weight * values[:, k], 0.0), minlength=n) for k in range(3)]
     )
-    own = own / np.maximum(complete, 1.0)[:, None]
+    with np.errstate(invalid="ignore"):
+        own = own / np.bincount(index, weights=weight * full, minlength=n)[:, None]
     mixed = (complete > 0) & (complete < rows)
     rest = own[:, 1] + own[:, 2]
     with np.errstate(invalid="ignore", divide="ignore"):

@@ -15,11 +15,11 @@ from texture.stations.audit import AuditLog
 from texture.stations.bottoms import is_hard_ground
 from texture.stations.cells import Numbers, read_numbers
 from texture.stations.columns import Column
-from texture.stations.entries import days_of, metres_of, texts_of, top_of
+from texture.stations.entries import days_of, interval_of, metres_of, texts_of
 from texture.stations.fates import judge, words_of
 from texture.stations.files import Cell, Sheet, is_blank
 from texture.stations.fractions import Shares, no_shares, share_out
-from texture.stations.headings import PARTS
+from texture.stations.headings import PARTS, role_of
 from texture.stations.joins import Joined
 from texture.stations.positions import Positions, from_metres, from_zones, is_projected, read_degrees
 from texture.stations.size_shares import shares_from_sizes
@@ -58,7 +58,8 @@ def read_rows(
     fate, reason = fates.fate, fates.reason
     audit.take_over(log, without=rows[fate == "not_samples"])
     depth = metres_of(source, "depth", notes)
-    _set_aside_deep(top_of(source, notes), intake, fate, reason)
+    top, bottom = interval_of(source, notes)
+    _set_aside_deep(top, intake, fate, reason)
     dates = days_of(source, block, notes)
     hard = fate == "evidence"
     parts = np.where(hard[:, None], np.nan, np.column_stack([shares.mud, shares.sand, shares.gravel]))
@@ -83,6 +84,8 @@ def read_rows(
             "position_accuracy_m": positions.accuracy_m,
             "description": texts_of(source, "description", ""),
             "described_class": fates.described,
+            "top_m": np.nan_to_num(top),
+            "thickness_m": _thickness(top, bottom, intake.surface_m),
             "fate": fate,
             "reason": reason,
         }
@@ -112,6 +115,7 @@ def bare_places(joined: Joined, block: Samples) -> pd.DataFrame:
     frame["position_accuracy_m"] = positions.accuracy_m[hard]
     frame["description"] = ""
     frame["described_class"] = ""
+    frame["top_m"], frame["thickness_m"] = 0.0, np.nan
     frame["fate"] = "evidence"
     frame["reason"] = [words[int(i)] for i in hard]
     return frame
@@ -151,6 +155,9 @@ def _positions(table: Table, columns: Mapping[str, Column], block: Samples) -> P
     if degrees:
         where = place("longitude"), place("latitude")
         return read_degrees(cells("longitude"), cells("latitude"), where, table.rows, block.crs, block.hemisphere)
+    if metres and not degrees and _hold_degrees(columns, block):
+        pair = place("easting"), place("northing")
+        return read_degrees(cells("easting"), cells("northing"), pair, table.rows, block.crs, block.hemisphere)
     if metres and "zone" in columns and block.crs is None:
         where = place("easting"), place("northing")
         zone = table.columns[columns["zone"].index]
@@ -164,6 +171,14 @@ def _positions(table: Table, columns: Mapping[str, Column], block: Samples) -> P
             longitude, latitude, (place("position"), place("position")), table.rows, block.crs, block.hemisphere
         )
     raise _no_column(table, "columns of latitude and longitude, or of easting and northing", "name them")
+
+
+def _hold_degrees(columns: Mapping[str, Column], block: Samples) -> bool:
+    """Whether columns of easting and northing are degrees: X and Y of a geographic system, or bare "N" and "E"."""
+    if block.crs is not None:
+        return not is_projected(block.crs)
+    hints = [role_of(columns[role].heading) for role in ("easting", "northing")]
+    return "zone" not in columns and all(hint is not None and hint[1] == 1 for hint in hints)
 
 
 def _no_column(table: Table, expected: str, do: str) -> SampleError:
@@ -211,6 +226,14 @@ def _check_numeric(table: Table, column: Column, numbers: Numbers) -> None:
             "name another column",
             row=table.rows[i],
         )
+
+
+def _thickness(
+    top: npt.NDArray[np.float64], bottom: npt.NDArray[np.float64], surface_m: float
+) -> npt.NDArray[np.float64]:
+    """Thickness of each sample above the surface depth; NaN where its ends do not tell."""
+    thickness = np.minimum(bottom, surface_m) - np.nan_to_num(top)
+    return np.where(thickness > 0.0, thickness, np.nan)
 
 
 def _set_aside_deep(
