@@ -98,6 +98,10 @@ def _scan_sheet(path: Path, archive: zipfile.ZipFile, member: zipfile.ZipInfo) -
             if len(tail) > TEXT_MOST:
                 raise _too_long(path)
             cells += block.count(b"<c ") + block.count(b"<c>")
+            if cells > AREA_MOST:
+                raise SampleError(
+                    f"{path.name}, {Path(member.filename).stem}: more than {AREA_MOST:,} cells; save the table as csv"
+                )
             found = CELL.findall(block)
             if found:
                 lowest = max({digits for _, digits in found}, key=int)
@@ -112,10 +116,6 @@ def _scan_sheet(path: Path, archive: zipfile.ZipFile, member: zipfile.ZipInfo) -
         raise SampleError(
             f"{path.name}, {Path(member.filename).stem}: cells as far as {far_column.decode()}{bottom} make a sheet of {bottom} rows × {right} columns; "
             "delete what stands far from the table, or save the table as csv"
-        )
-    if cells > AREA_MOST:
-        raise SampleError(
-            f"{path.name}, {Path(member.filename).stem}: more than {AREA_MOST:,} cells; save the table as csv"
         )
     return max(area, cells), hidden
 

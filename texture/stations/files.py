@@ -11,6 +11,7 @@ from texture.errors import SampleError
 __all__ = ["Cell", "Sheet", "is_blank", "read_sheets"]
 
 Cell = object
+POINT_LAYERS = (".gpkg", ".geojson", ".json", ".shp")
 ZIP, OLE = b"PK\x03\x04", b"\xd0\xcf\x11\xe0\xa1\xb1\x1a\xe1"
 
 
@@ -57,10 +58,10 @@ def is_blank(cell: Cell) -> bool:
 
 
 def read_sheets(path: str | Path) -> list[Sheet]:
-    """Read every sheet of a spreadsheet or text table.
+    """Read every sheet of a spreadsheet, text table or layer of points.
 
-    The kind of file is told from its first bytes, not from its name: a `.xls` that is really a text
-    table is common.
+    Spreadsheets and text tables are told apart by their first bytes, not by their names: a `.xls` that is really a
+    text table is common.
 
     Raises
     ------
@@ -75,6 +76,10 @@ def read_sheets(path: str | Path) -> list[Sheet]:
         raise SampleError(f"{path}: cannot be read ({error.strerror}); check the path and its permissions") from error
     if not head.strip():
         raise SampleError(f"{path.name}: the file is empty, expected a table of samples; check the export")
+    if path.suffix.casefold() in POINT_LAYERS:
+        from texture.stations.points import read_points
+
+        return read_points(path)
     if head.startswith((ZIP, OLE)):
         from texture.stations.workbooks import read_workbook
 
