@@ -6,7 +6,7 @@ import numpy as np
 import pandas as pd
 import pytest
 
-from tests.stations.samples import HEADER, ROWS, as_csv
+from tests.stations.samples import HEADER, ROWS, as_csv, recipe_for, write_xlsx
 from texture.errors import SampleError
 from texture.recipe_file import read_recipe
 from texture.stations import read_samples
@@ -120,3 +120,12 @@ def test_a_file_that_cannot_be_read_becomes_a_comment(files, tmp_path):
     text = draft_recipe(files(survey=[HEADER, *ROWS], letter=[["Dear colleague"], ["see", "below"]]), tmp_path)
     assert "# NOT READ: letter.csv: no table of samples found" in text
     assert read(text, tmp_path).counts["stations"] == 6
+
+
+def test_a_workbook_with_a_sheet_for_each_year(tmp_path):
+    path = tmp_path / "years.xlsx"
+    later = [[r[0], r[1] + 0.5, *r[2:]] for r in ROWS]
+    write_xlsx(path, {"1987": [HEADER, *ROWS], "2004": [HEADER, *later], "Notes": [["nothing", "here"]]})
+    with pytest.raises(SampleError, match='samples on 2 sheets, "1987", "2004"; give each a samples block of its own'):
+        read_samples(recipe_for({"file": path}))
+    assert read(draft_recipe([path], tmp_path), tmp_path).counts["stations"] == 12

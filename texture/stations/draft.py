@@ -18,7 +18,7 @@ from texture.stations.columns import Column
 from texture.stations.files import Cell, is_blank
 from texture.stations.headings import PARTS, plain
 from texture.stations.rows import read_rows
-from texture.stations.sources import Source, find_source
+from texture.stations.sources import Source, find_source, sheets_with_samples
 from texture.stations.tables import Table
 from texture.stations.where import shown
 
@@ -76,7 +76,7 @@ def draft_recipe(
     SampleError
         If not one of the files can be read.
     """
-    looks = [_look(Path(file)) for file in files]
+    looks = [look for file in files for look in _looks(Path(file))]
     known = _together([look.extent for look in looks if look.extent] + ([grid_extent] if grid_extent else []))
     looks = [_with_projection(look, grid_extent or known) for look in looks]
     for look in looks:
@@ -96,8 +96,17 @@ def draft_recipe(
     return "\n".join(lines) + "\n"
 
 
-def _look(file: Path, crs: str | None = None) -> _Look:
-    look = _Look(file, Samples(file=file, crs=crs))
+def _looks(file: Path) -> list[_Look]:
+    """One look for a file, or for each of its sheets where several hold samples."""
+    try:
+        names = sheets_with_samples(Samples(file=file))
+    except SampleError:
+        names = []
+    return [_look(file, sheet=name) for name in names] if len(names) > 1 else [_look(file)]
+
+
+def _look(file: Path, crs: str | None = None, sheet: str | None = None) -> _Look:
+    look = _Look(file, Samples(file=file, crs=crs, sheet=sheet))
     try:
         look.source = find_source(look.block)
         frame, notes = read_rows(look.source, look.block, Intake(), DETECTION_LIMIT, AuditLog())
@@ -147,7 +156,7 @@ def _with_projection(look: _Look, around: Extent | None) -> _Look:
     first, last = (int((x + 180.0) // 6.0) + 1 for x in (around[0], around[2]))
     for zone in range(max(1, first - 1), min(60, last + 1) + 1):
         for code in (32600 + zone, 32700 + zone):
-            tried = _look(look.file, f"EPSG:{code}")
+            tried = _look(look.file, f"EPSG:{code}", look.block.sheet)
             if not tried.error and tried.extent is not None and _overlap(tried.extent, around):
                 fits.append(tried)
     if not fits:

@@ -15,7 +15,7 @@ from texture.stations.joins import Joined, best_ids, join_tables
 from texture.stations.sizes import SizeColumn, size_columns
 from texture.stations.tables import Table, find_table, no_table
 
-__all__ = ["Source", "find_source"]
+__all__ = ["Source", "find_source", "sheets_with_samples"]
 
 SIDE_BY_SIDE = 5000  # rows and columns up to which a sheet is tried with the two exchanged
 
@@ -69,7 +69,14 @@ def find_source(block: Samples, label: str | None = None) -> Source:
     results = next((s for s in sources if s.has_shares and "id" in s.columns), None)
     source = None
     if block.join is None:
-        source = next((s for s in sources if s.has_position and s.has_shares), None)
+        whole = [s for s in sources if s.has_position and s.has_shares]
+        shown = [s for s in whole if not s.sheet.hidden]
+        if len(shown) > 1:
+            names = ", ".join(f'"{s.sheet.name}"' for s in shown)
+            raise SampleError(
+                f"{sheets[0].file}: samples on {len(shown)} sheets, {names}; give each a samples block of its own with its sheet"
+            )
+        source = next(iter(shown or whole), None)
     if source is None and results is not None:
         source = _joined(results, _places(block, sheets, results), block)
     if source is None:
@@ -78,6 +85,12 @@ def find_source(block: Samples, label: str | None = None) -> Source:
         source = found[0]
     _check_mapped(source, block.columns)
     return _with_unread(source, sheets)
+
+
+def sheets_with_samples(block: Samples) -> list[str]:
+    """Names of the sheets, hidden ones left out, that each tell both where and what."""
+    looks = [_look(sheet, block) for sheet in read_sheets(block.file) if not sheet.hidden]
+    return [s.sheet.name for s in looks if isinstance(s, Source) and s.has_position and s.has_shares]
 
 
 def _named(sheets: list[Sheet], name: str | None, file: str) -> list[Sheet]:
