@@ -119,8 +119,12 @@ def read_stations(recipe_path: Where, **settings: Any) -> Stations:
 
 
 def _stations(recipe: Recipe, progress: Progress) -> tuple[Target, Stations]:
+    from texture.output import read_names
+
     with progress.stage("read the grid"):
         target = read_target(recipe.target)
+        if recipe.outputs.names is not None:  # a mistake there is told before the work, not after it
+            read_names(recipe.outputs.names, target.dims)
     with progress.stage("read the samples"):
         return target, place_stations(read_samples(recipe), target, recipe.intake)
 

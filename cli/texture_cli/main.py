@@ -6,6 +6,7 @@ import typer
 
 from texture_cli.build import build
 from texture_cli.draft import draft
+from texture_cli.inspect import inspect
 from texture_cli.intake import intake
 from texture_cli.validate import validate
 
@@ -25,6 +26,7 @@ app.command()(draft)
 app.command()(intake)
 app.command()(validate)
 app.command()(build)
+app.command()(inspect)
 
 
 def _version(asked: bool) -> None:

@@ -50,7 +50,11 @@ def run(work: Callable[[Any], Report], *, quiet: bool, as_json: bool) -> None:
     except MemoryError:
         _stop("not enough memory for this grid; choose larger cells or smaller bounds", FAILED)
     except Exception as error:
-        _stop(f"a fault of the program, please report it ({type(error).__name__}: {error})", FAILED)
+        first = next(iter(str(error).splitlines()), "")[:300]
+        _stop(
+            f"a fault of the program, please report it ({type(error).__name__}: {first}); TEXTURE_DEBUG=1 shows where",
+            FAILED,
+        )
     if as_json:
         sys.stdout.write(json.dumps(report.data, ensure_ascii=False, allow_nan=False) + "\n")
     if not quiet:

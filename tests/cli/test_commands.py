@@ -6,8 +6,10 @@ import subprocess
 import sys
 import tomllib
 
+import numpy as np
 import pytest
 import tomli_w
+import xarray as xr
 
 DONE, FAILED, WRONG_INPUT, INTERRUPTED = 0, 1, 2, 130
 
@@ -63,6 +65,24 @@ def test_validate_prints_the_error_of_each_method(small):
     assert {p.name for p in (small.parent / "scores").iterdir()} == {"validation.csv", "held_out.csv"}
 
 
+@pytest.mark.slow
+def test_inspect_passes_the_demo_bed_and_fails_one_with_a_hole(plain, tmp_path):
+    bed = plain.found.recipe.output / "bed.nc"
+    done = texture("inspect", bed)
+    assert done.returncode == DONE, done.stderr
+    assert done.stderr.splitlines()[-1].startswith("bed.nc: ")
+    assert " 0 fail" in done.stderr
+    with xr.open_dataset(bed) as data:
+        data = data.load()
+    row, column = np.argwhere(plain.found.target.active.reshape(plain.found.target.shape))[500]
+    data["class_fraction"][:, 0, row, column] = np.nan
+    data.to_netcdf(tmp_path / "hole.nc")
+    done = texture("inspect", tmp_path / "hole.nc", "--json")
+    assert done.returncode == FAILED
+    assert json.loads(done.stdout)["fail"] >= 1
+    assert texture("inspect", tmp_path / "none.nc").returncode == WRONG_INPUT
+
+
 def edit(path, change):
     settings = tomllib.loads(path.read_text())
     change(settings)
@@ -104,6 +124,13 @@ MISTAKES = {
         "these look like degrees, but EPSG:32626 is in metres",
     ),
     "no such recipe": (lambda p: p.unlink(), "no such recipe"),
+    "unknown name": (
+        lambda p: (
+            (p.parent / "names.toml").write_text('[variables]\nclas_fraction = { name = "x" }\n'),
+            edit(p, lambda s: s.update(outputs={"names": "names.toml"})),
+        ),
+        "clas_fraction",
+    ),
     "rim wider than the grid": (lambda p: edit(p, lambda s: s["rim"].update(width_cells=500)), "rim"),
 }
 
@@ -135,7 +162,7 @@ def test_wrong_usage_is_code_2():
 def test_help_names_the_commands_and_an_example():
     done = texture("--help")
     assert done.returncode == DONE
-    for command in ("draft", "intake", "validate", "build"):
+    for command in ("draft", "intake", "validate", "build", "inspect"):
         assert command in done.stdout
         assert "Example: texture" in texture(command, "--help").stdout
     assert texture("--version").stdout.startswith("texture 0.")
