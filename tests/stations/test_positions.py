@@ -7,7 +7,8 @@ from hypothesis import strategies as st
 
 from texture.errors import RecipeError, SampleError
 from texture.stations.angles import parse_angle, parse_pair
-from texture.stations.positions import from_metres, read_degrees
+from texture.stations.metres import from_metres
+from texture.stations.positions import read_degrees
 from texture.stations.where import Where
 
 LON, LAT = Where("a.csv", "", "Lon"), Where("a.csv", "", "Lat")

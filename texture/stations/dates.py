@@ -49,12 +49,12 @@ def read_dates(cells: Sequence[Cell], where: Where) -> tuple[npt.NDArray[np.obje
     >>> read_dates(["17/05/1987", "1987-06-02", 1987, ""], Where("a.csv"))[0].tolist()
     ['1987-05-17', '1987-06-02', '1987', '']
     """
-    distinct: dict[object, str | tuple[int, int, int] | None] = {}
+    distinct: dict[tuple[type, Cell], str | tuple[int, int, int] | None] = {}
     for cell in cells:
         key = (type(cell), cell)
         if key not in distinct:
             distinct[key] = _one(cell)
-    pairs = [(v, key[1]) for key, v in distinct.items() if isinstance(v, tuple)]  # type: ignore[index]
+    pairs = [(v, key[1]) for key, v in distinct.items() if isinstance(v, tuple)]
     day_first = [shown(c) for (a, b, _), c in pairs if a > 12 >= b]
     month_first = [shown(c) for (a, b, _), c in pairs if b > 12 >= a]
     notes: list[str] = []
@@ -64,7 +64,7 @@ def read_dates(cells: Sequence[Cell], where: Where) -> tuple[npt.NDArray[np.obje
         notes.append(
             f"{where.text()}: the order of day and month cannot be told from {found}; these dates are left blank"
         )
-    unreadable = [shown(key[1]) for key, v in distinct.items() if v is None and not is_blank(key[1])]  # type: ignore[index]
+    unreadable = [shown(key[1]) for key, v in distinct.items() if v is None and not is_blank(key[1])]
     if unreadable:
         notes.append(
             f"{where.text()}: {len(unreadable)} different entries are no dates and are left blank, such as {unreadable[0]}"

@@ -40,7 +40,7 @@ _PATTERNS: tuple[tuple[str, int, str], ...] = (
     ("position", 2, r"^(position|positions|coordinates|coords|coordenadas|posicion|posicao|posizione|koordinaten|coordinaten|coordonnees|positie)$"),
     ("sample_interval", 4, r"\b(sample|core|sediment|depth)\b.*\b(interval|range|slice|section)\b|^interval\b|\bhorizon(te)?\b"),
     ("sample_top", 4, r"\b(sample|core|sediment|section|interval|depth|layer|horizon|cm|slice)\b.*\b(top|from|start|upper)\b|^(top|from|upper|von|desde|de)\b.*\b(cm|depth|m|core|tiefe)\b|\b(top|upper) (of )?(sample|section|core|interval|depth|slice)\b"),
-    ("sample_bottom", 4, r"\b(sample|core|sediment|section|interval|depth|layer|horizon|cm|slice)\b.*\b(bottom|base|to|end|lower)\b|^(bottom|base|to|lower|bis|hasta)\b.*\b(cm|depth|m|core|tiefe)\b|\b(bottom|base|lower) (of )?(sample|section|core|interval|depth|slice)\b"),
+    ("sample_bottom", 4, r"\b(sample|core|sediment|section|interval|depth|layer|horizon|cm|slice)\b.*\b(bottom|base|to|end|lower)\b|^(bottom|base|to|lower|bis|hasta)\b.*\b(cm|mm|core|tiefe)\b|^lower depth\b|\b(bottom|base|lower) (of )?(sample|section|core|interval|slice)\b"),
     ("depth", 3, r"\b(water|sea|bottom|station|sounding) ?depth\b|\bdepth\b.*\b(water|below sea|msl|bsl|chart)\b|\bwassertiefe\b|\bwaterdiepte\b|\bprofondeur d eau\b"),
     ("depth", 2, r"^depth\b|\bdepths?$|\b(profundidad|profundidade|profondeur|profondita|tiefe|diepte|sonda|bathymetry|sounding)\b"),
     ("survey", 3, r"\b(survey|cruise|campaign|expedition|voyage|campana|campanha|campagne|kampagne|kampanje|crociera|campagna|ausfahrt|reise|mission)\b"),
@@ -52,12 +52,12 @@ _PATTERNS: tuple[tuple[str, int, str], ...] = (
     ("id", 3, r"^(sample|station|stations|stn|st|site|grab|sample id|id|probe|probennummer|estacion|muestra|echantillon|station|amostra|estacao|campione|stazione|monster|locatie|standort|messstelle|stationsnummer|monsternummer)$"),
     ("id", 2, r"\b(id|code|label|ref|reference)$|^(no|nr|number|name|nummer|numero|num|codigo)$"),
     ("mud", 3, r"\bmud\b|\bfines\b|\bfangos?\b|\blodos?\b|\bvases?\b|\bschlamm\b|\bschlick\b|\bslib\b|\blama\b|\bboues?\b|\bpelit[ae]s?\b|\bfinos\b|\bfango\b|\bpelitic\b"),
-    ("mud", 3, r"\bsilt\b\s*(\+|&|and|und|et|y|e|en|/)\s*\bclay\b|\bclay\b\s*(\+|&|and|/)\s*\bsilt\b|\bschluff\b.*\bton\b|\blimos?\b.*\barcillas?\b|\blimons?\b.*\bargiles?\b"),
-    ("mud", 2, r"^(fraction |part )?" + _UNDER_63 + r"( ?%| ?g| fraction| percent)?$"),
+    ("mud", 3, r"\bsilt\b\s*(\+|&|and|und|et|y|e|en|/|)\s*\bclay\b|\bclay\b\s*(\+|&|and|/|)\s*\bsilt\b|\bschluff\b.*\bton\b|\bton\b.*\bschluff\b|\blimos?\b.*\barcillas?\b|\blimons?\b.*\bargiles?\b"),
+    ("mud", 2, r"^(% ?|fraction |part )?" + _UNDER_63 + r"( ?%| ?g| fraction| percent)?$"),
     ("sand", 3, r"\bsands?\b|\barenas?\b|\bareias?\b|\bsables?\b|\bsabbi[ae]\b|\bzand\b"),
     ("sand", 2, r"^(0\.06\d*|6[0-9](\.\d+)?)\s*(mm|um)?\s*(-|to|–)\s*(2|2000|2\.0)\s*(mm|um)( ?%)?$"),
     ("gravel", 3, r"\bgravels?\b|\bgravas?\b|\bgraviers?\b|\bkies\b|\bghiai[ae]\b|\bcascalhos?\b|\bgrind\b|\bgrus\b"),
-    ("gravel", 2, r"^(fraction |part )?" + _OVER_2 + r"( ?%| ?g| fraction| percent)?$"),
+    ("gravel", 2, r"^(% ?|fraction |part )?" + _OVER_2 + r"( ?%| ?g| fraction| percent)?$"),
     ("silt", 3, r"\bsilts?\b|\blimos?\b|\blimons?\b|\bschluff\b|\bsilte\b"),
     ("clay", 3, r"\bclays?\b|\barcillas?\b|\bargiles?\b|\bton\b|\bargill[ae]\b|\bklei\b|\bargilas?\b|\blutum\b"),
     ("description", 3, r"\b(description|sediment type|bottom type|seabed type|nature of (the )?(bottom|seabed)|lithology|descripcion|beschreibung|omschrijving|descrizione|descricao|bodenart|litologia|lithologie|bodemsoort|sedimenttyp|tipo de sedimento)\b"),
@@ -71,7 +71,7 @@ _SAND_SUBCLASS = re.compile(
 )
 # Quantities that are named after a part but are not its share
 _NOT_A_SHARE = re.compile(
-    r"\b(median|mean|mode|d50|d ?\d\d|mz|sorting|skew\w*|kurt\w*|ratio|class|type|sd|std|error|uncertainty|flag|carbonate|organic|toc|loi|colou?r)\b|:"
+    r"\b(median|mean|mode|d50|d ?\d\d|mz|sorting|skew\w*|kurt\w*|ratio|class|type|sd|std|error|uncertainty|flag|carbonate|organic|toc|loi|colou?r|temperature|ph|strength|density|moisture|porosity|water content)\b|:"
 )
 
 _UNITS: tuple[tuple[str, str], ...] = (
@@ -103,7 +103,7 @@ def plain(heading: str) -> str:
     >>> plain("Länge (°E)"), plain("< 63 µm, %"), plain("Sand_Fraction")
     ('lange e', '< 63 um %', 'sand fraction')
     """
-    text = heading.casefold()
+    text = re.sub(r"(?<=[a-z])(?=[A-Z][a-zA-Z])", " ", heading).casefold()  # SampleID, DecLat
     for old, new in (("µ", "u"), ("μ", "u"), ("φ", " phi "), ("ϕ", " phi "), ("ø", " phi "), ("ß", "ss"), ("−", "-")):
         text = text.replace(old, new)
     text = "".join(c for c in unicodedata.normalize("NFKD", text) if not unicodedata.combining(c))

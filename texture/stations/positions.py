@@ -5,6 +5,7 @@ from __future__ import annotations
 import re
 from collections.abc import Sequence
 from dataclasses import dataclass
+from typing import TYPE_CHECKING
 
 import numpy as np
 import numpy.typing as npt
@@ -15,7 +16,10 @@ from texture.stations.cells import read_numbers, usual_decimals
 from texture.stations.files import Cell, is_blank
 from texture.stations.where import Where, shown
 
-__all__ = ["Positions", "from_metres", "from_zones", "is_projected", "read_degrees"]
+if TYPE_CHECKING:
+    import pyproj
+
+__all__ = ["Positions", "find_system", "is_projected", "placed", "read_degrees", "to_wgs84"]
 
 FloatArray = npt.NDArray[np.float64]
 _PLAIN = re.compile(r"\s*[+\-−]?\d{1,3}(?:[.,]\d*)?\s*|\s*-?\d{4,}(?:[.,]\d*)?\s*")
@@ -82,137 +86,28 @@ def read_degrees(
     problem = np.where(lat_problem != "", lat_problem, lon_problem)
     notes: tuple[str, ...] = ()
     if crs is not None:
-        system = _system(crs)
+        system = find_system(crs)
         if system.is_projected:
             raise RecipeError(
                 f'{where[0].text()}: the recipe says crs = "{crs}", which is in metres, but the column holds degrees; '
                 "take crs out, or name easting and northing in columns"
             )
-        lon, lat, notes = _transform(lon, lat, system, where[0].file)
+        lon, lat, notes = to_wgs84(lon, lat, system, where[0].file)
     lon = np.where(lon > 180.0, lon - 360.0, lon)
     lost = np.isnan(lon) | np.isnan(lat)
     problem = np.where(lost & (problem == ""), "no position", problem)
     zero = ~lost & (lon == 0.0) & (lat == 0.0)
     problem = np.where(zero, "position 0, 0, which stands for none", problem)
     lost |= zero
-    return _positions(lon, lat, accuracy, problem, lost, notes)
-
-
-def from_metres(
-    easting: Sequence[Cell],
-    northing: Sequence[Cell],
-    where: tuple[Where, Where],
-    rows: Sequence[int],
-    crs: str | None,
-) -> Positions:
-    """Read columns of easting and northing in the system `crs` and turn them to degrees.
-
-    Raises
-    ------
-    SampleError
-        If no system is given, if the values are degrees, or if most positions lie far outside the area for which
-        the system is meant (wrong zone, or easting and northing swapped).
-    RecipeError
-        If `crs` is unknown.
-    """
-    x, y = (
-        read_numbers(cells, place, rows, thousands=True)
-        for cells, place in zip((easting, northing), where, strict=True)
-    )
-    known = np.isfinite(x.value) & np.isfinite(y.value)
-    in_degrees = known & (np.abs(x.value) <= 360.0) & (np.abs(y.value) <= 90.0)
-    if known.any() and in_degrees.sum() > known.sum() / 2 and (crs is None or _system(crs).is_projected):
-        i = int(np.argmax(in_degrees))
-        raise where[0].error(
-            f'{shown(x.value[i])} (and {shown(y.value[i])} in "{where[1].column}")',
-            "metres",
-            "these look like degrees: name them longitude and latitude in columns"
-            + (f' and take crs = "{crs}" out' if crs else ""),
-            row=rows[i],
-        )
-    if crs is None:
-        raise where[0].error(
-            "easting and northing without a coordinate system",
-            "one",
-            'add crs = "EPSG:…" to this file\'s samples block',
-        )
-    system = _system(crs)
-    lon, lat, notes = _transform(
-        np.where(known, x.value, np.nan), np.where(known, y.value, np.nan), system, where[0].file
-    )
-    _check_area(lon, lat, known, system, crs, where, x.value, y.value, rows)
-    unit_m = system.axis_info[0].unit_conversion_factor or 1.0
-    # Eastings typed to full hundreds carry no digits after the point; their common step tells.
-    accuracy = np.maximum(x.half_width, y.half_width) * unit_m
-    accuracy = np.where(
-        known, np.maximum(accuracy, 0.5 * unit_m * min(_step(x.value[known]), _step(y.value[known]))), np.nan
-    )
-    lost = np.isnan(lon) | np.isnan(lat)
-    blank = np.array([is_blank(a) and is_blank(b) for a, b in zip(easting, northing, strict=True)], dtype=bool)
-    problem = np.where(lost, np.where(blank, "no position", "easting or northing cannot be read"), "").astype(object)
-    return _positions(lon, lat, accuracy, problem, lost, notes)
-
-
-def from_zones(
-    easting: Sequence[Cell],
-    northing: Sequence[Cell],
-    zone: Sequence[Cell],
-    where: tuple[Where, Where],
-    rows: Sequence[int],
-    zone_where: Where,
-) -> Positions:
-    """Read easting and northing whose UTM zone (WGS 84) stands in a column: `31N`, `31 north`, `31U`.
-
-    A letter other than N and S is a latitude band: C to M south, N to X north. A lone number does not tell the
-    hemisphere, and `S` is both "south" and the band from 32° N to 40° N; both are refused.
-
-    Raises
-    ------
-    SampleError
-        If a zone cannot be told.
-    """
-    n = len(rows)
-    nan = np.full(n, np.nan)
-    found = Positions(nan.copy(), nan.copy(), nan.copy(), np.full(n, "no zone", dtype=object))
-    notes: list[str] = []
-    for text in dict.fromkeys(str(z).strip() for z in zone if not is_blank(z)):
-        members = [i for i, z in enumerate(zone) if not is_blank(z) and str(z).strip() == text]
-        match = re.fullmatch(
-            r"(?:utm\s*)?(?:zone\s*)?(\d{1,2})\s*°?\s*(n|north|norte|s|south|sur|[c-hj-mp-rt-x])", text, re.I
-        )
-        number = int(match[1]) if match else 0
-        if match is None or match[2].casefold() == "s" or not 1 <= number <= 60:
-            raise zone_where.error(
-                shown(text),
-                "a UTM zone such as 31N or 31 south",
-                'say crs = "EPSG:326.." (north) or "EPSG:327.." (south) for the file',
-                row=rows[members[0]],
-            )
-        word = match[2].casefold()
-        north = word in ("n", "north", "norte") or (len(word) == 1 and "p" <= word <= "x")
-        part = from_metres(
-            [easting[i] for i in members],
-            [northing[i] for i in members],
-            where,
-            [rows[i] for i in members],
-            f"EPSG:{(32600 if north else 32700) + number}",
-        )
-        for whole, piece in zip(
-            (found.longitude, found.latitude, found.accuracy_m, found.problem),
-            (part.longitude, part.latitude, part.accuracy_m, part.problem),
-            strict=True,
-        ):
-            whole[members] = piece
-        notes.extend(part.notes)
-    return Positions(found.longitude, found.latitude, found.accuracy_m, found.problem, tuple(notes))
+    return placed(lon, lat, accuracy, problem, lost, notes)
 
 
 def is_projected(crs: str) -> bool:
     """Whether a coordinate system is one of metres (or feet) rather than degrees; RecipeError if it is unknown."""
-    return bool(_system(crs).is_projected)
+    return bool(find_system(crs).is_projected)
 
 
-def _positions(
+def placed(
     lon: FloatArray,
     lat: FloatArray,
     accuracy: FloatArray,
@@ -220,6 +115,7 @@ def _positions(
     lost: npt.NDArray[np.bool_],
     notes: tuple[str, ...],
 ) -> Positions:
+    """Return positions with everything blanked where they are lost."""
     nan = np.nan
     return Positions(
         np.where(lost, nan, lon),
@@ -304,17 +200,8 @@ def _accuracy_m(lon_half: FloatArray, lat_half: FloatArray, latitude: FloatArray
     return np.maximum(lat_half, lon_half * shrink) * METRES_PER_DEGREE
 
 
-def _step(values: FloatArray) -> float:
-    """Largest power of ten, from 1, that nearly all values are multiples of."""
-    step = 1.0
-    if not len(values):
-        return step
-    while step < 10_000.0 and np.mean(np.abs(values / (10 * step) - np.round(values / (10 * step))) < 1e-9) > 0.95:
-        step *= 10.0
-    return step if step > 1.0 else 0.0
-
-
-def _system(crs: str):  # type: ignore[no-untyped-def]
+def find_system(crs: str) -> pyproj.CRS:
+    """Return the coordinate system that a recipe names; RecipeError if it is unknown."""
     import pyproj
 
     try:
@@ -325,7 +212,10 @@ def _system(crs: str):  # type: ignore[no-untyped-def]
         ) from error
 
 
-def _transform(x: FloatArray, y: FloatArray, system, file: str) -> tuple[FloatArray, FloatArray, tuple[str, ...]]:  # type: ignore[no-untyped-def]
+def to_wgs84(
+    x: FloatArray, y: FloatArray, system: pyproj.CRS, file: str
+) -> tuple[FloatArray, FloatArray, tuple[str, ...]]:
+    """Transform to longitude and latitude of WGS 84; a note tells the operation, and aloud where the datum shift is unknown."""
     import pyproj
 
     target = pyproj.CRS.from_epsg(4326)
@@ -341,32 +231,3 @@ def _transform(x: FloatArray, y: FloatArray, system, file: str) -> tuple[FloatAr
     if "ballpark" in how.casefold():
         note += "; the shift between the two datums is not known here, positions may be off by up to 200 m"
     return lon, lat, (note,)
-
-
-def _check_area(  # type: ignore[no-untyped-def]
-    lon: FloatArray,
-    lat: FloatArray,
-    known: npt.NDArray[np.bool_],
-    system,
-    crs: str,
-    where: tuple[Where, Where],
-    x: FloatArray,
-    y: FloatArray,
-    rows: Sequence[int],
-) -> None:
-    area, margin = system.area_of_use, 5.0  # degrees; surveys reach into the neighbouring zone, not beyond it
-    if area is None or not known.any():
-        return
-    west, east = area.west - margin, area.east + margin
-    if area.west > area.east:
-        east += 360.0
-    turned = np.where(lon < west, lon + 360.0, lon)
-    inside = (turned >= west) & (turned <= east) & (lat >= area.south - margin) & (lat <= area.north + margin)
-    if (known & ~inside).sum() > known.sum() / 2:
-        i = int(np.argmax(known & ~inside))
-        raise where[0].error(
-            f'{shown(float(x[i]))} (and {shown(float(y[i]))} in "{where[1].column}")',
-            f"a position in {system.name}",
-            f'crs = "{crs}" may be the wrong zone, or easting and northing are swapped',
-            row=rows[i],
-        )

@@ -21,7 +21,8 @@ from texture.stations.files import Cell, Sheet, is_blank
 from texture.stations.fractions import Shares, no_shares, share_out
 from texture.stations.headings import PARTS, role_of
 from texture.stations.joins import Joined
-from texture.stations.positions import Positions, from_metres, from_zones, is_projected, read_degrees
+from texture.stations.metres import from_metres, from_zones
+from texture.stations.positions import Positions, is_projected, read_degrees
 from texture.stations.size_shares import shares_from_sizes
 from texture.stations.sources import Source
 from texture.stations.tables import Table

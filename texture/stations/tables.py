@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import datetime as dt
 import re
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, field
 
 from texture.errors import SampleError
@@ -236,9 +236,9 @@ def _spread(sheet: Sheet, i: int, width: int, below: bool) -> list[str]:
     return row
 
 
-def _join(parts: object) -> str:
+def _join(parts: Iterable[str]) -> str:
     words: list[str] = []
-    for part in parts:  # type: ignore[attr-defined]
+    for part in parts:
         if part and part not in words:
             words.append(part)
     return " ".join(words)
