@@ -1,4 +1,4 @@
-"""Each command in a process of its own: words, exit codes, and the output folder left as it was."""
+"""Each command: words, exit codes, and the output folder left as it was."""
 
 import json
 import os
@@ -10,6 +10,10 @@ import numpy as np
 import pytest
 import tomli_w
 import xarray as xr
+from typer.testing import CliRunner
+
+from texture.errors import OutputError, StructureError
+from texture_cli.main import app
 
 DONE, FAILED, WRONG_INPUT, INTERRUPTED = 0, 1, 2, 130
 
@@ -135,7 +139,6 @@ MISTAKES = {
 }
 
 
-@pytest.mark.slow
 @pytest.mark.parametrize("name", MISTAKES)
 def test_mistakes_give_one_line_code_2_and_leave_the_folder(small, name):
     out = small.parent / "out"
@@ -143,8 +146,8 @@ def test_mistakes_give_one_line_code_2_and_leave_the_folder(small, name):
     (out / "bed.nc").write_text("of an earlier run")
     spoil, words = MISTAKES[name]
     spoil(small)
-    done = texture("build", small, "--overwrite")
-    assert done.returncode == WRONG_INPUT, done.stderr
+    done = CliRunner().invoke(app, ["build", str(small), "--overwrite"])
+    assert done.exit_code == WRONG_INPUT, done.stderr
     assert words in done.stderr
     assert done.stdout == ""
     assert len(done.stderr.strip().splitlines()) == 1, done.stderr
@@ -173,3 +176,50 @@ def test_output_that_is_a_file_is_refused(small):
     done = texture("intake", small)
     assert done.returncode == WRONG_INPUT
     assert "expected a folder" in done.stderr
+
+
+@pytest.mark.parametrize(
+    ("raised", "code", "words"),
+    [
+        (KeyboardInterrupt(), INTERRUPTED, "texture: interrupted; earlier results are as they were"),
+        (OutputError("out: the disk is full"), FAILED, "texture: out: the disk is full"),
+        (StructureError("no fit"), FAILED, "texture: no fit"),
+        (MemoryError(), FAILED, "texture: not enough memory for this grid; choose larger cells or smaller bounds"),
+        (RuntimeError("one\ntwo"), FAILED, "texture: a fault of the program, please report it (RuntimeError: one); "),
+    ],
+    ids=lambda value: type(value).__name__ if isinstance(value, BaseException) else "",
+)
+def test_how_each_failure_ends(small, monkeypatch, raised, code, words):
+    def fail(*arguments, **settings):
+        raise raised
+
+    monkeypatch.setattr("texture.pipeline.build", fail)
+    done = CliRunner().invoke(app, ["build", str(small)])
+    assert done.exit_code == code
+    assert done.stderr.startswith(words)
+    assert len(done.stderr.strip().splitlines()) == 1
+    assert done.stdout == ""
+
+
+def test_warnings_are_counted_and_grouped(small, monkeypatch):
+    import warnings
+
+    from texture.errors import TextureWarning
+
+    class Nothing:
+        def summary_lines(self):
+            return ["done"]
+
+        def summary(self):
+            return {"done": True}
+
+    def warn(*arguments, **settings):
+        for _ in range(3):
+            warnings.warn("the range is longer than the survey", TextureWarning, stacklevel=1)
+        warnings.warn("of some library", DeprecationWarning, stacklevel=1)
+        return Nothing()
+
+    monkeypatch.setattr("texture.pipeline.build", warn)
+    done = CliRunner().invoke(app, ["build", str(small)])
+    assert done.exit_code == DONE
+    assert done.stderr.splitlines() == ["done", "note: the range is longer than the survey (3 times)"]
