@@ -129,3 +129,25 @@ def test_a_workbook_with_a_sheet_for_each_year(tmp_path):
     with pytest.raises(SampleError, match='samples on 2 sheets, "1987", "2004"; give each a samples block of its own'):
         read_samples(recipe_for({"file": path}))
     assert read(draft_recipe([path], tmp_path), tmp_path).counts["stations"] == 12
+
+
+def test_minutes_typed_as_decimals_are_doubted(files, tmp_path):
+    def rows(step):
+        return [
+            [f"S{i}", 54 + (i % 3) + (i * step % 60) / 100, 3 + (i % 2) + (i * 7 % 60) / 100, 10, 90, 0, ""]
+            for i in range(40)
+        ]
+
+    text = draft_recipe(files(minutes=[HEADER, *rows(7)]), tmp_path)
+    assert "degrees and minutes typed as decimals" in text
+    decimal = [[*r[:1], r[1] + 0.35, *r[2:]] for r in rows(7)]
+    assert "typed as decimals" not in draft_recipe(files(decimal=[HEADER, *decimal]), tmp_path)
+
+
+def test_a_unit_that_only_the_values_tell_is_doubted(files, tmp_path):
+    rows = [[*r[:3], r[3]] for r in ROWS]
+    text = draft_recipe(files(mud=[["Station", "Latitude", "Longitude", "Mud"], *rows]), tmp_path)
+    assert (
+        "# DOUBT: mud.csv: no heading and no complete row tells the unit; the largest share, 60, reads as percent"
+        in text
+    )

@@ -115,9 +115,26 @@ def _look(file: Path, crs: str | None = None, sheet: str | None = None) -> _Look
         return look
     look.notes = [*look.source.sheet.notes, *look.source.notes, *notes]
     look.counts = {str(k): int(v) for k, v in frame["fate"].value_counts().items()}
+    look.doubts += [f"DOUBT: {note}" for note in notes if "tells the unit" in note or "headings say" in note]
     lon, lat = frame["longitude"].to_numpy(), frame["latitude"].to_numpy()
+    if "latitude" in look.source.columns and _look_like_minutes(lon, lat):
+        look.doubts.append(
+            "DOUBT: no position has decimals of .60 or more: these may be degrees and minutes typed as decimals"
+        )
     look.extent = _extent(lon, lat)
     return look
+
+
+def _look_like_minutes(lon: npt.NDArray[np.float64], lat: npt.NDArray[np.float64]) -> bool:
+    """Whether all decimals stay below .60, which thirty positions in decimal degrees do by chance once in 10^13.
+
+    Tested only where the positions span a degree; within less they may well share their decimals.
+    """
+    both = np.concatenate([lon, lat])
+    both = np.abs(both[np.isfinite(both)])
+    if len(both) < 60 or min(np.ptp(lon[np.isfinite(lon)]), np.ptp(lat[np.isfinite(lat)])) < 1.0:
+        return False
+    return bool((both % 1.0 < 0.6).all())
 
 
 def _extent(lon: npt.NDArray[np.float64], lat: npt.NDArray[np.float64]) -> Extent | None:

@@ -16,6 +16,7 @@ from texture.stations.headings import PARTS
 from texture.stations.joins import POSITION_ROLES
 from texture.stations.positions import Positions
 from texture.stations.sources import Source
+from texture.stations.tables import looks_like_value
 from texture.stations.where import shown
 
 __all__ = ["Fates", "judge", "words_of"]
@@ -64,8 +65,9 @@ def _without_place(source: Source, cells: list[Cell], given: bool, problem: str)
     texts = [c.strip() for c in cells if isinstance(c, str) and c.strip()]
     if texts and is_total(texts[0]):
         return "not_samples", "total or mean line"
-    alone = sum(not is_blank(c) for c in cells) == 1
-    if all(is_blank(cells[k]) for k in matters) or (alone and not given):
+    # A line of one or two words, such as "nd: not determined", explains the table.
+    short = sum(not is_blank(c) for c in cells) <= 2 and not any(looks_like_value(c) for c in cells)
+    if all(is_blank(cells[k]) for k in matters) or (short and not given):
         return "not_samples", "note"
     return "set_aside", problem or "no position"
 

@@ -107,7 +107,7 @@ def find_table(sheet: Sheet, mapped: Mapping[str, str] | None = None, header_row
     aside = [(i + 1, "title or note above the table") for i in range(first) if _filled(rows[i])]
     aside += [(i + 1, "header line") for i in range(first, last + 1) if _filled(rows[i])]
     aside += [(i + 1, "units row") for i in range(last + 1, start)]
-    kept, numbers = _sample_rows(rows, start, [rows[i] for i in range(first, last + 1)], aside)
+    kept, numbers = _sample_rows(where, rows, start, [rows[i] for i in range(first, last + 1)], aside)
     columns = [list(column) for column in zip(*(_padded(row, width) for row in kept), strict=True)] if kept else []
     return Table(
         where, headings, lowest, units, columns or [[] for _ in range(width)], numbers, aside, (first + 1, last + 1)
@@ -115,36 +115,66 @@ def find_table(sheet: Sheet, mapped: Mapping[str, str] | None = None, header_row
 
 
 def _sample_rows(
-    rows: list[list[Cell]], start: int, header: list[list[Cell]], aside: list[tuple[int, str]]
+    where: Where, rows: list[list[Cell]], start: int, header: list[list[Cell]], aside: list[tuple[int, str]]
 ) -> tuple[list[list[Cell]], list[int]]:
-    """Split what stands below the header into rows of samples and repeated header or units lines."""
+    """Split what stands below the header into rows of samples and repeated header or units lines.
+
+    A further block under the same headings in another order is put into the order of the first.
+    """
     kept: list[list[Cell]] = []
     numbers: list[int] = []
-    shapes = [{str(c).strip().casefold() for c in line if not is_blank(c)} for line in header]
-    shapes = [shape for shape in shapes if len(shape) >= 2]
-    words = set().union(*shapes) if shapes else set()
+    lines = [_words(line) for line in header]
+    order: list[int] | None = None
     for i in range(start, len(rows)):
         row = rows[i]
         first = next((c for c in row if not is_blank(c)), None)
         if first is None:
             continue
         # Only a row that begins with a word can be a header or units row again; most begin with an id or a number.
-        if isinstance(first, str) and (reason := _repeats_header(first, row, words, shapes)):
-            aside.append((i + 1, reason))
-            continue
-        kept.append(row)
+        if isinstance(first, str) and not first[-1:].isdigit():
+            if _is_header_again(row, lines):
+                order = _order_of(where, row, lines, i + 1)
+                aside.append((i + 1, "repeated header line"))
+                continue
+            if is_unit(first) and len(row) > 1 and _is_units_row(row):
+                aside.append((i + 1, "units row"))
+                continue
+        kept.append(row if order is None else [row[c] if c < len(row) else None for c in order])
         numbers.append(i + 1)
     return kept, numbers
 
 
-def _repeats_header(first: str, row: list[Cell], words: set[str], shapes: list[set[str]]) -> str:
-    if first.strip().casefold() in words:
-        cells = {str(c).strip().casefold() for c in row if not is_blank(c)}
-        if any(len(cells & shape) >= max(2, 0.6 * len(shape)) for shape in shapes):
-            return "repeated header line"
-    if not any(ch.isdigit() for ch in first) and is_unit(first) and len(row) > 1 and _is_units_row(row):
-        return "units row"
-    return ""
+def _words(line: list[Cell]) -> dict[int, str]:
+    return {c: str(cell).strip().casefold() for c, cell in enumerate(line) if not is_blank(cell)}
+
+
+def _is_header_again(row: list[Cell], lines: list[dict[int, str]]) -> bool:
+    texts = [c for c in row if isinstance(c, str) and c.strip() and not c.strip()[-1].isdigit()]
+    filled = sum(not is_blank(c) for c in row)
+    if len(texts) < max(2, 0.6 * filled):
+        return False
+    cells = set(_words(row).values())
+    if any(len(cells & set(line.values())) >= max(2, 0.6 * len(line)) for line in lines):
+        return True
+    return len(roles_in(texts)) >= 4  # the header of another table
+
+
+def _order_of(where: Where, row: list[Cell], lines: list[dict[int, str]], number: int) -> list[int] | None:
+    """Column of the row's block for each column of the table; None if they are the same."""
+    again = _words(row)
+    if any(all(again.get(c) in (None, word) for c, word in line.items()) for line in lines):
+        return None
+    own = lines[-1]
+    places = {word: c for c, word in again.items()}
+    if len(lines) > 1 or len(places) < len(again) or not set(own.values()) <= set(places):
+        raise where.error(
+            "a second header that differs from the first",
+            "one table on a sheet, or further blocks under the same headings",
+            "put the second table on a sheet of its own",
+            row=number,
+        )
+    width = max(own) + 1
+    return [places[own[c]] if c in own else len(row) for c in range(width)]
 
 
 def _best_header(rows: list[list[Cell]], named: set[str]) -> int | None:

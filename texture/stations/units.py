@@ -57,10 +57,10 @@ def find_unit(
     if by_heading is not None:
         return by_heading, None
     largest = max((float(np.nanmax(n.value)) for n in numbers.values() if np.isfinite(n.value).any()), default=0.0)
-    if largest <= 1.0:
-        return "fraction", None
     if largest <= 105.0:
-        return "percent", None
+        unit = "fraction" if largest <= 1.0 else "percent"
+        told = f"no heading and no complete row tells the unit; the largest share, {largest:g}, reads as {UNITS[unit]}"
+        return unit, f"{where.text()}: {told}; say unit in the recipe if it is not"
     raise where.error(
         f"a share of {largest:g} and rows that sum neither to 1 nor to 100",
         "fractions of 1 or percent",

@@ -210,6 +210,10 @@ FATES = (
 
 POSITIONS_OF_ALL = [r[:3] for r in table()]
 LAYOUTS = (
+    Case("stacked blocks", text([*table()[:4], [], ["Second leg"], HEAD, *table()[4:]]), counts={"rows_read": 9, "rows_not_samples": 3}),
+    Case("a further block with its columns in another order", text([*table()[:4], [], *[[r[i] for i in (0, 5, 4, 3, 2, 1, 6)] for r in [HEAD, *table()[4:]]]]), counts={"rows_read": 8, "rows_not_samples": 2}),
+    Case("a laser sheet", text(table()), block={"method": "laser"}, changed=everywhere(kind="laser")),
+    Case("a table turned into a form with blank lines and a key below", text([*table(), [], ["Key:"], ["nd", "not determined"], ["tr", "trace"]]), counts={"rows_read": 10, "rows_not_samples": 4}),
     Case("samples side by side", text([list(c) for c in zip(*table(), strict=True)])),
     Case("samples side by side below a title", xlsx([["Report of the bight's laboratory"], [], *[list(c) for c in zip(*table(), strict=True)]]), "survey.xlsx"),
     Case(
