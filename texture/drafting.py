@@ -5,8 +5,6 @@ from __future__ import annotations
 from collections.abc import Sequence
 from pathlib import Path
 
-import numpy as np
-
 from texture.errors import RecipeError, TargetError
 from texture.recipe import TargetSettings
 from texture.stations.draft import draft_recipe
@@ -61,7 +59,7 @@ def draft(
         if not Path(path).is_file():
             raise RecipeError(f"{path}: no such file")
     target, problem = _look_at(grid)
-    extent = _extent(target) if target is not None else None
+    extent = target.bounds if target is not None else None
     text = draft_recipe(files, recipe_path.absolute().parent, grid, extent)
     text += _grid_lines(target, problem) + RIM + CLASSES
     aside = recipe_path.with_name(f".{recipe_path.name}.new")
@@ -79,16 +77,11 @@ def _look_at(grid: str | Path | None) -> tuple[Target | None, str]:
         return None, str(error)
 
 
-def _extent(target: Target) -> tuple[float, float, float, float]:
-    lon, lat = target.corners
-    return float(np.nanmin(lon)), float(np.nanmin(lat)), float(np.nanmax(lon)), float(np.nanmax(lat))
-
-
 def _grid_lines(target: Target | None, problem: str) -> str:
     if target is None:
         return f"# DOUBT: {problem}\n" if problem else ""
     lines = [
-        f"# {target.shape[0]} × {target.shape[1]} cells, {int(target.active.sum()):,} of them water, found by the file's own attributes",
+        f"# {target.size_text}, {int(target.active.sum()):,} of them water, found by the file's own attributes",
         *(f"# {note}" for note in target.notes),
         *(f"# outer edge, {opening}" for opening in target.openings),
     ]

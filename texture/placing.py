@@ -66,8 +66,7 @@ def _same_turn(longitude: Floats, like: Floats) -> Floats:
 
 
 def _check_overlap(lon: Floats, lat: Floats, target: Target, count: int) -> None:
-    west, east = np.nanmin(target.corner_longitude), np.nanmax(target.corner_longitude)
-    south, north = np.nanmin(target.corner_latitude), np.nanmax(target.corner_latitude)
+    west, south, east, north = target.bounds
     if ((lon >= west) & (lon <= east) & (lat >= south) & (lat <= north)).any():
         return
     raise SampleError(

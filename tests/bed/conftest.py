@@ -5,6 +5,7 @@ import pyproj
 import pytest
 
 from texture.targets import Target
+from texture.targets.structured import Structured
 
 
 def make_target(active, size_m=100.0, **settings):
@@ -31,6 +32,7 @@ def make_target(active, size_m=100.0, **settings):
         latitude=latitude,
         corners=(np.stack([c[0] for c in corners], axis=1), np.stack([c[1] for c in corners], axis=1)),
         active=active.ravel(),
+        topology=Structured(active.shape),
         x=x,
         y=y,
         **settings,

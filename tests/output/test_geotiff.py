@@ -1,5 +1,6 @@
 import shutil
 import subprocess
+from dataclasses import replace
 
 import numpy as np
 import pyproj
@@ -92,11 +93,7 @@ def test_default_pixels_are_as_large_as_the_cells():
 
 def test_polar_grids_get_a_polar_projection():
     target = make_curvilinear()
-    moved = type(target)(
-        **{name: getattr(target, name) for name in ("kind", "name", "dims", "shape", "crs", "longitude", "active")},
-        latitude=target.latitude + 37.0,
-        corners=(target.corners[0], target.corners[1] + 37.0),
-    )
+    moved = replace(target, latitude=target.latitude + 37.0, corners=(target.corners[0], target.corners[1] + 37.0))
     grid = pixel_grid(moved, 200.0)
     assert grid.crs.to_epsg() == 3995
     assert (grid.cell >= 0).any()

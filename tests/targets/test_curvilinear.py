@@ -9,8 +9,8 @@ from hypothesis import strategies as st
 
 from texture.errors import TargetError
 from texture.recipe import TargetSettings
-from texture.targets import read_target
-from texture.targets.openings import find_openings
+from texture.targets import Target, read_target
+from texture.targets.structured import Structured
 
 LON = {"units": "degrees_east", "standard_name": "longitude"}
 LAT = {"units": "degrees_north", "standard_name": "latitude"}
@@ -52,8 +52,8 @@ def test_rotated_grid_keeps_file_order_and_names_its_dimensions(tmp_path):
 def test_corners_between_centres_are_exact_on_a_regular_grid(tmp_path):
     lon, lat = rotated(angle=0.0)
     target = read(write(tmp_path / "g.nc", lon, lat))
-    np.testing.assert_allclose(target.corner_longitude[0], [-25.025, -24.975, -24.975, -25.025], atol=1e-12)
-    np.testing.assert_allclose(target.corner_latitude[0], [44.975, 44.975, 45.025, 45.025], atol=1e-12)
+    np.testing.assert_allclose(target.corners[0][0], [-25.025, -24.975, -24.975, -25.025], atol=1e-12)
+    np.testing.assert_allclose(target.corners[1][0], [44.975, 44.975, 45.025, 45.025], atol=1e-12)
 
 
 def test_bounds_in_the_file_are_used_and_turned_counter_clockwise(tmp_path):
@@ -71,9 +71,9 @@ def test_bounds_in_the_file_are_used_and_turned_counter_clockwise(tmp_path):
         },
     ).to_netcdf(path)
     target = read(path)
-    np.testing.assert_allclose(sorted(target.corner_longitude[0]), [-25.02, -25.02, -24.98, -24.98])
+    np.testing.assert_allclose(sorted(target.corners[0][0]), [-25.02, -25.02, -24.98, -24.98])
     geod = pyproj.Geod(ellps="WGS84")
-    area, _ = geod.polygon_area_perimeter(target.corner_longitude[0], target.corner_latitude[0])
+    area, _ = geod.polygon_area_perimeter(target.corners[0][0], target.corners[1][0])
     assert area > 0  # counter-clockwise
     assert target.area_m2[0] == pytest.approx(area, rel=1e-5)
 
@@ -163,7 +163,10 @@ def test_openings_hold_each_wet_outer_cell_once(seed):
     rng = np.random.default_rng(seed)
     lon, lat = (a.ravel() for a in rotated(rows=7, columns=9))
     active = rng.random(63) < 0.6
-    openings = find_openings(active, lon, lat, (7, 9))
+    target = Target(
+        "curvilinear", "grid", ("j", "i"), (7, 9), pyproj.CRS("EPSG:4326"), lon, lat, active, Structured((7, 9)), None
+    )
+    openings = target.openings
     outer = np.zeros((7, 9), dtype=bool)
     outer[[0, -1]] = outer[:, [0, -1]] = True
     cells = np.concatenate([o.cells for o in openings]) if openings else np.array([], int)
@@ -213,7 +216,7 @@ def test_land_without_positions_does_not_spoil_its_neighbours(tmp_path):
     mask[:2, 5:] = 0
     target = read(write(tmp_path / "g.nc", np.where(mask, lon, np.nan), np.where(mask, lat, np.nan), mask))
     wet = target.active
-    np.testing.assert_allclose(target.corner_longitude[wet], whole.corner_longitude[wet], atol=1e-12)
+    np.testing.assert_allclose(target.corners[0][wet], whole.corners[0][wet], atol=1e-12)
     np.testing.assert_allclose(
         target.area_m2[wet], whole.area_m2[wet], rtol=1e-6
     )  # the local projection differs a little

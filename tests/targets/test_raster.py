@@ -31,7 +31,7 @@ def test_rows_run_north_to_south_and_centres_are_half_a_cell_in():
 def test_corners_are_counter_clockwise_and_hold_the_centre():
     target = raster()
     for i in range(target.n_cells):
-        ring = shapely.LinearRing(np.column_stack([target.corner_longitude[i], target.corner_latitude[i]]))
+        ring = shapely.LinearRing(np.column_stack([target.corners[0][i], target.corners[1][i]]))
         assert ring.is_ccw
         assert shapely.Polygon(ring).contains(shapely.Point(target.longitude[i], target.latitude[i]))
 
@@ -39,7 +39,7 @@ def test_corners_are_counter_clockwise_and_hold_the_centre():
 def test_area_equals_the_geodesic_polygon():
     target = raster()
     geod = pyproj.Geod(ellps="WGS84")
-    expected = [geod.polygon_area_perimeter(target.corner_longitude[i], target.corner_latitude[i])[0] for i in range(6)]
+    expected = [geod.polygon_area_perimeter(target.corners[0][i], target.corners[1][i])[0] for i in range(6)]
     np.testing.assert_allclose(target.area_m2, expected, rtol=1e-6)  # sides are straight in one, geodesic in the other
 
 

@@ -77,8 +77,11 @@ def _own_cells(target: Target) -> PixelGrid:
     assert target.y is not None
     width = _step(target.x, target.y)
     height = _step(target.y, target.x)
-    transform = (width, 0.0, float(target.x[0]) - width / 2.0, 0.0, -height, float(target.y[0]) + height / 2.0)
-    return PixelGrid(np.arange(target.n_cells, dtype=np.int32).reshape(target.shape), transform, target.crs)
+    transform = (width, 0.0, float(target.x[0]) - width / 2.0, 0.0, -height, float(target.y.max()) + height / 2.0)
+    cell = np.arange(target.n_cells, dtype=np.int32).reshape(target.shape)
+    if target.y.size > 1 and target.y[0] < target.y[-1]:  # an image runs north to south, whatever the file does
+        cell = cell[::-1]
+    return PixelGrid(cell, transform, target.crs)
 
 
 def _step(axis: NDArray[np.float64], other: NDArray[np.float64]) -> float:
@@ -93,11 +96,10 @@ def _resample(target: Target, cell_size_m: float | None) -> PixelGrid:
     from rasterio.features import rasterize
     from rasterio.transform import Affine
 
+    assert target.corners is not None  # points have no image
     size = cell_size_m or _round_size(float(np.sqrt(np.median(target.area_m2[target.active]))))
     crs = _metric_crs(target)
-    x, y = pyproj.Transformer.from_crs(4326, crs, always_xy=True).transform(
-        target.corner_longitude, target.corner_latitude
-    )
+    x, y = pyproj.Transformer.from_crs(4326, crs, always_xy=True).transform(*target.corners)
     located = np.flatnonzero(np.isfinite(x).all(axis=1) & np.isfinite(y).all(axis=1))
     x, y = x[located], y[located]
     # Edges at whole multiples of the size: two grids resampled alike lie on each other.
@@ -113,7 +115,7 @@ def _resample(target: Target, cell_size_m: float | None) -> PixelGrid:
         )
     transform = Affine(size, 0.0, west, 0.0, -size, north)
     cells = shapely.polygons(np.stack([x, y], axis=-1))
-    shapes = zip(cells, (located + 1).tolist(), strict=True)
+    shapes = zip(cells, (target.cell_of_piece[located] + 1).tolist(), strict=True)
     number = rasterize(shapes, out_shape=(rows, columns), transform=transform, fill=0, dtype="int32")
     note = f"resampled from a curvilinear grid: each pixel of {size:g} m shows the cell that its centre lies in"
     return PixelGrid(number - 1, tuple(transform)[:6], crs, note)
@@ -127,8 +129,7 @@ def _round_size(size: float) -> float:
 def _metric_crs(target: Target) -> pyproj.CRS:
     import pyproj
 
-    corner = target.corner_latitude[target.active]
-    latitude = float(np.nanmean(corner))
+    latitude = float(np.nanmean(target.latitude[target.active]))
     angle = np.radians(target.longitude[target.active])
     longitude = float(np.degrees(np.arctan2(np.nanmean(np.sin(angle)), np.nanmean(np.cos(angle)))))
     if latitude > 84.0 or latitude < -80.0:

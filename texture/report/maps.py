@@ -90,31 +90,53 @@ def draw_maps(
 
 def _draw(figure: Figure, axis: Axes, target: Target, layer: Layer) -> None:
     import cmcrameri.cm as cm
-    from matplotlib.colors import BoundaryNorm, ListedColormap
+    from matplotlib.colors import BoundaryNorm, ListedColormap, Normalize
 
     axis.set_facecolor(LAND)
-    lon, lat, values = _thinned(target, np.where(target.active, layer.values, np.nan))
+    values = np.where(target.active, layer.values, np.nan)
     if layer.names:
         used = sorted({int(v) for v in values[np.isfinite(values)]})
-        colours = [tuple(c / 255 for c in layer.colours[v]) for v in used]
-        position = {v: i for i, v in enumerate(used)}
-        values = np.vectorize(lambda v: position.get(int(v), np.nan) if np.isfinite(v) else np.nan, otypes=[float])(
-            values
-        )
-        norm = BoundaryNorm(np.arange(len(used) + 1) - 0.5, len(used))
-        mesh = axis.pcolormesh(
-            lon, lat, np.ma.masked_invalid(values), cmap=ListedColormap(colours), norm=norm, rasterized=True
-        )
+        values = _positions(values, used)
+        colours = ListedColormap([tuple(c / 255 for c in layer.colours[v]) for v in used])
+        mesh = _patches(axis, target, values, colours, BoundaryNorm(np.arange(len(used) + 1) - 0.5, len(used)))
         bar = figure.colorbar(mesh, ax=axis, shrink=0.9, pad=0.02, ticks=range(len(used)))
         bar.ax.set_yticklabels([layer.names[v] for v in used])
         bar.ax.tick_params(length=0)
     else:
         colour_map: Any = getattr(cm, PART_MAP)
-        low, high = layer.limits
-        mesh = axis.pcolormesh(
-            lon, lat, np.ma.masked_invalid(values), cmap=colour_map, vmin=low, vmax=high, rasterized=True
-        )
+        mesh = _patches(axis, target, values, colour_map, Normalize(*layer.limits))
         figure.colorbar(mesh, ax=axis, shrink=0.9, pad=0.02, label=layer.label)
+
+
+def _positions(values: Floats, used: list[int]) -> Floats:
+    """Position of each class among those used, NaN where there is none."""
+    known = np.isfinite(values)
+    result = np.full(values.shape, np.nan)
+    result[known] = np.searchsorted(used, values[known].astype(int))
+    return result
+
+
+def _patches(axis: Axes, target: Target, values: Floats, colour_map: Any, norm: Any) -> Any:
+    """Draw each cell in its place: rows and columns as one sheet, faces as polygons, places as dots."""
+    if len(target.shape) == 2:
+        lon, lat, grid = _thinned(target, values)
+        sheet = np.ma.masked_invalid(grid)
+        return axis.pcolormesh(lon, lat, sheet, cmap=colour_map, norm=norm, rasterized=True)
+    shown = np.flatnonzero(np.isfinite(values))
+    if target.corners is None:
+        lon, lat = target.longitude[shown], target.latitude[shown]
+        return axis.scatter(lon, lat, c=values[shown], s=9, cmap=colour_map, norm=norm, rasterized=True)
+    from matplotlib.collections import PolyCollection
+
+    pieces = np.flatnonzero(np.isfinite(values[target.cell_of_piece]))
+    polygons = np.stack([corner[pieces] for corner in target.corners], axis=-1)
+    drawn = PolyCollection(
+        list(polygons), cmap=colour_map, norm=norm, edgecolors="face", linewidths=0.2, rasterized=True
+    )
+    drawn.set_array(values[target.cell_of_piece[pieces]])
+    axis.add_collection(drawn)
+    axis.autoscale_view()
+    return drawn
 
 
 def _thinned(target: Target, values: Floats) -> tuple[Floats, Floats, Floats]:

@@ -160,7 +160,7 @@ def _method_line(result: Result) -> str:
     wet = int(found.target.active.sum())
     inside = result.points_per_side**2
     return (
-        f"{found.target.name}: {found.target.shape[0]} × {found.target.shape[1]} cells, {wet:,} of them water, about "
+        f"{found.target.name}: {found.target.size_text}, {wet:,} of them water, about "
         f"{found.cell_side_m:,.0f} m wide. Method: {found.recipe.method.name.replace('_', ' ')} of "
         f"{len(found.mapper.logratio.coordinate_names)} log-ratio coordinates, {inside} point{'s' * (inside > 1)} a cell."
     )

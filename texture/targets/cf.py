@@ -6,6 +6,8 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
+from texture.targets.mesh import Mesh
+
 if TYPE_CHECKING:
     import xarray as xr
 
@@ -21,6 +23,11 @@ def coordinate_dataset(target: Target) -> xr.Dataset:
     grid_mapping = xr.DataArray(np.int32(0), attrs=target.crs.to_cf())
     if target.kind == "raster":
         return _raster(target).assign(crs=grid_mapping)
+    if target.kind == "mesh":
+        return _mesh(target).assign(crs=grid_mapping)
+    if target.kind == "points":
+        return _points(target).assign(crs=grid_mapping)
+    assert target.corners is not None  # a structured grid has them
     longitude, latitude = (a.reshape(target.shape) for a in (target.longitude, target.latitude))
     bounds = [a.reshape(*target.shape, 4) for a in target.corners]
     return xr.Dataset(
@@ -61,3 +68,49 @@ def _raster(target: Target) -> xr.Dataset:
             "y": ("y", target.y, {**y_attrs, "bounds": "y_bounds"}),
         },
     )
+
+
+def _points(target: Target) -> xr.Dataset:
+    import xarray as xr
+
+    (dim,) = target.dims
+    return xr.Dataset(
+        coords={"longitude": (dim, target.longitude, _LONGITUDE), "latitude": (dim, target.latitude, _LATITUDE)},
+        attrs={"featureType": "point"},
+    )
+
+
+def _mesh(target: Target) -> xr.Dataset:
+    """UGRID 1.0: nodes, faces and the variable that names them."""
+    import xarray as xr
+
+    mesh = target.topology
+    assert isinstance(mesh, Mesh)  # a mesh target has one
+    topology = {
+        "cf_role": "mesh_topology",
+        "long_name": "topology of the mesh",
+        "topology_dimension": np.int32(2),
+        "node_coordinates": "mesh_node_longitude mesh_node_latitude",
+        "face_node_connectivity": "mesh_face_nodes",
+        "face_dimension": "mesh_face",
+    }
+    connectivity = {
+        "cf_role": "face_node_connectivity",
+        "long_name": "nodes of each face, counter-clockwise",
+        "start_index": np.int32(0),
+        "_FillValue": np.int32(-1),
+    }
+    node = {"long_name": "of the mesh node"}
+    variables = {
+        "mesh": ((), np.int32(0), topology),
+        "mesh_face_nodes": (("mesh_face", "mesh_corner"), mesh.faces.astype(np.int32), connectivity),
+        "mesh_node_longitude": ("mesh_node", mesh.node_longitude, _LONGITUDE | node),
+        "mesh_node_latitude": ("mesh_node", mesh.node_latitude, _LATITUDE | node),
+    }
+    coords = {
+        "longitude": (target.dims, target.longitude, _LONGITUDE),
+        "latitude": (target.dims, target.latitude, _LATITUDE),
+    }
+    if mesh.location == "face":
+        topology["face_coordinates"] = "longitude latitude"
+    return xr.Dataset(variables, coords=coords)

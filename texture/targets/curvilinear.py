@@ -14,6 +14,7 @@ from texture.recipe import TargetSettings
 from texture.targets.land import on_land, read_land
 from texture.targets.mask import find_mask
 from texture.targets.raster import corner_table, read_crs
+from texture.targets.structured import Structured
 from texture.targets.target import Target
 
 if TYPE_CHECKING:
@@ -66,8 +67,9 @@ def read_grid(settings: TargetSettings) -> Target:
         crs=crs,
         longitude=flat_lon,
         latitude=flat_lat,
-        corners=corners,
         active=active_flat,
+        topology=Structured(shape),
+        corners=corners,
         depth_m=None if depth is None else depth.ravel(),
         land=land,
         inlet_width_m=None if settings.inlet_width_m == "auto" else settings.inlet_width_m,

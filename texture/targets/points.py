@@ -8,10 +8,12 @@ from collections.abc import Callable
 import numpy as np
 from numpy.typing import NDArray
 
+from texture.targets.mesh import Mesh
 from texture.targets.target import Target
 
 __all__ = ["cell_points", "points_per_side"]
 
+MOST_IN_A_FACE = 12
 ToPlane = Callable[[NDArray[np.float64], NDArray[np.float64]], NDArray[np.float64]]
 
 
@@ -28,16 +30,34 @@ def points_per_side(setting: str | int, cell_side_m: float, range_m: float) -> i
 
 
 def cell_points(target: Target, cells: NDArray[np.int64], per_side: int, to_plane: ToPlane) -> NDArray[np.float64]:
-    """Return points spread evenly inside cells, shape (cells, per_side ** 2, 2), in plane metres.
+    """Return points spread over cells, shape (cells, p, d), in plane metres.
 
-    One point is the cell's given centre; more are bilinear between its corners, at the middles of
-    equal parts.
+    One point is the cell's given centre. More are, in a cell of rows and columns, the middles of `per_side` ** 2 equal
+    parts, bilinear between its corners. A mesh face is cut into one quadrilateral for each corner, whose middles they
+    are; faces of different corner counts get a common multiple of them, and 12 at most. Nodes and places keep one.
     """
-    if per_side == 1:
+    if per_side == 1 or target.corners is None or target.piece_cell is not None:
         return to_plane(target.longitude[cells], target.latitude[cells])[:, None, :]
-    lon, lat = target.corner_longitude[cells], target.corner_latitude[cells]
-    corners = to_plane(lon.ravel(), lat.ravel()).reshape(cells.size, 4, 2)
+    corners = np.stack([axis[cells] for axis in target.corners], axis=-1)
+    plane = to_plane(corners[..., 0].ravel(), corners[..., 1].ravel())
+    flat = plane.reshape(*corners.shape[:2], plane.shape[-1])
+    if isinstance(target.topology, Mesh):
+        return _face_points(flat, target.topology.corner_counts, cells)
     middles = (np.arange(per_side) + 0.5) / per_side
     u, v = (a.ravel() for a in np.meshgrid(middles, middles))
     weights = np.column_stack([(1 - u) * (1 - v), u * (1 - v), u * v, (1 - u) * v])
-    return np.asarray(np.einsum("pk,nkc->npc", weights, corners))
+    return np.asarray(np.einsum("pk,nkc->npc", weights, flat))
+
+
+def _face_points(
+    corners: NDArray[np.float64], all_counts: NDArray[np.int64], cells: NDArray[np.int64]
+) -> NDArray[np.float64]:
+    """Middles of the quadrilaterals of each face, in turn until the common number is reached."""
+    common = min(math.lcm(*(int(c) for c in np.unique(all_counts))), MOST_IN_A_FACE)
+    counts = all_counts[cells][:, None]
+    turn = np.arange(common) % counts
+    after, before = (turn + 1) % counts, (turn - 1) % counts
+    here, following, preceding = (np.take_along_axis(corners, k[..., None], axis=1) for k in (turn, after, before))
+    real = (np.arange(corners.shape[1]) < counts)[..., None]
+    middle = np.where(real, corners, 0.0).sum(axis=1, keepdims=True) / counts[..., None]
+    return np.asarray((here + (here + following) / 2.0 + middle + (here + preceding) / 2.0) / 4.0)

@@ -9,6 +9,7 @@ from numpy.typing import NDArray
 from texture.errors import TargetError
 from texture.recipe import TargetSettings
 from texture.targets.land import on_land, read_land
+from texture.targets.structured import Structured
 from texture.targets.target import Target
 
 __all__ = ["make_raster", "read_crs"]
@@ -47,8 +48,9 @@ def make_raster(settings: TargetSettings) -> Target:
         crs=crs,
         longitude=longitude,
         latitude=latitude,
-        corners=corners,
         active=active,
+        topology=Structured((rows, columns)),
+        corners=corners,
         x=x,
         y=y,
         land=land,

@@ -1,54 +1,76 @@
 """`Target`: the cells to fill, whatever kind of grid they come from.
 
-Everything is flat, in row-major order of the file. Neighbours, areas and open boundary are properties
-worked out once when asked for, the same for all kinds.
+Everything is flat, in the order of the file. Neighbours, areas and open boundary are properties worked out once when
+asked for, the same for all kinds.
 """
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 from functools import cached_property
-from typing import TYPE_CHECKING, Any, Literal
+from typing import TYPE_CHECKING, Any, Literal, Protocol
 
 import numpy as np
 from numpy.typing import NDArray
 
 from texture.errors import TargetError
-from texture.targets.openings import Opening, find_openings, perimeter
+from texture.targets.openings import COMPASS, Opening
 
 if TYPE_CHECKING:
     import pyproj
     import xarray as xr
 
-__all__ = ["Target"]
+__all__ = ["Target", "Topology"]
 
 Floats = NDArray[np.float64]
 Bools = NDArray[np.bool_]
 Ints = NDArray[np.int64]
 
 
+class Topology(Protocol):
+    """How cells hang together; see `Structured` and `Mesh`."""
+
+    def edges(self) -> Ints:
+        """Pairs of neighbouring cells, shape (m, 2)."""
+        ...
+
+    def sides(self, target: Target) -> dict[str, Bools]:
+        """Cells on the outer edge by compass side."""
+        ...
+
+    def openings(self, target: Target) -> tuple[Opening, ...]:
+        """Runs of water along the outer edge, widest first."""
+        ...
+
+
 @dataclass(frozen=True, eq=False, repr=False)
 class Target:
-    """A structured grid of cells.
+    """Cells to fill.
 
     Parameters
     ----------
-    kind : {"raster", "curvilinear"}
-        Regular in its own projection, or with two-dimensional longitude and latitude.
+    kind : {"raster", "curvilinear", "mesh", "points"}
+        Regular in its own projection; with two-dimensional longitude and latitude; unstructured; a list of places.
     name : str
         File name or a description, for messages.
     dims, shape : tuple
-        Names and lengths of the two dimensions, rows first.
+        Names and lengths of the dimensions: rows and columns, or one for meshes and points.
     crs : pyproj.CRS
-        Of `x` and `y`; geographic for a curvilinear grid.
+        Of `x` and `y`; geographic for other kinds.
     longitude, latitude : float array, shape (n,)
         Cell centres in degrees.
-    corners : pair of float arrays, shape (n, 4)
-        Longitude and latitude of the corners, counter-clockwise.
     active : bool array, shape (n,)
         True where the cell is water and wants a bed.
+    topology : Structured, Mesh or None
+        How cells hang together; None for points.
+    corners : pair of float arrays, shape (m, k), or None
+        Longitude and latitude of the polygons that cells are made of, counter-clockwise, the last corner repeated
+        where a polygon has fewer than k; None for points.
+    piece_cell : int array, shape (m,), or None
+        Cell of each polygon; None where polygon i is cell i.
     x, y : float arrays or None
-        Axes of a raster in `crs`: x ascending, y descending (rows run north to south).
+        Axes of a raster in `crs`, in the order of the file; without a file y descends (rows run north to south).
     depth_m : float array, shape (n,), or None
         Water depth, positive down; NaN where unknown.
     land : shapely geometry or None
@@ -59,15 +81,17 @@ class Target:
         What was deduced while reading, to be shown.
     """
 
-    kind: Literal["raster", "curvilinear"]
+    kind: Literal["raster", "curvilinear", "mesh", "points"]
     name: str
-    dims: tuple[str, str]
-    shape: tuple[int, int]
+    dims: tuple[str, ...]
+    shape: tuple[int, ...]
     crs: pyproj.CRS
     longitude: Floats
     latitude: Floats
-    corners: tuple[Floats, Floats]
     active: Bools
+    topology: Topology | None
+    corners: tuple[Floats, Floats] | None
+    piece_cell: Ints | None = None
     x: Floats | None = None
     y: Floats | None = None
     depth_m: Floats | None = None
@@ -93,37 +117,46 @@ class Target:
     @property
     def n_cells(self) -> int:
         """Number of cells, land included."""
-        return self.shape[0] * self.shape[1]
+        return math.prod(self.shape)
 
     @property
-    def corner_longitude(self) -> Floats:
-        """Longitude of the four corners, shape (n, 4), counter-clockwise."""
-        return self.corners[0]
+    def size_text(self) -> str:
+        """Size in words, such as "90 × 120 cells"."""
+        word = {"mesh": f"{self.dims[0]}s".replace("_", " "), "points": "points"}.get(self.kind, "cells")
+        return " × ".join(f"{n:,}" for n in self.shape) + f" {word}"
+
+    @cached_property
+    def cell_of_piece(self) -> Ints:
+        """Cell that each polygon of `corners` belongs to, shape (m,)."""
+        if self.piece_cell is not None:
+            return self.piece_cell
+        return np.arange(0 if self.corners is None else len(self.corners[0]), dtype=np.int64)
 
     @property
-    def corner_latitude(self) -> Floats:
-        """Latitude of the four corners, shape (n, 4), counter-clockwise."""
-        return self.corners[1]
+    def bounds(self) -> tuple[float, float, float, float]:
+        """West, south, east and north of the cells in degrees."""
+        lon, lat = self.corners if self.corners is not None else (self.longitude, self.latitude)
+        return float(np.nanmin(lon)), float(np.nanmin(lat)), float(np.nanmax(lon)), float(np.nanmax(lat))
 
     @cached_property
     def area_m2(self) -> Floats:
-        """Area of each cell on the ellipsoid, shape (n,), from a local equal-area projection."""
+        """Area of each cell on the ellipsoid, shape (n,), from a local equal-area projection; 1 for points."""
+        if self.corners is None:
+            return np.ones(self.n_cells)
         import pyproj
 
         centre = float(np.nanmean(self.latitude)), _middle_longitude(self.longitude)
         local = pyproj.CRS.from_proj4(f"+proj=laea +lat_0={centre[0]:.6f} +lon_0={centre[1]:.6f} +datum=WGS84")
-        to_local = pyproj.Transformer.from_crs(4326, local, always_xy=True)
-        x, y = to_local.transform(*self.corners)
-        doubled = sum(x[:, i] * y[:, (i + 1) % 4] - x[:, (i + 1) % 4] * y[:, i] for i in range(4))
-        return np.asarray(np.abs(doubled) / 2.0)
+        x, y = pyproj.Transformer.from_crs(4326, local, always_xy=True).transform(*self.corners)
+        doubled = (x * np.roll(y, -1, axis=1) - np.roll(x, -1, axis=1) * y).sum(axis=1)
+        if self.piece_cell is None:
+            return np.asarray(np.abs(doubled) / 2.0)
+        return np.asarray(np.bincount(self.piece_cell, np.abs(doubled) / 2.0, minlength=self.n_cells), dtype=np.float64)
 
     @cached_property
     def edges(self) -> Ints:
-        """Pairs of cells that share a side, shape (m, 2), land cells included."""
-        index = np.arange(self.n_cells, dtype=np.int64).reshape(self.shape)
-        across = np.column_stack([index[:, :-1].ravel(), index[:, 1:].ravel()])
-        down = np.column_stack([index[:-1].ravel(), index[1:].ravel()])
-        return np.concatenate([across, down])
+        """Pairs of neighbouring cells, shape (m, 2), land cells included; none for points."""
+        return np.empty((0, 2), dtype=np.int64) if self.topology is None else self.topology.edges()
 
     @cached_property
     def edge_length_m(self) -> Floats:
@@ -131,18 +164,18 @@ class Target:
         import pyproj
 
         a, b = self.edges.T
-        geod = pyproj.Geod(ellps="WGS84")
         located = np.isfinite(self.longitude) & np.isfinite(self.latitude)
         good = located[a] & located[b]
         length = np.full(a.size, np.nan)
         a, b = a[good], b[good]
+        geod = pyproj.Geod(ellps="WGS84")
         length[good] = geod.inv(self.longitude[a], self.latitude[a], self.longitude[b], self.latitude[b])[2]
         return length
 
     @cached_property
     def openings(self) -> tuple[Opening, ...]:
         """Runs of water along the outer edge, widest first; narrow ones are river inlets."""
-        return find_openings(self.active, self.longitude, self.latitude, self.shape, self.inlet_width_m)
+        return () if self.topology is None else self.topology.openings(self)
 
     @cached_property
     def open_cells(self) -> Bools:
@@ -154,34 +187,39 @@ class Target:
         return cells
 
     @cached_property
-    def outer_cells(self) -> Bools:
-        """Cells on the outer edge of the grid, land included, shape (n,)."""
-        cells = np.zeros(self.n_cells, dtype=bool)
-        cells[perimeter(self.shape)] = True
-        return cells
+    def side_cells(self) -> dict[str, Bools]:
+        """Cells on the outer edge by compass side, land included; a corner cell belongs to two."""
+        if self.topology is None:
+            return {name: np.zeros(self.n_cells, dtype=bool) for name in COMPASS}
+        return self.topology.sides(self)
 
     @property
     def data_attributes(self) -> dict[str, str]:
-        """CF attributes that every data variable on this target needs."""
+        """CF (and UGRID) attributes that every data variable on this target needs."""
         if self.kind == "raster":
             return {"grid_mapping": "crs"}
-        return {"grid_mapping": "crs", "coordinates": "longitude latitude"}
+        attributes = {"grid_mapping": "crs", "coordinates": "longitude latitude"}
+        if self.kind == "mesh":
+            attributes |= {"mesh": "mesh", "location": self.dims[0].removeprefix("mesh_")}
+        return attributes
 
     def coordinates(self) -> xr.Dataset:
-        """CF coordinate variables, bounds and grid mapping, ready for data variables on `dims`."""
+        """CF coordinate variables, bounds, mesh and grid mapping, ready for data variables on `dims`."""
         from texture.targets.cf import coordinate_dataset
 
         return coordinate_dataset(self)
 
     def __repr__(self) -> str:
-        rows, columns = self.shape
         wet = int(self.active.sum())
+        west, south, east, north = self.bounds
+        where = f"longitude {west:.3f}…{east:.3f}, latitude {south:.3f}…{north:.3f}"
+        if self.kind == "points":
+            return f"<Target {self.name}: {self.size_text} ({wet:,} in water), {where}>"
         side = float(np.sqrt(np.median(self.area_m2[self.active])))
-        sea = [o for o in self.openings if not o.inlet]
+        sea_m = sum(o.length_m for o in self.openings if not o.inlet)
         return (
-            f"<Target {self.name}: {self.kind}, {rows} × {columns} cells ({wet:,} water), about {side:,.0f} m, "
-            f"longitude {np.nanmin(self.longitude):.3f}…{np.nanmax(self.longitude):.3f}, latitude "
-            f"{np.nanmin(self.latitude):.3f}…{np.nanmax(self.latitude):.3f}, open boundary {sum(o.length_m for o in sea) / 1000:,.1f} km>"
+            f"<Target {self.name}: {self.kind}, {self.size_text} ({wet:,} water), about {side:,.0f} m, {where}, "
+            f"open boundary {sea_m / 1000:,.1f} km>"
         )
 
 

@@ -1,0 +1,128 @@
+"""How the cells of a grid of rows and columns hang together: neighbours, outer edge, openings."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+import numpy as np
+from numpy.typing import NDArray
+
+from texture.targets.openings import COMPASS, Opening, Run, compass_names, sort_openings
+
+if TYPE_CHECKING:
+    from texture.targets.target import Target
+
+__all__ = ["Structured", "perimeter"]
+
+Ints = NDArray[np.int64]
+Floats = NDArray[np.float64]
+Bools = NDArray[np.bool_]
+
+
+@dataclass(frozen=True)
+class Structured:
+    """Rows and columns, with `halo` outer rows and columns that belong to the model's edge handling.
+
+    The outer edge is that of the cells inside the halo.
+    """
+
+    shape: tuple[int, int]
+    halo: int = 0
+
+    def edges(self) -> Ints:
+        """Pairs of cells that share a side, shape (m, 2)."""
+        index = np.arange(self.shape[0] * self.shape[1], dtype=np.int64).reshape(self.shape)
+        across = np.column_stack([index[:, :-1].ravel(), index[:, 1:].ravel()])
+        down = np.column_stack([index[:-1].ravel(), index[1:].ravel()])
+        return np.concatenate([across, down])
+
+    def in_halo(self) -> Bools:
+        """Cells of the halo, shape (n,)."""
+        inside = np.zeros(self.shape, dtype=bool)
+        inside[self.halo : self.shape[0] - self.halo, self.halo : self.shape[1] - self.halo] = True
+        return ~inside.ravel()
+
+    def ring(self) -> Ints:
+        """Outer cells in order around the grid, each once."""
+        rows, columns = (n - 2 * self.halo for n in self.shape)
+        row, column = np.divmod(perimeter((rows, columns)), columns)
+        return (row + self.halo) * self.shape[1] + column + self.halo
+
+    def sides(self, target: Target) -> dict[str, Bools]:
+        """Outer cells of each compass side; a corner cell belongs to both of its sides."""
+        by_side = {name: np.zeros(target.n_cells, dtype=bool) for name in COMPASS}
+        for cells, name in self._edges_named(target):
+            by_side[name][cells] = True
+        return by_side
+
+    def openings(self, target: Target) -> tuple[Opening, ...]:
+        """Runs of water along the outer edge."""
+        ring = self.ring()
+        wet = target.active[ring]
+        if not wet.any():
+            return ()
+        spacing = _spacing_m(ring, target)
+        named = self._edges_named(target)
+        corners = {int(cells[k]) for cells, _ in named for k in (0, -1)}
+        runs: list[Run] = []
+        for part in _wet_runs(wet):
+            cells = ring[part]
+            runs.append((cells, float(spacing[part].sum()), _sides_touched(cells, named, corners)))
+        return sort_openings(runs, target.inlet_width_m)
+
+    def _edges_named(self, target: Target) -> list[tuple[Ints, str]]:
+        """Give the cells of the four edges, each with the compass point nearest to its direction from the middle."""
+        h = self.halo
+        index = np.arange(target.n_cells, dtype=np.int64).reshape(self.shape)
+        inner = index[h : self.shape[0] - h, h : self.shape[1] - h]
+        lon, lat = target.longitude, target.latitude
+        middle_lon, middle_lat = np.nanmean(lon[inner]), np.nanmean(lat[inner])
+        shrink = np.cos(np.radians(middle_lat))
+        named = []
+        for cells in (inner[0], inner[:, -1], inner[-1], inner[:, 0]):
+            east = (np.nanmean(lon[cells]) - middle_lon) * shrink
+            north = np.nanmean(lat[cells]) - middle_lat
+            named.append((cells, COMPASS[int(compass_names(np.array([east]), np.array([north]))[0])]))
+        return named
+
+
+def perimeter(shape: tuple[int, int]) -> Ints:
+    """Return flat indices of the outer cells in order around the grid, each once.
+
+    >>> perimeter((3, 3)).tolist()
+    [0, 1, 2, 5, 8, 7, 6, 3]
+    """
+    rows, columns = shape
+    index = np.arange(rows * columns, dtype=np.int64).reshape(shape)
+    if rows == 1 or columns == 1:
+        return index.ravel()
+    return np.concatenate([index[0], index[1:, -1], index[-1, -2::-1], index[-2:0:-1, 0]])
+
+
+def _wet_runs(wet: Bools) -> list[Ints]:
+    """Split the ring's wet positions into unbroken runs; the ring closes on itself."""
+    if wet.all():
+        return [np.arange(wet.size)]
+    start = int(np.flatnonzero(~wet)[0])  # begin on land, so that no run crosses the seam of the ring
+    order = np.roll(np.arange(wet.size), -start)
+    turned = wet[order]
+    firsts = np.flatnonzero(turned & ~np.roll(turned, 1))
+    lasts = np.flatnonzero(turned & ~np.roll(turned, -1))
+    return [order[a : b + 1] for a, b in zip(firsts, lasts, strict=True)]
+
+
+def _spacing_m(ring: Ints, target: Target) -> Floats:
+    """Length of edge that each ring cell stands for: half the way to both of its neighbours."""
+    import pyproj
+
+    lon, lat = target.longitude[ring], target.latitude[ring]
+    step = np.asarray(pyproj.Geod(ellps="WGS84").inv(lon, lat, np.roll(lon, -1), np.roll(lat, -1))[2])
+    return np.asarray(np.nan_to_num((step + np.roll(step, 1)) / 2.0))
+
+
+def _sides_touched(cells: Ints, named: list[tuple[Ints, str]], corners: set[int]) -> tuple[str, ...]:
+    """Name sides of which the run holds more than a corner, or those of the corner where it is all there is."""
+    run = set(cells.tolist())
+    owned = [name for edge, name in named if (run - corners) & set(edge.tolist())]
+    return tuple(dict.fromkeys(owned or [name for edge, name in named if run & set(edge.tolist())]))
