@@ -16,6 +16,32 @@ DEPTH = 200
 
 
 @compiled
+def _middle(keys: np.ndarray) -> float:
+    """The value that would stand at half of `keys` if they were sorted; moves them about (Hoare's selection)."""
+    low, high, half = 0, keys.size - 1, keys.size // 2
+    while low < high:
+        pivot = keys[(low + high) // 2]
+        i, j = low, high
+        while i <= j:
+            while keys[i] < pivot:
+                i += 1
+            while keys[j] > pivot:
+                j -= 1
+            if i <= j:
+                keys[i], keys[j] = keys[j], keys[i]
+                i += 1
+                j -= 1
+        if half <= j:
+            high = j
+        elif half >= i:
+            low = i
+        else:
+            break
+    value: float = keys[half]
+    return value
+
+
+@compiled
 def _split_value(points: np.ndarray, order: np.ndarray, begin: int, end: int, dim: int) -> float:
     """Value that cuts the stations of a node nearest to their middle; those below it go left.
 
@@ -25,7 +51,7 @@ def _split_value(points: np.ndarray, order: np.ndarray, begin: int, end: int, di
     keys = np.empty(count)
     for i in range(count):
         keys[i] = points[order[begin + i], dim]
-    middle: float = np.partition(keys, count // 2)[count // 2]
+    middle = _middle(keys)
     below, above = -np.inf, np.inf  # the neighbours of the middle value, on either side
     for i in range(count):
         if keys[i] < middle:

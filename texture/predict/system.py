@@ -155,8 +155,8 @@ class System:
         return self.rows[chosen]
 
     def _chosen(self, place: Array, rule: Rule) -> Ints:
-        from texture.predict.kernel import choose_nearest
         from texture.predict.neighbours import DEPTH
+        from texture.predict.window import choose_nearest
 
         k = min(self.neighbours, len(self.rows))
         station = np.empty(k, dtype=np.int64)
@@ -221,7 +221,7 @@ class System:
     def _by_nearest(
         self, cells: Array, local: Array, wide: Array, rule: Rule, repairs: Ints
     ) -> tuple[Array, Array, NDArray[np.int8]]:
-        from texture.predict.kernel import krige_nearest
+        from texture.predict.window import krige_nearest
 
         mean, variance = np.empty((len(cells), len(self.columns), 1)), np.empty((len(cells), len(self.columns)))
         rung = np.zeros(len(cells), dtype=np.int8)
@@ -241,17 +241,18 @@ class System:
 
     def _get_factors(self) -> list[Any]:
         if self._factors is None:
+            from texture.predict.block import column_width, padded
             from texture.predict.kernel import factor_stations
 
             n, q = len(self.rows), self.station_columns.shape[2]
-            m = (n + 3) // 4 * 4
+            m = padded(n)
             self._factors = []
             for k in range(len(self.columns)):
-                u, dropped = np.empty(m * m), np.empty(2 * m)
-                columns, normal = np.empty((m, q)), np.zeros((q, max(self.drifts, 1)))
+                u, dropped = np.empty((m, m)), np.empty(m, dtype=np.bool_)
+                columns, normal = np.empty((m, column_width(q))), np.zeros((q, max(self.drifts, 1)))
                 redundant = factor_stations(
-                    self.points, self._nested(k), self.variances[k, 0], self.variances[k, 1], self.noise[k], self.survey,
-                    self.station_columns[k], self.drifts, u, dropped, columns, normal,
+                    self.points, self._nested(k), self.variances[k, 0], self.variances[k, 1], self.noise[k],
+                    self.survey, self.station_columns[k], self.drifts, u, dropped, columns, normal,
                 )  # fmt: skip
                 self._factors.append((u, dropped, columns, normal, redundant))
         return self._factors
@@ -266,11 +267,14 @@ class System:
         for k, (u, dropped, columns, normal, redundant) in enumerate(self._get_factors()):
             one_mean, one_variance = np.empty((len(cells), 1)), np.empty(len(cells))
 
-            def run(first: int, last: int, *, factors: Any = (u, dropped, columns, normal), k: int = k) -> Ints:
-                u, dropped, columns, normal = factors
+            def run(
+                first: int, last: int, *, factors: Any = (u, dropped, columns, normal, redundant), k: int = k
+            ) -> Ints:
+                u, dropped, columns, normal, redundant = factors
                 krige_stations(
-                    first, last, cells, local, wide, self.points, self._nested(k), self.variances[k, 0], u, dropped,
-                    columns, self.drifts, normal, self.global_covariance[k], one_mean, one_variance,  # noqa: B023
+                    first, last, cells, local, wide, self.points, self._nested(k), self.variances[k, 0],
+                    self.station_columns.shape[2], u, dropped, redundant, columns, self.drifts, normal,
+                    self.global_covariance[k], one_mean, one_variance,  # noqa: B023
                 )  # fmt: skip
                 return np.zeros(2, dtype=np.int64)
 

@@ -132,7 +132,9 @@ def locate(cuts: np.ndarray, cut_values: np.ndarray, points: np.ndarray) -> np.n
 @compiled
 def _grow(array: np.ndarray) -> np.ndarray:
     bigger = np.empty((2 * array.shape[0], array.shape[1]), dtype=array.dtype)
-    bigger[: array.shape[0]] = array
+    for i in range(array.shape[0]):
+        for j in range(array.shape[1]):
+            bigger[i, j] = array[i, j]
     return bigger
 
 
@@ -157,7 +159,8 @@ def _cut(
     ints = np.empty((cuts.shape[0], 3), dtype=np.int64)
     boxes = np.empty((2 * nodes.shape[0] + 8, 2 * d))
     own = np.empty((boxes.shape[0], 2), dtype=np.int64)
-    floats[0, 1 : 1 + d], floats[0, 1 + d :] = low, high
+    for j in range(d):
+        floats[0, 1 + j], floats[0, 1 + d + j] = low[j], high[j]
     ints[0, 0], ints[0, 1], ints[0, 2] = 0, points.shape[0], 0
     count, tiles, at = 1, 0, 0
     centre = np.empty(d)
@@ -193,13 +196,14 @@ def _cut(
             if tiles == boxes.shape[0]:
                 boxes, own = _grow(boxes), _grow(own)
             cuts[at, 1], cuts[at, 2] = tiles, -1
-            boxes[tiles] = floats[at, 1:]
+            for j in range(2 * d):
+                boxes[tiles, j] = floats[at, 1 + j]
             own[tiles, 0], own[tiles, 1] = ints[at, 0], ints[at, 1]
             tiles += 1
         else:
             cuts[at, 1], cuts[at, 2] = count, count + 1
-            floats[count, 1:] = floats[at, 1:]
-            floats[count + 1, 1:] = floats[at, 1:]
+            for j in range(1, 1 + 2 * d):
+                floats[count, j] = floats[count + 1, j] = floats[at, j]
             floats[count, 1 + d + dim] = value
             floats[count + 1, 1 + dim] = value
             ints[count, 0], ints[count, 1], ints[count, 2] = ints[at, 0], middle, left

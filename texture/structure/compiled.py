@@ -106,12 +106,13 @@ def _general_matern(x: float, nu: float) -> float:
 
 
 @compiled
-def add_structures(
-    structures: np.ndarray, small_scale: float, distance: np.ndarray, start: int, count: int, out: np.ndarray
-) -> None:
-    """Write the covariance at ``distance[start:start+count]`` to the same places of `out`."""
-    stop = start + count
-    for c in range(start, stop):
+def add_structures(structures: np.ndarray, small_scale: float, distance: np.ndarray, out: np.ndarray) -> None:
+    """Write the covariance at each of `distance` (contiguous, 1-D) to the same place of `out`.
+
+    Give it slices rather than a start and a stop: loops from 0 are what the compiler makes vector code of.
+    """
+    n = out.size
+    for c in range(n):
         out[c] = small_scale if distance[c] <= COINCIDENT_M else 0.0
     for s in range(structures.shape[0]):
         code = int(structures[s, 0])
@@ -119,31 +120,31 @@ def add_structures(
         inverse = structures[s, 2]
         nu = structures[s, 3]
         if code == EXPONENTIAL:
-            for c in range(start, stop):
+            for c in range(n):
                 out[c] += sill * exp_of_negative(-(distance[c] * inverse))
         elif code == MATERN_3_2:
-            for c in range(start, stop):
+            for c in range(n):
                 x = distance[c] * inverse
                 out[c] += sill * ((1.0 + x) * exp_of_negative(-x))
         elif code == MATERN_5_2:
-            for c in range(start, stop):
+            for c in range(n):
                 x = distance[c] * inverse
                 out[c] += sill * ((1.0 + x + x * x * (1.0 / 3.0)) * exp_of_negative(-x))
         elif code == GAUSSIAN:
-            for c in range(start, stop):
+            for c in range(n):
                 x = distance[c] * inverse
                 out[c] += sill * exp_of_negative(-(x * x))
         elif code == SPHERICAL:
-            for c in range(start, stop):
+            for c in range(n):
                 x = min(distance[c] * inverse, 1.0)
                 out[c] += sill * (1.0 - x * (1.5 - 0.5 * (x * x)))
         elif code == CUBIC:
-            for c in range(start, stop):
+            for c in range(n):
                 x = min(distance[c] * inverse, 1.0)
                 q = x * x
                 out[c] += sill * (1.0 - q * (7.0 - x * (8.75 - q * (3.5 - 0.75 * q))))
         else:
-            for c in range(start, stop):
+            for c in range(n):
                 out[c] += sill * _general_matern(distance[c] * inverse, nu)
 
 
@@ -156,7 +157,7 @@ def correlation(code: int, smoothness: float, x: np.ndarray) -> np.ndarray:
     structures[0, 2] = 1.0
     structures[0, 3] = smoothness
     out = np.empty(x.size)
-    add_structures(structures, 0.0, x, 0, x.size, out)
+    add_structures(structures, 0.0, x, out)
     return out
 
 
@@ -184,5 +185,5 @@ def covariance_matrix(structures: np.ndarray, small_scale: float, distance: np.n
     """Covariances for a C-ordered array of distances (n, m)."""
     out = np.empty(distance.shape)
     for i in range(distance.shape[0]):
-        add_structures(structures, small_scale, distance[i], 0, distance.shape[1], out[i])
+        add_structures(structures, small_scale, distance[i], out[i])
     return out
