@@ -119,12 +119,11 @@ def read_stations(recipe_path: Where, **settings: Any) -> Stations:
 
 
 def _stations(recipe: Recipe, progress: Progress) -> tuple[Target, Stations]:
-    from texture.output import read_names
+    from texture.output import check_outputs
 
     with progress.stage("read the grid"):
         target = read_target(recipe.target)
-        if recipe.outputs.names is not None:  # a mistake there is told before the work, not after it
-            read_names(recipe.outputs.names, target.dims)
+        check_outputs(target, recipe)  # a mistake there is told before the work, not after it
     with progress.stage("read the samples"):
         return target, place_stations(read_samples(recipe), target, recipe.intake)
 

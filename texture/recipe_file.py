@@ -212,6 +212,8 @@ def _absolute(recipe: Recipe, base: Path, recipe_name: str) -> Recipe:
             "land": fix(recipe.target.land, "target.land"),
         }
     )
-    outputs = recipe.outputs.model_copy(update={"names": fix(recipe.outputs.names, "outputs.names")})
+    outputs = recipe.outputs.model_copy(
+        update={"names": fix(recipe.outputs.names, "outputs.names"), "into": fix(recipe.outputs.into, "outputs.into")}
+    )
     output = fix(recipe.output, "output", must_exist=False)
     return recipe.model_copy(update={"samples": samples, "target": target, "outputs": outputs, "output": output})

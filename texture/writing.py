@@ -74,21 +74,14 @@ def input_files(recipe: Recipe) -> list[Path]:
     """List every file that a recipe names, each once."""
     paths: Iterable[Path | None] = (
         *(s.file for s in recipe.samples), recipe.target.file, recipe.target.land, recipe.outputs.names,
+        recipe.outputs.into,
     )  # fmt: skip
     return list(dict.fromkeys(p for p in paths if p is not None))
 
 
 def _write_grids(result: Result, aside: Path) -> None:
     from texture.composition import find_scheme
-    from texture.output import (
-        apply_names,
-        bed_dataset,
-        class_colours,
-        read_names,
-        texture_dataset,
-        write_geotiffs,
-        write_netcdf,
-    )
+    from texture.output import class_colours, texture_dataset, write_geotiffs, write_netcdf
 
     found, recipe = result.found, result.found.recipe
     scheme = find_scheme("folk")
@@ -105,14 +98,30 @@ def _write_grids(result: Result, aside: Path) -> None:
     }
     names = found.mapper.logratio.coordinate_names
     write_netcdf(texture_dataset(result.estimate, found.target, recipe, words, names, attributes), aside / "texture.nc")
-    bed = bed_dataset(result.bed, found.target, recipe)
-    if recipe.outputs.names is not None:
-        bed = apply_names(bed, read_names(recipe.outputs.names), recipe.outputs.names.name)
-    write_netcdf(bed, aside / "bed.nc")
+    _write_bed(result, aside)
     if recipe.outputs.geotiff:
         colours = class_colours(scheme.numbers)
         parts, size = recipe.composition.parts, recipe.outputs.geotiff_cell_size_m
         write_geotiffs(aside / "geotiff", result.estimate, found.target, parts, words, colours, size)
+
+
+def _write_bed(result: Result, aside: Path) -> None:
+    """Write the bed under the user's names, and into a copy of the user's initial file."""
+    from texture.bed import single_fractions
+    from texture.output import apply_names, bed_dataset, read_names, stores_single, write_into, write_netcdf
+
+    recipe, outputs = result.found.recipe, result.found.recipe.outputs
+    bed = bed_dataset(result.bed, result.found.target, recipe)
+    if outputs.names is None:
+        return write_netcdf(bed, aside / "bed.nc")
+    names = read_names(outputs.names)
+    named = apply_names(bed, names, outputs.names.name)
+    write_netcdf(named, aside / "bed.nc")
+    if outputs.into is not None:
+        if stores_single(named, names, outputs.into):  # fractions sum to 1 as that file stores them
+            bed["class_fraction"] = bed["class_fraction"].copy(data=single_fractions(bed["class_fraction"].values))
+            named = apply_names(bed, names)
+        write_into(named, names, outputs.into, aside / outputs.into.name, outputs.into_record)
 
 
 def _write_scores(result: Validated, aside: Path) -> None:

@@ -3,7 +3,7 @@ import numpy as np
 import pytest
 
 from texture.bed import make_bed
-from texture.errors import OutputError
+from texture.errors import OutputError, RecipeError
 from texture.output import apply_names, bed_dataset, read_names, write_into
 
 from .conftest import COLUMNS, ROWS, make_curvilinear, make_estimate, make_recipe
@@ -108,7 +108,7 @@ def test_land_takes_the_files_own_fill_value(tmp_path, named):
 def test_what_does_not_fit_writes_nothing(tmp_path, named, settings, record, message):
     bed, names = named
     source = initial_file(tmp_path / "initial.nc", **settings)
-    with pytest.raises(OutputError, match=message):
+    with pytest.raises(RecipeError, match=message):
         write_into(bed, names, source, tmp_path / "copy.nc", record)
     assert not (tmp_path / "copy.nc").exists()
 
@@ -116,5 +116,17 @@ def test_what_does_not_fit_writes_nothing(tmp_path, named, settings, record, mes
 def test_other_files_are_refused(tmp_path, named):
     bed, names = named
     (tmp_path / "initial.nc").write_text("words")
-    with pytest.raises(OutputError, match=r"initial.nc: cannot be read as NetCDF"):
+    with pytest.raises(RecipeError, match=r"initial.nc: cannot be read as NetCDF"):
         write_into(bed, names, tmp_path / "initial.nc", tmp_path / "copy.nc")
+
+
+def test_packed_integers_too_few_for_the_bed(tmp_path, named):
+    bed, names = named
+    bed["bed_height"].values[:] = 900.0  # int8 in steps of 0.5 m ends at 63.5 m
+    source = initial_file(tmp_path / "initial.nc")
+    with netCDF4.Dataset(source, "r+") as file:
+        file.renameVariable("bed_height", "other")
+        packed = file.createVariable("bed_height", "i1", ("strat", "j", "i"))
+        packed.scale_factor = 0.5
+    with pytest.raises(OutputError, match=r'"bed_height" is packed as int8 .* cannot hold values from 900 to 900'):
+        write_into(bed, names, source, tmp_path / "copy.nc")

@@ -177,3 +177,16 @@ def test_the_compliance_checker_finds_nothing(bed_path, texture_path, tmp_path):
 def test_ncdump_reads_the_header(bed_path):
     header = subprocess.run(["ncdump", "-h", str(bed_path)], capture_output=True, text=True, check=True).stdout
     assert "double class_fraction(class, layer," in header
+
+
+def test_single_precision_sums_to_one_exactly_as_stored(tmp_path, bed, target):
+    recipe = make_recipe(outputs={"precision": "float32"})
+    write_netcdf(bed_dataset(bed, target, recipe), tmp_path / "bed.nc")
+    with xr.open_dataset(tmp_path / "bed.nc") as back:
+        assert back["class_fraction"].dtype == np.float32
+        assert (back["class_fraction"].values.sum(axis=0) == np.float32(1.0)).all()
+        for name in ("erodible_thickness", "class_mass_content", "grain_diameter"):
+            assert back[name].dtype == np.float32
+        for name in ("longitude", "x"):
+            assert name not in back or back[name].dtype == np.float64
+        np.testing.assert_allclose(back["dry_density"].values.ravel(), bed.dry_density.ravel(), rtol=6e-8)

@@ -3,6 +3,7 @@
 from texture.bed.build import EVIDENCE, Account, Bed, make_bed
 from texture.bed.classes import ClassProperties, class_properties
 from texture.bed.packing import dry_density, porosity
+from texture.bed.precision import single_fractions
 from texture.bed.readiness import BedArrays, Check, check_bed
 from texture.bed.roughness import skin_roughness_length
 from texture.bed.settling import settling_velocity
@@ -25,6 +26,7 @@ __all__ = [
     "make_bed",
     "porosity",
     "settling_velocity",
+    "single_fractions",
     "skin_roughness_length",
     "wave_current_stress",
     "wave_stress",

@@ -221,8 +221,9 @@ def _check_map(fractions: Floats, evidence: NDArray[np.integer], cells: Cells, n
 
 
 def _place(cells: Cells, where: NDArray[np.bool_]) -> str:
-    row, column = divmod(int(where.argmax()), cells.shape[1])
-    return f"row {row}, column {column} (from 0)"
+    index = np.unravel_index(int(where.argmax()), cells.shape)
+    words = ("cell",) if len(index) == 1 else ("row", "column")
+    return ", ".join(f"{word} {i}" for word, i in zip(words, index, strict=True)) + " (from 0)"
 
 
 def _rim_bed(rim: Rim, classes: ClassProperties, parts: Sequence[str]) -> Floats:

@@ -42,8 +42,8 @@ class Cells(Protocol):
         """Water cells on the open boundary, river inlets left out, shape (n,)."""
 
     @property
-    def shape(self) -> tuple[int, int]:
-        """Rows and columns."""
+    def shape(self) -> tuple[int, ...]:
+        """Rows and columns, or the number of cells of a mesh or a list of points."""
 
     @property
     def longitude(self) -> Floats:

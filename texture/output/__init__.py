@@ -5,9 +5,10 @@ from texture.output.cf import write_netcdf
 from texture.output.class_colours import class_colours
 from texture.output.folder import ResultFolder
 from texture.output.geotiff import pixel_grid, write_geotiff, write_geotiffs
-from texture.output.into import check_into, write_into
+from texture.output.into import check_into, stores_single, write_into
 from texture.output.names import Names, read_names
 from texture.output.open_bed import bed_arrays, open_bed
+from texture.output.outline import bed_outline, check_outputs
 from texture.output.provenance import provenance, write_json
 from texture.output.renaming import apply_names
 from texture.output.tables import write_csv
@@ -19,12 +20,15 @@ __all__ = [
     "apply_names",
     "bed_arrays",
     "bed_dataset",
+    "bed_outline",
     "check_into",
+    "check_outputs",
     "class_colours",
     "open_bed",
     "pixel_grid",
     "provenance",
     "read_names",
+    "stores_single",
     "texture_dataset",
     "write_csv",
     "write_geotiff",

@@ -6,6 +6,7 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
+from texture.bed import single_fractions
 from texture.output.bed_variables import BED_VARIABLES, FORMS, KINDS, SOURCES
 from texture.output.cf import global_attributes, on_cells
 
@@ -38,7 +39,8 @@ def bed_dataset(bed: Bed, target: Target, recipe: Recipe) -> xr.Dataset:
     bed : Bed
     target : Target
     recipe : Recipe
-        Title, method and surveys for the attributes.
+        Title, method and surveys for the attributes, and `outputs.precision`: in single precision the class
+        fractions are rounded so that they sum to 1 exactly as stored; positions stay in double precision.
 
     Returns
     -------
@@ -65,6 +67,16 @@ def bed_dataset(bed: Bed, target: Target, recipe: Recipe) -> xr.Dataset:
     dataset.attrs = global_attributes(
         recipe.title, f"{method} of grab samples ({samples}) on {target.name}", COMMENT, REFERENCES
     )
+    return _single(dataset) if recipe.outputs.precision == "float32" else dataset
+
+
+def _single(dataset: xr.Dataset) -> xr.Dataset:
+    """Measured values in single precision; coordinates and their bounds keep theirs."""
+    for name in BED_VARIABLES:
+        if name in dataset and dataset[name].dtype == np.float64:
+            values = dataset[name].values
+            single = single_fractions(values) if name == "class_fraction" else values.astype(np.float32)
+            dataset[name] = dataset[name].copy(data=single)
     return dataset
 
 
