@@ -131,7 +131,9 @@ class Composition(Settings):
 class TargetSettings(Settings):
     """The cells to fill: a grid file, or bounds with a cell size."""
 
-    file: Path | None = Field(None, description="CF NetCDF grid")
+    file: Path | None = Field(
+        None, description="CF or UGRID NetCDF grid, GeoTIFF template, or a table or vector file of places"
+    )
     bounds: tuple[float, float, float, float] | None = Field(None, description="west, south, east, north in `crs`")
     cell_size: Positive | None = Field(None, description="side of a square cell in units of `crs`")
     crs: str | None = Field(None, description="EPSG code or WKT of the grid; read from the file if absent")
@@ -141,6 +143,10 @@ class TargetSettings(Settings):
     )
     latitude: str | None = Field(None, description="variable of cell-centre latitudes, where CF attributes do not tell")
     depth: str | None = Field(None, description="variable of water depth, where CF attributes do not tell")
+    location: Literal["face", "node"] = Field("face", description="where on a mesh the bed is wanted")
+    halo_cells: Annotated[int, Field(ge=0, le=8)] = Field(
+        0, description="outer rows and columns of a grid that repeat their neighbours and get no bed of their own"
+    )
     points_per_cell: Literal["auto"] | Annotated[int, Field(ge=1, le=64)] = Field(
         "auto", description="points inside a cell that its value is averaged over (1, 4, 9, …)"
     )

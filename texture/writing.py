@@ -99,7 +99,7 @@ def _write_grids(result: Result, aside: Path) -> None:
     names = found.mapper.logratio.coordinate_names
     write_netcdf(texture_dataset(result.estimate, found.target, recipe, words, names, attributes), aside / "texture.nc")
     _write_bed(result, aside)
-    if recipe.outputs.geotiff:
+    if recipe.outputs.geotiff and found.target.corners is not None:  # places have no cells to show
         colours = class_colours(scheme.numbers)
         parts, size = recipe.composition.parts, recipe.outputs.geotiff_cell_size_m
         write_geotiffs(aside / "geotiff", result.estimate, found.target, parts, words, colours, size)

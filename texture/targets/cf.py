@@ -5,6 +5,7 @@ from __future__ import annotations
 from typing import TYPE_CHECKING
 
 import numpy as np
+from numpy.typing import NDArray
 
 from texture.targets.mesh import Mesh
 
@@ -57,17 +58,24 @@ def _raster(target: Target) -> xr.Dataset:
         units = target.crs.axis_info[0].unit_name.replace("metre", "m")
         x_attrs = {"standard_name": "projection_x_coordinate", "long_name": "easting", "units": units, "axis": "X"}
         y_attrs = {"standard_name": "projection_y_coordinate", "long_name": "northing", "units": units, "axis": "Y"}
-    half = (target.x[1] - target.x[0]) / 2.0 if target.x.size > 1 else (target.y[0] - target.y[-1]) / 2.0
+    y_name, x_name = target.dims
+    x_half, y_half = _half_steps(target.x, target.y)
+    x_bounds = np.column_stack([target.x - x_half, target.x + x_half])
+    y_bounds = np.column_stack([target.y - y_half, target.y + y_half])
     return xr.Dataset(
-        {
-            "x_bounds": (("x", "corner"), np.column_stack([target.x - half, target.x + half])),
-            "y_bounds": (("y", "corner"), np.column_stack([target.y + half, target.y - half])),
-        },
+        {f"{x_name}_bounds": ((x_name, "corner"), x_bounds), f"{y_name}_bounds": ((y_name, "corner"), y_bounds)},
         coords={
-            "x": ("x", target.x, {**x_attrs, "bounds": "x_bounds"}),
-            "y": ("y", target.y, {**y_attrs, "bounds": "y_bounds"}),
+            x_name: (x_name, target.x, {**x_attrs, "bounds": f"{x_name}_bounds"}),
+            y_name: (y_name, target.y, {**y_attrs, "bounds": f"{y_name}_bounds"}),
         },
     )
+
+
+def _half_steps(x: NDArray[np.float64], y: NDArray[np.float64]) -> tuple[float, float]:
+    """Half a step along each axis, with its sign; an axis of one cell has the other's length."""
+    steps = [float(axis[1] - axis[0]) if axis.size > 1 else None for axis in (x, y)]
+    length = abs(next((s for s in steps if s is not None), 1.0))
+    return (steps[0] or length) / 2.0, (steps[1] or -length) / 2.0
 
 
 def _points(target: Target) -> xr.Dataset:

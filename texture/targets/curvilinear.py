@@ -1,9 +1,8 @@
-"""A structured grid from a CF NetCDF file, with one- or two-dimensional longitude and latitude."""
+"""A structured grid with one- or two-dimensional longitude and latitude, from an open CF dataset."""
 
 from __future__ import annotations
 
 import difflib
-from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -11,9 +10,10 @@ from numpy.typing import NDArray
 
 from texture.errors import TargetError
 from texture.recipe import TargetSettings
+from texture.targets.crs import read_crs, unwrapped
 from texture.targets.land import on_land, read_land
-from texture.targets.mask import find_mask
-from texture.targets.raster import corner_table, read_crs
+from texture.targets.mask import find_depth, find_mask
+from texture.targets.raster import corner_table
 from texture.targets.structured import Structured
 from texture.targets.target import Target
 
@@ -22,14 +22,8 @@ if TYPE_CHECKING:
 
 __all__ = ["read_grid"]
 
-DEPTH_NAMES = (
-    "sea_floor_depth_below_mean_sea_level",
-    "sea_floor_depth_below_geoid",
-    "sea_floor_depth_below_sea_surface",
-)
 
-
-def read_grid(settings: TargetSettings) -> Target:
+def read_grid(dataset: xr.Dataset, settings: TargetSettings, name: str) -> Target:
     """Read a structured grid; coordinates, mask and depth are found by CF attributes or as named.
 
     A mask decides what is water; land polygons decide only where the file has no mask. Where both are
@@ -38,52 +32,41 @@ def read_grid(settings: TargetSettings) -> Target:
     Raises
     ------
     TargetError
-        For a file that is not NetCDF, has no longitude and latitude, or whose cells are folded.
+        For a file that has no longitude and latitude, or whose cells are folded.
     """
-    path = settings.file
-    assert path is not None
-    with _open(path) as dataset:
-        longitude, latitude, dims, kept = _centres(dataset, settings, path.name)
-        shape = (dataset.sizes[dims[0]], dataset.sizes[dims[1]])
-        notes: list[str] = []
-        active = find_mask(dataset, settings.mask, dims, path.name, notes)
-        depth = _depth(dataset, settings.depth, dims, path.name)
-        corners = _corners(dataset, kept, longitude, latitude, dims, notes)
+    longitude, latitude, dims, kept = _centres(dataset, settings, name)
+    shape = (dataset.sizes[dims[0]], dataset.sizes[dims[1]])
+    notes: list[str] = []
+    active = find_mask(dataset, settings.mask, dims, name, notes)
+    depth = find_depth(dataset, settings.depth, dims, name)
+    corners = _corners(dataset, kept, longitude, latitude, dims, notes)
     crs = read_crs(settings.crs or "EPSG:4326", "target.crs")
     if not crs.is_geographic:
         raise TargetError(
-            f"{path.name}: longitude and latitude are in degrees, but target.crs = {settings.crs} is projected; "
+            f"{name}: longitude and latitude are in degrees, but target.crs = {settings.crs} is projected; "
             "leave crs out, or give a geographic one"
         )
     flat_lon, flat_lat = longitude.ravel(), latitude.ravel()
     land = read_land(settings.land) if settings.land is not None else None
-    active_flat = _active(active, land, flat_lon, flat_lat, path.name, notes)
-    _check_folds(corners, active_flat, path.name)
+    topology = Structured(shape, settings.halo_cells)
+    active_flat = _active(active, land, flat_lon, flat_lat, name, notes) & ~topology.in_halo()
+    _check_folds(corners, active_flat, name)
     return Target(
         kind="curvilinear",
-        name=path.name,
+        name=name,
         dims=dims,
         shape=shape,
         crs=crs,
         longitude=flat_lon,
         latitude=flat_lat,
         active=active_flat,
-        topology=Structured(shape),
+        topology=topology,
         corners=corners,
         depth_m=None if depth is None else depth.ravel(),
         land=land,
         inlet_width_m=None if settings.inlet_width_m == "auto" else settings.inlet_width_m,
         notes=tuple(notes),
     )
-
-
-def _open(path: Path) -> xr.Dataset:
-    import xarray as xr
-
-    try:
-        return xr.open_dataset(path, engine="netcdf4", decode_times=False)
-    except (OSError, ValueError, RuntimeError) as error:
-        raise TargetError(f"{path.name}: cannot be read as NetCDF; expected a CF grid file") from error
 
 
 def _centres(
@@ -112,7 +95,7 @@ def _centres(
             f'{name}: "{lon_name}" and "{lat_name}" reach {np.nanmax(np.abs(longitude)):g} and '
             f"{np.nanmax(np.abs(latitude)):g}, expected degrees; name the variables under [target]"
         )
-    return _unwrapped(longitude), latitude, dims, (lon_name, lat_name)
+    return unwrapped(longitude), latitude, dims, (lon_name, lat_name)
 
 
 def _coordinate(dataset: xr.Dataset, which: str, named: str | None, name: str) -> str:
@@ -133,28 +116,6 @@ def _coordinate(dataset: xr.Dataset, which: str, named: str | None, name: str) -
             f"{name}: no {which} with CF attributes (units or standard_name); name the variable as target.{which}"
         )
     raise TargetError(f"{name}: several variables are {which} ({', '.join(found)}); choose one as target.{which}")
-
-
-def _unwrapped(longitude: NDArray[np.float64]) -> NDArray[np.float64]:
-    """Make longitudes continuous around the grid's middle, in -180…180 unless it crosses the date line."""
-    angle = np.radians(longitude[np.isfinite(longitude)])
-    middle = np.degrees(np.arctan2(np.sin(angle).mean(), np.cos(angle).mean()))
-    return np.asarray(longitude + 360.0 * np.round((middle - longitude) / 360.0))  # whole turns: others stay exact
-
-
-def _depth(dataset: xr.Dataset, named: str | None, dims: tuple[str, str], name: str) -> NDArray[np.float64] | None:
-    if named is None:
-        found = [v for v, a in dataset.data_vars.items() if a.attrs.get("standard_name") in DEPTH_NAMES]
-        if len(found) != 1:
-            return None
-        named = str(found[0])
-    if named not in dataset:
-        raise TargetError(
-            f'{name}: no variable "{named}" for the depth; it has {", ".join(map(str, dataset.data_vars))}'
-        )
-    if set(dataset[named].dims) != set(dims):
-        raise TargetError(f'{name}: depth "{named}" is on {dataset[named].dims}, the grid on {dims}')
-    return dataset[named].transpose(*dims).to_numpy().astype(np.float64)
 
 
 def _corners(

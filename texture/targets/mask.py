@@ -1,4 +1,4 @@
-"""Which cells of a NetCDF grid are water: the mask variable and its meaning."""
+"""Which cells of a NetCDF grid are water, and how deep: variables found by their attributes or as named."""
 
 from __future__ import annotations
 
@@ -13,14 +13,19 @@ from texture.errors import TargetError
 if TYPE_CHECKING:
     import xarray as xr
 
-__all__ = ["find_mask"]
+__all__ = ["find_depth", "find_mask"]
 
+DEPTH_NAMES = (
+    "sea_floor_depth_below_mean_sea_level",
+    "sea_floor_depth_below_geoid",
+    "sea_floor_depth_below_sea_surface",
+)
 WATER_WORDS = {"sea", "water", "wet", "ocean", "active"}
 LAND_WORDS = {"land", "dry", "inactive"}
 
 
 def find_mask(
-    dataset: xr.Dataset, named: str | None, dims: tuple[str, str], name: str, notes: list[str]
+    dataset: xr.Dataset, named: str | None, dims: tuple[str, ...], name: str, notes: list[str]
 ) -> NDArray[np.bool_] | None:
     """Return True where the cell is water, shape of the grid; None where the file has no mask.
 
@@ -50,7 +55,27 @@ def find_mask(
     return np.asarray(values == 1)
 
 
-def _named(dataset: xr.Dataset, named: str, dims: tuple[str, str], name: str) -> xr.DataArray:
+def find_depth(dataset: xr.Dataset, named: str | None, dims: tuple[str, ...], name: str) -> NDArray[np.float64] | None:
+    """Return the water depth, positive down, shape of the grid; None where the file has none or several."""
+    if named is None:
+        found = [
+            v
+            for v, a in dataset.data_vars.items()
+            if a.attrs.get("standard_name") in DEPTH_NAMES and set(a.dims) == set(dims)
+        ]
+        if len(found) != 1:
+            return None
+        named = str(found[0])
+    if named not in dataset:
+        raise TargetError(
+            f'{name}: no variable "{named}" for the depth; it has {", ".join(map(str, dataset.data_vars))}'
+        )
+    if set(dataset[named].dims) != set(dims):
+        raise TargetError(f'{name}: depth "{named}" is on {dataset[named].dims}, the grid on {dims}')
+    return np.asarray(dataset[named].transpose(*dims).to_numpy(), dtype=np.float64)
+
+
+def _named(dataset: xr.Dataset, named: str, dims: tuple[str, ...], name: str) -> xr.DataArray:
     if named not in dataset:
         raise TargetError(
             f'{name}: no variable "{named}" for the mask; it has {", ".join(map(str, dataset.data_vars))}'
@@ -63,7 +88,7 @@ def _named(dataset: xr.Dataset, named: str, dims: tuple[str, str], name: str) ->
     return variable
 
 
-def _found(dataset: xr.Dataset, dims: tuple[str, str], name: str) -> xr.DataArray | None:
+def _found(dataset: xr.Dataset, dims: tuple[str, ...], name: str) -> xr.DataArray | None:
     found = [
         v
         for v in dataset.data_vars.values()

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from texture.recipe import TargetSettings
+from texture.targets.places import VECTOR_SUFFIXES, read_places
 from texture.targets.target import Target
 
 __all__ = ["read_target"]
@@ -16,10 +17,17 @@ def read_target(settings: TargetSettings) -> Target:
     TargetError
         When the grid, its mask or its land cannot be used; the message names file and variable.
     """
-    if settings.file is not None:
-        from texture.targets.curvilinear import read_grid
+    if settings.file is None:
+        from texture.targets.raster import make_raster
 
-        return read_grid(settings)
-    from texture.targets.raster import make_raster
+        return make_raster(settings)
+    suffix = settings.file.suffix.lower()
+    if suffix in {".tif", ".tiff"}:
+        from texture.targets.raster import read_template
 
-    return make_raster(settings)
+        return read_template(settings)
+    if suffix in VECTOR_SUFFIXES | {".csv", ".txt", ".tsv"}:
+        return read_places(settings)
+    from texture.targets.netcdf import read_netcdf
+
+    return read_netcdf(settings)

@@ -1,0 +1,97 @@
+"""A NetCDF file of a grid: which kind it is, and its reader."""
+
+from __future__ import annotations
+
+from pathlib import Path
+from typing import TYPE_CHECKING
+
+import numpy as np
+import pyproj
+
+from texture.errors import TargetError
+from texture.recipe import TargetSettings
+from texture.targets.crs import read_crs
+from texture.targets.curvilinear import read_grid
+from texture.targets.land import read_land
+from texture.targets.mask import find_depth, find_mask
+from texture.targets.raster import raster
+from texture.targets.target import Target
+from texture.targets.ugrid import mesh_variable, read_mesh
+
+if TYPE_CHECKING:
+    import xarray as xr
+
+__all__ = ["read_netcdf"]
+
+
+def read_netcdf(settings: TargetSettings) -> Target:
+    """Read a mesh (UGRID), a raster (evenly spaced projection coordinates), or a grid of longitudes and latitudes.
+
+    Raises
+    ------
+    TargetError
+        For a file that is not NetCDF, and as the readers say.
+    """
+    path = settings.file
+    assert path is not None  # the caller has looked
+    with _open(path) as dataset:
+        if mesh_variable(dataset) is not None:
+            return read_mesh(dataset, settings, path.name)
+        axes = _projected_axes(dataset)
+        if axes is not None and settings.longitude is None:
+            return _read_projected(dataset, axes, settings, path.name)
+        return read_grid(dataset, settings, path.name)
+
+
+def _open(path: Path) -> xr.Dataset:
+    import xarray as xr
+
+    try:
+        return xr.open_dataset(path, engine="netcdf4", decode_times=False)
+    except (OSError, ValueError, RuntimeError) as error:
+        raise TargetError(f"{path.name}: cannot be read as NetCDF; expected a CF grid file") from error
+
+
+def _projected_axes(dataset: xr.Dataset) -> tuple[str, str] | None:
+    """Names of one-dimensional projection coordinates, x before y; None where the file has none."""
+    found = {
+        variable.attrs.get("standard_name"): str(name)
+        for name, variable in dataset.variables.items()
+        if variable.ndim == 1
+    }
+    x, y = found.get("projection_x_coordinate"), found.get("projection_y_coordinate")
+    return (x, y) if x is not None and y is not None else None
+
+
+def _read_projected(dataset: xr.Dataset, axes: tuple[str, str], settings: TargetSettings, name: str) -> Target:
+    x, y = (np.asarray(dataset[a].to_numpy(), dtype=np.float64) for a in axes)
+    for axis, values in zip(axes, (x, y), strict=True):
+        steps = np.diff(values)
+        if values.size < 2 or not np.allclose(steps, steps[0], rtol=1e-6, atol=0.0):  # a stored axis is exact to better
+            raise TargetError(
+                f'{name}: "{axis}" is not evenly spaced; give longitude and latitude of the cells instead'
+            )
+    crs = _grid_mapping(dataset, settings, name)
+    dims = (str(dataset[axes[1]].dims[0]), str(dataset[axes[0]].dims[0]))
+    notes: list[str] = []
+    mask = find_mask(dataset, settings.mask, dims, name, notes)
+    depth = find_depth(dataset, settings.depth, dims, name)
+    land = read_land(settings.land) if settings.land is not None else None
+    if mask is None and land is None:
+        notes.append(f"{name} has no mask and no land was given: every cell is taken as water")
+    return raster(
+        name, x, y, crs, settings, None if mask is None else mask.ravel(), dims,
+        None if depth is None else depth.ravel(), land, tuple(notes),
+    )  # fmt: skip
+
+
+def _grid_mapping(dataset: xr.Dataset, settings: TargetSettings, name: str) -> pyproj.CRS:
+    if settings.crs is not None:
+        return read_crs(settings.crs, "target.crs")
+    for variable in dataset.variables.values():
+        if "grid_mapping_name" in variable.attrs or "crs_wkt" in variable.attrs:
+            try:
+                return pyproj.CRS.from_cf(variable.attrs)
+            except (pyproj.exceptions.CRSError, KeyError) as error:
+                raise TargetError(f'{name}: its grid mapping "{variable}" cannot be read; give target.crs') from error
+    raise TargetError(f'{name}: projection coordinates without a grid mapping; give target.crs, such as "EPSG:32626"')
