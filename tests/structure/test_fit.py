@@ -5,7 +5,6 @@ from scipy.stats import multivariate_normal
 
 from texture.errors import StructureError
 from texture.structure import Covariance, CovarianceSet, Structure
-from texture.structure.compiled import distance_matrix
 from texture.structure.likelihood import DenseLikelihood, Family, Parameters
 
 TRUTH = Covariance([Structure("exponential", 1.0, 6000.0)], small_scale=0.2)
@@ -30,9 +29,7 @@ def test_likelihood_is_that_of_the_error_contrasts():
     # Restricted likelihood = density of contrasts that the drift does not reach (Patterson & Thompson 1971), here
     # with an orthonormal basis, so that it differs by half the log-determinant of F'F alone.
     points, z, noise, drift, survey = dense()
-    loss, _ = DenseLikelihood(distance_matrix(points, points), z, noise, drift, survey)(
-        Family("exponential"), Parameters(400.0, 1.3, 0.2, 0.4)
-    )
+    loss, _ = DenseLikelihood(points, z, noise, drift, survey)(Family("exponential"), Parameters(400.0, 1.3, 0.2, 0.4))
     k = Covariance([Structure("exponential", 1.3, 400.0)]).matrix(points)
     k += np.diag(noise + 0.2) + 0.4 * (survey[:, None] == survey[None, :])
     basis = np.linalg.svd(drift)[0][:, 2:]
@@ -43,7 +40,7 @@ def test_likelihood_is_that_of_the_error_contrasts():
 @pytest.mark.parametrize("family", [Family("exponential"), Family("matern", 1.5), Family("spherical")])
 def test_gradient_is_the_slope(family):
     points, z, noise, drift, survey = dense(1)
-    likelihood = DenseLikelihood(distance_matrix(points, points), z, noise, drift, survey)
+    likelihood = DenseLikelihood(points, z, noise, drift, survey)
     theta = np.log([420.0, 1.3, 0.2, 0.4])
 
     def loss(t):

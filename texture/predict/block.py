@@ -17,9 +17,9 @@ import math
 
 import numpy as np
 
-from texture.predict.linear import factor, forward
 from texture.structure.compiled import add_structures
 from texture.structure.jit import compiled
+from texture.structure.linear import factor, forward
 
 __all__ = [
     "LANES",
@@ -85,7 +85,7 @@ def prepare(
     between: np.ndarray,
     structures: np.ndarray,
     small_scale: float,
-    survey_variance: float,
+    survey_variance: np.ndarray,
     noise: np.ndarray,
     survey: np.ndarray,
     station_columns: np.ndarray,
@@ -102,7 +102,7 @@ def prepare(
     ----------
     station : (count,) stations, padded below to m
     between : (m, m) distances, upper triangle
-    noise, survey : (n,) of all stations
+    survey_variance : (surveys,); noise, survey : (n,) of all stations
     station_columns : (n, q) of all stations
     u : (m, m), own : (m,), dropped : (m,) bool, columns : (m, width), normal : (q, drifts), written
         `normal` holds the Cholesky factor of F~'F~ in its first rows and each further column's drift coefficients
@@ -120,10 +120,11 @@ def prepare(
             own[i] = 0.0
             continue
         add_structures(structures, small_scale, between[i, i:count], u[i, i:count])
-        if survey_variance > 0.0:
+        offset = survey_variance[survey[station[i]]]
+        if offset > 0.0:
             for j in range(i, count):
                 if survey[station[j]] == survey[station[i]]:
-                    u[i, j] += survey_variance
+                    u[i, j] += offset
         u[i, i] += noise[station[i]]
         for j in range(count, m):
             u[i, j] = 0.0

@@ -41,7 +41,8 @@ def krige_tiles(
     capacity: int,
     structures: np.ndarray,
     structure_count: np.ndarray,
-    variances: np.ndarray,
+    small_scale: np.ndarray,
+    survey_variance: np.ndarray,
     noise: np.ndarray,
     survey: np.ndarray,
     station_columns: np.ndarray,
@@ -60,7 +61,8 @@ def krige_tiles(
     cells : (cells, d) in the covariance's metric; cell_drift : (cells, drifts); cell_global : (cells, g)
     points ... own : the tiles, see `texture.predict.tiles.Tiles`
     capacity : most stations of a neighbourhood
-    structures : (v, s, 4); structure_count : (v,); variances : (v, 2) small-scale and survey variance
+    structures : (v, s, 4); structure_count : (v,); small_scale : (v,)
+    survey_variance : (v, surveys), 0 where a survey has none
     noise : (v, n); survey : (n,)
     station_columns : (v, n, drifts + values + g)
     global_covariance : (v, g, g)
@@ -89,7 +91,7 @@ def krige_tiles(
         station_distances(points, station[:count], between)
         for k in range(v):
             redundant[k] = prepare(
-                station[:count], between, structures[k, : structure_count[k]], variances[k, 0], variances[k, 1],
+                station[:count], between, structures[k, : structure_count[k]], small_scale[k], survey_variance[k],
                 noise[k], survey, station_columns[k], drifts, u_all[k, : m * m].reshape(m, m), diagonal[:m],
                 dropped[k, :m], columns[k, :m], normal[k],
             )  # fmt: skip
@@ -112,10 +114,10 @@ def krige_tiles(
                 nested = structures[k, : structure_count[k]]
                 u = u_all[k, : m * m].reshape(m, m)
                 solve_block(
-                    u, count, dropped[k], redundant[k], nested, variances[k, 0], distance, columns[k], q, w,
+                    u, count, dropped[k], redundant[k], nested, small_scale[k], distance, columns[k], q, w,
                     own_sums,
                 )  # fmt: skip
-                sill = variances[k, 0] + nested[:, 1].sum()
+                sill = small_scale[k] + nested[:, 1].sum()
                 finish(own_sums, sill, normal[k], drifts, values, at_drift, at_global, global_covariance[k])
                 for c in range(block.size):
                     variance[block[c], k] = own_sums[0, c]
@@ -128,7 +130,7 @@ def factor_stations(
     points: np.ndarray,
     structures: np.ndarray,
     small_scale: float,
-    survey_variance: float,
+    survey_variance: np.ndarray,
     noise: np.ndarray,
     survey: np.ndarray,
     station_columns: np.ndarray,

@@ -71,7 +71,11 @@ def _bordered_inverse(system: System, k: int, rows: Any) -> tuple[Array, Array, 
     from scipy.linalg import cho_factor, cho_solve
 
     covariance = station_covariance(
-        system.covariances[k], system.points[rows], system.noise[k][rows], system.survey[rows]
+        system.covariances[k],
+        system.points[rows],
+        system.noise[k][rows],
+        system.survey_variance[k],
+        system.survey[rows],
     )
     # The same relative floor as the kernel's: a redundant sample must not spoil the inverse of the others.
     covariance[np.diag_indices(len(covariance))] *= 1.0 + 1e-12
@@ -83,9 +87,9 @@ def _bordered_inverse(system: System, k: int, rows: Any) -> tuple[Array, Array, 
 
 
 def _restore(system: System, k: int, row: Any, departure: Any) -> Any:
-    """From a departure to the value: the centre and, where there is global drift, the drift at the station."""
-    wide = system.global_columns[row] @ system.coefficients[k] if system.global_columns.shape[1] else 0.0
-    return departure + system.centre[k] + wide
+    """From a departure to the value: the centre, global drift and the survey's offset at the station."""
+    wide = system.global_columns[row] @ system.coefficients[k]
+    return departure + system.centre[k] + wide + system.offsets[k][system.survey[row]]
 
 
 def _leave_groups_out(system: System, labels: NDArray[np.int64], mean: Array, variance: Array) -> None:

@@ -132,7 +132,9 @@ class _Problem:
         self.wide_columns = block[:, system.drifts + 1 :]
         self.local, self.wide = local, wide
         self.wide_covariance = system.global_covariance[k]
-        self.matrix = station_covariance(self.covariance, self.points, self.noise, self.survey)
+        self.matrix = station_covariance(
+            self.covariance, self.points, self.noise, system.survey_variance[k], self.survey
+        )
 
     def gap(self, ours: tuple[float, float], theirs: tuple[float, float]) -> tuple[float, float]:
         sill = max(self.covariance.sill, 1e-300)

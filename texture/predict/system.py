@@ -53,7 +53,7 @@ class System:
         most = max(1, max(len(c.structures) for c in covariances))
         self.structures = np.zeros((v, most, 4))
         self.structure_count = np.array([len(c.structures) for c in covariances], dtype=np.int64)
-        self.variances = np.array([[c.small_scale, c.survey] for c in covariances])
+        self.small_scale = np.array([c.small_scale for c in covariances])
         for k, c in enumerate(covariances):
             self.structures[k, : len(c.structures)] = c.packed
         # Values are kriged as departures from a plain number, so that large means cost no digits.
@@ -61,20 +61,20 @@ class System:
         departures = values - self.centre
         self._drift_centre, self._drift_scale, station_drift = _standardised(stations.drift, rows)
         self.local = np.empty((n, 0)) if means is not None else np.ones((n, 1))
-        self.coefficients = np.zeros((v, 0))
-        self.global_columns = np.empty((n, 0))
-        self.global_covariance = np.zeros((v, 0, 0))
+        wide = np.empty((n, 0))
         if station_drift is not None:
             if drift == "local" or mode == "all":
                 self.local = np.column_stack([self.local, station_drift])
             else:
-                from texture.predict.drift import global_drift
-
-                self.global_columns = station_drift
-                self.coefficients, self.global_covariance = global_drift(
-                    self.points, departures, self.noise, self.survey, covariances, station_drift
-                )
-                departures = departures - station_drift @ self.coefficients.T
+                wide = station_drift
+        self.global_columns = wide
+        surveys = int(self.survey.max()) + 1
+        self.coefficients, self.global_covariance = np.zeros((v, wide.shape[1])), np.zeros((v,) + (wide.shape[1],) * 2)
+        self.offsets = np.zeros((v, surveys))
+        self.survey_variance = np.array([[c.survey] * surveys for c in covariances])
+        if mode != "all" and means is None:
+            self._take_out_effects(departures)
+            departures = departures - wide @ self.coefficients.T - self.offsets.T[self.survey]
         self.drifts = self.local.shape[1]
         self.station_columns = np.empty((v, n, self.drifts + 1 + self.global_columns.shape[1]))
         for k in range(v):
@@ -84,6 +84,23 @@ class System:
         self._tiles: Any = None
         self._tree: Any = None
         self._factors: list[Any] | None = None
+
+    def _take_out_effects(self, departures: Array) -> None:
+        """Estimate global drift and survey offsets from all stations, where there are any.
+
+        A neighbourhood inside one survey cannot tell that survey's offset from the bed; all stations together can.
+        What is left of the offsets' variance stays with the stations as their survey variance.
+        """
+        from texture.predict.effects import estimate_effects
+
+        for k, c in enumerate(self.covariances):
+            if c.survey == 0.0 and not self.global_columns.shape[1]:
+                continue
+            effects = estimate_effects(
+                self.points, departures[:, k], self.noise[k], self.survey, c, self.global_columns
+            )
+            self.coefficients[k], self.global_covariance[k] = effects.coefficients, effects.covariance
+            self.offsets[k], self.survey_variance[k] = effects.offsets, effects.offset_variance
 
     @classmethod
     def make(
@@ -209,7 +226,7 @@ class System:
             krige_tiles(
                 used[first:last], begins[first : last + 1], which, cells, local, wide, self.points, tiles.nodes,
                 tiles.splits, tiles.order, tiles.low, tiles.high, tiles.own, self.neighbours, capacity,
-                self.structures, self.structure_count, self.variances, self.noise, self.survey, self.station_columns,
+                self.structures, self.structure_count, self.small_scale, self.survey_variance, self.noise, self.survey, self.station_columns,
                 self.drifts, self.global_covariance, mean, variance, repaired,
             )  # fmt: skip
             return repaired
@@ -231,7 +248,7 @@ class System:
             repaired = np.zeros(2, dtype=np.int64)
             krige_nearest(
                 first, last, cells, local, wide, self.points, nodes, splits, order, self.neighbours, rule[0], rule[1], rule[2],
-                self.structures, self.structure_count, self.variances, self.noise, self.survey, self.station_columns,
+                self.structures, self.structure_count, self.small_scale, self.survey_variance, self.noise, self.survey, self.station_columns,
                 self.drifts, self.global_covariance, mean, variance, rung, repaired,
             )  # fmt: skip
             return repaired
@@ -251,7 +268,7 @@ class System:
                 u, dropped = np.empty((m, m)), np.empty(m, dtype=np.bool_)
                 columns, normal = np.empty((m, column_width(q))), np.zeros((q, max(self.drifts, 1)))
                 redundant = factor_stations(
-                    self.points, self._nested(k), self.variances[k, 0], self.variances[k, 1], self.noise[k],
+                    self.points, self._nested(k), self.small_scale[k], self.survey_variance[k], self.noise[k],
                     self.survey, self.station_columns[k], self.drifts, u, dropped, columns, normal,
                 )  # fmt: skip
                 self._factors.append((u, dropped, columns, normal, redundant))
@@ -272,7 +289,7 @@ class System:
             ) -> Ints:
                 u, dropped, columns, normal, redundant = factors
                 krige_stations(
-                    first, last, cells, local, wide, self.points, self._nested(k), self.variances[k, 0],
+                    first, last, cells, local, wide, self.points, self._nested(k), self.small_scale[k],
                     self.station_columns.shape[2], u, dropped, redundant, columns, self.drifts, normal,
                     self.global_covariance[k], one_mean, one_variance,  # noqa: B023
                 )  # fmt: skip
@@ -287,7 +304,7 @@ class System:
         """Generalised least squares mean of the few stations there are, and the bed's variance about it."""
         mean, variance = np.zeros((len(local), len(self.columns))), np.zeros((len(local), len(self.columns)))
         for k, c in enumerate(self.covariances):
-            covariance = station_covariance(c, self.points, self.noise[k], self.survey)
+            covariance = station_covariance(c, self.points, self.noise[k], self.survey_variance[k], self.survey)
             weight = np.linalg.lstsq(covariance, np.ones(len(self.rows)), rcond=None)[0]
             if self.drifts:
                 mean[:, k] = weight @ self.station_columns[k, :, self.drifts] / weight.sum()
@@ -296,14 +313,16 @@ class System:
         return mean, variance
 
 
-def station_covariance(c: Covariance, metric_points: Array, noise: Array, survey: Ints) -> Array:
-    """Covariance of the samples: of the bed, noise and survey offsets; points are in the covariance's metric."""
+def station_covariance(
+    c: Covariance, metric_points: Array, noise: Array, survey_variance: Array, survey: Ints
+) -> Array:
+    """Covariance of the samples: of the bed, noise and survey offsets (one variance for each survey)."""
     from texture.structure.compiled import covariance_matrix, distance_matrix
 
     k: Array = covariance_matrix(c.packed, c.small_scale, distance_matrix(metric_points, metric_points))
     k += np.diag(noise)
-    if c.survey > 0.0:
-        k += c.survey * (survey[:, None] == survey[None, :])
+    if survey_variance.any():
+        k += survey_variance[survey] * (survey[:, None] == survey[None, :])
     return k
 
 

@@ -88,7 +88,8 @@ def krige_nearest(
     per_sector: int,
     structures: np.ndarray,
     structure_count: np.ndarray,
-    variances: np.ndarray,
+    small_scale: np.ndarray,
+    survey_variance: np.ndarray,
     noise: np.ndarray,
     survey: np.ndarray,
     station_columns: np.ndarray,
@@ -139,13 +140,13 @@ def krige_nearest(
         for c in range(v):
             nested = structures[c, : structure_count[c]]
             redundant = prepare(
-                station[:count], between, nested, variances[c, 0], variances[c, 1], noise[c], survey,
+                station[:count], between, nested, small_scale[c], survey_variance[c], noise[c], survey,
                 station_columns[c], drifts, u, diagonal[:m], dropped[:m], columns[:m], normal,
             )  # fmt: skip
             solve_block(
-                u, count, dropped, redundant, nested, variances[c, 0], distance, columns, q, w, sums
+                u, count, dropped, redundant, nested, small_scale[c], distance, columns, q, w, sums
             )  # fmt: skip
-            sill = variances[c, 0] + nested[:, 1].sum()
+            sill = small_scale[c] + nested[:, 1].sum()
             finish(sums, sill, normal, drifts, values, at_drift, at_global, global_covariance[c])
             variance[at, c] = sums[0, 0]
             for j in range(values):

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
@@ -15,13 +15,16 @@ from texture.structure.likelihood import DenseLikelihood, Family, Parameters
 from texture.structure.record import Candidate, Fit
 from texture.structure.variogram import EmpiricalVariogram, empirical_variogram, fit_variogram
 
+if TYPE_CHECKING:
+    from texture.structure.vecchia import VecchiaLikelihood
+
 __all__ = ["FAMILIES", "fit_covariance"]
 
 Array = NDArray[np.float64]
 
 FAMILIES = (Family("exponential"), Family("matern", 1.5))
 
-# Stations up to which the likelihood is dense.
+# Stations up to which the likelihood is dense; beyond, Vecchia's product (`texture.structure.vecchia`).
 MOST_DENSE = 500
 
 # Structure must raise the log-likelihood by this much over none. The two extra parameters are not identified
@@ -46,6 +49,17 @@ class _Column:
     scale: float  # standard deviation that the values were divided by
     extent_m: float
     spacing_m: float
+    axes: tuple[int, ...] = ()  # coordinates with their own range
+
+    @property
+    def plane(self) -> Array:
+        """The coordinates that share one range."""
+        return np.ascontiguousarray(np.delete(self.points, list(self.axes), axis=1))
+
+    @property
+    def spreads(self) -> Array:
+        """Standard deviations of the coordinates with their own range."""
+        return np.asarray(self.points[:, list(self.axes)].std(axis=0))
 
 
 def fit_covariance(
@@ -59,6 +73,7 @@ def fit_covariance(
     start: Covariance | CovarianceSet | None = None,
     seed: int = 0,
     families: Sequence[Family] = FAMILIES,
+    own_range_axes: Sequence[int] = (),
 ) -> Covariance | CovarianceSet:
     """Fit a covariance to each column of values and one correlation matrix between the columns.
 
@@ -84,6 +99,10 @@ def fit_covariance(
         Draws the stations or pairs where there are too many to use all.
     families : sequence of Family
         Models to choose from by likelihood.
+    own_range_axes : sequence of int
+        Coordinates that are covariates (depth, distance to shore ...) rather than places: each gets its own range by
+        likelihood, and the covariance's `axis_scales` say how many metres one unit of it counts for. A covariate that
+        tells nothing ends with a range of many standard deviations.
 
     Returns
     -------
@@ -106,10 +125,13 @@ def fit_covariance(
     noise = _per_column(noise_variance, array.shape)
     extra = _drift_columns(drift, len(points))
     labels = None if survey is None else np.unique(np.asarray(survey), return_inverse=True)[1].astype(np.int64)
-    columns = [_column(points, array[:, v], noise[:, v], extra, labels, v) for v in range(count)]
+    axes = _check_axes(own_range_axes, points)
+    columns = [_column(points, array[:, v], noise[:, v], extra, labels, v, axes) for v in range(count)]
     sets = _check_groups(groups, count)
     if method not in ("likelihood", "variogram"):
         raise StructureError(f"method: found {method!r}, expected likelihood or variogram")
+    if method == "variogram" and axes:
+        raise StructureError("own_range_axes: own ranges are fitted by likelihood; a variogram knows one distance only")
     warm = [start] * count if isinstance(start, Covariance) else list(start) if start is not None else [None] * count
     fitted: list[Covariance | None] = [None] * count
     with _one_blas_thread():
@@ -162,6 +184,17 @@ def _drift_columns(drift: ArrayLike | None, n: int) -> Array:
     return np.column_stack([np.ones(n), (columns - columns.mean(axis=0)) / np.where(spread > 0, spread, 1.0)])
 
 
+def _check_axes(axes: Sequence[int], points: Array) -> tuple[int, ...]:
+    own = tuple(int(a) for a in axes)
+    d = points.shape[1]
+    if len(set(own)) != len(own) or any(not 0 <= a < d for a in own) or (own and len(own) == d):
+        raise StructureError(f"own_range_axes: found {own}, expected some, not all, of the coordinates 0 to {d - 1}")
+    for a in own:
+        if np.ptp(points[:, a]) == 0.0:
+            raise StructureError(f"own_range_axes: coordinate {a} is the same at all stations; leave it out")
+    return own
+
+
 def _check_groups(groups: Sequence[Sequence[int]] | None, count: int) -> list[list[int]]:
     if groups is None:
         return [[v] for v in range(count)]
@@ -171,7 +204,9 @@ def _check_groups(groups: Sequence[Sequence[int]] | None, count: int) -> list[li
     return sets
 
 
-def _column(points: Array, values: Array, noise: Array, drift: Array, labels: Any, number: int) -> _Column:
+def _column(
+    points: Array, values: Array, noise: Array, drift: Array, labels: Any, number: int, axes: tuple[int, ...]
+) -> _Column:
     from scipy.spatial import cKDTree
 
     known = np.flatnonzero(np.isfinite(values) & np.isfinite(noise))
@@ -181,15 +216,18 @@ def _column(points: Array, values: Array, noise: Array, drift: Array, labels: An
     survey = None if labels is None else np.unique(labels[known], return_inverse=True)[1].astype(np.int64)
     if survey is not None and survey.max() == 0:
         survey = None  # one survey has no offset against itself
-    extent = float(np.linalg.norm(np.ptp(own, axis=0)))
-    near = cKDTree(own).query(own, k=2)[0][:, 1]
+    plane = np.delete(own, list(axes), axis=1)
+    extent = float(np.linalg.norm(np.ptp(plane, axis=0)))
+    near = cKDTree(plane).query(plane, k=2)[0][:, 1]
     spacing = float(np.median(near[near > 0])) if (near > 0).any() else 0.0
     scale = float(z.std())
     # Equal values leave rounding noise in their standard deviation.
     if scale <= 1e-12 * max(1.0, float(np.abs(z).max())) or extent == 0.0:
         scale = 0.0
     unit = scale or 1.0
-    return _Column(own, (z - z.mean()) / unit, noise[known] / unit**2, drift[known], survey, scale, extent, spacing)
+    return _Column(
+        own, (z - z.mean()) / unit, noise[known] / unit**2, drift[known], survey, scale, extent, spacing, axes
+    )
 
 
 def _residuals(column: _Column) -> Array:
@@ -203,7 +241,7 @@ def _variograms(column: _Column, seed: int, families: Sequence[Family]) -> tuple
     half = column.extent_m / 2.0
     edges = np.linspace(0.0, half, 16)
     survey = column.survey
-    v = empirical_variogram(column.points, _residuals(column), edges, "cressie_hawkins", survey, seed)
+    v = empirical_variogram(column.plane, _residuals(column), edges, "cressie_hawkins", survey, seed)
     return v, [fit_variogram(v, f.model, f.smoothness) for f in families]
 
 
@@ -228,18 +266,25 @@ def _six_digits(value: float) -> float:
     return float(f"{value:.6g}")
 
 
-def _covariance(family: Family | None, p: Parameters, scale: float) -> Covariance:
+def _covariance(family: Family | None, p: Parameters, column: _Column) -> Covariance:
     """Covariance in the values' own units, rounded to six significant digits."""
-    unit = scale**2
+    unit = column.scale**2
     structures = []
+    scales = None
+    if family is not None and column.axes:
+        scales = [1.0] * column.points.shape[1]
+        for axis, own in zip(column.axes, p.own_ranges, strict=True):
+            scales[axis] = _six_digits(p.range_m / own)
     if family is not None:
         structures = [Structure(family.model, _six_digits(p.sill * unit), _six_digits(p.range_m), family.smoothness)]
-    return Covariance(structures, _six_digits(p.small_scale * unit), 0.0, _six_digits(p.survey * unit))
+    return Covariance(
+        structures, _six_digits(p.small_scale * unit), 0.0, _six_digits(p.survey * unit), axis_scales=scales
+    )
 
 
-def _rescaled(covariance: Covariance, scale: float) -> Covariance:
-    family, parameters = _family_of(covariance), _parameters_of(covariance)
-    return _covariance(family, parameters, scale)
+def _rescaled(covariance: Covariance, column: _Column) -> Covariance:
+    """A variogram's fit, which knows the plane only, in the values' own units."""
+    return _covariance(_family_of(covariance), _parameters_of(covariance), replace(column, axes=()))
 
 
 def _family_of(c: Covariance) -> Family | None:
@@ -258,7 +303,7 @@ def _by_variogram(column: _Column, seed: int, families: Sequence[Family]) -> Cov
     v, fits = _variograms(column, seed, families)
     best = int(np.argmin([loss for _, loss in fits]))
     candidates = tuple(
-        Candidate(f.name, _rescaled(c, column.scale), float("nan")) for f, (c, _) in zip(families, fits, strict=True)
+        Candidate(f.name, _rescaled(c, column), float("nan")) for f, (c, _) in zip(families, fits, strict=True)
     )
     chosen = candidates[best]
     notes = () if chosen.covariance.structures else ("the variogram does not rise: no spatial structure found",)
@@ -279,18 +324,15 @@ def _scaled_variogram(v: EmpiricalVariogram, scale: float) -> EmpiricalVariogram
     return replace(v, semivariance=v.semivariance * scale**2)
 
 
-def _likelihood(column: _Column, seed: int) -> DenseLikelihood:
-    from texture.structure.compiled import distance_matrix
-
+def _dense(column: _Column, seed: int) -> DenseLikelihood:
+    """Dense likelihood of a column's stations, of a seeded 500 of them where there are more."""
     n = len(column.points)
     take = np.arange(n)
     if n > MOST_DENSE:
         take = np.sort(np.random.default_rng(seed).choice(n, MOST_DENSE, replace=False))
     p = np.ascontiguousarray(column.points[take])
     survey = None if column.survey is None else column.survey[take]
-    return DenseLikelihood(
-        distance_matrix(p, p), column.values[take], column.noise_variance[take], column.drift[take], survey
-    )
+    return DenseLikelihood(p, column.values[take], column.noise_variance[take], column.drift[take], survey, column.axes)
 
 
 def _by_likelihood(
@@ -306,31 +348,39 @@ def _by_likelihood(
             for i, covariance in zip(rest, others, strict=True):
                 results[i] = covariance
         return results
-    likelihoods = [_likelihood(c, seed) for c in columns]
-    search = _Search(columns, likelihoods)
+    search = _Search(columns, [_dense(c, seed) for c in columns])
+    # Beyond what a dense matrix holds, the dense search on a subset only finds where Vecchia's starts.
+    final = search
+    if max(len(c.points) for c in columns) > MOST_DENSE:
+        from texture.structure.vecchia import VecchiaLikelihood
+
+        final = _Search(
+            columns,
+            [VecchiaLikelihood(c.points, c.values, c.noise_variance, c.drift, c.survey, c.axes, seed) for c in columns],
+        )
     variograms = [_variograms(c, seed, families) for c in columns]
-    none = search.without_structure()
+    none = final.without_structure()
     tried: list[tuple[Family | None, list[Parameters], float]] = [(None, *none)]
     known = [c for c in warm if c is not None]
     if len(known) == len(columns):
         family = next((_family_of(c) for c in known if c.structures), None)
         if family is not None:
             first = [_warm_parameters(c, col) for c, col in zip(known, columns, strict=True)]
-            tried.append((family, *search.climb(family, first)))
+            tried.append((family, *final.climb(family, first)))
     else:
         for number, family in enumerate(families):
             starts = search.starts(family, [fits[number][0] for _, fits in variograms])
             found = [search.climb(family, s) for s in starts]
             best = min(found, key=lambda item: item[1])
-            tried.append((family, *best))
+            tried.append((family, *(best if final is search else final.climb(family, best[0]))))
     structured = min(tried[1:], key=lambda item: item[2], default=tried[0])
-    least = LEAST_GAIN * len(columns)
+    # Where a sample of stations stands for all, so does its chance fit.
+    least = LEAST_GAIN * sum(x.mean_weight for x in final.likelihoods)
     chosen = structured if none[1] - structured[2] > least else tried[0]
     results = []
     for i, column in enumerate(columns):
         candidates = tuple(
-            Candidate(f.name if f else "no structure", _covariance(f, p[i], column.scale), -loss)
-            for f, p, loss in tried
+            Candidate(f.name if f else "no structure", _covariance(f, p[i], column), -loss) for f, p, loss in tried
         )
         name = chosen[0].name if chosen[0] else "no structure"
         notes = (
@@ -344,9 +394,9 @@ def _by_likelihood(
             name,
             candidates,
             _scaled_variogram(v, column.scale),
-            _rescaled(fits[index][0], column.scale),
+            _rescaled(fits[index][0], column),
             len(column.points),
-            sum(x.evaluations for x in likelihoods),
+            search.evaluations + (0 if final is search else final.evaluations),
             tuple(notes),
         )
         results.append(replace_record(covariance, record))
@@ -355,26 +405,37 @@ def _by_likelihood(
 
 def _warm_parameters(covariance: Covariance, column: _Column) -> Parameters:
     p, unit = _parameters_of(covariance), column.scale**2
+    own = tuple(2.0 * column.spreads)
     if not covariance.structures:
-        return Parameters(column.extent_m / 3.0, 0.2, p.small_scale / unit, p.survey / unit)
-    return Parameters(p.range_m, p.sill / unit, p.small_scale / unit, p.survey / unit)
+        return Parameters(column.extent_m / 3.0, 0.2, p.small_scale / unit, p.survey / unit, own)
+    if covariance.axis_scales is not None:
+        own = tuple(p.range_m / covariance.axis_scales[a] for a in column.axes)
+    return Parameters(p.range_m, p.sill / unit, p.small_scale / unit, p.survey / unit, own)
 
 
 class _Search:
     """Bounded quasi-Newton search over log range (shared) and each column's log variances."""
 
-    def __init__(self, columns: list[_Column], likelihoods: list[DenseLikelihood]) -> None:
+    def __init__(self, columns: list[_Column], likelihoods: Sequence[DenseLikelihood | VecchiaLikelihood]) -> None:
         self.columns, self.likelihoods = columns, likelihoods
         self.extent = max(c.extent_m for c in columns)
         self.spacing = min((c.spacing_m for c in columns if c.spacing_m > 0), default=self.extent / 100.0)
         self.range_prior = np.log(self.extent / 3.0)
+        # Own ranges: two standard deviations of the covariate as a first guess, within a factor of 20.
+        self.own_prior = np.log(2.0 * columns[0].spreads)
         # A range far below the spacing is noise, far above the extent a trend: neither can be told from the data.
         self.bounds_range = (np.log(0.5 * self.spacing), np.log(5.0 * self.extent))
+
+    @property
+    def evaluations(self) -> int:
+        """Likelihood evaluations so far, over all columns."""
+        return sum(x.evaluations for x in self.likelihoods)
 
     def _unpack(self, theta: Array, structured: bool) -> list[Parameters]:
         e = np.exp(theta)
         if structured:
-            return [Parameters(e[0], e[1 + 3 * i], e[2 + 3 * i], e[3 + 3 * i]) for i in range(len(self.columns))]
+            own = tuple(e[1 + 3 * len(self.columns) :].tolist())
+            return [Parameters(e[0], e[1 + 3 * i], e[2 + 3 * i], e[3 + 3 * i], own) for i in range(len(self.columns))]
         return [Parameters(0.0, 0.0, e[2 * i], e[2 * i + 1]) for i in range(len(self.columns))]
 
     def _loss(self, theta: Array, family: Family | None, gradient: bool = True) -> tuple[float, Array]:
@@ -386,9 +447,10 @@ class _Search:
             total += loss
             if family is not None:
                 slope[0] += by[0]
-                slope[1 + 3 * i : 4 + 3 * i] += by[1:]
+                slope[1 + 3 * i : 4 + 3 * i] += by[1:4]
+                slope[1 + 3 * len(self.columns) :] += by[4:]
             else:
-                slope[2 * i : 2 * i + 2] += by[2:]
+                slope[2 * i : 2 * i + 2] += by[2:4]
         return total, slope
 
     def _penalised(self, theta: Array, family: Family | None) -> tuple[float, Array]:
@@ -397,6 +459,10 @@ class _Search:
             away = (theta[0] - self.range_prior) / PRIOR_SPREAD
             total += 0.5 * away**2
             slope[0] += away / PRIOR_SPREAD
+            own = slice(1 + 3 * len(self.columns), None)
+            beside = (theta[own] - self.own_prior) / PRIOR_SPREAD
+            total += 0.5 * float(beside @ beside)
+            slope[own] += beside / PRIOR_SPREAD
         return total, slope
 
     def _minimise(self, theta: Array, family: Family | None, bounds: list[tuple[float, float]]) -> tuple[Any, float]:
@@ -435,6 +501,8 @@ class _Search:
         for p, column in zip(start, self.columns, strict=True):
             theta += [np.log(max(v, 1e-12)) for v in (p.sill, p.small_scale, p.survey)]
             bounds += [(np.log(1e-4), np.log(100.0)), (np.log(1e-6), np.log(10.0)), self._survey_bounds(column)]
+        theta += np.log(start[0].own_ranges).tolist()
+        bounds += [(middle - np.log(20.0), middle + np.log(20.0)) for middle in self.own_prior]
         return self._minimise(np.array(theta), family, bounds)
 
     def without_structure(self) -> tuple[list[Parameters], float]:
@@ -447,16 +515,22 @@ class _Search:
 
     def starts(self, family: Family, variogram_fits: list[Covariance]) -> list[list[Parameters]]:
         """The two best of a coarse grid of ranges and small-scale shares, and the robust variogram's fit."""
+        own = tuple(np.exp(self.own_prior).tolist())
         ranges = np.geomspace(max(2.0 * self.spacing, 0.01 * self.extent), 1.5 * self.extent, 5)
         grid = []
         for range_m in ranges:
             for share in (0.05, 0.3, 0.7):
                 s = [0.1 if c.survey is not None else 0.0 for c in self.columns]
-                grid.append([Parameters(range_m, 1.0 - share, share, x) for x in s])
+                grid.append([Parameters(range_m, 1.0 - share, share, x, own) for x in s])
         if all(c.structures for c in variogram_fits):
             first = [_parameters_of(c) for c in variogram_fits]
             shared = float(np.exp(np.mean([np.log(p.range_m) for p in first])))
-            grid.append([replace(p, range_m=shared, survey=s.survey) for p, s in zip(first, grid[0], strict=True)])
+            grid.append(
+                [
+                    replace(p, range_m=shared, survey=s.survey, own_ranges=own)
+                    for p, s in zip(first, grid[0], strict=True)
+                ]
+            )
         losses = []
         for item in grid:
             losses.append(sum(f(family, p, False)[0] for f, p in zip(self.likelihoods, item, strict=True)))

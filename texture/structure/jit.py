@@ -16,7 +16,7 @@ F = TypeVar("F", bound=Callable[..., Any])
 
 # Every file with compiled functions or constants compiled into them, from the package's root.
 _SOURCES = ("structure/models.py", "structure/compiled.py", "structure/vecchia.py", "predict/neighbours.py",
-            "predict/tiles.py", "predict/linear.py", "predict/block.py", "predict/kernel.py", "predict/window.py")  # fmt: skip
+            "predict/tiles.py", "structure/linear.py", "predict/block.py", "predict/kernel.py", "predict/window.py")  # fmt: skip
 
 
 @lru_cache(maxsize=1)

@@ -1,0 +1,91 @@
+"""What is common to all stations: drift coefficients and survey offsets, estimated once from everything."""
+
+from __future__ import annotations
+
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from texture.errors import StructureError
+from texture.structure.covariance import Covariance
+
+__all__ = ["MOST_SURVEYS", "Effects", "estimate_effects"]
+
+Array = NDArray[np.float64]
+
+# Stations up to which the estimate is dense (to the last digit); beyond, Vecchia's product whitens the columns.
+MOST_DENSE = 1500
+
+# Each survey is one more column to whiten; with more surveys than this each is too small to stand out anyway, and
+# their offsets are left to the neighbourhoods.
+MOST_SURVEYS = 300
+
+
+class Effects:
+    """Estimated effects of one column of values.
+
+    Parameters
+    ----------
+    coefficients : float array, shape (p,)
+        Of the drift columns; the constant is fitted with them and left to the local mean.
+    covariance : float array, shape (p, p)
+    offsets, offset_variance : float arrays, shape (surveys,)
+        Best linear unbiased predictions of the survey offsets and what is left of their variance.
+    """
+
+    def __init__(self, coefficients: Array, covariance: Array, offsets: Array, offset_variance: Array) -> None:
+        self.coefficients, self.covariance = coefficients, covariance
+        self.offsets, self.offset_variance = offsets, offset_variance
+
+
+def estimate_effects(
+    points: Array, values: Array, noise: Array, survey: NDArray[np.int64], c: Covariance, drift: Array
+) -> Effects:
+    """Generalised least squares drift and best linear unbiased survey offsets (Henderson's mixed-model equations).
+
+    Parameters
+    ----------
+    points : float array, shape (n, d), in the covariance's metric
+    values, noise : float arrays, shape (n,)
+    survey : int array, shape (n,)
+    c : Covariance
+    drift : float array, shape (n, p)
+        Without the constant, standardised; p may be 0.
+    """
+    from texture.structure.vecchia import Vecchia, mixed_model
+
+    n, surveys = len(points), int(survey.max()) + 1
+    design = np.column_stack([np.ones(n), drift])
+    if np.linalg.matrix_rank(design) < design.shape[1]:
+        raise StructureError("drift: the columns are linearly dependent (or one is constant); leave out one")
+    own = c.survey > 0.0 and 1 < surveys <= MOST_SURVEYS
+    indicator = np.eye(surveys)[survey] if own else np.empty((n, 0))
+    columns = np.column_stack([design, indicator, values])
+    if n <= MOST_DENSE:
+        gram = _dense_products(points, noise, c, columns)
+    else:
+        _, gram = Vecchia(points, columns, all_stations=True).whiten(c.packed, noise + c.small_scale, _threads())
+    coefficients, covariance, _ = mixed_model(gram, design.shape[1], c.survey)
+    p = design.shape[1]
+    # A survey that cannot be told from the others keeps its prior: no offset, all of the variance.
+    offsets = coefficients[p:] if own else np.zeros(surveys)
+    left = np.diag(covariance)[p:] if own else np.full(surveys, c.survey)
+    return Effects(coefficients[1:p], covariance[1:p, 1:p], offsets, left)
+
+
+def _threads() -> int:
+    from numba import get_num_threads
+
+    return int(get_num_threads())
+
+
+def _dense_products(points: Array, noise: Array, c: Covariance, columns: Array) -> Any:
+    from scipy.linalg import cholesky, solve_triangular
+
+    from texture.predict.system import station_covariance
+
+    k = station_covariance(c, points, noise, np.zeros(1), np.zeros(len(points), dtype=np.int64))
+    k[np.diag_indices(len(k))] *= 1.0 + 1e-12
+    white = solve_triangular(cholesky(k, lower=True), columns, lower=True)
+    return white.T @ white
