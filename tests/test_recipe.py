@@ -83,6 +83,11 @@ def test_each_mistake_has_its_line(recipe_path, override, words):
     assert "\n" not in str(caught.value)
 
 
+def test_an_override_without_value_leaves_the_default(recipe_path):
+    assert read_recipe(recipe_path, ["title="]).title == "Untitled bed"
+    assert read_recipe(recipe_path, ["target.mask=x", "target.mask="]).target.mask is None
+
+
 def test_missing_recipe_and_broken_toml(tmp_path):
     with pytest.raises(RecipeError, match=r"none.toml: no such recipe"):
         read_recipe(tmp_path / "none.toml")

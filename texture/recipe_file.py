@@ -30,8 +30,9 @@ def read_recipe(
     path : path
         TOML file. Relative paths inside it are relative to its folder.
     overrides : iterable of str
-        `key.path=value` pairs; the value is TOML, or a plain word taken as a string. Items of a list
-        of tables are reached by their number from 0 (`samples.0.crs=EPSG:4326`).
+        `key.path=value` pairs; the value is TOML, or a plain word taken as a string; without a value the key
+        is left to its default. Items of a list of tables are reached by their number from 0
+        (`samples.0.crs=EPSG:4326`).
     output : path, optional
         Output folder, relative to the current folder; replaces the recipe's.
     settings : mapping, optional
@@ -99,7 +100,9 @@ def _apply(settings: dict[str, Any], override: str) -> None:
     here: Any = settings
     for name in parents:
         here = _step(here, name, override)
-    if isinstance(here, list):
+    if not text.strip() and isinstance(here, dict):
+        here.pop(last, None)
+    elif isinstance(here, list):
         if not last.isdigit() or int(last) >= len(here):
             raise RecipeError(f'--set "{override}": "{last}" is no item of that list of {len(here)}')
         here[int(last)] = value

@@ -13,7 +13,7 @@ from pathlib import Path
 
 import numpy as np
 
-from demo_samples.kestrel_bight.make import grid, lab_2016, maps, notes_1962, survey_1987, survey_2004
+from demo_samples.kestrel_bight.make import grid, lab_2016, maps, mesh, notes_1962, survey_1987, survey_2004
 from demo_samples.kestrel_bight.make.answers import write_answers
 from demo_samples.kestrel_bight.make.picture import write_picture
 
@@ -23,6 +23,8 @@ def make_demo(folder: Path) -> list[Path]:
     folder.mkdir(parents=True, exist_ok=True)
     grid.write_grid(folder / "model_grid.nc")
     grid.write_truth(folder / "truth.nc")
+    mesh.write_mesh(folder / "model_mesh.nc")
+    mesh.write_places(folder / "places.csv")
     maps.write_depth(folder / "depth.tif")
     maps.write_coast(folder / "coast.geojson")
     answers = []
@@ -31,7 +33,16 @@ def make_demo(folder: Path) -> list[Path]:
         answers += survey.write_survey(folder / survey.FILE, np.random.default_rng(seed))
     write_answers(folder / "answers.csv", answers)
     write_picture(folder / "kestrel_bight.png", answers)
-    files = ["model_grid.nc", "truth.nc", "depth.tif", "coast.geojson", "answers.csv", "kestrel_bight.png"]
+    files = [
+        "model_grid.nc",
+        "truth.nc",
+        "model_mesh.nc",
+        "places.csv",
+        "depth.tif",
+        "coast.geojson",
+        "answers.csv",
+        "kestrel_bight.png",
+    ]
     files += [survey.FILE for survey in (survey_1987, survey_2004, lab_2016, notes_1962)]
     return [folder / name for name in files]
 

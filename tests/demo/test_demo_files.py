@@ -51,7 +51,7 @@ def test_the_script_makes_the_committed_files_byte_for_byte(tmp_path):
     command = [sys.executable, "-m", "demo_samples.kestrel_bight.make_demo", "--into", tmp_path]
     subprocess.run(command, check=True, cwd=DEMO.parents[1], capture_output=True)
     made = sorted(tmp_path.iterdir())
-    assert len(made) == 10
+    assert len(made) == 12
     for path in made:
         committed = DEMO / path.name
         if path.suffix == ".png":  # text rendering may differ in a few pixels between font libraries

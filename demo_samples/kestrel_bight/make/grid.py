@@ -20,8 +20,8 @@ HALF_FAN: Final = 0.2  # radians either side of the middle column
 POINTS_ACROSS: Final = 3  # sub-points each way for cell means
 
 # The classic format has no library version and no compression in it, so its bytes are the same everywhere.
-_FORMAT: Final = "NETCDF3_64BIT"
-_GLOBAL: Final = {
+FORMAT: Final = "NETCDF3_64BIT"
+GLOBAL: Final = {
     "Conventions": "CF-1.11",
     "institution": "Kestrel Bight is an invented place",
     "source": "demo_samples/kestrel_bight/make_demo.py",
@@ -91,7 +91,7 @@ def write_grid(path: Path) -> None:
         },
         attrs={
             "title": "Kestrel Bight, model grid",
-            **_GLOBAL,
+            **GLOBAL,
             "comment": "Rows run from the open sea to the land, columns from west to east along the coast. "
             "Positions are WGS 84.",
         },
@@ -101,7 +101,7 @@ def write_grid(path: Path) -> None:
         for name in ("longitude", "latitude", "longitude_vertices", "latitude_vertices", "sea")
     }
     encoding["depth"] = {"_FillValue": np.float32(-9999.0)}
-    grid.to_netcdf(path, engine="netcdf4", format=_FORMAT, encoding=encoding)
+    grid.to_netcdf(path, engine="netcdf4", format=FORMAT, encoding=encoding)
 
 
 def _axis(name: str, units: str) -> dict[str, str]:
@@ -152,10 +152,10 @@ def write_truth(path: Path) -> None:
         {**parts, "bare_rock": (cells, rock.astype(np.float32), rock_attributes)},
         attrs={
             "title": "Kestrel Bight, the true bed",
-            **_GLOBAL,
+            **GLOBAL,
             "comment": "On the cells of model_grid.nc; land is missing. Means over the water inside each cell. "
             "For tests and the accuracy statement only: no build reads it.",
         },
     )
     fill = {name: {"_FillValue": np.float32(-9999.0)} for name in dataset.data_vars}
-    dataset.to_netcdf(path, engine="netcdf4", format=_FORMAT, encoding=fill)
+    dataset.to_netcdf(path, engine="netcdf4", format=FORMAT, encoding=fill)
