@@ -108,16 +108,27 @@ def _write_grids(result: Result, aside: Path) -> None:
 def _write_bed(result: Result, aside: Path) -> None:
     """Write the bed under the user's names, and into a copy of the user's initial file."""
     from texture.bed import single_fractions
-    from texture.output import apply_names, bed_dataset, read_names, stores_single, write_into, write_netcdf
+    from texture.output import (
+        apply_names,
+        bed_dataset,
+        read_names,
+        stores_single,
+        write_cells,
+        write_into,
+        write_netcdf,
+    )
 
     recipe, outputs = result.found.recipe, result.found.recipe.outputs
-    bed = bed_dataset(result.bed, result.found.target, recipe)
-    if outputs.names is None:
-        return write_netcdf(bed, aside / "bed.nc")
-    names = read_names(outputs.names)
-    named = apply_names(bed, names, outputs.names.name)
+    bed, cells = bed_dataset(result.bed, result.found.target, recipe), result.found.target.dims
+    named = bed
+    if outputs.names is not None:
+        names = read_names(outputs.names)
+        named = apply_names(bed, names, outputs.names.name)
+        cells = tuple(names.dimensions.get(d, d) for d in cells)
     write_netcdf(named, aside / "bed.nc")
-    if outputs.into is not None:
+    if outputs.text:
+        write_cells(aside / "bed.csv", named, cells)
+    if outputs.names is not None and outputs.into is not None:
         if stores_single(named, names, outputs.into):  # fractions sum to 1 as that file stores them
             bed["class_fraction"] = bed["class_fraction"].copy(data=single_fractions(bed["class_fraction"].values))
             named = apply_names(bed, names)

@@ -25,7 +25,10 @@ def test_land_without_coordinates(target_of):
     lon = target.longitude.copy()
     lon[~target.active] = np.nan
     blind = type(target)(
-        **{name: getattr(target, name) for name in ("kind", "name", "dims", "shape", "crs", "corners", "active", "topology")},
+        **{
+            name: getattr(target, name)
+            for name in ("kind", "name", "dims", "shape", "crs", "corners", "active", "topology")
+        },
         longitude=lon,
         latitude=target.latitude,
     )

@@ -72,7 +72,10 @@ def test_compass_sides_of_a_grid_stored_south_up(target_of):
     assert both.sum() == 9 + 5
     flipped = type(target)(
         **{
-            **{name: getattr(target, name) for name in ("kind", "name", "dims", "shape", "crs", "x", "y", "active", "topology")},
+            **{
+                name: getattr(target, name)
+                for name in ("kind", "name", "dims", "shape", "crs", "x", "y", "active", "topology")
+            },
             "longitude": target.longitude.reshape(6, 9)[::-1].ravel(),
             "latitude": target.latitude.reshape(6, 9)[::-1].ravel(),
             "corners": target.corners,

@@ -4,6 +4,7 @@ import tomllib
 
 import netCDF4
 import numpy as np
+import pandas as pd
 import pytest
 import tomli_w
 
@@ -129,3 +130,16 @@ def test_settings_that_do_not_fit(job, change, message):
     job.write_text(tomli_w.dumps(settings))
     with pytest.raises(RecipeError, match=message):
         build(job)
+
+
+@pytest.mark.slow
+def test_text_and_single_precision_through_the_recipe(small):
+    outputs = {"geotiff": False, "precision": "float32", "text": True}
+    result = build(small, output=small.parent / "out", outputs=outputs, **QUICK)
+    with netCDF4.Dataset(small.parent / "out" / "bed.nc") as file:
+        stored = file["class_fraction"][:]
+        assert stored.dtype == np.float32
+        assert (stored.sum(axis=0) == np.float32(1.0)).all()
+    table = pd.read_csv(small.parent / "out" / "bed.csv")
+    assert len(table) == result.found.target.n_cells
+    np.testing.assert_allclose(table["class_fraction_mud"], result.bed.class_fraction[0, 0], atol=2**-24)

@@ -120,6 +120,17 @@ def test_only_named_keeps_the_place_on_earth(tmp_path):
         ('[variables]\nerosion_rate_per_stress = { name = "a" }', '"erosion_rate_per_stress" is not in this bed'),
         ('[variables]\nporosity = "a"', "variables.porosity: found 'a', expected a table such as { name = "),
         ("[variables", "names.toml: not TOML"),
+        ('[variables]\nporosity = { name = "a", units = "percnt" }', 'variables.porosity.units: "percnt" is no unit that "1" can be turned into; did you mean "percent"?'),
+        ('[variables]\nporosity = { name = "a", units = "phi" }', '"phi" is no unit that "1" can be turned into'),
+        ('[variables]\nporosity = { name = "a", attributes = { units = "b" } }', "attributes.units: belongs to the file's structure; use the key units"),
+        ('[time]\nname = "t"\nunits = "days"\nvalue = 0.0', "time.units: String should match"),
+        ('[time]\nname = "t"\nvalue = 0.0', "time: give value and units together"),
+        ('[time]\nname = "t"\nvariables = ["porsity"]', 'time.variables: unknown "porsity"; did you mean "porosity"?'),
+        ('[time]\nname = "t"\nvariables = ["settling_velocity"]', '"settling_velocity" does not lie on the cells'),
+        ('[time]\nname = "row"', 'time.name: "row" is taken already'),
+        ('[halo]\ncells = 0', "halo.cells: Input should be greater than or equal to 1"),
+        ('[halo]\ncells = 1\nfill = "land"', 'halo.fill: "land" needs values.land'),
+        ('[halo]\nwidth = 1\ncells = 1', 'unknown key "halo.width"'),
     ],
 )  # fmt: skip
 def test_mistakes_are_named(tmp_path, text, message):

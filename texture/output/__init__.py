@@ -12,6 +12,7 @@ from texture.output.outline import bed_outline, check_outputs
 from texture.output.provenance import provenance, write_json
 from texture.output.renaming import apply_names
 from texture.output.tables import write_csv
+from texture.output.text_table import cell_table, write_cells
 from texture.output.texture_nc import texture_dataset
 
 __all__ = [
@@ -21,6 +22,7 @@ __all__ = [
     "bed_arrays",
     "bed_dataset",
     "bed_outline",
+    "cell_table",
     "check_into",
     "check_outputs",
     "class_colours",
@@ -30,6 +32,7 @@ __all__ = [
     "read_names",
     "stores_single",
     "texture_dataset",
+    "write_cells",
     "write_csv",
     "write_geotiff",
     "write_geotiffs",

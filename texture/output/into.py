@@ -50,6 +50,7 @@ def check_into(
     """
     import netCDF4
 
+    bed = _without_time(bed, names)
     wanted = _wanted(bed, names)
     if not wanted:
         raise RecipeError(f"{source.name}: the names file lists no variable of the bed to put into it")
@@ -92,6 +93,7 @@ def write_into(bed: xr.Dataset, names: Names, source: Path, path: Path, record: 
     import netCDF4
 
     places = check_into(bed, names, source, record)
+    bed = _without_time(bed, names)
     shutil.copyfile(source, path)
     with netCDF4.Dataset(path, "r+") as file:
         for name, index in places.items():
@@ -113,6 +115,11 @@ def _check_packing(theirs: Any, index: tuple[Any, ...], values: Any, source: str
             f'{source}: "{theirs.name}" is packed as {theirs.dtype} with scale_factor {step:g} and cannot hold values from '
             f"{float(values.min()):.4g} to {float(values.max()):.4g}; give it floating point numbers"
         )
+
+
+def _without_time(bed: xr.Dataset, names: Names) -> xr.Dataset:
+    """Their file has its own times; the record says which one."""
+    return bed if names.time is None or names.time.name not in bed.dims else bed.isel({names.time.name: 0}, drop=True)
 
 
 def _wanted(bed: xr.Dataset, names: Names) -> list[str]:

@@ -8,14 +8,25 @@ import numpy as np
 
 from texture.errors import RecipeError
 from texture.output.bed_variables import BED_VARIABLES
+from texture.output.halo import pad, unpad
 from texture.output.names import Names, VariableName
+from texture.output.units import Conversion, find_conversion, scaling
 
 if TYPE_CHECKING:
     import xarray as xr
 
 __all__ = ["apply_names", "undo_names"]
 
-REFERENCES = ("coordinates", "bounds", "grid_mapping", "ancillary_variables")
+DIAMETERS = ("grain_diameter", "mixture_median_diameter", "mixture_geometric_mean_diameter")
+"""What may be asked for in phi."""
+
+CELL_ORDER = "cell_dimensions"
+"""Global attribute of a renamed bed: the grid's own order of dimensions, so that it can be read back."""
+
+REFERENCES = (
+    "coordinates", "bounds", "grid_mapping", "ancillary_variables", "mesh", "node_coordinates", "face_coordinates",
+    "face_node_connectivity",
+)  # fmt: skip
 """CF attributes that hold names of other variables."""
 
 
@@ -43,8 +54,9 @@ def apply_names(dataset: xr.Dataset, names: Names, where: str = "names") -> xr.D
     import xarray as xr
 
     names.check([str(d) for d in dataset.sizes], [str(v) for v in dataset.variables], where)
+    cells = tuple(str(d) for d in dataset["water"].dims)
+    dataset = _padded(dataset, names, cells, where)
     land = dataset["water"].values == 0
-    cells = dataset["water"].dims
     if names.values.layer_order == "bottom_first":
         dataset = dataset.isel(layer=slice(None, None, -1))
     classes = [str(c) for c in dataset["class_name"].values]
@@ -56,11 +68,14 @@ def apply_names(dataset: xr.Dataset, names: Names, where: str = "names") -> xr.D
         spec = names.variables.get(name)
         if spec is None and names.values.only_named and name not in structural:
             continue
-        on_cells = variable.dims[-len(cells) :] == cells and name not in structural
+        on_cells = set(cells) <= set(variable.dims) and name not in structural
         if names.values.land is not None and variable.dtype.kind == "f" and on_cells:
             variable = variable.copy()
             variable.values[..., land] = np.nan
             variable.encoding["_FillValue"] = names.values.land
+        timed = on_cells and names.has_time(name)
+        if names.has_time(name) and not on_cells and names.time and names.time.variables:
+            raise RecipeError(f'{where}: time.variables: "{name}" does not lie on the cells')
         if spec is None or spec.split is None:
             pieces = {_plain_name(name, spec, names, name in dataset.sizes, where): variable}
         else:
@@ -69,13 +84,15 @@ def apply_names(dataset: xr.Dataset, names: Names, where: str = "names") -> xr.D
             if new in made:
                 raise RecipeError(f'{where}: two variables would be called "{new}"; give each its own name')
             new_names.setdefault(name, []).append(new)
-            made[new] = _shaped(name, piece, spec, names, where)
+            made[new] = _shaped(name, piece, spec, names, where, timed)
     made = _without_unused(
         made, [names.dimensions.get("class", "class"), names.dimensions.get("layer", "layer")], new_names
     )
     for variable in made.values():
         _rewrite_references(variable, new_names, made)
-    result = xr.Dataset(made, attrs=dataset.attrs)
+    _add_time(made, names, where)
+    order = " ".join(names.dimensions.get(d, d) for d in cells)
+    result = xr.Dataset(made, attrs={**dataset.attrs, CELL_ORDER: order})
     return result.set_coords([new for name in dataset.coords for new in new_names.get(str(name), []) if new in made])
 
 
@@ -87,7 +104,15 @@ def _structural(dataset: xr.Dataset) -> set[str]:
         for attribute in ("bounds", "grid_mapping")
         for word in str(variable.attrs.get(attribute, "")).split()
     }
-    return {str(name) for name in dataset.coords} | referred
+    mesh = {
+        word
+        for variable in dataset.variables.values()
+        if "cf_role" in variable.attrs
+        for key, value in variable.attrs.items()
+        if key.endswith(("_coordinates", "_connectivity"))
+        for word in str(value).split()
+    } | {str(name) for name, variable in dataset.variables.items() if "cf_role" in variable.attrs}
+    return {str(name) for name in dataset.coords} | referred | mesh
 
 
 def _plain_name(name: str, spec: VariableName | None, names: Names, is_dimension: bool, where: str) -> str:
@@ -128,28 +153,69 @@ def _split(
     return pieces
 
 
-def _shaped(name: str, variable: xr.Variable, spec: VariableName | None, names: Names, where: str) -> xr.Variable:
+def _shaped(
+    name: str, variable: xr.Variable, spec: VariableName | None, names: Names, where: str, timed: bool
+) -> xr.Variable:
     import xarray as xr
 
+    if timed:
+        variable = xr.Variable(
+            ("time", *variable.dims), variable.values[None], variable.attrs, encoding=dict(variable.encoding)
+        )
     if spec is not None and spec.order is not None:
-        if sorted(spec.order) != sorted(str(d) for d in variable.dims):
+        order = spec.order if "time" in spec.order or not timed else ("time", *spec.order)
+        if sorted(order) != sorted(str(d) for d in variable.dims):
             raise RecipeError(
                 f"{where}: variables.{name}.order = {list(spec.order)}, expected its own dimensions in some order: "
                 f"{[str(d) for d in variable.dims]}"
             )
-        variable = variable.transpose(*spec.order)
+        variable = variable.transpose(*order)
     values = variable.values
     attributes = dict(variable.attrs)
-    if spec is not None and spec.scale != 1.0:
-        if values.dtype.kind != "f":
-            raise RecipeError(
-                f"{where}: variables.{name}.scale: only measured values can be scaled, not flags or names"
-            )
-        values = values * spec.scale
     if spec is not None and spec.units is not None:
+        if values.dtype.kind != "f":
+            raise RecipeError(f"{where}: variables.{name}.units: only measured values have one, not flags or names")
+        values = _conversion(name, spec, where).there(values)
         attributes["units"] = spec.units
-    dimensions = tuple(names.dimensions.get(str(d), str(d)) for d in variable.dims)
+    if spec is not None:
+        attributes |= spec.attributes
+    renamed = names.dimensions if names.time is None else {**names.dimensions, "time": names.time.name}
+    dimensions = tuple(renamed.get(str(d), str(d)) for d in variable.dims)
     return xr.Variable(dimensions, values, attributes, encoding=dict(variable.encoding))
+
+
+def _conversion(name: str, spec: VariableName, where: str) -> Conversion:
+    if spec.scale is not None:
+        return scaling(spec.scale)
+    ours = str(BED_VARIABLES.get(name, {}).get("units", ""))
+    try:
+        return find_conversion(ours, str(spec.units), name in DIAMETERS)
+    except RecipeError as error:
+        raise RecipeError(f"{where}: variables.{name}.{error}") from error
+
+
+def _padded(dataset: xr.Dataset, names: Names, cells: tuple[str, ...], where: str) -> xr.Dataset:
+    if names.halo is None:
+        return dataset
+    if len(cells) != 2:
+        raise RecipeError(
+            f"{where}: halo: this bed lies on {cells[0]} alone, without rows and columns to pad; leave it out"
+        )
+    return pad(dataset, cells, names.halo.cells, names.halo.fill, _structural(dataset))
+
+
+def _add_time(made: dict[str, xr.Variable], names: Names, where: str) -> None:
+    """The coordinate variable of the time dimension, where the names file gives it a value."""
+    import xarray as xr
+
+    if names.time is None:
+        return
+    taken = {str(d) for v in made.values() for d in v.dims if v.sizes[d] != 1}
+    if names.time.name in made or names.time.name in taken:
+        raise RecipeError(f'{where}: time.name: "{names.time.name}" is taken already; give time its own name')
+    if names.time.units is not None:
+        attributes = {"standard_name": "time", "long_name": "time of the starting bed", "units": names.time.units}
+        made[names.time.name] = xr.Variable((names.time.name,), np.array([names.time.value]), attributes)
 
 
 def _without_unused(
@@ -173,7 +239,7 @@ def _rewrite_references(variable: xr.Variable, new_names: dict[str, list[str]], 
 
 
 def undo_names(dataset: xr.Dataset, names: Names) -> xr.Dataset:
-    """Give a renamed bed our own names, order, units and layers from the top again.
+    """Give a renamed bed our own names, order, units and layers from the top again, without time and halo.
 
     Parameters
     ----------
@@ -188,6 +254,8 @@ def undo_names(dataset: xr.Dataset, names: Names) -> xr.Dataset:
     """
     import xarray as xr
 
+    if names.time is not None and names.time.name in dataset.dims:
+        dataset = dataset.isel({names.time.name: 0}, drop=True)
     ours = {theirs: own for own, theirs in names.dimensions.items()}
     made: dict[str, xr.Variable] = {}
     taken: set[str] = set()
@@ -205,11 +273,22 @@ def undo_names(dataset: xr.Dataset, names: Names) -> xr.Dataset:
         if name not in taken:
             own = ours.get(str(name), str(name))
             made[own] = _restored(own, variable, None, ours)
+    cells = tuple(ours.get(d, d) for d in str(dataset.attrs.get(CELL_ORDER, "")).split())
+    made = {name: _in_order(variable, cells) for name, variable in made.items()}
     result = xr.Dataset(made)
     result = result.set_coords([n for n in ("class_name", "layer", "longitude", "latitude", "x", "y") if n in made])
     if names.values.layer_order == "bottom_first" and "layer" in result.dims:
         result = result.isel(layer=slice(None, None, -1))
-    return result
+    return result if names.halo is None else unpad(result, cells, names.halo.cells)
+
+
+def _in_order(variable: xr.Variable, cells: tuple[str, ...]) -> xr.Variable:
+    """Classes, layers, others, then the cells in the grid's own order; what is not on the cells stays."""
+    if not cells or not set(cells) <= set(variable.dims) or "corner" in variable.dims:
+        return variable
+    leading = [d for d in ("class", "layer") if d in variable.dims]
+    others = [d for d in variable.dims if d not in (*leading, *cells)]
+    return variable.transpose(*leading, *others, *cells)
 
 
 def _pieces(dataset: xr.Dataset, spec: VariableName) -> list[str]:
@@ -236,14 +315,8 @@ def _restored(own: str, variable: xr.Variable, spec: VariableName | None, ours: 
 
     dimensions = tuple(ours.get(str(d), str(d)) for d in variable.dims)
     values, attributes = variable.values, dict(variable.attrs)
-    if spec is not None and spec.scale != 1.0:
-        values = values / spec.scale
-    if own in BED_VARIABLES and "units" in BED_VARIABLES[own]:
-        attributes["units"] = BED_VARIABLES[own]["units"]
-    restored = xr.Variable(dimensions, values, attributes)
-    leading = [d for d in ("class", "layer") if d in dimensions]
-    if spec is not None and spec.order is not None:
-        # Row and column, or y and x: the order of rows before columns is the names file's own statement.
-        cells = [d for d in ("row", "y", "column", "x") if d in dimensions]
-        return restored.transpose(*leading, *cells)
-    return restored
+    if spec is not None:
+        attributes = {key: value for key, value in attributes.items() if key not in spec.attributes}
+        if spec.units is not None:
+            values = _conversion(own, spec, "names").back(values)
+    return xr.Variable(dimensions, values, {**attributes, **BED_VARIABLES.get(own, {})})
