@@ -64,9 +64,8 @@ def bed_dataset(bed: Bed, target: Target, recipe: Recipe) -> xr.Dataset:
     )
     samples = ", ".join(s.survey or s.file.stem for s in recipe.samples)
     method = recipe.method.name.replace("_", " ")
-    dataset.attrs = global_attributes(
-        recipe.title, f"{method} of grab samples ({samples}) on {target.name}", COMMENT, REFERENCES
-    )
+    source = f"{method} of grab samples ({samples}) on {target.name}"
+    dataset.attrs = {**global_attributes(recipe.title, source, COMMENT, REFERENCES), **dataset.attrs}
     return _single(dataset) if recipe.outputs.precision == "float32" else dataset
 
 

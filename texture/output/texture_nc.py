@@ -123,7 +123,11 @@ def texture_dataset(
         dataset = dataset.assign_coords(quantile=("quantile", np.array(QUANTILES), coordinate))
     method = recipe.method.name.replace("_", " ")
     source = f"{method} of {recipe.composition.logratio} coordinates of grab samples on {target.name}"
-    dataset.attrs = {**global_attributes(recipe.title, source, COMMENT, REFERENCES), **(attributes or {})}
+    dataset.attrs = {
+        **global_attributes(recipe.title, source, COMMENT, REFERENCES),
+        **dataset.attrs,  # the target's own: UGRID's convention, the type of feature of points
+        **(attributes or {}),
+    }
     return dataset
 
 

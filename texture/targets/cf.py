@@ -121,4 +121,4 @@ def _mesh(target: Target) -> xr.Dataset:
     }
     if mesh.location == "face":
         topology["face_coordinates"] = "longitude latitude"
-    return xr.Dataset(variables, coords=coords)
+    return xr.Dataset(variables, coords=coords, attrs={"Conventions": "CF-1.11 UGRID-1.0"})
