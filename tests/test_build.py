@@ -100,9 +100,7 @@ def test_expected_fractions_beat_the_controls_against_the_truth(plain, truth, ca
     found, wet = plain.found, plain.found.target.active
     error = {"kriging": plain.estimate.fractions[wet] - truth[wet]}
     for name in ("nearest", "inverse_distance"):
-        mapper = make_mapper(
-            name, found.observations, found.mapper.structure, found.recipe.method, found.mapper.logratio
-        )
+        mapper = make_mapper(name, found.validation.plain, found.recipe.method)
         error[name] = mapper.expected(*mapper.predict(found.cell_centres)) - truth[wet]
     rmse = {name: np.sqrt((e**2).mean(axis=0)) for name, e in error.items()}
     with capsys.disabled():
@@ -114,7 +112,9 @@ def test_expected_fractions_beat_the_controls_against_the_truth(plain, truth, ca
 
 def test_held_out_scores_tell_the_same_story(plain):
     table = pd.read_csv(plain.found.recipe.output / "validation.csv")
-    rmse = table[table["score"] == "rmse"].pivot(index="method", columns="part", values="value")
+    # The first row of a method and part is the map's own treatment of zeros; others that were tried come after.
+    first = table[table["score"] == "rmse"].drop_duplicates(["method", "part"])
+    rmse = first.pivot(index="method", columns="part", values="value")
     assert (rmse.loc["kriging", ["mud", "sand", "gravel"]] < rmse.loc["nearest", ["mud", "sand", "gravel"]]).all()
     held_out = pd.read_csv(plain.found.recipe.output / "held_out.csv")
     assert len(held_out) == 3 * plain.found.observations.count

@@ -36,7 +36,8 @@ class Estimate:
     quantiles : float array, shape (3, n, parts)
         At 0.05, 0.5 and 0.95, of the cell mean; NaN for methods without a variance.
     mean, variance : float arrays, shape (n, d)
-        Log-ratio coordinates, averaged over the points inside the cell; variance of the bed at a point.
+        The kriged columns (log-ratio coordinates, and what else a treatment of zeros maps), averaged over the points
+        inside the cell; variance of the bed at a point.
     evidence : int array, shape (n,)
         1 supported by samples, 2 extrapolated, 6 wider fall-back; 0 where there is no map.
     texture_class : int array, shape (n,)
@@ -83,7 +84,7 @@ def estimate_on(
         Back-transform the kriged coordinates instead of taking expected fractions.
     """
     cells = np.flatnonzero(target.active)
-    parts, d = mapper.logratio.n_parts, mapper.logratio.n_coordinates
+    parts, d = mapper.logratio.n_parts, len(mapper.column_names)
     n = target.n_cells
     fractions, quantiles = np.full((n, parts), np.nan), np.full((len(QUANTILES), n, parts), np.nan)
     mean, variance = np.full((n, d), np.nan), np.full((n, d), np.nan)
@@ -95,7 +96,7 @@ def estimate_on(
             inside = cell_points(target, some, per_side, plane.to_metres)
             m, v, rung = mapper.predict_with_rung(inside.reshape(-1, 2))
             shape = inside.shape[:2]
-            back = mapper.logratio.inverse(m) if median else mapper.expected(m, v)
+            back = mapper.back(m) if median else mapper.expected(m, v)
             fractions[some] = back.reshape(*shape, parts).mean(axis=1)
             fractions[some] /= fractions[some].sum(axis=1, keepdims=True)
             mean[some], variance[some] = m.reshape(*shape, d).mean(axis=1), v.reshape(*shape, d).mean(axis=1)

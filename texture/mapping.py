@@ -1,4 +1,4 @@
-"""One method fitted on some stations: from points in the plane to a normal in log-ratio coordinates.
+"""One method fitted on some stations: from points in the plane to a normal in the columns of a treatment.
 
 The map and its validation both come through here, so that what is validated is what is mapped.
 """
@@ -13,43 +13,140 @@ from numpy.typing import NDArray
 
 from texture.observations import Observations
 from texture.recipe import Method
+from texture.treatments import Treatment
 
 if TYPE_CHECKING:
     from texture.composition import LogRatio
     from texture.structure import CovarianceSet
 
-__all__ = ["Mapper", "fit_structure", "make_mapper"]
+__all__ = ["Learned", "Mapper", "learn", "make_mapper"]
 
 Floats = NDArray[np.float64]
-LEAST_TRACE = (
-    0.01  # gravel below it names no class of the map; some mapping practice takes this (common practice, no source)
-)
+MOST_TOGETHER = 800  # stations up to which each is left out of all others; in tiles beyond, which costs no more each
 
 
-def fit_structure(observations: Observations, method: Method, start: CovarianceSet | None = None) -> CovarianceSet:
-    """Fit the spatial structure of all coordinates; `start` makes it a warm start (inside folds)."""
+@dataclass(frozen=True, eq=False)
+class Learned:
+    """What a treatment makes of some stations, and the structure fitted to it.
+
+    Attributes
+    ----------
+    treatment : Treatment
+    observations : Observations
+        The stations learned from.
+    values, noise : float arrays, shape (n, k)
+        Columns to krige and their noise variance.
+    structure : CovarianceSet
+    """
+
+    treatment: Treatment
+    observations: Observations
+    values: Floats
+    noise: Floats
+    structure: CovarianceSet
+
+    @property
+    def survey(self) -> NDArray[np.int64] | None:
+        """Survey of each station, None where there is but one."""
+        survey = self.observations.survey
+        return survey if np.unique(survey).size > 1 else None
+
+
+def learn(
+    treatment: Treatment, observations: Observations, method: Method, start: CovarianceSet | None = None
+) -> Learned:
+    """Fit the spatial structure of all columns of a treatment.
+
+    Parameters
+    ----------
+    treatment : Treatment
+    observations : Observations
+    method : Method
+        Of the recipe: how structure is fitted.
+    start : CovarianceSet, optional
+        A warm start (inside folds).
+    """
+    values, noise = treatment.columns(observations)
+    if treatment.sweeps == 0 or start is None:
+        learned = _fitted(treatment, observations, values, noise, method, start)
+    else:
+        learned = Learned(treatment, observations, values, noise, start)
+    if treatment.sweeps == 0:
+        return learned
+    # Structure and censored values hang together: sweeps with one, a fit to the other, and sweeps again.
+    learned = _swept(learned)
+    learned = _fitted(treatment, observations, learned.values, learned.noise, method, learned.structure)
+    return _swept(learned)
+
+
+def _fitted(
+    treatment: Treatment,
+    observations: Observations,
+    values: Floats,
+    noise: Floats,
+    method: Method,
+    start: CovarianceSet | None,
+) -> Learned:
     from texture.structure import Covariance
 
     several = np.unique(observations.survey).size > 1
-    fitted: CovarianceSet = Covariance.fit(
+    structure: CovarianceSet = Covariance.fit(
         observations.points,
-        observations.coordinates,
+        values,
         method=method.fit,
-        noise_variance=observations.noise,
+        noise_variance=noise,
         survey=observations.survey if several else None,
         start=start,
     )
-    return fitted
+    return Learned(treatment, observations, values, noise, structure)
+
+
+def _swept(learned: Learned) -> Learned:
+    values, noise = learned.values, learned.noise
+    for _ in range(learned.treatment.sweeps):
+        mean, variance = _without_each(learned, values, noise)
+        values, noise = learned.treatment.sweep(learned.observations, values, noise, mean, variance)
+    return Learned(learned.treatment, learned.observations, values, noise, learned.structure)
+
+
+def _without_each(learned: Learned, values: Floats, noise: Floats) -> tuple[Floats, Floats]:
+    """Each station predicted from all others, shapes (n, k); the variance is of its sample without its own noise."""
+    from texture.predict import Kriging
+    from texture.predict.leave_out import leave_out
+
+    points, structure = learned.observations.points, learned.structure
+    kriging = Kriging(structure, neighbours=None if len(points) <= MOST_TOGETHER else 32)
+    kriging.fit(points, values, noise_variance=noise, survey=learned.survey)
+    mean, variance = leave_out(kriging)
+    variance -= noise + np.array([c.noise for c in structure])
+    absent = np.isnan(values)
+    rows = np.flatnonzero(absent.any(axis=1))
+    if rows.size:
+        there, spread = kriging.predict(points[rows])
+        spread = spread + np.array([c.survey for c in structure])
+        mean[rows] = np.where(absent[rows], there, mean[rows])
+        variance[rows] = np.where(absent[rows], spread, variance[rows])
+    return mean, variance
 
 
 @dataclass(frozen=True, eq=False)
 class Mapper:
-    """A fitted method together with the coordinates that it works in."""
+    """A fitted method together with the treatment whose columns it works in."""
 
     name: str
-    logratio: LogRatio
+    treatment: Treatment
     structure: CovarianceSet
     predictor: Any
+
+    @property
+    def logratio(self) -> LogRatio:
+        """Coordinates of the treatment."""
+        return self.treatment.logratio
+
+    @property
+    def column_names(self) -> tuple[str, ...]:
+        """A formula for each column that is kriged."""
+        return self.treatment.column_names
 
     @property
     def has_variance(self) -> bool:
@@ -60,11 +157,11 @@ class Mapper:
 
     @property
     def small_scale(self) -> Floats:
-        """Variance of the bed's own patchiness in each coordinate, shape (d,)."""
+        """Variance of the bed's own patchiness in each column, shape (k,)."""
         return np.array([c.small_scale for c in self.structure])
 
     def predict(self, points: Floats) -> tuple[Floats, Floats]:
-        """Mean and variance of the bed at points, shapes (n, d); variance NaN where the method has none."""
+        """Mean and variance of the bed at points, shapes (n, k); variance NaN where the method has none."""
         mean, variance = self.predictor.predict(points)
         return mean, variance
 
@@ -81,56 +178,44 @@ class Mapper:
         return np.asarray(variance + noise + np.array([c.noise + c.survey for c in self.structure]))
 
     def covariance(self, variance: Floats) -> Floats:
-        """Covariance of the coordinates from their variances, shape (n, d, d), by the residual correlation."""
+        """Covariance of the columns from their variances, shape (n, k, k), by the residual correlation."""
         sd = np.sqrt(variance)
         return np.asarray(sd[:, :, None] * sd[:, None, :] * self.structure.correlation)
+
+    def back(self, mean: Floats) -> Floats:
+        """Plain back-transform of the columns, shape (n, parts): near the median of each part, not its mean."""
+        return self.treatment.back(mean)
 
     def expected(self, mean: Floats, variance: Floats) -> Floats:
         """Expected fractions, shape (n, parts); the plain back-transform where the method has no variance."""
         if not self.has_variance:
-            return self.logratio.inverse(mean)
-        return self.logratio.expected(mean, self.covariance(variance))
+            return self.back(mean)
+        return self.treatment.expected(mean, self.covariance(variance))
 
     def interval(self, mean: Floats, variance: Floats, levels: tuple[float, float] = (0.05, 0.95)) -> Floats:
-        """Quantiles of each part, shape (2, n, parts); NaN where the method has no variance."""
+        """Quantiles of each part of a sample, shape (2, n, parts); NaN where the method has no variance."""
         if not self.has_variance:
             return np.full((2, mean.shape[0], self.logratio.n_parts), np.nan)
-        return self.logratio.quantiles(mean, self.covariance(variance), levels)
+        return self.treatment.sample_quantiles(mean, self.covariance(variance), levels)
 
     def cell_quantiles(self, mean: Floats, variance: Floats, levels: tuple[float, ...]) -> Floats:
-        """Quantiles of the mean of a cell, shape (q, n, parts): small-scale variation averages out inside it.
-
-        In coordinates without shares (ilr, alr) there is no such form: it is then left out of the variance.
-        """
+        """Quantiles of the mean of a cell, shape (q, n, parts): small-scale variation averages out inside it."""
         if not self.has_variance:
             return np.full((len(levels), mean.shape[0], self.logratio.n_parts), np.nan)
         within = np.minimum(variance, self.small_scale)
-        if not self.logratio.amalgamates:
-            return self.logratio.quantiles(mean, self.covariance(variance - within), levels)
-        return self.logratio.quantiles(mean, self.covariance(variance), levels, within=within)
+        return self.treatment.cell_quantiles(mean, self.covariance(variance), levels, within)
 
     def likely_class(self, mean: Floats, variance: Floats) -> tuple[NDArray[np.int8], Floats]:
         """Most probable texture class of the bed at points, numbered from 1, and its probability."""
-        from texture.composition import class_odds
-
-        spread = self.covariance(variance) if self.has_variance else np.zeros_like(mean)
-        odds = class_odds(self.logratio, mean, spread, "folk", trace=max(LEAST_TRACE, self.logratio.detection_limit))
-        return odds.number, odds.probability
+        spread = self.covariance(variance) if self.has_variance else np.zeros((*mean.shape, mean.shape[1]))
+        return self.treatment.odds(mean, spread)
 
 
-def make_mapper(
-    name: str, observations: Observations, structure: CovarianceSet, method: Method, logratio: LogRatio
-) -> Mapper:
-    """Fit one method on stations."""
+def make_mapper(name: str, learned: Learned, method: Method) -> Mapper:
+    """Fit one method on the stations that a treatment has learned from."""
     from texture.predict import make_method
 
     settings = {"neighbours": method.neighbours, "neighbourhood": method.neighbourhood} if name == "kriging" else {}
-    predictor = make_method(name, structure, **settings)
-    several = np.unique(observations.survey).size > 1
-    predictor.fit(
-        observations.points,
-        observations.coordinates,
-        noise_variance=observations.noise,
-        survey=observations.survey if several else None,
-    )
-    return Mapper(name, logratio, structure, predictor)
+    predictor = make_method(name, learned.structure, **settings)
+    predictor.fit(learned.observations.points, learned.values, noise_variance=learned.noise, survey=learned.survey)
+    return Mapper(name, learned.treatment, learned.structure, predictor)

@@ -10,10 +10,10 @@ from collections.abc import Iterable
 from pathlib import Path
 from typing import Any
 
+from texture.choosing import fit_candidates
 from texture.clock import Clock
-from texture.composition import LogRatio
 from texture.estimate import estimate_on
-from texture.mapping import fit_structure, make_mapper
+from texture.mapping import make_mapper
 from texture.observations import observe
 from texture.placing import place_stations
 from texture.progress import Progress, Silent
@@ -23,6 +23,7 @@ from texture.result import Intake, Result, Validated
 from texture.stations import Stations, read_samples
 from texture.structure.plane import Plane
 from texture.targets import Target, points_per_side, read_target
+from texture.treatments import plain_treatment
 from texture.validate import validate_methods
 
 __all__ = ["build", "intake", "read_stations", "validate"]
@@ -131,17 +132,11 @@ def _stations(recipe: Recipe, progress: Progress) -> tuple[Target, Stations]:
 def _validated(recipe: Recipe, progress: Progress, clock: Clock) -> Validated:
     with clock.stage("read"):
         target, stations = _stations(recipe, progress)
-    logratio = LogRatio(
-        recipe.composition.parts,
-        recipe.composition.logratio,
-        recipe.composition.tree,
-        recipe.composition.detection_limit,
-    )
     plane = Plane.choose(stations.table["longitude"].to_numpy(), stations.table["latitude"].to_numpy(), target.crs)
-    observations = observe(stations, logratio, plane)
+    observations = observe(stations, plain_treatment(recipe.composition).logratio, plane)
     with clock.stage("fit"), progress.stage("fit the spatial structure"):
-        structure = fit_structure(observations, recipe.method)
-        mapper = make_mapper(recipe.method.name, observations, structure, recipe.method, logratio)
+        plain, treated = fit_candidates(observations, recipe)
     with clock.stage("validate"):
-        validation = validate_methods(observations, target, plane, structure, logratio, recipe, progress)
+        validation = validate_methods(observations, target, plane, plain, treated, recipe, progress)
+    mapper = make_mapper(recipe.method.name, validation.learned, recipe.method)
     return Validated(recipe, stations, target, plane, observations, mapper, validation)

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections import Counter
 from dataclasses import dataclass, field
 from functools import cached_property
 from pathlib import Path
@@ -41,7 +42,16 @@ class Intake:
 
     def summary_lines(self) -> list[str]:
         """Lines for a person."""
-        return [self.recipe.title, *rows_lines(self.stations), *written_line(self.recipe, self.files)]
+        notes = [f"  {'note' if i == 0 else '':<11} {note}" for i, note in enumerate(self.stations.notes)]
+        reasons = Counter(self.stations.set_aside["reason"]).most_common(5)
+        aside = [f"  {'set aside' if i == 0 else '':<11} {n} × {reason}" for i, (reason, n) in enumerate(reasons)]
+        return [
+            self.recipe.title,
+            *rows_lines(self.stations),
+            *aside,
+            *notes,
+            *written_line(self.recipe, self.files),
+        ]
 
     def __repr__(self) -> str:
         return "\n".join(self.summary_lines())
@@ -93,13 +103,14 @@ class Validated:
 
     def summary(self) -> dict[str, Any]:
         """Counts, scores and files."""
-        return {**self.stations.counts, "folds": self.validation.folds.count, "scores": self.scores(),
+        return {**self.stations.counts, "folds": self.validation.folds.count, "zeros": self.mapper.treatment.label,
+                "scores": self.scores(),
                 "files": [p.name for p in self.files]}  # fmt: skip
 
     def summary_lines(self) -> list[str]:
         """Lines for a person."""
         lines = [self.recipe.title, *rows_lines(self.stations), f"  folds       {self.validation.folds!r}"]
-        return [*lines, *error_lines(self), *written_line(self.recipe, self.files)]
+        return [*lines, *zeros_lines(self), *error_lines(self), *written_line(self.recipe, self.files)]
 
     def __repr__(self) -> str:
         return "\n".join(self.summary_lines())
@@ -161,6 +172,7 @@ class Result:
         return {
             **self.found.stations.counts,
             "cells": int(self.found.target.active.sum()),
+            "zeros": self.found.mapper.treatment.label,
             "scores": self.found.scores(),
             "share_beyond_samples": self.beyond_share,
             "share_of_mass_below_samples": account.share_below_samples,
@@ -183,7 +195,13 @@ class Result:
         bed = f"  bed         {total / 1e6:,.1f} Mt dry in {len(account.tonnes)} classes and {len(self.bed.erodible_thickness)} layers"
         if account.rim_cells:
             bed += f"; the rim ({account.rim_cells:,} cells) took out {rim / 1e6:,.2f} Mt of mud"
-        lines = [found.recipe.title, *rows_lines(found.stations), *structure_lines(found), *error_lines(found)]
+        lines = [
+            found.recipe.title,
+            *rows_lines(found.stations),
+            *zeros_lines(found),
+            *structure_lines(found),
+            *error_lines(found),
+        ]
         lines.append(
             f"  support     {100 * self.beyond_share:.1f} % of the water area is further than {found.reach_m / 1000:.1f} km from any sample"
         )
@@ -208,7 +226,7 @@ def rows_lines(stations: Stations) -> list[str]:
 def structure_lines(found: Validated) -> list[str]:
     """Say the fitted structure of each coordinate."""
     lines: list[str] = []
-    for name, covariance in zip(found.mapper.logratio.coordinate_names, found.mapper.structure, strict=True):
+    for name, covariance in zip(found.mapper.column_names, found.mapper.structure, strict=True):
         head = "structure" if not lines else ""
         if not covariance.structures:
             lines.append(f"  {head:<11} {name}: no spatial structure, variance {covariance.sill:.2f}")
@@ -219,6 +237,13 @@ def structure_lines(found: Validated) -> list[str]:
             f"{sum(s.sill for s in covariance.structures):.2f}, small-scale {covariance.small_scale:.2f}"
         )
     return lines
+
+
+def zeros_lines(found: Validated) -> list[str]:
+    """Say what is done with zeros, and whether held-out error chose it."""
+    tried = found.validation.tried
+    line = f"  zeros       {found.mapper.treatment.label}"
+    return [line + (f", of {len(tried)} treatments by held-out error" if len(tried) > 1 else "")]
 
 
 def error_lines(found: Validated) -> list[str]:

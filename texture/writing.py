@@ -93,10 +93,11 @@ def _write_grids(result: Result, aside: Path) -> None:
     )
     attributes = {
         "coordinates_partition": repr(found.mapper.logratio),
+        "zeros": found.mapper.treatment.label,
         "fraction_support": support,
         "quantile_support": "cell mean: small-scale variation averages out inside the cell",
     }
-    names = found.mapper.logratio.coordinate_names
+    names = found.mapper.column_names
     write_netcdf(texture_dataset(result.estimate, found.target, recipe, words, names, attributes), aside / "texture.nc")
     _write_bed(result, aside)
     if recipe.outputs.geotiff and found.target.corners is not None:  # places have no cells to show
@@ -143,14 +144,18 @@ def _write_scores(result: Validated, aside: Path) -> None:
 
 
 def _scores(result: Validated) -> pd.DataFrame:
-    """One row for each method, part and score."""
+    """One row for each method, part and score, and for each treatment of zeros that the map's method was tried with."""
     import pandas as pd
 
-    folds = result.validation.folds
+    found = result.validation
+    taken = next(t.treatment.label for t in found.tried if t.chosen)
+    others = [t for t in found.tried if not t.chosen]
+    runs = [(found.chosen, taken), *((m, found.plain.treatment.label) for m in found.methods[1:])]
+    runs += [(t.held_out, t.treatment.label) for t in others]
     rows = [
-        {"method": method.method, "folds": folds.kind, "count": folds.count, **score}
-        for method in result.validation.methods
-        for score in method.scores
+        {"method": held.method, "treatment": label, "folds": found.folds.kind, "count": found.folds.count, **score}
+        for held, label in runs
+        for score in held.scores
     ]
     return pd.DataFrame(rows)
 

@@ -52,6 +52,7 @@ def write_page(result: Result, map_picture: Picture, settings: str, versions: st
         figures={"parts": map_picture, **_figures(result)},
         tables=page_tables(result),
         map_notes=_map_notes(result),
+        notes=found.stations.notes,
         folds_line=_folds_line(result),
         error_notes=_error_notes(result),
         opinion_line=_opinion_line(result),
@@ -86,7 +87,7 @@ def _figures(result: Result) -> dict[str, Picture]:
             "Scatter of measured against held-out fractions, one panel for each part.",
         ),
         "variograms": picture(
-            draw_variograms(found.mapper.structure, found.mapper.logratio.coordinate_names),
+            draw_variograms(found.mapper.structure, found.mapper.column_names),
             "Variogram of each coordinate: points from the samples, lines as fitted.",
             "Empirical variogram points and fitted curves for each log-ratio coordinate.",
         ),
@@ -162,7 +163,7 @@ def _method_line(result: Result) -> str:
     return (
         f"{found.target.name}: {found.target.size_text}, {wet:,} of them water, about "
         f"{found.cell_side_m:,.0f} m wide. Method: {found.recipe.method.name.replace('_', ' ')} of "
-        f"{len(found.mapper.logratio.coordinate_names)} log-ratio coordinates, {inside} point{'s' * (inside > 1)} a cell."
+        f"{', '.join(found.mapper.column_names)}; zeros: {found.mapper.treatment.label}; {inside} point{'s' * (inside > 1)} a cell."
     )
 
 

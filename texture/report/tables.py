@@ -31,6 +31,8 @@ def page_tables(result: Result) -> dict[str, Table]:
     """Make all tables of the page."""
     return {
         "methods": _methods(result),
+        "treatments": _treatments(result),
+        "limits": _limits(result),
         "structure": _structure(result),
         "classes": _classes(result),
         "inventory": _inventory(result),
@@ -71,10 +73,45 @@ def _methods(result: Result) -> Table:
     )
 
 
+def _treatments(result: Result) -> Table:
+    found = result.found
+    parts, tried = found.recipe.composition.parts, found.validation.tried
+    rows = []
+    for t in tried:
+        scores = [number(t.held_out.score(p, s)) for p in parts for s in ("rmse", "mean_error")]
+        above = f"{number(t.above_best)} ± {number(t.standard_error)}"
+        rows.append([t.treatment.label, number(t.error), above, *scores, "" if t.balanced else "out of balance"])
+    return Table(
+        "Treatments of zeros, each by the map's method on the same folds. Error: sum over parts of squared error relative to the part's "
+        "variance; beside it how far above the best, with the standard error of that. Out of balance: the mean error of a part is beyond a tenth "
+        "of its mean. The lowest error wins among the balanced, the simplest (first) within one standard error of it is taken.",
+        ["treatment", "error", "above the best", *[f"{p} {s}" for p in parts for s in ("RMSE", "mean error")], ""],
+        rows,
+        numeric=list(range(1, 3 + 2 * len(parts))),
+        chosen=next(i for i, t in enumerate(tried) if t.chosen),
+    )
+
+
+def _limits(result: Result) -> Table:
+    effect, parts = result.found.validation.limit_effect, result.found.recipe.composition.parts
+    rows = []
+    if effect is not None:
+        for i, part in enumerate(parts):
+            moved = [number(m[i] - effect.mean[i], 4) for m in (effect.halved, effect.doubled)]
+            rows.append([part, number(effect.mean[i], 4), *moved])
+    limit = "" if effect is None else f" ({effect.limit:g}), over {effect.cells:,} cells"
+    return Table(
+        f"How far the map's mean moves when the limit that zeros are treated at is halved and doubled{limit}.",
+        ["part", "mean", "limit halved", "limit doubled"],
+        rows,
+        numeric=[1, 2, 3],
+    )
+
+
 def _structure(result: Result) -> Table:
     mapper = result.found.mapper
     rows = []
-    for name, c in zip(mapper.logratio.coordinate_names, mapper.structure, strict=True):
+    for name, c in zip(mapper.column_names, mapper.structure, strict=True):
         model = " + ".join(s.model + (f" {s.smoothness:g}" if s.smoothness else "") for s in c.structures) or "none"
         sill = sum(s.sill for s in c.structures)
         rows.append(

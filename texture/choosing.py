@@ -1,0 +1,208 @@
+"""Which treatment of zeros the map takes: candidates fitted, compared by held-out error, and one of them chosen."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+import numpy as np
+from numpy.typing import NDArray
+
+from texture.mapping import Learned, learn, make_mapper
+from texture.recipe import Recipe
+from texture.treatments import Presence, Shares, Treatment, candidates, plain_treatment
+
+if TYPE_CHECKING:
+    from texture.observations import Observations
+    from texture.recipe import Method
+    from texture.structure import CovarianceSet
+    from texture.validation.cross_validate import HeldOut
+
+__all__ = ["LimitEffect", "Tried", "choose", "fit_candidates", "limit_effect", "warm_start", "with_columns_of"]
+
+Floats = NDArray[np.float64]
+MOST_MEAN_ERROR = 0.1  # of a part's mean: a map that is further off has too much or too little of it overall
+
+
+@dataclass(frozen=True, eq=False)
+class Tried:
+    """One treatment's record in the comparison.
+
+    Attributes
+    ----------
+    treatment : Treatment
+    held_out : HeldOut
+    error : float
+        Sum over parts of the mean squared error relative to the part's variance; lower is better, the number of parts
+        is what their means would score.
+    above_best : float
+        How much `error` lies above that of the best candidate.
+    standard_error : float
+        Of `above_best`, from the differences station by station.
+    balanced : bool
+        Whether the mean error of every part is within a tenth of the part's mean.
+    chosen : bool
+    """
+
+    treatment: Treatment
+    held_out: HeldOut
+    error: float
+    above_best: float
+    standard_error: float
+    balanced: bool
+    chosen: bool
+
+
+@dataclass(frozen=True)
+class LimitEffect:
+    """How far the map's mean moves with the limit that zeros are treated at.
+
+    Attributes
+    ----------
+    limit : float
+    mean, halved, doubled : tuple of float
+        Mean fraction of each part over the cells looked at, with the limit, half of it, and twice of it.
+    cells : int
+        Number of cells looked at.
+    """
+
+    limit: float
+    mean: tuple[float, ...]
+    halved: tuple[float, ...]
+    doubled: tuple[float, ...]
+    cells: int
+
+
+def fit_candidates(observations: Observations, recipe: Recipe) -> tuple[Learned, list[Learned]]:
+    """Fit the plain treatment, and every one that the recipe lets held-out error choose from.
+
+    Returns
+    -------
+    plain : Learned
+        Replacement at the laboratory's limit: what methods without a variance are given.
+    learned : list of Learned
+        The simplest first; the first is `plain` itself where the recipe allows it.
+    """
+    from texture.predict import METHODS
+
+    plain = learn(plain_treatment(recipe.composition), observations, recipe.method)
+    found = []
+    for treatment in candidates(recipe.composition, observations, METHODS[recipe.method.name].has_variance):
+        same = type(treatment) is type(plain.treatment) and treatment == plain.treatment
+        start = warm_start(treatment, plain)
+        found.append(plain if same else learn(treatment, observations, recipe.method, start))
+    return plain, found
+
+
+def warm_start(treatment: Treatment, plain: Learned) -> CovarianceSet | None:
+    """Where the fit of a treatment begins; None where the plain columns say nothing of its own."""
+    from texture.structure import Covariance, CovarianceSet, Structure
+
+    if isinstance(treatment, Shares):
+        return None
+    if not isinstance(treatment, Presence):
+        return plain.structure
+    # An indicator is not continuous anywhere on its edges: its variogram rises at once, as the exponential one does.
+    own = plain.structure[treatment.own]
+    range_m = own.range_m or float(np.linalg.norm(np.ptp(plain.observations.points, axis=0))) / 3.0
+    indicator = Covariance([Structure("exponential", 0.15, range_m)], small_scale=0.05)
+    return CovarianceSet([*plain.structure, indicator])
+
+
+def relative_error(held_out: HeldOut, measured: Floats) -> Floats:
+    """Each station's share in the sum over parts of squared error relative to the part's variance, shape (n,).
+
+    Parameters
+    ----------
+    held_out : HeldOut
+    measured : float array, shape (n, parts)
+        NaN where a part is unknown or not to be scored.
+    """
+    share = np.zeros(len(measured))
+    for part in range(measured.shape[1]):
+        known = np.isfinite(measured[:, part])
+        spread = float(measured[known, part].var()) if known.any() else 0.0
+        if spread > 0.0:
+            error = (held_out.predicted[known, part] - measured[known, part]) ** 2
+            share[known] += error / spread / known.sum()
+    return share
+
+
+def choose(treatments: list[Treatment], held_out: list[HeldOut], measured: Floats) -> list[Tried]:
+    """Compare treatments, the simplest first, and mark the one to take.
+
+    The lowest error wins among those whose mean errors are balanced, or among all where none is; the simplest one
+    within one standard error of it is taken instead.
+
+    Parameters
+    ----------
+    treatments : list of Treatment
+    held_out : list of HeldOut
+        On the same folds.
+    measured : float array, shape (n, parts)
+        NaN where a part is unknown or not to be scored.
+    """
+    shares = [relative_error(h, measured) for h in held_out]
+    error = [float(s.sum()) for s in shares]
+    balanced = [_balanced(h, measured) for h in held_out]
+    open_to = [i for i in range(len(error)) if balanced[i] or not any(balanced)]
+    best = min(open_to, key=lambda i: error[i])
+    spread = [float(np.sqrt(len(s)) * (s - shares[best]).std()) for s in shares]
+    taken = next(i for i in open_to if error[i] - error[best] <= spread[i])
+    return [
+        Tried(treatments[i], held_out[i], error[i], error[i] - error[best], spread[i], balanced[i], i == taken)
+        for i in range(len(error))
+    ]
+
+
+def _balanced(held_out: HeldOut, measured: Floats) -> bool:
+    for part in range(measured.shape[1]):
+        known = np.isfinite(measured[:, part])
+        if not known.any():
+            continue
+        mean = float(measured[known, part].mean())
+        if abs(float(held_out.predicted[known, part].mean()) - mean) > MOST_MEAN_ERROR * mean:
+            return False
+    return True
+
+
+def limit_effect(learned: Learned, method: Method, places: Floats) -> LimitEffect | None:
+    """Map some places with the limit of a treatment halved and doubled; None for shares, which know none.
+
+    Parameters
+    ----------
+    learned : Learned
+        What the map is made from.
+    method : Method
+        Of the recipe.
+    places : float array, shape (m, 2)
+        Cells in the plane, a few thousand at most.
+    """
+    treatment = learned.treatment
+    if isinstance(treatment, Shares):
+        return None
+    means = []
+    for factor in (1.0, 0.5, 2.0):
+        limit = treatment.limit * factor
+        if limit >= 1.0 / treatment.logratio.n_parts:
+            means.append((float("nan"),) * treatment.logratio.n_parts)
+            continue
+        other = learned
+        if factor != 1.0:
+            other = learn(treatment.with_limit(limit), learned.observations, method, learned.structure)
+        mapper = make_mapper(method.name, other, method)
+        fractions = mapper.expected(*mapper.predict(places))
+        means.append(tuple(float(v) for v in fractions.mean(axis=0)))
+    return LimitEffect(treatment.limit, means[0], means[1], means[2], len(places))
+
+
+def with_columns_of(structure: CovarianceSet, learned: Learned, other: Learned, theirs: CovarianceSet) -> CovarianceSet:
+    """A warm start for a fold: `theirs` (fitted in this fold) in the columns that two treatments share, else `structure`."""
+    from texture.structure import CovarianceSet
+
+    columns = list(structure)
+    for v in range(min(len(columns), len(theirs))):
+        same = np.array_equal(learned.values[:, v], other.values[:, v], equal_nan=True)
+        if same and np.array_equal(learned.noise[:, v], other.noise[:, v]):
+            columns[v] = theirs[v]
+    return CovarianceSet(columns, structure.correlation)
