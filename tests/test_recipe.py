@@ -88,6 +88,14 @@ def test_an_override_without_value_leaves_the_default(recipe_path):
     assert read_recipe(recipe_path, ["target.mask=x", "target.mask="]).target.mask is None
 
 
+def test_file_of_positions_is_relative_to_the_recipe_too(recipe_path):
+    (recipe_path.parent / "b.csv").write_text("id\n")
+    recipe = read_recipe(recipe_path, ["samples.0.join.file=b.csv"])
+    assert recipe.samples[0].join.file == (recipe_path.parent / "b.csv").resolve()
+    with pytest.raises(RecipeError, match=r'samples\[0\].join.file = "c.csv" does not exist'):
+        read_recipe(recipe_path, ["samples.0.join.file=c.csv"])
+
+
 def test_missing_recipe_and_broken_toml(tmp_path):
     with pytest.raises(RecipeError, match=r"none.toml: no such recipe"):
         read_recipe(tmp_path / "none.toml")

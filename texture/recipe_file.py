@@ -12,7 +12,7 @@ from typing import Any
 from pydantic import BaseModel, ValidationError
 
 from texture.errors import RecipeError
-from texture.recipe import Recipe
+from texture.recipe import Recipe, Samples
 
 __all__ = ["read_recipe", "resolved_toml"]
 
@@ -206,9 +206,13 @@ def _absolute(recipe: Recipe, base: Path, recipe_name: str) -> Recipe:
             raise RecipeError(f'{recipe_name}: {key} = "{value}" {found}; expected a file beside the recipe')
         return path
 
-    samples = tuple(
-        s.model_copy(update={"file": fix(s.file, f"samples[{i}].file")}) for i, s in enumerate(recipe.samples)
-    )
+    def with_files(i: int, block: Samples) -> Samples:
+        join = block.join
+        if join is not None and join.file is not None:
+            join = join.model_copy(update={"file": fix(join.file, f"samples[{i}].join.file")})
+        return block.model_copy(update={"file": fix(block.file, f"samples[{i}].file"), "join": join})
+
+    samples = tuple(with_files(i, block) for i, block in enumerate(recipe.samples))
     target = recipe.target.model_copy(
         update={
             "file": fix(recipe.target.file, "target.file"),
