@@ -5,6 +5,7 @@ import pyproj
 import pytest
 
 from texture.targets import Target
+from texture.targets.corners import OwnCorners
 from texture.targets.structured import Structured
 
 
@@ -30,7 +31,7 @@ def make_target(active, size_m=100.0, **settings):
         crs=pyproj.CRS.from_epsg(32633),
         longitude=longitude,
         latitude=latitude,
-        corners=(np.stack([c[0] for c in corners], axis=1), np.stack([c[1] for c in corners], axis=1)),
+        corners=OwnCorners(np.stack([c[0] for c in corners], axis=1), np.stack([c[1] for c in corners], axis=1)),
         active=active.ravel(),
         topology=Structured(active.shape),
         x=x,

@@ -9,6 +9,7 @@ import pytest
 from texture.bed import make_bed
 from texture.recipe import Recipe
 from texture.targets import Target
+from texture.targets.corners import OwnCorners
 from texture.targets.structured import Structured
 
 ROWS, COLUMNS = 9, 14  # neither square nor symmetric
@@ -36,7 +37,7 @@ def make_raster():
     return Target(
         kind="raster", name="little raster", dims=("y", "x"), shape=(ROWS, COLUMNS), crs=pyproj.CRS.from_epsg(32633),
         longitude=longitude, latitude=latitude,
-        corners=(np.stack([c[0] for c in corners], axis=1), np.stack([c[1] for c in corners], axis=1)),
+        corners=OwnCorners(np.stack([c[0] for c in corners], axis=1), np.stack([c[1] for c in corners], axis=1)),
         active=mask().ravel(), topology=Structured((ROWS, COLUMNS)), x=x, y=y,
     )  # fmt: skip
 
@@ -60,7 +61,7 @@ def make_curvilinear(angle_deg=25.0):
     )
     return Target(
         kind="curvilinear", name="little_grid.nc", dims=("row", "column"), shape=(ROWS, COLUMNS),
-        crs=pyproj.CRS.from_epsg(4326), longitude=longitude.ravel(), latitude=latitude.ravel(), corners=corners,
+        crs=pyproj.CRS.from_epsg(4326), longitude=longitude.ravel(), latitude=latitude.ravel(), corners=OwnCorners(*corners),
         active=mask()[::-1].ravel(), topology=Structured((ROWS, COLUMNS)),
     )  # fmt: skip
 

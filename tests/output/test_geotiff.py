@@ -10,6 +10,7 @@ import rasterio
 from texture.errors import OutputError
 from texture.output import pixel_grid, write_geotiff, write_geotiffs
 from texture.output.geotiff import NODATA
+from texture.targets.corners import OwnCorners
 
 from .conftest import (
     CLASS_COLOURS,
@@ -93,7 +94,9 @@ def test_default_pixels_are_as_large_as_the_cells():
 
 def test_polar_grids_get_a_polar_projection():
     target = make_curvilinear()
-    moved = replace(target, latitude=target.latitude + 37.0, corners=(target.corners[0], target.corners[1] + 37.0))
+    moved = replace(
+        target, latitude=target.latitude + 37.0, corners=OwnCorners(target.corners[0], target.corners[1] + 37.0)
+    )
     grid = pixel_grid(moved, 200.0)
     assert grid.crs.to_epsg() == 3995
     assert (grid.cell >= 0).any()

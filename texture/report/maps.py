@@ -129,7 +129,7 @@ def _patches(axis: Axes, target: Target, values: Floats, colour_map: Any, norm: 
     from matplotlib.collections import PolyCollection
 
     pieces = np.flatnonzero(np.isfinite(values[target.cell_of_piece]))
-    polygons = np.stack([corner[pieces] for corner in target.corners], axis=-1)
+    polygons = np.stack(target.corners.of(pieces), axis=-1)
     drawn = PolyCollection(
         list(polygons), cmap=colour_map, norm=norm, edgecolors="face", linewidths=0.2, rasterized=True
     )

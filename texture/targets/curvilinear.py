@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import difflib
+from dataclasses import replace
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -10,10 +11,10 @@ from numpy.typing import NDArray
 
 from texture.errors import TargetError
 from texture.recipe import TargetSettings
+from texture.targets.corners import Corners, OwnCorners, SharedVertices
 from texture.targets.crs import read_crs, unwrapped
 from texture.targets.land import on_land, read_land
 from texture.targets.mask import find_depth, find_mask
-from texture.targets.raster import corner_table
 from texture.targets.structured import Structured
 from texture.targets.target import Target
 
@@ -125,7 +126,7 @@ def _corners(
     latitude: NDArray[np.float64],
     dims: tuple[str, str],
     notes: list[str],
-) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
+) -> Corners:
     """Corners from CF bounds, else from vertices half-way between centres; counter-clockwise."""
     bounds = [dataset[n].attrs.get("bounds") or dataset[n].encoding.get("bounds") for n in names]
     given = [dataset[b].to_numpy() for b in bounds if b in dataset.variables and dataset[b].ndim == 3]
@@ -134,12 +135,15 @@ def _corners(
         lat = given[1].astype(np.float64).reshape(-1, 4)
         middle = longitude.reshape(-1, 1)
         lon = lon + 360.0 * np.round((middle - lon) / 360.0)
-        return _counter_clockwise(lon, lat)
+        if not _is_counter_clockwise(lon, lat):
+            lon, lat = np.ascontiguousarray(lon[:, ::-1]), np.ascontiguousarray(lat[:, ::-1])
+        return OwnCorners(lon, lat)
     if min(longitude.shape) < 2:
         raise TargetError(f"a grid of {longitude.shape[0]} × {longitude.shape[1]} cells needs its corners as CF bounds")
     notes.append("cell corners are not in the file: taken half-way between the centres")
-    lon, lat = corner_table(_vertices(longitude), upward=True), corner_table(_vertices(latitude), upward=True)
-    return _counter_clockwise(lon, lat)
+    vertices = SharedVertices(_vertices(longitude), _vertices(latitude), upward=True)
+    lon, lat = vertices
+    return vertices if _is_counter_clockwise(lon, lat) else replace(vertices, upward=False)
 
 
 def _vertices(centres: NDArray[np.float64]) -> NDArray[np.float64]:
@@ -169,18 +173,12 @@ def _signed_area(lon: NDArray[np.float64], lat: NDArray[np.float64]) -> NDArray[
     return np.asarray(sum(lon[:, i] * lat[:, (i + 1) % 4] - lon[:, (i + 1) % 4] * lat[:, i] for i in range(4)))
 
 
-def _counter_clockwise(
-    lon: NDArray[np.float64], lat: NDArray[np.float64]
-) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
+def _is_counter_clockwise(lon: NDArray[np.float64], lat: NDArray[np.float64]) -> bool:
     shifted = lon - lon[:, :1]  # small numbers: the cross products of whole longitudes would cancel
-    if np.nanmedian(_signed_area(shifted, lat - lat[:, :1])) < 0.0:
-        return np.ascontiguousarray(lon[:, ::-1]), np.ascontiguousarray(lat[:, ::-1])
-    return lon, lat
+    return bool(np.nanmedian(_signed_area(shifted, lat - lat[:, :1])) >= 0.0)
 
 
-def _check_folds(
-    corners: tuple[NDArray[np.float64], NDArray[np.float64]], active: NDArray[np.bool_], name: str
-) -> None:
+def _check_folds(corners: Corners, active: NDArray[np.bool_], name: str) -> None:
     lon, lat = corners
     folded = active & np.isfinite(lon).all(axis=1) & ~(_signed_area(lon - lon[:, :1], lat - lat[:, :1]) > 0.0)
     if folded.any():

@@ -38,7 +38,7 @@ def cell_points(target: Target, cells: NDArray[np.int64], per_side: int, to_plan
     """
     if per_side == 1 or target.corners is None or target.piece_cell is not None:
         return to_plane(target.longitude[cells], target.latitude[cells])[:, None, :]
-    corners = np.stack([axis[cells] for axis in target.corners], axis=-1)
+    corners = np.stack(target.corners.of(cells), axis=-1)
     plane = to_plane(corners[..., 0].ravel(), corners[..., 1].ravel())
     flat = plane.reshape(*corners.shape[:2], plane.shape[-1])
     if isinstance(target.topology, Mesh):

@@ -10,12 +10,13 @@ from numpy.typing import NDArray
 
 from texture.errors import TargetError
 from texture.recipe import TargetSettings
+from texture.targets.corners import SharedVertices
 from texture.targets.crs import read_crs
 from texture.targets.land import on_land, read_land
 from texture.targets.structured import Structured
 from texture.targets.target import Target
 
-__all__ = ["corner_table", "make_raster", "raster", "read_template"]
+__all__ = ["make_raster", "raster", "read_template"]
 
 
 def make_raster(settings: TargetSettings) -> Target:
@@ -151,22 +152,8 @@ def _transform_mesh(
     return np.asarray(longitude), np.asarray(latitude)
 
 
-def _corners(
-    transformer: pyproj.Transformer, x: NDArray[np.float64], y: NDArray[np.float64]
-) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
-    """Corners of each cell from the shared vertices, counter-clockwise from the south-west."""
+def _corners(transformer: pyproj.Transformer, x: NDArray[np.float64], y: NDArray[np.float64]) -> SharedVertices:
+    """Vertices that the cells share."""
     shape = (y.size, x.size)
     longitude, latitude = (a.reshape(shape) for a in _transform_mesh(transformer, x, y))
-    upward = bool(y[0] < y[-1])
-    return corner_table(longitude, upward), corner_table(latitude, upward)
-
-
-def corner_table(vertices: NDArray[np.float64], upward: bool) -> NDArray[np.float64]:
-    """Turn shared vertices, shape (rows + 1, columns + 1), into corners, shape (rows * columns, 4).
-
-    `upward` tells whether rows run from south to north, which decides the order that is
-    counter-clockwise.
-    """
-    lower, upper = (vertices[:-1], vertices[1:]) if upward else (vertices[1:], vertices[:-1])
-    corners = np.stack([lower[:, :-1], lower[:, 1:], upper[:, 1:], upper[:, :-1]], axis=-1)
-    return np.ascontiguousarray(corners.reshape(-1, 4))
+    return SharedVertices(longitude, latitude, upward=bool(y[0] < y[-1]))

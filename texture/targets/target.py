@@ -15,6 +15,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from texture.errors import TargetError
+from texture.targets.corners import Corners, OwnCorners
 from texture.targets.openings import COMPASS, Opening
 
 if TYPE_CHECKING:
@@ -26,6 +27,7 @@ __all__ = ["Target", "Topology"]
 Floats = NDArray[np.float64]
 Bools = NDArray[np.bool_]
 Ints = NDArray[np.int64]
+PIECES_AT_ONCE = 500_000  # bounds the memory of areas to some tens of megabytes
 
 
 class Topology(Protocol):
@@ -64,9 +66,8 @@ class Target:
         True where the cell is water and wants a bed.
     topology : Structured, Mesh or None
         How cells hang together; None for points.
-    corners : pair of float arrays, shape (m, k), or None
-        Longitude and latitude of the polygons that cells are made of, counter-clockwise, the last corner repeated
-        where a polygon has fewer than k; None for points.
+    corners : Corners or None
+        The polygons that cells are made of, counter-clockwise; None for points.
     piece_cell : int array, shape (m,), or None
         Cell of each polygon; None where polygon i is cell i.
     x, y : float arrays or None
@@ -90,7 +91,7 @@ class Target:
     latitude: Floats
     active: Bools
     topology: Topology | None
-    corners: tuple[Floats, Floats] | None
+    corners: Corners | None
     piece_cell: Ints | None = None
     x: Floats | None = None
     y: Floats | None = None
@@ -130,13 +131,12 @@ class Target:
         """Cell that each polygon of `corners` belongs to, shape (m,)."""
         if self.piece_cell is not None:
             return self.piece_cell
-        return np.arange(0 if self.corners is None else len(self.corners[0]), dtype=np.int64)
+        return np.arange(0 if self.corners is None else self.corners.count, dtype=np.int64)
 
     @property
     def bounds(self) -> tuple[float, float, float, float]:
         """West, south, east and north of the cells in degrees."""
-        lon, lat = self.corners if self.corners is not None else (self.longitude, self.latitude)
-        return float(np.nanmin(lon)), float(np.nanmin(lat)), float(np.nanmax(lon)), float(np.nanmax(lat))
+        return (self.corners or OwnCorners(self.longitude, self.latitude)).bounds
 
     @cached_property
     def area_m2(self) -> Floats:
@@ -147,11 +147,15 @@ class Target:
 
         centre = float(np.nanmean(self.latitude)), _middle_longitude(self.longitude)
         local = pyproj.CRS.from_proj4(f"+proj=laea +lat_0={centre[0]:.6f} +lon_0={centre[1]:.6f} +datum=WGS84")
-        x, y = pyproj.Transformer.from_crs(4326, local, always_xy=True).transform(*self.corners)
-        doubled = (x * np.roll(y, -1, axis=1) - np.roll(x, -1, axis=1) * y).sum(axis=1)
+        to_local = pyproj.Transformer.from_crs(4326, local, always_xy=True)
+        area = np.empty(self.corners.count)
+        for start in range(0, area.size, PIECES_AT_ONCE):
+            some = slice(start, min(start + PIECES_AT_ONCE, area.size))
+            x, y = to_local.transform(*self.corners.of(some))
+            area[some] = np.abs((x * np.roll(y, -1, axis=1) - np.roll(x, -1, axis=1) * y).sum(axis=1)) / 2.0
         if self.piece_cell is None:
-            return np.asarray(np.abs(doubled) / 2.0)
-        return np.asarray(np.bincount(self.piece_cell, np.abs(doubled) / 2.0, minlength=self.n_cells), dtype=np.float64)
+            return area
+        return np.asarray(np.bincount(self.piece_cell, area, minlength=self.n_cells), dtype=np.float64)
 
     @cached_property
     def edges(self) -> Ints:

@@ -10,6 +10,7 @@ from numpy.typing import NDArray
 
 from texture.errors import TargetError
 from texture.recipe import TargetSettings
+from texture.targets.corners import OwnCorners
 from texture.targets.crs import read_crs, to_degrees, unwrapped
 from texture.targets.land import on_land, read_land
 from texture.targets.mask import find_depth, find_mask
@@ -73,7 +74,7 @@ def read_mesh(dataset: xr.Dataset, settings: TargetSettings, name: str) -> Targe
         latitude=latitude,
         active=active,
         topology=mesh,
-        corners=(corner_lon, corner_lat),
+        corners=OwnCorners(corner_lon, corner_lat),
         piece_cell=cell if location == "node" else None,
         depth_m=find_depth(dataset, settings.depth, (their_dim,), name),
         land=land,
