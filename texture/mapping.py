@@ -5,7 +5,7 @@ The map and its validation both come through here, so that what is validated is 
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -13,7 +13,7 @@ from numpy.typing import NDArray
 
 from texture.observations import Observations
 from texture.recipe import Method
-from texture.treatments import Treatment
+from texture.treatments import Censor, Treatment
 
 if TYPE_CHECKING:
     from texture.composition import LogRatio
@@ -22,7 +22,9 @@ if TYPE_CHECKING:
 __all__ = ["Learned", "Mapper", "learn", "make_mapper"]
 
 Floats = NDArray[np.float64]
-MOST_TOGETHER = 800  # stations up to which each is left out of all others; in tiles beyond, which costs no more each
+SWEEPS = 4
+"""Of censored values before the fit and after it. On 494 stations, 203 of them without gravel, the mean change of a value fell from
+0.07 in the first to 0.035 in the fourth and 0.006 in the eighth, against a noise of standard deviation 1.2."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -67,16 +69,15 @@ def learn(
         A warm start (inside folds).
     """
     values, noise = treatment.columns(observations)
-    if treatment.sweeps == 0 or start is None:
-        learned = _fitted(treatment, observations, values, noise, method, start)
-    else:
-        learned = Learned(treatment, observations, values, noise, start)
-    if treatment.sweeps == 0:
-        return learned
+    if not isinstance(treatment, Censor):
+        return _fitted(treatment, observations, values, noise, method, start)
+    if start is None:
+        start = _fitted(treatment, observations, values, noise, method, None).structure
     # Structure and censored values hang together: sweeps with one, a fit to the other, and sweeps again.
-    learned = _swept(learned)
-    learned = _fitted(treatment, observations, learned.values, learned.noise, method, learned.structure)
-    return _swept(learned)
+    values, noise = _swept(treatment, Learned(treatment, observations, values, noise, start))
+    learned = _fitted(treatment, observations, values, noise, method, start)
+    values, noise = _swept(treatment, learned)
+    return replace(learned, values=values, noise=noise)
 
 
 def _fitted(
@@ -101,25 +102,32 @@ def _fitted(
     return Learned(treatment, observations, values, noise, structure)
 
 
-def _swept(learned: Learned) -> Learned:
+def _swept(treatment: Censor, learned: Learned) -> tuple[Floats, Floats]:
     values, noise = learned.values, learned.noise
-    for _ in range(learned.treatment.sweeps):
-        mean, variance = _without_each(learned, values, noise)
-        values, noise = learned.treatment.sweep(learned.observations, values, noise, mean, variance)
-    return Learned(learned.treatment, learned.observations, values, noise, learned.structure)
+    low, high = treatment.bounds(learned.observations)
+    for _ in range(SWEEPS):
+        mean, variance = _without_each(learned, values, noise, low < high)
+        values, noise = treatment.sweep(values, noise, low, high, mean, variance)
+    return values, noise
 
 
-def _without_each(learned: Learned, values: Floats, noise: Floats) -> tuple[Floats, Floats]:
-    """Each station predicted from all others, shapes (n, k); the variance is of its sample without its own noise."""
+def _without_each(learned: Learned, values: Floats, noise: Floats, wanted: NDArray[np.bool_]) -> tuple[Floats, Floats]:
+    """Each station predicted from all others, shapes (n, k); the variance is of its sample without its own noise.
+
+    Where a station has no value of its own it is predicted only if `wanted`; NaN elsewhere.
+    """
+    from threadpoolctl import threadpool_limits  # type: ignore[import-untyped]  # ships no annotations
+
     from texture.predict import Kriging
     from texture.predict.leave_out import leave_out
 
     points, structure = learned.observations.points, learned.structure
-    kriging = Kriging(structure, neighbours=None if len(points) <= MOST_TOGETHER else 32)
-    kriging.fit(points, values, noise_variance=noise, survey=learned.survey)
-    mean, variance = leave_out(kriging)
+    kriging = Kriging(structure).fit(points, values, noise_variance=noise, survey=learned.survey)
+    # One thread: the matrices of tiles are small, and sums in one order give the same bits on any machine.
+    with threadpool_limits(limits=1, user_api="blas"):
+        mean, variance = leave_out(kriging)
     variance -= noise + np.array([c.noise for c in structure])
-    absent = np.isnan(values)
+    absent = np.isnan(values) & wanted
     rows = np.flatnonzero(absent.any(axis=1))
     if rows.size:
         there, spread = kriging.predict(points[rows])

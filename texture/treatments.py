@@ -15,7 +15,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 from dataclasses import replace as changed
 from functools import cached_property
-from typing import TYPE_CHECKING, ClassVar
+from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.typing import NDArray
@@ -53,8 +53,6 @@ class Replace:
     """
 
     logratio: LogRatio
-    name: ClassVar[str] = "replace"
-    sweeps: ClassVar[int] = 0
 
     @property
     def limit(self) -> float:
@@ -79,12 +77,6 @@ class Replace:
         """Values and noise variances of the stations, shapes (n, k); NaN where a station says nothing of a column."""
         return observations.coordinates(self.logratio)
 
-    def sweep(
-        self, observations: Observations, values: Floats, noise: Floats, mean: Floats, variance: Floats
-    ) -> tuple[Floats, Floats]:
-        """Values and noise once more, given what the neighbours say of each station; nothing changes here."""
-        return values, noise
-
     def back(self, mean: Floats) -> Floats:
         """Back-transform without a variance, shape (n, parts)."""
         return self.logratio.inverse(mean)
@@ -95,8 +87,11 @@ class Replace:
 
     def sample_quantiles(self, mean: Floats, covariance: Floats, levels: tuple[float, ...]) -> Floats:
         """Quantiles of a sample, shape (q, n, parts); below the limit a sample is not told from one without."""
-        quantiles = self.logratio.quantiles(mean, covariance, levels)
-        return np.where(quantiles < self.limit, 0.0, quantiles)
+        return self._down_to_nothing(self.logratio.quantiles(mean, covariance, levels), levels)
+
+    def _down_to_nothing(self, quantiles: Floats, levels: tuple[float, ...]) -> Floats:
+        lower = np.array(levels)[:, None, None] < 0.5
+        return np.where(lower & (quantiles < self.limit), 0.0, quantiles)
 
     def cell_quantiles(self, mean: Floats, covariance: Floats, levels: tuple[float, ...], within: Floats) -> Floats:
         """Quantiles of the mean of a cell, shape (q, n, parts).
@@ -121,8 +116,6 @@ class Replace:
 class Shares(Replace):
     """The shares of the tree as they are; nothing is replaced."""
 
-    name = "shares"
-
     @property
     def label(self) -> str:
         """The treatment in a few words, for tables."""
@@ -137,30 +130,32 @@ class Shares(Replace):
 class Censor(Replace):
     """Parts below the limit lie anywhere below it: each becomes a value and a noise by what its neighbours say."""
 
-    name: ClassVar[str] = "censor"
-    sweeps: ClassVar[int] = 4
-
     @property
     def label(self) -> str:
         """The treatment in a few words, for tables."""
         return f"censored below {self.limit:g}"
 
+    def bounds(self, observations: Observations) -> tuple[Floats, Floats]:
+        """Bounds between which each station's columns lie, shapes (n, k); equal where known exactly, NaN where not."""
+        low, high = np.full((2, observations.count, len(self.column_names)), np.nan)
+        exact = observations.exact
+        low[exact], high[exact] = censoring_bounds(self.logratio, observations.fractions[exact])
+        return low, high
+
     def sweep(
-        self, observations: Observations, values: Floats, noise: Floats, mean: Floats, variance: Floats
+        self, values: Floats, noise: Floats, low: Floats, high: Floats, mean: Floats, variance: Floats
     ) -> tuple[Floats, Floats]:
         """One sweep of expectation propagation over the censored values.
 
         Parameters
         ----------
-        observations : Observations
         values, noise : float arrays, shape (n, k)
             As they are now.
+        low, high : float arrays, shape (n, k)
+            As `bounds` gives them.
         mean, variance : float arrays, shape (n, k)
             Each station's prediction without itself; the variance is that of its sample but for its own noise.
         """
-        exact = np.flatnonzero(observations.exact)
-        low, high = np.full(values.shape, np.nan), np.full(values.shape, np.nan)
-        low[exact], high[exact] = censoring_bounds(self.logratio, observations.fractions[exact])
         zero = (low < high) & (variance > 0.0)
         values, noise = values.copy(), noise.copy()
         site, spread = censored_site(mean[zero], variance[zero], low[zero], high[zero])
@@ -185,7 +180,6 @@ class Presence(Replace):
     """
 
     part: str = "gravel"
-    name: ClassVar[str] = "presence"
 
     @property
     def label(self) -> str:
@@ -234,8 +228,7 @@ class Presence(Replace):
 
     def sample_quantiles(self, mean: Floats, covariance: Floats, levels: tuple[float, ...]) -> Floats:
         """Quantiles of a sample, shape (q, n, parts): the part is in it or not."""
-        quantiles = self.distribution.quantiles(*self._given(mean, covariance), levels)
-        return np.where(quantiles < self.limit, 0.0, quantiles)
+        return self._down_to_nothing(self.distribution.quantiles(*self._given(mean, covariance), levels), levels)
 
     def cell_quantiles(self, mean: Floats, covariance: Floats, levels: tuple[float, ...], within: Floats) -> Floats:
         """Quantiles of the mean of a cell, shape (q, n, parts), some of which may have the part and some not."""
