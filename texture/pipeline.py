@@ -12,6 +12,7 @@ from typing import Any
 
 from texture.choosing import fit_candidates
 from texture.clock import Clock
+from texture.early import check_early, rim_cells
 from texture.estimate import estimate_on
 from texture.mapping import make_mapper
 from texture.observations import observe
@@ -108,7 +109,8 @@ def build(
             second_opinion(mapper.predictor, found.cell_centres, seed=recipe.seed) if mapper.has_variance else None
         )
     with clock.stage("bed"):
-        bed = make_bed(estimate.fractions, estimate.evidence, target, recipe.bed, recipe.rim, recipe.composition.parts)
+        bed = make_bed(estimate.fractions, estimate.evidence, target, recipe.bed, recipe.rim, recipe.composition.parts,
+                       rim_cells(recipe, target))  # fmt: skip
     result = Result(found, estimate, per_side, opinion, bed, clock)
     with clock.stage("write"), progress.stage("write"):
         return write_all(result, folder, Path(recipe_path))
@@ -120,11 +122,9 @@ def read_stations(recipe_path: Where, **settings: Any) -> Stations:
 
 
 def _stations(recipe: Recipe, progress: Progress) -> tuple[Target, Stations]:
-    from texture.output import check_outputs
-
     with progress.stage("read the grid"):
         target = read_target(recipe.target)
-        check_outputs(target, recipe)  # a mistake there is told before the work, not after it
+        check_early(recipe, target)
     with progress.stage("read the samples"):
         return target, place_stations(read_samples(recipe), target, recipe.intake)
 

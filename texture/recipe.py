@@ -11,7 +11,7 @@ import datetime as dt
 from pathlib import Path
 from typing import Annotated, Any, Literal
 
-from pydantic import BaseModel, ConfigDict, Field, model_validator
+from pydantic import BaseModel, ConfigDict, Field, field_validator, model_validator
 
 __all__ = [
     "Bed",
@@ -24,6 +24,7 @@ __all__ = [
     "Layer",
     "Method",
     "Outputs",
+    "Packing",
     "Recipe",
     "Rim",
     "Samples",
@@ -222,6 +223,9 @@ class WaterColumn(Settings):
     settling_velocity_m_s: Positive | None = Field(
         None, description="settling velocity; computed for grains above 63 µm"
     )
+    effective_density_kg_m3: Annotated[float, Field(gt=0.0, lt=1700.0)] | None = Field(
+        None, description="of flocs: by how much they are denser than the water"
+    )
 
 
 class Erosion(Settings):
@@ -234,16 +238,41 @@ class Erosion(Settings):
     )
 
 
+class Packing(Settings):
+    """How the class lies in the bed."""
+
+    dry_density_kg_m3: Annotated[float, Field(gt=0.0, lt=5000.0)] | None = Field(
+        None, description="dry mass in a volume of bed of this class alone; from its diameter if absent"
+    )
+
+
 class BedClass(Settings):
     """One sediment class of the model, a share of one part."""
 
     name: Annotated[str, Field(pattern=r"^[A-Za-z][A-Za-z0-9_]*$")] = Field(description="name of the class")
     part: str = Field(description="part of the map that it is a share of")
-    share: Fraction = Field(1.0, description="share of that part; the shares of a part sum to 1")
+    share: Fraction = Field(
+        1.0,
+        description="share of that part; the shares of a part sum to 1; flocs have none in the bed unless it is set",
+    )
     kind: Literal["grain", "floc"] = Field("grain", description="single grains, or flocs with given properties")
     grain: Grain = Field(default_factory=Grain)
     water_column: WaterColumn = Field(default_factory=WaterColumn)
     erosion: Erosion = Field(default_factory=Erosion)
+    packing: Packing = Field(default_factory=Packing)
+
+    @model_validator(mode="before")
+    @classmethod
+    def _flocs_settle_later(cls, given: Any) -> Any:
+        if isinstance(given, dict) and given.get("kind") == "floc":
+            return {"share": 0.0, **given}
+        return given
+
+    @model_validator(mode="after")
+    def _effective_density_of_flocs(self) -> BedClass:
+        if self.kind == "grain" and self.water_column.effective_density_kg_m3 is not None:
+            raise ValueError('water_column.effective_density_kg_m3: is of flocs; set kind = "floc", or leave it out')
+        return self
 
 
 class Layer(Settings):
@@ -251,7 +280,15 @@ class Layer(Settings):
 
     thickness_m: Positive = Field(description="thickness where the bed is erodible")
     fill: Literal["same"] | dict[str, Fraction] = Field(
-        "same", description='"same" as the map, or a composition such as { sand = 0.9, mud = 0.1 }'
+        "same",
+        description='"same" as the map, or a composition in parts or in classes, such as { sand = 0.9, mud = 0.1 }',
+    )
+    critical_stress_pa: dict[str, Positive] = Field(
+        default_factory=dict,
+        description="of classes in this layer instead of their own: soft above, consolidated below",
+    )
+    dry_density_kg_m3: Annotated[float, Field(gt=0.0, lt=5000.0)] | None = Field(
+        None, description='dry density of the layer, for packing = "layer"'
     )
 
 
@@ -279,6 +316,20 @@ class Bed(Settings):
     land_thickness_m: Annotated[float, Field(ge=0.0)] = Field(
         0.0, description="erodible thickness given to each layer of land cells"
     )
+    land_fill: Literal["nearest"] | dict[str, Fraction] = Field(
+        "nearest", description='bed of land cells: of the "nearest" water, or a composition in parts or in classes'
+    )
+    minimum_thickness_m: Annotated[float, Field(ge=0.0)] = Field(
+        0.0, description="no layer is thinner than this, on land neither: for models that divide by it"
+    )
+    packing: Literal["mixture", "class", "layer"] = Field(
+        "mixture",
+        description="dry density: from the mixture's median diameter (Wu & Wang 2006), from the classes' own (volumes add "
+        "up, Colby 1963), or given for each layer",
+    )
+    hiding: Literal["none", "wu"] = Field(
+        "none", description="small grains shelter behind large ones: not at all, or by Wu, Wang & Jia (2000)"
+    )
     water: WaterSettings = Field(default_factory=WaterSettings)
     layers: tuple[Layer, ...] = Field((Layer(thickness_m=0.10),), min_length=1)
     classes: tuple[BedClass, ...] = Field(default_factory=_default_classes, min_length=1)
@@ -295,9 +346,35 @@ class Bed(Settings):
         for part, total in sums.items():
             if abs(total - 1.0) > 1e-9:  # shares are typed decimals; anything further off is a mistake
                 raise ValueError(f'classes: the shares of part "{part}" sum to {total:g}, expected 1')
+        self._check_packing()
+        for i, layer in enumerate(self.layers):
+            _check_names(f"layers[{i}].critical_stress_pa", layer.critical_stress_pa, tuple(names))
+            if layer.thickness_m < self.minimum_thickness_m:
+                raise ValueError(
+                    f"layers[{i}].thickness_m = {layer.thickness_m:g} is less than minimum_thickness_m = {self.minimum_thickness_m:g}"
+                )
         if self.layers[0].fill != "same":
             raise ValueError('layers: the first layer is the map, so its fill is "same"')
         return self
+
+    def _check_packing(self) -> None:
+        for c in self.classes:
+            if c.packing.dry_density_kg_m3 is None:
+                continue
+            if self.packing != "class":
+                raise ValueError(f'classes "{c.name}": packing.dry_density_kg_m3 acts with packing = "class" only')
+            if c.packing.dry_density_kg_m3 >= c.grain.density_kg_m3:
+                raise ValueError(
+                    f'classes "{c.name}": packing.dry_density_kg_m3 = {c.packing.dry_density_kg_m3:g} leaves no pores '
+                    f"between grains of {c.grain.density_kg_m3:g}"
+                )
+        for i, layer in enumerate(self.layers):
+            if (layer.dry_density_kg_m3 is None) == (self.packing == "layer"):
+                raise ValueError(
+                    f'layers[{i}].dry_density_kg_m3: packing = "layer" needs it'
+                    if layer.dry_density_kg_m3 is None
+                    else f'layers[{i}].dry_density_kg_m3 acts with packing = "layer" only'
+                )
 
 
 SIDES = ("north", "east", "south", "west")
@@ -306,14 +383,28 @@ SIDES = ("north", "east", "south", "west")
 class Rim(Settings):
     """The padded coarse cells along the open boundary."""
 
-    sides: Literal["open"] | tuple[Literal["north", "east", "south", "west"], ...] = Field(
-        "open", description='"open": found from the mask, or compass sides such as ["south", "west"]'
+    sides: Literal["open"] | tuple[Literal["north", "east", "south", "west"], ...] | Path = Field(
+        "open",
+        description='"open": found from the mask; compass sides such as ["south", "west"]; or a file of lines, whose cells '
+        "are the edge, or of polygons, whose cells are all the rim's own",
     )
     width_cells: Annotated[int, Field(ge=1)] | None = Field(None, description="width in cells")
     width_m: Positive | None = Field(None, description="width in metres, measured through water")
     profile: Literal["cosine", "linear", "step"] = Field("cosine", description="how the rim fades into the estimate")
     classes: dict[str, Fraction] | None = Field(None, description="rim bed in classes, summing to 1")
     composition: dict[str, Fraction] | None = Field(None, description="rim bed in parts, summing to 1")
+
+    @field_validator("sides", mode="before")
+    @classmethod
+    def _word_or_file(cls, given: Any) -> Any:
+        words = [given] if isinstance(given, str) and "." not in given and given != "open" else given
+        for word in words if isinstance(words, (list, tuple)) else ():
+            if word not in SIDES or isinstance(given, str):
+                raise ValueError(
+                    f'"{word}": expected "open", a list of compass sides such as ["south", "west"], or a file such as '
+                    '"edge.geojson"'
+                )
+        return given
 
     @model_validator(mode="after")
     def _complete(self) -> Rim:
@@ -382,7 +473,9 @@ class Recipe(Settings):
                 raise ValueError(f'bed.classes: no class takes part "{part}"; its mass would be lost')
         for i, layer in enumerate(self.bed.layers):
             if layer.fill != "same":
-                _check_composition(f"bed.layers[{i}].fill", layer.fill, parts)
+                _check_composition(f"bed.layers[{i}].fill", layer.fill, parts, classes)
+        if self.bed.land_fill != "nearest":
+            _check_composition("bed.land_fill", self.bed.land_fill, parts, classes)
         if self.rim is not None and self.rim.classes is not None:
             _check_names("rim.classes", self.rim.classes, classes)
         if self.rim is not None and self.rim.composition is not None:
@@ -396,8 +489,10 @@ def _check_names(where: str, given: dict[str, float], known: tuple[str, ...]) ->
             raise ValueError(f'{where}: unknown name "{name}"; {_nearest(name, known)}')
 
 
-def _check_composition(where: str, given: dict[str, float], parts: tuple[str, ...]) -> None:
-    _check_names(where, given, parts)
+def _check_composition(where: str, given: dict[str, float], parts: tuple[str, ...], classes: tuple[str, ...]) -> None:
+    if not (set(given) <= set(parts) or set(given) <= set(classes)):
+        _check_names(where, given, tuple(dict.fromkeys((*parts, *classes))))
+        raise ValueError(f"{where}: mixes parts and classes; give {list(parts)} or {list(classes)}")
     total = sum(given.values())
     if abs(total - 1.0) > 1e-9:  # typed decimals; anything further off is a mistake
         raise ValueError(f"{where}: fractions sum to {total:g}, expected 1")

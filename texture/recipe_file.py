@@ -222,5 +222,10 @@ def _absolute(recipe: Recipe, base: Path, recipe_name: str) -> Recipe:
     outputs = recipe.outputs.model_copy(
         update={"names": fix(recipe.outputs.names, "outputs.names"), "into": fix(recipe.outputs.into, "outputs.into")}
     )
+    rim = recipe.rim
+    if rim is not None and isinstance(rim.sides, Path):
+        rim = rim.model_copy(update={"sides": fix(rim.sides, "rim.sides")})
     output = fix(recipe.output, "output", must_exist=False)
-    return recipe.model_copy(update={"samples": samples, "target": target, "outputs": outputs, "output": output})
+    return recipe.model_copy(
+        update={"samples": samples, "target": target, "rim": rim, "outputs": outputs, "output": output}
+    )

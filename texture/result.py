@@ -168,7 +168,7 @@ class Result:
 
     def summary(self) -> dict[str, Any]:
         """Counts, scores, seconds and files: the object of `--json`."""
-        account = self.bed.account
+        account, settings = self.bed.account, self.found.recipe.bed
         return {
             **self.found.stations.counts,
             "cells": int(self.found.target.active.sum()),
@@ -180,6 +180,8 @@ class Result:
             "rim_tonnes": account.rim_tonnes,
             "least_fraction_tonnes": account.least_fraction_tonnes,
             "not_given": list(account.not_given),
+            "packing": settings.packing,
+            "hiding": settings.hiding,
             "second_opinion": None if self.opinion is None else self.opinion.to_dict(),
             "answer": self.answer(),
             "seconds": {name: round(value, 3) for name, value in self.clock.seconds.items()},
@@ -193,6 +195,7 @@ class Result:
         mud = [n for n, c in zip(self.bed.classes.names, self.bed.classes.part, strict=True) if c == 0]
         rim = sum(-account.rim_tonnes[n] for n in mud)
         bed = f"  bed         {total / 1e6:,.1f} Mt dry in {len(account.tonnes)} classes and {len(self.bed.erodible_thickness)} layers"
+        bed += f"; hiding and exposure: {found.recipe.bed.hiding}"
         if account.rim_cells:
             bed += f"; the rim ({account.rim_cells:,} cells) took out {rim / 1e6:,.2f} Mt of mud"
         lines = [

@@ -73,8 +73,9 @@ def write_all(result: Result, folder: ResultFolder, recipe_path: Path) -> Result
 def input_files(recipe: Recipe) -> list[Path]:
     """List every file that a recipe names, each once."""
     paths: Iterable[Path | None] = (
-        *(s.file for s in recipe.samples), *(s.join.file for s in recipe.samples if s.join), recipe.target.file, recipe.target.land, recipe.outputs.names,
-        recipe.outputs.into,
+        *(s.file for s in recipe.samples), *(s.join.file for s in recipe.samples if s.join), recipe.target.file,
+        recipe.target.land, recipe.outputs.names, recipe.outputs.into,
+        recipe.rim.sides if recipe.rim and isinstance(recipe.rim.sides, Path) else None,
     )  # fmt: skip
     return list(dict.fromkeys(p for p in paths if p is not None))
 

@@ -16,7 +16,9 @@ OutputFolder = Annotated[
 Settings = Annotated[
     list[str] | None,
     typer.Option(
-        "--set", help="Override one setting; repeatable. Example: --set method.neighbours=24; without a value, the default.", metavar="KEY=VALUE"
+        "--set",
+        help="Override one setting; repeatable. Example: --set method.neighbours=24; without a value, the default.",
+        metavar="KEY=VALUE",
     ),
 ]
 Quiet = Annotated[bool, typer.Option("--quiet", "-q", help="Say nothing but errors.")]

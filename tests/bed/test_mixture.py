@@ -4,7 +4,8 @@ from hypothesis import given
 from hypothesis import strategies as st
 from hypothesis.extra.numpy import arrays
 
-from texture.bed.mixture import mean_critical_stress, median_diameter, mixture_packing
+from texture.bed.mixture import mean_critical_stress, median_diameter
+from texture.bed.mixture_packing import mixture_packing
 from texture.bed.packing import porosity
 
 SIZES = np.array([20e-6, 250e-6, 8e-3])

@@ -144,3 +144,24 @@ def test_blend_keeps_sums_and_ends():
     mixed = blend(fraction, np.array([0.0, 0.5, 1.0]), np.array([0.0, 1.0]))
     assert mixed[0, 0].tolist() == [0.7, 0.35, 0.0]
     assert mixed.sum(axis=0) == pytest.approx(np.ones((1, 3)), abs=1e-15)
+
+
+def test_a_rim_from_drawn_cells(target_of):
+    target = target_of(np.ones((6, 7)))
+    start = np.zeros(target.n_cells, dtype=bool)
+    start[[2 * 7 + 3]] = True
+    weight = rim_weight(
+        target, Rim(sides="edge.geojson", width_cells=2, profile="linear", classes={"sand": 1.0}), start
+    )
+    weight = weight.reshape(6, 7)
+    assert weight[2, 3] == 1.0
+    assert weight[[1, 3, 2, 2], [3, 3, 2, 4]].tolist() == [0.5] * 4
+    assert weight.sum() == 3.0
+    with pytest.raises(BedError, match=r"rim.sides is a file \(edge.geojson\); its cells have to be given"):
+        rim_weight(target, Rim(sides="edge.geojson", width_cells=2, classes={"sand": 1.0}))
+
+
+@pytest.mark.parametrize("sides", ["nort", ["north", "eas"]])
+def test_sides_that_are_none(sides):
+    with pytest.raises(ValueError, match=r'expected "open", a list of compass sides such as'):
+        Rim(sides=sides, width_cells=2, classes={"sand": 1.0})

@@ -143,3 +143,46 @@ def test_text_and_single_precision_through_the_recipe(small):
     table = pd.read_csv(small.parent / "out" / "bed.csv")
     assert len(table) == result.found.target.n_cells
     np.testing.assert_allclose(table["class_fraction_mud"], result.bed.class_fraction[0, 0], atol=2**-24)
+
+
+@pytest.mark.slow
+def test_a_bed_with_every_setting_of_strength_and_a_drawn_rim(small):
+    """The settings travel from the recipe through the build into the files."""
+    import json
+
+    import pyproj
+
+    to_degrees = pyproj.Transformer.from_crs(32626, 4326, always_xy=True).transform
+    line = [to_degrees(500_100.0, y) for y in (4_900_100.0, 4_905_900.0)]  # along the western edge
+    geometry = {"type": "LineString", "coordinates": line}
+    (small.parent / "edge.geojson").write_text(
+        json.dumps(
+            {"type": "FeatureCollection", "features": [{"type": "Feature", "properties": {}, "geometry": geometry}]}
+        )
+    )
+    classes = [
+        {"name": "mud", "part": "mud", "grain": {"diameter_m": 20e-6}, "packing": {"dry_density_kg_m3": 500.0}},
+        {"name": "sand", "part": "sand", "grain": {"diameter_m": 250e-6}},
+        {"name": "gravel", "part": "gravel", "grain": {"diameter_m": 8e-3}},
+    ]
+    layers = [
+        {"thickness_m": 0.1, "critical_stress_pa": {"mud": 0.1}},
+        {"thickness_m": 1.0, "critical_stress_pa": {"mud": 0.9}},
+    ]
+    result = build(
+        small, output=small.parent / "out", outputs={"geotiff": False}, **QUICK,
+        bed={"classes": classes, "layers": layers, "packing": "class", "hiding": "wu", "minimum_thickness_m": 0.01},
+        rim={"sides": "edge.geojson", "width_cells": 3, "classes": {"sand": 1.0}},
+    )  # fmt: skip
+    weight = result.bed.rim_weight.reshape(ROWS, COLUMNS)
+    assert (weight[:, 0] == 1.0).all()
+    assert (weight[:, 3:] == 0.0).all()
+    with netCDF4.Dataset(small.parent / "out" / "bed.nc") as file:
+        assert file["critical_stress_in_layer"][0].tolist() == [0.1, 0.9]
+        assert file["class_dry_density"][0] == 500.0
+        assert file["hiding_exposure_factor"].shape == (3, 2, ROWS, COLUMNS)
+        assert "Colby" in file["porosity"].comment
+        assert "Wu, Wang and Jia" in file["critical_stress_for_erosion"].comment
+    assert (result.summary()["packing"], result.summary()["hiding"]) == ("class", "wu")
+    assert "edge.geojson" in (small.parent / "out" / "provenance.json").read_text()
+    assert "Wu, Wang and Jia" in (small.parent / "out" / "report.html").read_text()

@@ -1,7 +1,9 @@
 """From a map of parts to a bed that a model can start from: grains, layers, rim, land."""
 
-from texture.bed.build import EVIDENCE, Account, Bed, make_bed
+from texture.bed.build import EVIDENCE, Account, Bed, make_bed, strength_known
 from texture.bed.classes import ClassProperties, class_properties
+from texture.bed.hiding import HIDING_WORDS
+from texture.bed.mixture_packing import PACKING_WORDS
 from texture.bed.packing import dry_density, porosity
 from texture.bed.precision import single_fractions
 from texture.bed.readiness import BedArrays, Check, check_bed
@@ -13,6 +15,8 @@ from texture.bed.waves import wave_current_stress, wave_stress
 
 __all__ = [
     "EVIDENCE",
+    "HIDING_WORDS",
+    "PACKING_WORDS",
     "Account",
     "Bed",
     "BedArrays",
@@ -28,6 +32,7 @@ __all__ = [
     "settling_velocity",
     "single_fractions",
     "skin_roughness_length",
+    "strength_known",
     "wave_current_stress",
     "wave_stress",
 ]

@@ -4,22 +4,26 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, field
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
-from texture.bed.cells import Cells, Floats
+from texture.bed.cells import Bools, Cells, Floats
 from texture.bed.classes import ClassProperties, class_properties
+from texture.bed.hiding import hiding_factor
 from texture.bed.land import nearest_water
 from texture.bed.layers import (
     close_classes,
     composition_in_classes,
     drop_small,
     layer_fractions,
+    layer_stress,
     layer_thickness,
     to_classes,
 )
-from texture.bed.mixture import mean_critical_stress, median_diameter, mixture_packing
+from texture.bed.mixture import geometric_mean_diameter, mean_critical_stress, median_diameter
+from texture.bed.mixture_packing import Packer, packer
 from texture.bed.rim import blend, rim_weight
 from texture.bed.roughness import skin_roughness_length
 from texture.bed.water import Water
@@ -27,7 +31,7 @@ from texture.errors import BedError
 from texture.recipe import Bed as BedSettings
 from texture.recipe import Rim
 
-__all__ = ["EVIDENCE", "Account", "Bed", "make_bed"]
+__all__ = ["EVIDENCE", "Account", "Bed", "make_bed", "strength_known"]
 
 Flags = NDArray[np.int8]
 
@@ -94,13 +98,17 @@ class Bed:
     class_mass_content : float array, shape (k, layer, n)
         Thickness × dry density × fraction, kg m-2.
     dry_density, porosity : float arrays, shape (layer, n)
-        kg m-3 and without unit; porosity by Wu & Wang (2006) from the mixture's median diameter.
-    mixture_median_diameter : float array, shape (layer, n)
+        kg m-3 and without unit, by the rule that the recipe names as `bed.packing`.
+    mixture_median_diameter, mixture_geometric_mean_diameter : float arrays, shape (layer, n)
         Metres.
     skin_roughness_length : float array, shape (n,)
         z0 = d50 / 12 of the first layer, metres: grain roughness, not total drag.
     critical_stress_for_erosion : float array, shape (layer, n), or None
-        Mass-weighted mean of the classes' critical stresses, Pa; None when a class has none.
+        Mass-weighted mean of the classes' critical stresses, Pa; None when a class with mass in the bed has none.
+    class_critical_stress : float array, shape (k, layer)
+        Of each class alone in each layer, Pa; NaN where not known.
+    hiding_exposure_factor : float array, shape (k, layer, n), or None
+        What multiplies it in the mixture; None without a hiding correction.
     evidence : int8 array, shape (layer, n)
         Keys of `EVIDENCE`. Lower layers filled "same" are extrapolated (2), compositions are given by the
         user (5); the rim (3) and land (4) go before both.
@@ -116,8 +124,11 @@ class Bed:
     dry_density: Floats
     porosity: Floats
     mixture_median_diameter: Floats
+    mixture_geometric_mean_diameter: Floats
     skin_roughness_length: Floats
     critical_stress_for_erosion: Floats | None
+    class_critical_stress: Floats
+    hiding_exposure_factor: Floats | None
     evidence: Flags
     rim_weight: Floats
     account: Account = field(hash=False)
@@ -135,6 +146,7 @@ def make_bed(
     settings: BedSettings,
     rim: Rim | None = None,
     parts: Sequence[str] = ("mud", "sand", "gravel"),
+    rim_start: Bools | None = None,
 ) -> Bed:
     """Make the bed: classes, layers, then the rim, then the smallest fractions, then land.
 
@@ -150,6 +162,8 @@ def make_bed(
     rim : texture.recipe.Rim, optional
         Without it, no rim.
     parts : sequence of str
+    rim_start : bool array, shape (n,), optional
+        Cells that the file of `rim.sides` names, where it is a file.
 
     Raises
     ------
@@ -161,8 +175,9 @@ def make_bed(
     _check_map(fractions, evidence, cells, len(parts))
     water = Water(settings.water.temperature_c, settings.water.salinity)
     classes = class_properties(settings.classes, water, parts)
-    thickness = layer_thickness(settings.layers, cells.active, settings.land_thickness_m)
-    weight = np.zeros(n) if rim is None else rim_weight(cells, rim)
+    thickness = layer_thickness(settings.layers, cells.active, settings.land_thickness_m, settings.minimum_thickness_m)
+    pack = packer(settings.packing, classes, settings.layers)
+    weight = np.zeros(n) if rim is None else rim_weight(cells, rim, rim_start)
     rim_bed = None if rim is None else _rim_bed(rim, classes, parts)
 
     fraction = np.empty((len(classes.names), len(settings.layers), n))
@@ -170,17 +185,21 @@ def make_bed(
     for some in _blocks(np.flatnonzero(cells.active)):
         volume = cells.area_m2[some] * thickness[:, some]
         layers = layer_fractions(to_classes(fractions[some], classes), settings.layers, classes, parts)
-        before = _tonnes(layers, classes, volume)
+        before = _tonnes(layers, classes, volume, pack)
         if rim_bed is not None:
             layers = blend(layers, weight[some], rim_bed)
         kept, small = drop_small(layers, settings.least_fraction)
         fraction[:, :, some] = kept
         mapped += before
-        rimmed += _tonnes(layers, classes, volume) if rim_bed is not None else before
-        dropped += _tonnes(layers, classes, volume, of=small)
-        final += _tonnes(kept, classes, volume)
+        rimmed += _tonnes(layers, classes, volume, pack) if rim_bed is not None else before
+        dropped += _tonnes(layers, classes, volume, pack, of=small)
+        final += _tonnes(kept, classes, volume, pack)
     land = np.flatnonzero(~cells.active)
-    fraction[:, :, land] = fraction[:, :, nearest_water(cells)[land]]
+    if settings.land_fill == "nearest":
+        fraction[:, :, land] = fraction[:, :, nearest_water(cells)[land]]
+    else:
+        fraction[:, :, land] = composition_in_classes(settings.land_fill, classes, parts)[:, None, None]
+    stress = layer_stress(settings.layers, classes)
     account = Account(
         tonnes=_named(classes, final.sum(axis=1)),
         rim_tonnes=_named(classes, (rimmed - mapped).sum(axis=1)),
@@ -188,9 +207,37 @@ def make_bed(
         share_below_samples=float(final[:, 1:].sum() / final.sum()),
         rim_cells=int((weight > 0.0).sum()),
         land_cells=int(land.size),
-        not_given=classes.not_given,
+        not_given=tuple(
+            missing for missing in classes.not_given if missing not in _strong_in_all_layers(classes, stress)
+        ),
     )
-    return _with_mixture(fraction, classes, thickness, _flags(evidence, settings, cells, weight), weight, account)
+    return Bed(
+        classes=classes,
+        class_fraction=fraction,
+        erodible_thickness=thickness,
+        **_mixture(fraction, classes, thickness, settings, pack, stress, strength_known(settings, classes, rim)),
+        class_critical_stress=stress,
+        evidence=_flags(evidence, settings, cells, weight),
+        rim_weight=weight,
+        account=account,
+    )
+
+
+def strength_known(settings: BedSettings, classes: ClassProperties, rim: Rim | None = None) -> bool:
+    """Tell whether every class that may have mass in the bed has a critical stress, so that the mixture has one."""
+    unknown = np.isnan(layer_stress(settings.layers, classes)).any(axis=1)
+    fills = [layer.fill for layer in settings.layers if layer.fill != "same"]
+    fills += [] if settings.land_fill == "nearest" else [settings.land_fill]
+    named = {name for fill in fills for name in fill} | set((rim and rim.classes) or {})
+    has_mass = np.array(
+        [share > 0.0 or name in named for name, share in zip(classes.names, classes.share, strict=True)]
+    )
+    return not (unknown & has_mass).any()
+
+
+def _strong_in_all_layers(classes: ClassProperties, stress: Floats) -> set[str]:
+    known: Bools = np.asarray(np.isfinite(stress).all(axis=1))
+    return {f"{name}: critical stress" for name, good in zip(classes.names, known, strict=True) if good}
 
 
 def _blocks(cells: NDArray[np.int64]) -> Iterator[NDArray[np.int64]]:
@@ -233,9 +280,11 @@ def _rim_bed(rim: Rim, classes: ClassProperties, parts: Sequence[str]) -> Floats
     return close_classes(np.array([given.get(name, 0.0) for name in classes.names]))
 
 
-def _tonnes(fraction: Floats, classes: ClassProperties, area_thickness: Floats, of: Floats | None = None) -> Floats:
+def _tonnes(
+    fraction: Floats, classes: ClassProperties, area_thickness: Floats, pack: Packer, of: Floats | None = None
+) -> Floats:
     """Mass by class and layer, shape (k, layer), of a bed or of the fractions `of` in it."""
-    _, density = mixture_packing(fraction, classes.density_kg_m3, median_diameter(fraction, classes.diameter_m))
+    _, density = pack(fraction, median_diameter(fraction, classes.diameter_m))
     shares = fraction if of is None else of
     return np.asarray(np.einsum("kln,ln->kl", shares, density * area_thickness) / 1000.0)
 
@@ -254,32 +303,34 @@ def _flags(evidence: NDArray[np.integer], settings: BedSettings, cells: Cells, w
     return flags
 
 
-def _with_mixture(
-    fraction: Floats, classes: ClassProperties, thickness: Floats, flags: Flags, weight: Floats, account: Account
-) -> Bed:
-    """The bed with what follows from its fractions, worked out in groups of cells."""
+def _mixture(
+    fraction: Floats, classes: ClassProperties, thickness: Floats, settings: BedSettings, pack: Packer, stress: Floats,
+    strong: bool,
+) -> dict[str, Any]:  # fmt: skip
+    """What follows from a bed's fractions, worked out in groups of cells."""
     content = np.empty_like(fraction)
-    diameter, pores, density = (np.empty(fraction.shape[1:]) for _ in range(3))
-    strong = not np.isnan(classes.critical_stress_pa).any()
-    stress = np.empty(fraction.shape[1:]) if strong else None
+    diameter, mean, pores, density = (np.empty(fraction.shape[1:]) for _ in range(4))
+    mixed = np.empty(fraction.shape[1:]) if strong else None
+    factor = None if settings.hiding == "none" else np.empty_like(fraction)
     for some in _blocks(np.arange(fraction.shape[2])):
         here = fraction[:, :, some]
         diameter[:, some] = median_diameter(here, classes.diameter_m)
-        pores[:, some], density[:, some] = mixture_packing(here, classes.density_kg_m3, diameter[:, some])
+        mean[:, some] = geometric_mean_diameter(here, classes.diameter_m)
+        pores[:, some], density[:, some] = pack(here, diameter[:, some])
         content[:, :, some] = thickness[:, some] * density[:, some] * here
-        if stress is not None:
-            stress[:, some] = mean_critical_stress(here, classes.critical_stress_pa)
-    return Bed(
-        classes=classes,
-        class_fraction=fraction,
-        erodible_thickness=thickness,
-        class_mass_content=content,
-        dry_density=density,
-        porosity=pores,
-        mixture_median_diameter=diameter,
-        skin_roughness_length=skin_roughness_length(diameter[0]),
-        critical_stress_for_erosion=stress,
-        evidence=flags,
-        rim_weight=weight,
-        account=account,
-    )
+        strength = np.nan_to_num(stress)[:, :, None]  # unknown only in classes without mass, where it is not used
+        if factor is not None:
+            factor[:, :, some] = hiding_factor(here, classes.diameter_m, classes.loose)
+            strength = strength * factor[:, :, some]
+        if mixed is not None:
+            mixed[:, some] = mean_critical_stress(here, strength)
+    return {
+        "class_mass_content": content,
+        "dry_density": density,
+        "porosity": pores,
+        "mixture_median_diameter": diameter,
+        "mixture_geometric_mean_diameter": mean,
+        "skin_roughness_length": skin_roughness_length(diameter[0]),
+        "critical_stress_for_erosion": mixed,
+        "hiding_exposure_factor": factor,
+    }

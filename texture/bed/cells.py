@@ -42,13 +42,9 @@ class Cells(Protocol):
         """Water cells on the open boundary, river inlets left out, shape (n,)."""
 
     @property
+    def side_cells(self) -> dict[str, Bools]:
+        """Cells on the outer edge by compass side, each of shape (n,); a corner cell belongs to two."""
+
+    @property
     def shape(self) -> tuple[int, ...]:
         """Rows and columns, or the number of cells of a mesh or a list of points."""
-
-    @property
-    def longitude(self) -> Floats:
-        """Of the cell centres, degrees, shape (n,)."""
-
-    @property
-    def latitude(self) -> Floats:
-        """Of the cell centres, degrees, shape (n,)."""

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 from typing import Literal
 
@@ -42,6 +42,10 @@ class ClassProperties:
         kg m-2 s-1 for the form `excess_ratio`, kg m-2 s-1 Pa-1 for `excess_stress`; NaN where not given.
     form, kind : tuples of str
     settling_source, stress_source : tuples of {"given", "computed", "not given"}
+    dry_density_kg_m3 : float array, shape (k,)
+        Of a bed of the class alone; NaN where not given.
+    effective_density_kg_m3 : float array, shape (k,)
+        Of flocs, above the water's; NaN for grains and where not given.
     """
 
     names: tuple[str, ...]
@@ -56,6 +60,13 @@ class ClassProperties:
     kind: tuple[str, ...]
     settling_source: tuple[Source, ...]
     stress_source: tuple[Source, ...]
+    dry_density_kg_m3: Floats
+    effective_density_kg_m3: Floats
+
+    @property
+    def loose(self) -> NDArray[np.bool_]:
+        """Single grains without cohesion, above 63 µm, shape (k,)."""
+        return np.array([kind == "grain" for kind in self.kind]) & (self.diameter_m > COMPUTED_ABOVE_M)
 
     @property
     def not_given(self) -> tuple[str, ...]:
@@ -68,6 +79,8 @@ class ClassProperties:
                 missing.append(f"{name}: critical stress")
             if np.isnan(self.erosion_rate[i]):
                 missing.append(f"{name}: erosion rate")
+            if self.kind[i] == "floc" and np.isnan(self.effective_density_kg_m3[i]):
+                missing.append(f"{name}: effective density")
         return tuple(missing)
 
 
@@ -108,12 +121,18 @@ def class_properties(
         density_kg_m3=np.array([c.grain.density_kg_m3 for c in classes]),
         settling_velocity_m_s=np.array([value for value, _ in settling]),
         critical_stress_pa=np.array([value for value, _ in stress]),
-        erosion_rate=np.array([np.nan if c.erosion.rate is None else c.erosion.rate for c in classes]),
+        erosion_rate=_or_nan(c.erosion.rate for c in classes),
         form=tuple(c.erosion.form for c in classes),
         kind=tuple(c.kind for c in classes),
         settling_source=tuple(source for _, source in settling),
         stress_source=tuple(source for _, source in stress),
+        dry_density_kg_m3=_or_nan(c.packing.dry_density_kg_m3 for c in classes),
+        effective_density_kg_m3=_or_nan(c.water_column.effective_density_kg_m3 for c in classes),
     )
+
+
+def _or_nan(values: Iterable[float | None]) -> Floats:
+    return np.array([np.nan if value is None else value for value in values])
 
 
 def _diameter(c: BedClass, water: Water) -> float:

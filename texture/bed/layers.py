@@ -11,7 +11,15 @@ from texture.bed.classes import ClassProperties
 from texture.composition.closure import close
 from texture.recipe import Layer
 
-__all__ = ["close_classes", "composition_in_classes", "drop_small", "layer_fractions", "layer_thickness", "to_classes"]
+__all__ = [
+    "close_classes",
+    "composition_in_classes",
+    "drop_small",
+    "layer_fractions",
+    "layer_stress",
+    "layer_thickness",
+    "to_classes",
+]
 
 
 def close_classes(fraction: Floats) -> Floats:
@@ -39,7 +47,7 @@ def to_classes(parts: Floats, classes: ClassProperties) -> Floats:
 def composition_in_classes(
     composition: Mapping[str, float], classes: ClassProperties, parts: Sequence[str] = ("mud", "sand", "gravel")
 ) -> Floats:
-    """Fractions of the classes, shape (k,), for a composition given in parts; parts not named are absent.
+    """Fractions of the classes, shape (k,), for a composition given in parts, or in classes; what is not named is absent.
 
     >>> from texture.bed import Water
     >>> from texture.bed.classes import class_properties
@@ -47,6 +55,8 @@ def composition_in_classes(
     >>> composition_in_classes({"sand": 0.9, "gravel": 0.1}, class_properties(Bed().classes, Water()))
     array([0. , 0.9, 0.1])
     """
+    if not set(composition) <= set(parts):
+        return close_classes(np.array([composition.get(name, 0.0) for name in classes.names]))
     given = np.array([[composition.get(part, 0.0) for part in parts]])
     return to_classes(given, classes)[:, 0]
 
@@ -75,10 +85,24 @@ def layer_fractions(
     return fraction
 
 
-def layer_thickness(layers: Sequence[Layer], active: Bools, land_thickness_m: float) -> Floats:
-    """Erodible thickness, shape (layer, n): the recipe's in water, `land_thickness_m` on land."""
+def layer_thickness(
+    layers: Sequence[Layer], active: Bools, land_thickness_m: float, minimum_thickness_m: float = 0.0
+) -> Floats:
+    """Erodible thickness, shape (layer, n): the recipe's in water, `land_thickness_m` on land, nowhere below the minimum."""
     wet = np.array([layer.thickness_m for layer in layers])
-    return np.where(active[None, :], wet[:, None], land_thickness_m)
+    return np.maximum(np.where(active[None, :], wet[:, None], land_thickness_m), minimum_thickness_m)
+
+
+def layer_stress(layers: Sequence[Layer], classes: ClassProperties) -> Floats:
+    """Critical stress of each class in each layer, shape (k, layer): the layer's own where it has one, else the class's.
+
+    NaN where neither is known.
+    """
+    own = classes.critical_stress_pa[:, None].repeat(len(layers), axis=1)
+    for i, layer in enumerate(layers):
+        for name, value in layer.critical_stress_pa.items():
+            own[classes.names.index(name), i] = value
+    return own
 
 
 def drop_small(fraction: Floats, least_fraction: float) -> tuple[Floats, Floats]:

@@ -8,9 +8,8 @@ from __future__ import annotations
 import numpy as np
 
 from texture.bed.cells import Floats
-from texture.bed.packing import dry_density, porosity
 
-__all__ = ["mean_critical_stress", "median_diameter", "mixture_packing"]
+__all__ = ["geometric_mean_diameter", "mean_critical_stress", "median_diameter", "weighted"]
 
 ROUNDING = 1e-15
 """Fractions smaller than the rounding of their sum are no mass."""
@@ -55,37 +54,30 @@ def median_diameter(fraction: Floats, diameter_m: Floats) -> Floats:
     return np.where(np.isnan(fraction).any(axis=0), np.nan, np.exp(result))
 
 
-def mixture_packing(fraction: Floats, density_kg_m3: Floats, median_diameter_m: Floats) -> tuple[Floats, Floats]:
-    """Porosity and dry density of a mixture.
+def geometric_mean_diameter(fraction: Floats, diameter_m: Floats) -> Floats:
+    """Geometric mean diameter of a mixture by mass, exp(Σ f ln d), shape (…); NaN gives NaN.
 
-    Porosity by Wu & Wang (2006) from the mixture's median diameter; the grains' volumes add up, so that
-    their joint density is the harmonic mean of the classes' by mass.
+    >>> float(geometric_mean_diameter(np.array([0.5, 0.5]), np.array([1e-4, 1e-2])).round(6))
+    0.001
+    """
+    return np.asarray(np.exp(weighted(np.log(diameter_m), fraction)))
+
+
+def mean_critical_stress(fraction: Floats, critical_stress_pa: Floats) -> Floats:
+    """Mass-weighted mean of the classes' critical stresses, shape (…).
+
+    NaN when a class has none: a mean over the others would call mud as strong as sand.
 
     Parameters
     ----------
     fraction : float array, shape (k, …)
-    density_kg_m3 : float array, shape (k,)
-        Grain densities.
-    median_diameter_m : float array, shape (…)
-
-    Returns
-    -------
-    porosity, dry_density : float arrays, shape (…)
-        Without unit, and in kg m-3.
+    critical_stress_pa : float array, shape (k,), or one that goes with `fraction`
+        Of the classes, by layer or cell where they differ there.
     """
-    pores = porosity(median_diameter_m)
-    grains = 1.0 / _weighted(1.0 / density_kg_m3, fraction)
-    return pores, dry_density(pores, grains)
+    return weighted(critical_stress_pa, fraction)
 
 
-def mean_critical_stress(fraction: Floats, critical_stress_pa: Floats) -> Floats:
-    """Mass-weighted mean of the classes' critical stresses, without hiding and exposure, shape (…).
-
-    NaN when a class has none: a mean over the others would call mud as strong as sand.
-    """
-    return _weighted(critical_stress_pa, fraction)
-
-
-def _weighted(values: Floats, fraction: Floats) -> Floats:
+def weighted(values: Floats, fraction: Floats) -> Floats:
+    """Mean of the classes' values by mass, shape (…), from values of shape (k,) or (k, …)."""
     # Not a matrix product: its last digits depend on the shape of the block and the number of threads.
-    return np.asarray(np.einsum("k,k...->...", values, fraction))
+    return np.asarray(np.einsum("k...,k...->...", values, fraction))

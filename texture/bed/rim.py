@@ -14,7 +14,6 @@ from texture.recipe import Rim
 
 __all__ = ["blend", "open_boundary", "rim_weight", "water_distance"]
 
-COMPASS = ("north", "east", "south", "west")
 PROFILES: dict[str, Callable[[Floats], Floats]] = {
     "cosine": lambda t: 0.5 * (1.0 + np.cos(np.pi * t)),
     "linear": lambda t: 1.0 - t,
@@ -22,7 +21,7 @@ PROFILES: dict[str, Callable[[Floats], Floats]] = {
 }
 
 
-def rim_weight(cells: Cells, rim: Rim) -> Floats:
+def rim_weight(cells: Cells, rim: Rim, start: Bools | None = None) -> Floats:
     """Weight of the rim's bed in each cell.
 
     Parameters
@@ -30,6 +29,8 @@ def rim_weight(cells: Cells, rim: Rim) -> Floats:
     cells : Cells
     rim : Rim
         Sides, width (in cells or metres) and profile.
+    start : bool array, shape (n,), optional
+        Cells that a line or polygon file names, where the recipe's `sides` is one; the width counts from them.
 
     Returns
     -------
@@ -45,7 +46,11 @@ def rim_weight(cells: Cells, rim: Rim) -> Floats:
     """
     in_metres = rim.width_m is not None
     width = float(rim.width_m if rim.width_m is not None else rim.width_cells or 0)
-    distance = water_distance(cells, open_boundary(cells, rim.sides), in_metres, limit=width)
+    if start is None:
+        if not (rim.sides == "open" or isinstance(rim.sides, tuple)):
+            raise BedError(f"rim.sides is a file ({rim.sides.name}); its cells have to be given as well")
+        start = open_boundary(cells, rim.sides)
+    distance = water_distance(cells, start, in_metres, limit=width)
     inside = distance < width
     # No way leads from the rim into other water: ponds that the sea does not reach do not count.
     if not (inside[cells.edges].any(axis=1) & (cells.active & ~inside)[cells.edges].any(axis=1)).any():
@@ -77,7 +82,7 @@ def open_boundary(cells: Cells, sides: str | tuple[str, ...]) -> Bools:
         )
     if sides == "open":
         return opened
-    by_side = _cells_by_side(cells)
+    by_side = cells.side_cells
     chosen = np.zeros(opened.size, dtype=bool)
     for side in sides:
         found = opened & by_side[side]
@@ -88,23 +93,6 @@ def open_boundary(cells: Cells, sides: str | tuple[str, ...]) -> Bools:
             )
         chosen |= found
     return chosen
-
-
-def _cells_by_side(cells: Cells) -> dict[str, Bools]:
-    """Outer cells of each compass side: the point nearest to the way from the grid's middle to that side."""
-    index = np.arange(cells.active.size).reshape(cells.shape)
-    longitude, latitude = np.radians(cells.longitude), np.radians(cells.latitude)
-    # As directions from the centre of the earth, so that no grid is cut by the date line or a pole.
-    xyz = np.stack([np.cos(latitude) * np.cos(longitude), np.cos(latitude) * np.sin(longitude), np.sin(latitude)])
-    middle = np.nanmean(xyz, axis=1)
-    east = np.array([-middle[1], middle[0], 0.0]) / np.hypot(middle[0], middle[1])
-    north = np.cross(middle, east) / np.linalg.norm(middle)
-    by_side = {side: np.zeros(index.size, dtype=bool) for side in COMPASS}
-    for edge in (index[0], index[:, -1], index[-1], index[:, 0]):
-        away = np.nanmean(xyz[:, edge], axis=1) - middle
-        azimuth = np.degrees(np.arctan2(away @ east, away @ north))
-        by_side[COMPASS[round(azimuth % 360.0 / 90.0) % 4]][edge] = True
-    return by_side
 
 
 def water_distance(cells: Cells, start: Bools, in_metres: bool, limit: float = np.inf) -> Floats:

@@ -6,7 +6,8 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from texture.bed import single_fractions
+from texture.bed import HIDING_WORDS, PACKING_WORDS, single_fractions
+from texture.bed.mixture_packing import class_dry_density
 from texture.output.bed_variables import BED_VARIABLES, FORMS, KINDS, SOURCES
 from texture.output.cf import global_attributes, on_cells
 
@@ -14,6 +15,7 @@ if TYPE_CHECKING:
     import xarray as xr
 
     from texture.bed import Bed, ClassProperties
+    from texture.recipe import Bed as BedSettings
     from texture.recipe import Recipe
     from texture.targets import Target
 
@@ -21,7 +23,7 @@ __all__ = ["bed_dataset"]
 
 REFERENCES = (
     "Settling velocity: Soulsby (1997), Dynamics of Marine Sands. Critical stress of single grains: Soulsby and "
-    "Whitehouse (1997). Porosity: Wu and Wang (2006), J. Hydraul. Eng. 132, 858-862. Sea water: UNESCO (1983), "
+    "Whitehouse (1997). Porosity: Wu and Wang (2006), J. Hydraul. Eng. 132, 858-862, or as its comment says. Sea water: UNESCO (1983), "
     "Sharqawy et al. (2010)."
 )
 COMMENT = (
@@ -55,9 +57,15 @@ def bed_dataset(bed: Bed, target: Target, recipe: Recipe) -> xr.Dataset:
     layers = bed.erodible_thickness.shape[0]
     along_class = {
         name: xr.Variable(("class",), values, {**BED_VARIABLES[name], "coordinates": "class_name"})
-        for name, values in _class_values(bed.classes, recipe.composition.parts).items()
+        for name, values in _class_values(bed.classes, recipe).items()
     }
-    dataset = target.coordinates().assign({**along_class, **_cell_variables(bed, target)})
+    if any(layer.critical_stress_pa for layer in recipe.bed.layers):
+        along_class["critical_stress_in_layer"] = xr.Variable(
+            ("class", "layer"),
+            bed.class_critical_stress,
+            {**BED_VARIABLES["critical_stress_in_layer"], "coordinates": "class_name"},
+        )
+    dataset = target.coordinates().assign({**along_class, **_cell_variables(bed, target, recipe.bed)})
     dataset = dataset.assign_coords(
         class_name=("class", _strings(bed.classes.names), BED_VARIABLES["class_name"]),
         layer=("layer", np.arange(1, layers + 1, dtype=np.int32), BED_VARIABLES["layer"]),
@@ -79,20 +87,27 @@ def _single(dataset: xr.Dataset) -> xr.Dataset:
     return dataset
 
 
-def _cell_variables(bed: Bed, target: Target) -> dict[str, xr.Variable]:
-    with_class = ("class_fraction", "class_mass_content")
+def _cell_variables(bed: Bed, target: Target, settings: BedSettings) -> dict[str, xr.Variable]:
+    with_class = ("class_fraction", "class_mass_content", "hiding_exposure_factor")
     with_layer = (
-        "erodible_thickness", "dry_density", "porosity", "mixture_median_diameter", "critical_stress_for_erosion",
-        "evidence",
+        "erodible_thickness", "dry_density", "porosity", "mixture_median_diameter", "mixture_geometric_mean_diameter",
+        "critical_stress_for_erosion", "evidence",
     )  # fmt: skip
     variables = {}
     for name in with_class:
         values = getattr(bed, name)
+        if values is None:
+            continue
         variables[name] = on_cells(target, ("class", "layer"), values, "class_name", **BED_VARIABLES[name])
     for name in with_layer:
         values = getattr(bed, name)
         if values is not None:
             variables[name] = on_cells(target, ("layer",), values, **BED_VARIABLES[name])
+    variables["porosity"].attrs["comment"] = PACKING_WORDS[settings.packing]
+    if "critical_stress_for_erosion" in variables:
+        variables["critical_stress_for_erosion"].attrs["comment"] = (
+            f"mass-weighted mean of the critical stresses of the classes, {HIDING_WORDS[settings.hiding]}"
+        )
     for name, values in (
         ("skin_roughness_length", bed.skin_roughness_length),
         ("rim_weight", bed.rim_weight),
@@ -102,7 +117,8 @@ def _cell_variables(bed: Bed, target: Target) -> dict[str, xr.Variable]:
     return variables
 
 
-def _class_values(classes: ClassProperties, parts: tuple[str, ...]) -> dict[str, Any]:
+def _class_values(classes: ClassProperties, recipe: Recipe) -> dict[str, Any]:
+    parts = recipe.composition.parts
     ratio = np.array([form == "excess_ratio" for form in classes.form])
     values = {
         "class_part": _strings(tuple(parts[i] for i in classes.part)),
@@ -119,6 +135,10 @@ def _class_values(classes: ClassProperties, parts: tuple[str, ...]) -> dict[str,
     }
     if not ratio.all():
         values["erosion_rate_per_stress"] = np.where(ratio, np.nan, classes.erosion_rate)
+    if recipe.bed.packing == "class":
+        values["class_dry_density"] = class_dry_density(classes)
+    if "floc" in classes.kind:
+        values["effective_density"] = classes.effective_density_kg_m3
     return values
 
 

@@ -25,23 +25,29 @@ BED_VARIABLES: dict[str, dict[str, Any]] = {
         "long_name": "dry mass of each sediment class in the layer, by area",
         "units": "kg m-2",
     },
+    "hiding_exposure_factor": {
+        "long_name": "factor on the critical stress of the class in the mixture",
+        "units": "1",
+    },
     # on (layer, cells)
     "erodible_thickness": {"long_name": "thickness of the layer that can erode", "units": "m"},
     "dry_density": {"long_name": "dry mass in a volume of bed", "units": "kg m-3"},
     "porosity": {
         "long_name": "share of pores in the volume of the bed",
         "units": "1",
-        "comment": "Wu and Wang (2006) from the median diameter of the mixture",
     },
     "mixture_median_diameter": {
         "standard_name": "sea_floor_sediment_grain_size",
         "long_name": "median grain diameter of the mixture",
         "units": "m",
     },
+    "mixture_geometric_mean_diameter": {
+        "long_name": "geometric mean grain diameter of the mixture, by mass",
+        "units": "m",
+    },
     "critical_stress_for_erosion": {
         "long_name": "critical bed shear stress for erosion of the mixture",
         "units": "Pa",
-        "comment": "mass-weighted mean of the critical stresses of the classes, without hiding and exposure",
     },
     "evidence": {"long_name": "where the bed of the cell comes from", **flags(EVIDENCE)},
     # on the cells
@@ -69,7 +75,13 @@ BED_VARIABLES: dict[str, dict[str, Any]] = {
     "settling_velocity": {"long_name": "settling velocity, positive downward", "units": "m s-1"},
     "settling_velocity_source": {"long_name": "where the settling velocity comes from", **flags(SOURCES)},
     "critical_stress": {"long_name": "critical bed shear stress of the class alone", "units": "Pa"},
+    "critical_stress_in_layer": {
+        "long_name": "critical bed shear stress of the class alone, in the layer",
+        "units": "Pa",
+    },
     "critical_stress_source": {"long_name": "where the critical stress comes from", **flags(SOURCES)},
+    "class_dry_density": {"long_name": "dry density of a bed of the class alone", "units": "kg m-3"},
+    "effective_density": {"long_name": "density of flocs above that of the water", "units": "kg m-3"},
     "erosion_form": {"long_name": "form of the erosion law", **flags(FORMS)},
     "erosion_rate": {
         "long_name": "erosion rate, to be multiplied by excess stress over critical stress",

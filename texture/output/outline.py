@@ -6,7 +6,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from texture.bed import Account, Bed, Water, class_properties
+from texture.bed import Account, Bed, Water, class_properties, strength_known
 from texture.errors import RecipeError
 from texture.output.bed_nc import bed_dataset
 from texture.output.folder import RESULTS
@@ -40,8 +40,11 @@ def bed_outline(target: Target, recipe: Recipe) -> xr.Dataset:
         dry_density=flat,
         porosity=flat,
         mixture_median_diameter=flat,
+        mixture_geometric_mean_diameter=flat,
         skin_roughness_length=flat[0],
-        critical_stress_for_erosion=None if np.isnan(classes.critical_stress_pa).any() else flat,
+        critical_stress_for_erosion=flat if strength_known(recipe.bed, classes, recipe.rim) else None,
+        class_critical_stress=np.broadcast_to(0.5, (k, layers)),
+        hiding_exposure_factor=None if recipe.bed.hiding == "none" else full,
         evidence=np.broadcast_to(np.int8(1), (layers, n)),
         rim_weight=flat[0],
         account=Account({}, {}, {}, 0.0, 0, 0, ()),

@@ -128,7 +128,9 @@ def _structure(result: Result) -> Table:
 
 
 def _classes(result: Result) -> Table:
-    c = result.bed.classes
+    from texture.bed import HIDING_WORDS, PACKING_WORDS
+
+    c, settings = result.bed.classes, result.found.recipe.bed
     parts = result.found.recipe.composition.parts
 
     def sourced(value: float, unit_value: str, source: str) -> str:
@@ -147,7 +149,8 @@ def _classes(result: Result) -> Table:
     ]
     return Table(
         "Sediment classes. Computed: Soulsby (1997) settling and Soulsby & Whitehouse (1997) threshold, for single "
-        "grains above 63 µm only.",
+        f"grains above 63 µm only. In the mixture: {HIDING_WORDS[settings.hiding]}. Dry density of the bed: "
+        f"{PACKING_WORDS[settings.packing]}.",
         ["class", "share", "diameter, µm", "settling, mm/s", "critical stress, Pa", "erosion rate"],
         rows,
         numeric=[2],
