@@ -101,8 +101,8 @@ def _crossed(lines: Any, target: Target, name: str) -> Bools:
     if target.corners is None:
         raise TargetError(f"{name}: {target.name} is a list of places, which a line cannot cross; give a polygon")
     cell = target.cell_of_piece
-    wet = np.flatnonzero(target.active[cell] & np.isfinite(target.corners[0]).all(axis=1))
-    lon, lat = target.corners[0][wet], target.corners[1][wet]
+    wet = np.flatnonzero(target.active[cell])
+    lon, lat = target.corners.of(wet)
     lon = _beside(lon[:, :1], lines) + (lon - lon[:, :1] + 180.0) % 360.0 - 180.0  # a cell is not cut by the date line
     west, south, east, north = shapely.bounds(lines)
     near = (
