@@ -40,7 +40,8 @@ Positive = Annotated[float, Field(gt=0.0)]
 COLUMN_ROLES = (
     "id", "survey", "date", "latitude", "latitude_minutes", "latitude_seconds", "latitude_hemisphere", "longitude",
     "longitude_minutes", "longitude_seconds", "longitude_hemisphere", "easting", "northing", "zone", "position", "depth",
-    "sample_interval", "sample_top", "sample_bottom", "mud", "sand", "gravel", "silt", "clay", "description", "remarks",
+    "sample_interval", "sample_top", "sample_bottom", "mud", "sand", "gravel", "silt", "clay", "median_size",
+    "description", "remarks",
 )  # fmt: skip
 
 

@@ -20,6 +20,8 @@ def rows(*values, **columns):
         "resolution": 0.005,
         "top_m": 0.0,
         "thickness_m": np.nan,
+        "median_phi": np.nan,
+        **{f"{part}_{end}": np.nan for part in ("mud", "sand", "gravel") for end in ("low", "high")},
     }
     for name, value in {**defaults, **columns}.items():
         frame[name] = value if isinstance(value, list) else [value] * n
@@ -81,3 +83,19 @@ def test_slices_of_a_core_are_weighted_by_their_thickness_and_are_one_sample():
     np.testing.assert_allclose(stations[["mud", "sand", "gravel"]].to_numpy(), [[0.1, 0.5, 0.4]])
     assert stations["repeats"].tolist() == [1]
     assert stations["repeat_sd_mud"].isna().all()
+
+
+def test_limits_are_averaged_with_the_exact_values_beside_them():
+    frame = rows((0.3, 0.7, 0.0), (0.1, 0.9, 0.0), mud_low=[0.2, np.nan], mud_high=[0.4, np.nan])
+    stations, _ = merge_repeats(frame)
+    np.testing.assert_allclose(stations[["mud", "mud_low", "mud_high"]].to_numpy(), [[0.2, 0.15, 0.25]])
+    np.testing.assert_allclose(stations[["sand_low", "sand_high", "gravel_high"]].to_numpy(), [[0.8, 0.8, 0.0]])
+
+
+def test_a_median_gives_way_to_shares_and_several_become_their_mean():
+    kinds = ["median_only", "sieve"]
+    stations, _ = merge_repeats(rows((np.nan,) * 3, (0.2, 0.8, 0.0), kind=kinds, median_phi=[2.0, np.nan]))
+    assert stations[["kind", "repeats"]].to_numpy().tolist() == [["sieve", 1]]
+    stations, _ = merge_repeats(rows((np.nan,) * 3, (np.nan,) * 3, kind="median_only", median_phi=[2.0, 3.0]))
+    assert stations["median_phi"].tolist() == [2.5]
+    assert stations["mud"].isna().all()

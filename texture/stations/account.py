@@ -28,7 +28,8 @@ LEDGER_COLUMNS = ("file", "sheet", "row", "id", "fate", "reason", "station")
 TABLE_COLUMNS = (
     "id", "survey", "longitude", "latitude", "mud", "sand", "gravel", "kind", "file", "sheet", "row",
     "date", "depth_m", "resolution", "repeats", "repeat_sd_mud", "repeat_sd_sand", "repeat_sd_gravel",
-    "position_accuracy_m", "description", "described_class",
+    "position_accuracy_m", "description", "described_class", "mud_low", "mud_high", "sand_low", "sand_high",
+    "gravel_low", "gravel_high", "median_phi",
 )  # fmt: skip
 
 
@@ -42,7 +43,8 @@ class Stations:
         One row for each station, `TABLE_COLUMNS` first. Fractions of 1, NaN where a part is not known: a row
         that knows only its mud has sand and gravel NaN; mud and sand without gravel are shares of what passed
         2 mm. Rows of kind `hard_ground` have no fractions, and those of kind `description` none either: their words
-        name a class in `described_class`.
+        name a class in `described_class`, and those of kind `median_only` only a `median_phi`. Rows that are not exact
+        (`<1`, `5-10`) have the limits of every known part in `<part>_low` and `<part>_high`, NaN in all other rows.
     audit : DataFrame
         file, sheet, row, column, old, new, rule: every reading that was not plain and every change.
     ledger : DataFrame

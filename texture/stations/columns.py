@@ -16,7 +16,7 @@ __all__ = ["Column", "assign_columns"]
 LOOKED_AT = 400  # cells of a column whose content is looked at
 # Roles whose double would change the result are never chosen between silently.
 _STRICT = frozenset(("latitude", "longitude", "easting", "northing", *PARTS))
-_NUMERIC = _STRICT | {"depth", "sample_top", "sample_bottom"}
+_NUMERIC = _STRICT | {"depth", "sample_top", "sample_bottom", "median_size"}
 
 
 @dataclass(frozen=True)

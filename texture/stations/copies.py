@@ -33,7 +33,7 @@ def find_copies(rows: pd.DataFrame) -> tuple[npt.NDArray[np.int64], list[str]]:
     n = len(rows)
     original = np.full(n, -1, dtype=np.int64)
     survey = rows["survey"].to_numpy()
-    measured = np.flatnonzero(~rows["kind"].isin(["description", "hard_ground"]).to_numpy())
+    measured = np.flatnonzero(~rows["kind"].isin(["description", "median_only", "hard_ground"]).to_numpy())
     if len(measured) == 0 or len(pd.unique(survey[measured])) < 2:
         return original, []
     keys = rows.iloc[measured][["longitude", "latitude"]].round(PLACE_DIGITS)

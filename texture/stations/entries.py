@@ -17,12 +17,12 @@ from texture.stations.sources import Source
 from texture.stations.tables import Table
 from texture.stations.where import Where, shown
 
-__all__ = ["days_of", "interval_of", "metres_of", "texts_of"]
+__all__ = ["days_of", "home_of", "interval_of", "metres_of", "texts_of"]
 
 METRES = {"cm": 0.01, "mm": 0.001, "ft": 0.3048, "fathom": 1.8288}
 
 
-def _home_of(source: Source, role: str) -> tuple[Table, Column, npt.NDArray[np.int64] | None] | None:
+def home_of(source: Source, role: str) -> tuple[Table, Column, npt.NDArray[np.int64] | None] | None:
     """The table and column of a role: among the results, else among the positions with the match of rows."""
     if role in source.columns:
         return source.table, source.columns[role], None
@@ -34,7 +34,7 @@ def _home_of(source: Source, role: str) -> tuple[Table, Column, npt.NDArray[np.i
 def interval_of(source: Source, notes: list[str]) -> tuple[npt.NDArray[np.float64], npt.NDArray[np.float64]]:
     """Where each sample begins and ends, in metres below the surface of the bed; NaN where nothing is said."""
     top, bottom = (metres_of(source, role, notes) for role in ("sample_top", "sample_bottom"))
-    home = _home_of(source, "sample_interval")
+    home = home_of(source, "sample_interval")
     if home is None:
         return top, bottom
     table, column, match = home
@@ -52,7 +52,7 @@ def interval_of(source: Source, notes: list[str]) -> tuple[npt.NDArray[np.float6
 
 def metres_of(source: Source, role: str, notes: list[str]) -> npt.NDArray[np.float64]:
     """A column of lengths in metres, positive down; NaN where there is none."""
-    home = _home_of(source, role)
+    home = home_of(source, role)
     if home is None:
         return np.full(len(source.table.rows), np.nan)
     table, column, match = home
@@ -79,7 +79,7 @@ def metres_of(source: Source, role: str, notes: list[str]) -> npt.NDArray[np.flo
 
 def days_of(source: Source, block: Samples, notes: list[str]) -> npt.NDArray[np.object_]:
     """ISO dates; rows without one get the survey's own days, an ISO 8601 interval where both are given."""
-    home = _home_of(source, "date")
+    home = home_of(source, "date")
     if home is None:
         dates = np.full(len(source.table.rows), "", dtype=object)
     else:
@@ -113,7 +113,7 @@ def _check_days(
 
 def texts_of(source: Source, role: str, otherwise: str) -> list[str]:
     """A column of texts; `otherwise` where it is blank or missing."""
-    home = _home_of(source, role)
+    home = home_of(source, role)
     if home is None:
         return [otherwise] * len(source.table.rows)
     table, column, match = home

@@ -41,12 +41,15 @@ class Fates:
     described: ObjectArray
 
 
-def judge(source: Source, positions: Positions, shares: Shares, audit: AuditLog) -> Fates:
+def judge(
+    source: Source, positions: Positions, shares: Shares, median_phi: npt.NDArray[np.float64], audit: AuditLog
+) -> Fates:
     """Judge every row; only those that are not plainly used are looked at one by one."""
     n = len(source.table.rows)
     fates = Fates(*(np.full(n, text, dtype=object) for text in ("used", "", "")))
     placed = np.isfinite(positions.longitude) & np.isfinite(positions.latitude)
     informed = np.isfinite(shares.mud) | np.isfinite(shares.sand) | np.isfinite(shares.gravel)
+    informed |= np.isfinite(median_phi)
     for i in map(int, np.flatnonzero(~(placed & informed & (shares.problem == "")))):
         cells = [column[i] for column in source.table.columns]
         if not placed[i]:

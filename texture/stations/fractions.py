@@ -1,7 +1,8 @@
 """From what the part columns say to fractions of 1: unit, mud from silt and clay, completion, closing.
 
-Limits follow the multiplicative replacement of Martín-Fernández et al. (2003): `<1 %` becomes 0.65 of the
-limit and the other parts are scaled together, so that their ratios stay.
+What is not exact (`<1`, `5-10`) keeps its limits beside a point (`texture.stations.limits`). Closing follows the multiplicative
+replacement of Martín-Fernández et al. (2003): a part below a limit keeps its point and the other parts are scaled
+together, so that their ratios stay.
 """
 
 from __future__ import annotations
@@ -17,16 +18,15 @@ from texture.stations.audit import AuditLog
 from texture.stations.cells import Numbers, Reading, unreadable_hint
 from texture.stations.columns import Column
 from texture.stations.files import Cell
+from texture.stations.limits import Part, limit_rows, move_within, read_part
 from texture.stations.units import DIVISORS, UNITS, find_unit
 from texture.stations.where import Where, shown
 
-__all__ = ["OF_LIMIT", "Shares", "no_shares", "share_out"]
+__all__ = ["Shares", "no_shares", "share_out"]
 
 FloatArray = npt.NDArray[np.float64]
 BoolArray = npt.NDArray[np.bool_]
 
-OF_LIMIT = 0.65  # share of a limit that stands for "below it" (Martín-Fernández et al. 2003)
-OF_DETECTION = 0.5  # share of the detection limit that stands for "trace"
 BINARY_NOISE = 1e-12  # sums of typed decimals differ from 1 by this much in binary
 THREE = ("mud", "sand", "gravel")
 
@@ -45,6 +45,8 @@ class Shares:
         Whether the row gives any part at all, readable or not.
     problem : object array of str, shape (n,)
         Why the row cannot be used; empty where it can.
+    low, high : float array, shape (n, 3)
+        Limits of mud, sand and gravel in rows that are not exact; NaN in all others.
     notes : tuple of str
     """
 
@@ -54,13 +56,16 @@ class Shares:
     resolution: FloatArray
     given: BoolArray
     problem: npt.NDArray[np.object_]
+    low: FloatArray
+    high: FloatArray
     notes: tuple[str, ...] = ()
 
 
 def no_shares(n: int) -> Shares:
     """Shares of a table that gives none, only words."""
     mud, sand, gravel, resolution = np.full((4, n), np.nan)
-    return Shares(mud, sand, gravel, resolution, np.zeros(n, dtype=bool), np.full(n, "", dtype=object))
+    low, high = np.full((2, n, 3), np.nan)
+    return Shares(mud, sand, gravel, resolution, np.zeros(n, dtype=bool), np.full(n, "", dtype=object), low, high)
 
 
 def share_out(
@@ -102,9 +107,9 @@ def share_out(
     n = len(rows)
     problem = np.full(n, "", dtype=object)
     given = np.zeros(n, dtype=bool)
-    parts: dict[str, _Part] = {}
+    parts: dict[str, Part] = {}
     for role, column in numbers.items():
-        part = _one_part(column, unit, detection_limit)
+        part = read_part(column, DIVISORS[unit], detection_limit)
         parts[role] = part
         place = where.at(columns[role].heading)
         given |= (column.reading > Reading.MISSING) | (column.reading == Reading.PLAIN)
@@ -129,39 +134,21 @@ def share_out(
                 ["0"] * int(fill.sum()),
                 "blank means zero in this survey",
             )
-    values, small, half = _three(parts, n, columns, where, rows, audit, problem, sum_tolerance)
+    row = _three(parts, n, columns, where, rows, audit, problem, sum_tolerance)
     if unit == "weight":
-        _weigh(values, problem, given, block.basis)
-    _complete(values, small, block.basis, where, rows, audit, problem)
-    _close(values, small, half, block.basis, sum_tolerance, where, rows, audit, problem)
-    resolution = np.fmax.reduce([np.where(np.isfinite(values[:, k]), half[:, k], np.nan) for k in range(3)])
+        _weigh(row, problem, given, block.basis)
+    _complete(row, block.basis, where, rows, audit, problem)
+    _close(row, block.basis, sum_tolerance, where, rows, audit, problem)
+    values = row.value
+    resolution = np.fmax.reduce([np.where(np.isfinite(values[:, k]), row.half[:, k], np.nan) for k in range(3)])
     if unit == "weight":
         resolution[:] = np.nan  # a balance's digits say little about the share
     values[problem != ""] = np.nan
+    low, high = limit_rows(values, row.low, row.high, row.half, row.small)
+    fines = (block.basis == "below_2mm") & np.isnan(values[:, 2])  # shares of what passed 2 mm: no limits of the whole
+    low[fines], high[fines] = np.nan, np.nan
     notes = (note,) if note else (f"{where.text()}: parts read as {UNITS[unit]}",)
-    return Shares(values[:, 0], values[:, 1], values[:, 2], resolution, given, problem, notes)
-
-
-@dataclass(frozen=True)
-class _Part:
-    """One part column in fractions: value, whether it stands for a limit or trace, half width."""
-
-    value: FloatArray
-    small: BoolArray
-    half: FloatArray
-
-
-def _one_part(column: Numbers, unit: str, detection_limit: float) -> _Part:
-    divisor = DIVISORS[unit]
-    value, half = column.value / divisor, column.half_width / divisor
-    below, trace, above = (column.reading == r for r in (Reading.BELOW, Reading.TRACE, Reading.ABOVE))
-    half = np.where(below, OF_LIMIT * value, half)
-    value = np.where(below, OF_LIMIT * value, value)
-    half = np.where(above, (1.0 - value) / 2, half)
-    value = np.where(above & (value < 1.0), (1.0 + value) / 2, value)
-    value = np.where(trace, OF_DETECTION * detection_limit, value)
-    half = np.where(trace, OF_DETECTION * detection_limit, half)
-    return _Part(value, below | trace, half)
+    return Shares(values[:, 0], values[:, 1], values[:, 2], resolution, given, problem, low, high, notes)
 
 
 def _refuse_above_one(
@@ -177,11 +164,11 @@ def _refuse_above_one(
 
 _RULES = {
     Reading.MISSING: "says that there is no value: not measured",
-    Reading.BELOW: "below a limit: 0.65 of the limit",
-    Reading.ABOVE: "above a limit: halfway from the limit to 1",
-    Reading.TRACE: "trace: half of composition.detection_limit",
-    Reading.RANGE: "range: its middle",
-    Reading.ABOUT: "about: the number itself",
+    Reading.BELOW: "below a limit: 0.65 of the limit, and anything from 0 to it",
+    Reading.ABOVE: "above a limit: halfway from the limit to 1, and anything between",
+    Reading.TRACE: "trace: half of composition.detection_limit, and anything from 0 to it",
+    Reading.RANGE: "range: its middle, and anything between its ends",
+    Reading.ABOUT: "about: within a fifth of it",
     Reading.MARKED: "number with a mark or unit: the number",
 }
 
@@ -200,7 +187,7 @@ def _note_readings(
 
 
 def _three(
-    parts: Mapping[str, _Part],
+    parts: Mapping[str, Part],
     n: int,
     columns: Mapping[str, Column],
     where: Where,
@@ -208,60 +195,70 @@ def _three(
     audit: AuditLog,
     problem: npt.NDArray[np.object_],
     tolerance: float,
-) -> tuple[FloatArray, BoolArray, FloatArray]:
-    """Put mud, sand, gravel side by side; silt and clay make mud where mud itself is not given."""
-    value, half = np.full((n, 3), np.nan), np.full((n, 3), np.nan)
-    small = np.zeros((n, 3), dtype=bool)
-    for k, role in enumerate(THREE):
-        if role in parts:
-            value[:, k], small[:, k], half[:, k] = parts[role].value, parts[role].small, parts[role].half
+) -> Part:
+    """Put mud, sand, gravel side by side, shape (n, 3); silt and clay make mud where mud itself is not given."""
+    none = np.full(n, np.nan)
+    blank = Part(none, none, none, none, np.zeros(n, dtype=bool))
+    three = [parts.get(role, blank) for role in THREE]
     if "silt" in parts and "clay" in parts:
-        silt, clay = parts["silt"], parts["clay"]
-        both = silt.value + clay.value
-        use = np.isnan(value[:, 0]) & np.isfinite(both)
-        value[use, 0], half[use, 0] = both[use], (silt.half + clay.half)[use]
-        small[use, 0] = (silt.small & clay.small)[use]
+        both, mud = parts["silt"].plus(parts["clay"]), three[0]
+        use = np.isnan(mud.value) & np.isfinite(both.value)
+        three[0] = Part(
+            *(np.where(use, getattr(both, f), getattr(mud, f)) for f in ("value", "low", "high", "half", "small"))
+        )
         place = where.at(f"{columns['silt'].heading} + {columns['clay'].heading}")
-        old = [f"{a:.7g} + {b:.7g}" for a, b in zip(silt.value[use], clay.value[use], strict=True)]
-        audit.add(place, rows[use], old, both[use], "silt + clay is mud")
-        differ = ~use & np.isfinite(both) & (np.abs(both - value[:, 0]) > tolerance)
+        silt, clay = parts["silt"].value, parts["clay"].value
+        old = [f"{a:.7g} + {b:.7g}" for a, b in zip(silt[use], clay[use], strict=True)]
+        audit.add(place, rows[use], old, both.value[use], "silt + clay is mud")
+        differ = ~use & np.isfinite(both.value) & (np.abs(both.value - mud.value) > tolerance)
         for i in np.flatnonzero(differ & (problem == "")):
-            problem[i] = f"mud {value[i, 0]:.4g} is not silt + clay {both[i]:.4g}"
-    return value, small, half
+            problem[i] = f"mud {mud.value[i]:.4g} is not silt + clay {both.value[i]:.4g}"
+    return Part(*(np.column_stack([getattr(p, f) for p in three]) for f in ("value", "low", "high", "half", "small")))
 
 
-def _weigh(value: FloatArray, problem: npt.NDArray[np.object_], given: BoolArray, basis: str) -> None:
+def _weigh(row: Part, problem: npt.NDArray[np.object_], given: BoolArray, basis: str) -> None:
     """Turn weights into fractions where everything that was weighed is there."""
+    value = row.value
     needed = value if basis == "whole" else value[:, :2]
     whole = needed.sum(axis=1)
     good = np.isfinite(whole) & (whole > 0.0)
-    value[good] /= (whole if basis == "whole" else np.where(np.isnan(value[:, 2]), whole, value.sum(axis=1)))[
-        good, None
-    ]
+    divisor = whole if basis == "whole" else np.where(np.isnan(value[:, 2]), whole, value.sum(axis=1))
+    for numbers in (row.value, row.low, row.high):
+        numbers[good] /= divisor[good, None]
+    np.minimum(row.high, 1.0, out=row.high)
+    row.half[:] = 0.0  # a balance's digits say little about the share
     bad = given & ~good & (problem == "")
     problem[bad] = "weights need all parts to make fractions"
     value[bad] = np.nan
 
 
 def _complete(
-    value: FloatArray,
-    small: BoolArray,
+    row: Part,
     basis: str,
     where: Where,
     rows: npt.NDArray[np.int64],
     audit: AuditLog,
     problem: npt.NDArray[np.object_],
 ) -> None:
-    """Fill the one missing part where the whole sample was seen."""
+    """Fill the one missing part where the whole sample was seen; what the others leave open, it leaves open too."""
     if basis != "whole":
         return
+    value = row.value
     missing = np.isnan(value)
     one = (missing.sum(axis=1) == 1) & (problem == "")
+    inexact = np.isfinite(row.low)
+    least = np.nansum(np.where(inexact, row.low, value), axis=1)
+    most = np.nansum(np.where(inexact, row.high, value), axis=1)
     rest = 1.0 - np.nansum(value, axis=1)
     for k, name in enumerate(THREE):
         fill = one & missing[:, k]
         rest_k = np.where(np.abs(rest[fill]) < BINARY_NOISE, 0.0, rest[fill])
         value[fill, k] = np.maximum(rest_k, 0.0)
+        open_ = fill & inexact.any(axis=1)
+        row.low[open_, k], row.high[open_, k] = (
+            np.maximum(1.0 - most, 0.0)[open_],
+            np.clip(1.0 - least, 0.0, 1.0)[open_],
+        )
         audit.add(
             where.at(name),
             rows[fill],
@@ -272,9 +269,7 @@ def _complete(
 
 
 def _close(
-    value: FloatArray,
-    small: BoolArray,
-    half: FloatArray,
+    row: Part,
     basis: str,
     tolerance: float,
     where: Where,
@@ -283,6 +278,7 @@ def _close(
     problem: npt.NDArray[np.object_],
 ) -> None:
     """Close rows to 1 within the tolerance; limits keep their value, all other parts are scaled together."""
+    value, small, half = row.value, row.small, row.half
     known = np.isfinite(value)
     complete = known.all(axis=1)
     below_2mm = (basis == "below_2mm") & known[:, 0] & known[:, 1]
@@ -291,7 +287,8 @@ def _close(
         scale = complete & (np.abs(fine - 1.0) <= tolerance) & (value[:, 2] > tolerance) & (problem == "")
         factor = (1.0 - value[scale, 2]) / fine[scale]
         old = fine[scale]
-        value[scale, :2] *= factor[:, None]
+        for numbers in (value, row.low, row.high):
+            numbers[scale, :2] *= factor[:, None]
         audit.add(
             where.at("mud + sand"),
             rows[scale],
@@ -299,6 +296,16 @@ def _close(
             value[scale, :2].sum(axis=1),
             "shares of what passed 2 mm: scaled by 1 - gravel",
         )
+    loose = np.isfinite(row.low) & ~small
+    ranged = complete & loose.any(axis=1) & (problem == "")
+    if ranged.any():
+        before = value.copy()
+        moved = move_within(value, row.low, row.high, loose & ranged[:, None])
+        for k, name in enumerate(THREE):
+            hit = moved[:, k] & (np.abs(value[:, k] - before[:, k]) > BINARY_NOISE)
+            audit.add(
+                where.at(name), rows[hit], before[hit, k], value[hit, k], "moved within its limits: the row sums to 1"
+            )
     total = np.where(known, value, 0.0).sum(axis=1)
     fixed = np.where(small & known, value, 0.0).sum(axis=1)
     slack = tolerance + np.where(small & known, half, 0.0).sum(axis=1) + BINARY_NOISE

@@ -51,6 +51,8 @@ _PATTERNS: tuple[tuple[str, int, str], ...] = (
     ("id", 3, r"\b(sample|station|stn|site|grab|core|location|lab|probe|proben|monster|muestra|echantillon|amostra|campione|punto|punkt)\b ?\b(id|no|nr|num|number|nummer|code|name|label|ref|reference|numero|codigo)\b"),
     ("id", 3, r"^(sample|station|stations|stn|st|site|grab|sample id|id|probe|probennummer|estacion|muestra|echantillon|station|amostra|estacao|campione|stazione|monster|locatie|standort|messstelle|stationsnummer|monsternummer)$"),
     ("id", 2, r"\b(id|code|label|ref|reference)$|^(no|nr|number|name|nummer|numero|num|codigo)$"),
+    ("median_size", 3, r"^(?!.*\b(sand|mud|gravel|silt|clay|fraction|depth)\b).*(\bmedian[ae]?\b|\bmedianwert\b|\bd ?50\b|\bd ?0\.5\b|^md( phi| mm| um)?$|^mdphi$)"),
+    ("median_size", 2, r"^(?!.*\b(sand|mud|gravel|silt|clay|fraction|depth)\b).*(\bmean (grain |particle |sediment )?(size|diameter)\b|^mz\b)"),
     ("mud", 3, r"\bmud\b|\bfines\b|\bfangos?\b|\blodos?\b|\bvases?\b|\bschlamm\b|\bschlick\b|\bslib\b|\blama\b|\bboues?\b|\bpelit[ae]s?\b|\bfinos\b|\bfango\b|\bpelitic\b"),
     ("mud", 3, r"\bsilt\b\s*(\+|&|and|und|et|y|e|en|/|)\s*\bclay\b|\bclay\b\s*(\+|&|and|/|)\s*\bsilt\b|\bschluff\b.*\bton\b|\bton\b.*\bschluff\b|\blimos?\b.*\barcillas?\b|\blimons?\b.*\bargiles?\b"),
     ("mud", 2, r"^(% ?|fraction |part )?" + _UNDER_63 + r"( ?%| ?g| fraction| percent)?$"),

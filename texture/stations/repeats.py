@@ -21,13 +21,14 @@ def merge_repeats(
     Mass is what a patch of bed shares out, so fractions are averaged, not log-ratios: the log-ratio mean of 0
     and 40 % gravel is 4.5 %. A row that knows only some parts counts for those; the others are scaled to what is
     left. Slices of one core (rows that begin at different depths) are weighted by their thickness above the recipe's
-    `surface_m` and count as one sample. Rows told only in words give way to a measured row. Hard ground is never merged.
+    `surface_m` and count as one sample. Rows told only in words or by a median give way to a measured row. Hard ground is
+    never merged. Limits of rows that are not exact are averaged with the exact values beside them.
 
     Parameters
     ----------
     rows : DataFrame
         Used and evidence rows in reading order, with survey, longitude, latitude, mud, sand, gravel, kind,
-        described_class, resolution, top_m and thickness_m (down to `surface_m`; NaN where the lower end is unknown).
+        described_class, resolution, `<part>_low`, `<part>_high`, median_phi, top_m and thickness_m (down to `surface_m`; NaN where the lower end is unknown).
     copies : bool array, shape (n_rows,), optional
         Rows that stand in another spreadsheet too, under the survey and place of their original; they join its group
         without counting.
@@ -43,12 +44,14 @@ def merge_repeats(
     --------
     >>> rows = pd.DataFrame({"survey": "a", "longitude": [3.0, 3.0], "latitude": [54.0, 54.0], "mud": [0.2, 0.4],
     ...     "sand": [0.8, 0.2], "gravel": [0.0, 0.4], "kind": "sieve", "described_class": "", "resolution": 0.005,
+    ...     **{f"{p}_{e}": float("nan") for p in PARTS for e in ("low", "high")}, "median_phi": float("nan"),
     ...     "top_m": 0.0, "thickness_m": 0.1})
     >>> merge_repeats(rows)[0][["mud", "sand", "gravel", "repeats"]].values.round(6).tolist()
     [[0.3, 0.5, 0.2, 2.0]]
     """
     n = len(rows)
-    hard, words = ((rows["kind"] == kind).to_numpy() for kind in ("hard_ground", "description"))
+    hard = (rows["kind"] == "hard_ground").to_numpy()
+    words = rows["kind"].isin(["description", "median_only"]).to_numpy()
     key = pd.DataFrame(
         {
             "survey": rows["survey"].to_numpy(),
@@ -131,6 +134,7 @@ def _average(
     for k, part in enumerate(PARTS):
         stations.loc[several, part] = mean[several, k]
         stations.loc[several, f"repeat_sd_{part}"] = spread[several, k]
+    _average_limits(rows[take], values, mean, stations, several, index, weight)
     largest = pd.Series(rows["resolution"].to_numpy()[take]).groupby(index).max()
     stations.loc[largest.index, "resolution"] = largest.to_numpy()
     full = np.isfinite(mean).all(axis=1) & several & (stations["kind"] == "partial").to_numpy()
@@ -138,6 +142,36 @@ def _average(
         kinds = rows["kind"].to_numpy()[take]
         better = pd.Series(kinds)[kinds != "partial"].groupby(index[kinds != "partial"]).first()
         stations.loc[full, "kind"] = better.reindex(np.flatnonzero(full)).fillna("partial").to_numpy()
+
+
+def _average_limits(
+    rows: pd.DataFrame,
+    values: FloatArray,
+    mean: FloatArray,
+    stations: pd.DataFrame,
+    several: npt.NDArray[np.bool_],
+    index: npt.NDArray[np.int64],
+    weight: FloatArray,
+) -> None:
+    """Mean of the limits in groups where any row has them, and mean of the median sizes."""
+    n = len(several)
+
+    def averaged(numbers: FloatArray) -> FloatArray:
+        known = np.isfinite(numbers)
+        total = np.bincount(index, weights=np.where(known, weight * numbers, 0.0), minlength=n)
+        with np.errstate(invalid="ignore", divide="ignore"):
+            return np.asarray(total / np.bincount(index, weights=weight * known, minlength=n))
+
+    stations.loc[several, "median_phi"] = averaged(rows["median_phi"].to_numpy(dtype=np.float64))[several]
+    limits = {name: rows[name].to_numpy(dtype=np.float64) for part in PARTS for name in (f"{part}_low", f"{part}_high")}
+    inexact = np.isfinite(np.column_stack(list(limits.values()))).any(axis=1)
+    touched = several & (np.bincount(index, weights=inexact, minlength=n) > 0)
+    for k, part in enumerate(PARTS):
+        for end, outermost in (("low", np.fmin), ("high", np.fmax)):
+            given = limits[f"{part}_{end}"]
+            found = outermost(averaged(np.where(np.isfinite(given), given, values[:, k])), mean[:, k])
+            found = np.where(np.isfinite(mean[:, k]), np.clip(found, 0.0, 1.0), np.nan)
+            stations.loc[several, f"{part}_{end}"] = np.where(touched, found, np.nan)[several]
 
 
 def _consistent(

@@ -21,6 +21,7 @@ from texture.stations.files import Cell, Sheet, is_blank
 from texture.stations.fractions import Shares, no_shares, share_out
 from texture.stations.headings import PARTS, role_of
 from texture.stations.joins import Joined
+from texture.stations.medians import medians_of
 from texture.stations.metres import from_metres, from_zones
 from texture.stations.positions import Positions, is_projected, read_degrees
 from texture.stations.size_shares import shares_from_sizes
@@ -28,7 +29,9 @@ from texture.stations.sources import Source
 from texture.stations.tables import Table
 from texture.stations.where import Where
 
-__all__ = ["bare_places", "read_rows"]
+__all__ = ["LIMIT_COLUMNS", "bare_places", "read_rows"]
+
+LIMIT_COLUMNS = tuple(f"{part}_{end}" for part in ("mud", "sand", "gravel") for end in ("low", "high"))
 
 
 def read_rows(
@@ -55,7 +58,8 @@ def read_rows(
     log = AuditLog()
     shares = _shares(source, positions, block, intake, detection_limit, rows, log)
     notes.extend((*positions.notes, *shares.notes))
-    fates = judge(source, positions, shares, log)
+    median = medians_of(source, shares, notes, log)
+    fates = judge(source, positions, shares, median, log)
     fate, reason = fates.fate, fates.reason
     audit.take_over(log, without=rows[fate == "not_samples"])
     depth = metres_of(source, "depth", notes)
@@ -65,6 +69,7 @@ def read_rows(
     hard = fate == "evidence"
     parts = np.where(hard[:, None], np.nan, np.column_stack([shares.mud, shares.sand, shares.gravel]))
     kind = np.where(np.isfinite(parts).all(axis=1), block.method, "partial")
+    kind = np.where(np.isnan(parts).all(axis=1) & np.isfinite(median), "median_only", kind)
     kind = np.where(hard, "hard_ground", np.where(fates.described != "", "description", kind))
     frame = pd.DataFrame(
         {
@@ -85,6 +90,8 @@ def read_rows(
             "position_accuracy_m": positions.accuracy_m,
             "description": texts_of(source, "description", ""),
             "described_class": fates.described,
+            **_limit_columns(shares, hard),
+            "median_phi": np.where(hard, np.nan, median),
             "top_m": np.nan_to_num(top),
             "thickness_m": _thickness(top, bottom, intake.surface_m),
             "fate": fate,
@@ -116,6 +123,7 @@ def bare_places(joined: Joined, block: Samples) -> pd.DataFrame:
     frame["position_accuracy_m"] = positions.accuracy_m[hard]
     frame["description"] = ""
     frame["described_class"] = ""
+    frame[[*LIMIT_COLUMNS, "median_phi"]] = np.nan
     frame["top_m"], frame["thickness_m"] = 0.0, np.nan
     frame["fate"] = "evidence"
     frame["reason"] = [words[int(i)] for i in hard]
@@ -202,7 +210,7 @@ def _shares(
     if source.sizes:
         return shares_from_sizes(table, source.sizes, block, intake, audit)
     parts = [role for role in PARTS if role in columns]
-    if not parts and "description" not in columns:
+    if not parts and not {"description", "median_size"} & set(columns):
         raise _no_column(table, "a column of mud, sand or gravel, or of words for the bottom", "name it")
     if not parts:
         return no_shares(len(rows))
@@ -215,6 +223,11 @@ def _shares(
     placed = np.isfinite(positions.longitude)
     tolerance = intake.sum_tolerance
     return share_out(numbers, cells, columns, block, table.where, rows, audit, placed, tolerance, detection_limit)
+
+
+def _limit_columns(shares: Shares, hard: npt.NDArray[np.bool_]) -> dict[str, npt.NDArray[np.float64]]:
+    limits = np.stack([shares.low, shares.high], axis=2).reshape(len(hard), 6)
+    return dict(zip(LIMIT_COLUMNS, np.where(hard[:, None], np.nan, limits).T, strict=True))
 
 
 def _check_numeric(table: Table, column: Column, numbers: Numbers) -> None:

@@ -13,8 +13,9 @@ from texture.errors import CompositionError
 from texture.recipe import Intake, Samples
 from texture.stations.audit import AuditLog
 from texture.stations.cells import Reading, read_numbers, unreadable_hint
-from texture.stations.fractions import OF_LIMIT, Shares
+from texture.stations.fractions import Shares
 from texture.stations.headings import is_weight, plain
+from texture.stations.limits import ABOUT, OF_LIMIT
 from texture.stations.sizes import SAME_LIMIT_PHI, SizeColumn
 from texture.stations.tables import Table
 
@@ -55,8 +56,9 @@ def shares_from_sizes(
     n = len(table.rows)
     rows = np.asarray(table.rows, dtype=np.int64)
     problem = np.full(n, "", dtype=object)
-    amounts, half, given = _amounts(table, columns, block, rows, problem, audit)
-    limits, amounts, note = _as_classes(table, columns, amounts, given & (problem == ""), intake.sum_tolerance)
+    amounts, half, given, ends = _amounts(table, columns, block, rows, problem, audit)
+    good = given & (problem == "")
+    limits, amounts, note = _as_classes(table, columns, amounts, good, intake.sum_tolerance)
     negative = (amounts < -1e-9).any(axis=1) & given
     problem[negative & (problem == "")] = "a size class is negative"
     total = amounts.sum(axis=1)
@@ -81,7 +83,31 @@ def shares_from_sizes(
             f"{table.where.text()}: the coarsest class ends at {2.0 ** -limits[0]:.4g} mm and basis is whole: gravel is taken as none; "
             'say basis = "below_2mm" if the laboratory took it off before'
         )
-    return Shares(parts[:, 0], parts[:, 1], parts[:, 2], resolution, given, problem, tuple(notes))
+    low, high = np.full((2, n, 3), np.nan)
+    inexact = used & (ends[0] != ends[1]).any(axis=1) & np.isfinite(parts).all(axis=1)
+    if inexact.any():
+        low[inexact], high[inexact] = _between(table, columns, ends, limits, inexact, intake, parts[inexact])
+    return Shares(parts[:, 0], parts[:, 1], parts[:, 2], resolution, given, problem, low, high, tuple(notes))
+
+
+def _between(
+    table: Table,
+    columns: Sequence[SizeColumn],
+    ends: tuple[FloatArray, FloatArray],
+    as_read: FloatArray,
+    rows: npt.NDArray[np.bool_],
+    intake: Intake,
+    parts: FloatArray,
+) -> tuple[FloatArray, FloatArray]:
+    """Limits of the parts of some rows: the parts with every inexact class at its lower, then at its upper end."""
+    low, high = parts.copy(), parts.copy()
+    for amounts in ends:
+        limits, classes, _ = _as_classes(table, columns, amounts, rows, intake.sum_tolerance)
+        classes = np.maximum(classes[rows], 0.0)
+        told = (classes.sum(axis=1) > 0.0) & np.array_equal(limits, as_read)
+        found = _parts(limits, classes[told], intake, table)[0]
+        low[told], high[told] = np.minimum(low[told], found), np.maximum(high[told], found)
+    return np.maximum(low, 0.0), np.minimum(high, 1.0)
 
 
 def _amounts(
@@ -91,19 +117,23 @@ def _amounts(
     rows: npt.NDArray[np.int64],
     problem: npt.NDArray[np.object_],
     audit: AuditLog,
-) -> tuple[FloatArray, FloatArray, npt.NDArray[np.bool_]]:
-    """Numbers of all size columns, half width of the roundest one, and which rows give anything."""
+) -> tuple[FloatArray, FloatArray, npt.NDArray[np.bool_], tuple[FloatArray, FloatArray]]:
+    """Numbers of all size columns, half width of the roundest one, which rows give anything, and the ends of what is inexact."""
     n, k = len(rows), len(columns)
-    amounts, half = np.full((n, k), np.nan), np.full((n, k), np.nan)
+    amounts, half, least, most = np.full((4, n, k), np.nan)
     given = np.zeros(n, dtype=bool)
     for j, column in enumerate(columns):
         cells = table.columns[column.index]
         place = table.where.at(column.heading)
         numbers = read_numbers(cells, place, table.rows)
-        value = np.where(numbers.reading == Reading.BELOW, OF_LIMIT * numbers.value, numbers.value)
+        below, between, about = (numbers.reading == r for r in (Reading.BELOW, Reading.RANGE, Reading.ABOUT))
+        value = np.where(below, OF_LIMIT * numbers.value, numbers.value)
         value = np.where(numbers.reading == Reading.TRACE, 0.0, value)
+        width = np.where(between, numbers.half_width, np.where(about, ABOUT * value, 0.0))
+        least[:, j] = np.where(below, 0.0, value - width)
+        most[:, j] = np.where(below, numbers.value, value + width)
         given |= np.isfinite(value)
-        for reading, rule in ((Reading.BELOW, "below a limit: 0.65 of the limit"), (Reading.TRACE, "trace in a size class: nothing"), (Reading.ABOUT, "about: the number itself"), (Reading.MARKED, "number with a mark or unit: the number")):  # fmt: skip
+        for reading, rule in ((Reading.BELOW, "below a limit: 0.65 of the limit, and anything from 0 to it"), (Reading.TRACE, "trace in a size class: nothing"), (Reading.RANGE, "range: its middle, and anything between its ends"), (Reading.ABOVE, "above a limit: the limit"), (Reading.ABOUT, "about: within a fifth of it"), (Reading.MARKED, "number with a mark or unit: the number")):  # fmt: skip
             hit = [int(i) for i in np.flatnonzero(numbers.reading == reading)]
             audit.add(place, rows[hit], [cells[i] for i in hit], value[hit], rule)
         for i in map(int, np.flatnonzero((numbers.reading == Reading.UNREADABLE) & (problem == ""))):
@@ -111,12 +141,13 @@ def _amounts(
         amounts[:, j], half[:, j] = value, numbers.half_width
     blank = np.isnan(amounts) & given[:, None]
     if block.blank_means == "zero":
-        amounts[blank] = 0.0
+        amounts[blank] = least[blank] = most[blank] = 0.0
     for i in map(int, np.flatnonzero((np.isnan(amounts) & given[:, None]).any(axis=1) & (problem == ""))):
         j = int(np.argmax(np.isnan(amounts[i])))
         problem[i] = f'size class "{columns[j].heading}" is blank; say blank_means = "zero" if that is what blank says'
-    amounts[~given | (problem != "")] = np.nan
-    return amounts, np.nanmax(np.where(np.isfinite(half), half, 0.0), axis=1), given
+    left = ~given | (problem != "")
+    amounts[left], least[left], most[left] = np.nan, 0.0, 0.0
+    return amounts, np.nanmax(np.where(np.isfinite(half), half, 0.0), axis=1), given, (least, most)
 
 
 def _as_classes(

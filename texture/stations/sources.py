@@ -40,7 +40,12 @@ class Source:
     @property
     def has_shares(self) -> bool:
         """Whether the table tells what its samples consist of."""
-        return bool(self.sizes) or any(role in self.columns for role in (*PARTS, "description"))
+        return self.is_measured or any(role in self.columns for role in ("description", "median_size"))
+
+    @property
+    def is_measured(self) -> bool:
+        """Whether the table holds measured shares rather than words or a median size."""
+        return bool(self.sizes) or any(role in self.columns for role in PARTS)
 
 
 def find_source(block: Samples, label: str | None = None) -> Source:
@@ -66,7 +71,9 @@ def find_source(block: Samples, label: str | None = None) -> Source:
     if not found:
         raise no_table(candidates)
     sources = [s for s in found if isinstance(s, Source)]
-    results = next((s for s in sources if s.has_shares and "id" in s.columns), None)
+    whole: list[Source] = []
+    with_ids = sorted((s for s in sources if s.has_shares and "id" in s.columns), key=lambda s: not s.is_measured)
+    results = next(iter(with_ids), None)
     source = None
     if block.join is None:
         whole = [s for s in sources if s.has_position and s.has_shares]
@@ -77,8 +84,11 @@ def find_source(block: Samples, label: str | None = None) -> Source:
                 f"{sheets[0].file}: samples on {len(shown)} sheets, {names}; give each a samples block of its own with its sheet"
             )
         source = next(iter(shown or whole), None)
+    if source is not None and not source.is_measured and results is not None and results.is_measured:
+        source = None  # places with a word about each, and the results on another sheet
     if source is None and results is not None:
         source = _joined(results, _places(block, sheets, results), block)
+    source = source or next(iter(whole), None)
     if source is None:
         if isinstance(found[0], SampleError):
             raise found[0]

@@ -148,15 +148,28 @@ COLUMNS = (
     Case("size classes", text([["Station", "Latitude", "Longitude", ">2 mm (g)", "0.5-2 mm (g)", "0.063-0.5 mm (g)", "<0.063 mm (g)"], *[[*r[:3], r[5], 10.0 if r[4] > 10 else 0.0, r[4] - 10.0 if r[4] > 10 else r[4], r[3]] for r in rows()]])),
 )  # fmt: skip
 
-LIMIT = {"mud": 0.0065, "sand": 0.945 * 0.9935, "gravel": 0.055 * 0.9935}
+LIMIT = {
+    "mud": 0.0065, "sand": 0.945 * 0.9935, "gravel": 0.055 * 0.9935, "mud_low": 0.0, "mud_high": 0.01, "sand_low": 0.945 * 0.99,
+    "sand_high": 0.945, "gravel_low": 0.055 * 0.9935 - 0.0005, "gravel_high": 0.055 * 0.9935 + 0.0005,
+}  # fmt: skip
 CELLS = (
     Case("below a limit", text(table(A3_3="<1", A3_5=5.5)), changed={"A3": LIMIT}, audit=((4, "Mud (%)", "<1", "0.0065"), (4, "mud + sand + gravel", "1.0065", "1"))),
-    Case("a trace", text(table(A3_3="trace", A3_5=5.5)), changed={"A3": {"mud": 0.0025, "sand": 0.945 * 0.9975, "gravel": 0.055 * 0.9975}}, audit=((4, "Mud (%)", "trace", "0.0025"), (4, "mud + sand + gravel", "1.0025", "1"))),
+    Case("a trace", text(table(A3_3="trace", A3_5=5.5)), changed={"A3": {"mud": 0.0025, "sand": 0.945 * 0.9975, "gravel": 0.055 * 0.9975, "mud_low": 0.0, "mud_high": 0.005}}, audit=((4, "Mud (%)", "trace", "0.0025"), (4, "mud + sand + gravel", "1.0025", "1"))),
     Case("not determined", text(table(A2_5="nd", A2_4="n.d.")), changed={"A2": {"sand": NAN, "gravel": NAN, "kind": "partial"}}, audit=((3, "Sand (%)", "n.d.", ""), (3, "Gravel (%)", "nd", ""))),
     Case("a dash", text(table(A2_5="-")), audit=((3, "Gravel (%)", "-", ""), (3, "gravel", "", "0.05"))),
-    Case("a range", text(table(A2_3="25-35")), audit=((3, "Mud (%)", "25-35", "0.3"),)),
-    Case("about", text(table(A2_3="~30", A1_3="c. 12.5")), audit=((2, "Mud (%)", "c. 12.5", "0.125"), (3, "Mud (%)", "~30", "0.3"))),
-    Case("above a limit", text(table(A4_3=">95", A4_4="", A4_5="")), changed={"A4": {"mud": 0.975, "sand": NAN, "gravel": NAN, "kind": "partial"}}, audit=((5, "Mud (%)", ">95", "0.975"),)),
+    Case("a range", text(table(A2_3="25-35")), changed={"A2": {"mud_low": 0.25, "mud_high": 0.35, "sand_low": 0.6495, "sand_high": 0.6505, "gravel_low": 0.0495, "gravel_high": 0.0505}, "A1": {"mud_low": NAN, "mud_high": NAN}}, audit=((3, "Mud (%)", "25-35", "0.3"),)),
+    Case("ranges whose middles miss the sum", text(table(A2_3="20-30", A2_4="60-80", A2_5="0-20")), changed={"A2": {"mud": 0.24, "sand": 0.68, "gravel": 0.08, "mud_low": 0.2, "gravel_high": 0.2}}, audit=((3, "Mud (%)", "20-30", "0.25"), (3, "Sand (%)", "60-80", "0.7"), (3, "Gravel (%)", "0-20", "0.1"), (3, "mud", "0.25", "0.24"), (3, "sand", "0.7", "0.68"), (3, "gravel", "0.1", "0.08"))),
+    Case("ranges that no composition meets", text(table(A2_3="60-70", A2_4="60-80", A2_5=0)), gone=("A2",), counts={"rows_used": 5, "rows_set_aside": 1, "stations": 5}, aside=("parts sum to 1.2",), audit=((3, "Mud (%)", "60-70", "0.65"), (3, "Sand (%)", "60-80", "0.7"), (3, "mud", "0.65", "0.6"), (3, "sand", "0.7", "0.6"))),
+    Case("about", text(table(A2_3="~30", A1_3="c. 12.5")), changed={"A2": {"mud_low": 0.24, "mud_high": 0.36}, "A1": {"mud_low": 0.1, "mud_high": 0.15}}, audit=((2, "Mud (%)", "c. 12.5", "0.125"), (3, "Mud (%)", "~30", "0.3"))),
+    Case("above a limit", text(table(A4_3=">95", A4_4="", A4_5="")), changed={"A4": {"mud": 0.975, "sand": NAN, "gravel": NAN, "kind": "partial", "mud_low": 0.95, "mud_high": 1.0, "sand_low": NAN}}, audit=((5, "Mud (%)", ">95", "0.975"),)),
+    Case("what a limit leaves open", text(table(A2_3="<10", A2_4=90, A2_5="")), changed={"A2": {"mud": 0.065, "sand": 0.9, "gravel": 0.035, "mud_low": 0.0, "mud_high": 0.1, "gravel_low": 0.0, "gravel_high": 0.1}}, audit=((3, "Mud (%)", "<10", "0.065"), (3, "gravel", "", "0.035"))),
+    Case("a limit of what passed 2 mm", text([r[:5] for r in table(change=lambda r: [*r[:3], r[3], 99.5 if isinstance(r[3], str) else round(100 - r[3], 1), *r[5:]], A3_3="<1")]), block={"basis": "below_2mm"}, changed={r[0]: {"mud": 0.0065, "sand": 0.9935, "gravel": NAN, "kind": "partial", "mud_high": NAN} if r[0] == "A3" else {"sand": 1 - r[3] / 100, "gravel": NAN, "kind": "partial"} for r in BASE}, audit=((4, "Mud (%)", "<1", "0.0065"), (4, "mud + sand + gravel", "1.0015", "1"))),
+    Case("a limit in a size class", text([["Station", "Latitude", "Longitude", ">2 mm %", "0.25-2 mm %", "0.063-0.25 mm %", "<0.063 mm %"], *[[*r[:3], r[5], 0.0, r[4], r[3] if r[0] != "A3" else "<1"] for r in rows(A3_4=99.0)]]), changed={"A3": {"mud": 0.0065 / 0.9965, "sand": 0.99 / 0.9965, "gravel": 0.0, "mud_low": 0.0, "mud_high": 0.01, "sand_low": 0.99, "sand_high": 1.0}}, audit=((4, "<0.063 mm %", "<1", "0.65"),)),
+    Case("a median size beside the shares", text([[*HEAD, "D50 (µm)"], *[[*r, 250.0] for r in rows()]]), changed=everywhere(median_phi=2.0, kind="sieve"), notes=("median size in µm",)),
+    Case("nothing but a median size", text([*[[*r[:6], h] for r, h in zip(table(), ["Median phi", *[""] * 6], strict=True)], ["A7", 54.2, 3.3, "", "", "", 1.5]]), changed={"A7": {"kind": "median_only", "median_phi": 1.5, "longitude": 3.3, "latitude": 54.2, "mud": NAN, "sand": NAN, "gravel": NAN}}, counts={"rows_read": 8, "rows_used": 7, "stations": 7}),
+    Case("a median size whose unit its mud tells", text([[*HEAD, "Median grain size"], *[[*r, d] for r, d in zip(rows(A4_3=90.0, A4_4=10.0), [0.25, 0.125, 0.5, 0.03125, 2.0, 0.25], strict=True)]]), changed={"A3": {"median_phi": 1.0}, "A4": {"median_phi": 5.0, "mud": 0.9, "sand": 0.1}}, notes=("median size in mm, told by the mud of the same rows",)),
+    Case("a median size without a unit", text([[*HEAD, "Median grain size"], *[[*r, d] for r, d in zip(rows(), [0.25, 0.125, 0.5, 1.0, 2.0, 0.25], strict=True)]]), changed=everywhere(median_phi=NAN), notes=("it may be phi or mm; DOUBT",)),
+    Case("a mean size in phi", text([[*HEAD, "Mz (phi)"], *[[*r, 2.5] for r in rows()]]), changed=everywhere(median_phi=2.5), notes=("mean size, taken for the median, in phi",)),
     Case("percent signs in cells", text(table(["Station", "Latitude", "Longitude", "Mud", "Sand", "Gravel", "Remarks"], change=lambda r: [*r[:3], *(f"{v} %" for v in r[3:6]), r[6]]))),
     Case("footnote marks", text(table(A2_3="30.0*", A5_5="50 a")), audit=((3, "Mud (%)", "30.0*", "0.3"), (6, "Gravel (%)", "50 a", "0.5"))),
     Case("codes for missing", text(table(A2_5=-999, A4_5=-99.9)), audit=((3, "Gravel (%)", "-999", ""), (3, "gravel", "", "0.05"), (5, "Gravel (%)", "-99.9", ""), (5, "gravel", "", "0"))),
