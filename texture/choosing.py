@@ -33,8 +33,8 @@ class Tried:
     treatment : Treatment
     held_out : HeldOut
     error : float
-        Sum over parts of the mean squared error relative to the part's variance; lower is better, the number of parts
-        is what their means would score.
+        Sum over parts of the mean squared error relative to the part's variance; lower is better, and their plain
+        means would score the number of parts.
     above_best : float
         How much `error` lies above that of the best candidate.
     standard_error : float
@@ -109,30 +109,12 @@ def warm_start(treatment: Treatment, plain: Learned) -> CovarianceSet | None:
     return CovarianceSet([*plain.structure, indicator])
 
 
-def relative_error(held_out: HeldOut, measured: Floats) -> Floats:
-    """Each station's share in the sum over parts of squared error relative to the part's variance, shape (n,).
+def choose(treatments: list[Treatment], held_out: list[HeldOut], measured: Floats, limit: float) -> list[Tried]:
+    """Compare treatments, the plain one first where it is among them, and mark the one to take.
 
-    Parameters
-    ----------
-    held_out : HeldOut
-    measured : float array, shape (n, parts)
-        NaN where a part is unknown or not to be scored.
-    """
-    share = np.zeros(len(measured))
-    for part in range(measured.shape[1]):
-        known = np.isfinite(measured[:, part])
-        spread = float(measured[known, part].var()) if known.any() else 0.0
-        if spread > 0.0:
-            error = (held_out.predicted[known, part] - measured[known, part]) ** 2
-            share[known] += error / spread / known.sum()
-    return share
-
-
-def choose(treatments: list[Treatment], held_out: list[HeldOut], measured: Floats) -> list[Tried]:
-    """Compare treatments, the simplest first, and mark the one to take.
-
-    The lowest error wins among those whose mean errors are balanced, or among all where none is; the simplest one
-    within one standard error of it is taken instead.
+    The lowest error wins among those whose mean errors are balanced, or among all where none is. The first is taken
+    instead where it is among them and within one standard error. What was measured below the limit is known
+    to lie between 0 and the limit and no better: a prediction in between has no error there.
 
     Parameters
     ----------
@@ -141,29 +123,35 @@ def choose(treatments: list[Treatment], held_out: list[HeldOut], measured: Float
         On the same folds.
     measured : float array, shape (n, parts)
         NaN where a part is unknown or not to be scored.
+    limit : float
+        The laboratory's.
     """
-    shares = [relative_error(h, measured) for h in held_out]
+    errors = [_errors(h.predicted, measured, limit) for h in held_out]
+    shares = [_relative(e, measured) for e in errors]
     error = [float(s.sum()) for s in shares]
-    balanced = [_balanced(h, measured) for h in held_out]
+    balanced = [
+        bool((np.abs(np.nanmean(e, axis=0)) <= MOST_MEAN_ERROR * np.nanmean(measured, axis=0)).all()) for e in errors
+    ]
     open_to = [i for i in range(len(error)) if balanced[i] or not any(balanced)]
     best = min(open_to, key=lambda i: error[i])
     spread = [float(np.sqrt(len(s)) * (s - shares[best]).std()) for s in shares]
-    taken = next(i for i in open_to if error[i] - error[best] <= spread[i])
+    taken = 0 if 0 in open_to and error[0] - error[best] <= spread[0] else best
     return [
         Tried(treatments[i], held_out[i], error[i], error[i] - error[best], spread[i], balanced[i], i == taken)
         for i in range(len(error))
     ]
 
 
-def _balanced(held_out: HeldOut, measured: Floats) -> bool:
-    for part in range(measured.shape[1]):
-        known = np.isfinite(measured[:, part])
-        if not known.any():
-            continue
-        mean = float(measured[known, part].mean())
-        if abs(float(held_out.predicted[known, part].mean()) - mean) > MOST_MEAN_ERROR * mean:
-            return False
-    return True
+def _errors(predicted: Floats, measured: Floats, limit: float) -> Floats:
+    """Prediction minus measurement, shape (n, parts); NaN where nothing was measured."""
+    return predicted - np.where(measured < limit, np.clip(predicted, 0.0, limit), measured)
+
+
+def _relative(errors: Floats, measured: Floats) -> Floats:
+    """Each station's share in the sum over parts of the mean squared error relative to the part's variance, shape (n,)."""
+    spread = np.nanvar(measured, axis=0)
+    weight = np.where(spread > 0.0, 1.0 / np.where(spread > 0.0, spread, 1.0), 0.0) / np.isfinite(measured).sum(axis=0)
+    return np.asarray(np.nansum(errors**2 * weight, axis=1))
 
 
 def limit_effect(learned: Learned, method: Method, places: Floats) -> LimitEffect | None:

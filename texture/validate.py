@@ -115,7 +115,7 @@ def validate_methods(
         held_out = [run(recipe.method.name, learned) for learned in treated]
         methods = [run(name, plain) for name in compared]
     scored = np.where(observations.measured[:, None], observations.fractions, np.nan)
-    tried = choose([learned.treatment for learned in treated], held_out, scored)
+    tried = choose([learned.treatment for learned in treated], held_out, scored, recipe.composition.detection_limit)
     taken = next(i for i, t in enumerate(tried) if t.chosen)
     effect = limit_effect(treated[taken], recipe.method, places[:: max(1, -(-len(places) // MOST_LIMIT_CELLS))])
     reach_m = validated_reach_m(folds.held_out_distances(observations.points))
