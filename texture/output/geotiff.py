@@ -46,7 +46,7 @@ class PixelGrid:
     note: str = ""
 
 
-def pixel_grid(target: Target, cell_size_m: float | None = None) -> PixelGrid:
+def pixel_grid(target: Target, cell_size_m: float | None = None, resample: bool = False) -> PixelGrid:
     """Lay pixels over a target: a raster's own cells, or a regular resample of a curvilinear grid.
 
     Parameters
@@ -55,6 +55,8 @@ def pixel_grid(target: Target, cell_size_m: float | None = None) -> PixelGrid:
     cell_size_m : float, optional
         Pixel size of the resample; by default the side of a square of the median water cell's area, to two
         digits.
+    resample : bool
+        Resample a raster too, such as one in degrees for a map in metres.
 
     Returns
     -------
@@ -67,7 +69,7 @@ def pixel_grid(target: Target, cell_size_m: float | None = None) -> PixelGrid:
     OutputError
         If the pixels are so small that the image has more than 4e8 of them.
     """
-    if target.kind == "raster":
+    if target.kind == "raster" and not resample:
         return _own_cells(target)
     return _resample(target, cell_size_m)
 

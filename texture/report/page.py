@@ -9,6 +9,7 @@ import numpy as np
 
 from texture.report.charts import draw_scatter, draw_variograms
 from texture.report.encode import Picture, picture
+from texture.report.explorer import explorer
 from texture.report.maps import EVIDENCE_COLOURS, Layer, draw_maps
 from texture.report.tables import page_tables
 
@@ -49,6 +50,7 @@ def write_page(result: Result, map_picture: Picture, settings: str, versions: st
         title=found.recipe.title,
         method_line=_method_line(result),
         answer=result.answer(),
+        explorer=explorer(result),
         figures={"parts": map_picture, **_figures(result)},
         tables=page_tables(result),
         map_notes=_map_notes(result),
