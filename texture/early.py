@@ -2,15 +2,21 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from pathlib import Path
+from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.typing import NDArray
 
-from texture.recipe import Recipe
+from texture.errors import TargetError
+from texture.recipe import Mobility, Recipe
 from texture.targets import Target
 
-__all__ = ["check_early", "rim_cells"]
+if TYPE_CHECKING:
+    from texture.bed import Condition
+
+__all__ = ["check_early", "read_conditions", "rim_cells"]
 
 
 def check_early(recipe: Recipe, target: Target) -> None:
@@ -25,6 +31,7 @@ def check_early(recipe: Recipe, target: Target) -> None:
 
     check_outputs(target, recipe)
     rim_cells(recipe, target)
+    read_conditions(recipe, target)
 
 
 def rim_cells(recipe: Recipe, target: Target) -> NDArray[np.bool_] | None:
@@ -34,3 +41,42 @@ def rim_cells(recipe: Recipe, target: Target) -> NDArray[np.bool_] | None:
     from texture.targets.drawn import drawn_cells
 
     return drawn_cells(recipe.rim.sides, target)
+
+
+def read_conditions(recipe: Recipe, target: Target) -> tuple[Condition, ...]:
+    """Read the waves and currents of the mobility screen onto the target's cells."""
+    return tuple(_condition(settings, target) for settings in recipe.mobility)
+
+
+def _condition(settings: Mobility, target: Target) -> Condition:
+    from texture.bed import Condition
+    from texture.bed.mobility import FLUSH_RATIO
+    from texture.targets.fields import LENGTH, SPEED, TIME, read_field
+
+    key = f'mobility "{settings.name}", '
+
+    def read(value: float | str | Path, name: str, units: Mapping[str, float]) -> NDArray[np.float64]:
+        return read_field(value, settings.file, target, key + name, units)
+
+    current = read(settings.current_m_s, "current_m_s", SPEED)
+    if settings.depth_m is not None:
+        depth = read(settings.depth_m, "depth_m", LENGTH)
+    elif target.depth_m is not None:
+        depth = target.depth_m
+    elif (current != 0.0).any():
+        raise TargetError(
+            f"{key}depth_m: a current needs the depth it flows in, and {target.name} has none; give depth_m"
+        )
+    else:
+        depth = np.full(target.n_cells, np.nan)
+    return Condition(
+        name=settings.name,
+        orbital_velocity_m_s=read(settings.orbital_velocity_m_s, "orbital_velocity_m_s", SPEED),
+        period_s=read(1.0 if settings.period_s is None else settings.period_s, "period_s", TIME),
+        kind=settings.kind or "peak",
+        current_m_s=current,
+        depth_m=depth,
+        angle_deg=settings.angle_deg,
+        fair_weather=settings.fair_weather,
+        flush_ratio=settings.flush_ratio or FLUSH_RATIO,
+    )

@@ -12,7 +12,7 @@ from typing import Any
 
 from texture.choosing import fit_candidates
 from texture.clock import Clock
-from texture.early import check_early, rim_cells
+from texture.early import check_early, read_conditions, rim_cells
 from texture.estimate import estimate_on
 from texture.mapping import make_mapper
 from texture.observations import observe
@@ -90,7 +90,7 @@ def build(
     TextureError
         One of its leaves, with a line that says where, what was found and what to do.
     """
-    from texture.bed import make_bed
+    from texture.bed import Water, make_bed, moved_by
     from texture.output import ResultFolder
     from texture.predict.second_opinion import second_opinion
     from texture.writing import write_all
@@ -111,7 +111,9 @@ def build(
     with clock.stage("bed"):
         bed = make_bed(estimate.fractions, estimate.evidence, target, recipe.bed, recipe.rim, recipe.composition.parts,
                        rim_cells(recipe, target))  # fmt: skip
-    result = Result(found, estimate, per_side, opinion, bed, clock)
+        water = Water(recipe.bed.water.temperature_c, recipe.bed.water.salinity)
+        moved = tuple(moved_by(condition, bed, target, water) for condition in read_conditions(recipe, target))
+    result = Result(found, estimate, per_side, opinion, bed, clock, moved=moved)
     with clock.stage("write"), progress.stage("write"):
         return write_all(result, folder, Path(recipe_path))
 

@@ -20,9 +20,11 @@ __all__ = [
     "Erosion",
     "Grain",
     "Intake",
+    "Inventory",
     "Join",
     "Layer",
     "Method",
+    "Mobility",
     "Outputs",
     "Packing",
     "Recipe",
@@ -447,6 +449,74 @@ class Outputs(Settings):
         return self
 
 
+NotNegative = Annotated[float, Field(ge=0.0)]
+
+
+class Mobility(Settings):
+    """One `[[mobility]]` block: waves and a current, to see which sediment they would move.
+
+    A value is a number, the name of a variable in `file`, or a GeoTIFF.
+    """
+
+    name: Annotated[str, Field(min_length=1)] = Field(
+        description="name of the condition, such as a storm's return period"
+    )
+    file: Path | None = Field(None, description="NetCDF file on the target's cells that holds the variables named here")
+    orbital_velocity_m_s: NotNegative | str | Path = Field(0.0, description="of the waves near the bed")
+    kind: Literal["rms", "significant", "peak"] | None = Field(
+        None,
+        description="what that velocity is: root mean square of a sea, its significant value (twice that), or the amplitude "
+        "of one wave; mistaking one for another changes the stress by a factor of up to 2.8",
+    )
+    period_s: Positive | str | Path | None = Field(None, description="wave period")
+    current_m_s: NotNegative | str | Path = Field(0.0, description="depth-mean speed of the current")
+    depth_m: Positive | str | Path | None = Field(
+        None, description="depth that the current flows in; the target's own if absent"
+    )
+    angle_deg: Annotated[float, Field(ge=0.0, le=180.0)] = Field(
+        0.0, description="between waves and current; 0 gives the largest stress"
+    )
+    fair_weather: bool = Field(False, description="an ordinary day: mud far beyond its strength would be gone at once")
+    flush_ratio: Annotated[float, Field(ge=1.0)] | None = Field(
+        None, description="stress over the mud's critical stress that counts as far beyond; 3 if absent"
+    )
+
+    @model_validator(mode="after")
+    def _complete(self) -> Mobility:
+        waves = self.orbital_velocity_m_s != 0.0
+        if waves and self.kind is None:
+            raise ValueError(
+                f'"{self.name}": kind is missing; say whether the velocity is "rms", "significant" or "peak"'
+            )
+        if waves != (self.period_s is not None):
+            raise ValueError(f'"{self.name}": give orbital_velocity_m_s and period_s together')
+        if not waves and self.current_m_s == 0.0:
+            raise ValueError(
+                f'"{self.name}": has neither waves nor a current; give orbital_velocity_m_s or current_m_s'
+            )
+        if self.flush_ratio is not None and not self.fair_weather:
+            raise ValueError(f'"{self.name}": flush_ratio acts with fair_weather = true only')
+        for key in ("orbital_velocity_m_s", "period_s", "current_m_s", "depth_m"):
+            value = getattr(self, key)
+            if isinstance(value, str) and not value.lower().endswith((".tif", ".tiff")) and self.file is None:
+                raise ValueError(f'"{self.name}": {key} = "{value}" names a variable, but file is missing')
+        return self
+
+
+class Inventory(Settings):
+    """How the tonnes are counted out."""
+
+    depth_bands_m: tuple[float, ...] = Field(
+        (10.0, 20.0, 50.0, 100.0, 200.0), description="limits of the depth bands, from shallow to deep"
+    )
+
+    @model_validator(mode="after")
+    def _ascending(self) -> Inventory:
+        if list(self.depth_bands_m) != sorted(set(self.depth_bands_m)):
+            raise ValueError(f"depth_bands_m: expected limits from shallow to deep, found {list(self.depth_bands_m)}")
+        return self
+
+
 class Recipe(Settings):
     """The whole recipe."""
 
@@ -461,6 +531,8 @@ class Recipe(Settings):
     validation: Validation = Field(default_factory=Validation)
     bed: Bed = Field(default_factory=Bed)
     rim: Rim | None = None
+    mobility: tuple[Mobility, ...] = ()
+    inventory: Inventory = Field(default_factory=Inventory)
     outputs: Outputs = Field(default_factory=Outputs)
 
     @model_validator(mode="after")
@@ -477,6 +549,10 @@ class Recipe(Settings):
                 _check_composition(f"bed.layers[{i}].fill", layer.fill, parts, classes)
         if self.bed.land_fill != "nearest":
             _check_composition("bed.land_fill", self.bed.land_fill, parts, classes)
+        conditions = [m.name for m in self.mobility]
+        for name in conditions:
+            if conditions.count(name) > 1:
+                raise ValueError(f'mobility: the name "{name}" is given twice')
         if self.rim is not None and self.rim.classes is not None:
             _check_names("rim.classes", self.rim.classes, classes)
         if self.rim is not None and self.rim.composition is not None:

@@ -5,14 +5,14 @@ from __future__ import annotations
 import difflib
 import tomllib
 import typing
-from collections.abc import Iterable, Iterator, Mapping
+from collections.abc import Callable, Iterable, Iterator, Mapping
 from pathlib import Path
 from typing import Any
 
 from pydantic import BaseModel, ValidationError
 
 from texture.errors import RecipeError
-from texture.recipe import Recipe, Samples
+from texture.recipe import Mobility, Recipe, Samples
 
 __all__ = ["read_recipe", "resolved_toml"]
 
@@ -225,7 +225,25 @@ def _absolute(recipe: Recipe, base: Path, recipe_name: str) -> Recipe:
     rim = recipe.rim
     if rim is not None and isinstance(rim.sides, Path):
         rim = rim.model_copy(update={"sides": fix(rim.sides, "rim.sides")})
+    mobility = tuple(_absolute_condition(m, i, fix) for i, m in enumerate(recipe.mobility))
     output = fix(recipe.output, "output", must_exist=False)
     return recipe.model_copy(
-        update={"samples": samples, "target": target, "rim": rim, "outputs": outputs, "output": output}
+        update={
+            "samples": samples,
+            "target": target,
+            "rim": rim,
+            "mobility": mobility,
+            "outputs": outputs,
+            "output": output,
+        }
     )
+
+
+def _absolute_condition(condition: Mobility, i: int, fix: Callable[[Path | None, str], Path | None]) -> Mobility:
+    """A condition with absolute paths; values that end like a GeoTIFF become paths."""
+    changes: dict[str, Any] = {"file": fix(condition.file, f"mobility[{i}].file")}
+    for key in ("orbital_velocity_m_s", "period_s", "current_m_s", "depth_m"):
+        value = getattr(condition, key)
+        if isinstance(value, (str, Path)) and str(value).lower().endswith((".tif", ".tiff")):
+            changes[key] = fix(Path(value), f"mobility[{i}].{key}")
+    return condition.model_copy(update=changes)

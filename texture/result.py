@@ -12,7 +12,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 if TYPE_CHECKING:
-    from texture.bed import Bed
+    from texture.bed import Bed, Moved
     from texture.clock import Clock
     from texture.estimate import Estimate
     from texture.mapping import Mapper
@@ -134,6 +134,8 @@ class Result:
     clock : Clock
     files : tuple of Path
         What was written.
+    moved : tuple of Moved
+        The mobility screen, one for each condition of the recipe.
     """
 
     found: Validated
@@ -143,6 +145,7 @@ class Result:
     bed: Bed
     clock: Clock
     files: tuple[Path, ...] = field(default=())
+    moved: tuple[Moved, ...] = ()
 
     @property
     def beyond_share(self) -> float:
@@ -182,6 +185,7 @@ class Result:
             "not_given": list(account.not_given),
             "packing": settings.packing,
             "hiding": settings.hiding,
+            "mobility": [mobility_record(m) for m in self.moved],
             "second_opinion": None if self.opinion is None else self.opinion.to_dict(),
             "answer": self.answer(),
             "seconds": {name: round(value, 3) for name, value in self.clock.seconds.items()},
@@ -209,12 +213,52 @@ class Result:
             f"  support     {100 * self.beyond_share:.1f} % of the water area is further than {found.reach_m / 1000:.1f} km from any sample"
         )
         lines.append(bed)
+        lines += mobility_lines(self.moved)
         if account.not_given:
             lines.append(f"  not given   {', '.join(account.not_given)}")
         return [*lines, *written_line(found.recipe, self.files), self.answer()]
 
     def __repr__(self) -> str:
         return "\n".join(self.summary_lines())
+
+
+def mobility_record(moved: Moved) -> dict[str, Any]:
+    """Numbers of one condition of the mobility screen; None where something is not known."""
+
+    def known(value: float) -> float | None:
+        return value if np.isfinite(value) else None
+
+    return {
+        "condition": moved.name,
+        "fair_weather": moved.fair_weather,
+        "median_stress_pa": known(moved.median_pa),
+        "largest_stress_pa": moved.largest_pa,
+        "share_without_a_value": moved.unknown_share,
+        "moving_share": {name: known(value) for name, value in moved.moving_share.items()},
+        "flushed_mud_share": known(moved.flushed_share),
+        "rim_moving_share": known(moved.rim_share),
+    }
+
+
+def mobility_lines(moved: tuple[Moved, ...]) -> list[str]:
+    """Say what each condition would move, and what of that a modeller should know before the first run."""
+    lines: list[str] = []
+    for m in moved:
+        shares = ", ".join(
+            f"{name} {'not known' if np.isnan(share) else f'{100 * share:.0f} %'}"
+            for name, share in m.moving_share.items()
+        )
+        line = f"  {'mobility' if not lines else '':<11} {m.name}: median stress {m.median_pa:.2f} Pa; moves, of the water area: {shares}"
+        if m.unknown_share:
+            line += f"; {100 * m.unknown_share:.1f} % has no value"
+        if m.flushed_share > 0.0:
+            line += f"; mud far beyond its strength on {100 * m.flushed_share:.1f} %: a model will flush it at once"
+        elif m.fair_weather and np.isnan(m.flushed_share):
+            line += "; the mud's critical stress is not given, so whether it stays cannot be told"
+        if not m.fair_weather and m.rim_share > 0.0:
+            line += f"; the rim itself erodes on {100 * m.rim_share:.0f} % of its edge"
+        lines.append(line)
+    return lines
 
 
 def rows_lines(stations: Stations) -> list[str]:

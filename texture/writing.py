@@ -76,6 +76,8 @@ def input_files(recipe: Recipe) -> list[Path]:
         *(s.file for s in recipe.samples), *(s.join.file for s in recipe.samples if s.join), recipe.target.file,
         recipe.target.land, recipe.outputs.names, recipe.outputs.into,
         recipe.rim.sides if recipe.rim and isinstance(recipe.rim.sides, Path) else None,
+        *(m.file for m in recipe.mobility),
+        *(v for m in recipe.mobility for v in (m.orbital_velocity_m_s, m.period_s, m.current_m_s, m.depth_m) if isinstance(v, Path)),
     )  # fmt: skip
     return list(dict.fromkeys(p for p in paths if p is not None))
 
@@ -121,7 +123,7 @@ def _write_bed(result: Result, aside: Path) -> None:
     )
 
     recipe, outputs = result.found.recipe, result.found.recipe.outputs
-    bed, cells = bed_dataset(result.bed, result.found.target, recipe), result.found.target.dims
+    bed, cells = bed_dataset(result.bed, result.found.target, recipe, result.moved), result.found.target.dims
     named = bed
     if outputs.names is not None:
         names = read_names(outputs.names)

@@ -4,6 +4,7 @@ from texture.bed.build import EVIDENCE, Account, Bed, make_bed, strength_known
 from texture.bed.classes import ClassProperties, class_properties
 from texture.bed.hiding import HIDING_WORDS
 from texture.bed.mixture_packing import PACKING_WORDS
+from texture.bed.mobility import Condition, Moved, moved_by
 from texture.bed.packing import dry_density, porosity
 from texture.bed.precision import single_fractions
 from texture.bed.readiness import BedArrays, Check, check_bed
@@ -22,12 +23,15 @@ __all__ = [
     "BedArrays",
     "Check",
     "ClassProperties",
+    "Condition",
+    "Moved",
     "Water",
     "check_bed",
     "class_properties",
     "critical_stress",
     "dry_density",
     "make_bed",
+    "moved_by",
     "porosity",
     "settling_velocity",
     "single_fractions",

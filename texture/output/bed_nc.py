@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -14,7 +15,7 @@ from texture.output.cf import global_attributes, on_cells
 if TYPE_CHECKING:
     import xarray as xr
 
-    from texture.bed import Bed, ClassProperties
+    from texture.bed import Bed, ClassProperties, Moved
     from texture.recipe import Bed as BedSettings
     from texture.recipe import Recipe
     from texture.targets import Target
@@ -33,7 +34,7 @@ COMMENT = (
 )
 
 
-def bed_dataset(bed: Bed, target: Target, recipe: Recipe) -> xr.Dataset:
+def bed_dataset(bed: Bed, target: Target, recipe: Recipe, moved: Sequence[Moved] = ()) -> xr.Dataset:
     """Lay the bed out as a CF dataset on the target's dimensions.
 
     Parameters
@@ -43,6 +44,8 @@ def bed_dataset(bed: Bed, target: Target, recipe: Recipe) -> xr.Dataset:
     recipe : Recipe
         Title, method and surveys for the attributes, and `outputs.precision`: in single precision the class
         fractions are rounded so that they sum to 1 exactly as stored; positions stay in double precision.
+    moved : sequence of Moved
+        Results of the mobility screen, on (condition, …).
 
     Returns
     -------
@@ -70,6 +73,10 @@ def bed_dataset(bed: Bed, target: Target, recipe: Recipe) -> xr.Dataset:
         class_name=("class", _strings(bed.classes.names), BED_VARIABLES["class_name"]),
         layer=("layer", np.arange(1, layers + 1, dtype=np.int32), BED_VARIABLES["layer"]),
     )
+    if moved:
+        dataset = dataset.assign(_mobility(moved, target, bed.classes)).assign_coords(
+            condition_name=("condition", _strings(tuple(m.name for m in moved)), BED_VARIABLES["condition_name"])
+        )
     samples = ", ".join(s.survey or s.file.stem for s in recipe.samples)
     method = recipe.method.name.replace("_", " ")
     source = f"{method} of grab samples ({samples}) on {target.name}"
@@ -115,6 +122,22 @@ def _cell_variables(bed: Bed, target: Target, settings: BedSettings) -> dict[str
     ):
         variables[name] = on_cells(target, (), values, **BED_VARIABLES[name])
     return variables
+
+
+def _mobility(moved: Sequence[Moved], target: Target, classes: ClassProperties) -> dict[str, xr.Variable]:
+    import xarray as xr
+
+    share = np.array([[m.moving_share[name] for m in moved] for name in classes.names])
+    labels = {"coordinates": "class_name condition_name"}
+
+    def on(name: str, values: Any) -> xr.Variable:
+        return on_cells(target, ("condition",), values, "condition_name", **BED_VARIABLES[name])
+
+    return {
+        "skin_friction_stress": on("skin_friction_stress", np.stack([m.stress_pa for m in moved])),
+        "flushed_mud": on("flushed_mud", np.stack([m.flushed for m in moved]).astype(np.int8)),
+        "moving_area_share": xr.Variable(("class", "condition"), share, BED_VARIABLES["moving_area_share"] | labels),
+    }
 
 
 def _class_values(classes: ClassProperties, recipe: Recipe) -> dict[str, Any]:

@@ -65,6 +65,22 @@ BED_VARIABLES: dict[str, dict[str, Any]] = {
         "long_name": "1 where the cell is water, 0 where it is land",
         "units": "1",
     },
+    # on (condition, cells)
+    "skin_friction_stress": {
+        "long_name": "largest stress of waves and current on the grains of the surface",
+        "units": "Pa",
+        "comment": "Soulsby (1997), from the roughness of the grains; not total drag",
+    },
+    "flushed_mud": {
+        "long_name": "mud under a fair-weather stress far beyond its critical stress",
+        **flags({0: "no", 1: "yes"}),
+    },
+    # on (class, condition) and (condition)
+    "moving_area_share": {
+        "long_name": "share of the water area where the class lies at the surface and moves",
+        "units": "1",
+    },
+    "condition_name": {"long_name": "name of the condition of waves and current"},
     # on (class)
     "class_name": {"long_name": "name of the sediment class"},
     "class_part": {"long_name": "part of the map that the class is a share of"},

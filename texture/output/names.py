@@ -264,7 +264,7 @@ def read_names(path: Path, cell_dimensions: Iterable[str] | None = None) -> Name
     if cell_dimensions is not None:
         cells = list(cell_dimensions)
         coordinates = ["longitude", "latitude", "longitude_bounds", "latitude_bounds", "x", "y", "x_bounds", "y_bounds"]
-        names.check(["class", "layer", "corner", *cells], [*BED_VARIABLES, *coordinates, "crs"], path.name)
+        names.check(["class", "layer", "condition", "corner", *cells], [*BED_VARIABLES, *coordinates, "crs"], path.name)
     return names
 
 

@@ -6,7 +6,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from texture.bed import Account, Bed, Water, class_properties, strength_known
+from texture.bed import Account, Bed, Moved, Water, class_properties, strength_known
 from texture.errors import RecipeError
 from texture.output.bed_nc import bed_dataset
 from texture.output.folder import RESULTS
@@ -49,7 +49,11 @@ def bed_outline(target: Target, recipe: Recipe) -> xr.Dataset:
         rim_weight=flat[0],
         account=Account({}, {}, {}, 0.0, 0, 0, ()),
     )
-    return bed_dataset(bed, target, recipe).isel({dim: slice(0, 1) for dim in target.dims})
+    moved = [
+        Moved(m.name, False, flat[0], 0.5, 0.5, 0.0, dict.fromkeys(classes.names, 0.5), flat[0] > 1.0, 0.5, 0.5)
+        for m in recipe.mobility
+    ]
+    return bed_dataset(bed, target, recipe, moved).isel({dim: slice(0, 1) for dim in target.dims})
 
 
 def check_outputs(target: Target, recipe: Recipe) -> None:

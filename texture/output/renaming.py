@@ -85,9 +85,8 @@ def apply_names(dataset: xr.Dataset, names: Names, where: str = "names") -> xr.D
                 raise RecipeError(f'{where}: two variables would be called "{new}"; give each its own name')
             new_names.setdefault(name, []).append(new)
             made[new] = _shaped(name, piece, spec, names, where, timed)
-    made = _without_unused(
-        made, [names.dimensions.get("class", "class"), names.dimensions.get("layer", "layer")], new_names
-    )
+    labelled = [names.dimensions.get(d, d) for d in ("class", "layer", "condition")]
+    made = _without_unused(made, labelled, new_names)
     for variable in made.values():
         _rewrite_references(variable, new_names, made)
     _add_time(made, names, where)
@@ -221,8 +220,8 @@ def _add_time(made: dict[str, xr.Variable], names: Names, where: str) -> None:
 def _without_unused(
     made: dict[str, xr.Variable], dimensions: list[str], new_names: dict[str, list[str]]
 ) -> dict[str, xr.Variable]:
-    """Drop `class_name` and `layer` when nothing else is left on their dimension."""
-    labels = {new for name in ("class_name", "layer") for new in new_names.get(name, [])}
+    """Drop `class_name`, `layer` and `condition_name` when nothing else is left on their dimension."""
+    labels = {new for name in ("class_name", "layer", "condition_name") for new in new_names.get(name, [])}
     used = {d for name, variable in made.items() if name not in labels for d in variable.dims}
     unused = {d for d in dimensions if d not in used}
     return {n: v for n, v in made.items() if n not in labels or not unused.intersection(map(str, v.dims))}
@@ -276,7 +275,9 @@ def undo_names(dataset: xr.Dataset, names: Names) -> xr.Dataset:
     cells = tuple(ours.get(d, d) for d in str(dataset.attrs.get(CELL_ORDER, "")).split())
     made = {name: _in_order(variable, cells) for name, variable in made.items()}
     result = xr.Dataset(made)
-    result = result.set_coords([n for n in ("class_name", "layer", "longitude", "latitude", "x", "y") if n in made])
+    result = result.set_coords(
+        [n for n in ("class_name", "layer", "condition_name", "longitude", "latitude", "x", "y") if n in made]
+    )
     if names.values.layer_order == "bottom_first" and "layer" in result.dims:
         result = result.isel(layer=slice(None, None, -1))
     return result if names.halo is None else unpad(result, cells, names.halo.cells)
@@ -286,7 +287,7 @@ def _in_order(variable: xr.Variable, cells: tuple[str, ...]) -> xr.Variable:
     """Classes, layers, others, then the cells in the grid's own order; what is not on the cells stays."""
     if not cells or not set(cells) <= set(variable.dims) or "corner" in variable.dims:
         return variable
-    leading = [d for d in ("class", "layer") if d in variable.dims]
+    leading = [d for d in ("class", "layer", "condition") if d in variable.dims]
     others = [d for d in variable.dims if d not in (*leading, *cells)]
     return variable.transpose(*leading, *others, *cells)
 

@@ -36,6 +36,7 @@ def page_tables(result: Result) -> dict[str, Table]:
         "structure": _structure(result),
         "classes": _classes(result),
         "inventory": _inventory(result),
+        "mobility": _mobility(result),
         "rows": _rows(result),
         "set_aside": _set_aside(result),
         "audit": _audit(result),
@@ -175,6 +176,34 @@ def _inventory(result: Result) -> Table:
         ["class", "mass", "by the rim", "below least fraction"],
         rows,
         numeric=[1, 2, 3],
+    )
+
+
+def _mobility(result: Result) -> Table:
+    names = result.bed.classes.names
+
+    def percent(value: float) -> str:
+        return number(100.0 * value, 1)
+
+    rows = [
+        [
+            m.name,
+            number(m.median_pa, 2),
+            number(m.largest_pa, 2),
+            *(percent(m.moving_share[name]) for name in names),
+            percent(m.flushed_share),
+            percent(m.rim_share),
+        ]
+        for m in result.moved
+    ]
+    return Table(
+        "What named waves and currents would move. Stress: the largest in a wave period on the grains of the surface (Soulsby "
+        "1997), in Pa. Classes: percent of the water area where the class lies at the surface and the stress exceeds its "
+        "critical stress. Flushed: percent under a fair-weather stress far beyond the strength of the mud that lies there; a "
+        "model would carry it off at once. Rim: percent of the rim's edge that moves.",
+        ["condition", "median stress", "largest", *names, "mud flushed", "rim"],
+        rows,
+        numeric=list(range(1, len(names) + 5)),
     )
 
 
