@@ -30,9 +30,9 @@ def test_numbers_variables_and_units(tmp_path):
 
 
 def test_a_geotiff_is_read_under_each_centre(tmp_path):
-    pixels = np.arange(8.0, dtype=np.float32).reshape(2, 4)  # 2 km pixels, shifted half a cell to the west
+    pixels = np.arange(8.0, dtype=np.float32).reshape(2, 4)  # 2 km pixels, not in step with the cells
     pixels[0, 0] = -1.0
-    transform = rasterio.Affine(2000.0, 0.0, 499_500.0, 0.0, -2000.0, 4_904_000.0)
+    transform = rasterio.Affine(2000.0, 0.0, 499_700.0, 0.0, -2000.0, 4_904_000.0)
     with rasterio.open(
         tmp_path / "waves.tif", "w", driver="GTiff", height=2, width=4, count=1, dtype="float32", crs="EPSG:32626",
         transform=transform, nodata=-1.0,
@@ -40,9 +40,9 @@ def test_a_geotiff_is_read_under_each_centre(tmp_path):
         image.write(pixels, 1)
     found = read_field(tmp_path / "waves.tif", None, TARGET, "orbital_velocity_m_s", SPEED).reshape(4, 6)
     nan = np.nan
-    # Centres at 500.5, 501.5, … km lie on or right of 499.5, 501.5, 503.5, 505.5 km.
-    np.testing.assert_array_equal(found[0], [nan, 1, 1, 2, 2, 3])
-    np.testing.assert_array_equal(found[2], [4, 5, 5, 6, 6, 7])
+    # Centres at 500.5, 501.5, … km; pixels begin at 499.7, 501.7, 503.7 km.
+    np.testing.assert_array_equal(found[0], [nan, nan, 1, 1, 2, 2])
+    np.testing.assert_array_equal(found[2], [4, 4, 5, 5, 6, 6])
 
 
 @pytest.mark.parametrize(
