@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 from numpy.typing import NDArray
 
-from texture.mapping import Learned, learn, make_mapper
+from texture.mapping import Learned, learn, learn_all, make_mapper
 from texture.recipe import Recipe
 from texture.treatments import Presence, Shares, Treatment, candidates, plain_treatment
 
@@ -21,6 +21,7 @@ if TYPE_CHECKING:
 __all__ = ["LimitEffect", "Tried", "choose", "fit_candidates", "limit_effect", "warm_start", "with_columns_of"]
 
 Floats = NDArray[np.float64]
+MOST_LIMIT = 0.33  # a limit of a third of three parts would replace them all
 MOST_MEAN_ERROR = 0.1  # of a part's mean: a map that is further off has too much or too little of it overall
 
 
@@ -86,12 +87,10 @@ def fit_candidates(observations: Observations, recipe: Recipe) -> tuple[Learned,
     from texture.predict import METHODS
 
     plain = learn(plain_treatment(recipe.composition), observations, recipe.method)
-    found = []
-    for treatment in candidates(recipe.composition, observations, METHODS[recipe.method.name].has_variance):
-        same = type(treatment) is type(plain.treatment) and treatment == plain.treatment
-        start = warm_start(treatment, plain)
-        found.append(plain if same else learn(treatment, observations, recipe.method, start))
-    return plain, found
+    wanted = candidates(recipe.composition, observations, METHODS[recipe.method.name].has_variance)
+    others = [t for t in wanted if t != plain.treatment]
+    found = learn_all([(t, observations, warm_start(t, plain)) for t in others], recipe.method)
+    return plain, [plain] * (len(wanted) > len(others)) + found
 
 
 def warm_start(treatment: Treatment, plain: Learned) -> CovarianceSet | None:
@@ -169,15 +168,10 @@ def limit_effect(learned: Learned, method: Method, places: Floats) -> LimitEffec
     treatment = learned.treatment
     if isinstance(treatment, Shares):
         return None
+    limits = [treatment.limit / 2.0, min(treatment.limit * 2.0, MOST_LIMIT)]
+    others = learn_all([(treatment.with_limit(v), learned.observations, learned.structure) for v in limits], method)
     means = []
-    for factor in (1.0, 0.5, 2.0):
-        limit = treatment.limit * factor
-        if limit >= 1.0 / treatment.logratio.n_parts:
-            means.append((float("nan"),) * treatment.logratio.n_parts)
-            continue
-        other = learned
-        if factor != 1.0:
-            other = learn(treatment.with_limit(limit), learned.observations, method, learned.structure)
+    for other in (learned, *others):
         mapper = make_mapper(method.name, other, method)
         fractions = mapper.expected(*mapper.predict(places))
         means.append(tuple(float(v) for v in fractions.mean(axis=0)))

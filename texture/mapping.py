@@ -5,6 +5,7 @@ The map and its validation both come through here, so that what is validated is 
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING, Any
 
@@ -19,11 +20,11 @@ if TYPE_CHECKING:
     from texture.composition import LogRatio
     from texture.structure import CovarianceSet
 
-__all__ = ["Learned", "Mapper", "learn", "make_mapper"]
+__all__ = ["Learned", "Mapper", "learn", "learn_all", "make_mapper"]
 
 Floats = NDArray[np.float64]
-SWEEPS = 4
-"""Of censored values before the fit and after it. On 494 stations, 203 of them without gravel, the mean change of a value fell from
+SWEEPS = (4, 2)
+"""Of censored values, before the fit and after it. On 494 stations, 203 of them without gravel, the mean change of a value fell from
 0.07 in the first to 0.035 in the fourth and 0.006 in the eighth, against a noise of standard deviation 1.2."""
 
 
@@ -74,10 +75,34 @@ def learn(
     if start is None:
         start = _fitted(treatment, observations, values, noise, method, None).structure
     # Structure and censored values hang together: sweeps with one, a fit to the other, and sweeps again.
-    values, noise = _swept(treatment, Learned(treatment, observations, values, noise, start))
+    low, high = treatment.bounds(observations)
+    learned = Learned(treatment, observations, values, noise, start)
+    for _ in range(SWEEPS[0]):
+        values, noise = treatment.sweep(values, noise, low, high, *_without_each(learned, values, noise))
     learned = _fitted(treatment, observations, values, noise, method, start)
-    values, noise = _swept(treatment, learned)
+    for _ in range(SWEEPS[1]):
+        values, noise = treatment.sweep(values, noise, low, high, *_without_each(learned, values, noise))
+    values, noise = treatment.told(values, noise, low, high, *_without_each(learned, values, noise))
     return replace(learned, values=values, noise=noise)
+
+
+def learn_all(tasks: Sequence[tuple[Treatment, Observations, CovarianceSet | None]], method: Method) -> list[Learned]:
+    """`learn` for several treatments or sets of stations, on as many threads as compiled code uses.
+
+    Each is a sum in one order on one thread: the same bits on any number of cores.
+    """
+    from concurrent.futures import ThreadPoolExecutor
+
+    from numba import get_num_threads
+
+    with _one_blas_thread(), ThreadPoolExecutor(min(int(get_num_threads()), max(len(tasks), 1))) as pool:
+        return list(pool.map(lambda task: learn(task[0], task[1], method, task[2]), tasks))
+
+
+def _one_blas_thread() -> Any:
+    from threadpoolctl import threadpool_limits  # type: ignore[import-untyped]  # ships no annotations
+
+    return threadpool_limits(limits=1, user_api="blas")
 
 
 def _fitted(
@@ -102,39 +127,18 @@ def _fitted(
     return Learned(treatment, observations, values, noise, structure)
 
 
-def _swept(treatment: Censor, learned: Learned) -> tuple[Floats, Floats]:
-    values, noise = learned.values, learned.noise
-    low, high = treatment.bounds(learned.observations)
-    for _ in range(SWEEPS):
-        mean, variance = _without_each(learned, values, noise, low < high)
-        values, noise = treatment.sweep(values, noise, low, high, mean, variance)
-    return values, noise
-
-
-def _without_each(learned: Learned, values: Floats, noise: Floats, wanted: NDArray[np.bool_]) -> tuple[Floats, Floats]:
-    """Each station predicted from all others, shapes (n, k); the variance is of its sample without its own noise.
-
-    Where a station has no value of its own it is predicted only if `wanted`; NaN elsewhere.
-    """
-    from threadpoolctl import threadpool_limits  # type: ignore[import-untyped]  # ships no annotations
-
+def _without_each(learned: Learned, values: Floats, noise: Floats) -> tuple[Floats, Floats]:
+    """Each station predicted from all others, shapes (n, k); the variance is of its sample without its own noise."""
     from texture.predict import Kriging
     from texture.predict.leave_out import leave_out
 
-    points, structure = learned.observations.points, learned.structure
-    kriging = Kriging(structure).fit(points, values, noise_variance=noise, survey=learned.survey)
-    # One thread: the matrices of tiles are small, and sums in one order give the same bits on any machine.
-    with threadpool_limits(limits=1, user_api="blas"):
+    structure = learned.structure
+    with _one_blas_thread():
+        kriging = Kriging(structure).fit(
+            learned.observations.points, values, noise_variance=noise, survey=learned.survey
+        )
         mean, variance = leave_out(kriging)
-    variance -= noise + np.array([c.noise for c in structure])
-    absent = np.isnan(values) & wanted
-    rows = np.flatnonzero(absent.any(axis=1))
-    if rows.size:
-        there, spread = kriging.predict(points[rows])
-        spread = spread + np.array([c.survey for c in structure])
-        mean[rows] = np.where(absent[rows], there, mean[rows])
-        variance[rows] = np.where(absent[rows], spread, variance[rows])
-    return mean, variance
+    return mean, variance - noise - np.array([c.noise for c in structure])
 
 
 @dataclass(frozen=True, eq=False)
@@ -225,5 +229,6 @@ def make_mapper(name: str, learned: Learned, method: Method) -> Mapper:
 
     settings = {"neighbours": method.neighbours, "neighbourhood": method.neighbourhood} if name == "kriging" else {}
     predictor = make_method(name, learned.structure, **settings)
-    predictor.fit(learned.observations.points, learned.values, noise_variance=learned.noise, survey=learned.survey)
+    with _one_blas_thread():
+        predictor.fit(learned.observations.points, learned.values, noise_variance=learned.noise, survey=learned.survey)
     return Mapper(name, learned.treatment, learned.structure, predictor)

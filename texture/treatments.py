@@ -38,6 +38,8 @@ LIMIT_STEPS = (1.0, 4.0, 10.0)
 """Limits that replacement is tried with, in laboratory limits: 0.005, 0.02 and 0.05 by default."""
 HIGHEST_LIMIT = 0.15
 """No limit above this is tried: near a third, replaced parts would no longer be the small ones."""
+LEAST_TOLD = 1e-3
+"""A bound is left out that adds less than about this share to what the neighbours know (as precision)."""
 DAMPING = 0.7
 """Share of the way that a censored value moves in one sweep: all move at once, and full steps overshoot each other."""
 
@@ -163,11 +165,18 @@ class Censor(Replace):
         after = np.where(np.isnan(site), 0.0, 1.0 / np.where(np.isnan(spread), 1.0, spread))
         precision = (1.0 - DAMPING) * before + DAMPING * after
         pull = (1.0 - DAMPING) * before * np.nan_to_num(values[zero]) + DAMPING * after * np.nan_to_num(site)
-        # A value that the neighbours know a thousand times better than its bound tells it is left out.
-        told = precision * variance[zero] > 1e-3
-        values[zero] = np.where(told, pull / np.where(told, precision, 1.0), np.nan)
-        noise[zero] = np.where(told, 1.0 / np.where(told, precision, 1.0), 0.0)
+        # No value is let go in between: the neighbours may come to know less of it than they do now.
+        floor = np.maximum(LEAST_TOLD / variance[zero] - precision, 0.0)
+        values[zero] = (pull + floor * mean[zero]) / (precision + floor)
+        noise[zero] = 1.0 / (precision + floor)
         return values, noise
+
+    def told(
+        self, values: Floats, noise: Floats, low: Floats, high: Floats, mean: Floats, variance: Floats
+    ) -> tuple[Floats, Floats]:
+        """Values and noise at the end, arguments as for `sweep`: NaN where a bound tells less than the neighbours know."""
+        nothing = (low < high) & (noise * 2.0 * LEAST_TOLD > variance)
+        return np.where(nothing, np.nan, values), np.where(nothing, 0.0, noise)
 
 
 @dataclass(frozen=True)

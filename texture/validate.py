@@ -10,7 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from texture.choosing import LimitEffect, Tried, choose, limit_effect, with_columns_of
-from texture.mapping import Learned, learn, make_mapper
+from texture.mapping import Learned, learn_all, make_mapper
 from texture.observations import Observations
 from texture.progress import Progress
 from texture.recipe import Recipe
@@ -91,6 +91,8 @@ def validate_methods(
     recipe : Recipe
     progress : Progress
     """
+    from texture.predict import METHODS
+
     compared = tuple(n for n in dict.fromkeys(recipe.validation.compare) if n != recipe.method.name)
     places = _map_points(target, plane, recipe.seed)
     folds = make_folds(
@@ -105,6 +107,8 @@ def validate_methods(
     with progress.stage("validate", total=(len(treated) + len(compared)) * folds.count) as advance:
 
         def run(name: str, learned: Learned) -> HeldOut:
+            if METHODS[name].needs_covariance:
+                refit.all(learned, folds)
             predict = _predictor(name, learned, refit, recipe)
             limit = recipe.composition.detection_limit
             measured = observations.fractions
@@ -130,14 +134,20 @@ class _Refit:
         self.done: dict[tuple[int, bytes], Learned] = {}
 
     def __call__(self, learned: Learned, train: Ints) -> Learned:
-        key = id(learned), train.tobytes()
-        if key not in self.done:
-            start = learned.structure
-            first = self.done.get((id(self.plain), train.tobytes()))
-            if first is not None:
-                start = with_columns_of(start, learned, self.plain, first.structure)
-            self.done[key] = learn(learned.treatment, learned.observations.take(train), self.recipe.method, start)
-        return self.done[key]
+        return self.done[id(learned), train.tobytes()]
+
+    def all(self, learned: Learned, folds: Folds) -> None:
+        """Learn a treatment in every fold that it was not yet learned in."""
+        trains = [train for train, _ in folds.pairs() if (id(learned), train.tobytes()) not in self.done]
+        tasks = [(learned.treatment, learned.observations.take(t), self._start(learned, t)) for t in trains]
+        for train, found in zip(trains, learn_all(tasks, self.recipe.method), strict=True):
+            self.done[id(learned), train.tobytes()] = found
+
+    def _start(self, learned: Learned, train: Ints) -> CovarianceSet:
+        first = self.done.get((id(self.plain), train.tobytes()))
+        if first is None:
+            return learned.structure
+        return with_columns_of(learned.structure, learned, self.plain, first.structure)
 
 
 def _predictor(
