@@ -14,6 +14,7 @@ from texture.choosing import fit_candidates
 from texture.clock import Clock
 from texture.early import check_early, read_conditions, rim_cells
 from texture.estimate import estimate_on
+from texture.inventory import make_inventory
 from texture.mapping import make_mapper
 from texture.observations import observe
 from texture.placing import place_stations
@@ -113,7 +114,8 @@ def build(
                        rim_cells(recipe, target))  # fmt: skip
         water = Water(recipe.bed.water.temperature_c, recipe.bed.water.salinity)
         moved = tuple(moved_by(condition, bed, target, water) for condition in read_conditions(recipe, target))
-    result = Result(found, estimate, per_side, opinion, bed, clock, moved=moved)
+        inventory = make_inventory(found, estimate, bed)
+    result = Result(found, estimate, per_side, opinion, bed, clock, moved=moved, inventory=inventory)
     with clock.stage("write"), progress.stage("write"):
         return write_all(result, folder, Path(recipe_path))
 

@@ -12,7 +12,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 if TYPE_CHECKING:
-    from texture.bed import Bed, Moved
+    from texture.bed import Bed, Moved, Stock
     from texture.clock import Clock
     from texture.estimate import Estimate
     from texture.mapping import Mapper
@@ -136,6 +136,8 @@ class Result:
         What was written.
     moved : tuple of Moved
         The mobility screen, one for each condition of the recipe.
+    inventory : tuple of Stock
+        Tonnes by depth band and class, with their range.
     """
 
     found: Validated
@@ -146,6 +148,7 @@ class Result:
     clock: Clock
     files: tuple[Path, ...] = field(default=())
     moved: tuple[Moved, ...] = ()
+    inventory: tuple[Stock, ...] = ()
 
     @property
     def beyond_share(self) -> float:
@@ -185,6 +188,7 @@ class Result:
             "not_given": list(account.not_given),
             "packing": settings.packing,
             "hiding": settings.hiding,
+            "inventory": [{k: known(v) for k, v in vars(stock).items()} for stock in self.inventory],
             "mobility": [mobility_record(m) for m in self.moved],
             "second_opinion": None if self.opinion is None else self.opinion.to_dict(),
             "answer": self.answer(),
@@ -222,11 +226,13 @@ class Result:
         return "\n".join(self.summary_lines())
 
 
+def known(value: Any) -> Any:
+    """Return a value as JSON can have it: None for a number that is not known."""
+    return None if isinstance(value, float) and not np.isfinite(value) else value
+
+
 def mobility_record(moved: Moved) -> dict[str, Any]:
     """Numbers of one condition of the mobility screen; None where something is not known."""
-
-    def known(value: float) -> float | None:
-        return value if np.isfinite(value) else None
 
     return {
         "condition": moved.name,

@@ -50,6 +50,7 @@ def write_all(result: Result, folder: ResultFolder, recipe_path: Path) -> Result
         write_tables(found.stations, aside)
         _write_scores(found, aside)
         _write_grids(result, aside)
+        _write_inventory(result, aside)
         (aside / "recipe_resolved.toml").write_text(settings, encoding="utf-8")
         picture = result_picture(result)
         (aside / "map.png").write_bytes(picture.content)
@@ -107,6 +108,15 @@ def _write_grids(result: Result, aside: Path) -> None:
         colours = class_colours(scheme.numbers)
         parts, size = recipe.composition.parts, recipe.outputs.geotiff_cell_size_m
         write_geotiffs(aside / "geotiff", result.estimate, found.target, parts, words, colours, size)
+
+
+def _write_inventory(result: Result, aside: Path) -> None:
+    import pandas as pd
+
+    from texture.output import write_csv
+
+    if result.inventory:
+        write_csv(aside / "inventory.csv", pd.DataFrame([vars(stock) for stock in result.inventory]).round(3))
 
 
 def _write_bed(result: Result, aside: Path) -> None:

@@ -3,6 +3,7 @@
 from texture.bed.build import EVIDENCE, Account, Bed, make_bed, strength_known
 from texture.bed.classes import ClassProperties, class_properties
 from texture.bed.hiding import HIDING_WORDS
+from texture.bed.inventory import Stock
 from texture.bed.mixture_packing import PACKING_WORDS
 from texture.bed.mobility import Condition, Moved, moved_by
 from texture.bed.packing import dry_density, porosity
@@ -25,6 +26,7 @@ __all__ = [
     "ClassProperties",
     "Condition",
     "Moved",
+    "Stock",
     "Water",
     "check_bed",
     "class_properties",

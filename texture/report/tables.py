@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 if TYPE_CHECKING:
+    from texture.bed import Stock
     from texture.result import Result
 
 __all__ = ["Table", "page_tables"]
@@ -36,6 +37,7 @@ def page_tables(result: Result) -> dict[str, Table]:
         "structure": _structure(result),
         "classes": _classes(result),
         "inventory": _inventory(result),
+        "stock": _stock(result),
         "mobility": _mobility(result),
         "rows": _rows(result),
         "set_aside": _set_aside(result),
@@ -176,6 +178,34 @@ def _inventory(result: Result) -> Table:
         ["class", "mass", "by the rim", "below least fraction"],
         rows,
         numeric=[1, 2, 3],
+    )
+
+
+def _stock(result: Result) -> Table:
+    from texture.bed.inventory import HOW
+
+    def band(stock: Stock) -> str:
+        low, high = stock.depth_from_m, stock.depth_to_m
+        if np.isnan(low) and np.isnan(high):
+            return "all depths" if stock.zone == "all" else stock.zone
+        if np.isnan(low):
+            return f"up to {high:g} m"
+        return f"{low:g} to {high:g} m" if np.isfinite(high) else f"below {low:g} m"
+
+    rows = [
+        [
+            band(stock),
+            stock.sediment,
+            number(stock.area_km2, 1),
+            *(number(tonnes / 1e6, 3) for tonnes in (stock.tonnes, stock.tonnes_low, stock.tonnes_high)),
+        ]
+        for stock in result.inventory
+    ]
+    return Table(
+        f"Dry mass by water depth, all layers, in million tonnes. {HOW}",
+        ["depth", "class", "area, km²", "mass", "low", "high"],
+        rows,
+        numeric=[2, 3, 4, 5],
     )
 
 
