@@ -105,7 +105,7 @@ def test_tiles_stay_small_and_hold_the_nearest_stations(name):
         assert (tiles.low[tile] <= cell).all()
         assert (cell <= tiles.high[tile]).all()
         own = tiles.stations(tile)
-        assert len(own) == len(set(own.tolist())) <= 11 * 16
+        assert len(own) == len(set(own.tolist())) <= 11 * 16 + 3 * 32
         nearest_four = tree.query(cell, 4)[0]
         reached = np.sort(np.linalg.norm(points[own] - cell, axis=1))[:4]
         missing.append(np.any(reached > nearest_four + 1e-9))
@@ -113,37 +113,36 @@ def test_tiles_stay_small_and_hold_the_nearest_stations(name):
     assert np.mean(missing) < 0.03
 
 
+def expected_distance(points, cells, mode):
+    """Rms distance from the all-station answer in kriging standard deviations, expected over fields of the model.
+
+    The all-station answer is the best linear one, so the expected square is what the local variance has more.
+    """
+    c = Covariance([Structure("exponential", 1.0, 400.0)], small_scale=0.05, noise=0.05)
+    z = np.zeros(len(points))
+    wide = Kriging(c, None).fit(points, z).predict(cells)[1]
+    local = Kriging(c, 32, mode).fit(points, z).predict(cells)[1]
+    return np.sqrt(np.mean((local - wide) / wide))
+
+
 @pytest.mark.slow
-@pytest.mark.parametrize(("name", "most"), [("uniform", 0.02), ("gap", 0.11), ("transects", 0.12), ("clusters", 0.15)])
+@pytest.mark.parametrize(("name", "most"), [("uniform", 0.02), ("gap", 0.08), ("transects", 0.08), ("clusters", 0.12)])
 def test_close_to_the_answer_of_all_stations(name, most):
     # Cells anywhere, in the gaps too; what 0.03 kriging standard deviations would be beside stations is not
-    # reached between clusters, where any 80 stations know less of the mean than all do.
+    # reached between clusters, where any 100 stations know less of the mean than all do.
     points = layouts()[name][:2900]
-    rng = np.random.default_rng(7)
-    c = Covariance([Structure("exponential", 1.0, 400.0)], small_scale=0.05, noise=0.05)
-    z = np.linalg.cholesky(c.matrix(points) + 0.05 * np.eye(len(points))) @ rng.normal(size=len(points))
-    cells = points.min(axis=0) + rng.random((200, 2)) * np.ptp(points, axis=0)
-    wide, variance = Kriging(c, None).fit(points, z).predict(cells)
-
-    def off(mode):
-        local = Kriging(c, 32, mode).fit(points, z).predict(cells)[0]
-        return np.sqrt(np.mean((local - wide) ** 2 / variance))
-
-    assert off("tile") < most
-    assert off("tile") < 0.5 * off("nearest")
+    cells = points.min(axis=0) + np.random.default_rng(7).random((200, 2)) * np.ptp(points, axis=0)
+    tile = expected_distance(points, cells, "tile")
+    assert tile < most
+    assert tile < 0.5 * expected_distance(points, cells, "nearest")
 
 
 @pytest.mark.parametrize("name", ["uniform", "gap", "transects", "clusters"])
 def test_where_stations_are_as_dense_as_cells(name):
     # One station in ten held out and predicted: within 0.03 kriging standard deviations of the all-station answer.
     points = layouts()[name][:2900]
-    rng = np.random.default_rng(8)
-    c = Covariance([Structure("exponential", 1.0, 400.0)], small_scale=0.05, noise=0.05)
-    z = np.linalg.cholesky(c.matrix(points) + 0.05 * np.eye(len(points))) @ rng.normal(size=len(points))
-    held = rng.random(len(points)) < 0.1
-    wide, variance = Kriging(c, None).fit(points[~held], z[~held]).predict(points[held])
-    local = Kriging(c, 32).fit(points[~held], z[~held]).predict(points[held])[0]
-    assert np.sqrt(np.mean((local - wide) ** 2 / variance)) < 0.03
+    held = np.random.default_rng(8).random(len(points)) < 0.1
+    assert expected_distance(points[~held], points[held], "tile") < 0.03
 
 
 def test_far_away_the_mean_and_the_full_variance():

@@ -129,6 +129,21 @@ def test_flat_data_say_so():
     assert "all values are equal" in str(fitted.fit_record)
 
 
+def test_covariates_get_their_own_ranges():
+    rng = np.random.default_rng(20)
+    points = np.column_stack([rng.random((300, 2)) * 20_000.0, rng.normal(size=(300, 2))])
+    # The third coordinate counts (own range 2 standard deviations), the fourth does not.
+    truth = Covariance([Structure("exponential", 1.0, 15_000.0)], 0.1, axis_scales=(1.0, 1.0, 7500.0, 1.0))
+    z = np.linalg.cholesky(truth.matrix(points)) @ rng.normal(size=300)
+    fitted = Covariance.fit(points, z, own_range_axes=[2, 3])
+    own = fitted.range_m / np.array(fitted.axis_scales)
+    assert 1.0 < own[2] < 4.0
+    assert own[3] > 10.0
+    assert fitted.axis_scales[:2] == (1.0, 1.0)
+    with pytest.raises(StructureError, match="expected some, not all, of the coordinates 0 to 3"):
+        Covariance.fit(points, z, own_range_axes=[4])
+
+
 def test_drift_is_taken_out_of_the_structure():
     points, z = field(TRUTH, 200, 15)
     slope = points[:, 0] / 1000.0

@@ -8,17 +8,14 @@ from typing import Any
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
+from texture.predict.dense import ORDINARY, Problem
 from texture.predict.kriging import Kriging
-from texture.predict.system import System, station_covariance
 from texture.structure.compiled import COINCIDENT_M
 from texture.structure.covariance import check_points
 
 __all__ = ["SecondOpinion", "second_opinion"]
 
 Array = NDArray[np.float64]
-
-# Differences up to this part of the sill (variance) or of its root (mean) are rounding in ordinary cases.
-ORDINARY = 1e-6
 
 
 @dataclass(frozen=True)
@@ -100,11 +97,11 @@ def second_opinion(
             rows = np.searchsorted(system.rows, kriging.stations_of(place, system.columns[0]))
             metric = system.covariances[0].metric(place[None])[0]
             for k, column in enumerate(system.columns):
-                problem = _Problem(system, k, rows, metric, local[i], wide[i])
+                problem = Problem(system, k, rows, metric, local[i], wide[i])
                 base = system.centre[k] + wide[i] @ system.coefficients[k]
                 ours = (mean[i, column] - base, variance[i, column])
-                why = problem.beyond_pykrige()
-                theirs = problem.dense() if why else problem.by_pykrige()
+                why = _beyond_pykrige(problem)
+                theirs = problem.dense() if why else _by_pykrige(problem)
                 solvers.add(f"dense solve ({why})" if why else "PyKrige")
                 allowed = problem.tolerance()
                 gap = problem.gap(ours, theirs)
@@ -120,107 +117,66 @@ def second_opinion(
     )
 
 
-class _Problem:
-    """One place, one column, the stations that served it."""
+def _beyond_pykrige(problem: Problem) -> str:
+    """Why PyKrige cannot express the case; empty when it can."""
+    if problem.drift.shape[1] == 0:
+        return "known mean"
+    if len(problem.points) < 3:
+        return "fewer than three stations"
+    if problem.points.shape[1] > 3:
+        return f"{problem.points.shape[1]} dimensions"
+    if np.ptp(problem.noise) > 0.0:
+        return "noise differs between stations"
+    if problem.covariance.survey > 0.0:
+        return "survey offsets"
+    if problem.wide.size:
+        return "global drift"
+    nearest = np.sqrt(((problem.points - problem.place) ** 2).sum(axis=1)).min()
+    if nearest <= 1e-3 and problem.noise[0] > 0.0:
+        return "place on a noisy station"
+    return ""
 
-    def __init__(self, system: System, k: int, rows: Any, place: Array, local: Array, wide: Array) -> None:
-        self.covariance = system.covariances[k]
-        self.points, self.place = system.points[rows], place
-        self.noise, self.survey = system.noise[k][rows], system.survey[rows]
-        block = system.station_columns[k][rows]
-        self.drift, self.values = block[:, : system.drifts], block[:, system.drifts]
-        self.wide_columns = block[:, system.drifts + 1 :]
-        self.local, self.wide = local, wide
-        self.wide_covariance = system.global_covariance[k]
-        self.matrix = station_covariance(
-            self.covariance, self.points, self.noise, system.survey_variance[k], self.survey
-        )
 
-    def gap(self, ours: tuple[float, float], theirs: tuple[float, float]) -> tuple[float, float]:
-        sill = max(self.covariance.sill, 1e-300)
-        return abs(ours[0] - theirs[0]) / np.sqrt(sill), abs(ours[1] - theirs[1]) / sill
+def _by_pykrige(problem: Problem) -> tuple[float, float]:
+    """PyKrige on the same stations, in the covariance's own metric, with the covariance as a custom variogram."""
+    from pykrige.ok import OrdinaryKriging
+    from pykrige.ok3d import OrdinaryKriging3D
+    from pykrige.uk import UniversalKriging
+    from pykrige.uk3d import UniversalKriging3D
 
-    def tolerance(self) -> float:
-        # Each digit of the condition number is a digit lost; 100 is the growth that a few hundred terms add.
-        return max(ORDINARY, 100.0 * np.finfo(np.float64).eps * float(np.linalg.cond(self.matrix)))
+    noise = float(problem.noise[0])
+    total = problem.covariance.sill + noise
+    plain = problem.covariance.packed
+    d = problem.points.shape[1]
 
-    def beyond_pykrige(self) -> str:
-        """Why PyKrige cannot express the case; empty when it can."""
-        if self.drift.shape[1] == 0:
-            return "known mean"
-        if len(self.points) < 3:
-            return "fewer than three stations"
-        if self.points.shape[1] > 3:
-            return f"{self.points.shape[1]} dimensions"
-        if np.ptp(self.noise) > 0.0:
-            return "noise differs between stations"
-        if self.covariance.survey > 0.0:
-            return "survey offsets"
-        if self.wide.size:
-            return "global drift"
-        nearest = np.sqrt(((self.points - self.place) ** 2).sum(axis=1)).min()
-        if nearest <= 1e-3 and self.noise[0] > 0.0:
-            return "place on a noisy station"
-        return ""
+    def gamma(_: Any, h: Any) -> Any:
+        from texture.structure.compiled import covariance_matrix
 
-    def dense(self) -> tuple[float, float]:
-        """The bordered system as it stands in the books, by LU."""
-        from scipy.linalg import solve
+        flat = np.ascontiguousarray(np.atleast_1d(h).reshape(1, -1))
+        return (total - covariance_matrix(plain, 0.0, flat)).reshape(np.shape(h))
 
-        from texture.structure.compiled import covariance_matrix, distance_matrix
-
-        c = self.covariance
-        k0 = covariance_matrix(c.packed, c.small_scale, distance_matrix(self.points, self.place[None]))[:, 0]
-        n, p = self.drift.shape
-        bordered = np.block([[self.matrix, self.drift], [self.drift.T, np.zeros((p, p))]])
-        right = np.concatenate([k0, self.local])
-        weight = solve(bordered, right, assume_a="sym")
-        variance = c.sill - weight @ right
-        if self.wide.size:
-            rest = self.wide - self.wide_columns.T @ weight[:n]
-            variance += rest @ self.wide_covariance @ rest
-        return float(weight[:n] @ self.values), float(variance)
-
-    def by_pykrige(self) -> tuple[float, float]:
-        """PyKrige on the same stations, in the covariance's own metric, with the covariance as a custom variogram."""
-        from pykrige.ok import OrdinaryKriging
-        from pykrige.ok3d import OrdinaryKriging3D
-        from pykrige.uk import UniversalKriging
-        from pykrige.uk3d import UniversalKriging3D
-
-        noise = float(self.noise[0])
-        total = self.covariance.sill + noise
-        plain = self.covariance.packed
-        d = self.points.shape[1]
-
-        def gamma(_: Any, h: Any) -> Any:
-            from texture.structure.compiled import covariance_matrix
-
-            flat = np.ascontiguousarray(np.atleast_1d(h).reshape(1, -1))
-            return (total - covariance_matrix(plain, 0.0, flat)).reshape(np.shape(h))
-
-        # PyKrige has no one-dimensional class; a constant second coordinate changes no distance.
-        points = self.points if d > 1 else np.column_stack([self.points, np.zeros(len(self.points))])
-        place = self.place if d > 1 else np.array([self.place[0], 0.0])
-        settings = {
-            "variogram_model": "custom",
-            "variogram_parameters": [],
-            "variogram_function": gamma,
-            "exact_values": True,
-        }
-        extra, at = {}, {}
-        if self.drift.shape[1] > 1:
-            settings["drift_terms"] = ["specified"]
-            extra["specified_drift"] = list(self.drift[:, 1:].T)
-            at["specified_drift_arrays"] = [np.array([x]) for x in self.local[1:]]
-        coordinates = [np.ascontiguousarray(column) for column in points.T]
-        three = points.shape[1] == 3
-        if self.drift.shape[1] > 1:
-            solver = UniversalKriging3D if three else UniversalKriging
-        else:
-            solver = OrdinaryKriging3D if three else OrdinaryKriging
-        fitted = solver(*coordinates, self.values, **settings, **extra)
-        mean, variance = fitted.execute("points", *[np.array([x]) for x in place], **at)
-        at_station = bool(np.sqrt(((self.points - self.place) ** 2).sum(axis=1)).min() <= COINCIDENT_M)
-        # PyKrige's nugget is part of what it predicts away from stations; our noise is not.
-        return float(mean[0]), float(variance[0]) - (0.0 if at_station else noise)
+    # PyKrige has no one-dimensional class; a constant second coordinate changes no distance.
+    points = problem.points if d > 1 else np.column_stack([problem.points, np.zeros(len(problem.points))])
+    place = problem.place if d > 1 else np.array([problem.place[0], 0.0])
+    settings = {
+        "variogram_model": "custom",
+        "variogram_parameters": [],
+        "variogram_function": gamma,
+        "exact_values": True,
+    }
+    extra, at = {}, {}
+    if problem.drift.shape[1] > 1:
+        settings["drift_terms"] = ["specified"]
+        extra["specified_drift"] = list(problem.drift[:, 1:].T)
+        at["specified_drift_arrays"] = [np.array([x]) for x in problem.local[1:]]
+    coordinates = [np.ascontiguousarray(column) for column in points.T]
+    three = points.shape[1] == 3
+    if problem.drift.shape[1] > 1:
+        solver = UniversalKriging3D if three else UniversalKriging
+    else:
+        solver = OrdinaryKriging3D if three else OrdinaryKriging
+    fitted = solver(*coordinates, problem.values, **settings, **extra)
+    mean, variance = fitted.execute("points", *[np.array([x]) for x in place], **at)
+    at_station = bool(np.sqrt(((problem.points - problem.place) ** 2).sum(axis=1)).min() <= COINCIDENT_M)
+    # PyKrige's nugget is part of what it predicts away from stations; our noise is not.
+    return float(mean[0]), float(variance[0]) - (0.0 if at_station else noise)

@@ -134,7 +134,7 @@ def fit_covariance(
         raise StructureError("own_range_axes: own ranges are fitted by likelihood; a variogram knows one distance only")
     warm = [start] * count if isinstance(start, Covariance) else list(start) if start is not None else [None] * count
     fitted: list[Covariance | None] = [None] * count
-    with _one_blas_thread():
+    with one_blas_thread():
         for members in sets:
             own = [columns[v] for v in members]
             if method == "variogram":
@@ -149,7 +149,7 @@ def fit_covariance(
         return CovarianceSet(done, _column_correlation(points, array, noise, extra, labels, done, seed))
 
 
-def _one_blas_thread() -> Any:
+def one_blas_thread() -> Any:
     """BLAS on one thread: sums in one order, so that a fit is the same on any number of cores."""
     from threadpoolctl import threadpool_limits  # type: ignore[import-untyped]  # ships no annotations
 
