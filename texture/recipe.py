@@ -42,8 +42,8 @@ Positive = Annotated[float, Field(gt=0.0)]
 COLUMN_ROLES = (
     "id", "survey", "date", "latitude", "latitude_minutes", "latitude_seconds", "latitude_hemisphere", "longitude",
     "longitude_minutes", "longitude_seconds", "longitude_hemisphere", "easting", "northing", "zone", "position", "depth",
-    "sample_interval", "sample_top", "sample_bottom", "mud", "sand", "gravel", "silt", "clay", "median_size",
-    "description", "remarks",
+    "sample_interval", "sample_top", "sample_bottom", "mud", "sand", "gravel", "silt", "clay", "mud_tare",
+    "sand_tare", "gravel_tare", "split_factor", "median_size", "description", "remarks",
 )  # fmt: skip
 
 
@@ -84,6 +84,15 @@ class Samples(Settings):
     join: Join | None = Field(None, description="the table of positions; found in the same workbook if absent")
     header_row: Annotated[int, Field(ge=1)] | None = Field(
         None, description="row number of the first header line, as the spreadsheet shows it"
+    )
+    layout: Literal["auto", "rows", "columns", "certificates"] = Field(
+        "auto", description="whether samples are rows, columns, or certificates (one a sheet, or stacked); found if `auto`"
+    )
+    skip: tuple[Annotated[int, Field(ge=1)], ...] = Field(
+        (), description="row numbers, as the spreadsheet shows them, that are neither headings nor samples"
+    )
+    split_below_mm: Positive | None = Field(
+        None, description="size below which the split factor counts, where its heading does not say"
     )
     from_: dt.date | None = Field(None, alias="from", description="first day of the survey")
     to: dt.date | None = Field(None, description="last day of the survey")

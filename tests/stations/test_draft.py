@@ -43,6 +43,21 @@ def demo(tmp_path_factory):
     return text, read(text, folder), pd.read_csv(DEMO / "answers.csv")
 
 
+def test_layouts_that_were_found_are_written_down_and_read_back(tmp_path):
+    forms = {
+        r[0]: [["Sample", r[0]], ["Lat", r[1]], ["Lon", r[2]], ["Mud %", r[3]], ["Sand %", r[4]], ["Gravel %", r[5]]]
+        for r in ROWS
+    }
+    write_xlsx(tmp_path / "forms.xlsx", forms)
+    write_xlsx(tmp_path / "across.xlsx", {"Data": [list(c) for c in zip(HEADER, *ROWS, strict=True)]})
+    text = draft_recipe([tmp_path / "forms.xlsx", tmp_path / "across.xlsx"], tmp_path)
+    assert 'layout = "certificates"' in text
+    assert 'sheet = "certificates"' not in text
+    assert 'layout = "columns"' in text
+    assert read(text, tmp_path).counts["rows_used"] == 6  # the second file holds the same samples
+    assert read(text, tmp_path).counts["rows_merged"] == 6
+
+
 def test_an_unedited_draft_reads_all_four_spreadsheets_of_the_demo(demo):
     text, stations, answers = demo
     assert "NOT READ" not in text

@@ -7,7 +7,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 
 from texture.stations.files import Cell, is_blank
-from texture.stations.headings import PARTS, plain, role_of, unit_in
+from texture.stations.headings import PARTS, is_tare, plain, role_of, unit_in
 from texture.stations.tables import Table, looks_like_value
 from texture.stations.where import Where
 
@@ -83,6 +83,8 @@ def _recognise(table: Table, index: int) -> tuple[str, int] | None:
     found = next((t for t in tries if t is not None), None)
     if found is None or not _content_agrees(*found, table.columns[index]):
         return None
+    if found[0] in PARTS and is_tare(table.headings[index]):
+        return f"{found[0]}_tare", found[1]
     return found
 
 

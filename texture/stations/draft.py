@@ -14,6 +14,7 @@ import numpy.typing as npt
 from texture.errors import RecipeError, SampleError
 from texture.recipe import COLUMN_ROLES, Intake, Samples
 from texture.stations.audit import AuditLog
+from texture.stations.certificates import CERTIFICATES
 from texture.stations.columns import Column
 from texture.stations.files import Cell, is_blank
 from texture.stations.headings import PARTS, plain
@@ -215,8 +216,11 @@ def _block_lines(look: _Look, base: Path) -> list[str]:
         lines += [f"# NOT READ: {look.error}", "# [[samples]]", f"# file = {_path(look.file, base)}", ""]
         return lines
     lines += ["[[samples]]", f"file = {_path(look.file, base)}"]
-    if source.table.where.sheet:
+    own = source.sheet.own_header
+    if source.table.where.sheet and not (own and source.table.where.sheet == CERTIFICATES):
         lines.append(f"sheet = {_toml(source.table.where.sheet)}")
+    if own or source.sheet.across:
+        lines.append(f'layout = "{"certificates" if own else "columns"}"')
     if look.block.crs:
         lines.append(f"crs = {_toml(look.block.crs)}")
     lines += [

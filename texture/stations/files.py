@@ -32,6 +32,8 @@ class Sheet:
         Number of hidden rows; whether the whole sheet is hidden.
     across : bool
         Whether rows and columns were exchanged.
+    own_header : bool
+        Whether each row is a certificate and the first row, the headings, was made up from their labels.
     notes : tuple of str
         What had to be found out to read it (encoding, delimiter).
     """
@@ -44,6 +46,12 @@ class Sheet:
     hidden: bool = False
     notes: tuple[str, ...] = ()
     across: bool = False
+    own_header: bool = False
+
+    @property
+    def filled(self) -> int:
+        """Rows that say anything; a made-up line of headings is none."""
+        return sum(any(not is_blank(c) for c in row) for row in self.rows) - self.own_header
 
     def turned(self) -> Sheet:
         """The sheet with rows and columns exchanged, for samples that stand side by side."""

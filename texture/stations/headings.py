@@ -11,7 +11,7 @@ import re
 import unicodedata
 from collections.abc import Iterable
 
-__all__ = ["PARTS", "is_unit", "is_weight", "plain", "role_of", "roles_in", "unit_in"]
+__all__ = ["PARTS", "is_tare", "is_unit", "is_weight", "plain", "role_of", "roles_in", "unit_in"]
 
 PARTS = ("mud", "sand", "gravel", "silt", "clay")
 
@@ -51,6 +51,7 @@ _PATTERNS: tuple[tuple[str, int, str], ...] = (
     ("id", 3, r"\b(sample|station|stn|site|grab|core|location|lab|probe|proben|monster|muestra|echantillon|amostra|campione|punto|punkt)\b ?\b(id|no|nr|num|number|nummer|code|name|label|ref|reference|numero|codigo)\b"),
     ("id", 3, r"^(sample|station|stations|stn|st|site|grab|sample id|id|probe|probennummer|estacion|muestra|echantillon|station|amostra|estacao|campione|stazione|monster|locatie|standort|messstelle|stationsnummer|monsternummer)$"),
     ("id", 2, r"\b(id|code|label|ref|reference)$|^(no|nr|number|name|nummer|numero|num|codigo)$"),
+    ("split_factor", 3, r"(\bsplit(s|ting|ter)?\b|\bsub ?sampl\w* (factor|ratio|fraction)\b)(?!.*\b(g|gr|grams?|weight|wt)\b)"),
     ("median_size", 3, r"^(?!.*\b(sand|mud|gravel|silt|clay|fraction|depth)\b).*(\bmedian[ae]?\b|\bmedianwert\b|\bd ?50\b|\bd ?0\.5\b|^md( phi| mm| um)?$|^mdphi$)"),
     ("median_size", 2, r"^(?!.*\b(sand|mud|gravel|silt|clay|fraction|depth)\b).*(\bmean (grain |particle |sediment )?(size|diameter)\b|^mz\b)"),
     ("mud", 3, r"\bmud\b|\bfines\b|\bfangos?\b|\blodos?\b|\bvases?\b|\bschlamm\b|\bschlick\b|\bslib\b|\blama\b|\bboues?\b|\bpelit[ae]s?\b|\bfinos\b|\bfango\b|\bpelitic\b"),
@@ -70,6 +71,10 @@ _COMPILED = tuple((role, weight, re.compile(pattern)) for role, weight, pattern 
 
 _SAND_SUBCLASS = re.compile(
     rf"\b{_SUBCLASS}\w*\s+(sands?|gravels?|silts?|clays?|zand|kies)\b|\b(arena|areia|sable|sabbia)s?\s+{_SUBCLASS}|\b(fein|mittel|grob)(sand|kies|schluff)\b"
+)
+# "63-250 um % of sand"; but "percent of sand" is the sand
+_SIZE_OF_PART = re.compile(
+    r"\d.*\b(of|von|van|de|del|du|di|da) (the |total |la |le )?(sand|gravel|mud|arena|sable|sabbia|areia|zand)\b"
 )
 # Quantities that are named after a part but are not its share
 _NOT_A_SHARE = re.compile(
@@ -131,7 +136,8 @@ def role_of(heading: str) -> tuple[str, int] | None:
     for role, weight, pattern in _COMPILED:
         if (best is None or weight > best[1]) and pattern.search(text):
             best = (role, weight)
-    if best is not None and best[0] in PARTS and (_SAND_SUBCLASS.search(text) or _NOT_A_SHARE.search(text)):
+    other = (_SAND_SUBCLASS, _NOT_A_SHARE, _SIZE_OF_PART)
+    if best is not None and best[0] in PARTS and any(pattern.search(text) for pattern in other):
         return None
     return best
 
@@ -163,6 +169,15 @@ def is_weight(heading: str) -> bool:
     (True, False, False)
     """
     return bool(re.search(r"\b(g|gr|grams?|weights?|wt)\b", plain(heading))) and unit_in(heading) != "percent"
+
+
+def is_tare(heading: str) -> bool:
+    """Whether a heading names the weight of an empty vessel.
+
+    >>> is_tare("Tare (g)"), is_tare("Sand, empty dish"), is_tare("Sand gross (g)")
+    (True, True, False)
+    """
+    return bool(re.search(r"\b(tare|tara|empty|dish|beaker|container|vessel)\b", plain(heading)))
 
 
 def is_unit(cell: object) -> bool:

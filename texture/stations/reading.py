@@ -16,7 +16,6 @@ from texture.recipe import Recipe, Samples
 from texture.stations.account import FATES, LEDGER_COLUMNS, TABLE_COLUMNS, Stations, _with_points
 from texture.stations.audit import AuditLog
 from texture.stations.copies import find_copies
-from texture.stations.files import is_blank
 from texture.stations.repeats import merge_repeats
 from texture.stations.rows import bare_places, read_rows
 from texture.stations.sources import find_source
@@ -87,7 +86,7 @@ def _read_block(block: Samples, label: str, recipe: Recipe, intake: _Intake) -> 
         raise SampleError(
             f"{table.where.text()}: given twice in the recipe; take one samples block out or name another sheet"
         )
-    intake.rows_read[place] = sum(any(not is_blank(c) for c in row) for row in sheet.rows)
+    intake.rows_read[place] = sheet.filled
     intake.notes.extend((*sheet.notes, *source.notes))
     if sheet.hidden_rows:
         intake.notes.append(f"{table.where.text()}: {sheet.hidden_rows} hidden rows, read like the others")

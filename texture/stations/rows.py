@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
+from dataclasses import replace
 
 import numpy as np
 import numpy.typing as npt
@@ -56,7 +57,7 @@ def read_rows(
     notes: list[str] = []
     positions = _positions_of(source, block)
     log = AuditLog()
-    shares = _shares(source, positions, block, intake, detection_limit, rows, log)
+    shares = _shares(source, positions, block, intake, detection_limit, rows, log, notes)
     notes.extend((*positions.notes, *shares.notes))
     median = medians_of(source, shares, notes, log)
     fates = judge(source, positions, shares, median, log)
@@ -205,10 +206,11 @@ def _shares(
     detection_limit: float,
     rows: npt.NDArray[np.int64],
     audit: AuditLog,
+    notes: list[str],
 ) -> Shares:
     table, columns = source.table, source.columns
     if source.sizes:
-        return shares_from_sizes(table, source.sizes, block, intake, audit)
+        return shares_from_sizes(table, source.sizes, block, intake, audit, columns.get("split_factor"))
     parts = [role for role in PARTS if role in columns]
     if not parts and not {"description", "median_size"} & set(columns):
         raise _no_column(table, "a column of mud, sand or gravel, or of words for the bottom", "name it")
@@ -220,6 +222,10 @@ def _shares(
         cells[role] = table.columns[columns[role].index]
         numbers[role] = read_numbers(cells[role], table.where.at(columns[role].heading), table.rows)
         _check_numeric(table, columns[role], numbers[role])
+        if (tare := columns.get(f"{role}_tare")) is not None:
+            empty = read_numbers(table.columns[tare.index], table.where.at(tare.heading), table.rows)
+            numbers[role] = replace(numbers[role], value=numbers[role].value - empty.value)
+            notes.append(f'{table.where.at(columns[role].heading).text()}: less its tare "{tare.heading}"')
     placed = np.isfinite(positions.longitude)
     tolerance = intake.sum_tolerance
     return share_out(numbers, cells, columns, block, table.where, rows, audit, placed, tolerance, detection_limit)

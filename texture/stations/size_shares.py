@@ -13,10 +13,12 @@ from texture.errors import CompositionError
 from texture.recipe import Intake, Samples
 from texture.stations.audit import AuditLog
 from texture.stations.cells import Reading, read_numbers, unreadable_hint
+from texture.stations.columns import Column
 from texture.stations.fractions import Shares
 from texture.stations.headings import is_weight, plain
 from texture.stations.limits import ABOUT, OF_LIMIT
 from texture.stations.sizes import SAME_LIMIT_PHI, SizeColumn
+from texture.stations.splits import shares_of_sand, split_factors
 from texture.stations.tables import Table
 
 __all__ = ["shares_from_sizes"]
@@ -26,7 +28,12 @@ CUMULATIVE = 0.95  # share of rows that must rise steadily to 100 for single siz
 
 
 def shares_from_sizes(
-    table: Table, columns: Sequence[SizeColumn], block: Samples, intake: Intake, audit: AuditLog
+    table: Table,
+    columns: Sequence[SizeColumn],
+    block: Samples,
+    intake: Intake,
+    audit: AuditLog,
+    split: Column | None = None,
 ) -> Shares:
     """Turn size classes into fractions of 1.
 
@@ -42,6 +49,8 @@ def shares_from_sizes(
     block, intake : Samples, Intake
         `basis`, `blank_means`, `mud_below_mm`, `gravel_above_mm` and `sum_tolerance` act here.
     audit : AuditLog
+    split : Column, optional
+        Column of factors by which the weights of fine classes, weighed on a split, are multiplied.
 
     Returns
     -------
@@ -57,6 +66,18 @@ def shares_from_sizes(
     rows = np.asarray(table.rows, dtype=np.int64)
     problem = np.full(n, "", dtype=object)
     amounts, half, given, ends = _amounts(table, columns, block, rows, problem, audit)
+    tared = sum(c.tare >= 0 for c in columns)
+    told = [f"{table.where.text()}: {tared} size columns less their tare"] if tared else []
+    if split is not None:
+        factor = split_factors(table, columns, split, block.split_below_mm, problem, told)
+        for numbers in (amounts, *ends):
+            numbers *= factor
+    if any(c.of_sand for c in columns):
+        told.append(
+            f"{table.where.text()}: {sum(c.of_sand for c in columns)} size columns are percent of the sand: shares of what the others leave"
+        )
+        for numbers in (amounts, *ends):
+            shares_of_sand(columns, numbers)
     good = given & (problem == "")
     limits, amounts, note = _as_classes(table, columns, amounts, good, intake.sum_tolerance)
     negative = (amounts < -1e-9).any(axis=1) & given
@@ -73,7 +94,7 @@ def shares_from_sizes(
     parts[parts < 1e-15] = 0.0  # differences of sums, not grains
     resolution = np.where(used, half * math.sqrt(len(columns)) / np.where(total > 0.0, total, np.nan), np.nan)
     notes = [f"{table.where.text()}: mud, sand and gravel from {len(columns)} size columns"]
-    notes += [x for x in (note, *cut_notes) if x]
+    notes += [x for x in (note, *cut_notes, *told) if x]
     if (
         block.basis == "whole"
         and limits[0] > -math.inf
@@ -129,9 +150,14 @@ def _amounts(
         below, between, about = (numbers.reading == r for r in (Reading.BELOW, Reading.RANGE, Reading.ABOUT))
         value = np.where(below, OF_LIMIT * numbers.value, numbers.value)
         value = np.where(numbers.reading == Reading.TRACE, 0.0, value)
+        empty = np.zeros(n)
+        if column.tare >= 0:
+            tare = table.where.at(table.headings[column.tare])
+            empty = read_numbers(table.columns[column.tare], tare, table.rows).value
+            value = value - empty
         width = np.where(between, numbers.half_width, np.where(about, ABOUT * value, 0.0))
         least[:, j] = np.where(below, 0.0, value - width)
-        most[:, j] = np.where(below, numbers.value, value + width)
+        most[:, j] = np.where(below, numbers.value - empty, value + width)
         given |= np.isfinite(value)
         for reading, rule in ((Reading.BELOW, "below a limit: 0.65 of the limit, and anything from 0 to it"), (Reading.TRACE, "trace in a size class: nothing"), (Reading.RANGE, "range: its middle, and anything between its ends"), (Reading.ABOVE, "above a limit: the limit"), (Reading.ABOUT, "about: within a fifth of it"), (Reading.MARKED, "number with a mark or unit: the number")):  # fmt: skip
             hit = [int(i) for i in np.flatnonzero(numbers.reading == reading)]

@@ -9,13 +9,13 @@ import itertools
 import math
 import re
 from collections.abc import Iterable, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 from texture.stations.files import Cell, is_blank
-from texture.stations.headings import plain, unit_in
+from texture.stations.headings import is_tare, plain, unit_in
 from texture.stations.where import Where
 
-__all__ = ["SizeColumn", "count_sizes", "is_size_header", "size_columns", "size_in"]
+__all__ = ["SizeColumn", "count_sizes", "is_pan", "is_size_header", "scale_unit", "size_columns", "size_in"]
 
 FEWEST = 3  # columns; with fewer, headings such as "<63 µm" are parts by themselves
 SAME_LIMIT_PHI = 0.03  # 62.5 and 63 µm are 0.012 apart, 60 and 62.5 µm 0.06
@@ -30,6 +30,7 @@ _SCALE = re.compile(r"\b(size|sieve|sieves|diameter|aperture|mesh|grain|phi|korn
 _PAN = re.compile(r"\b(pan|finest|rest|residue|bottom pan|passing last)\b")
 _FINER = re.compile(r"\b(passing|finer|undersize|cum\w* (finer|passing)|durchgang|passant)\b")
 _COARSER = re.compile(r"\b(cum\w*( \w+)? retained|retained cum\w*|oversize|cum\w* coarser)\b")
+_OF_SAND = re.compile(r"\b(of|von|de la|du|del) (the )?(sand|total sand|sand fraction|arena|sable|sandes)\b")
 _NO_SIZE = re.compile(
     r"\b(depth|interval|top|bottom|date|lat\w*|lon\w*|d\d\d|median|mean|sorting|skew\w*|kurt\w*|percentile|core|layer|sample|temperature|station)\b"
 )
@@ -47,6 +48,10 @@ class SizeColumn:
     coarse_phi, fine_phi : float
         Limits of the class; -inf and inf where it is open. For a single size both are that size.
     meaning : {"class", "single", "pan", "finer", "coarser"}
+    tare : int
+        Number of the column whose weights have to be taken off, -1 if there is none.
+    of_sand : bool
+        Whether its amounts are shares of the sand rather than of the whole.
     """
 
     index: int
@@ -54,6 +59,8 @@ class SizeColumn:
     coarse_phi: float
     fine_phi: float
     meaning: str
+    tare: int = -1
+    of_sand: bool = False
 
 
 def size_in(text: str, unit: str | None) -> tuple[float, float, str] | None:
@@ -106,11 +113,20 @@ def is_size_header(row: Sequence[Cell]) -> bool:
     (True, False)
     """
     filled = [c for c in row if not is_blank(c)]
-    if not filled or not isinstance(filled[0], str) or _scale_unit([filled[0]]) is None:
+    if not filled or not isinstance(filled[0], str) or scale_unit([filled[0]]) is None:
         return False
     numbers = [n for n in map(_number, filled[1:]) if n is not None]
     steps = [b - a for a, b in itertools.pairwise(numbers)]
     return len(numbers) >= FEWEST and (all(s > 0 for s in steps) or all(s < 0 for s in steps))
+
+
+def is_pan(text: str) -> bool:
+    """Whether a heading names what passed the last sieve.
+
+    >>> is_pan("Pan"), is_pan("2 mm")
+    (True, False)
+    """
+    return bool(_PAN.search(plain(text)))
 
 
 def _number(cell: Cell) -> float | None:
@@ -121,7 +137,7 @@ def _number(cell: Cell) -> float | None:
     return None
 
 
-def _scale_unit(headings: Iterable[str]) -> str | None:
+def scale_unit(headings: Iterable[str]) -> str | None:
     """Unit of a heading that names a scale of sizes rather than a size."""
     for heading in headings:
         if _SCALE.search(plain(heading)) and not any(ch.isdigit() for ch in heading):
@@ -142,7 +158,9 @@ def size_columns(
         If there are size classes but no unit, or classes that overlap or leave a gap.
     """
     skip, found = set(taken), []
-    scale = _scale_unit(headings)
+    tares: dict[str, int] = {}
+    named: dict[int, str] = {}
+    scale = scale_unit(headings)
     for index, heading in enumerate(headings):
         if index in skip or is_blank(heading):
             continue
@@ -154,11 +172,17 @@ def size_columns(
             raise where.at(heading).error(
                 "a size class without its unit", "phi, mm or µm", "write the unit into the heading"
             )
-        if size is not None:
-            found.append(SizeColumn(index, heading, *_meant(size, heading)))
+        if size is not None and is_tare(heading):
+            tares[str(size)] = index
+        elif size is not None:
+            found.append(
+                SizeColumn(index, heading, *_meant(size, heading), of_sand=bool(_OF_SAND.search(plain(heading))))
+            )
+            named[index] = str(size)
     real = [c for c in found if c.meaning != "pan"]
     if len(real) < FEWEST:
         return []
+    found = [replace(c, tare=tares.get(named[c.index], -1)) for c in found]
     columns = sorted(found, key=lambda c: (c.coarse_phi if not math.isnan(c.coarse_phi) else math.inf, c.fine_phi))
     _check_tiles([c for c in columns if c.meaning == "class"], where)
     return columns

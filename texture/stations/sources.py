@@ -8,8 +8,9 @@ from dataclasses import dataclass, field, replace
 
 from texture.errors import SampleError
 from texture.recipe import Samples
+from texture.stations.certificates import gather_certificates
 from texture.stations.columns import Column, assign_columns
-from texture.stations.files import Sheet, read_sheets
+from texture.stations.files import Sheet, is_blank, read_sheets
 from texture.stations.headings import PARTS, plain, role_of
 from texture.stations.joins import Joined, best_ids, join_tables
 from texture.stations.sizes import SizeColumn, size_columns
@@ -66,6 +67,42 @@ def find_source(block: Samples, label: str | None = None) -> Source:
         If there is no such sheet, no table, or a table that cannot be understood.
     """
     sheets = [replace(s, file=label or s.file) for s in read_sheets(block.file)]
+    error: SampleError | None = None
+    try:
+        source = _choose(block, _arranged(sheets, block))
+        if source.has_shares or block.layout != "auto":
+            return source
+    except SampleError as problem:
+        error = problem
+        if block.layout != "auto":
+            raise
+    # Nothing tells what samples consist of: perhaps the file is the certificate of a single one.
+    arranged = gather_certificates(sheets, forced=True)
+    if any(s.own_header for s in arranged):
+        return _choose(block, arranged)
+    if error is not None:
+        raise error
+    return source
+
+
+def _arranged(sheets: list[Sheet], block: Samples) -> list[Sheet]:
+    """The sheets of a file with certificates gathered into one, as the recipe's `layout` says."""
+    if block.layout in ("rows", "columns"):
+        return sheets
+    forced = block.layout == "certificates"
+    if block.sheet is None:
+        arranged = gather_certificates(sheets, forced)
+    else:
+        arranged = [gather_certificates([s], forced)[0] if s.name == block.sheet else s for s in sheets]
+    if forced and not any(s.own_header for s in arranged):
+        raise SampleError(
+            f'{sheets[0].file}: no certificates found, expected labels such as "Sample" and "Latitude" with their values '
+            'beside them; take layout = "certificates" out of the recipe'
+        )
+    return arranged
+
+
+def _choose(block: Samples, sheets: list[Sheet]) -> Source:
     candidates = _named(sheets, block.sheet, block.file.name)
     found = [look for look in (_look(sheet, block) for sheet in candidates) if look is not None]
     if not found:
@@ -94,12 +131,18 @@ def find_source(block: Samples, label: str | None = None) -> Source:
             raise found[0]
         source = found[0]
     _check_mapped(source, block.columns)
+    if block.skip and max(block.skip) > len(source.sheet.rows):
+        raise source.table.where.error(
+            f"skip = {max(block.skip)} in the recipe",
+            f"numbers up to {len(source.sheet.rows)}",
+            "correct skip",
+        )
     return _with_unread(source, sheets)
 
 
 def sheets_with_samples(block: Samples) -> list[str]:
     """Names of the sheets, hidden ones left out, that each tell both where and what."""
-    looks = [_look(sheet, block) for sheet in read_sheets(block.file) if not sheet.hidden]
+    looks = [_look(sheet, block) for sheet in _arranged(read_sheets(block.file), block) if not sheet.hidden]
     return [s.sheet.name for s in looks if isinstance(s, Source) and s.has_position and s.has_shares]
 
 
@@ -116,8 +159,10 @@ def _named(sheets: list[Sheet], name: str | None, file: str) -> list[Sheet]:
 
 def _look(sheet: Sheet, block: Samples, header_row: bool = True) -> Source | SampleError | None:
     """Understand one sheet as it stands or, where that tells nothing, with rows and columns exchanged."""
-    upright = _understand(sheet, block, header_row)
+    upright = None if block.layout == "columns" and header_row else _understand(sheet, block, header_row)
     if isinstance(upright, Source) and (upright.has_shares or upright.has_position):
+        return upright
+    if block.layout == "rows" or sheet.own_header:
         return upright
     small = len(sheet.rows) <= SIDE_BY_SIDE and max((len(r) for r in sheet.rows), default=0) <= SIDE_BY_SIDE
     turned = _understand(sheet.turned(), block, header_row) if small and block.header_row is None else None
@@ -129,9 +174,15 @@ def _look(sheet: Sheet, block: Samples, header_row: bool = True) -> Source | Sam
 
 def _understand(sheet: Sheet, block: Samples, header_row: bool) -> Source | SampleError | None:
     """Understand one sheet; an error is kept, for it matters only if no other sheet will do."""
-    table = find_table(sheet, block.columns, block.header_row if header_row else None)
+    skip = {n for n in block.skip if n <= len(sheet.rows)} if header_row and not sheet.own_header else set()
+    kept = replace(sheet, rows=[[] if i + 1 in skip else row for i, row in enumerate(sheet.rows)]) if skip else sheet
+    table = find_table(kept, block.columns, block.header_row if header_row else None)
     if table is None:
         return None
+    left_out = [
+        (n, "left out by the recipe's skip") for n in sorted(skip) if any(not is_blank(c) for c in sheet.rows[n - 1])
+    ]
+    table = replace(table, aside=[*table.aside, *left_out])
     # A heading that this sheet lacks may stand in the sheet it is joined with; `_check_mapped` sees to it.
     here = {role: heading for role, heading in block.columns.items() if _has_heading(table, heading)}
     try:

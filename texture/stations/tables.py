@@ -80,9 +80,12 @@ def find_table(sheet: Sheet, mapped: Mapping[str, str] | None = None, header_row
         If `header_row` lies outside the sheet or on an empty row.
     """
     rows = sheet.rows
-    where = Where(sheet.file, sheet.name, across=sheet.across)
+    sample = "certificate" if sheet.own_header else "column" if sheet.across else "row"
+    where = Where(sheet.file, sheet.name, sample=sample)
     named = {plain(heading) for heading in (mapped or {}).values()}
-    if header_row is not None:
+    if sheet.own_header:
+        first = last = 0
+    elif header_row is not None:
         if header_row > len(rows) or all(is_blank(c) for c in rows[header_row - 1]):
             raise where.error(
                 "an empty row", "the first header line", "correct header_row in the recipe", row=header_row
@@ -104,6 +107,9 @@ def find_table(sheet: Sheet, mapped: Mapping[str, str] | None = None, header_row
     if start < len(rows) and _is_units_row(rows[start]):
         units = [c.strip() if isinstance(c, str) else "" for c in _padded(rows[start], width)]
         start += 1
+    if sheet.own_header:
+        columns = [list(column) for column in zip(*(_padded(row, width) for row in rows[1:]), strict=True)]
+        return Table(where, headings, lowest, [""] * width, columns, list(range(1, len(rows))), [], (1, 1))
     aside = [(i + 1, "title or note above the table") for i in range(first) if _filled(rows[i])]
     aside += [(i + 1, "header line") for i in range(first, last + 1) if _filled(rows[i])]
     aside += [(i + 1, "units row") for i in range(last + 1, start)]

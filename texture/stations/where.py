@@ -29,17 +29,17 @@ def shown(cell: object) -> str:
 class Where:
     """A file, a sheet (empty for text tables) and the heading of a column (empty for the whole row).
 
-    `across` tells that samples stand side by side: their "rows" are the sheet's columns.
+    `sample` tells what a sample is there: a row; a column, where samples stand side by side; or a certificate.
     """
 
     file: str
     sheet: str = ""
     column: str = ""
-    across: bool = False
+    sample: str = "row"
 
     def at(self, column: str) -> Where:
         """Return the same file and sheet with another column."""
-        return Where(self.file, self.sheet, column, self.across)
+        return Where(self.file, self.sheet, column, self.sample)
 
     def text(self, row: int | None = None) -> str:
         """Words for the place; rows are numbered as the spreadsheet shows them, from 1."""
@@ -47,9 +47,9 @@ class Where:
         if self.sheet:
             words += f', sheet "{self.sheet}"'
         if row is not None:
-            words += f", {'column' if self.across else 'row'} {row}"
+            words += f", {self.sample} {row}"
         if self.column:
-            words += f', {"row" if self.across else "column"} "{self.column}"'
+            words += f', {"row" if self.sample == "column" else "column"} "{self.column}"'
         return words
 
     def error(self, found: str, expected: str, do: str, row: int | None = None) -> SampleError:

@@ -238,6 +238,55 @@ LAYOUTS = (
     Case("a scale of bare sizes", text([["Station", "Latitude", "Longitude", "Sieve mm:", 2, 0.25, 0.063, "pan"], *[[*r[:3], "", r[5], 20.0, r[4] - 20.0, r[3]] for r in BASE]])),
 )  # fmt: skip
 
+
+def certificate(row: Row, table: Sequence[Row], place: bool = True) -> list[Row]:
+    """One sample as a laboratory's form: labels with values, and a table of sizes under them."""
+    where = [["Latitude", row[1], "", "Longitude:", row[2]]] if place else []
+    return [
+        ["Grain size certificate"],
+        ["Sample:", row[0]],
+        *where,
+        ["Analyst: initials"],
+        [],
+        *table,
+        ["Total", 100.0],
+    ]
+
+
+def sieves(row: Row, tare: float | None = None) -> list[Row]:
+    """Grams on each sieve, gross and tare where there is a tare."""
+    grams = [[2, row[5]], [0.25, 0.2 * row[4]], [0.063, 0.8 * row[4]], ["Pan", row[3]]]
+    if tare is None:
+        return [["Sieve (mm)", "Retained (g)", "Cumulative (%)"], *[[s, round(g, 3), 1.0] for s, g in grams]]
+    return [
+        ["Sieve (mm)", "Gross (g)", "Tare (g)"],
+        *[[s, round(g + tare + k, 3), tare + k] for k, (s, g) in enumerate(grams)],
+    ]
+
+
+ONE_EACH = {"rows_read": 6, "rows_not_samples": 0}
+WIDE = ["Station", "Latitude", "Longitude"]
+FORMS = (
+    Case("a certificate on each sheet", xlsx({r[0]: certificate(r, sieves(r)) for r in BASE}), "survey.xlsx", counts=ONE_EACH, notes=("6 certificates, each on a sheet of its own",), atol=1e-9),
+    Case("certificates with gross weights and tares", xlsx({r[0]: certificate(r, sieves(r, 112.5)) for r in BASE}), "survey.xlsx", counts=ONE_EACH, notes=("4 size columns less their tare",), atol=1e-9),
+    Case("certificates beside a sheet of places", xlsx({"Places": POSITIONS_OF_ALL, **{r[0]: certificate(r, sieves(r), place=False) for r in BASE}}), "survey.xlsx", counts=ONE_EACH, notes=("certificates",), atol=1e-9),
+    Case("certificates without an id, on sheets that have one", xlsx({r[0]: [["Latitude", r[1]], ["Longitude", r[2]], ["Mud (%)", r[3]], ["Sand (%)", r[4]], ["Gravel (%)", r[5]]] for r in BASE}), "survey.xlsx", counts=ONE_EACH),
+    Case("certificates stacked", text([line for r in BASE for line in [*certificate(r, sieves(r)), []]]), counts=ONE_EACH, notes=("6 certificates stacked on one sheet; certificate 1 begins in row 1",), atol=1e-9),
+    Case("certificates stacked without a blank line between", text([line for r in BASE for line in [["Station no", r[0]], ["Lat", r[1]], ["Lon", r[2]], ["Depth", 12, "m"], ["Mud", r[3], "%"], ["Sand", r[4], "%"], ["Gravel", r[5], "%"]]]), changed=everywhere(depth_m=12.0), counts=ONE_EACH),
+    Case("certificates of classes in µm and percent", xlsx({r[0]: certificate(r, [["Size class (µm)", "Percent (%)"], [">2000", r[5]], ["250-2000", 0.0], ["63-250", r[4]], ["<63", r[3]]]) for r in BASE}), "survey.xlsx", counts=ONE_EACH, atol=1e-9),
+    Case("certificates with what passed each sieve", xlsx({r[0]: certificate(r, [["Sieve (mm)", "Passing (%)"], [2, 100 - r[5]], [0.25, 100 - r[5]], [0.063, r[3]]]) for r in BASE}), "survey.xlsx", counts=ONE_EACH, atol=1e-9),
+    Case("a layout that the recipe says", text([list(c) for c in zip(*table(), strict=True)]), block={"layout": "columns"}, notes=("samples stand side by side",)),
+    Case("rows that the recipe leaves out", text([*table()[:3], ["A9", 54.2, 3.3, 50, 50, 0, ""], *table()[3:]]), block={"skip": [4]}, counts={"rows_read": 8, "rows_not_samples": 2}),
+    Case("a line above the header that the recipe leaves out", text([["Station", "Latitude", "Longitude", "Mud", "Sand", "Gravel", "as agreed"], *table()]), block={"skip": [1]}, counts={"rows_read": 8, "rows_not_samples": 2}),
+    Case("gross and tare of each size", text([[*WIDE, ">2 mm gross (g)", ">2 mm tare (g)", "0.063-2 mm gross (g)", "0.063-2 mm tare (g)", "<0.063 mm gross (g)", "<0.063 mm tare (g)"], *[[*r[:3], r[5] + 80, 80, r[4] + 81.5, 81.5, r[3] + 79, 79] for r in BASE]]), notes=("3 size columns less their tare",), atol=1e-9),
+    Case("gross and tare of the parts", text([[*WIDE, *(f"{p} {w} (g)" for p in ("Mud", "Sand", "Gravel") for w in ("gross", "tare"))], *[[*r[:3], r[3] + 50, 50, r[4] + 51, 51, r[5] + 52, 52] for r in BASE]]), notes=('less its tare "Sand tare (g)"',), atol=1e-9),
+    Case("fines weighed on a split", text([[*WIDE, "Split factor <2 mm", ">2 mm (g)", "0.25-2 mm (g)", "0.063-0.25 mm (g)", "<0.063 mm (g)"], *[[*r[:3], s, r[5], 0.0, r[4] / f, r[3] / f] for r, (s, f) in zip(BASE, [("1/4", 4), ("4", 4), (0.25, 4), (8, 8), ("", 1), (1, 1)], strict=True)]]), notes=("classes below 2 mm times the split factor",), atol=1e-9),
+    Case("sieves and pan weighed on a split", text([[*WIDE, "Split", "2 mm (g)", "0.25 mm (g)", "0.063 mm (g)", "pan (g)"], *[[*r[:3], 8, r[5], 0.0, r[4] / 8, r[3] / 8] for r in BASE]]), block={"split_below_mm": 2.0}, notes=("classes below 2 mm times the split factor",), atol=1e-9),
+    Case("a split of which nothing says the size", text([[*WIDE, "Split factor", ">2 mm (g)", "0.25-2 mm (g)", "0.063-0.25 mm (g)", "<0.063 mm (g)"], *[[*r[:3], 8 if r[0] == "A2" else 1, r[5], 0.0, r[4], r[3]] for r in BASE]]), gone=("A2",), counts={"rows_used": 5, "rows_set_aside": 1, "stations": 5}, aside=("a split factor of 8, and nothing says below which size; say split_below_mm",), atol=1e-9),
+    Case("sub-classes as percent of the sand", text([[*WIDE, ">2 mm (%)", "0.5-2 mm (% of sand)", "0.063-0.5 mm (% of sand)", "<0.063 mm (%)"], *[[*r[:3], r[5], 40.0, 60.0, r[3]] for r in BASE]]), notes=("2 size columns are percent of the sand",), atol=1e-9),
+    Case("sub-classes as percent of the sand beside the sand", text([[*HEAD, "Fine sand (% of sand)", "63-250 µm (% of sand)", "250-2000 µm (% of sand)", ">2000 µm (% of gravel)"], *[[*r, 10.0, 60.0, 40.0, 100.0] for r in rows()]])),
+)  # fmt: skip
+
 DATES = (
     Case("day before month", text([[*HEAD, "Date"], *[[*r, f"{d}/05/1987"] for r, d in zip(rows(), range(11, 17), strict=True)]]), changed={f"A{k + 1}": {"date": f"1987-05-{11 + k}"} for k in range(6)}),
     Case("month before day", text([[*HEAD, "Date"], *[[*r, f"5/{d}/87"] for r, d in zip(rows(), range(11, 17), strict=True)]]), changed={f"A{k + 1}": {"date": f"1987-05-{11 + k}"} for k in range(6)}),
@@ -272,4 +321,4 @@ TOGETHER = (
     ),
 )  # fmt: skip
 
-CASES = (*FILES, *TABLES, *LANGUAGES, *COLUMNS, *CELLS, *POSITIONS, *FATES, *LAYOUTS, *DATES, *TOGETHER)
+CASES = (*FILES, *TABLES, *LANGUAGES, *COLUMNS, *CELLS, *POSITIONS, *FATES, *LAYOUTS, *FORMS, *DATES, *TOGETHER)
