@@ -66,11 +66,11 @@ def gather_certificates(sheets: Sequence[Sheet], forced: bool = False) -> list[S
         The gathered one in the place of the first certificate, its first row the headings.
     """
     fewest = 1 if forced else 2
-    out = [_unstacked(sheet, fewest) or sheet for sheet in sheets]
+    out = [_unstacked(sheet) or sheet for sheet in sheets]
     forms = {
         i: form
         for i, sheet in enumerate(out)
-        if not sheet.own_header and not sheet.hidden and len(sheet.rows) <= FORM and len(sheets) > 1
+        if not sheet.own_header and not sheet.hidden and len(sheet.rows) <= FORM and (forced or len(sheets) > 1)
         if (form := _read_form(sheet.rows)).is_one(named=bool(sheet.name))
     }
     first = next(iter(forms), -1)
@@ -81,16 +81,16 @@ def gather_certificates(sheets: Sequence[Sheet], forced: bool = False) -> list[S
         if "id" not in form.roles:
             form.values = {"Sample": out[i].name, **form.values}
     note = f'{out[first].file}: {len(forms)} certificates, each on a sheet of its own; certificate 1 is on sheet "{out[first].name}"'
-    gathered = _table_of(out[first], CERTIFICATES, list(forms.values()), note)
+    gathered = _table_of(out[first], CERTIFICATES if out[first].name else "", list(forms.values()), note)
     return [gathered if i == first else sheet for i, sheet in enumerate(out) if i == first or i not in forms]
 
 
-def _unstacked(sheet: Sheet, fewest: int) -> Sheet | None:
-    """One row for each certificate stacked on a sheet; None if there are too few."""
+def _unstacked(sheet: Sheet) -> Sheet | None:
+    """One row for each certificate stacked on a sheet; None if there are fewer than two."""
     if len(sheet.rows) > LONGEST:
         return None
     ids = [i for i, row in enumerate(sheet.rows) if _names_sample(row)]
-    if len(ids) < fewest:
+    if len(ids) < 2:
         return None
     starts: list[int] = []
     for k, i in enumerate(ids):

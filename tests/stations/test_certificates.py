@@ -1,0 +1,52 @@
+"""Certificates: a file for each sample, forms that are none, and what is said when there are none."""
+
+import pytest
+
+from tests.stations.samples import HEADER, ROWS, as_csv, recipe_for
+from texture.errors import SampleError
+from texture.stations import read_samples
+from texture.stations.certificates import gather_certificates
+from texture.stations.files import Sheet
+
+SIEVES = [["Sieve (mm)", "Retained (g)"]]
+
+
+def form(row):
+    grams = [[2, row[5]], [0.25, 0.0], [0.063, row[4]], ["pan", row[3]]]
+    return [["Sample:", row[0]], ["Latitude", row[1]], ["Longitude", row[2]], *SIEVES, *grams]
+
+
+def test_one_file_for_each_sample(tmp_path):
+    blocks = []
+    for row in ROWS:
+        path = tmp_path / f"{row[0]}.csv"
+        path.write_text(as_csv(form(row)))
+        blocks.append({"file": path, "survey": "forms"})
+    stations = read_samples(recipe_for(*blocks))
+    assert stations.table["id"].tolist() == [r[0] for r in ROWS]
+    assert stations.table["mud"].tolist() == pytest.approx([r[3] / 100 for r in ROWS])
+    assert stations.counts["rows_used"] == 6
+
+
+def test_a_table_of_samples_is_no_certificate():
+    for rows in ([HEADER, *ROWS], [list(c) for c in zip(HEADER, *ROWS, strict=True)]):
+        sheets = [Sheet("a.xlsx", "One", rows), Sheet("a.xlsx", "Two", rows)]
+        assert gather_certificates(sheets, forced=True) == sheets
+
+
+def test_a_layout_that_is_not_there_is_refused(read):
+    with pytest.raises(SampleError, match=r'survey\.csv: no certificates found, expected labels such as "Sample"'):
+        read([HEADER, *ROWS], block={"layout": "certificates"})
+
+
+def test_a_row_to_skip_beyond_the_sheet_is_refused(read):
+    with pytest.raises(SampleError, match="found skip = 70 in the recipe, expected numbers up to 7; correct skip"):
+        read([HEADER, *ROWS], block={"skip": [70]})
+
+
+def test_a_message_names_the_certificate(tmp_path, read):
+    stacked = [line for r in ROWS for line in [*form(r), []]]
+    stacked[7][1] = "12;5"
+    stations = read(stacked)
+    assert stations.set_aside["row"].tolist() == [1]
+    assert 'column "pan (g)": cannot read "12;5"' in stations.set_aside["reason"][0]
