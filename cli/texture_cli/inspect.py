@@ -29,10 +29,17 @@ def inspect(
         float | None,
         typer.Option("--water-layer", help="The model's thinnest layer of water in metres.", show_default=False),
     ] = None,
+    active_layer: Annotated[
+        float | None,
+        typer.Option("--active-layer", help="Thickness in metres that the model mixes at once.", show_default=False),
+    ] = None,
+    cf: Annotated[
+        bool, typer.Option("--cf", help="Run the CF compliance checker as well, where it is installed (seconds).")
+    ] = False,
     quiet: Quiet = False,
     as_json: JsonFlag = False,
 ) -> None:
-    """Check a bed file: holes, sums, thickness, rim, land, isolated cells, grain properties.
+    """Check a bed file: holes, sums, thickness, rim, land, isolated cells, grain properties, CF.
 
     Exit code 1 when a check fails.
 
@@ -41,9 +48,12 @@ def inspect(
 
     def work(progress: Any) -> Report:
         from texture.bed import check_bed
-        from texture.output import bed_arrays, open_bed
+        from texture.output import bed_arrays, check_cf, open_bed
 
-        checks = check_bed(bed_arrays(open_bed(bed, names)), erosion_depth, time_step, water_layer)
+        arrays = bed_arrays(open_bed(bed, names))
+        checks = check_bed(arrays, erosion_depth, time_step, water_layer, active_layer)
+        if cf:
+            checks.append(check_cf(bed))
         width = max(len(c.name) for c in checks)
         lines = [f"{c.verdict:<5} {c.name:<{width}}  {c.detail}" for c in checks]
         counts = {verdict: sum(c.verdict == verdict for c in checks) for verdict in ("pass", "warn", "fail")}

@@ -110,3 +110,32 @@ def test_grains_that_fall_through_a_layer_in_one_step():
     assert (found.verdict, found.detail) == ("warn", "more than the 2 m of water: gravel 24 m")
     assert verdicts(good(), time_step_s=1.0, water_layer_m=2.0)["fall in a time step"].verdict == "pass"
     assert "fall in a time step" not in verdicts(good())
+
+
+def test_first_layer_against_the_active_layer():
+    assert verdicts(good(), active_layer_m=0.1)["first layer"].verdict == "pass"
+    found = verdicts(good(), active_layer_m=0.25)["first layer"]
+    assert found.verdict == "warn"
+    assert "39 cells, (row, column) (0, 3)" in found.detail
+    assert verdicts(replace(good(), erodible_thickness=None), active_layer_m=0.1)["first layer"].verdict == "warn"
+    assert "first layer" not in verdicts(good())
+
+
+def flat(bed, pairs=None):
+    """The same bed as a list of cells."""
+    n = bed.water.size
+    values = {
+        name: getattr(bed, name).reshape(*getattr(bed, name).shape[:-2], n)
+        for name in ("class_fraction", "water", "erodible_thickness", "dry_density", "porosity", "class_mass_content",
+                     "evidence", "rim_weight")
+    }  # fmt: skip
+    return replace(bed, **values, pairs=pairs)
+
+
+def test_cells_without_rows_and_columns_get_the_same_verdicts():
+    for bed in (good(), isolated(), changed("class_fraction", (0, 0, 3, 2), 0.0)):
+        grid, mesh, places = verdicts(bed), verdicts(flat(bed, bed.neighbours)), verdicts(flat(bed))
+        assert {k: c.verdict for k, c in grid.items()} == {k: c.verdict for k, c in mesh.items()}
+        assert set(grid) - set(places) == {"isolated water", "jumps"}
+    assert "1 cells, number 23" in verdicts(flat(bed))["sums"].detail
+    assert verdicts(flat(replace(good(), rim_weight=np.zeros((6, 7)))))["rim"].verdict == "warn"

@@ -62,6 +62,6 @@ def test_a_bed_with_a_hole_fails(tmp_path):
 
 
 def test_unexpected_dimensions(tmp_path):
-    data = open_bed(written(tmp_path)).isel(row=0)
-    with pytest.raises(BedError, match="expected class, layer and two dimensions of cells"):
+    data = open_bed(written(tmp_path)).isel(layer=0)
+    with pytest.raises(BedError, match="expected class, layer and one or two"):
         bed_arrays(data)

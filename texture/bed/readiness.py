@@ -9,12 +9,12 @@ from typing import Literal
 import numpy as np
 from numpy.typing import NDArray
 
-from texture.bed.cells import Bools, Floats
+from texture.bed.cells import Bools, Floats, Ints
 from texture.bed.classes import COMPUTED_ABOVE_M
 
 __all__ = ["BedArrays", "Check", "check_bed"]
 
-Verdict = Literal["pass", "warn", "fail"]
+Verdict = Literal["pass", "warn", "fail", "skip"]
 
 STORED = 1e-12
 """Largest departure of a sum from 1 in double precision."""
@@ -31,8 +31,8 @@ class Check:
     Attributes
     ----------
     name : str
-    verdict : {"pass", "warn", "fail"}
-        `fail`: a model will stop, or start with wrong mass. `warn`: it will run; look first.
+    verdict : {"pass", "warn", "fail", "skip"}
+        `fail`: a model will stop, or start with wrong mass. `warn`: it will run; look first. `skip`: not looked at.
     detail : str
         What was found, and where.
     """
@@ -46,17 +46,21 @@ class Check:
 class BedArrays:
     """A bed as read from a file; None where the file does not have it.
 
+    The cells have two dimensions (rows, columns) or one (a mesh, a list of places), written `*cells` here.
+
     Attributes
     ----------
     names : tuple of str
         Sediment classes.
-    class_fraction : float array, shape (k, layer, rows, columns)
-    water : bool array, shape (rows, columns), or None
-    erodible_thickness, dry_density, porosity : float arrays, shape (layer, rows, columns), or None
-    class_mass_content : float array, shape (k, layer, rows, columns), or None
-    evidence : int array, shape (layer, rows, columns), or None
-    rim_weight : float array, shape (rows, columns), or None
+    class_fraction : float array, shape (k, layer, *cells)
+    water : bool array, shape (*cells), or None
+    erodible_thickness, dry_density, porosity : float arrays, shape (layer, *cells), or None
+    class_mass_content : float array, shape (k, layer, *cells), or None
+    evidence : int array, shape (layer, *cells), or None
+    rim_weight : float array, shape (*cells), or None
     diameter_m, settling_velocity_m_s, critical_stress_pa : float arrays, shape (k,), or None
+    pairs : int array, shape (m, 2), or None
+        Neighbouring cells of a mesh, by their flat numbers; rows and columns need none.
     """
 
     names: tuple[str, ...]
@@ -71,6 +75,16 @@ class BedArrays:
     diameter_m: Floats | None = None
     settling_velocity_m_s: Floats | None = None
     critical_stress_pa: Floats | None = None
+    pairs: Ints | None = None
+
+    @property
+    def neighbours(self) -> Ints | None:
+        """Pairs of neighbouring cells by their flat numbers; None where nothing is known of them."""
+        if self.wet.ndim != 2:
+            return self.pairs
+        index = np.arange(self.wet.size, dtype=np.int64).reshape(self.wet.shape)
+        across = np.column_stack([index[:, :-1].ravel(), index[:, 1:].ravel()])
+        return np.concatenate([across, np.column_stack([index[:-1].ravel(), index[1:].ravel()])])
 
     @property
     def wet(self) -> Bools:
@@ -85,6 +99,7 @@ def check_bed(
     erosion_depth_m: float = 1.0,
     time_step_s: float | None = None,
     water_layer_m: float | None = None,
+    active_layer_m: float | None = None,
 ) -> list[Check]:
     """Check a bed.
 
@@ -97,6 +112,9 @@ def check_bed(
     time_step_s, water_layer_m : float, optional
         The model's time step and thinnest layer of water: with both, grains that fall through more than
         one layer in one step are named.
+    active_layer_m : float, optional
+        Thickness of the layer that the model mixes at once; a thinner first layer gets a warning, since the layer
+        below, where nobody sampled, is then mixed in from the first step.
 
     Returns
     -------
@@ -108,6 +126,8 @@ def check_bed(
     checks += _thickness(bed, erosion_depth_m)
     if time_step_s is not None and water_layer_m is not None:
         checks += _fall(bed, time_step_s, water_layer_m)
+    if active_layer_m is not None:
+        checks += _active_layer(bed, active_layer_m)
     return checks
 
 
@@ -158,17 +178,18 @@ def _mass(bed: BedArrays) -> Iterator[Check]:
 
 
 def _rim(bed: BedArrays) -> Iterator[Check]:
-    outer = np.zeros(bed.wet.shape, dtype=bool)
-    outer[[0, -1]] = outer[:, [0, -1]] = True
-    outer &= bed.wet
+    outer = _outer_edge(bed)
     if bed.rim_weight is None or not (bed.rim_weight > 0.0).any():
-        verdict: Verdict = "warn" if outer.any() else "pass"
-        yield Check("rim", verdict, f"no rim; {int(outer.sum())} water cells lie on the outer edge")
+        if outer is None:
+            yield Check("rim", "warn", "no rim; where the outer edge of these cells lies, the file does not say")
+        else:
+            verdict: Verdict = "warn" if outer.any() else "pass"
+            yield Check("rim", verdict, f"no rim; {int(outer.sum())} water cells lie on the outer edge")
         return
-    bare = outer & (bed.rim_weight == 0.0)
     detail = f"{int((bed.rim_weight > 0.0).sum()):,} cells"
-    if bare.any():
-        detail += f"; {int(bare.sum())} water cells of the outer edge have none (river inlets, or sides left out)"
+    bare = 0 if outer is None else int((outer & (bed.rim_weight == 0.0)).sum())
+    if bare:
+        detail += f"; {bare} water cells of the outer edge have none (river inlets, or sides left out)"
     yield Check("rim", "pass", detail)
     if bed.diameter_m is not None:
         fine = bed.diameter_m < COMPUTED_ABOVE_M
@@ -176,6 +197,15 @@ def _rim(bed: BedArrays) -> Iterator[Check]:
         mud = bed.class_fraction[fine].sum(axis=0)[:, edge].max(initial=0.0)
         verdict = "pass" if mud == 0.0 else "warn"
         yield Check("rim is coarse", verdict, f"at most {100 * mud:.3g} % finer than 63 µm at the open edge")
+
+
+def _outer_edge(bed: BedArrays) -> Bools | None:
+    """Water cells of the first and last rows and columns; None for meshes and places."""
+    if bed.wet.ndim != 2:
+        return None
+    outer = np.zeros(bed.wet.shape, dtype=bool)
+    outer[[0, -1]] = outer[:, [0, -1]] = True
+    return outer & bed.wet
 
 
 def _land(bed: BedArrays) -> Iterator[Check]:
@@ -193,23 +223,20 @@ def _land(bed: BedArrays) -> Iterator[Check]:
 
 
 def _neighbours(bed: BedArrays) -> Iterator[Check]:
-    wet = bed.wet
-    beside = np.zeros(wet.shape, dtype=np.int64)
-    beside[1:] += wet[:-1]
-    beside[:-1] += wet[1:]
-    beside[:, 1:] += wet[:, :-1]
-    beside[:, :-1] += wet[:, 1:]
-    alone = wet & (beside == 0)
+    pairs = bed.neighbours
+    if pairs is None:
+        return
+    wet = bed.wet.ravel()
+    a, b = pairs[wet[pairs].all(axis=1)].T
+    beside = np.zeros(wet.size, dtype=bool)
+    beside[a] = beside[b] = True
+    alone = (wet & ~beside).reshape(bed.wet.shape)
     yield Check("isolated water", "warn" if alone.any() else "pass", _places(alone) if alone.any() else "none")
-    surface = bed.class_fraction[:, 0]
-    jump = np.zeros(wet.shape)
-    for axis in (0, 1):
-        step = np.abs(np.diff(surface, axis=axis + 1)).sum(axis=0) / 2.0
-        both = (wet[1:] & wet[:-1]) if axis == 0 else (wet[:, 1:] & wet[:, :-1])
-        step = np.where(both, np.nan_to_num(step), 0.0)
-        target = jump[1:] if axis == 0 else jump[:, 1:]
-        np.maximum(target, step, out=target)
-    sharp = jump > JUMP
+    surface = bed.class_fraction[:, 0].reshape(len(bed.class_fraction), -1)
+    jump = np.zeros(wet.size)
+    step = np.abs(surface[:, a] - surface[:, b]).sum(axis=0) / 2.0
+    np.maximum.at(jump, b, np.nan_to_num(step))
+    sharp = (jump > JUMP).reshape(bed.wet.shape)
     detail = f"largest {100 * jump.max(initial=0.0):.0f} % of the bed between neighbours"
     yield Check("jumps", "warn" if sharp.any() else "pass", f"{detail}: {_places(sharp)}" if sharp.any() else detail)
 
@@ -287,6 +314,17 @@ def _fall(bed: BedArrays, time_step_s: float, water_layer_m: float) -> list[Chec
     ]
 
 
+def _active_layer(bed: BedArrays, active_layer_m: float) -> list[Check]:
+    if bed.erodible_thickness is None:
+        return [Check("first layer", "warn", "the file does not say how thick the bed is")]
+    first = bed.erodible_thickness[0][bed.wet]
+    thin = first < active_layer_m
+    detail = f"{_span(first)} m, active layer {active_layer_m:g} m"
+    if thin.any():
+        detail += f"; thinner, so that what lies below is mixed in from the first step: {_wet_places(bed, thin)}"
+    return [Check("first layer", "warn" if thin.any() else "pass", detail)]
+
+
 def _span(values: Floats) -> str:
     known = values[np.isfinite(values)]
     return f"{known.min():.3g} to {known.max():.3g}" if known.size else "no value"
@@ -300,8 +338,12 @@ def _wet_places(bed: BedArrays, which: Bools) -> str:
 
 
 def _places(where: Bools) -> str:
-    """How many cells, and the first three by row and column from 0."""
-    rows, columns = np.nonzero(where)
-    first = ", ".join(f"({r}, {c})" for r, c in zip(rows[:3].tolist(), columns[:3].tolist(), strict=True))
-    more = ", …" if rows.size > 3 else ""
-    return f"{rows.size:,} cells, (row, column) {first}{more}"
+    """How many cells, and the first three by row and column, or by number, from 0."""
+    found = np.nonzero(where)
+    if where.ndim == 1:
+        first = ", ".join(str(i) for i in found[0][:3].tolist())
+    else:
+        first = ", ".join(f"({', '.join(map(str, place))})" for place in np.column_stack(found)[:3].tolist())
+    word = "number" if where.ndim == 1 else "(row, column)"
+    more = ", …" if found[0].size > 3 else ""
+    return f"{found[0].size:,} cells, {word} {first}{more}"

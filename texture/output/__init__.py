@@ -3,6 +3,7 @@
 from texture.output.bed_nc import bed_dataset
 from texture.output.cf import write_netcdf
 from texture.output.class_colours import class_colours
+from texture.output.compliance import check_cf
 from texture.output.folder import ResultFolder
 from texture.output.geotiff import pixel_grid, write_geotiff, write_geotiffs
 from texture.output.into import check_into, stores_single, write_into
@@ -23,6 +24,7 @@ __all__ = [
     "bed_dataset",
     "bed_outline",
     "cell_table",
+    "check_cf",
     "check_into",
     "check_outputs",
     "class_colours",

@@ -66,14 +66,14 @@ def bed_arrays(dataset: xr.Dataset) -> BedArrays:
     Raises
     ------
     BedError
-        If the class fractions do not lie on classes, layers and two dimensions of cells.
+        If the class fractions do not lie on classes, layers and one or two dimensions of cells.
     """
     fraction = dataset["class_fraction"]
     cells = [str(d) for d in fraction.dims if d not in ("class", "layer")]
-    if len(cells) != 2 or fraction.ndim != 4:
+    if not 1 <= len(cells) <= 2 or fraction.ndim != len(cells) + 2:
         raise BedError(
-            f"class_fraction lies on ({', '.join(map(str, fraction.dims))}), expected class, layer and two dimensions "
-            "of cells"
+            f"class_fraction lies on ({', '.join(map(str, fraction.dims))}), expected class, layer and one or two "
+            "dimensions of cells"
         )
 
     def take(name: str, *leading: str) -> Any:
@@ -96,4 +96,31 @@ def bed_arrays(dataset: xr.Dataset) -> BedArrays:
         diameter_m=take("grain_diameter", "class"),
         settling_velocity_m_s=take("settling_velocity", "class"),
         critical_stress_pa=take("critical_stress", "class"),
+        pairs=_mesh_pairs(dataset, cells[0]) if len(cells) == 1 else None,
     )
+
+
+def _mesh_pairs(dataset: xr.Dataset, cell: str) -> Any:
+    """Neighbours on a UGRID mesh: faces that share a side, or nodes that a side joins; None without a mesh."""
+    found = [v for v in dataset.variables.values() if v.attrs.get("cf_role") == "face_node_connectivity"]
+    if not found:
+        return None
+    faces = np.nan_to_num(found[0].values, nan=-1.0).astype(np.int64) - int(found[0].attrs.get("start_index", 0))
+    sides = _sides(faces)
+    if found[0].dims[0] != cell:
+        return np.unique(sides[:, :2], axis=0)
+    order = np.lexsort((sides[:, 1], sides[:, 0]))
+    ordered = sides[order]
+    same = (ordered[1:, :2] == ordered[:-1, :2]).all(axis=1)
+    return np.column_stack([ordered[:-1, 2][same], ordered[1:, 2][same]])
+
+
+def _sides(faces: Any) -> Any:
+    """Every side of every face, shape (sides, 3): its two nodes, the smaller first, and the face."""
+    count = (faces >= 0).sum(axis=1)
+    sides = []
+    for k in range(faces.shape[1]):
+        some = np.flatnonzero(count > k)
+        ends = np.column_stack([faces[some, k], faces[some, (k + 1) % count[some]]])
+        sides.append(np.column_stack([np.sort(ends, axis=1), some]))
+    return np.concatenate(sides)
