@@ -1,5 +1,6 @@
 """Seconds for a million compositions of three parts: forward, inverse, expected, quantiles and class."""
 
+import argparse
 import time
 from collections.abc import Callable
 
@@ -49,5 +50,7 @@ def composition(rows: int = 1_000_000, seed: int = 1) -> dict[str, float]:
 
 
 if __name__ == "__main__":
-    for step, value in composition().items():
+    parser = argparse.ArgumentParser(description=__doc__)
+    parser.add_argument("--rows", type=int, default=1_000_000)
+    for step, value in composition(parser.parse_args().rows).items():
         print(f"{step:32s} {value:8.3f} s")
