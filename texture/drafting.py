@@ -4,11 +4,20 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from pathlib import Path
+from typing import TYPE_CHECKING
 
 from texture.errors import RecipeError, TargetError
+from texture.placing import on_sphere
 from texture.recipe import TargetSettings
 from texture.stations.draft import draft_recipe
+from texture.stations.plausible import DepthAt
 from texture.targets import Target, read_target
+
+if TYPE_CHECKING:
+    import numpy as np
+    from numpy.typing import NDArray
+
+    Floats = NDArray[np.float64]
 
 __all__ = ["draft"]
 
@@ -60,7 +69,8 @@ def draft(
             raise RecipeError(f"{path}: no such file")
     target, problem = _look_at(grid)
     extent = target.bounds if target is not None else None
-    text = draft_recipe(files, recipe_path.absolute().parent, grid, extent)
+    depth_at = _depth_at(target) if target is not None else None
+    text = draft_recipe(files, recipe_path.absolute().parent, grid, extent, depth_at=depth_at)
     text += _grid_lines(target, problem) + RIM + CLASSES
     aside = recipe_path.with_name(f".{recipe_path.name}.new")
     aside.write_text(text, encoding="utf-8")
@@ -75,6 +85,25 @@ def _look_at(grid: str | Path | None) -> tuple[Target | None, str]:
         return read_target(TargetSettings(file=Path(grid))), ""
     except TargetError as error:
         return None, str(error)
+
+
+def _depth_at(target: Target) -> DepthAt | None:
+    """The grid's depth at the nearest cell of any place; NaN on land and more than a cell off the grid; None without depths."""
+    if target.depth_m is None:
+        return None
+    import numpy as np
+    from scipy.spatial import KDTree
+
+    located = np.flatnonzero(np.isfinite(target.longitude) & np.isfinite(target.latitude))
+    tree = KDTree(on_sphere(target.longitude[located], target.latitude[located]))
+    depth = np.where(target.active, target.depth_m, np.nan)[located]
+    side = np.sqrt(target.area_m2[located])
+
+    def depth_at(longitude: Floats, latitude: Floats) -> Floats:
+        distance, cell = tree.query(on_sphere(longitude, latitude))
+        return np.where(distance <= side[cell], depth[cell], np.nan)
+
+    return depth_at
 
 
 def _grid_lines(target: Target | None, problem: str) -> str:

@@ -15,7 +15,7 @@ from texture.targets.land import on_land
 if TYPE_CHECKING:
     from texture.stations import Stations
 
-__all__ = ["place_stations"]
+__all__ = ["on_sphere", "place_stations"]
 
 Floats = NDArray[np.float64]
 
@@ -93,12 +93,12 @@ def _nearest(lon: Floats, lat: Floats, target: Target, among: NDArray[np.bool_])
     from scipy.spatial import KDTree
 
     cells = np.flatnonzero(among & np.isfinite(target.longitude) & np.isfinite(target.latitude))
-    tree = KDTree(_on_sphere(target.longitude[cells], target.latitude[cells]))
-    distance, index = tree.query(_on_sphere(lon, lat))
+    tree = KDTree(on_sphere(target.longitude[cells], target.latitude[cells]))
+    distance, index = tree.query(on_sphere(lon, lat))
     return cells[index], np.asarray(distance)
 
 
-def _on_sphere(lon: Floats, lat: Floats) -> Floats:
+def on_sphere(lon: Floats, lat: Floats) -> Floats:
     """Points of a sphere of the Earth's mean radius: nearness within a cell needs no ellipsoid."""
     radius_m = 6_371_008.8
     x, y = np.radians(lon), np.radians(lat)

@@ -71,6 +71,9 @@ class Samples(Settings):
     hemisphere: Literal["", "N", "S", "E", "W", "NE", "NW", "SE", "SW"] = Field(
         "", description="half of the globe of degrees that carry neither sign nor letter; north and east if empty"
     )
+    degrees: Literal["decimal", "minutes"] = Field(
+        "decimal", description='what 54.30 says: degrees with decimals, or 54 degrees and 30 minutes if "minutes"'
+    )
     basis: Literal["whole", "below_2mm"] = Field(
         "whole", description="whether the laboratory saw the whole sample or only what passed 2 mm"
     )

@@ -11,6 +11,7 @@ from texture.errors import SampleError
 from texture.recipe_file import read_recipe
 from texture.stations import read_samples
 from texture.stations.draft import draft_recipe
+from texture.stations.plausible import depth_doubts
 
 DEMO = Path(__file__).parents[2] / "demo_samples" / "kestrel_bight"
 DEMO_FILES = ["survey_1987.xlsx", "survey_2004.csv", "lab_2016.xlsx", "notes_1962.ods"]
@@ -110,8 +111,13 @@ def test_a_missing_projection_is_told_by_the_other_files(files, tmp_path):
     metres = [[r[0], *(round(v, 1) for v in to_metres.transform(r[2], r[1] + 0.01)), *r[3:6]] for r in ROWS]
     head = ["Station", "Easting", "Northing", *HEADER[3:6]]
     alone = files(metres=[head, *metres])
-    with pytest.raises(SampleError, match="easting and northing without a coordinate system"):
-        draft_recipe(alone, tmp_path)
+    text = draft_recipe(alone, tmp_path)
+    assert "# DOUBT: not read yet: metres.csv" in text
+    assert "easting and northing without a coordinate system" in text
+    filled = text.replace('# crs = "EPSG:…" ', 'crs = "EPSG:32631" # ').replace(
+        '# file = "grid.nc"', 'file = "metres.csv"'
+    )
+    assert read(filled, tmp_path).counts["rows_used"] == 6
     text = draft_recipe([*files(survey=[HEADER, *ROWS]), *alone], tmp_path)
     assert 'crs = "EPSG:32631"' in text
     assert "# DOUBT: no file says which system these metres are in" in text
@@ -135,6 +141,79 @@ def test_a_file_that_cannot_be_read_becomes_a_comment(files, tmp_path):
     text = draft_recipe(files(survey=[HEADER, *ROWS], letter=[["Dear colleague"], ["see", "below"]]), tmp_path)
     assert "# NOT READ: letter.csv: no table of samples found" in text
     assert read(text, tmp_path).counts["stations"] == 6
+
+
+def test_a_lone_file_without_a_table_is_shown_for_a_person_to_fill_in(files, tmp_path):
+    bare = files(bare=[[r[0], *r[1:6]] for r in ROWS])
+    text = draft_recipe(bare, tmp_path)
+    assert "# DOUBT: not read yet: bare.csv: no table of samples found" in text
+    assert '# row 1: "A1" | "54.101" | "3.201" | "12.5" | "80.0" | "7.5"' in text
+    assert '[[samples]]\nfile = "bare.csv"' in text
+    with pytest.raises(SampleError, match="empty"):
+        draft_recipe(files(empty=[]), tmp_path)
+
+
+def sea(longitude, latitude):
+    """A sea of a tenth of a degree around the stations, 20 to 40 m deep, rough enough to know one place from another."""
+    x, y = 100.0 * (longitude - 3.2), 100.0 * (latitude - 54.1)
+    on = (x > -2) & (x < 8) & (y > -2) & (y < 8)
+    return np.where(on, 30.0 + 6.0 * np.sin(1.7 * x) + 4.0 * np.cos(2.3 * y), np.nan)
+
+
+def depths(n=24):
+    rng = np.random.default_rng(7)
+    lon, lat = 3.2 + 0.06 * rng.random(n), 54.1 + 0.06 * rng.random(n)
+    return lon, lat, sea(lon, lat) + rng.normal(0, 0.5, n), np.arange(2, n + 2)
+
+
+def test_depths_that_agree_say_so():
+    lines = depth_doubts(*depths(), sea)
+    assert len(lines) == 1
+    assert lines[0].startswith("reported depths agree with the grid's: median difference 0.")
+    assert lines[0].endswith("over 24 rows")
+
+
+@pytest.mark.parametrize(
+    ("mistake", "cure", "metres"),
+    [
+        (lambda x, y: (y, x), "latitude and longitude may be swapped", False),
+        (lambda x, y: (-x, y), 'hemisphere = "W"', False),
+        (lambda x, y: (-x, -y), 'hemisphere = "SW"', False),
+        (lambda x, y: (3 + (x - 3) * 0.6, 54 + (y - 54) * 0.6), 'degrees = "minutes"', False),
+        (lambda x, y: (x - 6.0, y), "one zone further east", True),
+    ],
+)
+def test_depths_find_the_mistake_in_positions(mistake, cure, metres):
+    lon, lat, depth, rows = depths()
+    lines = depth_doubts(*mistake(lon, lat), depth, rows, sea, metres)
+    assert len(lines) == 1
+    assert "reported depths do not agree with the grid's (no row on water)" in lines[0]
+    assert cure in lines[0]
+
+
+def test_depths_find_single_rows_and_other_units():
+    lon, lat, depth, rows = depths()
+    lon[5], (lon[9], lat[9]) = -lon[5], (lat[9], lon[9])
+    lines = depth_doubts(lon, lat, depth, rows, sea)
+    assert any("rows 7 disagree" in line and 'hemisphere = "W"' in line for line in lines)
+    assert any("rows 11 disagree" in line and "swapped" in line for line in lines)
+    lon, lat, depth, rows = depths()
+    assert "check positions, crs and the unit of depth" in depth_doubts(lon, lat, depth / 1.8288, rows, sea)[0]
+    assert depth_doubts(lon[:7], lat[:7], depth[:7], rows[:7], sea) == []
+
+
+def test_degrees_and_minutes_typed_as_decimals_are_read_when_the_recipe_says_so(request):
+    read_table = request.getfixturevalue("read")  # the name is taken by this file's own reader of drafts
+    rows = [[r[0], 54 + (r[1] - 54) * 0.6, *r[2:]] for r in ROWS]
+    for row in rows:
+        row[2] = 3 + (row[2] - 3) * 0.6
+    stations = read_table([HEADER, *rows, ["A7", 54.7, 3.2, 10, 90, 0, ""]], block={"degrees": "minutes"})
+    table = stations.table
+    assert stations.set_aside["reason"].tolist() == [
+        'latitude 54.7: minutes of 60 or more, and the recipe says degrees = "minutes"'
+    ]
+    np.testing.assert_allclose(table["latitude"], [r[1] for r in ROWS], atol=1e-9)
+    np.testing.assert_allclose(table["longitude"], [r[2] for r in ROWS], atol=1e-9)
 
 
 def test_a_workbook_with_a_sheet_for_each_year(tmp_path):

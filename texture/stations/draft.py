@@ -16,18 +16,26 @@ from texture.recipe import COLUMN_ROLES, Intake, Samples
 from texture.stations.audit import AuditLog
 from texture.stations.certificates import CERTIFICATES
 from texture.stations.columns import Column
-from texture.stations.files import Cell, is_blank
+from texture.stations.files import Cell, is_blank, read_sheets
 from texture.stations.headings import PARTS, plain
+from texture.stations.plausible import (
+    DepthAt,
+    Extent,
+    depth_doubts,
+    extent_doubts,
+    extent_of,
+    look_like_minutes,
+    overlap,
+)
 from texture.stations.rows import read_rows
 from texture.stations.sources import Source, find_source, sheets_with_samples
 from texture.stations.tables import Table
 from texture.stations.where import shown
 
-__all__ = ["Extent", "draft_recipe"]
+__all__ = ["draft_recipe"]
 
-Extent = tuple[float, float, float, float]
 DETECTION_LIMIT = 0.005  # of the recipe's default; a draft only counts rows with it
-MARGIN = 0.25  # of an extent's own size; surveys reach beyond a model's edge
+ROWS_SHOWN = 4  # of a file in which no table was found
 _ORDER = {role: i for i, role in enumerate(COLUMN_ROLES)}
 
 
@@ -39,10 +47,18 @@ class _Look:
     block: Samples
     source: Source | None = None
     error: str = ""
+    shown: list[str] = field(default_factory=list)
     counts: dict[str, int] = field(default_factory=dict)
     notes: list[str] = field(default_factory=list)
     doubts: list[str] = field(default_factory=list)
     extent: Extent | None = None
+    places: tuple[npt.NDArray[np.float64], ...] = ()
+    rows: npt.NDArray[np.int64] | None = None
+
+    @property
+    def metres(self) -> bool:
+        """Whether positions are easting and northing."""
+        return self.source is not None and not {"latitude", "position"} & set(self.source.columns)
 
 
 def draft_recipe(
@@ -51,11 +67,13 @@ def draft_recipe(
     grid: str | Path | None = None,
     grid_extent: Extent | None = None,
     title: str = "Untitled bed",
+    depth_at: DepthAt | None = None,
 ) -> str:
     """Write a starting recipe as TOML text.
 
     Nothing is guessed silently: what was taken for what stands in the recipe, each with an example, and what is in
-    doubt stands there as a comment. A file that cannot be read as it is becomes a comment with its reason.
+    doubt stands there as a comment. A file that cannot be read as it is becomes a comment with its reason; if no file can,
+    its block is written all the same, for a person to fill in what is missing.
 
     Parameters
     ----------
@@ -67,6 +85,8 @@ def draft_recipe(
     grid_extent : (west, south, east, north), optional, degrees
         Extent of the grid, by which a projection that no file names can be told.
     title : str
+    depth_at : callable (longitude, latitude) → depth in metres, optional
+        The grid's depth at the nearest cell, NaN off the grid and on land; reported depths are held against it.
 
     Returns
     -------
@@ -75,14 +95,15 @@ def draft_recipe(
     Raises
     ------
     SampleError
-        If not one of the files can be read.
+        If not one of the files holds cells that can be read.
     """
     looks = [look for file in files for look in _looks(Path(file))]
     known = _together([look.extent for look in looks if look.extent] + ([grid_extent] if grid_extent else []))
     looks = [_with_projection(look, grid_extent or known) for look in looks]
     for look in looks:
-        _doubt_position(look, grid_extent)
-    if all(look.source is None or look.error for look in looks):
+        _doubt_position(look, grid_extent, depth_at)
+    none = all(look.error for look in looks)
+    if none and not any(look.source is not None or look.shown for look in looks):
         raise SampleError("; ".join(look.error for look in looks))
     lines = [
         "# A draft: read it through, above all where it says DOUBT. Paths are relative to this file.",
@@ -92,7 +113,7 @@ def draft_recipe(
         "",
     ]
     for look in looks:
-        lines += _block_lines(look, Path(base))
+        lines += _block_lines(look, Path(base), none)
     lines += _target_lines(looks, Path(base), grid)
     return "\n".join(lines) + "\n"
 
@@ -113,39 +134,47 @@ def _look(file: Path, crs: str | None = None, sheet: str | None = None) -> _Look
         frame, notes = read_rows(look.source, look.block, Intake(), DETECTION_LIMIT, AuditLog())
     except (SampleError, RecipeError) as error:
         look.error = str(error)
+        look.shown = _first_rows(look) if look.source is None else []
         return look
     look.notes = [*look.source.sheet.notes, *look.source.notes, *notes]
     look.counts = {str(k): int(v) for k, v in frame["fate"].value_counts().items()}
     look.doubts += [f"DOUBT: {note}" for note in notes if "tells the unit" in note or "headings say" in note]
     lon, lat = frame["longitude"].to_numpy(), frame["latitude"].to_numpy()
-    if "latitude" in look.source.columns and _look_like_minutes(lon, lat):
+    if "latitude" in look.source.columns and look_like_minutes(lon, lat):
         look.doubts.append(
-            "DOUBT: no position has decimals of .60 or more: these may be degrees and minutes typed as decimals"
+            "DOUBT: no position has decimals of .60 or more: these may be degrees and minutes typed as decimals; "
+            'then say degrees = "minutes"'
         )
-    look.extent = _extent(lon, lat)
+    look.extent = extent_of(lon, lat)
+    look.places, look.rows = (lon, lat, frame["depth_m"].to_numpy()), frame["row"].to_numpy()
     return look
 
 
-def _look_like_minutes(lon: npt.NDArray[np.float64], lat: npt.NDArray[np.float64]) -> bool:
-    """Whether all decimals stay below .60, which thirty positions in decimal degrees do by chance once in 10^13.
+def _first_rows(look: _Look) -> list[str]:
+    """The first filled rows of a file in which no table was found; empty if it cannot be read at all."""
+    try:
+        sheets = read_sheets(look.file)
+    except SampleError:
+        return []
+    lines = []
+    for sheet in sheets:
+        filled = [(i + 1, row) for i, row in enumerate(sheet.rows) if any(not is_blank(c) for c in row)]
+        for number, row in filled[:ROWS_SHOWN]:
+            cells = " | ".join(shown(c) for c in row if not is_blank(c))
+            lines.append(f"{f'sheet {sheet.name!r}, ' if sheet.name else ''}row {number}: {cells[:150]}")
+    return lines
 
-    Tested only where the positions span a degree; within less they may well share their decimals.
-    """
-    both = np.concatenate([lon, lat])
-    both = np.abs(both[np.isfinite(both)])
-    if len(both) < 60 or min(np.ptp(lon[np.isfinite(lon)]), np.ptp(lat[np.isfinite(lat)])) < 1.0:
-        return False
-    return bool((both % 1.0 < 0.6).all())
 
-
-def _extent(lon: npt.NDArray[np.float64], lat: npt.NDArray[np.float64]) -> Extent | None:
-    """Extent of most positions: one lost sign must not stretch it."""
-    keep = np.isfinite(lon) & np.isfinite(lat)
-    if not keep.any():
-        return None
-    west, east = np.percentile(lon[keep], [2, 98])
-    south, north = np.percentile(lat[keep], [2, 98])
-    return float(west), float(south), float(east), float(north)
+def _doubt_position(look: _Look, grid: Extent | None, depth_at: DepthAt | None) -> None:
+    if not look.places or look.rows is None:
+        return
+    lon, lat, depth = look.places
+    missed = extent_doubts(lon, lat, grid, look.metres) if grid is not None else []
+    told = depth_doubts(lon, lat, depth, look.rows, depth_at, look.metres) if depth_at is not None else []
+    if any("if this is cured" in line for line in told):
+        missed = []  # the depths say it better
+    look.doubts += missed + [line for line in told if line.startswith("DOUBT")]
+    look.notes += [line for line in told if not line.startswith("DOUBT")]
 
 
 def _together(extents: list[Extent]) -> Extent | None:
@@ -153,12 +182,6 @@ def _together(extents: list[Extent]) -> Extent | None:
         return None
     west, south, east, north = zip(*extents, strict=True)
     return min(west), min(south), max(east), max(north)
-
-
-def _overlap(one: Extent, other: Extent) -> bool:
-    dx, dy = MARGIN * (other[2] - other[0]) + 1e-3, MARGIN * (other[3] - other[1]) + 1e-3
-    x, y = (one[0] + one[2]) / 2, (one[1] + one[3]) / 2
-    return other[0] - dx <= x <= other[2] + dx and other[1] - dy <= y <= other[3] + dy
 
 
 def _with_projection(look: _Look, around: Extent | None) -> _Look:
@@ -175,7 +198,7 @@ def _with_projection(look: _Look, around: Extent | None) -> _Look:
     for zone in range(max(1, first - 1), min(60, last + 1) + 1):
         for code in (32600 + zone, 32700 + zone):
             tried = _look(look.file, f"EPSG:{code}", look.block.sheet)
-            if not tried.error and tried.extent is not None and _overlap(tried.extent, around):
+            if not tried.error and tried.extent is not None and overlap(tried.extent, around):
                 fits.append(tried)
     if not fits:
         look.doubts.append("DOUBT: easting and northing in no UTM zone around here; give crs")
@@ -189,31 +212,30 @@ def _with_projection(look: _Look, around: Extent | None) -> _Look:
     return found
 
 
-def _doubt_position(look: _Look, grid: Extent | None) -> None:
-    """Say what would bring positions that miss the grid onto it: swapped columns, a lost sign."""
-    if grid is None or look.extent is None or _overlap(look.extent, grid):
-        return
-    west, south, east, north = look.extent
-    tries = {
-        "latitude and longitude may be swapped: exchange them under columns": (south, west, north, east),
-        'longitudes may be west: hemisphere = "W"': (-east, south, -west, north),
-        'latitudes may be south: hemisphere = "S"': (west, -north, east, -south),
-        'positions may be south and west: hemisphere = "SW"': (-east, -north, -west, -south),
-    }
-    fitting = [words for words, extent in tries.items() if _overlap(extent, grid)]
-    found = f"{west:.3f} to {east:.3f}, {south:.3f} to {north:.3f}"
-    look.doubts.append(f"DOUBT: positions ({found}) miss the grid" + ("; " + "; ".join(fitting) if fitting else ""))
+def _block_lines(look: _Look, base: Path, none_read: bool) -> list[str]:
+    """The block of one file; of one that cannot be read as it is, as a comment unless no other file can be read either."""
+    if not look.error:
+        return _readable_lines(look, base)
+    lines = [f"# {doubt}" for doubt in look.doubts]
+    lines.append(f"# {'DOUBT: not' if none_read else 'NOT'} READ: {look.error}".replace("not READ", "not read yet"))
+    lines += [f"# {row}" for row in look.shown]
+    block = _readable_lines(_Look(look.file, look.block, look.source), base) if look.source is not None else [
+        "[[samples]]", f"file = {_path(look.file, base)}", "# header_row = 1", "", "[samples.columns]",
+        *(f'# {role} = "the heading there"' for role in ("id", "latitude", "longitude", "mud", "sand", "gravel")), "",
+    ]  # fmt: skip
+    if "without a coordinate system" in look.error:
+        block.insert(2, '# crs = "EPSG:…"               # the system of easting and northing')
+    return lines + [line if none_read or not line or line.startswith("#") else f"# {line}" for line in block]
 
 
-def _block_lines(look: _Look, base: Path) -> list[str]:
+def _readable_lines(look: _Look, base: Path) -> list[str]:
     source = look.source
     lines = [f"# {note}" for note in look.notes]
     lines += [f"# {doubt}" for doubt in look.doubts]
     if look.counts:
         fates = ", ".join(f"{look.counts[f]} {f.replace('_', ' ')}" for f in look.counts)
         lines.append(f"# rows: {fates}")
-    if source is None or look.error:
-        lines += [f"# NOT READ: {look.error}", "# [[samples]]", f"# file = {_path(look.file, base)}", ""]
+    if source is None:
         return lines
     lines += ["[[samples]]", f"file = {_path(look.file, base)}"]
     own = source.sheet.own_header
@@ -281,7 +303,11 @@ def _target_lines(looks: list[_Look], base: Path, grid: str | Path | None) -> li
         return ["[target]", f"file = {_path(Path(grid), base)}"]
     extent = _together([look.extent for look in looks if look.extent])
     if extent is None:
-        return ["# [target]: no positions found to propose a raster around"]
+        return [
+            "# DOUBT: no positions were read to propose a raster around; give a grid file, or bounds, cell_size and crs",
+            "[target]",
+            '# file = "grid.nc"',
+        ]
     west, south, east, north = extent
     code = (32600 if south + north >= 0 else 32700) + int(((west + east) / 2 + 180.0) // 6.0) + 1
     bounds, size = _metric_bounds(extent, code)

@@ -55,6 +55,7 @@ def read_degrees(
     rows: Sequence[int],
     crs: str | None = None,
     hemisphere: str = "",
+    minutes: bool = False,
 ) -> Positions:
     """Read columns of longitude and latitude in degrees.
 
@@ -68,6 +69,8 @@ def read_degrees(
         Geographic system of the degrees; WGS 84 if absent.
     hemisphere : str, default ""
         Letters of the halves of the globe in which unsigned degrees lie: "W" makes 3.2 to 3.2 degrees west.
+    minutes : bool, default False
+        Whether plain numbers are degrees and minutes, 54.30 half a degree above 54.
 
     Raises
     ------
@@ -76,8 +79,8 @@ def read_degrees(
     RecipeError
         If `crs` is unknown or in metres.
     """
-    lon, lon_half, lon_problem = _angles(longitude, "longitude", where[0], rows)
-    lat, lat_half, lat_problem = _angles(latitude, "latitude", where[1], rows)
+    lon, lon_half, lon_problem = _angles(longitude, "longitude", where[0], rows, minutes)
+    lat, lat_half, lat_problem = _angles(latitude, "latitude", where[1], rows, minutes)
     accuracy = _accuracy_m(lon_half, lat_half, lat)
     if "W" in hemisphere:
         lon = np.where(_bare(longitude), -lon, lon)
@@ -127,7 +130,7 @@ def placed(
 
 
 def _angles(
-    cells: Sequence[Cell], axis: str, where: Where, rows: Sequence[int]
+    cells: Sequence[Cell], axis: str, where: Where, rows: Sequence[int], minutes: bool = False
 ) -> tuple[FloatArray, FloatArray, npt.NDArray[np.object_]]:
     """Degrees, half steps in degrees and problems of one column."""
     n = len(cells)
@@ -137,6 +140,12 @@ def _angles(
     if plain:
         numbers = read_numbers([cells[i] for i in plain], where, [rows[i] for i in plain])
         value[plain], half[plain] = numbers.value, numbers.half_width
+        if minutes:
+            whole = np.trunc(value)
+            beyond = np.abs(value - whole) >= 0.6 - 1e-9
+            for i in map(int, np.flatnonzero(beyond)):
+                problem[i] = f'{axis} {value[i]:.10g}: minutes of 60 or more, and the recipe says degrees = "minutes"'
+            value, half = np.where(beyond, np.nan, whole + (value - whole) / 0.6), half / 0.6
     limit = 90.0 if axis == "latitude" else 360.0
     outside = np.abs(value) > limit
     if outside.sum() > 0.5 * np.isfinite(value).sum():

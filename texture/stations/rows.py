@@ -158,16 +158,17 @@ def _positions(table: Table, columns: Mapping[str, Column], block: Samples) -> P
     def place(role: str) -> Where:
         return table.where.at(columns[role].heading)
 
+    said = block.crs, block.hemisphere, block.degrees == "minutes"
     degrees = "latitude" in columns and "longitude" in columns
     metres = "easting" in columns and "northing" in columns
     if degrees and metres and block.crs is not None:
         degrees = not is_projected(block.crs)
     if degrees:
         where = place("longitude"), place("latitude")
-        return read_degrees(cells("longitude"), cells("latitude"), where, table.rows, block.crs, block.hemisphere)
+        return read_degrees(cells("longitude"), cells("latitude"), where, table.rows, *said)
     if metres and not degrees and _hold_degrees(columns, block):
         pair = place("easting"), place("northing")
-        return read_degrees(cells("easting"), cells("northing"), pair, table.rows, block.crs, block.hemisphere)
+        return read_degrees(cells("easting"), cells("northing"), pair, table.rows, *said)
     if metres and "zone" in columns and block.crs is None:
         where = place("easting"), place("northing")
         zone = table.columns[columns["zone"].index]
@@ -177,9 +178,7 @@ def _positions(table: Table, columns: Mapping[str, Column], block: Samples) -> P
         return from_metres(cells("easting"), cells("northing"), where, table.rows, block.crs)
     if "position" in columns:
         latitude, longitude = split_pairs(cells("position"))
-        return read_degrees(
-            longitude, latitude, (place("position"), place("position")), table.rows, block.crs, block.hemisphere
-        )
+        return read_degrees(longitude, latitude, (place("position"), place("position")), table.rows, *said)
     raise _no_column(table, "columns of latitude and longitude, or of easting and northing", "name them")
 
 
