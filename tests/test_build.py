@@ -176,14 +176,14 @@ def test_gdalinfo_and_ncdump_read_the_files(plain, need_tool):
     assert "flag_meanings" in header
 
 
-def test_names_file_gives_the_model_its_own_words(demo_recipe, tmp_path, plain):
+def test_names_file_gives_the_model_its_own_words(demo_recipe, tmp_path):
     result = build(demo_recipe, output=tmp_path / "out", validation={"compare": [], "folds": "random", "count": 2})
     with xr.open_dataset(tmp_path / "out" / "bed.nc", decode_cf=False) as bed:
         assert {"share_of_fine_mud", "share_of_medium_sand", "bed_height", "packed_weight"} <= set(bed.data_vars)
         assert bed["share_of_gravel"].dims == ("strat", "j", "i")
         wet = result.found.target.active.reshape(result.found.target.shape)
         np.testing.assert_allclose(
-            bed["share_of_gravel"].to_numpy()[0][wet], plain.bed.class_fraction[3, 0].reshape(wet.shape)[wet]
+            bed["share_of_gravel"].to_numpy()[0][wet], result.bed.class_fraction[3, 0].reshape(wet.shape)[wet]
         )
 
 
@@ -202,7 +202,7 @@ def test_provenance_tells_inputs_and_no_path_of_this_machine(plain):
 
 
 def test_second_opinion_agrees(plain):
-    assert plain.opinion is not None
+    assert plain.look is not None
     assert plain.summary()["second_opinion"] is not None
     json.dumps(plain.summary(), allow_nan=False)
 
