@@ -22,6 +22,7 @@ from texture.progress import Progress, Silent
 from texture.recipe import Recipe
 from texture.recipe_file import read_recipe
 from texture.result import Intake, Result, Validated
+from texture.second_look import second_look
 from texture.stations import Stations, read_samples
 from texture.structure.plane import Plane
 from texture.targets import Target, points_per_side, read_target
@@ -93,7 +94,6 @@ def build(
     """
     from texture.bed import Water, make_bed, moved_by
     from texture.output import ResultFolder
-    from texture.predict.second_opinion import second_opinion
     from texture.writing import write_all
 
     clock, progress = Clock(), progress or Silent()
@@ -105,17 +105,15 @@ def build(
         per_side = points_per_side(recipe.target.points_per_cell, found.cell_side_m, found.range_m)
         estimate = estimate_on(target, mapper, found.plane, found.observations.points, found.reach_m, per_side,
                                progress, median=recipe.method.estimate == "median")  # fmt: skip
-    with clock.stage("second opinion"):
-        opinion = (
-            second_opinion(mapper.predictor, found.cell_centres, seed=recipe.seed) if mapper.has_variance else None
-        )
+    with clock.stage("second look"), progress.stage("second look"):
+        look = second_look(mapper, found.cell_centres, recipe.seed)
     with clock.stage("bed"):
         bed = make_bed(estimate.fractions, estimate.evidence, target, recipe.bed, recipe.rim, recipe.composition.parts,
                        rim_cells(recipe, target))  # fmt: skip
         water = Water(recipe.bed.water.temperature_c, recipe.bed.water.salinity)
         moved = tuple(moved_by(condition, bed, target, water) for condition in read_conditions(recipe, target))
         inventory = make_inventory(found, estimate, bed)
-    result = Result(found, estimate, per_side, opinion, bed, clock, moved=moved, inventory=inventory)
+    result = Result(found, estimate, per_side, look, bed, clock, moved=moved, inventory=inventory)
     with clock.stage("write"), progress.stage("write"):
         return write_all(result, folder, Path(recipe_path))
 

@@ -18,6 +18,7 @@ if TYPE_CHECKING:
     from texture.mapping import Mapper
     from texture.observations import Observations
     from texture.recipe import Recipe
+    from texture.second_look import SecondLook
     from texture.stations import Stations
     from texture.structure.plane import Plane
     from texture.targets import Target
@@ -128,8 +129,8 @@ class Result:
         The map, flat over the target's cells.
     points_per_side : int
         Points along each side of a cell that its value was averaged over.
-    opinion : record or None
-        The second opinion on a handful of cells.
+    look : SecondLook or None
+        What came of solving some cells again.
     bed : Bed
     clock : Clock
     files : tuple of Path
@@ -143,7 +144,7 @@ class Result:
     found: Validated
     estimate: Estimate
     points_per_side: int
-    opinion: Any
+    look: SecondLook | None
     bed: Bed
     clock: Clock
     files: tuple[Path, ...] = field(default=())
@@ -190,7 +191,7 @@ class Result:
             "hiding": settings.hiding,
             "inventory": [{k: known(v) for k, v in vars(stock).items()} for stock in self.inventory],
             "mobility": [mobility_record(m) for m in self.moved],
-            "second_opinion": None if self.opinion is None else self.opinion.to_dict(),
+            **(self.look.to_dict() if self.look is not None else {"second_opinion": None, "neighbourhood": None}),
             "answer": self.answer(),
             "seconds": {name: round(value, 3) for name, value in self.clock.seconds.items()},
             "files": [p.name for p in self.files],

@@ -65,7 +65,7 @@ def write_all(result: Result, folder: ResultFolder, recipe_path: Path) -> Result
             files=made,
             seed=recipe.seed,
             structure=found.mapper.structure.to_dict(),
-            second_opinion=None if result.opinion is None else result.opinion.to_dict(),
+            **(result.look.to_dict() if result.look is not None else {}),
         )
         write_json(aside / "provenance.json", record)
     return replace(result, files=folder.files)

@@ -209,10 +209,9 @@ def _error_notes(result: Result) -> list[str]:
 
 
 def _opinion_line(result: Result) -> str:
-    if result.opinion is None:
+    if result.look is None:
         return "The method has no variance, so no second opinion was sought."
-    opinion = str(result.opinion)
-    return f"{opinion[0].upper()}{opinion[1:]}."
+    return " ".join(f"{text[0].upper()}{text[1:]}." for text in (str(result.look.opinion), str(result.look.honesty)))
 
 
 def _bed_notes(result: Result) -> list[str]:
