@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
+from dataclasses import dataclass
 from pathlib import Path
 from typing import TYPE_CHECKING
 
@@ -16,7 +17,7 @@ from texture.targets import Target
 if TYPE_CHECKING:
     from texture.bed import Condition
 
-__all__ = ["check_early", "read_conditions", "rim_cells"]
+__all__ = ["check_early", "read_conditions", "read_rim"]
 
 
 def check_early(recipe: Recipe, target: Target) -> None:
@@ -30,17 +31,46 @@ def check_early(recipe: Recipe, target: Target) -> None:
     from texture.output import check_outputs
 
     check_outputs(target, recipe)
-    rim_cells(recipe, target)
+    read_rim(recipe, target)
     read_conditions(recipe, target)
 
 
-def rim_cells(recipe: Recipe, target: Target) -> NDArray[np.bool_] | None:
-    """Cells that the file of `rim.sides` names, shape (n,); None where `sides` is no file."""
-    if recipe.rim is None or not isinstance(recipe.rim.sides, Path):
-        return None
+@dataclass(frozen=True, eq=False)
+class RimInputs:
+    """What files say of the rim.
+
+    Attributes
+    ----------
+    start : bool array, shape (n,), or None
+        Cells that the file of `rim.sides` names.
+    parent : float array, shape (k, layer, n), or None
+        Bed of `rim.parent` in the rim's cells, NaN elsewhere.
+    """
+
+    start: NDArray[np.bool_] | None = None
+    parent: NDArray[np.float64] | None = None
+
+
+def read_rim(recipe: Recipe, target: Target) -> RimInputs:
+    """Read what the rim needs from files, and see that it fits on the grid."""
+    rim = recipe.rim
+    if rim is None:
+        return RimInputs()
+    from texture.bed.rim import rim_weight
+    from texture.output import parent_bed
     from texture.targets.drawn import drawn_cells
 
-    return drawn_cells(recipe.rim.sides, target)
+    start = drawn_cells(rim.sides, target) if isinstance(rim.sides, Path) else None
+    weight = rim_weight(target, rim, start)
+    if rim.parent is None:
+        return RimInputs(start)
+    names = tuple(c.name for c in recipe.bed.classes)
+    rimmed = np.flatnonzero(weight > 0.0)
+    found = np.full((len(names), len(recipe.bed.layers), target.n_cells), np.nan)
+    found[:, :, rimmed] = parent_bed(
+        rim.parent, rim.parent_names, names, len(recipe.bed.layers), target.longitude[rimmed], target.latitude[rimmed]
+    )
+    return RimInputs(start, found)
 
 
 def read_conditions(recipe: Recipe, target: Target) -> tuple[Condition, ...]:

@@ -12,7 +12,7 @@ from typing import Any
 
 from texture.choosing import fit_candidates
 from texture.clock import Clock
-from texture.early import check_early, read_conditions, rim_cells
+from texture.early import check_early, read_conditions, read_rim
 from texture.estimate import estimate_on
 from texture.inventory import make_inventory
 from texture.mapping import make_mapper
@@ -108,8 +108,9 @@ def build(
     with clock.stage("second look"), progress.stage("second look"):
         look = second_look(mapper, found.cell_centres, recipe.seed)
     with clock.stage("bed"):
+        rim = read_rim(recipe, target)
         bed = make_bed(estimate.fractions, estimate.evidence, target, recipe.bed, recipe.rim, recipe.composition.parts,
-                       rim_cells(recipe, target))  # fmt: skip
+                       rim.start, rim.parent)  # fmt: skip
         water = Water(recipe.bed.water.temperature_c, recipe.bed.water.salinity)
         moved = tuple(moved_by(condition, bed, target, water) for condition in read_conditions(recipe, target))
         inventory = make_inventory(found, estimate, bed)

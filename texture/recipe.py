@@ -89,7 +89,8 @@ class Samples(Settings):
         None, description="row number of the first header line, as the spreadsheet shows it"
     )
     layout: Literal["auto", "rows", "columns", "certificates"] = Field(
-        "auto", description="whether samples are rows, columns, or certificates (one a sheet, or stacked); found if `auto`"
+        "auto",
+        description="whether samples are rows, columns, or certificates (one a sheet, or stacked); found if `auto`",
     )
     skip: tuple[Annotated[int, Field(ge=1)], ...] = Field(
         (), description="row numbers, as the spreadsheet shows them, that are neither headings nor samples"
@@ -408,6 +409,11 @@ class Rim(Settings):
     profile: Literal["cosine", "linear", "step"] = Field("cosine", description="how the rim fades into the estimate")
     classes: dict[str, Fraction] | None = Field(None, description="rim bed in classes, summing to 1")
     composition: dict[str, Fraction] | None = Field(None, description="rim bed in parts, summing to 1")
+    parent: Path | None = Field(
+        None,
+        description="bed file of the larger model that this one is nested in: the rim takes its bed, class by class",
+    )
+    parent_names: Path | None = Field(None, description="names file that the parent was written through")
 
     @field_validator("sides", mode="before")
     @classmethod
@@ -425,8 +431,12 @@ class Rim(Settings):
     def _complete(self) -> Rim:
         if (self.width_cells is None) == (self.width_m is None):
             raise ValueError("give either width_cells or width_m")
-        if (self.classes is None) == (self.composition is None):
-            raise ValueError("give either classes or composition")
+        if sum(given is not None for given in (self.classes, self.composition, self.parent)) != 1:
+            raise ValueError("give either classes or composition or parent")
+        if self.parent_names is not None and self.parent is None:
+            raise ValueError("parent_names: is of the file in `parent`, which is missing")
+        if self.parent is not None:
+            return self
         total = sum((self.classes or self.composition or {}).values())
         if abs(total - 1.0) > 1e-9:  # typed decimals; anything further off is a mistake
             raise ValueError(f"the rim's fractions sum to {total:g}, expected 1")

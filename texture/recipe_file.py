@@ -223,8 +223,10 @@ def _absolute(recipe: Recipe, base: Path, recipe_name: str) -> Recipe:
         update={"names": fix(recipe.outputs.names, "outputs.names"), "into": fix(recipe.outputs.into, "outputs.into")}
     )
     rim = recipe.rim
-    if rim is not None and isinstance(rim.sides, Path):
-        rim = rim.model_copy(update={"sides": fix(rim.sides, "rim.sides")})
+    if rim is not None:
+        files = {key: fix(getattr(rim, key), f"rim.{key}") for key in ("parent", "parent_names")}
+        sides = fix(rim.sides, "rim.sides") if isinstance(rim.sides, Path) else rim.sides
+        rim = rim.model_copy(update={**files, "sides": sides})
     mobility = tuple(_absolute_condition(m, i, fix) for i, m in enumerate(recipe.mobility))
     output = fix(recipe.output, "output", must_exist=False)
     return recipe.model_copy(

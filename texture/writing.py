@@ -76,7 +76,7 @@ def input_files(recipe: Recipe) -> list[Path]:
     paths: Iterable[Path | None] = (
         *(s.file for s in recipe.samples), *(s.join.file for s in recipe.samples if s.join), recipe.target.file,
         recipe.target.land, recipe.outputs.names, recipe.outputs.into,
-        recipe.rim.sides if recipe.rim and isinstance(recipe.rim.sides, Path) else None,
+        *(p for p in ((recipe.rim.sides, recipe.rim.parent, recipe.rim.parent_names) if recipe.rim else ()) if isinstance(p, Path)),
         *(m.file for m in recipe.mobility),
         *(v for m in recipe.mobility for v in (m.orbital_velocity_m_s, m.period_s, m.current_m_s, m.depth_m) if isinstance(v, Path)),
     )  # fmt: skip

@@ -147,6 +147,7 @@ def make_bed(
     rim: Rim | None = None,
     parts: Sequence[str] = ("mud", "sand", "gravel"),
     rim_start: Bools | None = None,
+    rim_parent: Floats | None = None,
 ) -> Bed:
     """Make the bed: classes, layers, then the rim, then the smallest fractions, then land.
 
@@ -164,6 +165,8 @@ def make_bed(
     parts : sequence of str
     rim_start : bool array, shape (n,), optional
         Cells that the file of `rim.sides` names, where it is a file.
+    rim_parent : float array, shape (k, layer, n), optional
+        Class fractions of the bed in `rim.parent`, where it is given; looked at in rim cells alone.
 
     Raises
     ------
@@ -178,7 +181,7 @@ def make_bed(
     thickness = layer_thickness(settings.layers, cells.active, settings.land_thickness_m, settings.minimum_thickness_m)
     pack = packer(settings.packing, classes, settings.layers)
     weight = np.zeros(n) if rim is None else rim_weight(cells, rim, rim_start)
-    rim_bed = None if rim is None else _rim_bed(rim, classes, parts)
+    rim_bed = _rim_bed(rim, classes, parts) if rim is not None and rim_parent is None else np.empty(0)
 
     fraction = np.empty((len(classes.names), len(settings.layers), n))
     mapped, rimmed, dropped, final = np.zeros((4, *fraction.shape[:2]))  # tonnes by class and layer
@@ -186,12 +189,14 @@ def make_bed(
         volume = cells.area_m2[some] * thickness[:, some]
         layers = layer_fractions(to_classes(fractions[some], classes), settings.layers, classes, parts)
         before = _tonnes(layers, classes, volume, pack)
-        if rim_bed is not None:
-            layers = blend(layers, weight[some], rim_bed)
+        if rim is not None:
+            layers = blend(
+                layers, weight[some], rim_bed if rim_parent is None else _parent_bed(rim_parent, some, weight)
+            )
         kept, small = drop_small(layers, settings.least_fraction)
         fraction[:, :, some] = kept
         mapped += before
-        rimmed += _tonnes(layers, classes, volume, pack) if rim_bed is not None else before
+        rimmed += _tonnes(layers, classes, volume, pack) if rim is not None else before
         dropped += _tonnes(layers, classes, volume, pack, of=small)
         final += _tonnes(kept, classes, volume, pack)
     land = np.flatnonzero(~cells.active)
@@ -273,7 +278,14 @@ def _place(cells: Cells, where: NDArray[np.bool_]) -> str:
     return ", ".join(f"{word} {i}" for word, i in zip(words, index, strict=True)) + " (from 0)"
 
 
+def _parent_bed(parent: Floats, some: NDArray[np.int64], weight: Floats) -> Floats:
+    """The parent's bed in some cells; 0 outside the rim, where it may not be known."""
+    return np.where(weight[some] > 0.0, parent[:, :, some], 0.0)
+
+
 def _rim_bed(rim: Rim, classes: ClassProperties, parts: Sequence[str]) -> Floats:
+    if rim.parent is not None:
+        raise BedError(f"rim.parent is a file ({rim.parent.name}); its bed has to be given as well")
     if rim.composition is not None:
         return composition_in_classes(rim.composition, classes, parts)
     given = rim.classes or {}

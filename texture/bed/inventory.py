@@ -7,8 +7,9 @@ from dataclasses import dataclass
 from itertools import pairwise
 
 import numpy as np
+from numpy.typing import NDArray
 
-from texture.bed.build import Bed
+from texture.bed.build import CELLS_AT_ONCE, Bed
 from texture.bed.cells import Bools, Cells, Floats, Ints
 from texture.recipe import Bed as BedSettings
 
@@ -138,22 +139,28 @@ def take_stock(
     stocks = []
     for group in groups:
         some = np.flatnonzero(group.cells)
-        area = cells.area_m2[some]
+        area_km2 = float(cells.area_m2[some].sum() / 1e6)
         for k, name in enumerate(classes.names):
-            tonnes = float((bed.class_mass_content[k][:, some] * area).sum() / 1000.0)
-            part, gain = classes.part[k], mapped[some] * classes.share[k]
-            below = gain * np.maximum(fractions[some, part] - quantiles[0, some, part], 0.0)
-            above = gain * np.maximum(quantiles[2, some, part] - fractions[some, part], 0.0)
-            factor = np.sqrt(mean_correlation(some, below + above, alike, seed))
-            low, high = tonnes - factor * below.sum(), tonnes + factor * above.sum()
+            tonnes, below, above = 0.0, 0.0, 0.0
+            weights = np.empty(some.size, dtype=np.float32)
+            for start in range(0, some.size, CELLS_AT_ONCE):
+                here = some[start : start + CELLS_AT_ONCE]
+                part, gain = classes.part[k], mapped[here] * classes.share[k]
+                down = gain * np.maximum(fractions[here, part] - quantiles[0, here, part], 0.0)
+                up = gain * np.maximum(quantiles[2, here, part] - fractions[here, part], 0.0)
+                weights[start : start + CELLS_AT_ONCE] = down + up
+                below, above = below + down.sum(), above + up.sum()
+                tonnes += (bed.class_mass_content[k][:, here] * cells.area_m2[here]).sum() / 1000.0
+            factor = np.sqrt(mean_correlation(some, weights, alike, seed))
+            low = float(np.maximum(tonnes - factor * below, 0.0))
             stocks.append(
-                Stock(group.zone, group.depth_from_m, group.depth_to_m, name, int(some.size), float(area.sum() / 1e6),
-                      tonnes, float(np.maximum(low, 0.0)), float(high))
+                Stock(group.zone, group.depth_from_m, group.depth_to_m, name, int(some.size), area_km2, float(tonnes), low,
+                      float(tonnes + factor * above))
             )  # fmt: skip
     return stocks
 
 
-def mean_correlation(cells: Ints, weights: Floats, alike: Alike, seed: int = 1) -> float:
+def mean_correlation(cells: Ints, weights: NDArray[np.floating], alike: Alike, seed: int = 1) -> float:
     """Mean correlation of pairs of cells, each drawn by its weight: Σ w_i w_j ρ_ij / (Σ w)².
 
     With it, the spread of a sum is the sum of the spreads times its square root.
@@ -173,15 +180,16 @@ def mean_correlation(cells: Ints, weights: Floats, alike: Alike, seed: int = 1) 
     >>> mean_correlation(np.arange(4), np.ones(4), lambda a, b: (a == b).astype(float))
     0.25
     """
-    total = weights.sum()
+    total = float(weights.sum(dtype=np.float64))
     if not np.isfinite(total):
         return np.nan
     if total == 0.0:
         return 1.0
     if cells.size <= ALL_PAIRS_TO:
         i, j = (a.ravel() for a in np.indices((cells.size, cells.size)))
-        return float((weights[i] * weights[j] * alike(cells[i], cells[j])).sum() / total**2)
+        exact = weights.astype(np.float64)
+        return float((exact[i] * exact[j] * alike(cells[i], cells[j])).sum() / total**2)
     rng = np.random.default_rng(seed)
-    bounds = np.cumsum(weights) / total
+    bounds = np.cumsum(weights, dtype=np.float64) / total
     drawn = np.minimum(np.searchsorted(bounds, rng.random((2, PAIRS)), side="right"), cells.size - 1)
     return float(np.clip(alike(cells[drawn[0]], cells[drawn[1]]).mean(), 0.0, 1.0))

@@ -127,10 +127,11 @@ def blend(fraction: Floats, weight: Floats, rim_fraction: Floats) -> Floats:
     ----------
     fraction : float array, shape (k, layer, n)
     weight : float array, shape (n,)
-    rim_fraction : float array, shape (k,)
+    rim_fraction : float array, shape (k,) or (k, layer, n)
 
     Returns
     -------
     float array, shape (k, layer, n)
     """
-    return np.asarray((1.0 - weight) * fraction + weight * rim_fraction[:, None, None])
+    rim = rim_fraction[:, None, None] if rim_fraction.ndim == 1 else rim_fraction
+    return np.asarray((1.0 - weight) * fraction + weight * rim)

@@ -10,6 +10,7 @@ from texture.output.into import check_into, stores_single, write_into
 from texture.output.names import Names, read_names
 from texture.output.open_bed import bed_arrays, open_bed
 from texture.output.outline import bed_outline, check_outputs
+from texture.output.parent import parent_bed
 from texture.output.provenance import provenance, write_json
 from texture.output.renaming import apply_names
 from texture.output.tables import write_csv
@@ -29,6 +30,7 @@ __all__ = [
     "check_outputs",
     "class_colours",
     "open_bed",
+    "parent_bed",
     "pixel_grid",
     "provenance",
     "read_names",
