@@ -2,15 +2,17 @@
 
 import time
 import zipfile
+from pathlib import Path
 
 import pytest
 
-from tests.stations.corpus.makers import patched, xlsx
+from tests.stations.corpus.makers import ods, patched, xlsx
 from tests.stations.samples import HEADER, ROWS
 from texture.errors import SampleError
 from texture.stations import extent, workbooks
 from texture.stations.files import read_sheets
 
+LOCKED = Path(__file__).with_name("corpus") / "locked.xlsx"  # made by another program, with a password
 HEAD = b'<worksheet xmlns="http://schemas.openxmlformats.org/spreadsheetml/2006/main"><sheetData>'
 TAIL = b"</sheetData></worksheet>"
 FAR = b"<row r=%s><c r=%s><v>1</v></c></row><row r=%s><c r=%s><v>1</v></c></row>"
@@ -89,7 +91,23 @@ def test_a_damaged_member(tmp_path):
     refused(path, bytes(raw), "damaged|not a readable workbook")
 
 
-def test_a_locked_workbook(tmp_path):
+def test_workbooks_locked_by_a_password(tmp_path):
+    words = "locked by a password; save an unlocked copy"
+    refused(tmp_path / "locked.xlsx", LOCKED.read_bytes(), words)
+
+    def locked(manifest):
+        entry = (
+            b'<manifest:file-entry manifest:full-path="content.xml" manifest:media-type="text/xml" manifest:size="10">'
+        )
+        secret = (
+            b'<manifest:encryption-data manifest:checksum-type="SHA1" manifest:checksum="x"/></manifest:file-entry>'
+        )
+        return manifest.replace(b"</manifest:manifest>", entry + secret + b"</manifest:manifest>")
+
+    refused(tmp_path / "locked.ods", patched(ods([HEADER, *ROWS]), "META-INF/manifest.xml", locked), words)
+
+
+def test_an_old_workbook_of_nothing_but_its_mark(tmp_path):
     # an encrypted package is an OLE file with a stream of that name; a whole one is not needed to be refused in one line
     refused(tmp_path / "locked.xlsx", b"\xd0\xcf\x11\xe0\xa1\xb1\x1a\xe1" + b"\0" * 4000, "not a readable workbook")
 

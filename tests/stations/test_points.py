@@ -37,3 +37,11 @@ def test_what_only_claims_to_be_a_layer(tmp_path):
     (tmp_path / "grabs.gpkg").write_bytes(b"no layer at all")
     with pytest.raises(SampleError, match=r"grabs\.gpkg: not a readable layer of points"):
         read_samples(recipe_for({"file": tmp_path / "grabs.gpkg"}))
+
+
+def test_a_shapefile_needs_what_lies_beside_it(layer, tmp_path):
+    layer.rename(columns={n: n[:8] for n in NAMES}).to_file(tmp_path / "grabs.shp")
+    assert read_samples(recipe_for({"file": tmp_path / "grabs.shp"})).counts["stations"] == 6
+    (tmp_path / "grabs.shx").unlink()
+    with pytest.raises(SampleError, match=r"grabs\.shp: not a readable layer .* needs its \.shx and \.dbf files"):
+        read_samples(recipe_for({"file": tmp_path / "grabs.shp"}))

@@ -12,6 +12,7 @@ __all__ = ["Cell", "Sheet", "is_blank", "read_sheets"]
 
 Cell = object
 POINT_LAYERS = (".gpkg", ".geojson", ".json", ".shp")
+PARQUET = b"PAR1"
 ZIP, OLE = b"PK\x03\x04", b"\xd0\xcf\x11\xe0\xa1\xb1\x1a\xe1"
 
 
@@ -66,9 +67,9 @@ def is_blank(cell: Cell) -> bool:
 
 
 def read_sheets(path: str | Path) -> list[Sheet]:
-    """Read every sheet of a spreadsheet, text table or layer of points.
+    """Read every sheet of a spreadsheet, text table, parquet table or layer of points.
 
-    Spreadsheets and text tables are told apart by their first bytes, not by their names: a `.xls` that is really a
+    Spreadsheets, parquet and text tables are told apart by their first bytes, not by their names: a `.xls` that is really a
     text table is common.
 
     Raises
@@ -88,6 +89,10 @@ def read_sheets(path: str | Path) -> list[Sheet]:
         from texture.stations.points import read_points
 
         return read_points(path)
+    if head.startswith(PARQUET):
+        from texture.stations.parquet_files import read_parquet
+
+        return read_parquet(path)
     if head.startswith((ZIP, OLE)):
         from texture.stations.workbooks import read_workbook
 

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from pathlib import Path
+from typing import TYPE_CHECKING
 
 import numpy as np
 
@@ -10,7 +11,10 @@ from texture.errors import SampleError
 from texture.stations.files import Cell, Sheet
 from texture.stations.headings import roles_in
 
-__all__ = ["read_points"]
+if TYPE_CHECKING:
+    import pandas as pd
+
+__all__ = ["plain_cell", "read_points", "sheet_of_points"]
 
 
 def read_points(path: Path) -> list[Sheet]:
@@ -30,8 +34,9 @@ def read_points(path: Path) -> list[Sheet]:
         layers = [str(name) for name, _ in pyogrio.list_layers(path)]
         sheets = [sheet for name in layers if (sheet := _layer(path, name, len(layers) > 1)) is not None]
     except (pyogrio.errors.DataSourceError, pyogrio.errors.DataLayerError, RuntimeError) as error:
+        beside = "; a Shapefile needs its .shx and .dbf files beside it" if path.suffix.casefold() == ".shp" else ""
         raise SampleError(
-            f"{path.name}: not a readable layer of points ({error}); export it again or as csv"
+            f"{path.name}: not a readable layer of points ({' '.join(str(error).split())[:120]}){beside}; export it again or as csv"
         ) from error
     if not sheets:
         raise SampleError(
@@ -42,9 +47,15 @@ def read_points(path: Path) -> list[Sheet]:
 
 def _layer(path: Path, name: str, several: bool) -> Sheet | None:
     import geopandas as gpd
+
+    return sheet_of_points(gpd.read_file(path, layer=name, engine="pyogrio"), path, name if several else "")
+
+
+def sheet_of_points(frame: pd.DataFrame, path: Path, name: str = "") -> Sheet | None:
+    """Turn points with attributes into a sheet; None if there are shapes other than points, or nothing at all."""
+    import geopandas as gpd
     import pyproj
 
-    frame = gpd.read_file(path, layer=name, engine="pyogrio")
     if not isinstance(frame, gpd.GeoDataFrame) or not len(frame) or not (frame.geom_type.dropna() == "Point").all():
         return None
     notes: tuple[str, ...] = ()
@@ -57,17 +68,18 @@ def _layer(path: Path, name: str, several: bool) -> Sheet | None:
         points = points.to_crs(target)
     table = frame.drop(columns=frame.geometry.name)
     header: list[Cell] = [str(c) for c in table.columns]
-    rows = [[_plain(v) for v in row] for row in table.itertuples(index=False)]
+    rows = [[plain_cell(v) for v in row] for row in table.itertuples(index=False)]
     if not {"latitude", "longitude"} <= roles_in(header):
         header += ["Longitude", "Latitude"] if frame.crs is not None else ["X", "Y"]
         # a point without coordinates is a row without a position
         there = (~points.is_empty & points.notna()).to_numpy()
         for row, ok, point in zip(rows, there, points, strict=True):
             row += [point.x, point.y] if ok else [None, None]
-    return Sheet(path.name, name if several else "", [header, *rows], notes=notes)
+    return Sheet(path.name, name, [header, *rows], notes=notes)
 
 
-def _plain(value: object) -> Cell:
+def plain_cell(value: object) -> Cell:
+    """Return an attribute as a cell: no NaN, no NaT and no number types but Python's own."""
     if value is None or (isinstance(value, float) and np.isnan(value)):
         return None
     if hasattr(value, "to_pydatetime"):
