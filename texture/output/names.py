@@ -264,7 +264,11 @@ def read_names(path: Path, cell_dimensions: Iterable[str] | None = None) -> Name
     if cell_dimensions is not None:
         cells = list(cell_dimensions)
         coordinates = ["longitude", "latitude", "longitude_bounds", "latitude_bounds", "x", "y", "x_bounds", "y_bounds"]
-        names.check(["class", "layer", "condition", "corner", *cells], [*BED_VARIABLES, *coordinates, "crs"], path.name)
+        dimensions = ["class", "layer", "condition", "corner", *cells]
+        if cells[0].startswith("mesh_"):
+            dimensions += ["mesh_face", "mesh_node", "mesh_corner"]
+            coordinates += ["mesh", "mesh_face_nodes", "mesh_node_longitude", "mesh_node_latitude"]
+        names.check(dimensions, [*BED_VARIABLES, *coordinates, "crs"], path.name)
     return names
 
 

@@ -27,7 +27,9 @@ REFERENCES = (
     "coordinates", "bounds", "grid_mapping", "ancillary_variables", "mesh", "node_coordinates", "face_coordinates",
     "face_node_connectivity",
 )  # fmt: skip
-"""CF attributes that hold names of other variables."""
+"""CF and UGRID attributes that hold names of other variables."""
+DIMENSION_REFERENCES = ("face_dimension", "edge_dimension")
+"""UGRID attributes that hold the name of a dimension."""
 
 
 def apply_names(dataset: xr.Dataset, names: Names, where: str = "names") -> xr.Dataset:
@@ -88,7 +90,7 @@ def apply_names(dataset: xr.Dataset, names: Names, where: str = "names") -> xr.D
     labelled = [names.dimensions.get(d, d) for d in ("class", "layer", "condition")]
     made = _without_unused(made, labelled, new_names)
     for variable in made.values():
-        _rewrite_references(variable, new_names, made)
+        _rewrite_references(variable, new_names, made, names.dimensions)
     _add_time(made, names, where)
     order = " ".join(names.dimensions.get(d, d) for d in cells)
     result = xr.Dataset(made, attrs={**dataset.attrs, CELL_ORDER: order})
@@ -227,7 +229,12 @@ def _without_unused(
     return {n: v for n, v in made.items() if n not in labels or not unused.intersection(map(str, v.dims))}
 
 
-def _rewrite_references(variable: xr.Variable, new_names: dict[str, list[str]], made: dict[str, xr.Variable]) -> None:
+def _rewrite_references(
+    variable: xr.Variable, new_names: dict[str, list[str]], made: dict[str, xr.Variable], dimensions: dict[str, str]
+) -> None:
+    for attribute in DIMENSION_REFERENCES:
+        if attribute in variable.attrs:
+            variable.attrs[attribute] = dimensions.get(variable.attrs[attribute], variable.attrs[attribute])
     for attribute in REFERENCES:
         if attribute in variable.attrs:
             words = [new for old in variable.attrs[attribute].split() for new in new_names.get(old, []) if new in made]
@@ -285,11 +292,10 @@ def undo_names(dataset: xr.Dataset, names: Names) -> xr.Dataset:
 
 def _in_order(variable: xr.Variable, cells: tuple[str, ...]) -> xr.Variable:
     """Classes, layers, others, then the cells in the grid's own order; what is not on the cells stays."""
-    if not cells or not set(cells) <= set(variable.dims) or "corner" in variable.dims:
-        return variable
     leading = [d for d in ("class", "layer", "condition") if d in variable.dims]
-    others = [d for d in variable.dims if d not in (*leading, *cells)]
-    return variable.transpose(*leading, *others, *cells)
+    if not cells or set(variable.dims) != {*leading, *cells}:
+        return variable
+    return variable.transpose(*leading, *cells)
 
 
 def _pieces(dataset: xr.Dataset, spec: VariableName) -> list[str]:
