@@ -32,6 +32,7 @@ __all__ = [
     "Samples",
     "TargetSettings",
     "Validation",
+    "Void",
     "WaterColumn",
     "WaterSettings",
 ]
@@ -112,6 +113,18 @@ class Samples(Settings):
         return self
 
 
+class Void(Settings):
+    """A place where older samples no longer hold: dredged, filled, or covered since."""
+
+    polygon: tuple[tuple[float, float], ...] = Field(
+        min_length=3, description="corners as [longitude, latitude] in degrees of WGS 84"
+    )
+    date: dt.date = Field(description="day of the change; samples taken before it are set aside")
+    reason: Annotated[str, Field(min_length=1)] = Field(
+        "dredging", description="what happened, for the account of rows"
+    )
+
+
 class Intake(Settings):
     """What counts as a usable row."""
 
@@ -121,6 +134,10 @@ class Intake(Settings):
     mud_below_mm: Positive = Field(0.063, description="cut between mud and sand for columns of size classes")
     gravel_above_mm: Positive = Field(2.0, description="cut between sand and gravel for columns of size classes")
     surface_m: Positive = Field(0.10, description="samples that begin deeper than this are not the surface")
+    noise_per_decade: Annotated[float, Field(ge=0.0, le=0.5)] = Field(
+        0.0, description="fractions of 1 by which samples are known less well for each decade before the latest"
+    )
+    void: tuple[Void, ...] = Field((), description="places and days before which samples are set aside")
     on_land: Literal["snap", "drop", "keep"] = Field(
         "snap",
         description="stations on land: move to the nearest wet cell within one cell, set aside, or keep",

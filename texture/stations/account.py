@@ -21,10 +21,13 @@ if TYPE_CHECKING:
     import geopandas as gpd
     import pandas as pd
 
-__all__ = ["FATES", "LEDGER_COLUMNS", "TABLE_COLUMNS", "Stations", "check_conservation"]
+__all__ = ["DEEPER_COLUMNS", "FATES", "LEDGER_COLUMNS", "TABLE_COLUMNS", "Stations", "check_conservation"]
 
 FATES = ("used", "merged", "evidence", "set_aside", "not_samples")
 LEDGER_COLUMNS = ("file", "sheet", "row", "id", "fate", "reason", "station")
+DEEPER_COLUMNS = (
+    "id", "survey", "longitude", "latitude", "top_m", "bottom_m", "mud", "sand", "gravel", "kind", "note", "file", "sheet", "row",
+)  # fmt: skip
 TABLE_COLUMNS = (
     "id", "survey", "longitude", "latitude", "mud", "sand", "gravel", "kind", "file", "sheet", "row",
     "date", "depth_m", "resolution", "repeats", "repeat_sd_mud", "repeat_sd_sand", "repeat_sd_gravel",
@@ -53,6 +56,11 @@ class Stations:
         Filled rows of each sheet that was read, counted before anything was understood of them.
     notes : tuple of str
         What a person should know: units found, coordinate operations, sheets not read, hidden rows.
+    deeper : DataFrame
+        `DEEPER_COLUMNS`: what cores found below the surface layer, from the top of each interval to its bottom in metres
+        below the bed (NaN where not told), at the place as read. Fractions are NaN where only words tell of the interval;
+        `note` holds such words, and those on how the core ended or what was recovered. Most of these rows are set aside as
+        samples of the surface; intervals that begin above `intake.surface_m` and reach below it are used there too.
     """
 
     table: gpd.GeoDataFrame
@@ -60,6 +68,7 @@ class Stations:
     ledger: pd.DataFrame
     rows_read: dict[tuple[str, str], int]
     notes: tuple[str, ...] = field(default=())
+    deeper: pd.DataFrame = field(default_factory=lambda: no_rows(DEEPER_COLUMNS))
 
     def __post_init__(self) -> None:
         check_conservation(self)
@@ -173,6 +182,13 @@ class Stations:
 
         head = html.escape(repr(self)).replace("\n", "<br>")
         return f"<p>{head}</p>{self.table.drop(columns='geometry').head(8).to_html(border=0, na_rep='')}"
+
+
+def no_rows(columns: Sequence[str]) -> pd.DataFrame:
+    """A table of these columns without rows."""
+    import pandas as pd
+
+    return pd.DataFrame({c: pd.Series(dtype=object) for c in columns})
 
 
 def check_conservation(stations: Stations) -> None:

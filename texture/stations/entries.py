@@ -69,7 +69,7 @@ def metres_of(source: Source, role: str, notes: list[str]) -> npt.NDArray[np.flo
     unit = column.unit if column.unit in METRES else "m"
     if unit != "m":
         notes.append(f"{place.text()}: {unit} turned to metres")
-    value = value * METRES.get(unit, 1.0)
+    value = np.round(value * METRES.get(unit, 1.0), 9)  # 35 cm are 0.35 m, not a bit more
     known = value[np.isfinite(value)]
     if role == "depth" and len(known) and (known <= 0.0).all() and (known < 0.0).any():
         notes.append(f"{place.text()}: heights turned to depths")

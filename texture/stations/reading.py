@@ -13,7 +13,8 @@ import pandas as pd
 
 from texture.errors import SampleError
 from texture.recipe import Recipe, Samples
-from texture.stations.account import FATES, LEDGER_COLUMNS, TABLE_COLUMNS, Stations, _with_points
+from texture.stations.account import DEEPER_COLUMNS, FATES, LEDGER_COLUMNS, TABLE_COLUMNS, Stations, _with_points
+from texture.stations.ages import grow_noise, set_void
 from texture.stations.audit import AuditLog
 from texture.stations.copies import find_copies
 from texture.stations.repeats import merge_repeats
@@ -60,7 +61,8 @@ def read_samples(recipe: Recipe) -> Stations:
     for block, label in zip(recipe.samples, _labels([b.file for b in recipe.samples]), strict=True):
         _read_block(block, label, recipe, intake)
     rows = pd.concat(intake.frames, ignore_index=True)
-    stations = _assemble(rows, intake)
+    intake.notes.extend(set_void(rows, recipe.intake))
+    stations = _assemble(rows, intake, recipe.intake.noise_per_decade)
     if stations.counts["stations"] < FEWEST:
         raise _too_few(stations)
     return stations
@@ -108,7 +110,7 @@ def _read_block(block: Samples, label: str, recipe: Recipe, intake: _Intake) -> 
         intake.aside.append(pd.DataFrame({"file": sheet.file, "sheet": sheet.name, "row": numbers, "id": "", **fate}))
 
 
-def _assemble(rows: pd.DataFrame, intake: _Intake) -> Stations:
+def _assemble(rows: pd.DataFrame, intake: _Intake, noise_per_decade: float) -> Stations:
     """Merge repeats and copies and write the account of rows."""
     on_map = rows["fate"].isin(["used", "evidence"]).to_numpy()
     kept = rows[on_map].reset_index(drop=True)
@@ -130,8 +132,10 @@ def _assemble(rows: pd.DataFrame, intake: _Intake) -> Stations:
     ledger = rows[["file", "sheet", "row", "id"]].assign(fate=fate, reason=reason, station=station)
     ledger = pd.concat([ledger[list(LEDGER_COLUMNS)], *intake.aside], ignore_index=True)
     ledger = _sorted_ledger(ledger, intake)
-    table = _with_points(merged[list(TABLE_COLUMNS)])
-    return Stations(table, intake.audit.table(), ledger, intake.rows_read, (*intake.notes, *notes))
+    table, aged = grow_noise(merged[list(TABLE_COLUMNS)], noise_per_decade)
+    table = _with_points(table)
+    deeper = rows.loc[rows["deep"].to_numpy(dtype=bool), list(DEEPER_COLUMNS)].reset_index(drop=True)
+    return Stations(table, intake.audit.table(), ledger, intake.rows_read, (*intake.notes, *notes, *aged), deeper)
 
 
 def _leaders(kept: pd.DataFrame, merged: pd.DataFrame, member: npt.NDArray[np.int64]) -> npt.NDArray[np.bool_]:

@@ -65,6 +65,12 @@ def read_rows(
     audit.take_over(log, without=rows[fate == "not_samples"])
     depth = metres_of(source, "depth", notes)
     top, bottom = interval_of(source, notes)
+    placed = np.isfinite(positions.longitude)
+    told = [
+        first or second
+        for first, second in zip(texts_of(source, "description", ""), texts_of(source, "remarks", ""), strict=True)
+    ]
+    deep = _is_deep(top, bottom, intake.surface_m) & placed & (fate != "not_samples")
     _set_aside_deep(top, intake, fate, reason)
     dates = days_of(source, block, notes)
     hard = fate == "evidence"
@@ -94,6 +100,9 @@ def read_rows(
             **_limit_columns(shares, hard),
             "median_phi": np.where(hard, np.nan, median),
             "top_m": np.nan_to_num(top),
+            "bottom_m": bottom,
+            "deep": deep,
+            "note": np.where(deep, np.array(told, dtype=object), ""),
             "thickness_m": _thickness(top, bottom, intake.surface_m),
             "fate": fate,
             "reason": reason,
@@ -125,7 +134,8 @@ def bare_places(joined: Joined, block: Samples) -> pd.DataFrame:
     frame["description"] = ""
     frame["described_class"] = ""
     frame[[*LIMIT_COLUMNS, "median_phi"]] = np.nan
-    frame["top_m"], frame["thickness_m"] = 0.0, np.nan
+    frame["top_m"], frame["thickness_m"], frame["bottom_m"] = 0.0, np.nan, np.nan
+    frame["deep"], frame["note"] = False, ""
     frame["fate"] = "evidence"
     frame["reason"] = [words[int(i)] for i in hard]
     return frame
@@ -253,6 +263,11 @@ def _thickness(
     """Thickness of each sample above the surface depth; NaN where its ends do not tell."""
     thickness = np.minimum(bottom, surface_m) - np.nan_to_num(top)
     return np.where(thickness > 0.0, thickness, np.nan)
+
+
+def _is_deep(top: npt.NDArray[np.float64], bottom: npt.NDArray[np.float64], surface_m: float) -> npt.NDArray[np.bool_]:
+    """Whether an interval lies below the surface layer, or reaches below it by more than a millimetre."""
+    return (top >= surface_m) | (bottom > surface_m + 1e-3)
 
 
 def _set_aside_deep(

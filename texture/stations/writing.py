@@ -36,10 +36,10 @@ def safe_cell(value: object) -> object:
 
 
 def write_tables(stations: Stations, folder: str | Path) -> list[Path]:
-    """Write `stations.csv`, `stations.gpkg` and `audit.csv` to a folder that exists.
+    """Write `stations.csv`, `stations.gpkg`, `audit.csv` and, if there are cores, `deeper.csv` to a folder that exists.
 
     Numbers are written so that reading them back gives the same float64. Unknown parts are blank. Texts that start a
-    formula are led by an apostrophe in all three files.
+    formula are led by an apostrophe in all of them.
 
     Returns
     -------
@@ -65,6 +65,9 @@ def write_tables(stations: Stations, folder: str | Path) -> list[Path]:
         finally:
             pyogrio.set_gdal_config_options({"OGR_CURRENT_DATE": None})
         safe_table(stations.audit).to_csv(paths[2], index=False, encoding="utf-8", lineterminator="\n")
+        if len(stations.deeper):
+            paths.append(folder / "deeper.csv")
+            safe_table(stations.deeper).to_csv(paths[3], index=False, encoding="utf-8", lineterminator="\n")
     except (OSError, RuntimeError) as error:
         raise OutputError(f"{folder}: the station tables cannot be written ({error})") from error
     return paths
