@@ -165,3 +165,24 @@ def test_a_rim_from_drawn_cells(target_of):
 def test_sides_that_are_none(sides):
     with pytest.raises(ValueError, match=r'expected "open", a list of compass sides such as'):
         Rim(sides=sides, width_cells=2, classes={"sand": 1.0})
+
+
+@pytest.mark.parametrize("in_metres", [False, True])
+def test_distances_agree_with_a_graph_library(target_of, in_metres):
+    """Outside check: shortest paths by scipy's Dijkstra, around islands and over unequal steps."""
+    from scipy.sparse import csr_array
+    from scipy.sparse.csgraph import dijkstra
+
+    rng = np.random.default_rng(8)
+    target = target_of(rng.random((25, 30)) > 0.25)
+    start = target.active & (rng.random(target.n_cells) < 0.01)
+    wet = target.active[target.edges].all(axis=1)
+    a, b = target.edges[wet].T
+    length = target.edge_length_m[wet] if in_metres else np.ones(a.size)
+    graph = csr_array((length, (a, b)), shape=(target.n_cells, target.n_cells))
+    expected = dijkstra(graph, directed=False, indices=np.flatnonzero(start), min_only=True)
+    found = water_distance(target, start, in_metres)
+    np.testing.assert_allclose(found, expected, rtol=1e-12)
+    limited = water_distance(target, start, in_metres, limit=float(np.median(expected[np.isfinite(expected)])))
+    assert (limited[np.isfinite(limited)] == found[np.isfinite(limited)]).all()
+    assert (np.isfinite(limited) == (found <= np.median(expected[np.isfinite(expected)]))).all()
