@@ -157,6 +157,49 @@ class Stations:
             table, ledger = _dropped(table, ledger, np.asarray(drop, dtype=bool), reason)
         return replace(self, table=table, audit=audit, ledger=ledger, notes=(*self.notes, *notes))
 
+    def with_outliers(
+        self, z: npt.ArrayLike, rows: npt.ArrayLike | None = None, coordinates: Sequence[str] | None = None
+    ) -> Stations:
+        """Return new stations with leave-one-out standardised errors in the column `held_out_z`, the large ones audited.
+
+        Nothing is dropped; see `texture.stations.outliers.flag_outliers`.
+
+        Parameters
+        ----------
+        z : array-like, shape (m,) or (m, d)
+        rows : int array-like, shape (m,), optional
+            Row of `table` of each error; all rows in order if absent.
+        coordinates : sequence of str, length d, optional
+        """
+        import pandas as pd
+
+        from texture.stations.outliers import flag_outliers
+
+        errors = np.asarray(z, dtype=np.float64)
+        errors = errors[:, None] if errors.ndim == 1 else errors
+        index = np.arange(len(self.table)) if rows is None else np.asarray(rows, dtype=np.int64)
+        of_all = np.full((len(self.table), errors.shape[1]), np.nan)
+        of_all[index] = errors
+        worst, flagged = flag_outliers(self.table, of_all, coordinates)
+        table = self.table.assign(held_out_z=worst)
+        audit = pd.concat([self.audit, flagged], ignore_index=True) if len(flagged) else self.audit
+        audit = audit.sort_values(["file", "sheet", "row"], kind="stable", ignore_index=True)
+        return replace(self, table=table, audit=audit)
+
+    @property
+    def outliers(self) -> pd.DataFrame:
+        """Stations flagged by `with_outliers`, the furthest out first: id, survey, file, sheet, row, held_out_z."""
+        import pandas as pd
+
+        from texture.stations.outliers import FLAGGED_FROM
+
+        columns = ["id", "survey", "file", "sheet", "row", "held_out_z"]
+        if "held_out_z" not in self.table.columns:
+            return no_rows(columns)
+        size = self.table["held_out_z"].abs()
+        order = size[size > FLAGGED_FROM].sort_values(ascending=False, kind="stable").index
+        return pd.DataFrame(self.table.loc[order, columns]).reset_index(drop=True)
+
     def __len__(self) -> int:
         return len(self.table)
 

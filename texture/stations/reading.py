@@ -17,12 +17,15 @@ from texture.stations.account import DEEPER_COLUMNS, FATES, LEDGER_COLUMNS, TABL
 from texture.stations.ages import grow_noise, set_void
 from texture.stations.audit import AuditLog
 from texture.stations.copies import find_copies
+from texture.stations.offsets import Offset, method_offsets
 from texture.stations.repeats import merge_repeats
 from texture.stations.rows import bare_places, read_rows
 from texture.stations.sources import find_source
 
 __all__ = ["FEWEST", "read_samples"]
 
+METHODS = ("sieve", "laser", "pipette")
+LEAST_MUD = 0.005  # shares below it are compared as if they were this; their logarithm is mostly rounding
 FEWEST = 5  # stations; below this no spatial structure can be told from chance
 
 
@@ -134,8 +137,17 @@ def _assemble(rows: pd.DataFrame, intake: _Intake, noise_per_decade: float) -> S
     ledger = _sorted_ledger(ledger, intake)
     table, aged = grow_noise(merged[list(TABLE_COLUMNS)], noise_per_decade)
     table = _with_points(table)
+    notes += [found.text("ln(mud / rest)") for found in _compare_methods(table)]
     deeper = rows.loc[rows["deep"].to_numpy(dtype=bool), list(DEEPER_COLUMNS)].reset_index(drop=True)
     return Stations(table, intake.audit.table(), ledger, intake.rows_read, (*intake.notes, *notes, *aged), deeper)
+
+
+def _compare_methods(table: pd.DataFrame) -> list[Offset]:
+    """Offsets between the methods by which whole samples were measured."""
+    mud = np.clip(table["mud"].to_numpy(dtype=np.float64), LEAST_MUD, 1.0 - LEAST_MUD)
+    whole = table[["mud", "sand", "gravel"]].notna().all(axis=1).to_numpy() & table["kind"].isin(METHODS).to_numpy()
+    lon, lat = (table[name].to_numpy(dtype=np.float64) for name in ("longitude", "latitude"))
+    return method_offsets(lon, lat, np.where(whole, np.log(mud / (1.0 - mud)), np.nan), table["kind"].to_numpy())
 
 
 def _leaders(kept: pd.DataFrame, merged: pd.DataFrame, member: npt.NDArray[np.int64]) -> npt.NDArray[np.bool_]:

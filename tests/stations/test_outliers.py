@@ -1,0 +1,31 @@
+"""Outliers are flagged with their source row and kept."""
+
+import numpy as np
+import pytest
+
+from tests.stations.samples import HEADER, ROWS
+from texture.stations import write_tables
+from texture.stations.outliers import flag_outliers
+
+
+def test_the_worst_coordinate_speaks_and_four_is_still_allowed(read):
+    table = read([HEADER, *ROWS]).table
+    z = np.zeros((6, 2))
+    z[0], z[1], z[2], z[3] = (4.0, -4.0), (4.1, -7.0), (np.nan, 5.0), (np.nan, np.nan)
+    worst, audit = flag_outliers(table, z, ["mud", "gravel"])
+    np.testing.assert_array_equal(worst, [4.0, -7.0, 5.0, np.nan, 0.0, 0.0])
+    assert audit[["row", "column", "new"]].to_numpy().tolist() == [[3, "gravel", "-7"], [4, "gravel", "5"]]
+    assert audit["rule"][0].startswith("flagged, not dropped: more than 4 standard errors")
+    with pytest.raises(ValueError, match="found errors of 2 stations, expected 6"):
+        flag_outliers(table, [1.0, 2.0])
+
+
+def test_flags_are_listed_written_and_drop_nothing(read, tmp_path):
+    stations = read([HEADER, *ROWS])
+    assert stations.outliers.empty
+    flagged = stations.with_outliers([5.0, -6.0], rows=[4, 1])
+    assert flagged.outliers[["id", "row", "held_out_z"]].to_numpy().tolist() == [["A2", 3, -6.0], ["A5", 6, 5.0]]
+    assert flagged.counts == stations.counts
+    assert len(flagged.audit) == len(stations.audit) + 2
+    write_tables(flagged, tmp_path)
+    assert "held_out_z" in (tmp_path / "stations.csv").read_text().splitlines()[0]
