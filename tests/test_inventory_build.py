@@ -42,3 +42,29 @@ def test_correlation_falls_with_distance(small):
     covariance = max(result.found.mapper.structure, key=lambda c: c.range_m)
     assert alike(first[:1], np.array([19]))[0] <= 1.0
     assert covariance.range_m > 0.0
+
+
+def test_ranges_hold_the_demo_s_true_tonnes(plain, demo_recipe, capsys):
+    """The demo's true cell means are known: the true tonnes must lie in ranges that are narrower than all cells at once."""
+    import xarray as xr
+
+    from texture.bed.inventory import depth_groups
+
+    target, bed, estimate = plain.found.target, plain.bed, plain.estimate
+    with xr.open_dataset(demo_recipe.parent / "truth.nc") as data:
+        truth = np.stack([data[part].to_numpy().ravel() for part in ("mud", "sand", "gravel")], axis=1)
+    unit = (bed.erodible_thickness * bed.dry_density).sum(axis=0) * target.area_m2 / 1000.0 * (1.0 - bed.rim_weight)
+    groups = depth_groups(target.active, target.depth_m, plain.found.recipe.inventory.depth_bands_m)
+    inside = []
+    stocks = iter(plain.inventory)
+    for group in groups:
+        for k, share in enumerate(bed.classes.share):
+            stock, part = next(stocks), bed.classes.part[k]
+            wrong = (truth[group.cells, part] - estimate.fractions[group.cells, part]) * unit[group.cells] * share
+            inside.append(stock.tonnes_low <= stock.tonnes + wrong.sum() <= stock.tonnes_high)
+            at_once = (estimate.quantiles[2] - estimate.fractions)[group.cells, part] * unit[group.cells] * share
+            assert stock.tonnes_high - stock.tonnes < 0.6 * at_once.sum()
+    with capsys.disabled():
+        print(f"\n  true tonnes inside their 90 % range: {sum(inside)} of {len(inside)} rows", end="")
+    assert all(inside[:4])  # the whole map
+    assert np.mean(inside) >= 0.8
