@@ -5,7 +5,7 @@ from __future__ import annotations
 import hashlib
 from collections.abc import Callable
 from functools import lru_cache
-from pathlib import Path
+from importlib import resources
 from typing import Any, TypeVar, cast
 
 from numba import njit
@@ -14,19 +14,19 @@ __all__ = ["compiled"]
 
 F = TypeVar("F", bound=Callable[..., Any])
 
-# Every file with compiled functions or constants compiled into them, from the package's root.
-_SOURCES = ("structure/models.py", "structure/compiled.py", "structure/vecchia.py", "predict/neighbours.py",
-            "predict/tiles.py", "structure/linear.py", "predict/block.py", "predict/kernel.py", "predict/window.py")  # fmt: skip
+_PACKAGES = ("texture.structure", "texture.predict")
 
 
 @lru_cache(maxsize=1)
 def _stamp() -> tuple[str, int]:
-    root = Path(__file__).resolve().parents[1]
-    digest = hashlib.sha256()
-    for name in _SOURCES:
-        file = root / name
-        digest.update(file.read_bytes() if file.exists() else b"")
-    return digest.hexdigest(), len(_SOURCES)
+    """Digest of every source that compiled functions, or constants compiled into them, may come from."""
+    digest, count = hashlib.sha256(), 0
+    for package in _PACKAGES:
+        for file in sorted(resources.files(package).iterdir(), key=lambda f: f.name):
+            if file.name.endswith(".py"):
+                digest.update(file.read_bytes())
+                count += 1
+    return digest.hexdigest(), count
 
 
 def compiled(function: F) -> F:
