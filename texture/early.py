@@ -86,7 +86,7 @@ def _condition(settings: Mobility, target: Target) -> Condition:
     key = f'mobility "{settings.name}", '
 
     def read(value: float | str | Path, name: str, units: Mapping[str, float]) -> NDArray[np.float64]:
-        return read_field(value, settings.file, target, key + name, units)
+        return read_field(value, settings.file, target, key + name, units, series=True)
 
     current = read(settings.current_m_s, "current_m_s", SPEED)
     if settings.depth_m is not None:
@@ -99,14 +99,22 @@ def _condition(settings: Mobility, target: Target) -> Condition:
         )
     else:
         depth = np.full(target.n_cells, np.nan)
+    waves = read(settings.orbital_velocity_m_s, "orbital_velocity_m_s", SPEED)
+    period = read(1.0 if settings.period_s is None else settings.period_s, "period_s", TIME)
+    lengths = {len(values) for values in (waves, period, current, depth) if values.ndim == 2}
+    if len(lengths) > 1:
+        raise TargetError(
+            f"{key}series of {' and '.join(map(str, sorted(lengths)))} times; expected one length for all"
+        )
     return Condition(
         name=settings.name,
-        orbital_velocity_m_s=read(settings.orbital_velocity_m_s, "orbital_velocity_m_s", SPEED),
-        period_s=read(1.0 if settings.period_s is None else settings.period_s, "period_s", TIME),
+        orbital_velocity_m_s=waves,
+        period_s=period,
         kind=settings.kind or "peak",
         current_m_s=current,
         depth_m=depth,
         angle_deg=settings.angle_deg,
         fair_weather=settings.fair_weather,
         flush_ratio=settings.flush_ratio or FLUSH_RATIO,
+        hours=settings.hours or np.nan,
     )

@@ -494,7 +494,8 @@ NotNegative = Annotated[float, Field(ge=0.0)]
 class Mobility(Settings):
     """One `[[mobility]]` block: waves and a current, to see which sediment they would move.
 
-    A value is a number, the name of a variable in `file`, or a GeoTIFF.
+    A value is a number, the name of a variable in `file`, or a GeoTIFF. Variables may be series in time, on the cells or for
+    all of them; what moves is then averaged over the times.
     """
 
     name: Annotated[str, Field(min_length=1)] = Field(
@@ -514,6 +515,9 @@ class Mobility(Settings):
     )
     angle_deg: Annotated[float, Field(ge=0.0, le=180.0)] = Field(
         0.0, description="between waves and current; 0 gives the largest stress"
+    )
+    hours: Positive | None = Field(
+        None, description="how long it lasts; with it, the hours above each class's threshold are told"
     )
     fair_weather: bool = Field(False, description="an ordinary day: mud far beyond its strength would be gone at once")
     flush_ratio: Annotated[float, Field(ge=1.0)] | None = Field(

@@ -242,6 +242,7 @@ def mobility_record(moved: Moved) -> dict[str, Any]:
         "largest_stress_pa": moved.largest_pa,
         "share_without_a_value": moved.unknown_share,
         "moving_share": {name: known(value) for name, value in moved.moving_share.items()},
+        "moving_hours": {name: known(value) for name, value in moved.moving_hours.items()},
         "flushed_mud_share": known(moved.flushed_share),
         "rim_moving_share": known(moved.rim_share),
     }

@@ -1,3 +1,5 @@
+from dataclasses import replace
+
 import numpy as np
 import pytest
 from hypothesis import given
@@ -163,3 +165,19 @@ def test_more_waves_move_more(velocity, more, period):
 def test_conditions_that_do_not_fit(block, message):
     with pytest.raises(ValueError, match=message):
         Mobility(name="a", **block)
+
+
+def test_a_series_is_averaged_over_its_times():
+    target = make_target(MUD_LEFT)
+    bed = make_bed(*half_mud(target), target, Bed(classes=CLASSES))
+    calm, rough = (moved_by(condition(target, v, hours=10.0), bed, target, WATER) for v in (0.01, 0.3))
+    both = condition(target, 0.0, hours=10.0)
+    series = np.stack([np.full(18, v) for v in (0.01, 0.3, 0.3, 0.01)])
+    found = moved_by(replace(both, orbital_velocity_m_s=series), bed, target, WATER)
+    for name in ("mud", "sand", "gravel"):
+        assert found.moving_share[name] == pytest.approx((calm.moving_share[name] + rough.moving_share[name]) / 2)
+    np.testing.assert_array_equal(found.stress_pa, rough.stress_pa)
+    # Mud lies on the left alone and moves there at two of four times: five of ten hours, whatever the rest of the area.
+    assert found.moving_hours["mud"] == pytest.approx(5.0)
+    assert rough.moving_hours["sand"] == pytest.approx(10.0)
+    assert np.isnan(moved_by(condition(target, 0.3), bed, target, WATER).moving_hours["mud"])

@@ -65,3 +65,28 @@ def test_mistakes_are_told_before_the_work(storm, monkeypatch):
     without_depth = {k: v for k, v in STORM.items() if k != "depth_m"}
     with pytest.raises(TargetError, match=r'mobility "winter storm", depth_m: a current needs the depth it flows in'):
         build(storm, mobility=[without_depth])
+
+
+@pytest.mark.slow
+def test_hours_of_a_wave_record(storm):
+    """A record of waves at one place stands for all cells; the hours reach the summary and the page."""
+    record = xr.Dataset({"swell": (("hour",), [0.05, 0.05, 1.0, 1.0], {"units": "m s-1"})})
+    record.to_netcdf(storm.parent / "record.nc")
+    week = {
+        "name": "a week",
+        "file": "record.nc",
+        "orbital_velocity_m_s": "swell",
+        "kind": "rms",
+        "period_s": 9.0,
+        "hours": 168.0,
+    }
+    result = build(storm, output=storm.parent / "out", mobility=[week], bed={"classes": CLASSES}, **QUICK)
+    (found,) = result.summary()["mobility"]
+    assert found["moving_hours"]["sand"] == pytest.approx(84.0)
+    assert "(84 h)" in (storm.parent / "out" / "report.html").read_text()
+    lengths = xr.Dataset(
+        {"swell": (("hour",), [0.1, 0.2], {"units": "m s-1"}), "beat": (("other",), [8.0, 9.0, 7.0], {"units": "s"})}
+    )
+    lengths.to_netcdf(storm.parent / "record2.nc")
+    with pytest.raises(TargetError, match=r'mobility "a week", series of 2 and 3 times; expected one length'):
+        build(storm, output=storm.parent / "b", mobility=[week | {"file": "record2.nc", "period_s": "beat"}], **QUICK)

@@ -67,3 +67,15 @@ def test_files_that_are_none(tmp_path):
     (tmp_path / "waves.tif").write_text("words")
     with pytest.raises(TargetError, match=r"waves.tif: cannot be read as a GeoTIFF"):
         read_field(tmp_path / "waves.tif", None, TARGET, "period_s", TIME)
+
+
+def test_series_in_time(tmp_path):
+    path = waves(tmp_path / "waves.nc", np.stack([VALUES, 2 * VALUES], axis=-1), ("y", "x", "hour"))
+    found = read_field("swell", path, TARGET, "orbital_velocity_m_s", SPEED, series=True)
+    np.testing.assert_array_equal(found, [VALUES.ravel(), 2 * VALUES.ravel()])
+    path = waves(tmp_path / "buoy.nc", np.array([0.1, 0.2, 0.3]), ("hour",))
+    found = read_field("swell", path, TARGET, "orbital_velocity_m_s", SPEED, series=True)
+    assert found.shape == (3, 24)
+    assert found[1].tolist() == [0.2] * 24
+    with pytest.raises(TargetError, match="choose one time, or put it on the target's cells"):
+        read_field("swell", path, TARGET, "depth_m", SPEED)

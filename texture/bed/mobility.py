@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from collections.abc import Iterator
+from dataclasses import dataclass, replace
 from typing import Literal
 
 import numpy as np
@@ -29,17 +30,19 @@ class Condition:
     Attributes
     ----------
     name : str
-    orbital_velocity_m_s, period_s : float arrays, shape (n,)
+    orbital_velocity_m_s, period_s : float arrays, shape (n,) or (times, n)
         Near the bed; velocity 0 without waves, its period then does not matter.
     kind : {"rms", "significant", "peak"}
         What the velocity is.
-    current_m_s, depth_m : float arrays, shape (n,)
+    current_m_s, depth_m : float arrays, shape (n,) or (times, n)
         Depth-mean speed, and the depth it flows in.
     angle_deg : float
         Between waves and current.
     fair_weather : bool
     flush_ratio : float
         See `Moved.flushed`.
+    hours : float
+        How long it lasts; NaN where not said.
     """
 
     name: str
@@ -51,6 +54,18 @@ class Condition:
     angle_deg: float = 0.0
     fair_weather: bool = False
     flush_ratio: float = FLUSH_RATIO
+    hours: float = np.nan
+
+    def each(self) -> Iterator[Condition]:
+        """The condition at each of its times; itself where it has no series."""
+        names = ("orbital_velocity_m_s", "period_s", "current_m_s", "depth_m")
+        lengths = [len(getattr(self, name)) for name in names if getattr(self, name).ndim == 2]
+        if not lengths:
+            yield self
+            return
+        for i in range(lengths[0]):
+            values = {name: getattr(self, name) for name in names}
+            yield replace(self, **{name: v[i] if v.ndim == 2 else v for name, v in values.items()})
 
 
 @dataclass(frozen=True, eq=False)
@@ -62,14 +77,17 @@ class Moved:
     name : str
     fair_weather : bool
     stress_pa : float array, shape (n,)
-        Largest skin-friction stress in a wave period; NaN on land and where the condition has no value.
+        Largest skin-friction stress in a wave period, and of all times; NaN on land and where there is no value.
     median_pa, largest_pa : float
         Over the water area, and of all cells.
     unknown_share : float
         Share of the water area without a value.
     moving_share : dict
         Class → share of the water area where it lies at the surface and moves; NaN for a class whose critical
-        stress is not known.
+        stress is not known. Of a series, the mean over its times.
+    moving_hours : dict
+        Class → hours above its threshold, on average over the area where it lies at the surface; NaN where the
+        condition does not say how long it lasts, and for a class that lies nowhere or whose critical stress is not known.
     flushed : bool array, shape (n,)
         Muddy cells (a tenth of the surface or more) under a fair-weather stress beyond `flush_ratio` times the
         mud's critical stress: a model would flush that bed at once.
@@ -86,6 +104,7 @@ class Moved:
     largest_pa: float
     unknown_share: float
     moving_share: dict[str, float]
+    moving_hours: dict[str, float]
     flushed: Bools
     flushed_share: float
     rim_share: float
@@ -157,19 +176,27 @@ def moved_by(condition: Condition, bed: Bed, cells: Cells, water: Water) -> Move
     the bed has them. No ripples, no armouring, no cover of one class by another.
     """
     wet, classes = cells.active, bed.classes
-    stress = skin_stress(condition, bed.mixture_median_diameter[0], bed.skin_roughness_length, water, wet)
     area = np.where(wet, cells.area_m2, 0.0)
     total = area.sum()
     strength = np.broadcast_to(bed.class_critical_stress[:, :1], (len(classes.names), wet.size))
     if bed.hiding_exposure_factor is not None:
         strength = strength * bed.hiding_exposure_factor[:, 0]
     surface = bed.class_fraction[:, 0]
-    moves = (stress > strength) & (surface > 0.0)
     known = np.isfinite(bed.class_critical_stress[:, 0])
-    share = {name: float(area[moves[i]].sum() / total) if known[i] else np.nan for i, name in enumerate(classes.names)}
-    flushed, flushed_share = _flushed(condition, stress, surface, strength, ~classes.loose, known)
     rim = wet & (bed.rim_weight == 1.0)
-    eroding = np.where(moves, surface, 0.0).sum(axis=0) > 0.5
+    stress = np.full(wet.size, np.nan)
+    moving, eroding, times = np.zeros(len(known)), np.zeros(wet.size, dtype=bool), 0
+    for now in condition.each():
+        here = skin_stress(now, bed.mixture_median_diameter[0], bed.skin_roughness_length, water, wet)
+        moves = (here > strength) & (surface > 0.0)
+        moving += [area[row].sum() for row in moves]  # no matrix product: its digits depend on the number of threads
+        eroding |= np.where(moves, surface, 0.0).sum(axis=0) > 0.5
+        stress, times = np.fmax(stress, here), times + 1
+    moving /= times
+    lies = np.array([area[row > 0.0].sum() for row in surface])
+    told = known & (lies > 0.0)
+    hours = condition.hours * np.divide(moving, lies, out=np.full_like(moving, np.nan), where=told)
+    flushed, flushed_told = _flushed(condition, stress, surface, strength, ~classes.loose, known)
     measured = np.isfinite(stress)
     return Moved(
         name=condition.name,
@@ -178,9 +205,10 @@ def moved_by(condition: Condition, bed: Bed, cells: Cells, water: Water) -> Move
         median_pa=_median(stress[measured], area[measured]),
         largest_pa=float(stress[measured].max(initial=0.0)),
         unknown_share=float(area[~measured].sum() / total),
-        moving_share=share,
+        moving_share=dict(zip(classes.names, np.where(known, moving / total, np.nan).tolist(), strict=True)),
+        moving_hours=dict(zip(classes.names, hours.tolist(), strict=True)),
         flushed=flushed,
-        flushed_share=float(area[flushed].sum() / total) if flushed_share else np.nan,
+        flushed_share=float(area[flushed].sum() / total) if flushed_told else np.nan,
         rim_share=float(area[rim & eroding].sum() / area[rim].sum()) if rim.any() else np.nan,
     )
 

@@ -50,7 +50,7 @@ def bed_outline(target: Target, recipe: Recipe) -> xr.Dataset:
         account=Account({}, {}, {}, 0.0, 0, 0, ()),
     )
     moved = [
-        Moved(m.name, False, flat[0], 0.5, 0.5, 0.0, dict.fromkeys(classes.names, 0.5), flat[0] > 1.0, 0.5, 0.5)
+        Moved(m.name, False, flat[0], 0.5, 0.5, 0.0, dict.fromkeys(classes.names, 0.5), {}, flat[0] > 1.0, 0.5, 0.5)
         for m in recipe.mobility
     ]
     return bed_dataset(bed, target, recipe, moved).isel({dim: slice(0, 1) for dim in target.dims})

@@ -220,7 +220,11 @@ def _mobility(result: Result) -> Table:
             m.name,
             number(m.median_pa, 2),
             number(m.largest_pa, 2),
-            *(percent(m.moving_share[name]) for name in names),
+            *(
+                percent(m.moving_share[name])
+                + (f" ({number(m.moving_hours[name], 0)} h)" if np.isfinite(m.moving_hours[name]) else "")
+                for name in names
+            ),
             percent(m.flushed_share),
             percent(m.rim_share),
         ]
@@ -229,7 +233,7 @@ def _mobility(result: Result) -> Table:
     return Table(
         "What named waves and currents would move. Stress: the largest in a wave period on the grains of the surface (Soulsby "
         "1997), in Pa. Classes: percent of the water area where the class lies at the surface and the stress exceeds its "
-        "critical stress. Flushed: percent under a fair-weather stress far beyond the strength of the mud that lies there; a "
+        "critical stress (of a series, the mean over its times), and hours above it where it lies. Flushed: percent under a fair-weather stress far beyond the strength of the mud that lies there; a "
         "model would carry it off at once. Rim: percent of the rim's edge that moves.",
         ["condition", "median stress", "largest", *names, "mud flushed", "rim"],
         rows,

@@ -28,9 +28,14 @@ LENGTH = {"m": 1.0, "metre": 1.0, "meter": 1.0, "metres": 1.0, "meters": 1.0, "c
 
 
 def read_field(
-    value: float | str | Path, file: Path | None, target: Target, key: str, units: Mapping[str, float]
+    value: float | str | Path,
+    file: Path | None,
+    target: Target,
+    key: str,
+    units: Mapping[str, float],
+    series: bool = False,
 ) -> Floats:
-    """Read one value for each cell.
+    """Read one value for each cell, or a series of them.
 
     Parameters
     ----------
@@ -43,10 +48,12 @@ def read_field(
         The recipe's key, for messages.
     units : mapping
         Units that the file may have, and factors to ours. A GeoTIFF has ours.
+    series : bool
+        Let a variable have one dimension more (time); one that has no other holds everywhere.
 
     Returns
     -------
-    float array, shape (n,)
+    float array, shape (n,) or (times, n)
         NaN where the file has no value.
 
     Raises
@@ -61,13 +68,13 @@ def read_field(
         name, values = value.name, _sampled(value, target)
     else:
         assert file is not None  # the recipe has seen to it
-        name, values = f'{file.name}: "{value}"', _variable(file, value, target, key, units)
-    if not np.isfinite(values[target.active]).any():
+        name, values = f'{file.name}: "{value}"', _variable(file, value, target, key, units, series)
+    if not np.isfinite(values[..., target.active]).any():
         raise TargetError(f"{name}: has no value on any water cell of {target.name}, expected {key}")
     return values
 
 
-def _variable(file: Path, name: str, target: Target, key: str, units: Mapping[str, float]) -> Floats:
+def _variable(file: Path, name: str, target: Target, key: str, units: Mapping[str, float], series: bool) -> Floats:
     import xarray as xr
 
     try:
@@ -88,20 +95,28 @@ def _variable(file: Path, name: str, target: Target, key: str, units: Mapping[st
         raise TargetError(
             f'{file.name}: "{name}" {found}, expected {next(iter(units))} for {key}; set its attribute units'
         )
-    return np.asarray(_on_cells(variable, target, file.name) * units[unit])
+    return np.asarray(_on_cells(variable, target, file.name, series) * units[unit])
 
 
-def _on_cells(variable: xr.DataArray, target: Target, name: str) -> Floats:
+def _on_cells(variable: xr.DataArray, target: Target, name: str, series: bool) -> Floats:
     dims = tuple(d for d, length in zip(target.dims, target.shape, strict=True) if length > 1)
     shape = tuple(length for length in target.shape if length > 1)
     if set(variable.dims) == set(dims):
         variable = variable.transpose(*dims)
-    if variable.shape != shape:
-        raise TargetError(
-            f'{name}: "{variable.name}" has shape {dict(variable.sizes)}, expected one value for each cell of {target.name}, '
-            f"{dict(zip(target.dims, target.shape, strict=True))}; choose one time, or put it on the target's cells"
-        )
-    return variable.to_numpy().astype(np.float64).ravel()
+    if variable.shape == shape:
+        return variable.to_numpy().astype(np.float64).ravel()
+    times = [d for d in variable.dims if d not in dims]
+    if series and len(times) == 1 and variable.ndim == 1:
+        return np.broadcast_to(variable.to_numpy().astype(np.float64)[:, None], (variable.size, target.n_cells))
+    if series and len(times) == 1 and set(variable.dims) == {*times, *dims}:
+        values = variable.transpose(*times, *dims)
+        if values.shape[1:] == shape:
+            return values.to_numpy().astype(np.float64).reshape(values.shape[0], -1)
+    again = "put it on the target's cells" if series else "choose one time, or put it on the target's cells"
+    raise TargetError(
+        f'{name}: "{variable.name}" has shape {dict(variable.sizes)}, expected one value for each cell of {target.name}, '
+        f"{dict(zip(target.dims, target.shape, strict=True))}; {again}"
+    )
 
 
 def _sampled(path: Path, target: Target) -> Floats:
