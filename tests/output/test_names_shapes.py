@@ -182,8 +182,8 @@ def test_text_table_in_cell_order(tmp_path):
     write_cells(tmp_path / "bed.csv", plain, ("row", "column"))
     table = pd.read_csv(tmp_path / "bed.csv")
     assert table.shape[0] == ROWS * COLUMNS
-    assert table["row"].tolist() == np.repeat(np.arange(1, ROWS + 1), COLUMNS).tolist()
-    assert table["column"].tolist()[: COLUMNS + 1] == [*range(1, COLUMNS + 1), 1]
+    assert table["row_number"].tolist() == np.repeat(np.arange(1, ROWS + 1), COLUMNS).tolist()
+    assert table["column_number"].tolist()[: COLUMNS + 1] == [*range(1, COLUMNS + 1), 1]
     np.testing.assert_array_equal(table["class_fraction_sand_2"], plain["class_fraction"].values[1, 1].ravel())
     np.testing.assert_array_equal(table["longitude"], plain["longitude"].values.ravel())
     shares = [c for c in table if c.startswith("class_fraction_") and c.endswith("_1")]
@@ -243,3 +243,10 @@ def test_a_mesh_under_other_names_is_still_one(tmp_path, demo_recipe):
     back = open_bed(tmp_path / "bed.nc", names)
     np.testing.assert_allclose(back["class_fraction"].values, bed.class_fraction, atol=1e-15)
     assert {c.name: c.verdict for c in check_bed(bed_arrays(back))}["isolated water"] == "pass"
+
+
+def test_a_raster_s_table_tells_where_each_row_lies():
+    table = cell_table(BEDS["raster"], ("y", "x"))
+    assert table["x"][COLUMNS + 2] == WEST + 2.5 * SIZE
+    assert table["y"][COLUMNS + 2] == NORTH - 1.5 * SIZE
+    assert table.loc[COLUMNS + 2, ["row_number", "column_number"]].tolist() == [2, 3]
