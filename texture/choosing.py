@@ -113,7 +113,7 @@ def choose(treatments: list[Treatment], held_out: list[HeldOut], measured: Float
 
     The lowest error wins among those whose mean errors are balanced, or among all where none is. The first is taken
     instead where it is among them and within one standard error. What was measured below the limit is known
-    to lie between 0 and the limit and no better: a prediction in between has no error there.
+    to lie between 0 and the limit and no better, so a part's mean is known between two bounds: a mean in between has no error.
 
     Parameters
     ----------
@@ -125,12 +125,9 @@ def choose(treatments: list[Treatment], held_out: list[HeldOut], measured: Float
     limit : float
         The laboratory's.
     """
-    errors = [_errors(h.predicted, measured, limit) for h in held_out]
-    shares = [_relative(e, measured) for e in errors]
+    shares = [_relative_errors(h.predicted, measured) for h in held_out]
     error = [float(s.sum()) for s in shares]
-    balanced = [
-        bool((np.abs(np.nanmean(e, axis=0)) <= MOST_MEAN_ERROR * np.nanmean(measured, axis=0)).all()) for e in errors
-    ]
+    balanced = [_balanced(h.predicted, measured, limit) for h in held_out]
     open_to = [i for i in range(len(error)) if balanced[i] or not any(balanced)]
     best = min(open_to, key=lambda i: error[i])
     spread = [float(np.sqrt(len(s)) * (s - shares[best]).std()) for s in shares]
@@ -141,16 +138,29 @@ def choose(treatments: list[Treatment], held_out: list[HeldOut], measured: Float
     ]
 
 
-def _errors(predicted: Floats, measured: Floats, limit: float) -> Floats:
-    """Prediction minus measurement, shape (n, parts); NaN where nothing was measured."""
-    return predicted - np.where(measured < limit, np.clip(predicted, 0.0, limit), measured)
-
-
-def _relative(errors: Floats, measured: Floats) -> Floats:
+def _relative_errors(predicted: Floats, measured: Floats) -> Floats:
     """Each station's share in the sum over parts of the mean squared error relative to the part's variance, shape (n,)."""
-    spread = np.nanvar(measured, axis=0)
-    weight = np.where(spread > 0.0, 1.0 / np.where(spread > 0.0, spread, 1.0), 0.0) / np.isfinite(measured).sum(axis=0)
-    return np.asarray(np.nansum(errors**2 * weight, axis=1))
+    share = np.zeros(len(measured))
+    for part in range(measured.shape[1]):
+        known = np.isfinite(measured[:, part])
+        spread = float(measured[known, part].var()) if known.any() else 0.0
+        if spread > 0.0:
+            share[known] += (predicted[known, part] - measured[known, part]) ** 2 / spread / known.sum()
+    return share
+
+
+def _balanced(predicted: Floats, measured: Floats, limit: float) -> bool:
+    for part in range(measured.shape[1]):
+        known = np.isfinite(measured[:, part])
+        if not known.any():
+            continue
+        mean, small = float(measured[known, part].mean()), measured[known, part] < limit
+        error = float(predicted[known, part].mean()) - mean
+        # The parts below the limit may hold as much again: that much the mean may lie above what was measured.
+        unseen = float((limit - measured[known, part][small]).sum()) / known.sum()
+        if not -MOST_MEAN_ERROR * mean <= error <= MOST_MEAN_ERROR * mean + unseen:
+            return False
+    return True
 
 
 def limit_effect(learned: Learned, method: Method, places: Floats) -> LimitEffect | None:

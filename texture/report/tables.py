@@ -86,9 +86,9 @@ def _treatments(result: Result) -> Table:
         rows.append([t.treatment.label, number(t.error), above, *scores, "" if t.balanced else "out of balance"])
     return Table(
         "Treatments of zeros, each by the map's method on the same folds. Error: sum over parts of squared error relative to the part's "
-        "variance (none where a part was measured below the detection limit and is predicted there); beside it how far above the best of those in "
-        "balance, with the standard error of that. Out of balance: the mean error of a part is beyond a tenth of its mean. The lowest error in balance "
-        "is taken, or the first where it is within one standard error.",
+        "variance; beside it how far above the best of those in balance, with the standard error of that. Out of balance: the mean error of a part is "
+        "beyond a tenth of its mean, which may hold what lies unseen below the detection limit. The lowest error in balance is taken, or the "
+        "first where it is within one standard error.",
         ["treatment", "error", "above the best", *[f"{p} {s}" for p in parts for s in ("RMSE", "mean error")], ""],
         rows,
         numeric=list(range(1, 3 + 2 * len(parts))),

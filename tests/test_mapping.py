@@ -1,0 +1,93 @@
+"""From stations to a normal in the columns of a treatment: learning, methods with and without a variance, threads."""
+
+import numpy as np
+import pytest
+
+from texture.composition import LogRatio
+from texture.mapping import learn, learn_all, make_mapper
+from texture.observations import Observations
+from texture.recipe import Method
+from texture.structure import Covariance, CovarianceSet, Structure
+from texture.treatments import Censor, Presence, Replace
+
+LR = LogRatio(["mud", "sand", "gravel"])
+NAN = float("nan")
+
+
+@pytest.fixture(scope="module")
+def stations() -> Observations:
+    rng = np.random.default_rng(4)
+    n = 60
+    points = rng.uniform(0, 10_000, (n, 2))
+    mud = 1 / (1 + np.exp(-(points[:, 0] - 5_000) / 2_000 + rng.normal(0, 0.3, n)))
+    gravel = np.where(points[:, 1] > 6_000, (1 - mud) * rng.uniform(0.1, 0.4, n), 0.0)
+    fractions = np.column_stack([mud, 1 - mud - gravel, gravel])
+    unknown = np.full((n, 3), NAN)
+    return Observations(
+        points, fractions, np.full(n, 0.001), unknown, unknown.copy(), np.full(n, "", dtype="<U8"), np.full(n, NAN),
+        np.arange(n) % 2, np.ones(n, dtype=bool), np.arange(n),
+    )  # fmt: skip
+
+
+@pytest.mark.parametrize("treatment", [Replace(LR), Censor(LR), Presence(LR)])
+@pytest.mark.parametrize("name", ["kriging", "inverse_distance"])
+def test_fractions_sum_to_one_and_intervals_hold_the_median(stations, treatment, name):
+    mapper = make_mapper(name, learn(treatment, stations, Method()), Method())
+    places = np.array([[2_000.0, 2_000.0], [5_000.0, 8_000.0], [9_000.0, 5_500.0]])
+    mean, variance = mapper.predict(places)
+    assert mean.shape == (3, len(treatment.column_names))
+    expected = mapper.expected(mean, variance)
+    np.testing.assert_allclose(expected.sum(axis=1), 1.0, atol=1e-12)
+    assert expected[1, 2] > 0.05 > expected[0, 2]  # gravel lies in the north
+    low, high = mapper.interval(mean, mapper.sample_variance(variance, np.zeros_like(mean)))
+    if name == "kriging":
+        assert (low <= high).all()
+        assert (low[:, :2] < high[:, :2]).all()  # gravel may be surely absent
+        assert (low[:, 0] < expected[:, 0]).all()
+        assert (expected[:, 0] < high[:, 0]).all()
+        assert low[0, 2] == 0.0  # below the limit a sample is not told from one without gravel
+    else:
+        assert np.isnan(low).all()
+        assert np.isnan(high).all()
+        np.testing.assert_array_equal(expected, mapper.back(mean))
+
+
+def test_covariance_follows_the_residual_correlation(stations):
+    one = Covariance([Structure("exponential", 1.0, 3_000.0)])
+    learned = learn(Replace(LR), stations, Method())
+    mapper = make_mapper("kriging", learned, Method())
+    object.__setattr__(mapper, "structure", CovarianceSet([one, one], [[1.0, -0.5], [-0.5, 1.0]]))
+    np.testing.assert_allclose(mapper.covariance(np.array([[4.0, 1.0]])), [[[4.0, -1.0], [-1.0, 1.0]]])
+
+
+def test_threads_change_nothing(stations):
+    tasks = [(t, stations, None) for t in (Replace(LR), Censor(LR), Presence(LR))]
+    together = learn_all(tasks, Method())
+    for (treatment, o, _), learned in zip(tasks, together, strict=True):
+        alone = learn(treatment, o, Method())
+        assert alone.structure == learned.structure
+        np.testing.assert_array_equal(alone.values, learned.values)
+        np.testing.assert_array_equal(alone.noise, learned.noise)
+
+
+def test_censored_values_end_below_their_bound_where_the_neighbours_agree(stations):
+    treatment = Censor(LR)
+    learned = learn(treatment, stations, Method())
+    plain = treatment.columns(stations)[0]
+    low, high = treatment.bounds(stations)
+    zero = low[:, 1] < high[:, 1]
+    assert zero.sum() > 20
+    kept = zero & np.isfinite(learned.values[:, 1])
+    assert (learned.values[kept, 1] != plain[kept, 1]).all()
+    assert (learned.noise[kept, 1] > 0.0).all()
+    np.testing.assert_array_equal(learned.values[~zero, 1], plain[~zero, 1])  # known values stay
+    # Deep among zeros the posterior lies below the bound: the map has less gravel than the limit.
+    mapper = make_mapper("kriging", learned, Method())
+    expected = mapper.expected(*mapper.predict(np.array([[2_000.0, 1_500.0]])))
+    assert expected[0, 2] < LR.detection_limit
+
+
+def test_no_survey_is_given_where_there_is_but_one(stations):
+    one = stations.take(np.flatnonzero(stations.survey == 0))
+    assert learn(Replace(LR), one, Method()).survey is None
+    assert learn(Replace(LR), stations, Method()).survey is not None
