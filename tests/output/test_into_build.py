@@ -26,19 +26,19 @@ ROWS, COLUMNS = 12, 20
 QUICK = {"validation": {"count": 2, "compare": []}}
 
 
-def initial_file(path, rows=ROWS, kind="f4"):
+def initial_file(path, rows=ROWS, kind="f4", columns=COLUMNS):
     """An initial file of an invented model: packed water, unlimited time with two records, a group, odd attributes."""
     rng = np.random.default_rng(4)
     with netCDF4.Dataset(path, "w") as file:
         file.title, file.odd = "first state of the Lantern model", np.int16(7)
         file.createDimension("tick", None)
-        for name, length in (("strat", 1), ("j", rows), ("i", COLUMNS)):
+        for name, length in (("strat", 1), ("j", rows), ("i", columns)):
             file.createDimension(name, length)
         clock = file.createVariable("tick", "f8", ("tick",))
         clock.units, clock[:] = "hours since 2001-01-01", [0.0, 6.0]
         warm = file.createVariable("warmth", "i2", ("tick", "j", "i"), fill_value=-1, zlib=True)
         warm.scale_factor, warm.units = 0.01, "degC"
-        warm[:] = rng.uniform(0, 20, (2, rows, COLUMNS))
+        warm[:] = rng.uniform(0, 20, (2, rows, columns))
         for name in ("share_mud", "share_sand", "share_gravel"):
             share = file.createVariable(name, kind, ("tick", "strat", "j", "i"), chunksizes=(1, 1, 4, 5), zlib=True)
             share.note = "as delivered"
@@ -186,3 +186,20 @@ def test_a_bed_with_every_setting_of_strength_and_a_drawn_rim(small):
     assert (result.summary()["packing"], result.summary()["hiding"]) == ("class", "wu")
     assert "edge.geojson" in (small.parent / "out" / "provenance.json").read_text()
     assert "Wu, Wang and Jia" in (small.parent / "out" / "report.html").read_text()
+
+
+@pytest.mark.slow
+def test_a_halo_and_a_time_fit_the_models_own_file(job):
+    """The file has a ring of cells around the grid; the names file pads the bed, and its time is the file's record."""
+    initial_file(job.parent / "initial.nc", ROWS + 2, columns=COLUMNS + 2)
+    (job.parent / "names.toml").write_text(NAMES + '[halo]\ncells = 1\n[time]\nname = "tick"\n')
+    result = build(job)
+    with netCDF4.Dataset(job.parent / "out" / "initial.nc") as file:
+        stored = file["share_sand"][1, 0]
+        inside = result.bed.class_fraction[1, 0].reshape(ROWS, COLUMNS)
+        np.testing.assert_allclose(stored[1:-1, 1:-1], inside, atol=2**-24)
+        np.testing.assert_array_equal(stored[0], stored[1])
+        assert (file["share_sand"][0] == 0.0).all()
+    initial_file(job.parent / "initial.nc")
+    with pytest.raises(RecipeError, match=r'"share_mud" has 12 along j, the bed has 14'):
+        build(job, output=job.parent / "again")
