@@ -1,6 +1,8 @@
 """Certificates: a file for each sample, forms that are none, and what is said when there are none."""
 
 import pytest
+from hypothesis import HealthCheck, given, settings
+from hypothesis import strategies as st
 
 from tests.stations.samples import HEADER, ROWS, as_csv, recipe_for
 from texture.errors import SampleError
@@ -50,3 +52,45 @@ def test_a_message_names_the_certificate(tmp_path, read):
     stations = read(stacked)
     assert stations.set_aside["row"].tolist() == [1]
     assert 'column "pan (g)": cannot read "12;5"' in stations.set_aside["reason"][0]
+
+
+line = st.lists(
+    st.sampled_from(
+        [
+            "Sample",
+            "Latitude",
+            "Sieve (mm)",
+            "Retained (g)",
+            "Mud",
+            "Total",
+            "pan",
+            "A9",
+            54.2,
+            3.1,
+            2,
+            0.5,
+            "<1",
+            "x: y",
+        ]
+    ),
+    max_size=4,
+)
+
+
+@settings(max_examples=40, deadline=None, suppress_health_check=[HealthCheck.function_scoped_fixture])
+@given(st.integers(0, 47), st.lists(line, max_size=4))
+def test_whatever_stands_between_certificates_no_row_is_lost(read, place, extra):
+    lines = [line for r in ROWS for line in [*form(r), []]]
+    try:
+        stations = read([*lines[:place], *extra, *lines[place:]])
+        said = ""
+    except SampleError as error:
+        said = str(error)
+    if said:
+        assert said.startswith("survey.csv")
+        return
+    counts = stations.counts
+    fates = ("rows_used", "rows_merged", "rows_evidence", "rows_set_aside", "rows_not_samples")
+    assert counts["rows_read"] == sum(counts[f] for f in fates)
+    whole = stations.samples[["mud", "sand", "gravel"]].dropna().to_numpy()
+    assert abs(whole.sum(axis=1) - 1.0).max(initial=0.0) < 1e-9

@@ -203,7 +203,7 @@ def test_the_same_sheet_twice(read, tmp_path):
 
 
 cell = st.one_of(
-    st.none(), st.just(""), st.floats(-5, 150).map(lambda v: round(v, 1)), st.sampled_from(["<1", "trace", "nd", "-", "5-10", "rock", "no recovery", "x y", "Mean"])
+    st.none(), st.just(""), st.floats(-5, 150).map(lambda v: round(v, 1)), st.sampled_from(["<1", "trace", "nd", "-", "5-10", ">95", "~3", "rock", "no recovery", "x y", "Mean"])
 )  # fmt: skip
 
 

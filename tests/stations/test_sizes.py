@@ -160,3 +160,19 @@ def test_weights_of_any_size_are_shared_out_exactly(weights):
     total = sum(weights)
     expected = [sum(weights[4:]) / total, sum(weights[2:4]) / total, sum(weights[:2]) / total]
     np.testing.assert_allclose([shares.mud[0], shares.sand[0], shares.gravel[0]], expected, atol=1e-12)
+
+
+def test_percents_beside_the_weights_are_left_out(read):
+    heads = [h for size in ("2 mm", "0.063 mm", "0.25 mm", "pan") for h in (f"{size} (g)", f"{size} (%)")]
+    grams = [[4.0, 2.0, 20.0, 10.0, 136.0, 68.0, 40.0, 20.0]] * 6
+    np.testing.assert_allclose(fractions(table(read, heads, grams)), [[0.2, 0.78, 0.02]] * 6)
+
+
+@pytest.mark.parametrize(
+    "heads", [["2 mm", "0.25 mm", "0.25 mm x", "pan"], ["2 mm", "1 mm", "0.063 mm", "pan", "<0.063 mm"]]
+)
+def test_two_columns_for_one_size_are_refused(read, heads):
+    with pytest.raises(
+        SampleError, match=r"sizes\.xlsx.*: found two columns for one size, .* expected one; take one out"
+    ):
+        table(read, heads, [[1.0] * len(heads)] * 6)

@@ -12,7 +12,7 @@ from collections.abc import Iterable, Sequence
 from dataclasses import dataclass, replace
 
 from texture.stations.files import Cell, is_blank
-from texture.stations.headings import is_tare, plain, unit_in
+from texture.stations.headings import is_tare, is_weight, plain, unit_in
 from texture.stations.where import Where
 
 __all__ = ["SizeColumn", "count_sizes", "is_pan", "is_size_header", "scale_unit", "size_columns", "size_in"]
@@ -182,10 +182,39 @@ def size_columns(
     real = [c for c in found if c.meaning != "pan"]
     if len(real) < FEWEST:
         return []
+    found = _one_of_each(found, units, where)
     found = [replace(c, tare=tares.get(named[c.index], -1)) for c in found]
     columns = sorted(found, key=lambda c: (c.coarse_phi if not math.isnan(c.coarse_phi) else math.inf, c.fine_phi))
     _check_tiles([c for c in columns if c.meaning == "class"], where)
     return columns
+
+
+def _one_of_each(found: list[SizeColumn], units: list[str], where: Where) -> list[SizeColumn]:
+    """One column for each size; where weights and percents stand side by side, the weights.
+
+    Raises
+    ------
+    SampleError
+        If a size has two columns that are not told apart by their units.
+    """
+    groups: dict[tuple[str, str, str], list[SizeColumn]] = {}
+    for column in found:
+        key = (column.meaning, f"{column.coarse_phi:.6f}", f"{column.fine_phi:.6f}")
+        if column.fine_phi == math.inf and column.meaning in ("class", "pan"):
+            key = ("finest", "", "")
+        groups.setdefault(key, []).append(column)
+    if all(len(group) == 1 for group in groups.values()):
+        return found
+    kept: list[SizeColumn] = []
+    for group in groups.values():
+        weighed = [c for c in group if is_weight(c.heading) or is_weight(units[c.index])]
+        if len(group) > 1 and len(weighed) != 1:
+            names = " and ".join(f'"{c.heading}"' for c in group[:2])
+            raise where.error(
+                f"two columns for one size, {names}", "one", "take one out, or write g into the headings of the weights"
+            )
+        kept += weighed if len(group) > 1 else group
+    return [c for c in found if c in kept]
 
 
 def _meant(size: tuple[float, float, str], heading: str) -> tuple[float, float, str]:
