@@ -245,3 +245,12 @@ def test_a_unit_that_only_the_values_tell_is_doubted(files, tmp_path):
         "# DOUBT: mud.csv: no heading and no complete row tells the unit; the largest share, 60, reads as percent"
         in text
     )
+
+
+def test_doubts_of_reading_stand_once_and_as_doubts(files, tmp_path):
+    head = ["Station", "Latitude", "Longitude", "Fines <75 µm (%)", "Sand (%)", "Gravel (%)", "Date"]
+    rows = [[*r[:6], "05/06/1987"] for r in ROWS]
+    text = draft_recipe(files(old=[head, *rows]), tmp_path)
+    assert text.count("its mud ends at 0.075 mm") == 1
+    assert "# DOUBT: old.csv: its mud ends at 0.075 mm, not at 0.063 mm; it is mapped with the others as it is" in text
+    assert any(line.startswith("# DOUBT") and "order of day and month" in line for line in text.splitlines())

@@ -33,6 +33,7 @@ TABLE_COLUMNS = (
     "date", "depth_m", "resolution", "repeats", "repeat_sd_mud", "repeat_sd_sand", "repeat_sd_gravel",
     "position_accuracy_m", "description", "described_class", "mud_low", "mud_high", "sand_low", "sand_high",
     "gravel_low", "gravel_high", "median_phi",
+    "mud_below_mm", "gravel_above_mm",
 )  # fmt: skip
 
 
@@ -48,6 +49,7 @@ class Stations:
         2 mm. Rows of kind `hard_ground` have no fractions, and those of kind `description` none either: their words
         name a class in `described_class`, and those of kind `median_only` only a `median_phi`. Rows that are not exact
         (`<1`, `5-10`) have the limits of every known part in `<part>_low` and `<part>_high`, NaN in all other rows.
+        `mud_below_mm` and `gravel_above_mm` are the sizes at which the parts were cut, NaN where nothing says.
     audit : DataFrame
         file, sheet, row, column, old, new, rule: every reading that was not plain and every change.
     ledger : DataFrame

@@ -84,7 +84,7 @@ def set_void(rows: pd.DataFrame, intake: Intake) -> tuple[str, ...]:
         rows.loc[old, "fate"], rows.loc[old, "deep"] = "set_aside", False
         if undated:
             notes.append(
-                f"{undated} samples without a date lie where there was {void.reason} on {void.date.isoformat()}: kept; DOUBT"
+                f"{undated} samples without a date lie where there was {void.reason} on {void.date.isoformat()}; DOUBT: they are kept"
             )
         if not inside.any():
             notes.append(f"no sample lies where there was {void.reason} on {void.date.isoformat()}; check its polygon")

@@ -35,6 +35,7 @@ from texture.stations.where import shown
 __all__ = ["draft_recipe"]
 
 DETECTION_LIMIT = 0.005  # of the recipe's default; a draft only counts rows with it
+DOUBTFUL = ("DOUBT", "tells the unit", "headings say", "is not known here", "cannot be told")  # words of notes
 ROWS_SHOWN = 4  # of a file in which no table was found
 _ORDER = {role: i for i, role in enumerate(COLUMN_ROLES)}
 
@@ -136,9 +137,11 @@ def _look(file: Path, crs: str | None = None, sheet: str | None = None) -> _Look
         look.error = str(error)
         look.shown = _first_rows(look) if look.source is None else []
         return look
-    look.notes = [*look.source.sheet.notes, *look.source.notes, *notes]
+    said = [*look.source.sheet.notes, *look.source.notes, *notes]
+    doubtful = [note for note in said if any(words in note for words in DOUBTFUL)]
+    look.notes = [note for note in said if note not in doubtful]
+    look.doubts += [f"DOUBT: {note.replace('DOUBT: ', '')}" for note in doubtful]
     look.counts = {str(k): int(v) for k, v in frame["fate"].value_counts().items()}
-    look.doubts += [f"DOUBT: {note}" for note in notes if "tells the unit" in note or "headings say" in note]
     lon, lat = frame["longitude"].to_numpy(), frame["latitude"].to_numpy()
     if "latitude" in look.source.columns and look_like_minutes(lon, lat):
         look.doubts.append(

@@ -16,6 +16,7 @@ from texture.stations.audit import AuditLog
 from texture.stations.bottoms import is_hard_ground
 from texture.stations.cells import Numbers, read_numbers
 from texture.stations.columns import Column
+from texture.stations.cuts import cuts_of
 from texture.stations.entries import days_of, interval_of, metres_of, texts_of
 from texture.stations.fates import judge, words_of
 from texture.stations.files import Cell, Sheet, is_blank
@@ -73,6 +74,8 @@ def read_rows(
     deep = _is_deep(top, bottom, intake.surface_m) & placed & (fate != "not_samples")
     _set_aside_deep(top, intake, fate, reason)
     dates = days_of(source, block, notes)
+    mud_cut, gravel_cut, told_cuts = cuts_of(source.columns, source.sizes, intake, table.where)
+    notes.extend(told_cuts)
     hard = fate == "evidence"
     parts = np.where(hard[:, None], np.nan, np.column_stack([shares.mud, shares.sand, shares.gravel]))
     kind = np.where(np.isfinite(parts).all(axis=1), block.method, "partial")
@@ -99,6 +102,8 @@ def read_rows(
             "described_class": fates.described,
             **_limit_columns(shares, hard),
             "median_phi": np.where(hard, np.nan, median),
+            "mud_below_mm": np.where(np.isfinite(parts[:, 0]), mud_cut, np.nan),
+            "gravel_above_mm": np.where(np.isfinite(parts[:, 2]), gravel_cut, np.nan),
             "top_m": np.nan_to_num(top),
             "bottom_m": bottom,
             "deep": deep,
@@ -133,7 +138,7 @@ def bare_places(joined: Joined, block: Samples) -> pd.DataFrame:
     frame["position_accuracy_m"] = positions.accuracy_m[hard]
     frame["description"] = ""
     frame["described_class"] = ""
-    frame[[*LIMIT_COLUMNS, "median_phi"]] = np.nan
+    frame[[*LIMIT_COLUMNS, "median_phi", "mud_below_mm", "gravel_above_mm"]] = np.nan
     frame["top_m"], frame["thickness_m"], frame["bottom_m"] = 0.0, np.nan, np.nan
     frame["deep"], frame["note"] = False, ""
     frame["fate"] = "evidence"

@@ -140,6 +140,9 @@ LANGUAGES = (
 )  # fmt: skip
 
 COLUMNS = (
+    Case("cuts that headings tell", text(table(["Station", "Latitude", "Longitude", "Mud <63 µm (%)", "Sand 63 µm-2 mm (%)", "Gravel >2 mm (%)", "Remarks"])), changed=everywhere(mud_below_mm=0.063, gravel_above_mm=2.0), atol=1e-9),
+    Case("cuts at other sizes", text(table(["Station", "Latitude", "Longitude", "Fines <75 µm (%)", "Sand (%)", "Gravel >4.75 mm (%)", "Remarks"])), changed=everywhere(mud_below_mm=0.075, gravel_above_mm=4.75), notes=("its mud ends at 0.075 mm, not at 0.063 mm; DOUBT", "its gravel begins at 4.75 mm, not at 2 mm; DOUBT"), atol=1e-9),
+    Case("cuts that nothing tells", text(table()), changed=everywhere(mud_below_mm=NAN, gravel_above_mm=NAN)),
     Case("silt and clay", text([["Station", "Latitude", "Longitude", "Silt %", "Clay %", "Sand %", "Gravel %"], *[[*r[:3], round(r[3] - 1, 1), 1.0, *r[4:6]] for r in rows()]]), audit=tuple((i + 2, "Silt % + Clay %", f"{round((r[3] - 1) / 100, 5):.7g} + 0.01", f"{r[3] / 100:.7g}") for i, r in enumerate(BASE))),
     Case("sand in sub-classes beside the sand", text([[*HEAD, "Fine sand %", "Coarse sand %"], *[[*r, 1.0, 2.0] for r in rows()]])),
     Case("weights beside percents", text([["Station", "Latitude", "Longitude", "Mud (g)", "Mud (%)", "Sand (g)", "Sand (%)", "Gravel (%)"], *[[*r[:3], 9.9, r[3], 8.8, r[4], r[5]] for r in rows()]])),
