@@ -6,7 +6,7 @@ functions on folds.
 
 from __future__ import annotations
 
-from collections.abc import Iterable
+from collections.abc import Callable, Iterable
 from pathlib import Path
 from typing import Any
 
@@ -32,6 +32,7 @@ from texture.validate import validate_methods
 __all__ = ["build", "intake", "read_stations", "validate"]
 
 Where = str | Path
+Check = Callable[[Recipe, Target], None]
 
 
 def intake(
@@ -99,7 +100,7 @@ def build(
     clock, progress = Clock(), progress or Silent()
     recipe = read_recipe(recipe_path, overrides, output, settings)
     folder = ResultFolder(recipe.output, overwrite)
-    found = _validated(recipe, progress, clock)
+    found = _validated(recipe, progress, clock, before=check_early)
     target, mapper = found.target, found.mapper
     with clock.stage("estimate"):
         per_side = points_per_side(recipe.target.points_per_cell, found.cell_side_m, found.range_m)
@@ -124,17 +125,18 @@ def read_stations(recipe_path: Where, **settings: Any) -> Stations:
     return _stations(read_recipe(recipe_path, settings=settings), Silent())[1]
 
 
-def _stations(recipe: Recipe, progress: Progress) -> tuple[Target, Stations]:
+def _stations(recipe: Recipe, progress: Progress, before: Check | None = None) -> tuple[Target, Stations]:
     with progress.stage("read the grid"):
         target = read_target(recipe.target)
-        check_early(recipe, target)
+        if before is not None:
+            before(recipe, target)
     with progress.stage("read the samples"):
         return target, place_stations(read_samples(recipe), target, recipe.intake)
 
 
-def _validated(recipe: Recipe, progress: Progress, clock: Clock) -> Validated:
+def _validated(recipe: Recipe, progress: Progress, clock: Clock, before: Check | None = None) -> Validated:
     with clock.stage("read"):
-        target, stations = _stations(recipe, progress)
+        target, stations = _stations(recipe, progress, before)
     plane = Plane.choose(stations.table["longitude"].to_numpy(), stations.table["latitude"].to_numpy(), target.crs)
     observations = observe(stations, plain_treatment(recipe.composition).logratio, plane)
     with clock.stage("fit"), progress.stage("fit the spatial structure"):

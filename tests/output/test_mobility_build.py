@@ -9,6 +9,7 @@ import xarray as xr
 
 from texture import build
 from texture.errors import TargetError
+from texture.pipeline import intake
 
 QUICK = {"validation": {"count": 2, "compare": []}, "outputs": {"geotiff": False}}
 CLASSES = [
@@ -90,3 +91,11 @@ def test_hours_of_a_wave_record(storm):
     lengths.to_netcdf(storm.parent / "record2.nc")
     with pytest.raises(TargetError, match=r'mobility "a week", series of 2 and 3 times; expected one length'):
         build(storm, output=storm.parent / "b", mobility=[week | {"file": "record2.nc", "period_s": "beat"}], **QUICK)
+
+
+def test_the_samples_alone_can_be_read_before_the_bed_is_right(storm):
+    """A rim or waves that do not fit are the build's concern, not the account of the rows."""
+    found = intake(
+        storm, output=storm.parent / "rows", rim={"width_cells": 400}, mobility=[STORM | {"period_s": "none"}]
+    )
+    assert found.summary()["stations"] == 30
