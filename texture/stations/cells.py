@@ -74,6 +74,7 @@ _TRACE = frozenset((
 MISSING_CODES = (-9.0, -99.0, -999.0, -9999.0, -99999.0, -99.9, -999.9, -999.99, -999.25)
 
 _NUMBER = r"[+\-]?(?:\d[\d.,' ]*|[.,]\d+)(?:[eE][+\-]?\d+)?"
+_SIMPLE = re.compile(r"-?[0-9]+(?:\.[0-9]+)?")
 _PLAIN = re.compile(r"[+\-]?(?:\d+(?:[.,]\d*)?|[.,]\d+)(?:[eE][+\-]?\d+)?")
 _WHOLE = re.compile(_NUMBER)
 _BELOW = re.compile(rf"(?:<|≤|<=|less than|under|below|menor que|kleiner als|inferieur a)\s*({_NUMBER})\s*%?")
@@ -186,6 +187,8 @@ def _decimals_of(number: float) -> int:
 
 def _read_text(cell: str, comma: bool, thousand_sign: str) -> tuple[float, int, float, int]:
     """Return value, reading, half width (NaN: from the digits) and digits after the point."""
+    if not comma and not thousand_sign and _SIMPLE.fullmatch(cell):  # most cells of most files
+        return float(cell), Reading.PLAIN, np.nan, min(len(cell.partition(".")[2]), 9)
     text = cell.strip().replace("−", "-").replace("\xa0", " ").replace("\u202f", " ").lstrip("'").strip()
     if not text:
         return np.nan, Reading.BLANK, np.nan, -1

@@ -79,7 +79,10 @@ def find_source(block: Samples, label: str | None = None) -> Source:
     # Nothing tells what samples consist of: perhaps the file is the certificate of a single one.
     arranged = gather_certificates(sheets, forced=True)
     if any(s.own_header for s in arranged):
-        return _choose(block, arranged)
+        try:
+            return _choose(block, arranged)
+        except SampleError:
+            pass  # what was wrong with the file as it stands says more
     if error is not None:
         raise error
     return source
