@@ -162,6 +162,34 @@ def correlation(code: int, smoothness: float, x: np.ndarray) -> np.ndarray:
 
 
 @compiled
+def trace_products(  # type: ignore[no-untyped-def]
+    inverse, left, right, projected, first, second, third
+) -> tuple[float, float, float, float]:
+    """Traces of M with three symmetric matrices and with unity, in one pass.
+
+    M = `inverse` - `left` `right`' - `projected` `projected`'. Of `inverse` (n, n) only the lower triangle is read;
+    `left` and `right` are (n, p). Matrices of shape (0, 0) count as zero.
+    """
+    n, p = left.shape
+    sums = np.zeros(4)
+    for i in range(n):
+        for j in range(i + 1):
+            m = inverse[i, j] - projected[i] * projected[j]
+            for a in range(p):
+                m -= left[i, a] * right[j, a]
+            if i == j:
+                sums[3] += m
+                m *= 0.5
+            if first.size:
+                sums[0] += m * first[i, j]
+            if second.size:
+                sums[1] += m * second[i, j]
+            if third.size:
+                sums[2] += m * third[i, j]
+    return 2.0 * sums[0], 2.0 * sums[1], 2.0 * sums[2], sums[3]
+
+
+@compiled
 def distance_matrix(a: np.ndarray, b: np.ndarray) -> np.ndarray:
     """Distances between rows of a (n, d) and rows of b (m, d), by differences (no cancellation), shape (n, m)."""
     n, m = a.shape[0], b.shape[0]

@@ -38,6 +38,21 @@ class Family:
         result: Array = covariance_matrix(self.packed(range_m), 0.0, distance)
         return result
 
+    def by_log_range(self, distance: Array, range_m: float, correlation: Array) -> Array | None:
+        """Derivative of the correlation by log range where it has a short form, else None.
+
+        With x = distance over the model's own length: x exp(-x) for the exponential, x² exp(-x) for Matérn 3/2.
+        """
+        x = distance * (scale_factor(self.model, self.smoothness) / range_m)
+        if self.model == "exponential":
+            return np.asarray(x * correlation)
+        if self.model == "matern" and self.smoothness == 1.5:
+            return np.asarray(x * x / (1.0 + x) * correlation)
+        return None
+
+
+_NONE = np.empty((0, 0))
+
 
 @dataclass(frozen=True)
 class Parameters:
@@ -148,21 +163,25 @@ class DenseLikelihood:
         loss = 0.5 * (log_determinant + log_information + quadratic + (n - p) * np.log(2.0 * np.pi))
         if not gradient:
             return float(loss), np.zeros(4 + len(self.axes))
+        from texture.structure.compiled import trace_products
+
         inverse = dpotri(factor[0], lower=1, overwrite_c=1)[0]
-        inverse = np.tril(inverse) + np.tril(inverse, -1).T
-        inverse -= by_drift @ np.linalg.solve(information, by_drift.T)
-        # d loss / d theta = 1/2 sum of (P - Pz (Pz)') * dK/d theta
-        inverse -= np.outer(projected, projected)
+        right = np.linalg.solve(information, by_drift.T).T
+
+        def traces(*matrices: Array | None) -> tuple[float, float, float, float]:
+            # d loss / d theta = 1/2 trace of (P - Pz (Pz)') dK/d theta, P the inverse without the drift's part
+            of = [_NONE if m is None else m for m in matrices]
+            return trace_products(inverse, by_drift, right, projected, *of)
+
         slope = np.zeros(4 + len(self.axes))
-        if family is not None:
+        by_range = None if family is None or self.axes else family.by_log_range(distance, parameters.range_m, rho)
+        a, b, c, unity = traces(by_range, rho if family is not None else None, self.same)
+        slope[:4] = parameters.sill * a, parameters.sill * b, parameters.small_scale * unity, parameters.survey * c
+        if family is not None and by_range is None:
             step = 1e-4  # central difference in log range: its error, 1e-8 relative, is below the optimiser's
             for place in (0, *range(4, len(slope))):
                 near, far = parameters.moved(place, step), parameters.moved(place, -step)
                 up = family.correlation(self._distances(near), near.range_m)
                 down = family.correlation(self._distances(far), far.range_m)
-                slope[place] = parameters.sill * np.vdot(inverse, up - down) / (2.0 * step)
-            slope[1] = parameters.sill * np.vdot(inverse, rho)
-        slope[2] = parameters.small_scale * np.trace(inverse)
-        if self.same is not None:
-            slope[3] = parameters.survey * np.vdot(inverse, self.same)
+                slope[place] = parameters.sill * traces(up - down, None, None)[0] / (2.0 * step)
         return float(loss), 0.5 * slope
