@@ -111,6 +111,19 @@ def test_what_learns_from_fractions_learns_from_those_taken(tmp_path):
     assert much == pytest.approx(np.log(0.25 / 0.75), abs=1e-6)  # half of it gravel
 
 
+def test_a_median_alone_informs_mud_and_is_not_scored(tmp_path):
+    text = "id,lon,lat,mud,sand,gravel,median (phi)\n" + "\n".join(
+        [f"{row}," for row in WHOLE] + ["M1,0.5,50.9,,,,6.5"]
+    )
+    stations, o = observed(tmp_path, text)
+    assert stations.table["kind"].tolist()[-1] == "median_only"
+    values, noise = o.coordinates(LOGRATIO)
+    assert values[-1, 0] > 0.0  # 6.5 phi is a silt: more mud than not
+    assert noise[-1, 0] > 0.25
+    assert np.isnan(values[-1, 1])
+    assert o.measured.tolist() == [True] * 7 + [False]
+
+
 def test_too_few(tmp_path):
     with pytest.raises(SampleError, match="expected at least 5"):
         observed(tmp_path, "id,lon,lat,mud,sand,gravel\n" + "\n".join(WHOLE[:4]))

@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 from numpy.typing import NDArray
 
-from texture.composition import class_moments, from_intervals, from_mud_and_sand
+from texture.composition import class_moments, from_intervals, from_median, from_mud_and_sand
 from texture.errors import SampleError
 
 if TYPE_CHECKING:
@@ -44,6 +44,8 @@ class Observations:
         Folk's code of rows told only in words, empty elsewhere.
     mud_of_fines : float array, shape (n,)
         Mud / (mud + sand) of rows that know nothing else; NaN elsewhere.
+    median_phi : float array, shape (n,)
+        Median grain size of rows that know nothing else; NaN elsewhere.
     survey : int array, shape (n,)
         Number of the survey of each station.
     measured : bool array, shape (n,)
@@ -59,6 +61,7 @@ class Observations:
     high: Floats
     described: NDArray[np.str_]
     mud_of_fines: Floats
+    median_phi: Floats
     survey: NDArray[np.int64]
     measured: NDArray[np.bool_]
     rows: NDArray[np.int64]
@@ -76,7 +79,8 @@ class Observations:
     @property
     def exact(self) -> NDArray[np.bool_]:
         """Rows whose fractions are numbers, though some may be unknown, shape (n,)."""
-        return np.asarray((self.described == "") & np.isnan(self.mud_of_fines) & ~self.bounded)
+        numbers = np.isnan(self.mud_of_fines) & np.isnan(self.median_phi)
+        return np.asarray((self.described == "") & numbers & ~self.bounded)
 
     def take(self, index: NDArray[np.int64]) -> Observations:
         """Return the observations of some stations."""
@@ -112,6 +116,9 @@ class Observations:
         if fines.any():
             known = _gravel_logit(self.fractions[exact, 2], logratio.detection_limit)
             values[fines], noise[fines] = from_mud_and_sand(logratio, self.mud_of_fines[fines], known)
+        medians = np.isfinite(self.median_phi)
+        if medians.any():
+            values[medians], noise[medians] = from_median(logratio, self.median_phi[medians])
         return values, np.nan_to_num(noise)
 
 
@@ -127,6 +134,7 @@ def observe(stations: Stations, logratio: LogRatio, plane: Plane) -> Observation
     parts = list(logratio.parts)
     fractions = np.array(table[parts], dtype=np.float64)  # a copy: some of it is blanked below
     words = (table["kind"] == "description").to_numpy()
+    medians = (table["kind"] == "median_only").to_numpy()
     low, high = _limits(table, parts)
     bounded = np.isfinite(low).any(axis=1)
     fractions[bounded] = np.where((high - low)[bounded] <= WIDEST_SCORED, 0.5 * (low + high)[bounded], np.nan)
@@ -143,8 +151,9 @@ def observe(stations: Stations, logratio: LogRatio, plane: Plane) -> Observation
         high=high,
         described=np.where(words, table["described_class"].to_numpy(dtype=np.str_), ""),
         mud_of_fines=mud_of_fines,
+        median_phi=np.where(medians, table["median_phi"].to_numpy(dtype=np.float64), np.nan),
         survey=table["survey"].map({name: i for i, name in enumerate(names)}).to_numpy(dtype=np.int64),
-        measured=~words,
+        measured=~words & ~medians,
         rows=table.index.to_numpy(dtype=np.int64),
     )
     informs = np.isfinite(said.coordinates(logratio)[0]).any(axis=1)

@@ -14,6 +14,7 @@ from texture.choosing import fit_candidates
 from texture.clock import Clock
 from texture.early import check_early, read_conditions, read_rim
 from texture.estimate import estimate_on
+from texture.flagging import flag_stations
 from texture.inventory import make_inventory
 from texture.mapping import make_mapper
 from texture.observations import observe
@@ -144,4 +145,5 @@ def _validated(recipe: Recipe, progress: Progress, clock: Clock, before: Check |
     with clock.stage("validate"):
         validation = validate_methods(observations, target, plane, plain, treated, recipe, progress)
     mapper = make_mapper(recipe.method.name, validation.learned, recipe.method)
+    stations = flag_stations(stations, mapper, observations)
     return Validated(recipe, stations, target, plane, observations, mapper, validation)

@@ -42,6 +42,7 @@ def page_tables(result: Result) -> dict[str, Table]:
         "rows": _rows(result),
         "set_aside": _set_aside(result),
         "audit": _audit(result),
+        "outliers": _outliers(result),
         "inputs": _inputs(result),
     }
 
@@ -261,6 +262,19 @@ def _set_aside(result: Result) -> Table:
     more = len(table) - len(rows)
     caption = "Rows set aside, with the reason" + (f"; {more:,} more stand in audit.csv" if more > 0 else "") + "."
     return Table(caption, ["file", "sheet", "row", "id", "reason"], rows, numeric=[2])
+
+
+def _outliers(result: Result) -> Table:
+    rows = [
+        [str(v) for v in row[:-1]] + [number(row[-1], 1)]
+        for row in result.found.stations.outliers.itertuples(index=False)
+    ]
+    return Table(
+        "Stations more than four standard deviations from what all others say; they are in the map. Look at their rows.",
+        ["id", "survey", "file", "sheet", "row", "error in standard deviations"],
+        rows,
+        numeric=[4, 5],
+    )
 
 
 def _audit(result: Result) -> Table:

@@ -1,0 +1,29 @@
+"""Stations that no neighbour believes: flagged by leave-one-out, never dropped."""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+if TYPE_CHECKING:
+    from texture.mapping import Mapper
+    from texture.observations import Observations
+    from texture.stations import Stations
+
+__all__ = ["flag_stations"]
+
+
+def flag_stations(stations: Stations, mapper: Mapper, observations: Observations) -> Stations:
+    """Give every station its standardised leave-one-out error, and list those beyond four standard deviations.
+
+    Methods without a variance cannot tell what is far out: their stations stay as they are.
+    """
+    if not mapper.has_variance:
+        return stations
+    from texture.predict.leave_out import leave_out
+
+    mean, variance = leave_out(mapper.predictor)
+    with np.errstate(invalid="ignore"):  # a coordinate that a station says nothing of
+        z = (mapper.predictor.stations.values - mean) / np.sqrt(variance)
+    return stations.with_outliers(z, observations.rows)
