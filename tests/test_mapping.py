@@ -25,7 +25,7 @@ def stations() -> Observations:
     unknown = np.full((n, 3), NAN)
     return Observations(
         points, fractions, np.full(n, 0.001), unknown, unknown.copy(), np.full(n, "", dtype="<U8"), np.full(n, NAN),
-        np.arange(n) % 2, np.ones(n, dtype=bool), np.arange(n),
+        np.arange(n) % 2, np.ones(n, dtype=bool), np.arange(n), np.full(n, NAN),
     )  # fmt: skip
 
 

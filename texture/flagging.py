@@ -17,9 +17,10 @@ __all__ = ["flag_stations"]
 def flag_stations(stations: Stations, mapper: Mapper, observations: Observations) -> Stations:
     """Give every station its standardised leave-one-out error, and list those beyond four standard deviations.
 
-    Methods without a variance cannot tell what is far out: their stations stay as they are.
+    Methods without a variance cannot tell what is far out, and a neighbourhood for each point has no quick way to leave
+    one out: their stations stay as they are.
     """
-    if not mapper.has_variance:
+    if not mapper.has_variance or mapper.predictor.neighbourhood == "nearest":
         return stations
     from texture.predict.leave_out import leave_out
 

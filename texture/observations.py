@@ -44,14 +44,14 @@ class Observations:
         Folk's code of rows told only in words, empty elsewhere.
     mud_of_fines : float array, shape (n,)
         Mud / (mud + sand) of rows that know nothing else; NaN elsewhere.
-    median_phi : float array, shape (n,)
-        Median grain size of rows that know nothing else; NaN elsewhere.
     survey : int array, shape (n,)
         Number of the survey of each station.
     measured : bool array, shape (n,)
         True where fractions were measured rather than described in words; only these are scored.
     rows : int array, shape (n,)
         Row of the stations table.
+    median_phi : float array, shape (n,)
+        Median grain size of rows that know nothing else; NaN elsewhere.
     """
 
     points: Floats
@@ -61,10 +61,10 @@ class Observations:
     high: Floats
     described: NDArray[np.str_]
     mud_of_fines: Floats
-    median_phi: Floats
     survey: NDArray[np.int64]
     measured: NDArray[np.bool_]
     rows: NDArray[np.int64]
+    median_phi: Floats
 
     @property
     def count(self) -> int:
