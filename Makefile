@@ -31,7 +31,7 @@ demo: setup
 	$(BIN)/texture build $(DEMO)/recipe.toml --overwrite
 
 test: lint
-	$(BIN)/python -m pytest
+	$(BIN)/python -m pytest -n 2 --dist loadfile
 
 quick: setup
 	$(BIN)/python -m pytest -m "not slow"
