@@ -90,7 +90,7 @@ def truncated_moments(
     z = side * (np.where(below, hi, lo) - m) / sd
     # Density over probability, in logarithms: both vanish in the tail, their ratio does not.
     ratio = np.exp(-0.5 * z * z - 0.5 * np.log(2 * np.pi) - log_ndtr(z))
-    # Far in the tail 1 - z r - r² loses its digits; its series in u = 1 / z² is there right to 1e-7.
+    # Far in the tail 1 - z r - r² loses its digits; its series in u = 1 / z² is there right to 1e-6 (held to 60 digits).
     u = 1.0 / np.maximum(z * z, 1.0)
     series = u * (1.0 + u * (-6.0 + u * (50.0 - 518.0 * u)))
     shrink = np.where(z < -30.0, series, 1.0 - z * ratio - ratio * ratio)

@@ -11,7 +11,7 @@ from numpy.typing import ArrayLike, NDArray
 from texture.errors import StructureError
 from texture.structure.covariance import check_points
 
-__all__ = ["Stations", "check_drift", "check_stations"]
+__all__ = ["Stations", "check_drift", "check_stations", "column_trees"]
 
 Array = NDArray[np.float64]
 
@@ -114,3 +114,14 @@ def check_drift(drift: ArrayLike | None, count: int, stations: Stations) -> Arra
     if bad.any():
         raise StructureError(f"drift: row {int(np.argmax(bad))} of the points is not finite; fill it first")
     return columns
+
+
+def column_trees(stations: Stations) -> list[tuple[Any, Array]]:
+    """For each column of values a k-d tree of the stations that know it, and their values."""
+    from scipy.spatial import cKDTree
+
+    trees = []
+    for column in stations.values.T:
+        known = np.isfinite(column)
+        trees.append((cKDTree(stations.points[known]), column[known]))
+    return trees

@@ -8,7 +8,7 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from texture.errors import StructureError
-from texture.predict.inputs import Stations, check_stations
+from texture.predict.inputs import Stations, check_stations, column_trees
 from texture.structure.covariance import check_points
 
 __all__ = ["InverseDistance"]
@@ -51,14 +51,8 @@ class InverseDistance:
         drift: ArrayLike | None = None,
     ) -> InverseDistance:
         """Take in the stations; noise, survey and drift are checked and not used."""
-        from scipy.spatial import cKDTree
-
-        stations = check_stations(points, values, noise_variance, survey, drift)
-        self._trees = []
-        for column in stations.values.T:
-            known = np.isfinite(column)
-            self._trees.append((cKDTree(stations.points[known]), column[known]))
-        self._stations = stations
+        self._stations = check_stations(points, values, noise_variance, survey, drift)
+        self._trees = column_trees(self._stations)
         return self
 
     def predict(self, points: ArrayLike, drift: ArrayLike | None = None) -> tuple[Array, Array]:
