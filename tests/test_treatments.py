@@ -104,7 +104,11 @@ def mean_over_seeds(kind, share, key, value):
 @pytest.mark.slow
 @pytest.mark.parametrize(("kind", "share"), FIELDS)
 def test_held_out_error_picks_nearly_the_best(kind, share):
-    """Over seeds: within 2 % of the best single treatment against the truth, with a mean error below a tenth."""
+    """Averaged over seeds: within 2 % of the best single treatment against the truth, mean error below a tenth.
+
+    A weak check, and known to be: the rule was set while looking at these seeds, and errors of both signs average out.
+    On five other seeds small values at 70 % zeros averaged -0.11, and single fields reached -0.41.
+    """
     found = [outcome(kind, share, seed) for seed in SEEDS]
     picked = [next(f for f in run.values() if f.tried.chosen) for run in found]
     everywhere = set.intersection(*(set(run) for run in found))
