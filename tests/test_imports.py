@@ -13,6 +13,7 @@ TEXTURE = ROOT / "texture"
 # What each room may import of ours, besides itself. `recipe` and `errors` are the ground that all stand on.
 GROUND = {"errors", "recipe", "__version__"}
 ALLOWED = {
+    "recipe": {"errors"},
     "composition": GROUND,
     "structure": GROUND,
     "predict": GROUND | {"structure", "composition"},

@@ -9,7 +9,7 @@ from hypothesis import strategies as st
 
 from texture.errors import RecipeError
 from texture.recipe import Recipe
-from texture.recipe_file import read_recipe, resolved_toml
+from texture.recipe.file import read_recipe, resolved_toml
 
 BASE = """
 title = "Test"

@@ -21,7 +21,7 @@ from texture.observations import observe
 from texture.placing import place_stations
 from texture.progress import Progress, Silent
 from texture.recipe import Recipe
-from texture.recipe_file import read_recipe
+from texture.recipe.file import read_recipe
 from texture.result import Intake, Result, Validated
 from texture.second_look import second_look
 from texture.stations import Stations, read_samples

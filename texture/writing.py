@@ -39,7 +39,7 @@ def write_validation(result: Validated, folder: ResultFolder) -> Validated:
 def write_all(result: Result, folder: ResultFolder, recipe_path: Path) -> Result:
     """Write everything a build makes; return the result with its files."""
     from texture.output import provenance, write_json
-    from texture.recipe_file import resolved_toml
+    from texture.recipe.file import resolved_toml
     from texture.report import result_picture, versions_line, write_page
     from texture.stations import write_tables
 

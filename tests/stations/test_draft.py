@@ -8,7 +8,7 @@ import pytest
 
 from tests.stations.samples import HEADER, ROWS, as_csv, recipe_for, write_xlsx
 from texture.errors import SampleError
-from texture.recipe_file import read_recipe
+from texture.recipe.file import read_recipe
 from texture.stations import read_samples
 from texture.stations.draft import draft_recipe
 from texture.stations.plausible import depth_doubts

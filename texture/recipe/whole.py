@@ -1,0 +1,66 @@
+"""The whole recipe, and what its blocks must agree on."""
+
+from __future__ import annotations
+
+from pathlib import Path
+from typing import Annotated
+
+from pydantic import Field, model_validator
+
+from texture.recipe.bed import Bed
+from texture.recipe.composition import Composition
+from texture.recipe.intake import Intake
+from texture.recipe.inventory import Inventory
+from texture.recipe.method import Method
+from texture.recipe.mobility import Mobility
+from texture.recipe.outputs import Outputs
+from texture.recipe.rim import Rim
+from texture.recipe.samples import Samples
+from texture.recipe.settings import Settings, check_composition, check_names
+from texture.recipe.target import TargetSettings
+from texture.recipe.validation import Validation
+
+__all__ = ["Recipe"]
+
+
+class Recipe(Settings):
+    """The whole recipe."""
+
+    title: str = Field("Untitled bed", description="stands on the page and in the files")
+    output: Path = Field(Path("out"), description="output folder, relative to the recipe")
+    seed: Annotated[int, Field(ge=0, lt=2**32)] = Field(1, description="seed of everything that is drawn")
+    samples: tuple[Samples, ...] = Field(min_length=1)
+    intake: Intake = Field(default_factory=Intake)
+    composition: Composition = Field(default_factory=Composition)
+    target: TargetSettings
+    method: Method = Field(default_factory=Method)
+    validation: Validation = Field(default_factory=Validation)
+    bed: Bed = Field(default_factory=Bed)
+    rim: Rim | None = None
+    mobility: tuple[Mobility, ...] = ()
+    inventory: Inventory = Field(default_factory=Inventory)
+    outputs: Outputs = Field(default_factory=Outputs)
+
+    @model_validator(mode="after")
+    def _names_agree(self) -> Recipe:
+        parts, classes = self.composition.parts, tuple(c.name for c in self.bed.classes)
+        for c in self.bed.classes:
+            if c.part not in parts:
+                raise ValueError(f'bed.classes "{c.name}": part "{c.part}" is not one of {list(parts)}')
+        for part in parts:
+            if part not in {c.part for c in self.bed.classes}:
+                raise ValueError(f'bed.classes: no class takes part "{part}"; its mass would be lost')
+        for i, layer in enumerate(self.bed.layers):
+            if layer.fill != "same":
+                check_composition(f"bed.layers[{i}].fill", layer.fill, parts, classes)
+        if self.bed.land_fill != "nearest":
+            check_composition("bed.land_fill", self.bed.land_fill, parts, classes)
+        conditions = [m.name for m in self.mobility]
+        for name in conditions:
+            if conditions.count(name) > 1:
+                raise ValueError(f'mobility: the name "{name}" is given twice')
+        if self.rim is not None and self.rim.classes is not None:
+            check_names("rim.classes", self.rim.classes, classes)
+        if self.rim is not None and self.rim.composition is not None:
+            check_names("rim.composition", self.rim.composition, parts)
+        return self
