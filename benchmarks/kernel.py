@@ -3,7 +3,8 @@
 Two log-ratio coordinates, each with its own model and noise, means and variances, 32 neighbours, 20,000 stations, a
 million cells. PyKrige does a part of the same cells, both variables one after the other. Compile time stands apart.
 
-    python -m benchmarks.kernel [--cells 1000000] [--stations 20000] [--layout uniform|clusters] [--skip-pykrige]
+    python -m benchmarks.kernel [--cells 1000000] [--stations 20000] [--layout uniform|clusters] [--columns 22]
+        [--skip-pykrige]
 """
 
 from __future__ import annotations
@@ -53,6 +54,15 @@ def time_kernel(points: np.ndarray, values: np.ndarray, cells: np.ndarray, neigh
     return time.perf_counter() - start
 
 
+def time_columns(points: np.ndarray, values: np.ndarray, cells: np.ndarray, count: int) -> float:
+    """Seconds for a prediction with further value columns, which share the factors of the first."""
+    columns = np.random.default_rng(2).normal(size=(*values.shape, count))
+    kriging = Kriging(MODELS).fit(points, values, columns=columns)
+    start = time.perf_counter()
+    kriging.predict_columns(cells)
+    return time.perf_counter() - start
+
+
 def pykrige_rate(points: np.ndarray, values: np.ndarray, cells: np.ndarray, neighbours: int = 32) -> float:
     """Cells per second for both variables by PyKrige's compiled moving window.
 
@@ -82,6 +92,7 @@ def main() -> None:
     parser.add_argument("--cells", type=int, default=1_000_000)
     parser.add_argument("--stations", type=int, default=20_000)
     parser.add_argument("--layout", choices=["uniform", "clusters"], default="uniform")
+    parser.add_argument("--columns", type=int, default=22, help="further value columns per coordinate; 0 leaves it out")
     parser.add_argument("--skip-pykrige", action="store_true")
     options = parser.parse_args()
     points, values = stations(options.stations, options.layout)
@@ -96,6 +107,12 @@ def main() -> None:
     rate = len(cells) / seconds
     print(f"kernel:  {len(cells):,} cells, two coordinates with variances, {len(points):,} stations: {seconds:.2f} s")
     print(f"         {rate:,.0f} cells/s; memory grew by {(after - before) / 1024:.0f} MiB")
+    if options.columns:
+        part = cells[:: max(1, len(cells) // 250_000)]
+        alone, along = (min(time_columns(points, values, part, c) for _ in range(2)) for c in (0, options.columns))
+        print(
+            f"columns: {options.columns} further ones per coordinate on {len(part):,} cells: {along / alone - 1:+.0%} time"
+        )
     if options.skip_pykrige:
         return
     part = cells[np.linspace(0, len(cells) - 1, 30_000).astype(int)]

@@ -80,6 +80,7 @@ def test_mixed_model_is_generalised_least_squares(monkeypatch):
     _, gram = white.whiten(c.packed, noise + c.small_scale, threads=2)
     assert np.array_equal(gram, white.whiten(c.packed, noise + c.small_scale)[1])
     coefficients, covariance, _ = mixed_model(gram, 2, 0.5)
+    coefficients = coefficients[:, 0]
     k = c.matrix(points) + np.diag(noise) + 0.5 * (survey[:, None] == survey[None, :])
     inverse = np.linalg.inv(drift.T @ np.linalg.solve(k, drift))
     beta = inverse @ drift.T @ np.linalg.solve(k, z)

@@ -29,7 +29,7 @@ class Problem:
         self.noise, self.survey = system.noise[k][rows], system.survey[rows]
         block = system.station_columns[k][rows]
         self.drift, self.values = block[:, : system.drifts], block[:, system.drifts]
-        self.wide_columns = block[:, system.drifts + 1 :]
+        self.wide_columns = block[:, system.drifts + system.value_columns :]
         self.local, self.wide = local, wide
         self.wide_covariance = system.global_covariance[k]
         self.matrix = station_covariance(

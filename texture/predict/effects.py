@@ -23,15 +23,17 @@ MOST_SURVEYS = 300
 
 
 class Effects:
-    """Estimated effects of one column of values.
+    """Estimated effects of the value columns of one covariance.
 
     Parameters
     ----------
-    coefficients : float array, shape (p,)
+    coefficients : float array, shape (c, p)
         Of the drift columns; the constant is fitted with them and left to the local mean.
     covariance : float array, shape (p, p)
-    offsets, offset_variance : float arrays, shape (surveys,)
-        Best linear unbiased predictions of the survey offsets and what is left of their variance.
+    offsets : float array, shape (c, surveys)
+        Best linear unbiased predictions of the survey offsets.
+    offset_variance : float array, shape (surveys,)
+        What is left of their variance.
     """
 
     def __init__(self, coefficients: Array, covariance: Array, offsets: Array, offset_variance: Array) -> None:
@@ -47,7 +49,9 @@ def estimate_effects(
     Parameters
     ----------
     points : float array, shape (n, d), in the covariance's metric
-    values, noise : float arrays, shape (n,)
+    values : float array, shape (n, c)
+        All of them have the same stations, covariance and noise.
+    noise : float array, shape (n,)
     survey : int array, shape (n,)
     c : Covariance
     drift : float array, shape (n, p)
@@ -66,12 +70,12 @@ def estimate_effects(
         gram = _dense_products(points, noise, c, columns)
     else:
         _, gram = Vecchia(points, columns, all_stations=True).whiten(c.packed, noise + c.small_scale, _threads())
-    coefficients, covariance, _ = mixed_model(gram, design.shape[1], c.survey)
+    coefficients, covariance, _ = mixed_model(gram, design.shape[1], c.survey, values.shape[1])
     p = design.shape[1]
     # A survey that cannot be told from the others keeps its prior: no offset, all of the variance.
-    offsets = coefficients[p:] if own else np.zeros(surveys)
+    offsets = coefficients[p:].T if own else np.zeros((values.shape[1], surveys))
     left = np.diag(covariance)[p:] if own else np.full(surveys, c.survey)
-    return Effects(coefficients[1:p], covariance[1:p, 1:p], offsets, left)
+    return Effects(coefficients[1:p].T, covariance[1:p, 1:p], offsets, left)
 
 
 def _threads() -> int:
@@ -86,6 +90,8 @@ def _dense_products(points: Array, noise: Array, c: Covariance, columns: Array) 
     from texture.predict.system import station_covariance
 
     k = station_covariance(c, points, noise, np.zeros(1), np.zeros(len(points), dtype=np.int64))
-    k[np.diag_indices(len(k))] *= 1.0 + 1e-12
+    # Two exact samples of one place by two surveys would outweigh all others by the inverse of this floor, and the
+    # products of columns by its size in rounding.
+    k[np.diag_indices(len(k))] *= 1.0 + 1e-9
     white = solve_triangular(cholesky(k, lower=True), columns, lower=True)
     return white.T @ white

@@ -93,7 +93,7 @@ def neighbourhood_honesty(
         used = max(used, min(stations, len(system.rows)))
         near = cKDTree(system.points).query(metric, k=np.arange(1, min(stations, len(system.rows)) + 1))[1]
         for k, column in enumerate(system.columns):
-            base = system.centre[k] + wide @ system.coefficients[k]
+            base = system.centre[k, 0] + wide @ system.coefficients[k, 0]
 
             def again(
                 i: int, k: int = k, system: Any = system, near: Any = near, metric: Any = metric

@@ -11,7 +11,7 @@ from numpy.typing import ArrayLike, NDArray
 from texture.errors import StructureError
 from texture.structure.covariance import check_points
 
-__all__ = ["Stations", "check_drift", "check_stations", "column_trees"]
+__all__ = ["Stations", "check_columns", "check_drift", "check_stations", "column_trees"]
 
 Array = NDArray[np.float64]
 
@@ -95,6 +95,20 @@ def check_stations(
         if bad.any():
             raise StructureError(f"drift: row {int(np.argmax(bad))} is not finite; fill it or leave the station out")
     return Stations(places, array, noise, labels, columns)
+
+
+def check_columns(columns: ArrayLike | None, stations: Stations) -> Array:
+    """Further value columns, shape (n, v, c), finite where the station has a value; raises `StructureError`."""
+    n, v = stations.values.shape
+    if columns is None:
+        return np.empty((n, v, 0))
+    array = np.asarray(columns, dtype=np.float64)
+    if array.ndim != 3 or array.shape[:2] != (n, v):
+        raise StructureError(f"columns: found shape {array.shape}, expected ({n}, {v}, c), c for each column of values")
+    bad = (np.isfinite(stations.values)[:, :, None] & ~np.isfinite(array)).any(axis=(1, 2))
+    if bad.any():
+        raise StructureError(f"columns: row {int(np.argmax(bad))} is not finite where the station has a value")
+    return array
 
 
 def check_drift(drift: ArrayLike | None, count: int, stations: Stations) -> Array | None:

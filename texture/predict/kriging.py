@@ -10,7 +10,7 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from texture.errors import StructureError, TextureWarning
-from texture.predict.inputs import Stations, check_drift, check_stations
+from texture.predict.inputs import Stations, check_columns, check_drift, check_stations
 from texture.predict.system import MOST_DENSE, System
 from texture.structure.covariance import Covariance, CovarianceSet, check_points
 
@@ -101,6 +101,7 @@ class Kriging:
         self.repairs_: dict[str, int] = {"neighbourhoods": 0, "stations": 0}
         self._systems: list[System] | None = None
         self._stations: Stations | None = None
+        self._extra_count = 0
 
     def __repr__(self) -> str:
         fitted = "" if self._stations is None else f", fitted to {self._stations.count} stations"
@@ -113,6 +114,7 @@ class Kriging:
         noise_variance: ArrayLike | None = None,
         survey: ArrayLike | None = None,
         drift: ArrayLike | None = None,
+        columns: ArrayLike | None = None,
     ) -> Kriging:
         """Take in the stations.
 
@@ -127,6 +129,10 @@ class Kriging:
             Label of the survey each station belongs to; needed where the covariance has survey variance.
         drift : float array, shape (n, p), optional
             Drift columns at the stations, without the constant.
+        columns : float array, shape (n, v, c), optional
+            Further values at the stations, c for each column of `values`, such as simulated ones. They are kriged with
+            the very weights of `values`: same stations, covariance, noise, factor. What stands where `values` is NaN
+            is ignored. `predict_columns` returns them.
 
         Returns
         -------
@@ -157,7 +163,11 @@ class Kriging:
                 )
             _warn_if_too_smooth(covariance, v, float(stations.noise_variance[:, v].min()))
         self._stations = stations
-        self._systems = System.make(stations, covariances, means, self.neighbours, self.neighbourhood, self.drift)
+        extra = check_columns(columns, stations)
+        self._extra_count = extra.shape[2]
+        self._systems = System.make(
+            stations, extra, covariances, means, self.neighbours, self.neighbourhood, self.drift
+        )
         return self
 
     def _covariances(self, columns: int) -> list[Covariance]:
@@ -186,7 +196,7 @@ class Kriging:
         stations, systems = self._ready()
         cells = check_points(points, stations.points.shape[1])
         drift_columns = check_drift(drift, len(cells), stations)
-        mean = np.full((len(cells), stations.columns), np.nan)
+        mean = np.full((len(cells), stations.columns, 1 + self._extra_count), np.nan)
         variance = np.full((len(cells), stations.columns), np.nan)
         rung = np.zeros((len(cells), stations.columns), dtype=np.int8)
         radius2 = np.inf if self.radius_m is None else self.radius_m**2
@@ -214,13 +224,42 @@ class Kriging:
             redundant stations (a variance given the others below 1e-12 of their own), which are left out there.
         """
         mean, variance, _ = self._predict(points, drift)
-        return mean, variance
+        return mean[:, :, 0], variance
+
+    def predict_columns(self, points: ArrayLike, drift: ArrayLike | None = None) -> tuple[Array, Array, Array]:
+        """Mean and variance as `predict`, and the further columns that `fit` was given.
+
+        Parameters
+        ----------
+        points : float array, shape (m, d), metres
+        drift : float array, shape (m, p), optional
+
+        Returns
+        -------
+        mean, variance : float arrays, shape (m, v)
+        columns : float array, shape (m, v, c)
+            Column j is what `predict` would give had `fit` got ``columns[:, :, j]`` for its values: survey offsets and
+            drift coefficients are estimated from each column itself, a known mean holds for each column.
+
+        Examples
+        --------
+        >>> from texture.structure import Covariance, Structure
+        >>> c = Covariance([Structure("exponential", 1.0, 10.0)], noise=0.1)
+        >>> points, values = [[0.0], [4.0], [9.0]], [[1.0], [2.0], [4.0]]
+        >>> further = np.array([[[10.0, 1.0]], [[20.0, 1.0]], [[40.0, 1.0]]])
+        >>> mean, variance, columns = Kriging(c).fit(points, values, columns=further).predict_columns([[5.0]])
+        >>> columns.shape, bool(np.isclose(columns[0, 0, 0], 10.0 * mean[0, 0])), float(columns[0, 0, 1])
+        ((1, 1, 2), True, 1.0)
+        """
+        mean, variance, _ = self._predict(points, drift)
+        return mean[:, :, 0], variance, mean[:, :, 1:]
 
     def predict_with_support(
         self, points: ArrayLike, drift: ArrayLike | None = None
     ) -> tuple[Array, Array, NDArray[np.int8]]:
         """Mean, variance and `support` in one go."""
-        return self._predict(points, drift)
+        mean, variance, rung = self._predict(points, drift)
+        return mean[:, :, 0], variance, rung
 
     def support(self, points: ArrayLike) -> NDArray[np.int8]:
         """Rung of the ladder that serves each point and column, shape (m, v).

@@ -88,8 +88,8 @@ def _bordered_inverse(system: System, k: int, rows: Any) -> tuple[Array, Array, 
 
 def _restore(system: System, k: int, row: Any, departure: Any) -> Any:
     """From a departure to the value: the centre, global drift and the survey's offset at the station."""
-    wide = system.global_columns[row] @ system.coefficients[k]
-    return departure + system.centre[k] + wide + system.offsets[k][system.survey[row]]
+    wide = system.global_columns[row] @ system.coefficients[k, 0]
+    return departure + system.centre[k, 0] + wide + system.offsets[k, 0][system.survey[row]]
 
 
 def _leave_groups_out(system: System, labels: NDArray[np.int64], mean: Array, variance: Array) -> None:

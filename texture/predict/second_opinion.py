@@ -98,7 +98,7 @@ def second_opinion(
             metric = system.covariances[0].metric(place[None])[0]
             for k, column in enumerate(system.columns):
                 problem = Problem(system, k, rows, metric, local[i], wide[i])
-                base = system.centre[k] + wide[i] @ system.coefficients[k]
+                base = system.centre[k, 0] + wide[i] @ system.coefficients[k, 0]
                 ours = (mean[i, column] - base, variance[i, column])
                 why = _beyond_pykrige(problem)
                 theirs = problem.dense() if why else _by_pykrige(problem)

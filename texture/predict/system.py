@@ -33,6 +33,7 @@ class System:
         columns: list[int],
         rows: Ints,
         stations: Stations,
+        extra: Array,
         covariances: list[Covariance],
         means: Array | None,
         neighbours: int | None,
@@ -45,7 +46,8 @@ class System:
         self.points = covariances[0].metric(stations.points[rows])
         self._metric = covariances[0].metric
         v, n = len(columns), len(rows)
-        values = stations.values[rows][:, columns]
+        values = np.concatenate([stations.values[rows][:, columns, None], extra[rows][:, columns]], axis=2)
+        self.value_columns = values.shape[2]
         self.survey = np.zeros(n, dtype=np.int64) if stations.survey is None else stations.survey[rows]
         own = np.array([c.noise for c in covariances])
         self.noise = np.ascontiguousarray((stations.noise_variance[rows][:, columns] + own).T)
@@ -57,7 +59,9 @@ class System:
         for k, c in enumerate(covariances):
             self.structures[k, : len(c.structures)] = c.packed
         # Values are kriged as departures from a plain number, so that large means cost no digits.
-        self.centre = values.mean(axis=0) if means is None else means[columns]
+        # (Laid out so that a column's sum has the same bits whatever stands beside it.)
+        own_means = np.ascontiguousarray(values.transpose(1, 2, 0)).mean(axis=2)
+        self.centre = own_means if means is None else np.repeat(means[columns, None], values.shape[2], axis=1)
         departures = values - self.centre
         self._drift_centre, self._drift_scale, station_drift = _standardised(stations.drift, rows)
         self.local = np.empty((n, 0)) if means is not None else np.ones((n, 1))
@@ -69,18 +73,20 @@ class System:
                 wide = station_drift
         self.global_columns = wide
         surveys = int(self.survey.max()) + 1
-        self.coefficients, self.global_covariance = np.zeros((v, wide.shape[1])), np.zeros((v,) + (wide.shape[1],) * 2)
-        self.offsets = np.zeros((v, surveys))
+        g = wide.shape[1]
+        self.coefficients, self.global_covariance = np.zeros((v, self.value_columns, g)), np.zeros((v, g, g))
+        self.offsets = np.zeros((v, self.value_columns, surveys))
         self.survey_variance = np.array([[c.survey] * surveys for c in covariances])
         if mode != "all" and means is None:
             self._take_out_effects(departures)
-            departures = departures - wide @ self.coefficients.T - self.offsets.T[self.survey]
+            departures -= np.einsum("ng,vcg->nvc", wide, self.coefficients)
+            departures -= self.offsets.transpose(2, 0, 1)[self.survey]
         self.drifts = self.local.shape[1]
-        self.station_columns = np.empty((v, n, self.drifts + 1 + self.global_columns.shape[1]))
-        for k in range(v):
-            self.station_columns[k, :, : self.drifts] = self.local
-            self.station_columns[k, :, self.drifts] = departures[:, k]
-            self.station_columns[k, :, self.drifts + 1 :] = self.global_columns
+        ends = self.drifts + self.value_columns
+        self.station_columns = np.empty((v, n, ends + g))
+        self.station_columns[:, :, : self.drifts] = self.local
+        self.station_columns[:, :, self.drifts : ends] = departures.transpose(1, 0, 2)
+        self.station_columns[:, :, ends:] = self.global_columns
         self._tiles: Any = None
         self._tree: Any = None
         self._factors: list[Any] | None = None
@@ -106,20 +112,24 @@ class System:
     def make(
         cls,
         stations: Stations,
+        extra: Array,
         covariances: Sequence[Covariance],
         means: Array | None,
         neighbours: int | None,
         mode: str,
         drift: str,
     ) -> list[System]:
-        """One system for each set of columns known at the same stations and measured in the same metric."""
+        """One system for each set of columns known at the same stations and measured in the same metric.
+
+        `extra` (n, v, c) are further value columns of each coordinate; they share its stations and factors.
+        """
         sets: dict[Any, list[int]] = {}
         known = np.isfinite(stations.values)
         for v, c in enumerate(covariances):
             key = (known[:, v].tobytes(), c.anisotropy, c.axis_scales)
             sets.setdefault(key, []).append(v)
         return [
-            cls(members, np.flatnonzero(known[:, members[0]]), stations, [covariances[v] for v in members], means,
+            cls(members, np.flatnonzero(known[:, members[0]]), stations, extra, [covariances[v] for v in members], means,
                 neighbours, mode, drift)
             for members in sets.values()
         ]  # fmt: skip
@@ -129,10 +139,14 @@ class System:
     def predict(
         self, cells: Array, drift: Array | None, rule: Rule, mean: Array, variance: Array, rung: NDArray[np.int8]
     ) -> Ints:
-        """Fill this system's columns of mean, variance and rung; returns counts of repaired neighbourhoods, stations."""
+        """Fill this system's part of mean (m, v, c), variance and rung (m, v).
+
+        Returns counts of repaired neighbourhoods and stations.
+        """
         repairs = np.zeros(2, dtype=np.int64)
-        for begin in range(0, len(cells), CHUNK):
-            part = slice(begin, begin + CHUNK)
+        chunk = max(CHUNK // self.value_columns, CHUNK // 16)
+        for begin in range(0, len(cells), chunk):
+            part = slice(begin, begin + chunk)
             own = self._metric(cells[part])
             local, wide = self.cell_columns(len(own), None if drift is None else drift[part])
             if len(self.rows) < rule[1]:
@@ -145,7 +159,10 @@ class System:
             else:
                 kriged, spread, fell = self._by_nearest(own, local, wide, rule, repairs)
                 rung[part, self.columns] = fell[:, None]
-            mean[part, self.columns] = kriged + self.centre + wide @ self.coefficients.T
+            kriged += self.centre
+            if wide.shape[1]:
+                kriged += np.einsum("mg,vcg->mvc", wide, self.coefficients)
+            mean[part, self.columns] = kriged
             variance[part, self.columns] = spread
         return repairs
 
@@ -218,7 +235,7 @@ class System:
         which = np.argsort(tile, kind="stable")
         used, begins = np.unique(tile[which], return_index=True)
         begins = np.append(begins, len(cells)).astype(np.int64)
-        mean, variance = np.empty((len(cells), len(self.columns), 1)), np.empty((len(cells), len(self.columns)))
+        mean, variance = self._empty(len(cells))
         capacity = probe_capacity(self.points.shape[1], self.neighbours, len(self.points))
 
         def run(first: int, last: int) -> Ints:
@@ -233,14 +250,18 @@ class System:
 
         # A tile costs about what 60 of its cells cost.
         repairs += _on_threads(run, np.diff(begins) + 60)
-        return mean[:, :, 0], variance
+        return mean, variance
+
+    def _empty(self, count: int) -> tuple[Array, Array]:
+        v = len(self.columns)
+        return np.empty((count, v, self.value_columns)), np.empty((count, v))
 
     def _by_nearest(
         self, cells: Array, local: Array, wide: Array, rule: Rule, repairs: Ints
     ) -> tuple[Array, Array, NDArray[np.int8]]:
         from texture.predict.window import krige_nearest
 
-        mean, variance = np.empty((len(cells), len(self.columns), 1)), np.empty((len(cells), len(self.columns)))
+        mean, variance = self._empty(len(cells))
         rung = np.zeros(len(cells), dtype=np.int8)
         nodes, splits, order = self._get_tree()
 
@@ -254,7 +275,7 @@ class System:
             return repaired
 
         repairs += _on_threads(run, np.ones(len(cells), dtype=np.int64))
-        return mean[:, :, 0], variance, rung
+        return mean, variance, rung
 
     def _get_factors(self) -> list[Any]:
         if self._factors is None:
@@ -280,9 +301,9 @@ class System:
     def _by_all(self, cells: Array, local: Array, wide: Array, repairs: Ints) -> tuple[Array, Array]:
         from texture.predict.kernel import krige_stations
 
-        mean, variance = np.empty((len(cells), len(self.columns))), np.empty((len(cells), len(self.columns)))
+        mean, variance = self._empty(len(cells))
         for k, (u, dropped, columns, normal, redundant) in enumerate(self._get_factors()):
-            one_mean, one_variance = np.empty((len(cells), 1)), np.empty(len(cells))
+            one_mean, one_variance = np.empty((len(cells), self.value_columns)), np.empty(len(cells))
 
             def run(
                 first: int, last: int, *, factors: Any = (u, dropped, columns, normal, redundant), k: int = k
@@ -296,18 +317,20 @@ class System:
                 return np.zeros(2, dtype=np.int64)
 
             _on_threads(run, np.ones(len(cells), dtype=np.int64))
-            mean[:, k], variance[:, k] = one_mean[:, 0], one_variance
+            mean[:, k], variance[:, k] = one_mean, one_variance
             repairs += np.array([redundant > 0, redundant])
         return mean, variance
 
     def _whole_mean(self, local: Array, wide: Array) -> tuple[Array, Array]:
         """Generalised least squares mean of the few stations there are, and the bed's variance about it."""
-        mean, variance = np.zeros((len(local), len(self.columns))), np.zeros((len(local), len(self.columns)))
+        mean, variance = self._empty(len(local))
+        mean[:], variance[:] = 0.0, 0.0
         for k, c in enumerate(self.covariances):
             covariance = station_covariance(c, self.points, self.noise[k], self.survey_variance[k], self.survey)
             weight = np.linalg.lstsq(covariance, np.ones(len(self.rows)), rcond=None)[0]
             if self.drifts:
-                mean[:, k] = weight @ self.station_columns[k, :, self.drifts] / weight.sum()
+                values = self.station_columns[k, :, self.drifts : self.drifts + self.value_columns]
+                mean[:, k] = weight @ values / weight.sum()
                 variance[:, k] = 1.0 / weight.sum()
             variance[:, k] += c.sill
         return mean, variance
@@ -359,7 +382,8 @@ def _average_coincident(
             exact &= survey[pairs[:, 0]] == survey[pairs[:, 1]]
         i, j = pairs[exact].T
         label = connected_components(coo_array((np.ones(len(i)), (i, j)), shape=(len(points),) * 2), directed=False)[1]
-        values[:, k] = (np.bincount(label, values[:, k]) / np.bincount(label))[label]
+        for own in values[:, k].T:
+            own[:] = (np.bincount(label, own) / np.bincount(label))[label]
     return values
 
 

@@ -230,15 +230,17 @@ class Vecchia:
         return float(sum(r[0] for r in results)), np.sum([r[1] for r in results], axis=0)
 
 
-def mixed_model(gram: Array, drifts: int, survey_variance: float) -> tuple[Array, Array, float]:
+def mixed_model(gram: Array, drifts: int, survey_variance: float, values: int = 1) -> tuple[Array, Array, float]:
     """Coefficients of drift and survey offsets, their covariance, and the log-determinant of its inverse.
 
-    `gram` holds the products of whitened drift, survey and value columns, values last.
+    `gram` holds the products of whitened drift, survey and value columns, the `values` value columns last; the
+    coefficients have shape (drifts + surveys, values).
     """
-    information = gram[:-1, :-1].copy()
+    effects = gram.shape[0] - values
+    information = gram[:effects, :effects].copy()
     if information.shape[0] > drifts:
         information[np.arange(drifts, len(information)), np.arange(drifts, len(information))] += 1.0 / survey_variance
-    coefficients = np.asarray(np.linalg.solve(information, gram[:-1, -1]), dtype=np.float64)
+    coefficients = np.asarray(np.linalg.solve(information, gram[:effects, effects:]), dtype=np.float64)
     covariance = np.asarray(np.linalg.inv(information), dtype=np.float64)
     return coefficients, covariance, float(np.linalg.slogdet(information)[1])
 
@@ -274,7 +276,7 @@ class VecchiaLikelihood:
         points = self.own_points if family is None else p.stretched(self.own_points, self.axes)
         log_variance, gram = self.vecchia.whiten(structures, self.noise_variance + p.small_scale, points=points)
         coefficients, _, log_information = mixed_model(gram, self.drifts, p.survey)
-        quadratic = gram[-1, -1] - coefficients @ gram[:-1, -1]
+        quadratic = gram[-1, -1] - coefficients[:, 0] @ gram[:-1, -1]
         count = self.vecchia.weight.sum()
         extra = self.surveys * np.log(p.survey) if self.surveys else 0.0
         constant = (count - self.drifts) * np.log(2.0 * np.pi)
