@@ -5,6 +5,7 @@ from __future__ import annotations
 import os
 import shutil
 import tomllib
+from collections.abc import Callable
 from pathlib import Path
 from typing import TYPE_CHECKING
 
@@ -45,6 +46,16 @@ def plain(demo_recipe: Path, tmp_path_factory: pytest.TempPathFactory) -> Result
 @pytest.fixture
 def small(tmp_path: Path) -> Path:
     """A recipe of thirty stations on a small raster."""
+    return write_small(tmp_path)
+
+
+@pytest.fixture(scope="session")
+def small_in() -> Callable[[Path], Path]:
+    """Write the small recipe into a folder, for what is built once for several tests."""
+    return write_small
+
+
+def write_small(folder: Path) -> Path:
     import numpy as np
     import tomli_w
 
@@ -53,7 +64,7 @@ def small(tmp_path: Path) -> Path:
     mud = 1 / (1 + np.exp(-(x - 505_000) / 2000 + rng.normal(0, 0.3, 30)))
     gravel = (1 - mud) * rng.uniform(0.02, 0.3, 30)
     rows = [f"S{i},{x[i]:.0f},{y[i]:.0f},{mud[i]:.4f},{1 - mud[i] - gravel[i]:.4f},{gravel[i]:.4f}" for i in range(30)]
-    (tmp_path / "grabs.csv").write_text("id,easting,northing,mud,sand,gravel\n" + "\n".join(rows) + "\n")
+    (folder / "grabs.csv").write_text("id,easting,northing,mud,sand,gravel\n" + "\n".join(rows) + "\n")
     recipe = {
         "title": "Small",
         "samples": [{"file": "grabs.csv", "crs": "EPSG:32626"}],
@@ -61,7 +72,7 @@ def small(tmp_path: Path) -> Path:
         "validation": {"count": 4},
         "rim": {"width_cells": 2, "sides": ["south"], "classes": {"sand": 1.0}},
     }
-    path = tmp_path / "recipe.toml"
+    path = folder / "recipe.toml"
     path.write_text(tomli_w.dumps(recipe))
     return path
 

@@ -20,6 +20,7 @@ from texture.mapping import make_mapper
 from texture.observations import observe
 from texture.placing import place_stations
 from texture.progress import Progress, Silent
+from texture.quantities import learn_quantities, map_quantities
 from texture.recipe import Recipe
 from texture.recipe.file import read_recipe
 from texture.result import Intake, Result, Validated
@@ -107,6 +108,7 @@ def build(
         per_side = points_per_side(recipe.target.points_per_cell, found.cell_side_m, found.range_m)
         estimate = estimate_on(target, mapper, found.plane, found.observations.points, found.reach_m, per_side,
                                progress, median=recipe.method.estimate == "median")  # fmt: skip
+        quantities = map_quantities(found.quantities, target, found.plane, per_side, progress)
     with clock.stage("second look"), progress.stage("second look"):
         look = second_look(mapper, found.cell_centres, recipe.seed)
     with clock.stage("bed"):
@@ -116,7 +118,9 @@ def build(
         water = Water(recipe.bed.water.temperature_c, recipe.bed.water.salinity)
         moved = tuple(moved_by(condition, bed, target, water) for condition in read_conditions(recipe, target))
         inventory = make_inventory(found, estimate, bed)
-    result = Result(found, estimate, per_side, look, bed, clock, moved=moved, inventory=inventory)
+    result = Result(
+        found, estimate, per_side, look, bed, clock, moved=moved, inventory=inventory, quantities=quantities
+    )
     with clock.stage("write"), progress.stage("write"):
         return write_all(result, folder, Path(recipe_path))
 
@@ -144,6 +148,7 @@ def _validated(recipe: Recipe, progress: Progress, clock: Clock, before: Check |
         plain, treated = fit_candidates(observations, recipe)
     with clock.stage("validate"):
         validation = validate_methods(observations, target, plane, plain, treated, recipe, progress)
+        quantities = learn_quantities(stations, observations, validation.folds, recipe, progress)
     mapper = make_mapper(recipe.method.name, validation.learned, recipe.method)
     stations = flag_stations(stations, mapper, observations)
-    return Validated(recipe, stations, target, plane, observations, mapper, validation)
+    return Validated(recipe, stations, target, plane, observations, mapper, validation, quantities)

@@ -17,6 +17,7 @@ if TYPE_CHECKING:
     from texture.estimate import Estimate
     from texture.mapping import Mapper
     from texture.observations import Observations
+    from texture.quantities import QuantityMap, QuantityModel
     from texture.recipe import Recipe
     from texture.second_look import SecondLook
     from texture.stations import Stations
@@ -69,6 +70,7 @@ class Validated:
     observations: Observations
     mapper: Mapper
     validation: Validation
+    quantities: tuple[QuantityModel, ...] = ()
     files: tuple[Path, ...] = ()
 
     @property
@@ -100,6 +102,10 @@ class Validated:
             for row in method.scores:
                 value = float(row["value"])
                 parts.setdefault(str(row["part"]), {})[str(row["score"])] = value if np.isfinite(value) else None
+        for quantity in self.quantities:
+            for found in quantity.methods:
+                own = {score: known(value) for score, value in found.scores.items()}
+                table.setdefault(found.method, {})[quantity.settings.name] = own
         return table
 
     def summary(self) -> dict[str, Any]:
@@ -111,7 +117,13 @@ class Validated:
     def summary_lines(self) -> list[str]:
         """Lines for a person."""
         lines = [self.recipe.title, *rows_lines(self.stations), f"  folds       {self.validation.folds!r}"]
-        return [*lines, *zeros_lines(self), *error_lines(self), *written_line(self.recipe, self.files)]
+        return [
+            *lines,
+            *zeros_lines(self),
+            *error_lines(self),
+            *quantity_lines(self),
+            *written_line(self.recipe, self.files),
+        ]
 
     def __repr__(self) -> str:
         return "\n".join(self.summary_lines())
@@ -139,6 +151,8 @@ class Result:
         The mobility screen, one for each condition of the recipe.
     inventory : tuple of Stock
         Tonnes by depth band and class, with their range.
+    quantities : tuple of QuantityMap
+        Maps of the recipe's further numbers.
     """
 
     found: Validated
@@ -150,6 +164,7 @@ class Result:
     files: tuple[Path, ...] = field(default=())
     moved: tuple[Moved, ...] = ()
     inventory: tuple[Stock, ...] = ()
+    quantities: tuple[QuantityMap, ...] = ()
 
     @property
     def beyond_share(self) -> float:
@@ -213,6 +228,7 @@ class Result:
             *zeros_lines(found),
             *structure_lines(found),
             *error_lines(found),
+            *quantity_lines(found),
         ]
         lines.append(
             f"  support     {100 * self.beyond_share:.1f} % of the water area is further than {found.reach_m / 1000:.1f} km from any sample"
@@ -309,6 +325,20 @@ def error_lines(found: Validated) -> list[str]:
         head = "error" if not lines else ""
         scores = ", ".join(f"{part} {method.score(part, 'rmse'):.3f}" for part in parts)
         lines.append(f"  {head:<11} held-out RMSE, {method.method.replace('_', ' ')}: {scores}")
+    return lines
+
+
+def quantity_lines(found: Validated) -> list[str]:
+    """Say the held-out error of each further number, beside the methods it is compared with."""
+    lines: list[str] = []
+    for quantity in found.quantities:
+        own, *others = quantity.methods
+        beside = ", ".join(f"{m.method.replace('_', ' ')} {m.scores.get('rmse', np.nan):.3g}" for m in others)
+        head = "quantities" if not lines else ""
+        lines.append(
+            f"  {head:<11} {quantity.settings.name}: {int(own.scores['n'])} stations, held-out RMSE {own.scores.get('rmse', np.nan):.3g} "
+            f"{quantity.settings.units}" + (f" ({beside})" if beside else "")
+        )
     return lines
 
 

@@ -65,6 +65,11 @@ def write_all(result: Result, folder: ResultFolder, recipe_path: Path) -> Result
             files=made,
             seed=recipe.seed,
             structure=found.mapper.structure.to_dict(),
+            **(
+                {"quantities": {q.settings.name: q.mapper.structure.to_dict() for q in found.quantities}}
+                if found.quantities
+                else {}
+            ),
             **(result.look.to_dict() if result.look is not None else {}),
         )
         write_json(aside / "provenance.json", record)
@@ -85,7 +90,14 @@ def input_files(recipe: Recipe) -> list[Path]:
 
 def _write_grids(result: Result, aside: Path) -> None:
     from texture.composition import find_scheme
-    from texture.output import class_colours, texture_dataset, write_geotiffs, write_netcdf
+    from texture.output import (
+        class_colours,
+        quantity_geotiffs,
+        texture_dataset,
+        with_quantities,
+        write_geotiffs,
+        write_netcdf,
+    )
 
     found, recipe = result.found, result.found.recipe
     scheme = find_scheme("folk")
@@ -102,12 +114,15 @@ def _write_grids(result: Result, aside: Path) -> None:
         "quantile_support": "cell mean: small-scale variation averages out inside the cell",
     }
     names = found.mapper.column_names
-    write_netcdf(texture_dataset(result.estimate, found.target, recipe, words, names, attributes), aside / "texture.nc")
+    quantities = [(q.model.settings, q) for q in result.quantities]
+    texture = texture_dataset(result.estimate, found.target, recipe, words, names, attributes)
+    write_netcdf(with_quantities(texture, quantities, found.target, support), aside / "texture.nc")
     _write_bed(result, aside)
     if recipe.outputs.geotiff and found.target.corners is not None:  # places have no cells to show
         colours = class_colours(scheme.numbers)
         parts, size = recipe.composition.parts, recipe.outputs.geotiff_cell_size_m
         write_geotiffs(aside / "geotiff", result.estimate, found.target, parts, words, colours, size)
+        quantity_geotiffs(aside / "geotiff", quantities, found.target, size)
 
 
 def _write_inventory(result: Result, aside: Path) -> None:
@@ -170,6 +185,7 @@ def _scores(result: Validated) -> pd.DataFrame:
         for held, label in runs
         for score in held.scores
     ]
+    rows += [row for quantity in result.quantities for row in quantity.score_rows(found.folds)]
     return pd.DataFrame(rows)
 
 
@@ -190,5 +206,9 @@ def _held_out(result: Validated) -> pd.DataFrame:
             block[f"{part}_measured"] = observations.fractions[:, i]
             block[f"{part}_predicted"] = method.predicted[:, i]
             block[f"{part}_low"], block[f"{part}_high"] = method.low[:, i], method.high[:, i]
+        for quantity in result.quantities:
+            name, own = quantity.settings.name, next(m for m in quantity.methods if m.method == method.method)
+            block[f"{name}_measured"], block[f"{name}_predicted"] = quantity.measured, own.predicted
+            block[f"{name}_low"], block[f"{name}_high"] = own.low, own.high
         blocks.append(block)
     return pd.concat(blocks, ignore_index=True)

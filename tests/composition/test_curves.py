@@ -5,7 +5,7 @@ from hypothesis import strategies as st
 from hypothesis.extra.numpy import arrays
 from scipy.stats import norm
 
-from texture.composition import SizeCurve, parts_from_weights
+from texture.composition import SizeCurve, parts_from_weights, percentiles_from_weights
 from texture.composition.statistics import kurtosis_words, skewness_words, sorting_words
 from texture.errors import CompositionError
 
@@ -233,3 +233,21 @@ def test_curves_that_make_no_sense_are_refused(limits, weights, message):
 def test_one_grain_size_has_no_skewness():
     with pytest.raises(CompositionError, match="in one size class"):
         SizeCurve([0, 1, 2], [1, 0]).moments()
+
+
+@settings(max_examples=40, deadline=None)
+@given(
+    arrays(np.float64, (3, 10), elements=st.sampled_from([0.0, 0.0, 0.5, 1.0, 3.0, 20.0])),
+    st.sampled_from([5.0, 50.0, 84.0]),
+    st.sampled_from(["monotone", "linear"]),
+)
+def test_percentiles_of_many_samples_are_those_of_each(weights, percent, between):
+    weights[:, 0] += 1e-3  # a sample of nothing has no curve
+    together = percentiles_from_weights(LIMITS, weights, percent, between)
+    alone = [float(SizeCurve(LIMITS, row, between).percentile_phi(percent)) for row in weights]
+    np.testing.assert_allclose(together, alone, atol=1e-9)
+
+
+def test_a_percentile_in_an_open_end_is_not_measured():
+    found = percentiles_from_weights([-INF, 0.0, 1.0, INF], [[60.0, 20.0, 20.0], [20.0, 60.0, 20.0], [0, 0, 0]], 50.0)
+    np.testing.assert_allclose(found, [np.nan, 0.5, np.nan])

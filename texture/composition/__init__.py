@@ -12,12 +12,13 @@ from texture.composition.closure import (
     total_variance,
     variation_matrix,
 )
-from texture.composition.cumulative import parts_from_weights
+from texture.composition.cumulative import parts_from_weights, percentiles_from_weights
 from texture.composition.curves import SizeCurve
 from texture.composition.inexact import from_intervals, from_median, from_mud_and_sand
 from texture.composition.logratio import LogRatio
 from texture.composition.partition import Partition, default_tree
 from texture.composition.presence import presence_expected, presence_forward
+from texture.composition.scales import Scale
 from texture.composition.schemes import Scheme, find_scheme, scheme_names
 from texture.composition.sizes import grade, m_from_phi, phi_from_m
 from texture.composition.statistics import FolkWard, Moments
@@ -31,6 +32,7 @@ __all__ = [
     "LogRatio",
     "Moments",
     "Partition",
+    "Scale",
     "Scheme",
     "SizeCurve",
     "censored_site",
@@ -51,6 +53,7 @@ __all__ = [
     "grade",
     "m_from_phi",
     "parts_from_weights",
+    "percentiles_from_weights",
     "perturb",
     "phi_from_m",
     "power",

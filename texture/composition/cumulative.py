@@ -1,7 +1,7 @@
 """The cumulative grain-size curve as arrays: checked limits, interpolation in phi, parts of many samples at once."""
 
 from collections.abc import Callable, Sequence
-from typing import Literal
+from typing import Any, Literal
 
 import numpy as np
 import numpy.typing as npt
@@ -10,11 +10,22 @@ from texture.composition.closure import Array
 from texture.composition.sizes import MUD_SAND_M, SAND_GRAVEL_M, m_from_phi, phi_from_m
 from texture.errors import CompositionError
 
-__all__ = ["SAME_SIZE", "Between", "check_curve", "coarser_at", "interpolator", "parts_from_weights"]
+__all__ = [
+    "SAME_SIZE",
+    "Between",
+    "check_curve",
+    "coarser_at",
+    "interpolator",
+    "parts_from_weights",
+    "percentiles_from_weights",
+]
 
 Between = Literal["monotone", "linear"]
 SAME_SIZE = 1e-9
 """Phi within which a size is on a limit."""
+LEVEL = 1e-12
+"""Cumulative fractions closer than this are one: sums of class weights differ by less."""
+HALVINGS = 60  # of the step between two limits: to the last bit
 
 
 def parts_from_weights(
@@ -40,6 +51,74 @@ def parts_from_weights(
     fractions : float array, shape (n, len(cuts_m) + 1)
         Finest first; rows sum to 1.
     """
+    phi, coarser, unknown = _many_curves(limits_phi, weights, between)
+    cuts = phi_from_m(cuts_m)
+    if cuts.ndim != 1 or not (np.diff(cuts) < 0).all():
+        raise CompositionError(f"cuts_m = {list(cuts_m)}, expected rising diameters")
+    at_cuts = coarser_at(phi, coarser.T, cuts, between).T
+    edges = np.concatenate([np.ones((len(coarser), 1)), at_cuts, np.zeros((len(coarser), 1))], axis=1)
+    fractions = np.maximum(-np.diff(edges, axis=1), 0.0)
+    fractions[unknown] = np.nan
+    return fractions
+
+
+def percentiles_from_weights(
+    limits_phi: npt.ArrayLike, weights: npt.ArrayLike, percent: float, between: Between = "monotone"
+) -> Array:
+    """Phi at which `percent` of each sample is coarser, for many samples sieved alike.
+
+    Parameters
+    ----------
+    limits_phi, weights, between
+        As for `parts_from_weights`.
+    percent : float
+        50 for the median.
+
+    Returns
+    -------
+    phi : float array, shape (n,)
+        As `SizeCurve.percentile_phi` has it; NaN where the percentile lies in an open end, which nobody measured.
+
+    Examples
+    --------
+    >>> percentiles_from_weights([-1.0, 1.0, 3.0], [[50.0, 50.0], [0.0, 100.0]], 50.0, "linear").round(6)
+    array([1., 2.])
+    """
+    if not 0.0 <= percent <= 100.0:
+        raise CompositionError(f"percentile {percent:g}, expected 0 to 100")
+    level = percent / 100.0
+    phi, coarser, unknown = _many_curves(limits_phi, weights, between)
+    outside = unknown | (level < coarser[:, 0] - LEVEL) | (level > coarser[:, -1] + LEVEL)
+    first = np.argmax(coarser >= level - LEVEL, axis=1)  # the limit at or after which it is reached
+    last = len(phi) - 1 - np.argmax(coarser[:, ::-1] <= level + LEVEL, axis=1)
+    found = 0.5 * (phi[first] + phi[last])  # on one or more limits: their middle
+    inside = np.flatnonzero(~outside & (first > last))
+    j = last[inside]
+    found[inside] = phi[j] + _reached(phi, coarser, inside, j, level, between)
+    return np.where(outside, np.nan, found)
+
+
+def _reached(
+    phi: Array, coarser: Array, rows: npt.NDArray[np.intp], j: npt.NDArray[np.intp], level: float, between: str
+) -> Array:
+    """How far behind limit j each of some samples reaches a level that lies between this limit and the next."""
+    step = phi[j + 1] - phi[j]
+    run: Any = interpolator(phi, coarser.T, between)
+    if not hasattr(run, "x"):  # straight between limits
+        return np.asarray(step * (level - coarser[rows, j]) / (coarser[rows, j + 1] - coarser[rows, j]))
+    cubic = run.c[:, j, rows]  # falling powers of the distance from limit j
+    low, high = np.zeros(len(rows)), step
+    for _ in range(HALVINGS):
+        middle = 0.5 * (low + high)
+        short = ((cubic[0] * middle + cubic[1]) * middle + cubic[2]) * middle + cubic[3] < level
+        low, high = np.where(short, middle, low), np.where(short, high, middle)
+    return np.asarray(0.5 * (low + high))
+
+
+def _many_curves(
+    limits_phi: npt.ArrayLike, weights: npt.ArrayLike, between: str
+) -> tuple[Array, Array, npt.NDArray[np.bool_]]:
+    """Finite limits (m,), the fraction of each sample coarser than them (n, m), and samples of which nothing is known."""
     amounts = np.array(weights, dtype=np.float64)
     if amounts.ndim != 2:
         raise CompositionError(f"weights have shape {amounts.shape}, expected one row for each sample")
@@ -47,18 +126,11 @@ def parts_from_weights(
     limits, amounts = check_curve(
         np.array(limits_phi, dtype=np.float64), np.where(unknown[:, None], 1.0, amounts), between
     )
-    cuts = phi_from_m(cuts_m)
-    if cuts.ndim != 1 or not (np.diff(cuts) < 0).all():
-        raise CompositionError(f"cuts_m = {list(cuts_m)}, expected rising diameters")
     coarser = np.cumsum(amounts, axis=1) / amounts.sum(axis=1, keepdims=True)
     coarser = np.concatenate([np.zeros((len(amounts), 1)), coarser], axis=1)
     coarser[:, -1] = 1.0
     finite = np.isfinite(limits)
-    at_cuts = coarser_at(limits[finite], coarser[:, finite].T, cuts, between).T
-    edges = np.concatenate([np.ones((len(amounts), 1)), at_cuts, np.zeros((len(amounts), 1))], axis=1)
-    fractions = np.maximum(-np.diff(edges, axis=1), 0.0)
-    fractions[unknown] = np.nan
-    return fractions
+    return limits[finite], coarser[:, finite], np.asarray(unknown)
 
 
 def check_curve(limits: Array, weights: Array, between: str) -> tuple[Array, Array]:

@@ -12,6 +12,7 @@ from texture.output.open_bed import bed_arrays, open_bed
 from texture.output.outline import bed_outline, check_outputs
 from texture.output.parent import parent_bed
 from texture.output.provenance import provenance, write_json
+from texture.output.quantities import quantity_geotiffs, with_quantities
 from texture.output.renaming import apply_names
 from texture.output.tables import write_csv
 from texture.output.text_table import cell_table, write_cells
@@ -33,9 +34,11 @@ __all__ = [
     "parent_bed",
     "pixel_grid",
     "provenance",
+    "quantity_geotiffs",
     "read_names",
     "stores_single",
     "texture_dataset",
+    "with_quantities",
     "write_cells",
     "write_csv",
     "write_geotiff",

@@ -13,6 +13,7 @@ from texture.recipe.inventory import Inventory
 from texture.recipe.method import Method, MethodName
 from texture.recipe.mobility import Mobility
 from texture.recipe.outputs import Outputs
+from texture.recipe.quantities import Quantity
 from texture.recipe.rim import Rim
 from texture.recipe.samples import COLUMN_ROLES, Join, Samples
 from texture.recipe.settings import Settings
@@ -36,6 +37,7 @@ __all__ = [
     "Mobility",
     "Outputs",
     "Packing",
+    "Quantity",
     "Recipe",
     "Rim",
     "Samples",

@@ -71,6 +71,10 @@ class Samples(Settings):
         default_factory=dict, description="role = heading, only where recognition needs help"
     )
 
+    quantities: dict[str, str] = Field(
+        default_factory=dict, description="name of a quantity = heading, where this file calls its column otherwise"
+    )
+
     @model_validator(mode="after")
     def _known_roles(self) -> Samples:
         for role in self.columns:

@@ -14,9 +14,10 @@ from texture.recipe.inventory import Inventory
 from texture.recipe.method import Method
 from texture.recipe.mobility import Mobility
 from texture.recipe.outputs import Outputs
+from texture.recipe.quantities import Quantity
 from texture.recipe.rim import Rim
 from texture.recipe.samples import Samples
-from texture.recipe.settings import Settings, check_composition, check_names
+from texture.recipe.settings import Settings, check_composition, check_names, nearest_known
 from texture.recipe.target import TargetSettings
 from texture.recipe.validation import Validation
 
@@ -39,6 +40,7 @@ class Recipe(Settings):
     rim: Rim | None = None
     mobility: tuple[Mobility, ...] = ()
     inventory: Inventory = Field(default_factory=Inventory)
+    quantities: tuple[Quantity, ...] = ()
     outputs: Outputs = Field(default_factory=Outputs)
 
     @model_validator(mode="after")
@@ -59,8 +61,27 @@ class Recipe(Settings):
         for name in conditions:
             if conditions.count(name) > 1:
                 raise ValueError(f'mobility: the name "{name}" is given twice')
+        self._check_quantities()
         if self.rim is not None and self.rim.classes is not None:
             check_names("rim.classes", self.rim.classes, classes)
         if self.rim is not None and self.rim.composition is not None:
             check_names("rim.composition", self.rim.composition, parts)
         return self
+
+    def _check_quantities(self) -> None:
+        names = [q.name for q in self.quantities]
+        for name in names:
+            if names.count(name) > 1:
+                raise ValueError(f'quantities: the name "{name}" is given twice')
+        for i, block in enumerate(self.samples):
+            for name in block.quantities:
+                if name not in names:
+                    known = nearest_known(name, tuple(names)) if names else "no [[quantities]] block names any"
+                    raise ValueError(f'samples[{i}].quantities: "{name}" is not among the quantities; {known}')
+        for quantity in self.quantities:
+            if (
+                quantity.column is None
+                and quantity.curve is None
+                and not any(quantity.name in s.quantities for s in self.samples)
+            ):
+                raise ValueError(f'quantities "{quantity.name}": give column, the heading where it stands, or curve')

@@ -11,6 +11,7 @@ from texture.report.charts import draw_scatter, draw_variograms
 from texture.report.encode import Picture, picture
 from texture.report.explorer import explorer
 from texture.report.maps import EVIDENCE_COLOURS, Layer, draw_maps
+from texture.report.quantities import quantity_picture, quantity_table
 from texture.report.tables import page_tables
 
 if TYPE_CHECKING:
@@ -51,8 +52,8 @@ def write_page(result: Result, map_picture: Picture, settings: str, versions: st
         method_line=_method_line(result),
         answer=result.answer(),
         explorer=explorer(result),
-        figures={"parts": map_picture, **_figures(result)},
-        tables=page_tables(result),
+        figures={"parts": map_picture, **_figures(result), "quantities": quantity_picture(result)},
+        tables={**page_tables(result), "quantities": quantity_table(result)},
         map_notes=_map_notes(result),
         notes=found.stations.notes,
         folds_line=_folds_line(result),

@@ -293,7 +293,9 @@ def _column_lines(source: Source) -> list[str]:
             else idle
         )
         if idle:
-            lines.append(f"# not used: {', '.join(idle)}")
+            lines.append(
+                f"# not used: {', '.join(idle)}  (a number among them can be mapped too: [[quantities]] with name, unit, column)"
+            )
     return lines
 
 

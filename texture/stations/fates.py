@@ -11,10 +11,10 @@ from texture.composition.words import read_words
 from texture.stations.audit import AuditLog
 from texture.stations.bottoms import is_hard_ground, is_substrate, is_total
 from texture.stations.files import Cell, is_blank
-from texture.stations.fractions import Shares
 from texture.stations.headings import PARTS
 from texture.stations.joins import POSITION_ROLES
 from texture.stations.positions import Positions
+from texture.stations.shares import Shares
 from texture.stations.sources import Source
 from texture.stations.tables import looks_like_value
 from texture.stations.where import shown

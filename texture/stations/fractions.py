@@ -8,7 +8,6 @@ together, so that their ratios stay.
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
 
 import numpy as np
 import numpy.typing as npt
@@ -19,53 +18,17 @@ from texture.stations.cells import Numbers, Reading, unreadable_hint
 from texture.stations.columns import Column
 from texture.stations.files import Cell
 from texture.stations.limits import Part, limit_rows, move_within, read_part
+from texture.stations.shares import Shares
 from texture.stations.units import DIVISORS, UNITS, find_unit
 from texture.stations.where import Where, shown
 
-__all__ = ["Shares", "no_shares", "share_out"]
+__all__ = ["share_out"]
 
 FloatArray = npt.NDArray[np.float64]
 BoolArray = npt.NDArray[np.bool_]
 
 BINARY_NOISE = 1e-12  # sums of typed decimals differ from 1 by this much in binary
 THREE = ("mud", "sand", "gravel")
-
-
-@dataclass(frozen=True)
-class Shares:
-    """Fractions of 1 for each row; NaN where a part is not known.
-
-    Parameters
-    ----------
-    mud, sand, gravel : float array, shape (n,)
-        Close to 1 where all three are known. Mud and sand without gravel are shares of what passed 2 mm.
-    resolution : float array, shape (n,)
-        Largest half width among the parts given: rounding, or half of a range.
-    given : bool array, shape (n,)
-        Whether the row gives any part at all, readable or not.
-    problem : object array of str, shape (n,)
-        Why the row cannot be used; empty where it can.
-    low, high : float array, shape (n, 3)
-        Limits of mud, sand and gravel in rows that are not exact; NaN in all others.
-    notes : tuple of str
-    """
-
-    mud: FloatArray
-    sand: FloatArray
-    gravel: FloatArray
-    resolution: FloatArray
-    given: BoolArray
-    problem: npt.NDArray[np.object_]
-    low: FloatArray
-    high: FloatArray
-    notes: tuple[str, ...] = ()
-
-
-def no_shares(n: int) -> Shares:
-    """Shares of a table that gives none, only words."""
-    mud, sand, gravel, resolution = np.full((4, n), np.nan)
-    low, high = np.full((2, n, 3), np.nan)
-    return Shares(mud, sand, gravel, resolution, np.zeros(n, dtype=bool), np.full(n, "", dtype=object), low, high)
 
 
 def share_out(

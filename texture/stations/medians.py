@@ -8,8 +8,8 @@ import numpy.typing as npt
 from texture.stations.audit import AuditLog
 from texture.stations.cells import Reading, read_numbers
 from texture.stations.entries import home_of
-from texture.stations.fractions import Shares
 from texture.stations.headings import plain
+from texture.stations.shares import Shares
 from texture.stations.sources import Source
 
 __all__ = ["medians_of", "unit_of_sizes"]

@@ -18,6 +18,7 @@ from texture.stations.ages import grow_noise, set_void
 from texture.stations.audit import AuditLog
 from texture.stations.copies import find_copies
 from texture.stations.offsets import Offset, method_offsets
+from texture.stations.quantities import check_found, merge_quantities, width_name
 from texture.stations.repeats import merge_repeats
 from texture.stations.rows import bare_places, read_rows
 from texture.stations.sources import find_source
@@ -65,7 +66,7 @@ def read_samples(recipe: Recipe) -> Stations:
         _read_block(block, label, recipe, intake)
     rows = pd.concat(intake.frames, ignore_index=True)
     intake.notes.extend(set_void(rows, recipe.intake))
-    stations = _assemble(rows, intake, recipe.intake.noise_per_decade)
+    stations = _assemble(rows, intake, recipe)
     if stations.counts["stations"] < FEWEST:
         raise _too_few(stations)
     return stations
@@ -95,7 +96,9 @@ def _read_block(block: Samples, label: str, recipe: Recipe, intake: _Intake) -> 
     intake.notes.extend((*sheet.notes, *source.notes))
     if sheet.hidden_rows:
         intake.notes.append(f"{table.where.text()}: {sheet.hidden_rows} hidden rows, read like the others")
-    frame, notes = read_rows(source, block, recipe.intake, recipe.composition.detection_limit, intake.audit)
+    frame, notes = read_rows(
+        source, block, recipe.intake, recipe.composition.detection_limit, intake.audit, recipe.quantities
+    )
     intake.notes.extend(notes)
     intake.frames.append(frame)
     if source.joined is not None:
@@ -113,7 +116,7 @@ def _read_block(block: Samples, label: str, recipe: Recipe, intake: _Intake) -> 
         intake.aside.append(pd.DataFrame({"file": sheet.file, "sheet": sheet.name, "row": numbers, "id": "", **fate}))
 
 
-def _assemble(rows: pd.DataFrame, intake: _Intake, noise_per_decade: float) -> Stations:
+def _assemble(rows: pd.DataFrame, intake: _Intake, recipe: Recipe) -> Stations:
     """Merge repeats and copies and write the account of rows."""
     on_map = rows["fate"].isin(["used", "evidence"]).to_numpy()
     kept = rows[on_map].reset_index(drop=True)
@@ -135,7 +138,11 @@ def _assemble(rows: pd.DataFrame, intake: _Intake, noise_per_decade: float) -> S
     ledger = rows[["file", "sheet", "row", "id"]].assign(fate=fate, reason=reason, station=station)
     ledger = pd.concat([ledger[list(LEDGER_COLUMNS)], *intake.aside], ignore_index=True)
     ledger = _sorted_ledger(ledger, intake)
-    table, aged = grow_noise(merged[list(TABLE_COLUMNS)], noise_per_decade)
+    if recipe.quantities:
+        merged = merge_quantities(kept, merged, member, recipe.quantities)
+        notes += check_found(merged, recipe.quantities, FEWEST)
+    further = [c for q in recipe.quantities for c in (q.name, width_name(q.name))]
+    table, aged = grow_noise(merged[[*TABLE_COLUMNS, *further]], recipe.intake.noise_per_decade)
     table = _with_points(table)
     notes += [found.text("ln(mud / rest)") for found in _compare_methods(table)]
     deeper = rows.loc[rows["deep"].to_numpy(dtype=bool), list(DEEPER_COLUMNS)].reset_index(drop=True)

@@ -10,7 +10,7 @@ import numpy.typing as npt
 import pandas as pd
 
 from texture.errors import SampleError
-from texture.recipe import Intake, Samples
+from texture.recipe import Intake, Quantity, Samples
 from texture.stations.angles import join_fields, split_pairs
 from texture.stations.audit import AuditLog
 from texture.stations.bottoms import is_hard_ground
@@ -20,12 +20,14 @@ from texture.stations.cuts import cuts_of
 from texture.stations.entries import days_of, interval_of, metres_of, texts_of
 from texture.stations.fates import judge, words_of
 from texture.stations.files import Cell, Sheet, is_blank
-from texture.stations.fractions import Shares, no_shares, share_out
+from texture.stations.fractions import share_out
 from texture.stations.headings import PARTS, role_of
 from texture.stations.joins import Joined
 from texture.stations.medians import medians_of
 from texture.stations.metres import from_metres, from_zones
 from texture.stations.positions import Positions, is_projected, read_degrees
+from texture.stations.quantities import quantities_of
+from texture.stations.shares import Shares, no_shares
 from texture.stations.size_shares import shares_from_sizes
 from texture.stations.sources import Source
 from texture.stations.tables import Table
@@ -37,7 +39,12 @@ LIMIT_COLUMNS = tuple(f"{part}_{end}" for part in ("mud", "sand", "gravel") for 
 
 
 def read_rows(
-    source: Source, block: Samples, intake: Intake, detection_limit: float, audit: AuditLog
+    source: Source,
+    block: Samples,
+    intake: Intake,
+    detection_limit: float,
+    audit: AuditLog,
+    quantities: Sequence[Quantity] = (),
 ) -> tuple[pd.DataFrame, list[str]]:
     """Read every row below the header of a table.
 
@@ -61,6 +68,7 @@ def read_rows(
     shares = _shares(source, positions, block, intake, detection_limit, rows, log, notes)
     notes.extend((*positions.notes, *shares.notes))
     median = medians_of(source, shares, notes, log)
+    further = quantities_of(source, block, quantities, median, shares.classes, log, notes)
     fates = judge(source, positions, shares, median, log)
     fate, reason = fates.fate, fates.reason
     audit.take_over(log, without=rows[fate == "not_samples"])
@@ -111,6 +119,7 @@ def read_rows(
             "thickness_m": _thickness(top, bottom, intake.surface_m),
             "fate": fate,
             "reason": reason,
+            **further,
         }
     )
     return frame, notes

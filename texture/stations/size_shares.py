@@ -14,9 +14,9 @@ from texture.recipe import Intake, Samples
 from texture.stations.audit import AuditLog
 from texture.stations.cells import Reading, read_numbers, unreadable_hint
 from texture.stations.columns import Column
-from texture.stations.fractions import Shares
 from texture.stations.headings import is_weight, plain
 from texture.stations.limits import ABOUT, OF_LIMIT
+from texture.stations.shares import Classes, Shares
 from texture.stations.sizes import SAME_LIMIT_PHI, SizeColumn
 from texture.stations.splits import shares_of_sand, split_factors
 from texture.stations.tables import Table
@@ -108,7 +108,8 @@ def shares_from_sizes(
     inexact = used & (ends[0] != ends[1]).any(axis=1) & np.isfinite(parts).all(axis=1)
     if inexact.any():
         low[inexact], high[inexact] = _between(table, columns, ends, limits, inexact, intake, parts[inexact])
-    return Shares(parts[:, 0], parts[:, 1], parts[:, 2], resolution, given, problem, low, high, tuple(notes))
+    classes = Classes(limits, np.maximum(amounts, 0.0), used)
+    return Shares(parts[:, 0], parts[:, 1], parts[:, 2], resolution, given, problem, low, high, tuple(notes), classes)
 
 
 def _between(

@@ -1,0 +1,258 @@
+"""Further numbers of the samples, each mapped and validated by the machinery of the composition, on the same folds.
+
+A quantity is one column on its own scale. It is fitted (`texture.mapping.learn_all`), kriged and held out exactly as the
+coordinates of a composition are; what it means in its own unit comes last.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass, replace
+from typing import TYPE_CHECKING, cast
+
+import numpy as np
+from numpy.typing import NDArray
+
+from texture.composition import Scale
+from texture.errors import SampleError
+from texture.estimate import CELLS_AT_ONCE, EXTRAPOLATED, QUANTILES, SUPPORTED, WIDER
+from texture.mapping import Learned, Mapper, learn_all, make_mapper
+from texture.observations import Observations
+from texture.progress import Progress
+from texture.recipe import Quantity, Recipe
+from texture.targets import Target, cell_points
+from texture.treatments import Treatment
+from texture.validation.folds import Folds
+from texture.validation.reach import beyond_reach, validated_reach_m
+from texture.validation.scores import part_scores
+
+if TYPE_CHECKING:
+    from texture.stations import Stations
+    from texture.structure.plane import Plane
+
+__all__ = ["QuantityMap", "QuantityMethod", "QuantityModel", "learn_quantities", "map_quantities"]
+
+Floats = NDArray[np.float64]
+Ints = NDArray[np.int64]
+FEWEST = 5  # stations on either side of a fold: with fewer nothing is learned
+LEVELS = (0.05, 0.95)  # of the interval of a held-out sample
+NORMAL_95 = 1.6448536269514722
+
+
+@dataclass(frozen=True)
+class _Column:
+    """What a quantity is to `learn_all` and `Mapper`: a treatment of one column instead of a composition's."""
+
+    quantity: Quantity
+    scale: Scale
+    value: Floats
+    half_width: Floats
+
+    @property
+    def label(self) -> str:
+        return self.quantity.scale
+
+    @property
+    def column_names(self) -> tuple[str, ...]:
+        name = self.quantity.name
+        return ({"plain": name, "log": f"ln({name})", "logit": f"logit({name})"}[self.quantity.scale],)
+
+    def columns(self, observations: Observations) -> tuple[Floats, Floats]:
+        """Scaled values and noise variances, shapes (n, 1): what is rounded may lie anywhere in its step."""
+        value, half = self.value[observations.rows], np.nan_to_num(self.half_width[observations.rows])
+        noise = (half * self.scale.slope(value)) ** 2 / 3.0
+        return self.scale.forward(value)[:, None], np.nan_to_num(noise)[:, None]
+
+
+@dataclass(frozen=True, eq=False)
+class QuantityMethod:
+    """Held-out predictions of one method, NaN at stations that do not know the quantity; shapes (n,) of all observations.
+
+    `low` and `high` are the ends of the 90 % interval of a sample, NaN where the method has no variance.
+    """
+
+    method: str
+    predicted: Floats
+    low: Floats
+    high: Floats
+    scores: dict[str, float]
+
+
+@dataclass(frozen=True, eq=False)
+class QuantityModel:
+    """A quantity fitted on all its stations, and how wrong it was at those held out.
+
+    Attributes
+    ----------
+    settings : Quantity
+    mapper : Mapper
+        Of one column, the quantity on its scale.
+    points : float array
+        Its stations in the plane.
+    measured : float array, shape (n,)
+        As measured, NaN where not, for all observations of the run.
+    methods : tuple of QuantityMethod
+        The map's own method first.
+    reach_m : float
+        Distance from its stations up to which the map has been tested.
+    """
+
+    settings: Quantity
+    mapper: Mapper
+    points: Floats
+    measured: Floats
+    methods: tuple[QuantityMethod, ...]
+    reach_m: float
+
+    @property
+    def scale(self) -> Scale:
+        """The scale it is mapped on."""
+        return Scale(self.settings.scale, self.settings.most)
+
+    def score_rows(self, folds: Folds) -> list[dict[str, str | float]]:
+        """Rows for the table of scores; the part is the quantity, its errors in its own unit."""
+        return [
+            {"method": m.method, "treatment": self.settings.scale, "folds": folds.kind, "count": folds.count,
+             "part": self.settings.name, "score": score, "value": value}
+            for m in self.methods for score, value in m.scores.items()
+        ]  # fmt: skip
+
+
+@dataclass(frozen=True, eq=False)
+class QuantityMap:
+    """The map of a quantity as flat arrays over all cells of the target; NaN (or 0) outside active cells.
+
+    Attributes
+    ----------
+    model : QuantityModel
+    mean : float array, shape (n,)
+        Expected mean of each cell, in the quantity's unit.
+    quantiles : float array, shape (3, n)
+        At 0.05, 0.5 and 0.95, of the cell mean; NaN for methods without a variance.
+    evidence : int array, shape (n,)
+        1 supported by samples that know it, 2 extrapolated, 6 wider fall-back; 0 where there is no map.
+    """
+
+    model: QuantityModel
+    mean: Floats
+    quantiles: Floats
+    evidence: NDArray[np.int8]
+
+
+def learn_quantities(
+    stations: Stations, observations: Observations, folds: Folds, recipe: Recipe, progress: Progress
+) -> tuple[QuantityModel, ...]:
+    """Fit every quantity of the recipe and hold its stations out in the folds of the composition.
+
+    Raises
+    ------
+    SampleError
+        If the stations that know a quantity are too few, or all stand in one fold.
+    """
+    if not recipe.quantities:
+        return ()
+    methods = tuple(dict.fromkeys((recipe.method.name, *recipe.validation.compare)))
+    with progress.stage("further numbers", total=len(recipe.quantities) * len(methods)) as advance:
+        return tuple(_learn(q, stations, observations, folds, recipe, methods, advance) for q in recipe.quantities)
+
+
+def _learn(
+    quantity: Quantity,
+    stations: Stations,
+    observations: Observations,
+    folds: Folds,
+    recipe: Recipe,
+    methods: tuple[str, ...],
+    advance: Callable[[int], None],
+) -> QuantityModel:
+    from texture.stations.quantities import width_name
+
+    value, half = (stations.table[c].to_numpy(dtype=np.float64) for c in (quantity.name, width_name(quantity.name)))
+    column = _Column(quantity, Scale(quantity.scale, quantity.most), value, half)
+    measured = value[observations.rows]
+    known = np.flatnonzero(np.isfinite(measured))
+    own = (
+        replace(folds, labels=np.unique(folds.labels[known], return_inverse=True)[1].astype(np.int64))
+        if known.size
+        else folds
+    )
+    if known.size < FEWEST or own.count < 2:
+        raise SampleError(
+            f'quantities "{quantity.name}": {known.size} stations know it and the composition, in {own.count} folds; expected at least '
+            f"{FEWEST} in 2; take the block out of the recipe"
+        )
+    some = observations.take(known)
+    treatment = cast(Treatment, column)  # what learning and mapping ask of a treatment, the column has
+    learned = learn_all([(treatment, some, None)], recipe.method)[0]
+    pairs = [(train, test) for train, test in own.pairs() if train.size >= FEWEST]
+    inside = learn_all([(treatment, some.take(train), learned.structure) for train, _ in pairs], recipe.method)
+    held_out = []
+    for name in methods:
+        held_out.append(_hold_out(name, learned, pairs, inside, recipe, observations.count, known, measured))
+        advance(1)
+    reach_m = validated_reach_m(own.held_out_distances(some.points))
+    mapper = make_mapper(recipe.method.name, learned, recipe.method)
+    return QuantityModel(quantity, mapper, some.points, measured, tuple(held_out), reach_m)
+
+
+def _hold_out(
+    name: str,
+    learned: Learned,
+    pairs: list[tuple[Ints, Ints]],
+    inside: list[Learned],
+    recipe: Recipe,
+    count: int,
+    known: Ints,
+    measured: Floats,
+) -> QuantityMethod:
+    scale = cast(_Column, learned.treatment).scale
+    predicted, low, high = np.full((3, count), np.nan)
+    for (_, test), fold in zip(pairs, inside, strict=True):
+        mapper = make_mapper(name, fold, recipe.method)
+        mean, variance = mapper.predict(learned.observations.points[test])
+        at = known[test]
+        if not mapper.has_variance:
+            predicted[at] = scale.back(mean[:, 0])
+            continue
+        predicted[at] = scale.expected(mean[:, 0], variance[:, 0])
+        spread = NORMAL_95 * np.sqrt(mapper.sample_variance(variance, learned.noise[test])[:, 0])
+        low[at], high[at] = scale.back(mean[:, 0] - spread), scale.back(mean[:, 0] + spread)
+    return QuantityMethod(name, predicted, low, high, part_scores(measured, predicted, low, high))
+
+
+def map_quantities(
+    models: tuple[QuantityModel, ...], target: Target, plane: Plane, per_side: int, progress: Progress
+) -> tuple[QuantityMap, ...]:
+    """Estimate every quantity in every active cell, on the support of the composition: the mean over points inside the cell."""
+    if not models:
+        return ()
+    with progress.stage("further numbers", total=len(models) * int(target.active.sum())) as advance:
+        return tuple(_map(model, target, plane, per_side, advance) for model in models)
+
+
+def _map(
+    model: QuantityModel, target: Target, plane: Plane, per_side: int, advance: Callable[[int], None]
+) -> QuantityMap:
+    mapper, scale, cells = model.mapper, model.scale, np.flatnonzero(target.active)
+    mean, evidence = np.full(target.n_cells, np.nan), np.zeros(target.n_cells, dtype=np.int8)
+    quantiles = np.full((len(QUANTILES), target.n_cells), np.nan)
+    normal = np.array([-NORMAL_95, 0.0, NORMAL_95])[:, None]
+    for start in range(0, cells.size, CELLS_AT_ONCE):
+        some = cells[start : start + CELLS_AT_ONCE]
+        points = cell_points(target, some, per_side, plane.to_metres)
+        m, v, rung = (
+            a.reshape(points.shape[:2]) for a in mapper.predict_with_rung(points.reshape(-1, points.shape[-1]))
+        )
+        evidence[some] = np.where(
+            beyond_reach(points.mean(axis=1), model.points, model.reach_m), EXTRAPOLATED, SUPPORTED
+        )
+        evidence[some[rung.max(axis=1) > 0]] = WIDER
+        if mapper.has_variance:
+            mean[some] = scale.expected(m, v).mean(axis=1)
+            middle, whole = m.mean(axis=1), v.mean(axis=1)
+            within = np.minimum(whole, mapper.small_scale[0])  # averages out inside the cell
+            quantiles[:, some] = scale.expected(middle + normal * np.sqrt(whole - within), within)
+        else:
+            mean[some] = scale.back(m).mean(axis=1)
+        advance(some.size)
+    return QuantityMap(model, mean, quantiles, evidence)
