@@ -30,7 +30,7 @@ PAIR = CovarianceSet(
 def test_each_column_as_if_it_stood_alone(settings, drifted):
     rng = np.random.default_rng(0)
     points, cells = rng.random((300, 2)) * 1000.0, rng.random((80, 2)) * 1200.0 - 100.0
-    values, columns = rng.normal(size=(300, 2)), rng.normal(size=(300, 2, 3)) + [1.0, 2.0, 3.0]
+    values, columns = rng.normal(size=(300, 2)), rng.normal(size=(300, 2, 3)) + np.array([1.0, 2.0, 3.0])
     values[:40, 1] = np.nan
     columns[:40, 1] = np.nan
     points[299] = points[298]  # exact in the second coordinate: averaged there, in every column
