@@ -39,7 +39,9 @@ def test_fractions_sum_to_one_and_intervals_hold_the_median(stations, treatment,
     expected = mapper.expected(mean, variance)
     np.testing.assert_allclose(expected.sum(axis=1), 1.0, atol=1e-12)
     assert expected[1, 2] > 0.05 > expected[0, 2]  # gravel lies in the north
-    low, high = mapper.interval(mean, mapper.sample_variance(variance, np.zeros_like(mean)))
+    columns = mapper.columns(places, np.zeros_like(mean))
+    spread = columns.covariance(columns.sample_variance)
+    low, high = treatment.sample_quantiles(mean, spread, (0.05, 0.95))
     if name == "kriging":
         assert (low <= high).all()
         assert (low[:, :2] < high[:, :2]).all()  # gravel may be surely absent
@@ -48,8 +50,29 @@ def test_fractions_sum_to_one_and_intervals_hold_the_median(stations, treatment,
         assert low[0, 2] == 0.0  # below the limit a sample is not told from one without gravel
     else:
         assert np.isnan(low).all()
-        assert np.isnan(high).all()
+        assert not mapper.has_variance
         np.testing.assert_array_equal(expected, mapper.back(mean))
+
+
+def test_controls_take_the_spread_of_their_errors(stations):
+    learned = learn(Replace(LR), stations, Method())
+    error = np.array([0.5, 2.0]), np.array([[1.0, 0.4], [0.4, 1.0]])
+    mapper = make_mapper("nearest", learned, Method(), error)
+    mean, variance = mapper.predict(np.array([[2_000.0, 2_000.0], [5_000.0, 8_000.0]]))
+    np.testing.assert_array_equal(variance, [[0.5, 2.0]] * 2)
+    assert mapper.covariance(variance)[0, 0, 1] == pytest.approx(0.4)
+    low, _, high = mapper.cell_quantiles(mean, variance, (0.05, 0.5, 0.95))
+    assert (low < high).all()
+    np.testing.assert_array_equal(mapper.expected(mean, variance), mapper.back(mean))
+
+
+def test_calibration_moves_no_prediction(stations):
+    learned = learn(Replace(LR), stations, Method())
+    places = np.array([[2_000.0, 2_000.0], [5_000.0, 8_000.0]])
+    mean, variance = make_mapper("kriging", learned, Method()).predict(places)
+    again, wider = make_mapper("kriging", learned.calibrated(np.array([2.0, 0.5])), Method()).predict(places)
+    np.testing.assert_allclose(again, mean, atol=1e-9)
+    np.testing.assert_allclose(wider, variance * [2.0, 0.5], rtol=1e-9)
 
 
 def test_covariance_follows_the_residual_correlation(stations):

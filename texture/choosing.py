@@ -16,7 +16,7 @@ if TYPE_CHECKING:
     from texture.observations import Observations
     from texture.recipe import Method
     from texture.structure import CovarianceSet
-    from texture.validation.cross_validate import HeldOut
+    from texture.validation.held_out import HeldOut
 
 __all__ = ["LimitEffect", "Tried", "choose", "fit_candidates", "limit_effect", "warm_start", "with_columns_of"]
 

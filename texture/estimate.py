@@ -9,6 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from texture.progress import Progress
+from texture.structure.averaging import averaged_out, sampling_distance_m
 from texture.targets import Target, cell_points
 from texture.validation.reach import beyond_reach
 
@@ -90,6 +91,7 @@ def estimate_on(
     mean, variance = np.full((n, d), np.nan), np.full((n, d), np.nan)
     evidence, classes = np.zeros(n, dtype=np.int8), np.zeros(n, dtype=np.int8)
     probability = np.full(n, np.nan)
+    averaging = averaged_out(np.sqrt(np.nan_to_num(target.area_m2)), sampling_distance_m(stations))
     with progress.stage("estimate", total=cells.size) as advance:
         for start in range(0, cells.size, CELLS_AT_ONCE):
             some = cells[start : start + CELLS_AT_ONCE]
@@ -100,7 +102,7 @@ def estimate_on(
             fractions[some] = back.reshape(*shape, parts).mean(axis=1)
             fractions[some] /= fractions[some].sum(axis=1, keepdims=True)
             mean[some], variance[some] = m.reshape(*shape, d).mean(axis=1), v.reshape(*shape, d).mean(axis=1)
-            quantiles[:, some] = mapper.cell_quantiles(mean[some], variance[some], QUANTILES)
+            quantiles[:, some] = mapper.cell_quantiles(mean[some], variance[some], QUANTILES, averaging[some])
             classes[some], probability[some] = mapper.likely_class(mean[some], variance[some])
             centre = inside.mean(axis=1)
             evidence[some] = np.where(beyond_reach(centre, stations, reach_m), EXTRAPOLATED, SUPPORTED)

@@ -20,11 +20,16 @@ def flag_stations(stations: Stations, mapper: Mapper, observations: Observations
     Methods without a variance cannot tell what is far out, and a neighbourhood for each point has no quick way to leave
     one out: their stations stay as they are.
     """
-    if not mapper.has_variance or mapper.predictor.neighbourhood == "nearest":
+    if not mapper.solves or mapper.predictor.neighbourhood == "nearest":
         return stations
+    from threadpoolctl import threadpool_limits  # type: ignore[import-untyped]  # ships no annotations
+
     from texture.predict.leave_out import leave_out
 
-    mean, variance = leave_out(mapper.predictor)
+    with threadpool_limits(
+        limits=1, user_api="blas"
+    ):  # matrices of a hundred rows: a second thread takes ten times longer
+        mean, variance = leave_out(mapper.predictor)
     with np.errstate(invalid="ignore"):  # a coordinate that a station says nothing of
         z = (mapper.predictor.stations.values - mean) / np.sqrt(variance)
     return stations.with_outliers(z, observations.rows)

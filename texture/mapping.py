@@ -5,7 +5,7 @@ The map and its validation both come through here, so that what is validated is 
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Generator, Sequence
 from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING, Any
 
@@ -15,12 +15,13 @@ from numpy.typing import NDArray
 from texture.observations import Observations
 from texture.recipe import Method
 from texture.treatments import Censor, Treatment
+from texture.validation.columns import Columns
 
 if TYPE_CHECKING:
     from texture.composition import LogRatio
     from texture.structure import CovarianceSet
 
-__all__ = ["Learned", "Mapper", "learn", "learn_all", "make_mapper"]
+__all__ = ["Learned", "Mapper", "learn", "learn_all", "learn_each", "make_mapper"]
 
 Floats = NDArray[np.float64]
 SWEEPS = (4, 2)
@@ -47,6 +48,10 @@ class Learned:
     values: Floats
     noise: Floats
     structure: CovarianceSet
+
+    def calibrated(self, factors: Floats) -> Learned:
+        """Every variance of each column multiplied by its factor, shape (k,), noise included: predictions stay, spreads follow."""
+        return replace(self, noise=self.noise * factors, structure=self.structure.scaled(factors))
 
     @property
     def survey(self) -> NDArray[np.int64] | None:
@@ -91,12 +96,23 @@ def learn_all(tasks: Sequence[tuple[Treatment, Observations, CovarianceSet | Non
 
     Each is a sum in one order on one thread: the same bits on any number of cores.
     """
+    return list(learn_each(tasks, method))
+
+
+def learn_each(
+    tasks: Sequence[tuple[Treatment, Observations, CovarianceSet | None]], method: Method
+) -> Generator[Learned, None, None]:
+    """As `learn_all`, one after the other as they are done; what was not begun is let go when the caller stops."""
     from concurrent.futures import ThreadPoolExecutor
 
     from numba import get_num_threads
 
-    with _one_blas_thread(), ThreadPoolExecutor(min(int(get_num_threads()), max(len(tasks), 1))) as pool:
-        return list(pool.map(lambda task: learn(task[0], task[1], method, task[2]), tasks))
+    pool = ThreadPoolExecutor(min(int(get_num_threads()), max(len(tasks), 1)))
+    try:
+        with _one_blas_thread():
+            yield from pool.map(lambda task: learn(task[0], task[1], method, task[2]), tasks)
+    finally:
+        pool.shutdown(wait=True, cancel_futures=True)
 
 
 def _one_blas_thread() -> Any:
@@ -143,12 +159,23 @@ def _without_each(learned: Learned, values: Floats, noise: Floats) -> tuple[Floa
 
 @dataclass(frozen=True, eq=False)
 class Mapper:
-    """A fitted method together with the treatment whose columns it works in."""
+    """A fitted method together with the treatment whose columns it works in.
+
+    Attributes
+    ----------
+    name : str
+    treatment : Treatment
+    structure : CovarianceSet
+    predictor : Predictor
+    error : (variance (k,), correlation (k, k)) or None
+        Spread of the held-out errors of a method that knows no variance; None where it is not known either.
+    """
 
     name: str
     treatment: Treatment
     structure: CovarianceSet
     predictor: Any
+    error: tuple[Floats, Floats] | None = None
 
     @property
     def logratio(self) -> LogRatio:
@@ -161,38 +188,60 @@ class Mapper:
         return self.treatment.column_names
 
     @property
-    def has_variance(self) -> bool:
-        """Tell whether the method says how uncertain it is."""
+    def integrates(self) -> bool:
+        """Tell whether the method itself says how uncertain it is, so that expected fractions integrate over that."""
         from texture.predict import METHODS
 
         return METHODS[self.name].has_variance
 
     @property
+    def has_variance(self) -> bool:
+        """Tell whether it is known how uncertain the map is, by the method or by its held-out errors."""
+        return self.integrates or self.error is not None
+
+    @property
+    def solves(self) -> bool:
+        """Tell whether the method is a kriging system, which can be solved again and left out of."""
+        from texture.predict import Kriging
+
+        return isinstance(self.predictor, Kriging)
+
+    @property
     def small_scale(self) -> Floats:
-        """Variance of the bed's own patchiness in each column, shape (k,)."""
+        """Variance of the bed's patchiness in each column, shape (k,)."""
         return np.array([c.small_scale for c in self.structure])
 
     def predict(self, points: Floats) -> tuple[Floats, Floats]:
-        """Mean and variance of the bed at points, shapes (n, k); variance NaN where the method has none."""
+        """Mean and variance of the bed at points, shapes (n, k); variance NaN where nothing is known of it."""
         mean, variance = self.predictor.predict(points)
+        if not self.integrates and self.error is not None:
+            variance = np.tile(self.error[0], (len(mean), 1))
         return mean, variance
 
     def predict_with_rung(self, points: Floats) -> tuple[Floats, Floats, NDArray[np.int8]]:
         """Mean, variance, and per point how far the neighbourhood had to look: 0 the usual one, above it wider."""
-        if not self.has_variance:
+        if not self.solves:
             mean, variance = self.predict(points)
             return mean, variance, np.zeros(len(points), dtype=np.int8)
         mean, variance, rung = self.predictor.predict_with_support(points)
         return mean, variance, rung.max(axis=1)
 
-    def sample_variance(self, variance: Floats, noise: Floats) -> Floats:
-        """Variance of a new sample: of the bed, of its analysis (per row) and of its survey's offset."""
-        return np.asarray(variance + noise + np.array([c.noise + c.survey for c in self.structure]))
+    def columns(self, points: Floats, noise: Floats) -> Columns:
+        """Predictions of samples at points, of which the analysis is known to have a noise of its own, shape (n, k)."""
+        mean, variance = self.predict(points)
+        offsets = np.array([c.noise + c.survey for c in self.structure])
+        correlation = np.broadcast_to(self.correlation, (len(mean), *self.correlation.shape))
+        return Columns(mean, variance, noise + offsets, correlation)
+
+    @property
+    def correlation(self) -> Floats:
+        """Correlation between the columns' errors, shape (k, k)."""
+        return self.structure.correlation if self.integrates or self.error is None else self.error[1]
 
     def covariance(self, variance: Floats) -> Floats:
         """Covariance of the columns from their variances, shape (n, k, k), by the residual correlation."""
         sd = np.sqrt(variance)
-        return np.asarray(sd[:, :, None] * sd[:, None, :] * self.structure.correlation)
+        return np.asarray(sd[:, :, None] * sd[:, None, :] * self.correlation)
 
     def back(self, mean: Floats) -> Floats:
         """Plain back-transform of the columns, shape (n, parts): near the median of each part, not its mean."""
@@ -200,21 +249,22 @@ class Mapper:
 
     def expected(self, mean: Floats, variance: Floats) -> Floats:
         """Expected fractions, shape (n, parts); the plain back-transform where the method has no variance."""
-        if not self.has_variance:
+        if not self.integrates:
             return self.back(mean)
         return self.treatment.expected(mean, self.covariance(variance))
 
-    def interval(self, mean: Floats, variance: Floats, levels: tuple[float, float] = (0.05, 0.95)) -> Floats:
-        """Quantiles of each part of a sample, shape (2, n, parts); NaN where the method has no variance."""
-        if not self.has_variance:
-            return np.full((2, mean.shape[0], self.logratio.n_parts), np.nan)
-        return self.treatment.sample_quantiles(mean, self.covariance(variance), levels)
+    def cell_quantiles(
+        self, mean: Floats, variance: Floats, levels: tuple[float, ...], averaged_out: Floats | float = 1.0
+    ) -> Floats:
+        """Quantiles of the mean of a cell, shape (q, n, parts).
 
-    def cell_quantiles(self, mean: Floats, variance: Floats, levels: tuple[float, ...]) -> Floats:
-        """Quantiles of the mean of a cell, shape (q, n, parts): small-scale variation averages out inside it."""
+        `averaged_out`, shape (n,), is the share of the small-scale variation that averages out inside each cell. NaN where
+        nothing is known of the uncertainty.
+        """
         if not self.has_variance:
             return np.full((len(levels), mean.shape[0], self.logratio.n_parts), np.nan)
-        within = np.minimum(variance, self.small_scale)
+        share = np.broadcast_to(np.asarray(averaged_out, dtype=np.float64), (len(mean),))
+        within = np.minimum(variance, self.small_scale * share[:, None])
         return self.treatment.cell_quantiles(mean, self.covariance(variance), levels, within)
 
     def likely_class(self, mean: Floats, variance: Floats) -> tuple[NDArray[np.int8], Floats]:
@@ -223,12 +273,28 @@ class Mapper:
         return self.treatment.odds(mean, spread)
 
 
-def make_mapper(name: str, learned: Learned, method: Method) -> Mapper:
-    """Fit one method on the stations that a treatment has learned from."""
+def make_mapper(
+    name: str, learned: Learned, method: Method, error: tuple[Floats, Floats] | None = None, **settings: Any
+) -> Mapper:
+    """Fit one method on the stations that a treatment has learned from.
+
+    Parameters
+    ----------
+    name : str
+        Of `texture.predict.METHODS`.
+    learned : Learned
+    method : Method
+        Of the recipe.
+    error : (variance (k,), correlation (k, k)), optional
+        Spread of held-out errors, for methods that know no variance.
+    **settings
+        Further arguments of the method's class.
+    """
     from texture.predict import make_method
 
-    settings = {"neighbours": method.neighbours, "neighbourhood": method.neighbourhood} if name == "kriging" else {}
+    if name == "kriging":
+        settings = {"neighbours": method.neighbours, "neighbourhood": method.neighbourhood, **settings}
     predictor = make_method(name, learned.structure, **settings)
     with _one_blas_thread():
         predictor.fit(learned.observations.points, learned.values, noise_variance=learned.noise, survey=learned.survey)
-    return Mapper(name, learned.treatment, learned.structure, predictor)
+    return Mapper(name, learned.treatment, learned.structure, predictor, error)

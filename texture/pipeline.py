@@ -149,6 +149,6 @@ def _validated(recipe: Recipe, progress: Progress, clock: Clock, before: Check |
     with clock.stage("validate"):
         validation = validate_methods(observations, target, plane, plain, treated, recipe, progress)
         quantities = learn_quantities(stations, observations, validation.folds, recipe, progress)
-    mapper = make_mapper(recipe.method.name, validation.learned, recipe.method)
+    mapper = make_mapper(validation.method, validation.learned, recipe.method, validation.judged.error)
     stations = flag_stations(stations, mapper, observations)
     return Validated(recipe, stations, target, plane, observations, mapper, validation, quantities)

@@ -100,8 +100,7 @@ class Validated:
         for method in self.validation.methods:
             parts = table.setdefault(method.method, {})
             for row in method.scores:
-                value = float(row["value"])
-                parts.setdefault(str(row["part"]), {})[str(row["score"])] = value if np.isfinite(value) else None
+                parts.setdefault(row.part, {})[row.score] = known(row.value)
         for quantity in self.quantities:
             for found in quantity.methods:
                 own = {score: known(value) for score, value in found.scores.items()}

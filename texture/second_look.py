@@ -39,14 +39,14 @@ class SecondLook:
 
 
 def second_look(mapper: Mapper, places: NDArray[np.float64], seed: int) -> SecondLook | None:
-    """Solve a seeded choice of cells again; None for methods without a variance, which solve nothing.
+    """Solve a seeded choice of cells again; None for methods that solve nothing.
 
     Raises
     ------
     StructureError
         If another solver gets another answer from the same stations and a dense solve sides with it.
     """
-    if not mapper.has_variance:
+    if not mapper.solves:
         return None
     from texture.predict.honesty import neighbourhood_honesty
     from texture.predict.second_opinion import second_opinion

@@ -91,6 +91,23 @@ class Replace:
         """Quantiles of a sample, shape (q, n, parts); below the limit a sample is not told from one without."""
         return self._down_to_nothing(self.logratio.quantiles(mean, covariance, levels), levels)
 
+    def samples(self, mean: Floats, covariance: Floats, normals: Floats) -> Floats:
+        """Fractions of samples, shape (n, m, parts), from standard normal draws (m, k)."""
+        values, vectors = np.linalg.eigh(covariance)
+        factor = vectors * np.sqrt(np.maximum(values, 0.0))[:, None, :]
+        return self.logratio.inverse(mean[:, None, :] + np.einsum("mk,njk->nmj", normals, factor))
+
+    def bounds(self, observations: Observations) -> tuple[Floats, Floats]:
+        """Bounds between which each exact station's columns lie, shapes (n, k); equal where known exactly, NaN where not."""
+        low, high = np.full((2, observations.count, len(self.column_names)), np.nan)
+        exact = observations.exact
+        if self.logratio.kind in ("tree", "alr") and self.limit > 0.0:
+            low[exact], high[exact] = censoring_bounds(self.logratio, observations.fractions[exact])
+        else:
+            values = self.columns(observations)[0][exact]
+            low[exact], high[exact] = values, values
+        return low, high
+
     def _down_to_nothing(self, quantiles: Floats, levels: tuple[float, ...]) -> Floats:
         lower = np.array(levels)[:, None, None] < 0.5
         return np.where(lower & (quantiles < self.limit), 0.0, quantiles)
@@ -136,13 +153,6 @@ class Censor(Replace):
     def label(self) -> str:
         """The treatment in a few words, for tables."""
         return f"censored below {self.limit:g}"
-
-    def bounds(self, observations: Observations) -> tuple[Floats, Floats]:
-        """Bounds between which each station's columns lie, shapes (n, k); equal where known exactly, NaN where not."""
-        low, high = np.full((2, observations.count, len(self.column_names)), np.nan)
-        exact = observations.exact
-        low[exact], high[exact] = censoring_bounds(self.logratio, observations.fractions[exact])
-        return low, high
 
     def sweep(
         self, values: Floats, noise: Floats, low: Floats, high: Floats, mean: Floats, variance: Floats
@@ -238,6 +248,17 @@ class Presence(Replace):
     def sample_quantiles(self, mean: Floats, covariance: Floats, levels: tuple[float, ...]) -> Floats:
         """Quantiles of a sample, shape (q, n, parts): the part is in it or not."""
         return self._down_to_nothing(self.distribution.quantiles(*self._given(mean, covariance), levels), levels)
+
+    def samples(self, mean: Floats, covariance: Floats, normals: Floats) -> Floats:
+        """Fractions of samples, shape (n, m, parts), from standard normal draws (m, k): the part is in each or not."""
+        from texture.composition.presence_samples import presence_samples
+
+        return presence_samples(self.distribution, *self._given(mean, covariance), normals)
+
+    def bounds(self, observations: Observations) -> tuple[Floats, Floats]:
+        """Columns of exact stations twice, shapes (n, k): what is below the limit is absent."""
+        values = np.where(observations.exact[:, None], self.columns(observations)[0], np.nan)
+        return values, values
 
     def cell_quantiles(self, mean: Floats, covariance: Floats, levels: tuple[float, ...], within: Floats) -> Floats:
         """Quantiles of the mean of a cell, shape (q, n, parts), some of which may have the part and some not."""

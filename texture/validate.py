@@ -1,34 +1,62 @@
-"""Validate the methods of a recipe, and choose its treatment of zeros: the same route as the map, on folds."""
+"""Validate the methods of a recipe, and choose among treatments of zeros and methods: the same route as the map, on folds."""
 
 from __future__ import annotations
 
-from collections.abc import Callable
-from dataclasses import dataclass, replace
-from typing import TYPE_CHECKING
+from collections.abc import Callable, Generator, Mapping
+from contextlib import closing
+from dataclasses import dataclass, field, replace
+from typing import TYPE_CHECKING, Any, Protocol
 
 import numpy as np
 from numpy.typing import NDArray
 
 from texture.choosing import LimitEffect, Tried, choose, limit_effect, with_columns_of
-from texture.mapping import Learned, learn_all, make_mapper
+from texture.mapping import Learned, learn_each, make_mapper
 from texture.observations import Observations
 from texture.progress import Progress
 from texture.recipe import Recipe
-from texture.validation.cross_validate import HeldOut, cross_validate
+from texture.scoring import Judge, Judged
+from texture.validation.choice import Standing, rank_methods
+from texture.validation.columns import Columns
 from texture.validation.folds import Folds, make_folds
+from texture.validation.held_out import HeldOut, ScoreWeights
 from texture.validation.reach import validated_reach_m
+from texture.validation.resampling import block_weights, map_weights
 
 if TYPE_CHECKING:
     from texture.structure import CovarianceSet
     from texture.structure.plane import Plane
     from texture.targets import Target
 
-__all__ = ["Validation", "validate_methods"]
+__all__ = ["Journal", "Validation", "validate_methods"]
 
 Floats = NDArray[np.float64]
 Ints = NDArray[np.int64]
 MOST_MAP_POINTS = 5_000  # cells that folds are matched to: the distribution of distances needs no more
 MOST_LIMIT_CELLS = 2_000  # cells on which a halved and a doubled limit are tried: their mean needs no more
+CONTROLS = ("nearest", "inverse_distance")
+
+
+class Journal(Protocol):
+    """Where finished folds are kept, so that an interrupted validation goes on where it stopped."""
+
+    def get(self, run: int, fold: int) -> Mapping[str, Any] | None:
+        """What was kept of one fold; None if nothing."""
+        ...
+
+    def put(self, run: int, fold: int, record: Mapping[str, Any]) -> None:
+        """Keep arrays and plain objects of one fold."""
+        ...
+
+
+class Forgets:
+    """Keeps nothing."""
+
+    def get(self, run: int, fold: int) -> None:
+        """Nothing was kept."""
+
+    def put(self, run: int, fold: int, record: Mapping[str, Any]) -> None:
+        """Let it go."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -39,17 +67,23 @@ class Validation:
     ----------
     folds : Folds
     methods : list of HeldOut
-        The chosen method first, then those it was compared with.
+        The map's method first, then those it was compared with.
     reach_m : float
         Distance from the samples up to which the map has been tested.
     tried : list of Tried
-        Every treatment of zeros that was compared, the simplest first, by the map's method.
+        Every treatment of zeros that was compared, the simplest first, by one method.
     learned : Learned
-        The chosen treatment on all stations: what the map is made from.
+        The map's treatment on all stations, calibrated: what the map is made from.
     plain : Learned
         Replacement at the laboratory's limit: what the methods it is compared with were given.
     limit_effect : LimitEffect or None
         How far the map's mean moves with the limit; None where the treatment knows none.
+    judged : Judged
+        The map's method: its calibration, or the spread of its errors.
+    standings : list of Standing
+        All methods by energy score, the simplest first; empty where no station knows all parts.
+    block_m : float
+        Side of the blocks that scores are resampled in.
     """
 
     folds: Folds
@@ -59,11 +93,19 @@ class Validation:
     learned: Learned
     plain: Learned
     limit_effect: LimitEffect | None
+    judged: Judged
+    standings: list[Standing] = field(default_factory=list)
+    block_m: float = np.nan
 
     @property
     def chosen(self) -> HeldOut:
         """Held-out predictions of the map's own method."""
         return self.methods[0]
+
+    @property
+    def method(self) -> str:
+        """Name of the map's method."""
+        return self.methods[0].method
 
 
 def validate_methods(
@@ -74,6 +116,7 @@ def validate_methods(
     treated: list[Learned],
     recipe: Recipe,
     progress: Progress,
+    journal: Journal | None = None,
 ) -> Validation:
     """Cross-validate the recipe's method with each treatment of zeros, and those it is compared with, on the same folds.
 
@@ -90,86 +133,125 @@ def validate_methods(
         As `texture.choosing.fit_candidates` made them.
     recipe : Recipe
     progress : Progress
+    journal : Journal, optional
     """
     from texture.predict import METHODS
 
-    compared = tuple(n for n in dict.fromkeys(recipe.validation.compare) if n != recipe.method.name)
+    limit, points = recipe.composition.detection_limit, observations.points
     places = _map_points(target, plane, recipe.seed)
+    block_m = _block_m(points, plain.structure, recipe.validation.count)
     folds = make_folds(
-        recipe.validation.folds,
-        observations.points,
-        recipe.validation.count,
-        recipe.seed,
-        targets=places,
-        block_m=_block_m(observations.points, plain.structure, recipe.validation.count),
+        recipe.validation.folds, points, recipe.validation.count, recipe.seed, targets=places, block_m=block_m
     )
-    refit = _Refit(recipe, plain)
-    with progress.stage("validate", total=(len(treated) + len(compared)) * folds.count) as advance:
-
-        def run(name: str, learned: Learned) -> HeldOut:
-            if METHODS[name].needs_covariance:
-                refit.all(learned, folds)
-            predict = _predictor(name, learned, refit, recipe)
-            limit = recipe.composition.detection_limit
-            measured = observations.fractions
-            return cross_validate(
-                name, recipe.composition.parts, measured, observations.measured, folds, predict, limit, advance
-            )
-
-        held_out = [run(recipe.method.name, learned) for learned in treated]
-        methods = [run(name, plain) for name in compared]
+    weights = ScoreWeights(map_weights(points, places), block_weights(points, block_m, recipe.seed))
     scored = np.where(observations.measured[:, None], observations.fractions, np.nan)
-    tried = choose([learned.treatment for learned in treated], held_out, scored, recipe.composition.detection_limit)
+    judge = Judge(recipe.composition.parts, scored, folds.labels, weights, limit)
+    own = recipe.method.name
+    compared = [n for n in dict.fromkeys(recipe.validation.compare) if n != own]
+    runs = [(own, learned) for learned in treated] + [(name, plain) for name in compared]
+    with progress.stage(f"validate {len(runs)} × {folds.count} folds", total=len(runs) * folds.count) as advance:
+        bench = _Bench(recipe, plain, folds, journal or Forgets(), advance)
+        judged = []
+        for number, (name, learned) in enumerate(runs):
+            columns = bench.run(number, name, learned)
+            judged.append(judge.judge(name, learned, columns, METHODS[name].has_variance))
+    first = len(treated)
+    tried = choose([run.treatment for run in treated], [j.held_out for j in judged[:first]], scored, limit)
     taken = next(i for i, t in enumerate(tried) if t.chosen)
-    effect = limit_effect(treated[taken], recipe.method, places[:: max(1, -(-len(places) // MOST_LIMIT_CELLS))])
-    reach_m = validated_reach_m(folds.held_out_distances(observations.points))
-    return Validation(folds, [held_out[taken], *methods], reach_m, tried, treated[taken], plain, effect)
+    controls = {j.held_out.method: j.held_out.predicted for j in judged if j.held_out.method in CONTROLS}
+    judged = [judge.compare(j, controls) for j in judged]
+    tried = [replace(t, held_out=j.held_out) for t, j in zip(tried, judged[:first], strict=True)]
+    learned = treated[taken]
+    effect = limit_effect(learned, recipe.method, places[:: max(1, -(-len(places) // MOST_LIMIT_CELLS))])
+    methods = [judged[taken], *judged[first:]]
+    standings = _standings([j.held_out for j in methods], weights)
+    factors = judged[taken].factors
+    return Validation(
+        folds,
+        [j.held_out for j in methods],
+        validated_reach_m(folds.held_out_distances(points)),
+        tried,
+        learned if factors is None else learned.calibrated(factors),
+        plain,
+        effect,
+        judged[taken],
+        standings,
+        block_m,
+    )
 
 
-class _Refit:
-    """A treatment learned anew from the stations of a fold; the plain one serves others as a warm start."""
-
-    def __init__(self, recipe: Recipe, plain: Learned) -> None:
-        self.recipe, self.plain = recipe, plain
-        self.done: dict[tuple[int, bytes], Learned] = {}
-
-    def __call__(self, learned: Learned, train: Ints) -> Learned:
-        return self.done[id(learned), train.tobytes()]
-
-    def all(self, learned: Learned, folds: Folds) -> None:
-        """Learn a treatment in every fold that it was not yet learned in."""
-        trains = [train for train, _ in folds.pairs() if (id(learned), train.tobytes()) not in self.done]
-        tasks = [(learned.treatment, learned.observations.take(t), self._start(learned, t)) for t in trains]
-        for train, found in zip(trains, learn_all(tasks, self.recipe.method), strict=True):
-            self.done[id(learned), train.tobytes()] = found
-
-    def _start(self, learned: Learned, train: Ints) -> CovarianceSet:
-        first = self.done.get((id(self.plain), train.tobytes()))
-        if first is None:
-            return learned.structure
-        return with_columns_of(learned.structure, learned, self.plain, first.structure)
-
-
-def _predictor(
-    name: str, learned: Learned, refit: _Refit, recipe: Recipe
-) -> Callable[[Ints, Ints], tuple[Floats, Floats]]:
+def _standings(methods: list[HeldOut], weights: ScoreWeights) -> list[Standing]:
     from texture.predict import METHODS
 
-    sample_noise = learned.treatment.columns(learned.observations)[1]
+    order = sorted(methods, key=lambda held: list(METHODS).index(held.method))
+    return rank_methods([h.method for h in order], np.stack([h.draws.energy for h in order]), weights.resamples)
 
-    def predict(train: Ints, test: Ints) -> tuple[Floats, Floats]:
+
+class _Bench:
+    """Runs methods over the folds; the structure of the plain treatment in a fold serves others as a warm start."""
+
+    def __init__(
+        self, recipe: Recipe, plain: Learned, folds: Folds, journal: Journal, advance: Callable[[int], None]
+    ) -> None:
+        self.recipe, self.plain, self.folds = recipe, plain, folds
+        self.journal, self.advance = journal, advance
+        self.plain_structures: dict[int, CovarianceSet] = {}
+
+    def run(self, number: int, name: str, learned: Learned) -> Columns:
+        """Predict every station from the folds that do not hold it out; finished folds are taken from the journal."""
+        from texture.structure import CovarianceSet
+
+        treatment, observations = learned.treatment, learned.observations
+        sample_noise = treatment.columns(observations)[1]
+        found = Columns.empty(observations.count, len(treatment.column_names))
+        pairs = self.folds.pairs()
+        open_folds = []
+        for fold, (_, test) in enumerate(pairs):
+            record = self.journal.get(number, fold)
+            if record is None:
+                open_folds.append(fold)
+                continue
+            found.put(test, Columns(*(record[f] for f in Columns.__dataclass_fields__)))
+            if record["structure"] is not None and learned is self.plain:
+                self.plain_structures[fold] = CovarianceSet.from_dict(record["structure"])
+            self.advance(1)
+        with closing(self._learn(name, learned, [pairs[fold][0] for fold in open_folds], open_folds)) as folds:
+            for fold, inside in zip(open_folds, folds, strict=True):
+                test = pairs[fold][1]
+                columns = make_mapper(name, inside, self.recipe.method).columns(
+                    observations.points[test], sample_noise[test]
+                )
+                found.put(test, columns)
+                fitted = inside.structure is not learned.structure
+                if fitted and learned is self.plain:
+                    self.plain_structures[fold] = inside.structure
+                arrays = {f: getattr(columns, f) for f in Columns.__dataclass_fields__}
+                self.journal.put(number, fold, {**arrays, "structure": inside.structure.to_dict() if fitted else None})
+                self.advance(1)
+        return found
+
+    def _learn(
+        self, name: str, learned: Learned, trains: list[Ints], folds: list[int]
+    ) -> Generator[Learned, None, None]:
+        from texture.predict import METHODS
+
         if METHODS[name].needs_covariance:
-            inside = refit(learned, train)
-        else:
+            tasks = [
+                (learned.treatment, learned.observations.take(train), self._start(learned, fold))
+                for train, fold in zip(trains, folds, strict=True)
+            ]
+            yield from learn_each(tasks, self.recipe.method)
+            return
+        for train in trains:
             stations = learned.observations.take(train)
             values, noise = learned.treatment.columns(stations)
-            inside = replace(learned, observations=stations, values=values, noise=noise)
-        mapper = make_mapper(name, inside, recipe.method)
-        mean, variance = mapper.predict(learned.observations.points[test])
-        sample = mapper.sample_variance(variance, sample_noise[test])
-        return mapper.expected(mean, variance), mapper.interval(mean, sample)
+            yield replace(learned, observations=stations, values=values, noise=noise)
 
-    return predict
+    def _start(self, learned: Learned, fold: int) -> CovarianceSet:
+        first = self.plain_structures.get(fold)
+        if first is None:
+            return learned.structure
+        return with_columns_of(learned.structure, learned, self.plain, first)
 
 
 def _block_m(points: Floats, structure: CovarianceSet, count: int) -> float:

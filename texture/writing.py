@@ -111,7 +111,8 @@ def _write_grids(result: Result, aside: Path) -> None:
         "coordinates_partition": repr(found.mapper.logratio),
         "zeros": found.mapper.treatment.label,
         "fraction_support": support,
-        "quantile_support": "cell mean: small-scale variation averages out inside the cell",
+        "quantile_support": "cell mean: small-scale variation averages out inside the cell as far as a range of the median "
+        "distance between neighbouring stations lets it",
     }
     names = found.mapper.column_names
     quantities = [(q.model.settings, q) for q in result.quantities]
@@ -181,7 +182,13 @@ def _scores(result: Validated) -> pd.DataFrame:
     runs = [(found.chosen, taken), *((m, found.plain.treatment.label) for m in found.methods[1:])]
     runs += [(t.held_out, t.treatment.label) for t in others]
     rows = [
-        {"method": held.method, "treatment": label, "folds": found.folds.kind, "count": found.folds.count, **score}
+        {
+            "method": held.method,
+            "treatment": label,
+            "folds": found.folds.kind,
+            "count": found.folds.count,
+            **vars(score),
+        }
         for held, label in runs
         for score in held.scores
     ]

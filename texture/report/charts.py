@@ -12,7 +12,7 @@ from texture.report.style import INK, QUIET, STRONG, new_figure, styled
 if TYPE_CHECKING:
     from matplotlib.figure import Figure
 
-    from texture.validation.cross_validate import HeldOut
+    from texture.validation.held_out import HeldOut
 
 __all__ = ["draw_scatter", "draw_variograms"]
 

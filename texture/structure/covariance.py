@@ -245,6 +245,16 @@ class Covariance:
             array = np.ascontiguousarray(np.column_stack([along, across * ratio, array[:, 2:]]))
         return array
 
+    def scaled(self, factor: float) -> Covariance:
+        """Every variance multiplied: sills, small-scale, noise and survey offsets alike, so that kriging weights stay.
+
+        >>> Covariance([Structure("exponential", 1.0, 10.0)], small_scale=0.5).scaled(2.0).sill
+        3.0
+        """
+        structures = [Structure(s.model, s.sill * factor, s.range_m, s.smoothness) for s in self.structures]
+        small_scale, noise, survey = self.small_scale * factor, self.noise * factor, self.survey * factor
+        return Covariance(structures, small_scale, noise, survey, self.anisotropy, self.axis_scales, self.fit_record)
+
     def matrix(self, points: ArrayLike, points2: ArrayLike | None = None) -> Array:
         """Covariance of the bed between points, shape (n, m); noise and survey offsets are not in it.
 
@@ -378,6 +388,12 @@ class CovarianceSet(Sequence[Covariance]):
         lines = ",\n  ".join(repr(c) for c in self.covariances)
         rows = np.array2string(self.correlation, precision=3, separator=", ").replace("\n", "")
         return f"CovarianceSet([\n  {lines}],\n  correlation={rows})"
+
+    def scaled(self, factors: ArrayLike) -> CovarianceSet:
+        """Each column's covariance multiplied by its own factor, shape (v,); the correlation stays."""
+        return CovarianceSet(
+            [c.scaled(float(f)) for c, f in zip(self, np.asarray(factors), strict=True)], self.correlation
+        )
 
     def to_dict(self) -> dict[str, Any]:
         """Plain numbers, strings and lists; `from_dict` reads it back."""

@@ -1,115 +1,175 @@
-"""Scores of held-out predictions, per part and for the composition.
+"""Scores of held-out predictions, per part and for the composition, under any weights of the stations.
 
-Only what was measured is scored: a station that knows its mud but not its gravel counts for mud alone.
+Only what was measured is scored: a station that knows its mud but not its gravel counts for mud alone. Every score is a
+function of weighted sums over stations, so that one implementation serves the plain score (weights of 1), the score of
+the map (weights by the share of the map that a station stands for) and each resample of a bootstrap (whole numbers).
 """
 
 from __future__ import annotations
 
+from collections.abc import Mapping
+
 import numpy as np
 from numpy.typing import NDArray
 
-__all__ = ["aitchison_error", "class_agreement", "concordance", "coverage", "part_scores", "r_squared", "score_table"]
+from texture.validation.ensemble import pit_share_below
+
+__all__ = [
+    "QUANTILE_LEVELS",
+    "aitchison_distance",
+    "concordance",
+    "inside_interval",
+    "interval_score",
+    "part_scores",
+    "pit_histogram",
+    "r_squared",
+    "weighted_mean",
+]
 
 Floats = NDArray[np.float64]
 
+QUANTILE_LEVELS = (0.05, 0.1, 0.25, 0.5, 0.75, 0.9, 0.95)
+PIT_BINS = 10
 
-def r_squared(observed: Floats, predicted: Floats) -> float:
-    """1 − SSE/SST about the observed mean; NaN where the observed do not vary.
 
-    >>> r_squared(np.array([0.0, 1.0]), np.array([0.5, 0.5]))
-    0.0
+def weighted_mean(values: Floats, weights: Floats) -> Floats:
+    """Weighted mean of the rows that are not NaN, shape (w,); NaN where none of them has weight.
+
+    Parameters
+    ----------
+    values : float array, shape (n,)
+    weights : float array, shape (w, n)
     """
-    total = float(((observed - observed.mean()) ** 2).sum())
-    return 1.0 - float(((observed - predicted) ** 2).sum()) / total if total > 0.0 else np.nan
+    known = np.isfinite(values)
+    kept = weights[:, known]
+    total = kept.sum(axis=1)
+    return _ratio(kept @ values[known], total)
 
 
-def concordance(observed: Floats, predicted: Floats) -> float:
-    """Lin's (1989) concordance correlation coefficient; NaN where neither varies and they agree.
+def _ratio(top: Floats, bottom: Floats) -> Floats:
+    return np.divide(top, bottom, out=np.full_like(top, np.nan), where=bottom > 0.0)
 
-    >>> float(concordance(np.array([0.0, 1.0, 2.0]), np.array([1.0, 2.0, 3.0])).round(3))
-    0.571
+
+def _ones(values: Floats) -> Floats:
+    return np.ones((1, len(values)))
+
+
+def r_squared(observed: Floats, predicted: Floats, weights: Floats | None = None) -> Floats:
+    """1 − SSE/SST about the observed mean, shape (w,); NaN where the observed do not vary.
+
+    >>> r_squared(np.array([0.0, 1.0]), np.array([0.5, 0.5])).tolist()
+    [0.0]
     """
-    spread = observed.var() + predicted.var() + (observed.mean() - predicted.mean()) ** 2
-    covariance = ((observed - observed.mean()) * (predicted - predicted.mean())).mean()
-    return np.float64(2.0 * covariance / spread) if spread > 0.0 else np.float64(np.nan)
+    w = _ones(observed) if weights is None else weights
+    centre = weighted_mean(observed, w)[:, None]
+    total = (w * (observed - centre) ** 2).sum(axis=1)
+    # What rounding leaves of a constant is no variation.
+    flat = total <= 1e-24 * w.sum(axis=1)
+    return np.where(flat, np.nan, 1.0 - _ratio(w @ (observed - predicted) ** 2, np.where(flat, 0.0, total)))
 
 
-def coverage(observed: Floats, low: Floats, high: Floats, limit: float = 0.0) -> float:
-    """Share of the observed inside their intervals; NaN where no interval was given.
+def concordance(observed: Floats, predicted: Floats, weights: Floats | None = None) -> Floats:
+    """Lin's (1989) concordance correlation coefficient, shape (w,); NaN where neither varies and they agree.
+
+    >>> concordance(np.array([0.0, 1.0, 2.0]), np.array([1.0, 2.0, 3.0])).round(3).tolist()
+    [0.571]
+    """
+    w = _ones(observed) if weights is None else weights
+    centres = [weighted_mean(v, w)[:, None] for v in (observed, predicted)]
+    o, p = observed - centres[0], predicted - centres[1]
+    total = w.sum(axis=1)
+    spread = (w * (o**2 + p**2)).sum(axis=1) + total * (centres[0] - centres[1])[:, 0] ** 2
+    return _ratio(2.0 * (w * o * p).sum(axis=1), spread)
+
+
+def inside_interval(observed: Floats, low: Floats, high: Floats, limit: float = 0.0) -> Floats:
+    """1 where the observed lie inside their intervals, 0 outside, NaN where no interval was given; shape (n,).
 
     An interval that begins below the detection limit reaches down to zero: a laboratory that writes 0
     says no more than that.
     """
     known = np.isfinite(low) & np.isfinite(high)
     inside = (observed >= np.where(low < limit, 0.0, low)) & (observed <= high)
-    return float(inside[known].mean()) if known.any() else np.nan
+    return np.where(known, inside, np.nan)
 
 
-def part_scores(observed: Floats, predicted: Floats, low: Floats, high: Floats, limit: float = 0.0) -> dict[str, float]:
-    """Scores of one part; arrays of shape (n,), rows with a NaN observation or prediction left out."""
-    known = np.isfinite(observed) & np.isfinite(predicted)
-    if not known.any():
-        return {"n": 0.0}
-    o, p = observed[known], predicted[known]
-    error = p - o
-    return {
-        "n": float(known.sum()),
-        "mean_error": float(error.mean()),
-        "mean_absolute_error": float(np.abs(error).mean()),
-        "rmse": float(np.sqrt((error**2).mean())),
-        "r_squared": r_squared(o, p),
-        "concordance": float(concordance(o, p)),
-        "coverage_90": coverage(o, low[known], high[known], limit),
-    }
+def interval_score(observed: Floats, low: Floats, high: Floats, miss: float = 0.1) -> Floats:
+    """Width of the interval plus 2 / miss times how far the observed lie outside, shape (n,); lower is better.
+
+    Gneiting & Raftery (2007), eq. 43; `miss` is the share that is meant to lie outside.
+
+    >>> interval_score(np.array([0.5, 0.9]), np.array([0.2, 0.2]), np.array([0.8, 0.8])).round(6).tolist()
+    [0.6, 2.6]
+    """
+    outside = np.maximum(low - observed, 0.0) + np.maximum(observed - high, 0.0)
+    return np.asarray(high - low + 2.0 / miss * outside)
 
 
-def aitchison_error(observed: Floats, predicted: Floats, limit: float) -> float:
-    """Mean Aitchison distance over fully known rows, parts below `limit` lifted to it first."""
-    known = np.isfinite(observed).all(axis=1) & np.isfinite(predicted).all(axis=1)
-    if not known.any():
-        return np.nan
-    logs = [np.log(np.maximum(a[known], limit)) for a in (observed, predicted)]
+def aitchison_distance(observed: Floats, predicted: Floats, limit: float) -> Floats:
+    """Aitchison distance of each fully known row, parts below `limit` lifted to it first; NaN for other rows."""
+    logs = [np.log(np.maximum(a, limit)) for a in (observed, predicted)]
     centred = [a - a.mean(axis=1, keepdims=True) for a in logs]
-    return float(np.sqrt(((centred[0] - centred[1]) ** 2).sum(axis=1)).mean())
+    return np.asarray(np.sqrt(((centred[0] - centred[1]) ** 2).sum(axis=1)))
 
 
-def class_agreement(observed: Floats, predicted: Floats, scheme: str, trace: float) -> float:
-    """Share of fully known rows whose texture class is predicted."""
-    from texture.composition import classify
-
-    known = np.isfinite(observed).all(axis=1) & np.isfinite(predicted).all(axis=1)
+def pit_histogram(pit_low: Floats, pit_high: Floats) -> Floats:
+    """Share of the stations in each tenth of the probability integral transform, shape (10,); NaN without stations."""
+    known = np.isfinite(pit_low)
     if not known.any():
-        return np.nan
-    return float(
-        (classify(observed[known], scheme, trace=trace) == classify(predicted[known], scheme, trace=trace)).mean()
-    )
+        return np.full(PIT_BINS, np.nan)
+    edges = np.linspace(0.0, 1.0, PIT_BINS + 1)[1:-1]
+    below = [float(pit_share_below(pit_low[known], pit_high[known], level).mean()) for level in edges]
+    return np.diff([0.0, *below, 1.0])
 
 
-def score_table(
-    parts: tuple[str, ...], observed: Floats, predicted: Floats, low: Floats, high: Floats, limit: float
-) -> list[dict[str, str | float]]:
-    """Score every part and the composition.
+def part_scores(
+    observed: Floats,
+    predicted: Floats,
+    weights: Floats,
+    intervals: Mapping[float, tuple[Floats, Floats]],
+    crps: Floats,
+    pit: tuple[Floats, Floats],
+    limit: float = 0.0,
+    controls: Mapping[str, Floats] | None = None,
+) -> dict[str, Floats]:
+    """Scores of one part, each of shape (w,); rows with a NaN observation or prediction are left out.
 
     Parameters
     ----------
-    parts : tuple of str
-    observed, predicted, low, high : float arrays, shape (n, parts)
-        Fractions, and the ends of the 90 % interval of a sample (NaN where the method has none).
+    observed, predicted : float arrays, shape (n,)
+    weights : float array, shape (w, n)
+    intervals : mapping of float to (low, high), each of shape (n,)
+        Central intervals of a sample by the share they are meant to hold.
+    crps : float array, shape (n,)
+    pit : (low, high), each of shape (n,)
+        See `texture.validation.ensemble.DrawScores`.
     limit : float
-        Detection limit: the trace below which gravel does not name a class, the floor of the Aitchison
-        distance, and the level below which an interval reaches down to zero.
-
-    Returns
-    -------
-    list of dict
-        One row for each score: part ("all" for the composition), score, value.
+        Detection limit.
+    controls : mapping, optional
+        Predictions of other methods, for skill over them.
     """
-    rows: list[dict[str, str | float]] = []
-    for i, part in enumerate(parts):
-        for score, value in part_scores(observed[:, i], predicted[:, i], low[:, i], high[:, i], limit).items():
-            rows.append({"part": part, "score": score, "value": value})
-    rows.append({"part": "all", "score": "aitchison_distance", "value": aitchison_error(observed, predicted, limit)})
-    rows.append(
-        {"part": "all", "score": "class_agreement", "value": class_agreement(observed, predicted, "folk", limit)}
-    )
-    return rows
+    known = np.isfinite(observed) & np.isfinite(predicted)
+    if not known.any():
+        return {"n": np.zeros(len(weights))}
+    o, p, w = observed[known], predicted[known], weights[:, known]
+    error = p - o
+    square = weighted_mean(error**2, w)
+    scores = {
+        "n": np.full(len(w), float(known.sum())),
+        "mean_error": weighted_mean(error, w),
+        "mean_absolute_error": weighted_mean(np.abs(error), w),
+        "rmse": np.sqrt(square),
+        "r_squared": r_squared(o, p, w),
+        "concordance": concordance(o, p, w),
+    }
+    for name, other in (controls or {}).items():
+        scores[f"skill_over_{name}"] = 1.0 - _ratio(square, weighted_mean((other[known] - o) ** 2, w))
+    for share, (low, high) in intervals.items():
+        scores[f"coverage_{round(100 * share)}"] = weighted_mean(inside_interval(o, low[known], high[known], limit), w)
+    low, high = intervals[0.9]
+    scores["interval_score_90"] = weighted_mean(interval_score(o, low[known], high[known]), w)
+    scores["crps"] = weighted_mean(crps[known], w)
+    for level in QUANTILE_LEVELS:
+        below = pit_share_below(pit[0][known], pit[1][known], level)
+        scores[f"below_quantile_{round(100 * level)}"] = weighted_mean(below, w)
+    return scores
