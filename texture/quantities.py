@@ -24,7 +24,7 @@ from texture.targets import Target, cell_points
 from texture.treatments import Treatment
 from texture.validation.folds import Folds
 from texture.validation.reach import beyond_reach, validated_reach_m
-from texture.validation.scores import part_scores
+from texture.validation.scores import plain_scores
 
 if TYPE_CHECKING:
     from texture.stations import Stations
@@ -217,7 +217,7 @@ def _hold_out(
         predicted[at] = scale.expected(mean[:, 0], variance[:, 0])
         spread = NORMAL_95 * np.sqrt(mapper.sample_variance(variance, learned.noise[test])[:, 0])
         low[at], high[at] = scale.back(mean[:, 0] - spread), scale.back(mean[:, 0] + spread)
-    return QuantityMethod(name, predicted, low, high, part_scores(measured, predicted, low, high))
+    return QuantityMethod(name, predicted, low, high, plain_scores(measured, predicted, low, high))
 
 
 def map_quantities(

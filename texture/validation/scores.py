@@ -22,6 +22,7 @@ __all__ = [
     "interval_score",
     "part_scores",
     "pit_histogram",
+    "plain_scores",
     "r_squared",
     "weighted_mean",
 ]
@@ -152,16 +153,8 @@ def part_scores(
     if not known.any():
         return {"n": np.zeros(len(weights))}
     o, p, w = observed[known], predicted[known], weights[:, known]
-    error = p - o
-    square = weighted_mean(error**2, w)
-    scores = {
-        "n": np.full(len(w), float(known.sum())),
-        "mean_error": weighted_mean(error, w),
-        "mean_absolute_error": weighted_mean(np.abs(error), w),
-        "rmse": np.sqrt(square),
-        "r_squared": r_squared(o, p, w),
-        "concordance": concordance(o, p, w),
-    }
+    scores = _error_scores(o, p, w)
+    square = scores["rmse"] ** 2
     for name, other in (controls or {}).items():
         scores[f"skill_over_{name}"] = 1.0 - _ratio(square, weighted_mean((other[known] - o) ** 2, w))
     for share, (low, high) in intervals.items():
@@ -173,3 +166,30 @@ def part_scores(
         below = pit_share_below(pit[0][known], pit[1][known], level)
         scores[f"below_quantile_{round(100 * level)}"] = weighted_mean(below, w)
     return scores
+
+
+def plain_scores(observed: Floats, predicted: Floats, low: Floats, high: Floats) -> dict[str, float]:
+    """Errors and 90 % coverage of one quantity that has no parts, all stations alike; arrays of shape (n,).
+
+    >>> plain_scores(np.array([1.0, 2.0]), np.array([1.0, 3.0]), np.zeros(2), np.full(2, 1.5))["coverage_90"]
+    0.5
+    """
+    known = np.isfinite(observed) & np.isfinite(predicted)
+    if not known.any():
+        return {"n": 0.0}
+    o, weights = observed[known], np.ones((1, int(known.sum())))
+    found = _error_scores(o, predicted[known], weights)
+    found["coverage_90"] = weighted_mean(inside_interval(o, low[known], high[known]), weights)
+    return {name: float(value[0]) for name, value in found.items()}
+
+
+def _error_scores(observed: Floats, predicted: Floats, weights: Floats) -> dict[str, Floats]:
+    error = predicted - observed
+    return {
+        "n": np.full(len(weights), float(len(observed))),
+        "mean_error": weighted_mean(error, weights),
+        "mean_absolute_error": weighted_mean(np.abs(error), weights),
+        "rmse": np.sqrt(weighted_mean(error**2, weights)),
+        "r_squared": r_squared(observed, predicted, weights),
+        "concordance": concordance(observed, predicted, weights),
+    }
