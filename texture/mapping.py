@@ -226,12 +226,15 @@ class Mapper:
         mean, variance, rung = self.predictor.predict_with_support(points)
         return mean, variance, rung.max(axis=1)
 
+    def sample_variance(self, variance: Floats, noise: Floats) -> Floats:
+        """Variance of a new sample: of the bed, of its analysis (per row) and of its survey's offset."""
+        return np.asarray(variance + noise + np.array([c.noise + c.survey for c in self.structure]))
+
     def columns(self, points: Floats, noise: Floats) -> Columns:
         """Predictions of samples at points, of which the analysis is known to have a noise of its own, shape (n, k)."""
         mean, variance = self.predict(points)
-        offsets = np.array([c.noise + c.survey for c in self.structure])
         correlation = np.broadcast_to(self.correlation, (len(mean), *self.correlation.shape))
-        return Columns(mean, variance, noise + offsets, correlation)
+        return Columns(mean, variance, self.sample_variance(np.zeros_like(mean), noise), correlation)
 
     @property
     def correlation(self) -> Floats:
