@@ -28,8 +28,10 @@ def check_early(recipe: Recipe, target: Target) -> None:
     TextureError
         One of its leaves.
     """
+    from texture.ensemble import check_ensemble
     from texture.output import check_outputs
 
+    check_ensemble(recipe)
     check_outputs(target, recipe)
     read_rim(recipe, target)
     read_conditions(recipe, target)

@@ -13,6 +13,7 @@ from typing import Any
 from texture.choosing import fit_candidates
 from texture.clock import Clock
 from texture.early import check_early, read_conditions, read_rim
+from texture.ensemble import drawn_ensemble
 from texture.estimate import estimate_on
 from texture.flagging import flag_stations
 from texture.inventory import make_inventory
@@ -121,8 +122,8 @@ def build(
     result = Result(
         found, estimate, per_side, look, bed, clock, moved=moved, inventory=inventory, quantities=quantities
     )
-    with clock.stage("write"), progress.stage("write"):
-        return write_all(result, folder, Path(recipe_path))
+    with drawn_ensemble(result, folder, progress) as (result, maps), clock.stage("write"), progress.stage("write"):
+        return write_all(result, folder, Path(recipe_path), maps)
 
 
 def read_stations(recipe_path: Where, **settings: Any) -> Stations:

@@ -16,6 +16,7 @@ if TYPE_CHECKING:
     from texture.clock import Clock
     from texture.estimate import Estimate
     from texture.mapping import Mapper
+    from texture.member_summary import MemberSummary
     from texture.observations import Observations
     from texture.quantities import QuantityMap, QuantityModel
     from texture.recipe import Recipe
@@ -152,6 +153,8 @@ class Result:
         Tonnes by depth band and class, with their range.
     quantities : tuple of QuantityMap
         Maps of the recipe's further numbers.
+    members : MemberSummary or None
+        What the members of the recipe's ensemble say together.
     """
 
     found: Validated
@@ -164,6 +167,7 @@ class Result:
     moved: tuple[Moved, ...] = ()
     inventory: tuple[Stock, ...] = ()
     quantities: tuple[QuantityMap, ...] = ()
+    members: MemberSummary | None = None
 
     @property
     def beyond_share(self) -> float:
@@ -205,6 +209,7 @@ class Result:
             "hiding": settings.hiding,
             "inventory": [{k: known(v) for k, v in vars(stock).items()} for stock in self.inventory],
             "mobility": [mobility_record(m) for m in self.moved],
+            "members": 0 if self.members is None else self.members.count,
             **(self.look.to_dict() if self.look is not None else {"second_opinion": None, "neighbourhood": None}),
             "answer": self.answer(),
             "seconds": {name: round(value, 3) for name, value in self.clock.seconds.items()},
@@ -234,6 +239,7 @@ class Result:
         )
         lines.append(bed)
         lines += mobility_lines(self.moved)
+        lines += [] if self.members is None else [self.members.line()]
         if account.not_given:
             lines.append(f"  not given   {', '.join(account.not_given)}")
         return [*lines, *written_line(found.recipe, self.files), self.answer()]

@@ -62,6 +62,11 @@ class Replace:
         return self.logratio.detection_limit
 
     @property
+    def trace(self) -> float:
+        """Gravel fraction below which it names no class of the map."""
+        return max(LEAST_TRACE, self.limit)
+
+    @property
     def label(self) -> str:
         """The treatment in a few words, for tables."""
         return f"replaced below {self.limit:g}"
@@ -128,7 +133,7 @@ class Replace:
         """Most probable texture class at a point, numbered from 1, and its probability; shapes (n,)."""
         from texture.composition import class_odds
 
-        found = class_odds(self.logratio, mean, covariance, "folk", trace=max(LEAST_TRACE, self.limit))
+        found = class_odds(self.logratio, mean, covariance, "folk", trace=self.trace)
         return found.number, found.probability
 
 
@@ -269,7 +274,7 @@ class Presence(Replace):
 
     def odds(self, mean: Floats, covariance: Floats) -> tuple[NDArray[np.int8], Floats]:
         """Most probable texture class at a point, numbered from 1, and its probability; shapes (n,)."""
-        return self.distribution.odds(*self._given(mean, covariance), "folk", trace=max(LEAST_TRACE, self.limit))
+        return self.distribution.odds(*self._given(mean, covariance), "folk", trace=self.trace)
 
     def _given(self, mean: Floats, covariance: Floats) -> tuple[Floats, Floats, Floats, Floats]:
         """Coordinates, their covariance, the probability of presence, and its correlation with each coordinate."""

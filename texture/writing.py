@@ -9,11 +9,14 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
+from texture.ensemble import write_ensemble
 from texture.result import Intake, Result, Validated
+from texture.writing_bed import write_bed
 
 if TYPE_CHECKING:
     import pandas as pd
 
+    from texture.members import MemberMaps
     from texture.output import ResultFolder
     from texture.recipe import Recipe
 
@@ -36,7 +39,7 @@ def write_validation(result: Validated, folder: ResultFolder) -> Validated:
     return replace(result, files=folder.files)
 
 
-def write_all(result: Result, folder: ResultFolder, recipe_path: Path) -> Result:
+def write_all(result: Result, folder: ResultFolder, recipe_path: Path, maps: MemberMaps | None = None) -> Result:
     """Write everything a build makes; return the result with its files."""
     from texture.output import provenance, write_json
     from texture.recipe.file import resolved_toml
@@ -51,6 +54,8 @@ def write_all(result: Result, folder: ResultFolder, recipe_path: Path) -> Result
         _write_scores(found, aside)
         _write_grids(result, aside)
         _write_inventory(result, aside)
+        if maps is not None:
+            write_ensemble(result, maps, aside)
         (aside / "recipe_resolved.toml").write_text(settings, encoding="utf-8")
         picture = result_picture(result)
         (aside / "map.png").write_bytes(picture.content)
@@ -118,7 +123,7 @@ def _write_grids(result: Result, aside: Path) -> None:
     quantities = [(q.model.settings, q) for q in result.quantities]
     texture = texture_dataset(result.estimate, found.target, recipe, words, names, attributes)
     write_netcdf(with_quantities(texture, quantities, found.target, support), aside / "texture.nc")
-    _write_bed(result, aside)
+    write_bed(result.bed, found.target, recipe, aside / "bed.nc", result.moved, into=True)
     if recipe.outputs.geotiff and found.target.corners is not None:  # places have no cells to show
         colours = class_colours(scheme.numbers)
         parts, size = recipe.composition.parts, recipe.outputs.geotiff_cell_size_m
@@ -133,36 +138,6 @@ def _write_inventory(result: Result, aside: Path) -> None:
 
     if result.inventory:
         write_csv(aside / "inventory.csv", pd.DataFrame([vars(stock) for stock in result.inventory]).round(3))
-
-
-def _write_bed(result: Result, aside: Path) -> None:
-    """Write the bed under the user's names, and into a copy of the user's initial file."""
-    from texture.bed import single_fractions
-    from texture.output import (
-        apply_names,
-        bed_dataset,
-        read_names,
-        stores_single,
-        write_cells,
-        write_into,
-        write_netcdf,
-    )
-
-    recipe, outputs = result.found.recipe, result.found.recipe.outputs
-    bed, cells = bed_dataset(result.bed, result.found.target, recipe, result.moved), result.found.target.dims
-    named = bed
-    if outputs.names is not None:
-        names = read_names(outputs.names)
-        named = apply_names(bed, names, outputs.names.name)
-        cells = tuple(names.dimensions.get(d, d) for d in cells)
-    write_netcdf(named, aside / "bed.nc")
-    if outputs.text:
-        write_cells(aside / "bed.csv", named, cells)
-    if outputs.names is not None and outputs.into is not None:
-        if stores_single(named, names, outputs.into):  # fractions sum to 1 as that file stores them
-            bed["class_fraction"] = bed["class_fraction"].copy(data=single_fractions(bed["class_fraction"].values))
-            named = apply_names(bed, names)
-        write_into(named, names, outputs.into, aside / outputs.into.name, outputs.into_record)
 
 
 def _write_scores(result: Validated, aside: Path) -> None:

@@ -7,6 +7,7 @@ from texture.output.compliance import check_cf
 from texture.output.folder import ResultFolder
 from texture.output.geotiff import pixel_grid, write_geotiff, write_geotiffs
 from texture.output.into import check_into, stores_single, write_into
+from texture.output.members_nc import NOT_A_BED, summary_dataset, write_members
 from texture.output.names import Names, read_names
 from texture.output.open_bed import bed_arrays, open_bed
 from texture.output.outline import bed_outline, check_outputs
@@ -19,6 +20,7 @@ from texture.output.text_table import cell_table, write_cells
 from texture.output.texture_nc import texture_dataset
 
 __all__ = [
+    "NOT_A_BED",
     "Names",
     "ResultFolder",
     "apply_names",
@@ -37,6 +39,7 @@ __all__ = [
     "quantity_geotiffs",
     "read_names",
     "stores_single",
+    "summary_dataset",
     "texture_dataset",
     "with_quantities",
     "write_cells",
@@ -45,5 +48,6 @@ __all__ = [
     "write_geotiffs",
     "write_into",
     "write_json",
+    "write_members",
     "write_netcdf",
 ]

@@ -18,7 +18,8 @@ __all__ = ["RESULTS", "ResultFolder"]
 
 RESULTS = (
     "stations.csv", "stations.gpkg", "audit.csv", "deeper.csv", "texture.nc", "bed.nc", "bed.csv", "inventory.csv", "geotiff", "validation.csv",
-    "held_out.csv", "report.html", "map.png", "provenance.json", "recipe_resolved.toml",
+    "held_out.csv", "report.html", "map.png", "provenance.json", "recipe_resolved.toml", "members.nc",
+    "members_summary.nc", "members",
 )  # fmt: skip
 """What a run writes into its folder; other files there are the user's and are never touched."""
 
@@ -93,6 +94,17 @@ class ResultFolder:
                 self.files = self._put_in_place(fresh, old)
         finally:
             shutil.rmtree(aside, ignore_errors=True)
+
+    @contextmanager
+    def scratch(self) -> Iterator[Path]:
+        """Give a folder on the same disk for what is made on the way; it is thrown away with all that is in it."""
+        with _one_line(self.path):
+            place = Path(tempfile.mkdtemp(prefix=".texture-", dir=_ground(self.path)))
+        try:
+            with _one_line(self.path):
+                yield place
+        finally:
+            shutil.rmtree(place, ignore_errors=True)
 
     def _put_in_place(self, fresh: Path, old: Path) -> tuple[Path, ...]:
         names = sorted(p.relative_to(fresh) for p in fresh.rglob("*") if p.is_file())

@@ -30,6 +30,8 @@ MOST_NEGATIVE = 1e-3
 """Share of the eigenvalues' mass that may be negative and is left out; beyond it the embedding is refused."""
 MOST_NODES = 1 << 24
 """Of the embedding: 0.27 GB for each column in work."""
+FREE_NODES = 1 << 20
+"""A small raster may have a torus of up to so many nodes: a range longer than the raster needs room."""
 MOST_SPARSE = 4.0
 """Nodes for each point asked for beyond which a lattice is a poor way to reach them."""
 AROUND, BEFORE = 6, 8
@@ -119,10 +121,10 @@ class CirculantPrior:
     @classmethod
     def make(cls, structure: CovarianceSet, lattice: Lattice, stations: Array, seed: int = 1) -> CirculantPrior | None:
         """Prepare the embedding; None where a part of its eigenvalues is too negative on every torus that fits."""
-        shape: tuple[int, int] | None = None
-        for wide in (1.0, 2.0, 4.0):
+        most = min(MOST_NODES, max(16 * lattice.shape[0] * lattice.shape[1], FREE_NODES))
+        for wide in (1.0, 2.0, 4.0, 8.0, 16.0, 32.0):
             shape = _torus(structure, lattice, wide)
-            if shape[0] * shape[1] > MOST_NODES:
+            if shape[0] * shape[1] > most:
                 return None
             roots = []
             for c in structure:

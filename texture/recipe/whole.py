@@ -9,6 +9,7 @@ from pydantic import Field, model_validator
 
 from texture.recipe.bed import Bed
 from texture.recipe.composition import Composition
+from texture.recipe.ensemble import Ensemble
 from texture.recipe.intake import Intake
 from texture.recipe.inventory import Inventory
 from texture.recipe.method import Method
@@ -41,6 +42,7 @@ class Recipe(Settings):
     mobility: tuple[Mobility, ...] = ()
     inventory: Inventory = Field(default_factory=Inventory)
     quantities: tuple[Quantity, ...] = ()
+    ensemble: Ensemble = Field(default_factory=Ensemble)
     outputs: Outputs = Field(default_factory=Outputs)
 
     @model_validator(mode="after")

@@ -7,10 +7,12 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
+from texture.output.members_nc import NOT_A_BED
 from texture.report.charts import draw_scatter, draw_variograms
 from texture.report.encode import Picture, picture
 from texture.report.explorer import explorer
 from texture.report.maps import EVIDENCE_COLOURS, Layer, draw_maps
+from texture.report.members import members_picture
 from texture.report.quantities import quantity_picture, quantity_table
 from texture.report.tables import page_tables
 
@@ -63,6 +65,7 @@ def write_page(result: Result, map_picture: Picture, settings: str, versions: st
         settings=settings,
         versions=versions,
         cautions=CAUTIONS,
+        not_a_bed=NOT_A_BED,
     )
 
 
@@ -95,6 +98,8 @@ def _figures(result: Result) -> dict[str, Picture]:
             "Empirical variogram points and fitted curves for each log-ratio coordinate.",
         ),
     }
+    if result.members is not None:
+        figures["members"] = members_picture(result)
     return figures
 
 

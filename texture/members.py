@@ -1,0 +1,154 @@
+"""Members on the target: equally likely maps, made in one pass over the cells and kept on disk."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Sequence
+from contextlib import ExitStack
+from dataclasses import dataclass
+from pathlib import Path
+from typing import TYPE_CHECKING
+
+import numpy as np
+from numpy.typing import NDArray
+
+from texture.errors import RecipeError
+from texture.member_fractions import member_fractions
+from texture.predict import Kriging
+from texture.predict.circulant import CirculantPrior, find_lattice, pairs_of
+from texture.predict.members import Members
+from texture.progress import Progress, Silent
+from texture.scratch import Scratch
+from texture.targets import Target, cell_points
+
+if TYPE_CHECKING:
+    from texture.mapping import Mapper
+    from texture.structure.plane import Plane
+
+__all__ = ["MemberMaps", "check_members", "draw_members"]
+
+Floats = NDArray[np.float64]
+MOST_CELLS = 20_000
+NUMBERS_AT_ONCE = 2_000_000
+"""Of kriged values held at once, 16 MB: bounds the memory whatever the number of members."""
+
+
+@dataclass(frozen=True, eq=False)
+class MemberMaps:
+    """Fractions of the members in the target's water cells, on disk.
+
+    Attributes
+    ----------
+    numbers : tuple of int
+        Which members, counted from 1.
+    cells : int array, shape (m,)
+        Water cells, by their flat number.
+    method : str
+        How the prior fields were made.
+    """
+
+    numbers: tuple[int, ...]
+    cells: NDArray[np.int64]
+    n_cells: int
+    method: str
+    _store: Scratch
+
+    def fractions(self, number: int) -> Floats:
+        """Fractions of one member over all cells of the target, shape (n, parts), NaN outside the water."""
+        found = np.full((self.n_cells, self._store.width), np.nan)
+        found[self.cells] = self._store.read(self.numbers.index(number))
+        return found
+
+    def blocks(self) -> Iterator[tuple[NDArray[np.int64], Floats]]:
+        """Cells, and all members' fractions in them, shape (members, m, parts), a block at a time."""
+        at_once = max(256, NUMBERS_AT_ONCE // (len(self.numbers) * self._store.width))
+        for first in range(0, self.cells.size, at_once):
+            last = min(first + at_once, self.cells.size)
+            yield self.cells[first:last], self._store.read_all(first, last)
+
+
+def check_members(mapper: Mapper) -> Kriging:
+    """Return the kriging that members are drawn from; raises `RecipeError` where the method is another."""
+    if not isinstance(mapper.predictor, Kriging):
+        raise RecipeError(
+            f'ensemble.members: method "{mapper.name}" has no kriging variance to draw from; use method.name = "kriging"'
+        )
+    return mapper.predictor
+
+
+def draw_members(
+    target: Target,
+    mapper: Mapper,
+    plane: Plane,
+    per_side: int,
+    numbers: Sequence[int],
+    seed: int,
+    folder: Path,
+    stack: ExitStack,
+    progress: Progress | None = None,
+    median: bool = False,
+) -> MemberMaps:
+    """Draw members on every water cell.
+
+    Parameters
+    ----------
+    target, mapper, plane, per_side, median
+        As for the estimate.
+    numbers : sequence of int
+        Which members, from 1. A member is the same whichever others are drawn with it.
+    seed : int
+    folder : path
+        For scratch files: 8 bytes for each member, part and cell, and for rasters in the plane as many again for each
+        column and point.
+    stack : ExitStack
+        Closes the scratch files.
+    progress : Progress, optional
+    """
+    kriging, progress = check_members(mapper), progress or Silent()
+    cells = np.flatnonzero(target.active)
+    stations = kriging.stations.points
+
+    def points_of(some: NDArray[np.int64]) -> Floats:
+        return cell_points(target, some, per_side, plane.to_metres)
+
+    inside = points_of(cells[:1]).shape[1]
+    prior, priors, at = None, None, None
+    every = points_of(cells).reshape(-1, stations.shape[1])
+    lattice = find_lattice(every, stations)
+    circulant = None if lattice is None else CirculantPrior.make(mapper.structure, lattice, stations, seed)
+    if circulant is not None:
+        assert lattice is not None
+        at = lattice.nodes_of(every)
+        width = len(mapper.structure)
+        priors = stack.enter_context(Scratch(folder / "priors.bin", len(numbers), len(every), width))
+        prior = np.empty((len(stations), width, len(numbers)))
+        with progress.stage("prior fields", total=len(numbers)) as advance:
+            for pair in pairs_of(numbers):
+                fields = circulant.pair(pair)
+                for half, number in enumerate((2 * pair + 1, 2 * pair + 2)):
+                    if number in numbers:
+                        j = list(numbers).index(number)
+                        prior[:, :, j] = circulant.at_stations(fields[half], number)
+                        priors.write(j, 0, fields[half].reshape(width, -1)[:, at].T)
+                        advance(1)
+    del every, at
+    members = Members(kriging, numbers, seed, prior)
+    parts = mapper.logratio.n_parts
+    store = stack.enter_context(Scratch(folder / "fractions.bin", len(numbers), cells.size, parts))
+    at_once = max(64, min(MOST_CELLS, NUMBERS_AT_ONCE // (inside * len(mapper.structure) * len(numbers))))
+    with progress.stage("members", total=cells.size) as advance:
+        for first in range(0, cells.size, at_once):
+            some = cells[first : first + at_once]
+            points = points_of(some).reshape(-1, stations.shape[1])
+            here = None
+            if priors is not None:
+                here = np.moveaxis(priors.read_all(first * inside, (first + some.size) * inside), 0, 2)
+            fields, mean, variance = members.predict_with_moments(points, here, small_scale=False)
+            known = members.at_station(points) >= 0
+            for j in range(len(numbers)):
+                own = np.ascontiguousarray(fields[:, :, j])
+                share = member_fractions(mapper, own, mean, variance, known, median)
+                share = share.reshape(some.size, inside, parts).mean(axis=1)
+                store.write(j, first, share / share.sum(axis=1, keepdims=True))
+            advance(some.size)
+    method = "circulant embedding" if circulant is not None else "spectral method"
+    return MemberMaps(tuple(numbers), cells, target.n_cells, method, store)
