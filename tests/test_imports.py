@@ -16,15 +16,17 @@ ALLOWED = {
     "recipe": {"errors"},
     "composition": GROUND,
     "structure": GROUND,
+    "space": GROUND,
     "predict": GROUND | {"structure", "composition"},
     "validation": GROUND | {"structure", "composition", "predict"},
     "bed": GROUND | {"composition"},
     "stations": GROUND | {"composition"},
-    "targets": GROUND,
+    "targets": GROUND | {"space"},
     "output": GROUND | {"targets", "stations", "bed", "composition"},
-    "report": GROUND | {"targets", "stations", "bed", "composition", "validation", "structure", "output", "result"},
+    "report": GROUND
+    | {"targets", "stations", "bed", "composition", "validation", "structure", "space", "output", "result"},
 }
-ARRAY_ROOMS = ["composition", "structure", "predict", "validation", "bed"]
+ARRAY_ROOMS = ["composition", "structure", "space", "predict", "validation", "bed"]
 FILE_LIBRARIES = {"pandas", "geopandas", "rasterio", "xarray", "netCDF4", "pyogrio", "python_calamine", "pathlib"}
 
 

@@ -10,6 +10,7 @@ from numpy.typing import NDArray
 
 from texture.mapping import Learned, learn, learn_all, make_mapper
 from texture.recipe import Recipe
+from texture.space import PLANE, Space
 from texture.treatments import Presence, Shares, Treatment, candidates, plain_treatment
 
 if TYPE_CHECKING:
@@ -74,8 +75,8 @@ class LimitEffect:
     cells: int
 
 
-def fit_candidates(observations: Observations, recipe: Recipe) -> tuple[Learned, list[Learned]]:
-    """Fit the plain treatment, and every one that the recipe lets held-out error choose from.
+def fit_candidates(observations: Observations, recipe: Recipe, space: Space = PLANE) -> tuple[Learned, list[Learned]]:
+    """Fit the plain treatment, and every one that the recipe lets held-out error choose from, in the space of its method.
 
     Returns
     -------
@@ -86,10 +87,10 @@ def fit_candidates(observations: Observations, recipe: Recipe) -> tuple[Learned,
     """
     from texture.predict import METHODS
 
-    plain = learn(plain_treatment(recipe.composition), observations, recipe.method)
+    plain = learn(plain_treatment(recipe.composition), observations, recipe.method, space=space)
     wanted = candidates(recipe.composition, observations, METHODS[recipe.method.name].has_variance)
     others = [t for t in wanted if t != plain.treatment]
-    found = learn_all([(t, observations, warm_start(t, plain)) for t in others], recipe.method)
+    found = learn_all([(t, observations, warm_start(t, plain)) for t in others], recipe.method, space)
     return plain, [plain] * (len(wanted) > len(others)) + found
 
 
@@ -104,7 +105,7 @@ def warm_start(treatment: Treatment, plain: Learned) -> CovarianceSet | None:
     # An indicator is not continuous anywhere on its edges: its variogram rises at once, as the exponential one does.
     own = plain.structure[treatment.own]
     range_m = own.range_m or float(np.linalg.norm(np.ptp(plain.observations.points, axis=0))) / 3.0
-    indicator = Covariance([Structure("exponential", 0.15, range_m)], small_scale=0.05)
+    indicator = Covariance([Structure("exponential", 0.15, range_m)], small_scale=0.05, axis_scales=own.axis_scales)
     return CovarianceSet([*plain.structure, indicator])
 
 
@@ -179,7 +180,9 @@ def limit_effect(learned: Learned, method: Method, places: Floats) -> LimitEffec
     if isinstance(treatment, Shares):
         return None
     limits = [treatment.limit / 2.0, min(treatment.limit * 2.0, MOST_LIMIT)]
-    others = learn_all([(treatment.with_limit(v), learned.observations, learned.structure) for v in limits], method)
+    others = learn_all(
+        [(treatment.with_limit(v), learned.observations, learned.structure) for v in limits], method, learned.space
+    )
     means = []
     for other in (learned, *others):
         mapper = make_mapper(method.name, other, method)

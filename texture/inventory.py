@@ -36,10 +36,10 @@ def bed_correlation(found: Validated) -> Alike:
     The largest among the mapped columns, each without its small-scale variation, which averages out inside cells. 0 where
     nothing has spatial structure.
     """
-    target, plane, structure = found.target, found.plane, found.mapper.structure
+    target, plane, structure, space = found.target, found.plane, found.mapper.structure, found.mapper.space
 
     def alike(a: NDArray[np.int64], b: NDArray[np.int64]) -> NDArray[np.float64]:
-        here, there = (plane.to_metres(target.longitude[i], target.latitude[i]) for i in (a, b))
+        here, there = (space.at(plane.to_metres(target.longitude[i], target.latitude[i])).points for i in (a, b))
         result = np.where(a == b, 1.0, 0.0)
         for covariance in structure:
             smooth = covariance.sill - covariance.small_scale

@@ -7,6 +7,7 @@ from __future__ import annotations
 
 from collections.abc import Generator, Sequence
 from dataclasses import dataclass, replace
+from functools import cached_property
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -14,6 +15,7 @@ from numpy.typing import NDArray
 
 from texture.observations import Observations
 from texture.recipe import Method
+from texture.space import PLANE, Seen, Space
 from texture.treatments import Censor, Treatment
 from texture.validation.columns import Columns
 
@@ -21,7 +23,7 @@ if TYPE_CHECKING:
     from texture.composition import LogRatio
     from texture.structure import CovarianceSet
 
-__all__ = ["Learned", "Mapper", "learn", "learn_all", "learn_each", "make_mapper"]
+__all__ = ["Learned", "Mapper", "columns_in", "learn", "learn_all", "learn_each", "make_mapper"]
 
 Floats = NDArray[np.float64]
 SWEEPS = (4, 2)
@@ -41,6 +43,8 @@ class Learned:
     values, noise : float arrays, shape (n, k)
         Columns to krige and their noise variance.
     structure : CovarianceSet
+    space : Space
+        Where distance is taken, and what the mean follows.
     """
 
     treatment: Treatment
@@ -48,6 +52,12 @@ class Learned:
     values: Floats
     noise: Floats
     structure: CovarianceSet
+    space: Space = PLANE
+
+    @cached_property
+    def seen(self) -> Seen:
+        """The stations in their space."""
+        return self.space.at(self.observations.points)
 
     def calibrated(self, factors: Floats) -> Learned:
         """Every variance of each column multiplied by its factor, shape (k,), noise included: predictions stay, spreads follow."""
@@ -60,8 +70,22 @@ class Learned:
         return survey if np.unique(survey).size > 1 else None
 
 
+def columns_in(space: Space, treatment: Treatment, observations: Observations) -> tuple[Floats, Floats]:
+    """Columns of a treatment and their noise; NaN where a station lacks a covariate of the space, so that it informs nothing."""
+    values, noise = treatment.columns(observations)
+    missing = space.at(observations.points).missing
+    if missing.any():
+        values, noise = values.copy(), noise.copy()
+        values[missing], noise[missing] = np.nan, 0.0
+    return values, noise
+
+
 def learn(
-    treatment: Treatment, observations: Observations, method: Method, start: CovarianceSet | None = None
+    treatment: Treatment,
+    observations: Observations,
+    method: Method,
+    start: CovarianceSet | None = None,
+    space: Space = PLANE,
 ) -> Learned:
     """Fit the spatial structure of all columns of a treatment.
 
@@ -73,34 +97,38 @@ def learn(
         Of the recipe: how structure is fitted.
     start : CovarianceSet, optional
         A warm start (inside folds).
+    space : Space
+        Where distance is taken; stations that lack one of its covariates inform nothing.
     """
-    values, noise = treatment.columns(observations)
+    values, noise = columns_in(space, treatment, observations)
     if not isinstance(treatment, Censor):
-        return _fitted(treatment, observations, values, noise, method, start)
+        return _fitted(treatment, observations, values, noise, method, start, space)
     if start is None:
-        start = _fitted(treatment, observations, values, noise, method, None).structure
+        start = _fitted(treatment, observations, values, noise, method, None, space).structure
     # Structure and censored values hang together: sweeps with one, a fit to the other, and sweeps again.
     low, high = treatment.bounds(observations)
-    learned = Learned(treatment, observations, values, noise, start)
+    learned = Learned(treatment, observations, values, noise, start, space)
     for _ in range(SWEEPS[0]):
         values, noise = treatment.sweep(values, noise, low, high, *_without_each(learned, values, noise))
-    learned = _fitted(treatment, observations, values, noise, method, start)
+    learned = _fitted(treatment, observations, values, noise, method, start, space)
     for _ in range(SWEEPS[1]):
         values, noise = treatment.sweep(values, noise, low, high, *_without_each(learned, values, noise))
     values, noise = treatment.told(values, noise, low, high, *_without_each(learned, values, noise))
     return replace(learned, values=values, noise=noise)
 
 
-def learn_all(tasks: Sequence[tuple[Treatment, Observations, CovarianceSet | None]], method: Method) -> list[Learned]:
+def learn_all(
+    tasks: Sequence[tuple[Treatment, Observations, CovarianceSet | None]], method: Method, space: Space = PLANE
+) -> list[Learned]:
     """`learn` for several treatments or sets of stations, on as many threads as compiled code uses.
 
     Each is a sum in one order on one thread: the same bits on any number of cores.
     """
-    return list(learn_each(tasks, method))
+    return list(learn_each(tasks, method, space))
 
 
 def learn_each(
-    tasks: Sequence[tuple[Treatment, Observations, CovarianceSet | None]], method: Method
+    tasks: Sequence[tuple[Treatment, Observations, CovarianceSet | None]], method: Method, space: Space = PLANE
 ) -> Generator[Learned, None, None]:
     """As `learn_all`, one after the other as they are done; what was not begun is let go when the caller stops."""
     from concurrent.futures import ThreadPoolExecutor
@@ -110,7 +138,7 @@ def learn_each(
     pool = ThreadPoolExecutor(min(int(get_num_threads()), max(len(tasks), 1)))
     try:
         with _one_blas_thread():
-            yield from pool.map(lambda task: learn(task[0], task[1], method, task[2]), tasks)
+            yield from pool.map(lambda task: learn(task[0], task[1], method, task[2], space), tasks)
     finally:
         pool.shutdown(wait=True, cancel_futures=True)
 
@@ -128,19 +156,23 @@ def _fitted(
     noise: Floats,
     method: Method,
     start: CovarianceSet | None,
+    space: Space,
 ) -> Learned:
     from texture.structure import Covariance
 
+    seen = space.at(observations.points)
     several = np.unique(observations.survey).size > 1
     structure: CovarianceSet = Covariance.fit(
-        observations.points,
+        seen.points,
         values,
         method=method.fit,
         noise_variance=noise,
         survey=observations.survey if several else None,
+        drift=seen.drift,
         start=start,
+        own_range_axes=space.own_range_axes(seen.points.shape[1]),
     )
-    return Learned(treatment, observations, values, noise, structure)
+    return Learned(treatment, observations, values, noise, structure, space)
 
 
 def _without_each(learned: Learned, values: Floats, noise: Floats) -> tuple[Floats, Floats]:
@@ -151,7 +183,7 @@ def _without_each(learned: Learned, values: Floats, noise: Floats) -> tuple[Floa
     structure = learned.structure
     with _one_blas_thread():
         kriging = Kriging(structure).fit(
-            learned.observations.points, values, noise_variance=noise, survey=learned.survey
+            learned.seen.points, values, noise_variance=noise, survey=learned.survey, drift=learned.seen.drift
         )
         mean, variance = leave_out(kriging)
     return mean, variance - noise - np.array([c.noise for c in structure])
@@ -169,6 +201,8 @@ class Mapper:
     predictor : Predictor
     error : (variance (k,), correlation (k, k)) or None
         Spread of the held-out errors of a method that knows no variance; None where it is not known either.
+    space : Space
+        Where it sees places.
     """
 
     name: str
@@ -176,6 +210,7 @@ class Mapper:
     structure: CovarianceSet
     predictor: Any
     error: tuple[Floats, Floats] | None = None
+    space: Space = PLANE
 
     @property
     def logratio(self) -> LogRatio:
@@ -212,19 +247,26 @@ class Mapper:
         return np.array([c.small_scale for c in self.structure])
 
     def predict(self, points: Floats) -> tuple[Floats, Floats]:
-        """Mean and variance of the bed at points, shapes (n, k); variance NaN where nothing is known of it."""
-        mean, variance = self.predictor.predict(points)
+        """Mean and variance of the bed at points of the plane, shapes (n, k); variance NaN where nothing is known of it."""
+        return self._predict_seen(self.space.at(points))
+
+    def _predict_seen(self, seen: Seen) -> tuple[Floats, Floats]:
+        mean, variance = self.predictor.predict(seen.points, drift=seen.drift)
         if not self.integrates and self.error is not None:
             variance = np.tile(self.error[0], (len(mean), 1))
         return mean, variance
 
     def predict_with_rung(self, points: Floats) -> tuple[Floats, Floats, NDArray[np.int8]]:
-        """Mean, variance, and per point how far the neighbourhood had to look: 0 the usual one, above it wider."""
+        """Mean, variance, and per point how far the neighbourhood had to look: 0 the usual one, above it wider.
+
+        A point that lacks a covariate counts as 1.
+        """
+        seen = self.space.at(points)
+        guessed = seen.missing.astype(np.int8)
         if not self.solves:
-            mean, variance = self.predict(points)
-            return mean, variance, np.zeros(len(points), dtype=np.int8)
-        mean, variance, rung = self.predictor.predict_with_support(points)
-        return mean, variance, rung.max(axis=1)
+            return *self._predict_seen(seen), guessed
+        mean, variance, rung = self.predictor.predict_with_support(seen.points, drift=seen.drift)
+        return mean, variance, np.maximum(rung.max(axis=1), guessed)
 
     def sample_variance(self, variance: Floats, noise: Floats) -> Floats:
         """Variance of a new sample: of the bed, of its analysis (per row) and of its survey's offset."""
@@ -279,7 +321,7 @@ class Mapper:
 def make_mapper(
     name: str, learned: Learned, method: Method, error: tuple[Floats, Floats] | None = None, **settings: Any
 ) -> Mapper:
-    """Fit one method on the stations that a treatment has learned from.
+    """Fit one method on the stations that a treatment has learned from, in the space that it learned in.
 
     Parameters
     ----------
@@ -293,11 +335,12 @@ def make_mapper(
     **settings
         Further arguments of the method's class.
     """
-    from texture.predict import make_method
+    from texture.predict import METHODS, make_method
 
-    if name == "kriging":
-        settings = {"neighbours": method.neighbours, "neighbourhood": method.neighbourhood, **settings}
-    predictor = make_method(name, learned.structure, **settings)
+    settings = {**{key: getattr(method, key) for key in METHODS[name].settings}, **settings}
+    predictor, seen = make_method(name, learned.structure, **settings), learned.seen
     with _one_blas_thread():
-        predictor.fit(learned.observations.points, learned.values, noise_variance=learned.noise, survey=learned.survey)
-    return Mapper(name, learned.treatment, learned.structure, predictor, error)
+        predictor.fit(
+            seen.points, learned.values, noise_variance=learned.noise, survey=learned.survey, drift=seen.drift
+        )
+    return Mapper(name, learned.treatment, learned.structure, predictor, error, learned.space)

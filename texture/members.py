@@ -22,6 +22,7 @@ from texture.targets import Target, cell_points
 
 if TYPE_CHECKING:
     from texture.mapping import Mapper
+    from texture.space import Seen
     from texture.structure.plane import Plane
 
 __all__ = ["MemberMaps", "check_members", "draw_members"]
@@ -107,13 +108,15 @@ def draw_members(
     cells = np.flatnonzero(target.active)
     stations = kriging.stations.points
 
-    def points_of(some: NDArray[np.int64]) -> Floats:
-        return cell_points(target, some, per_side, plane.to_metres)
+    inside = cell_points(target, cells[:1], per_side, plane.to_metres).shape[1]
 
-    inside = points_of(cells[:1]).shape[1]
+    def seen_in(some: NDArray[np.int64]) -> Seen:
+        places = cell_points(target, some, per_side, plane.to_metres)
+        return mapper.space.at(places.reshape(-1, places.shape[-1]))
+
     prior, priors, at = None, None, None
-    every = points_of(cells).reshape(-1, stations.shape[1])
-    lattice = find_lattice(every, stations)
+    every = seen_in(cells).points
+    lattice = find_lattice(every, stations) if mapper.space.flat else None
     circulant = None if lattice is None else CirculantPrior.make(mapper.structure, lattice, stations, seed)
     if circulant is not None:
         assert lattice is not None
@@ -138,12 +141,14 @@ def draw_members(
     with progress.stage("members", total=cells.size) as advance:
         for first in range(0, cells.size, at_once):
             some = cells[first : first + at_once]
-            points = points_of(some).reshape(-1, stations.shape[1])
+            seen = seen_in(some)
             here = None
             if priors is not None:
                 here = np.moveaxis(priors.read_all(first * inside, (first + some.size) * inside), 0, 2)
-            fields, mean, variance = members.predict_with_moments(points, here, small_scale=False)
-            known = members.at_station(points) >= 0
+            fields, mean, variance = members.predict_with_moments(
+                seen.points, here, small_scale=False, drift=seen.drift
+            )
+            known = members.at_station(seen.points) >= 0
             for j in range(len(numbers)):
                 own = np.ascontiguousarray(fields[:, :, j])
                 share = member_fractions(mapper, own, mean, variance, known, median)

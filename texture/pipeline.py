@@ -26,6 +26,7 @@ from texture.recipe import Recipe
 from texture.recipe.file import read_recipe
 from texture.result import Intake, Result, Validated
 from texture.second_look import second_look
+from texture.spaces import make_spaces
 from texture.stations import Stations, read_samples
 from texture.structure.plane import Plane
 from texture.targets import Target, points_per_side, read_target
@@ -145,11 +146,13 @@ def _validated(recipe: Recipe, progress: Progress, clock: Clock, before: Check |
         target, stations = _stations(recipe, progress, before)
     plane = Plane.choose(stations.table["longitude"].to_numpy(), stations.table["latitude"].to_numpy(), target.crs)
     observations = observe(stations, plain_treatment(recipe.composition).logratio, plane)
+    with clock.stage("space"), progress.stage("find what distance means"):
+        spaces = make_spaces(recipe, target, plane, observations)
     with clock.stage("fit"), progress.stage("fit the spatial structure"):
-        plain, treated = fit_candidates(observations, recipe)
+        plain, treated = fit_candidates(observations, recipe, spaces[recipe.method.name])
     with clock.stage("validate"):
-        validation = validate_methods(observations, target, plane, plain, treated, recipe, progress)
-        quantities = learn_quantities(stations, observations, validation.folds, recipe, progress)
+        validation = validate_methods(observations, target, plane, plain, treated, recipe, progress, spaces=spaces)
+        quantities = learn_quantities(stations, observations, validation.folds, recipe, progress, spaces)
     mapper = make_mapper(validation.method, validation.learned, recipe.method, validation.judged.error)
     stations = flag_stations(stations, mapper, observations)
-    return Validated(recipe, stations, target, plane, observations, mapper, validation, quantities)
+    return Validated(recipe, stations, target, plane, observations, mapper, validation, quantities, spaces)

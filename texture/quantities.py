@@ -6,7 +6,7 @@ coordinates of a composition are; what it means in its own unit comes last.
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING, cast
 
@@ -20,6 +20,7 @@ from texture.mapping import Learned, Mapper, learn_all, make_mapper
 from texture.observations import Observations
 from texture.progress import Progress
 from texture.recipe import Quantity, Recipe
+from texture.space import PLANE, Space
 from texture.targets import Target, cell_points
 from texture.treatments import Treatment
 from texture.validation.folds import Folds
@@ -140,9 +141,14 @@ class QuantityMap:
 
 
 def learn_quantities(
-    stations: Stations, observations: Observations, folds: Folds, recipe: Recipe, progress: Progress
+    stations: Stations,
+    observations: Observations,
+    folds: Folds,
+    recipe: Recipe,
+    progress: Progress,
+    spaces: Mapping[str, Space] | None = None,
 ) -> tuple[QuantityModel, ...]:
-    """Fit every quantity of the recipe and hold its stations out in the folds of the composition.
+    """Fit every quantity of the recipe and hold its stations out in the folds of the composition, each method in its space.
 
     Raises
     ------
@@ -153,7 +159,8 @@ def learn_quantities(
         return ()
     methods = tuple(dict.fromkeys((recipe.method.name, *recipe.validation.compare)))
     with progress.stage("further numbers", total=len(recipe.quantities) * len(methods)) as advance:
-        return tuple(_learn(q, stations, observations, folds, recipe, methods, advance) for q in recipe.quantities)
+        places: dict[str, Space] = {name: (spaces or {}).get(name, PLANE) for name in methods}
+        return tuple(_learn(q, stations, observations, folds, recipe, places, advance) for q in recipe.quantities)
 
 
 def _learn(
@@ -162,7 +169,7 @@ def _learn(
     observations: Observations,
     folds: Folds,
     recipe: Recipe,
-    methods: tuple[str, ...],
+    spaces: Mapping[str, Space],
     advance: Callable[[int], None],
 ) -> QuantityModel:
     from texture.stations.quantities import width_name
@@ -183,15 +190,19 @@ def _learn(
         )
     some = observations.take(known)
     treatment = cast(Treatment, column)  # what learning and mapping ask of a treatment, the column has
-    learned = learn_all([(treatment, some, None)], recipe.method)[0]
     pairs = [(train, test) for train, test in own.pairs() if train.size >= FEWEST]
-    inside = learn_all([(treatment, some.take(train), learned.structure) for train, _ in pairs], recipe.method)
+    found: dict[int, tuple[Learned, list[Learned]]] = {}
     held_out = []
-    for name in methods:
+    for name, space in spaces.items():
+        if id(space) not in found:
+            whole = learn_all([(treatment, some, None)], recipe.method, space)[0]
+            tasks = [(treatment, some.take(train), whole.structure) for train, _ in pairs]
+            found[id(space)] = whole, learn_all(tasks, recipe.method, space)
+        learned, inside = found[id(space)]
         held_out.append(_hold_out(name, learned, pairs, inside, recipe, observations.count, known, measured))
         advance(1)
     reach_m = validated_reach_m(own.held_out_distances(some.points))
-    mapper = make_mapper(recipe.method.name, learned, recipe.method)
+    mapper = make_mapper(recipe.method.name, found[id(spaces[recipe.method.name])][0], recipe.method)
     return QuantityModel(quantity, mapper, some.points, measured, tuple(held_out), reach_m)
 
 

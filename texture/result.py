@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections import Counter
+from collections.abc import Mapping
 from dataclasses import dataclass, field
 from functools import cached_property
 from pathlib import Path
@@ -10,6 +11,8 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 from numpy.typing import NDArray
+
+from texture.space import own_ranges, space_line, space_record
 
 if TYPE_CHECKING:
     from texture.bed import Bed, Moved, Stock
@@ -21,6 +24,7 @@ if TYPE_CHECKING:
     from texture.quantities import QuantityMap, QuantityModel
     from texture.recipe import Recipe
     from texture.second_look import SecondLook
+    from texture.space import Space
     from texture.stations import Stations
     from texture.structure.plane import Plane
     from texture.targets import Target
@@ -72,6 +76,7 @@ class Validated:
     mapper: Mapper
     validation: Validation
     quantities: tuple[QuantityModel, ...] = ()
+    spaces: Mapping[str, Space] = field(default_factory=dict)
     files: tuple[Path, ...] = ()
 
     @property
@@ -111,7 +116,7 @@ class Validated:
     def summary(self) -> dict[str, Any]:
         """Counts, scores and files."""
         return {**self.stations.counts, "folds": self.validation.folds.count, "zeros": self.mapper.treatment.label,
-                "scores": self.scores(),
+                "space": space_record(self.mapper.space), "scores": self.scores(),
                 "files": [p.name for p in self.files]}  # fmt: skip
 
     def summary_lines(self) -> list[str]:
@@ -120,6 +125,7 @@ class Validated:
         return [
             *lines,
             *zeros_lines(self),
+            *distance_lines(self),
             *error_lines(self),
             *quantity_lines(self),
             *written_line(self.recipe, self.files),
@@ -198,6 +204,7 @@ class Result:
             **self.found.stations.counts,
             "cells": int(self.found.target.active.sum()),
             "zeros": self.found.mapper.treatment.label,
+            "space": space_record(self.found.mapper.space),
             "scores": self.found.scores(),
             "share_beyond_samples": self.beyond_share,
             "share_of_mass_below_samples": account.share_below_samples,
@@ -230,6 +237,7 @@ class Result:
             found.recipe.title,
             *rows_lines(found.stations),
             *zeros_lines(found),
+            *distance_lines(found),
             *structure_lines(found),
             *error_lines(found),
             *quantity_lines(found),
@@ -311,8 +319,17 @@ def structure_lines(found: Validated) -> list[str]:
         lines.append(
             f"  {head:<11} {name}: {model}, range {covariance.range_m / 1000:.1f} km, sill "
             f"{sum(s.sill for s in covariance.structures):.2f}, small-scale {covariance.small_scale:.2f}"
+            + "".join(f"; range of {n} {r:.2g} sd" for n, r in own_ranges(found.mapper.space, covariance).items())
         )
     return lines
+
+
+def distance_lines(found: Validated) -> list[str]:
+    """Say what distance means where it is not plain, and every note of the spaces that methods work in."""
+    space = found.mapper.space
+    told = [space_line(space)] if space_line(space) != "in the plane" else []
+    told += dict.fromkeys(note for s in (space, *found.spaces.values()) for note in s.notes)
+    return [f"  {'distance' if i == 0 else '':<11} {text}" for i, text in enumerate(told)]
 
 
 def zeros_lines(found: Validated) -> list[str]:

@@ -51,7 +51,8 @@ def second_look(mapper: Mapper, places: NDArray[np.float64], seed: int) -> Secon
     from texture.predict.honesty import neighbourhood_honesty
     from texture.predict.second_opinion import second_opinion
 
-    opinion = second_opinion(mapper.predictor, places, seed=seed)
+    seen = mapper.space.at(places)
+    opinion = second_opinion(mapper.predictor, seen.points, seed=seed, drift=seen.drift)
     if not opinion.agrees:
         raise StructureError(f"{opinion}; the map was not written, please report this")
-    return SecondLook(opinion, neighbourhood_honesty(mapper.predictor, places, seed=seed))
+    return SecondLook(opinion, neighbourhood_honesty(mapper.predictor, seen.points, seed=seed, drift=seen.drift))

@@ -11,11 +11,12 @@ import numpy as np
 from numpy.typing import NDArray
 
 from texture.choosing import LimitEffect, Tried, choose, limit_effect, with_columns_of
-from texture.mapping import Learned, learn_each, make_mapper
+from texture.mapping import Learned, columns_in, learn, learn_each, make_mapper
 from texture.observations import Observations
 from texture.progress import Progress
 from texture.recipe import Recipe
 from texture.scoring import Judge, Judged
+from texture.space import PLANE, Space
 from texture.validation.choice import Standing, rank_methods
 from texture.validation.columns import Columns
 from texture.validation.folds import Folds, make_folds
@@ -117,6 +118,7 @@ def validate_methods(
     recipe: Recipe,
     progress: Progress,
     journal: Journal | None = None,
+    spaces: Mapping[str, Space] | None = None,
 ) -> Validation:
     """Cross-validate the recipe's method with each treatment of zeros, and those it is compared with, on the same folds.
 
@@ -134,6 +136,8 @@ def validate_methods(
     recipe : Recipe
     progress : Progress
     journal : Journal, optional
+    spaces : mapping of str to Space, optional
+        Where each method takes distance; the plane where it is not named. In each space structure is fitted anew.
     """
     from texture.predict import METHODS
 
@@ -148,7 +152,10 @@ def validate_methods(
     judge = Judge(recipe.composition.parts, scored, folds.labels, weights, limit)
     own = recipe.method.name
     compared = [n for n in dict.fromkeys(recipe.validation.compare) if n != own]
-    runs = [(own, learned) for learned in treated] + [(name, plain) for name in compared]
+    runs = [(own, learned) for learned in treated] + [
+        (name, _plain_in((spaces or {}).get(name, PLANE), plain, recipe, METHODS[name].needs_covariance))
+        for name in compared
+    ]
     with progress.stage(f"validate {len(runs)} × {folds.count} folds", total=len(runs) * folds.count) as advance:
         bench = _Bench(recipe, plain, folds, journal or Forgets(), advance)
         judged = []
@@ -178,6 +185,16 @@ def validate_methods(
         standings,
         block_m,
     )
+
+
+def _plain_in(space: Space, plain: Learned, recipe: Recipe, fit: bool) -> Learned:
+    """The plain treatment in a method's own space."""
+    if space is plain.space:
+        return plain
+    if fit:
+        return learn(plain.treatment, plain.observations, recipe.method, space=space)
+    values, noise = columns_in(space, plain.treatment, plain.observations)
+    return replace(plain, values=values, noise=noise, space=space)
 
 
 def _standings(methods: list[HeldOut], weights: ScoreWeights) -> list[Standing]:
@@ -240,16 +257,16 @@ class _Bench:
                 (learned.treatment, learned.observations.take(train), self._start(learned, fold))
                 for train, fold in zip(trains, folds, strict=True)
             ]
-            yield from learn_each(tasks, self.recipe.method)
+            yield from learn_each(tasks, self.recipe.method, learned.space)
             return
         for train in trains:
             stations = learned.observations.take(train)
-            values, noise = learned.treatment.columns(stations)
+            values, noise = columns_in(learned.space, learned.treatment, stations)
             yield replace(learned, observations=stations, values=values, noise=noise)
 
     def _start(self, learned: Learned, fold: int) -> CovarianceSet:
         first = self.plain_structures.get(fold)
-        if first is None:
+        if first is None or learned.space is not self.plain.space:
             return learned.structure
         return with_columns_of(learned.structure, learned, self.plain, first)
 

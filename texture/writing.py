@@ -11,6 +11,7 @@ import numpy as np
 
 from texture.ensemble import write_ensemble
 from texture.result import Intake, Result, Validated
+from texture.space import PLANE, space_record
 from texture.writing_bed import write_bed
 
 if TYPE_CHECKING:
@@ -75,6 +76,7 @@ def write_all(result: Result, folder: ResultFolder, recipe_path: Path, maps: Mem
                 if found.quantities
                 else {}
             ),
+            space={name: space_record(space) for name, space in found.spaces.items() if space != PLANE},
             **(result.look.to_dict() if result.look is not None else {}),
         )
         write_json(aside / "provenance.json", record)
@@ -87,7 +89,7 @@ def input_files(recipe: Recipe) -> list[Path]:
         *(s.file for s in recipe.samples), *(s.join.file for s in recipe.samples if s.join), recipe.target.file,
         recipe.target.land, recipe.outputs.names, recipe.outputs.into,
         *(p for p in ((recipe.rim.sides, recipe.rim.parent, recipe.rim.parent_names) if recipe.rim else ()) if isinstance(p, Path)),
-        *(m.file for m in recipe.mobility),
+        *(c.file for c in recipe.method.covariates), *(m.file for m in recipe.mobility),
         *(v for m in recipe.mobility for v in (m.orbital_velocity_m_s, m.period_s, m.current_m_s, m.depth_m) if isinstance(v, Path)),
     )  # fmt: skip
     return list(dict.fromkeys(p for p in paths if p is not None))

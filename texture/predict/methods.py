@@ -49,18 +49,37 @@ class Method:
         Makes an unfitted predictor; the first argument is the covariance, None where it is not needed.
     needs_covariance : bool
     has_variance : bool
+    settings : tuple of str
+        What of a recipe's `[method]` it is made with.
+    distance : {"plane", "in_water", "with_covariates"}
+        The space that it sees places in.
+    drift : bool
+        Whether its mean follows drift columns.
     """
 
     make: Callable[..., Predictor]
     needs_covariance: bool
     has_variance: bool
+    settings: tuple[str, ...] = ()
+    distance: str = "plane"
+    drift: bool = False
+
+
+def _kriging(distance: str = "plane", drift: bool = False) -> Method:
+    def make(covariance: Any, **settings: Any) -> Predictor:
+        return Kriging(covariance, **settings)
+
+    return Method(make, True, True, ("neighbours", "neighbourhood"), distance, drift)
 
 
 METHODS: dict[str, Method] = {
     "mean": Method(lambda covariance, **settings: WholeMean(**settings), False, False),
     "nearest": Method(lambda covariance, **settings: Nearest(**settings), False, False),
     "inverse_distance": Method(lambda covariance, **settings: InverseDistance(**settings), False, False),
-    "kriging": Method(lambda covariance, **settings: Kriging(covariance, **settings), True, True),
+    "kriging": _kriging(),
+    "kriging_in_water": _kriging("in_water"),
+    "kriging_with_covariates": _kriging("with_covariates"),
+    "kriging_with_drift": _kriging(drift=True),
 }
 
 

@@ -8,6 +8,7 @@ with its overrides into the tree.
 from texture.recipe.bed import Bed, Layer, WaterSettings
 from texture.recipe.classes import BedClass, Erosion, Grain, Packing, WaterColumn
 from texture.recipe.composition import Composition
+from texture.recipe.covariate import Covariate
 from texture.recipe.ensemble import Ensemble
 from texture.recipe.intake import Intake, Void
 from texture.recipe.inventory import Inventory
@@ -27,6 +28,7 @@ __all__ = [
     "Bed",
     "BedClass",
     "Composition",
+    "Covariate",
     "Ensemble",
     "Erosion",
     "Grain",

@@ -2,15 +2,26 @@
 
 from __future__ import annotations
 
-from typing import Annotated, Literal
+from typing import Annotated, Any, Literal
 
-from pydantic import Field
+from pydantic import Field, model_validator
 
-from texture.recipe.settings import Settings
+from texture.recipe.covariate import Covariate
+from texture.recipe.settings import Settings, check_names
 
 __all__ = ["Method", "MethodName"]
 
-MethodName = Literal["mean", "nearest", "inverse_distance", "kriging"]
+MethodName = Literal[
+    "mean",
+    "nearest",
+    "inverse_distance",
+    "kriging",
+    "kriging_in_water",
+    "kriging_with_covariates",
+    "kriging_with_drift",
+]
+KRIGING_BY = {"plane": "kriging", "in_water": "kriging_in_water", "with_covariates": "kriging_with_covariates"}
+"""What `name = "kriging"` means with each distance."""
 
 
 class Method(Settings):
@@ -21,7 +32,64 @@ class Method(Settings):
     neighbourhood: Literal["tile", "nearest"] = Field(
         "tile", description="one neighbourhood for each small tile, or exactly `neighbours` for each point"
     )
+    distance: Literal["plane", "in_water", "with_covariates"] = Field(
+        "plane",
+        description="how far apart two places are: in the plane, along the shortest way around land, or in the plane with the "
+        "covariates as further coordinates, each with a range of its own",
+    )
+    covariates: tuple[Covariate, ...] = Field(
+        (), description="what the bed may follow beside place; used by kriging_with_covariates and kriging_with_drift"
+    )
+    drift: tuple[str, ...] = Field(
+        (), description='covariates, or "x" and "y", that the mean follows linearly; all covariates if absent'
+    )
     fit: Literal["likelihood", "variogram"] = Field("likelihood", description="how the covariance is fitted")
     estimate: Literal["mean", "median"] = Field(
         "mean", description="expected fraction, or back-transform of the kriged coordinates"
     )
+
+    @model_validator(mode="before")
+    @classmethod
+    def _one_name(cls, given: Any) -> Any:
+        """`name = "kriging"` with another distance, or with drift, is the method of that name."""
+        if not isinstance(given, dict):
+            return given
+        name, distance = given.get("name", "kriging"), given.get("distance")
+        if name == "kriging" and distance in KRIGING_BY:
+            name = KRIGING_BY[distance]
+        if name == "kriging" and given.get("drift"):
+            name = "kriging_with_drift"
+        own = next((d for d, n in KRIGING_BY.items() if n == name), "plane")
+        if distance in KRIGING_BY and distance != own:
+            raise ValueError(f'distance = "{distance}" acts with name = "{KRIGING_BY[distance]}", found "{name}"')
+        return {**given, "name": name, "distance": own} if distance in (None, *KRIGING_BY) else given
+
+    @model_validator(mode="after")
+    def _agrees(self) -> Method:
+        names = tuple(c.name for c in self.covariates)
+        for name in names:
+            if names.count(name) > 1:
+                raise ValueError(f'covariates: the name "{name}" is given twice')
+        check_names("drift", dict.fromkeys(self.drift, 0.0), ("x", "y", *names))
+        if len(set(self.drift)) < len(self.drift):
+            raise ValueError(f"drift: found {list(self.drift)}, expected each name once")
+        return self
+
+    def check_used(self, names: tuple[str, ...]) -> None:
+        """See that the methods of a run have the covariates they need, and that none is given in vain."""
+        if self.fit == "variogram" and "kriging_with_covariates" in names:
+            raise ValueError(
+                'method.fit = "variogram" knows one distance only; covariates as coordinates need fit = "likelihood"'
+            )
+        for name in names:
+            if name == "kriging_with_covariates" and not self.covariates:
+                raise ValueError(f'method "{name}" needs [[method.covariates]], such as name = "depth"')
+            if name == "kriging_with_drift" and not (self.covariates or self.drift):
+                raise ValueError(f'method "{name}" needs method.drift = ["x", "y"] or [[method.covariates]]')
+        if self.covariates and not {"kriging_with_covariates", "kriging_with_drift"} & set(names):
+            raise ValueError(
+                'method.covariates are given, but no method takes them; set method.distance = "with_covariates", or '
+                'put "kriging_with_covariates" into validation.compare'
+            )
+        if self.drift and "kriging_with_drift" not in names:
+            raise ValueError('method.drift acts with name = "kriging_with_drift", or with that in validation.compare')

@@ -64,6 +64,7 @@ class Recipe(Settings):
             if conditions.count(name) > 1:
                 raise ValueError(f'mobility: the name "{name}" is given twice')
         self._check_quantities()
+        self.method.check_used((self.method.name, *self.validation.compare))
         if self.rim is not None and self.rim.classes is not None:
             check_names("rim.classes", self.rim.classes, classes)
         if self.rim is not None and self.rim.composition is not None:

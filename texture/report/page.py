@@ -15,6 +15,7 @@ from texture.report.maps import EVIDENCE_COLOURS, Layer, draw_maps
 from texture.report.members import members_picture
 from texture.report.quantities import quantity_picture, quantity_table
 from texture.report.tables import page_tables
+from texture.space import own_ranges, space_line
 
 if TYPE_CHECKING:
     from texture.result import Result
@@ -171,8 +172,18 @@ def _method_line(result: Result) -> str:
     return (
         f"{found.target.name}: {found.target.size_text}, {wet:,} of them water, about "
         f"{found.cell_side_m:,.0f} m wide. Method: {found.recipe.method.name.replace('_', ' ')} of "
-        f"{', '.join(found.mapper.column_names)}; zeros: {found.mapper.treatment.label}; {inside} point{'s' * (inside > 1)} a cell."
+        f"{', '.join(found.mapper.column_names)}; distance {_distance(result)}; zeros: {found.mapper.treatment.label}; {inside} point{'s' * (inside > 1)} a cell."
     )
+
+
+def _distance(result: Result) -> str:
+    """What distance means, and how far each covariate reaches."""
+    mapper = result.found.mapper
+    text = space_line(mapper.space)
+    for name, covariance in zip(mapper.column_names, mapper.structure, strict=True):
+        ranges = ", ".join(f"{c} {r:.2g}" for c, r in own_ranges(mapper.space, covariance).items())
+        text += f"; ranges of {name} in standard deviations: {ranges}" if ranges else ""
+    return text
 
 
 def _map_notes(result: Result) -> list[str]:
@@ -182,6 +193,8 @@ def _map_notes(result: Result) -> list[str]:
         "further than any held-out station was predicted from; it is flagged as extrapolated."
     ]
     notes += [f"{n[0].upper()}{n[1:]}." for n in found.target.notes]
+    spaces = dict.fromkeys(n for s in found.spaces.values() for n in s.notes)
+    notes += [f"{n[0].upper()}{n[1:]}." for n in spaces]
     notes += (
         ["Outer edge of the grid: " + "; ".join(str(o) for o in found.target.openings) + "."]
         if found.target.openings

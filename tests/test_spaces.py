@@ -1,0 +1,147 @@
+"""Covariates, drift and distance through water from the recipe to the page."""
+
+from __future__ import annotations
+
+import json
+import tomllib
+
+import numpy as np
+import pytest
+import tomli_w
+import xarray as xr
+
+from texture import build
+from texture.errors import RecipeError
+from texture.recipe.file import read_recipe
+from texture.spaces import missing_note
+
+
+@pytest.fixture
+def bay(small):
+    """The small recipe with a spit of land from the south, and a covariate that covers only its west."""
+    import geopandas
+    import shapely
+
+    spit = shapely.box(504_800.0, 4_899_000.0, 505_200.0, 4_904_500.0)
+    geopandas.GeoDataFrame(geometry=[spit], crs="EPSG:32626").to_file(small.parent / "coast.geojson", driver="GeoJSON")
+    settings = tomllib.loads(small.read_text())
+    settings["target"]["land"] = "coast.geojson"
+    settings["composition"] = {"zeros": "replace"}
+    values = np.add.outer(np.arange(12.0), np.arange(20.0))
+    values[:, 16:] = np.nan
+    xr.Dataset({"slope": (("y", "x"), values)}).to_netcdf(small.parent / "slope.nc")
+    small.write_text(tomli_w.dumps(settings))
+    return small
+
+
+def change(recipe, **method):
+    settings = tomllib.loads(recipe.read_text())
+    settings["method"] = method
+    recipe.write_text(tomli_w.dumps(settings))
+
+
+@pytest.mark.parametrize(
+    ("method", "name"),
+    [
+        ({}, "kriging"),
+        ({"distance": "in_water"}, "kriging_in_water"),
+        ({"distance": "with_covariates", "covariates": [{"name": "depth"}]}, "kriging_with_covariates"),
+        ({"drift": ["x", "y"]}, "kriging_with_drift"),
+        ({"name": "kriging_in_water"}, "kriging_in_water"),
+    ],
+)
+def test_one_name_for_each_way(small, method, name):
+    change(small, **method)
+    recipe = read_recipe(small)
+    assert recipe.method.name == name
+    # What was resolved reads back as the same.
+    change(small, **{k: v for k, v in recipe.method.model_dump(mode="json").items() if v is not None and k != "covariates"},
+           covariates=method.get("covariates", []))  # fmt: skip
+    assert read_recipe(small).method == recipe.method
+
+
+@pytest.mark.parametrize(
+    ("method", "message"),
+    [
+        (
+            {"name": "nearest", "distance": "in_water"},
+            'distance = "in_water" acts with name = "kriging_in_water", found "nearest"',
+        ),
+        ({"distance": "with_covariates"}, r"needs \[\[method.covariates\]\]"),
+        ({"covariates": [{"name": "depth"}]}, "no method takes them"),
+        ({"name": "kriging_with_drift"}, "needs method.drift"),
+        ({"covariates": [{"name": "slope"}]}, '"slope": file is missing'),
+        ({"covariates": [{"name": "depth"}], "drift": ["dept"]}, 'unknown name "dept"; did you mean "depth"'),
+        ({"covariates": [{"name": "depth", "variable": "h"}], "drift": ["x"]}, "names one of a NetCDF file"),
+        (
+            {"covariates": [{"name": "depth"}], "distance": "with_covariates", "fit": "variogram"},
+            "knows one distance only",
+        ),
+    ],
+)
+def test_settings_that_disagree_are_told(small, method, message):
+    change(small, **method)
+    with pytest.raises(RecipeError, match=message):
+        read_recipe(small)
+
+
+def test_both_tables_of_methods_have_the_same_names():
+    from typing import get_args
+
+    from texture.predict import METHODS
+    from texture.recipe import MethodName
+
+    assert set(METHODS) == set(get_args(MethodName))
+
+
+def test_missing_is_told_in_one_line():
+    assert missing_note("slope", 0, 9, 0, 100) == ""
+    assert missing_note("slope", 2, 9, 7, 100).startswith('covariate "slope": 2 of 9 stations have no value')
+
+
+@pytest.mark.slow
+def test_covariates_with_holes_leave_no_hole_in_the_bed(bay):
+    change(
+        bay, distance="with_covariates", covariates=[{"name": "slope", "file": "slope.nc"}, {"name": "shore_distance"}]
+    )
+    result = build(bay, validation={"count": 3, "compare": ["nearest", "kriging_in_water", "kriging_with_drift"]})
+    found = result.found
+    out = found.recipe.output
+    with xr.open_dataset(out / "texture.nc", mask_and_scale=False) as texture:
+        wet = found.target.active.reshape(found.target.shape)
+        assert np.isfinite(texture["mud_fraction"].to_numpy()[wet]).all()
+        far = np.zeros(found.target.shape, dtype=bool)
+        far[:, 18:] = True  # two cells and more from the last value
+        assert (texture["evidence"].to_numpy()[wet & far] == 6).all()
+        assert (texture["evidence"].to_numpy()[:, :16][wet[:, :16]] != 6).all()
+    record = json.loads((out / "provenance.json").read_text())
+    assert set(record["space"]) == {"kriging_with_covariates", "kriging_in_water", "kriging_with_drift"}
+    assert record["space"]["kriging_in_water"]["in_water"]["dimensions"] >= 2
+    assert [c["name"] for c in record["space"]["kriging_with_covariates"]["covariates"]] == ["slope", "shore_distance"]
+    assert any(item["file"] == "slope.nc" for item in record["inputs"])
+    page = (out / "report.html").read_text()
+    assert "slope, shore_distance as further coordinates" in page
+    assert "cells have none: the nearest value stands in" in page
+    assert "4 dimensions" in str(result.look.opinion)
+    assert {m.method for m in found.validation.methods} == {
+        "kriging_with_covariates", "nearest", "kriging_in_water", "kriging_with_drift",
+    }  # fmt: skip
+    # A station without the covariate informs nothing in its own method, and everything in the others.
+    learned = found.validation.learned
+    lacks = learned.seen.missing
+    assert 0 < lacks.sum() < lacks.size
+    assert np.isnan(learned.values[lacks]).all()
+    assert np.isfinite(learned.values[~lacks]).any(axis=1).all()
+
+
+@pytest.mark.slow
+def test_water_that_is_not_connected_falls_back_to_the_plane_and_says_so(bay):
+    import geopandas
+    import shapely
+
+    wall = shapely.box(504_800.0, 4_899_000.0, 505_200.0, 4_910_000.0)
+    geopandas.GeoDataFrame(geometry=[wall], crs="EPSG:32626").to_file(bay.parent / "coast.geojson", driver="GeoJSON")
+    result = build(bay, method={"distance": "in_water"}, validation={"count": 3, "compare": ["nearest"]})
+    assert result.found.mapper.space.ground is None
+    assert "the water is not connected" in repr(result)
+    assert "distance in the plane is taken instead" in (result.found.recipe.output / "report.html").read_text()
