@@ -25,6 +25,7 @@ FULL = {
     "kriging kernel, clustered stations": ["benchmarks.kernel", "--layout", "clusters", "--skip-pykrige"],
     "a million compositions": ["benchmarks.composition"],
     "reading spreadsheets": ["benchmarks.intake"],
+    "a bed of ten million cells": ["benchmarks.build"],
 }
 QUICK = {
     "kriging kernel against PyKrige's moving window": ["benchmarks.kernel", "--cells", "200000", "--stations", "5000"],

@@ -20,6 +20,7 @@ if TYPE_CHECKING:
 __all__ = ["Estimate", "estimate_on"]
 
 Floats = NDArray[np.float64]
+Singles = NDArray[np.float32]
 
 QUANTILES = (0.05, 0.5, 0.95)
 CELLS_AT_ONCE = 20_000  # bounds the memory of the points inside cells to some tens of megabytes
@@ -29,6 +30,9 @@ SUPPORTED, EXTRAPOLATED, WIDER = 1, 2, 6  # of `texture.bed.EVIDENCE`
 @dataclass(frozen=True, eq=False)
 class Estimate:
     """The map as flat arrays over all cells of the target; NaN (or 0) outside active cells.
+
+    Fractions are in double precision, since they have to sum to one; the rest is rounded to single, which is far finer than it
+    is known and halves its memory.
 
     Attributes
     ----------
@@ -47,12 +51,12 @@ class Estimate:
     """
 
     fractions: Floats
-    quantiles: Floats
-    mean: Floats
-    variance: Floats
+    quantiles: Singles
+    mean: Singles
+    variance: Singles
     evidence: NDArray[np.int8]
     texture_class: NDArray[np.int8]
-    class_probability: Floats
+    class_probability: Singles
 
 
 def estimate_on(
@@ -87,11 +91,11 @@ def estimate_on(
     cells = np.flatnonzero(target.active)
     parts, d = mapper.logratio.n_parts, len(mapper.column_names)
     n = target.n_cells
-    fractions, quantiles = np.full((n, parts), np.nan), np.full((len(QUANTILES), n, parts), np.nan)
-    mean, variance = np.full((n, d), np.nan), np.full((n, d), np.nan)
+    fractions, quantiles = np.full((n, parts), np.nan), np.full((len(QUANTILES), n, parts), np.nan, dtype=np.float32)
+    mean, variance = np.full((2, n, d), np.nan, dtype=np.float32)
     evidence, classes = np.zeros(n, dtype=np.int8), np.zeros(n, dtype=np.int8)
-    probability = np.full(n, np.nan)
-    averaging = averaged_out(np.sqrt(np.nan_to_num(target.area_m2)), sampling_distance_m(stations))
+    probability = np.full(n, np.nan, dtype=np.float32)
+    apart_m = sampling_distance_m(stations)
     with progress.stage("estimate", total=cells.size) as advance:
         for start in range(0, cells.size, CELLS_AT_ONCE):
             some = cells[start : start + CELLS_AT_ONCE]
@@ -101,9 +105,11 @@ def estimate_on(
             back = mapper.back(m) if median else mapper.expected(m, v)
             fractions[some] = back.reshape(*shape, parts).mean(axis=1)
             fractions[some] /= fractions[some].sum(axis=1, keepdims=True)
-            mean[some], variance[some] = m.reshape(*shape, d).mean(axis=1), v.reshape(*shape, d).mean(axis=1)
-            quantiles[:, some] = mapper.cell_quantiles(mean[some], variance[some], QUANTILES, averaging[some])
-            classes[some], probability[some] = mapper.likely_class(mean[some], variance[some])
+            m, v = m.reshape(*shape, d).mean(axis=1), v.reshape(*shape, d).mean(axis=1)
+            mean[some], variance[some] = m, v
+            averaging = averaged_out(np.sqrt(np.nan_to_num(target.area_m2[some])), apart_m)
+            quantiles[:, some] = mapper.cell_quantiles(m, v, QUANTILES, averaging)
+            classes[some], probability[some] = mapper.likely_class(m, v)
             centre = inside.mean(axis=1)
             evidence[some] = np.where(beyond_reach(centre, stations, reach_m), EXTRAPOLATED, SUPPORTED)
             fell_back = rung.reshape(*shape).max(axis=1) > 0

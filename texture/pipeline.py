@@ -112,7 +112,7 @@ def build(
                                progress, median=recipe.method.estimate == "median")  # fmt: skip
         quantities = map_quantities(found.quantities, target, found.plane, per_side, progress)
     with clock.stage("second look"), progress.stage("second look"):
-        look = second_look(mapper, found.cell_centres, recipe.seed)
+        look = second_look(mapper, found.some_centres(20_000), recipe.seed)
     with clock.stage("bed"):
         rim = read_rim(recipe, target)
         bed = make_bed(estimate.fractions, estimate.evidence, target, recipe.bed, recipe.rim, recipe.composition.parts,

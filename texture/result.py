@@ -89,10 +89,11 @@ class Validated:
         """Side of a square of the median water cell's area."""
         return float(np.sqrt(np.median(self.target.area_m2[self.target.active])))
 
-    @cached_property
-    def cell_centres(self) -> Floats:
-        """Water cells in the plane, shape (cells, 2)."""
-        wet = self.target.active
+    def some_centres(self, count: int) -> Floats:
+        """Centres of a seeded choice of water cells in the plane, shape (cells, 2); all of them where there are no more."""
+        wet = np.flatnonzero(self.target.active)
+        if wet.size > count:
+            wet = np.sort(np.random.default_rng(self.recipe.seed).choice(wet, count, replace=False))
         return self.plane.to_metres(self.target.longitude[wet], self.target.latitude[wet])
 
     @property

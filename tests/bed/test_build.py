@@ -152,7 +152,7 @@ def test_mixture_stress_needs_all_classes():
 def test_groups_of_cells_change_nothing(monkeypatch):
     target = coast()
     whole = make_bed(*random_map(target), target, settings_of(STRONG), SOUTH)
-    monkeypatch.setattr("texture.bed.build.CELLS_AT_ONCE", 5)
+    monkeypatch.setattr("texture.bed.bed.CELLS_AT_ONCE", 5)
     parts = make_bed(*random_map(target), target, settings_of(STRONG), SOUTH)
     for name in ("class_fraction", "class_mass_content", "porosity", "critical_stress_for_erosion"):
         np.testing.assert_array_equal(getattr(parts, name), getattr(whole, name))

@@ -44,7 +44,9 @@ def test_unreachable_land_is_said():
         name = "loose cells"
         active = np.array([True, True, False])
         edges = np.array([[0, 1]])
-        edge_length_m = np.array([1.0])
+
+        def distance_m(self, pairs):
+            return np.ones(len(pairs))
 
     with pytest.raises(BedError, match="1 land cells of loose cells touch no water"):
         nearest_water(Loose())

@@ -10,6 +10,7 @@ from hypothesis import strategies as st
 from texture.errors import TargetError
 from texture.recipe import TargetSettings
 from texture.targets import cell_points, points_per_side, read_target
+from texture.targets.corners import AxisCorners
 
 
 def raster(**changes):
@@ -46,7 +47,7 @@ def test_area_equals_the_geodesic_polygon():
 def test_neighbours_of_a_small_grid():
     target = raster()
     assert sorted(map(tuple, target.edges.tolist())) == [(0, 1), (0, 3), (1, 2), (1, 4), (2, 5), (3, 4), (4, 5)]
-    np.testing.assert_allclose(target.edge_length_m, 1000.0, rtol=1e-3)  # the projection's scale is 0.9996
+    np.testing.assert_allclose(target.distance_m(target.edges), 1000.0, rtol=1e-3)  # the projection's scale is 0.9996
 
 
 def test_geographic_raster():
@@ -106,3 +107,13 @@ def test_mistakes(changes, words):
 
 def test_repr_says_what_it_is():
     assert "raster, 2 × 3 cells (6 water), about 1,000 m" in repr(raster())
+
+
+@pytest.mark.parametrize(("x", "y"), [([0.0, 1.0, 2.0], [5.0, 4.0]), ([2.0, 1.0, 0.0], [4.0, 5.0])])
+def test_corners_are_counter_clockwise_whichever_way_the_axes_run(x, y):
+    corners = AxisCorners(pyproj.Transformer.from_crs(4326, 4326, always_xy=True), np.array(x), np.array(y))
+    lon, lat = corners.of(slice(None))
+    assert corners.count == 2
+    assert (lon * np.roll(lat, -1, axis=1) - np.roll(lon, -1, axis=1) * lat).sum(axis=1).tolist() == [2.0, 2.0]
+    assert lon.min(axis=1).tolist() == sorted([0.0, 1.0], reverse=x[0] > x[1])
+    assert corners.bounds == (0.0, 4.0, 2.0, 5.0)

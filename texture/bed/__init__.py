@@ -1,6 +1,7 @@
 """From a map of parts to a bed that a model can start from: grains, layers, rim, land."""
 
-from texture.bed.build import EVIDENCE, Account, Bed, make_bed, strength_known
+from texture.bed.bed import EVIDENCE, Account, Bed
+from texture.bed.build import make_bed, strength_known
 from texture.bed.classes import ClassProperties, class_properties
 from texture.bed.hiding import HIDING_WORDS
 from texture.bed.inventory import Stock

@@ -2,16 +2,14 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Sequence
-from dataclasses import dataclass, field
-from typing import Any
+from collections.abc import Sequence
 
 import numpy as np
 from numpy.typing import NDArray
 
+from texture.bed.bed import Account, Bed, in_blocks
 from texture.bed.cells import Bools, Cells, Floats
 from texture.bed.classes import ClassProperties, class_properties
-from texture.bed.hiding import hiding_factor
 from texture.bed.land import nearest_water
 from texture.bed.layers import (
     close_classes,
@@ -22,121 +20,22 @@ from texture.bed.layers import (
     layer_thickness,
     to_classes,
 )
-from texture.bed.mixture import geometric_mean_diameter, mean_critical_stress, median_diameter
+from texture.bed.mixture import median_diameter
 from texture.bed.mixture_packing import Packer, packer
 from texture.bed.rim import blend, rim_weight
-from texture.bed.roughness import skin_roughness_length
 from texture.bed.water import Water
 from texture.errors import BedError
 from texture.recipe import Bed as BedSettings
 from texture.recipe import Rim
 
-__all__ = ["EVIDENCE", "Account", "Bed", "make_bed", "strength_known"]
+__all__ = ["make_bed", "strength_known"]
 
 Flags = NDArray[np.int8]
-
-EVIDENCE = {
-    0: "not in the map",
-    1: "supported by samples",
-    2: "extrapolated",
-    3: "rim",
-    4: "filled under land",
-    5: "given by the user",
-    6: "wider fall-back",
-}
-"""Where a cell's bed comes from."""
 
 SUM_TOLERANCE = 1e-6
 """Sums of the map's parts further from 1 than this are a mistake upstream, not rounding."""
 
-CELLS_AT_ONCE = 100_000
-"""Keeps what is between the steps within some tens of megabytes, whatever the size of the grid."""
-
 RIM, LAND, SAME, GIVEN = 3, 4, 2, 5
-
-
-@dataclass(frozen=True)
-class Account:
-    """What the bed's making did to its mass, for the printed summary.
-
-    Attributes
-    ----------
-    tonnes : dict
-        Dry mass of each class in water cells, all layers.
-    rim_tonnes : dict
-        What the rim put in (positive) or took out (negative) of each class.
-    least_fraction_tonnes : dict
-        What `least_fraction` took out of each class.
-    share_below_samples : float
-        Share of the bed's mass in layers below the first, where no sample was taken.
-    rim_cells, land_cells : int
-        Cells touched by the rim, and land cells that were filled.
-    not_given : tuple of str
-        Properties that the model will have to be told by hand.
-    """
-
-    tonnes: dict[str, float]
-    rim_tonnes: dict[str, float]
-    least_fraction_tonnes: dict[str, float]
-    share_below_samples: float
-    rim_cells: int
-    land_cells: int
-    not_given: tuple[str, ...]
-
-
-@dataclass(frozen=True, eq=False, repr=False)
-class Bed:
-    """A model's starting bed on n cells, land included; nothing is NaN.
-
-    Attributes
-    ----------
-    classes : ClassProperties
-    class_fraction : float array, shape (k, layer, n)
-        Of dry mass; sums to 1 along the first axis within 1e-12.
-    erodible_thickness : float array, shape (layer, n)
-        Metres.
-    class_mass_content : float array, shape (k, layer, n)
-        Thickness × dry density × fraction, kg m-2.
-    dry_density, porosity : float arrays, shape (layer, n)
-        kg m-3 and without unit, by the rule that the recipe names as `bed.packing`.
-    mixture_median_diameter, mixture_geometric_mean_diameter : float arrays, shape (layer, n)
-        Metres.
-    skin_roughness_length : float array, shape (n,)
-        z0 = d50 / 12 of the first layer, metres: grain roughness, not total drag.
-    critical_stress_for_erosion : float array, shape (layer, n), or None
-        Mass-weighted mean of the classes' critical stresses, Pa; None when a class with mass in the bed has none.
-    class_critical_stress : float array, shape (k, layer)
-        Of each class alone in each layer, Pa; NaN where not known.
-    hiding_exposure_factor : float array, shape (k, layer, n), or None
-        What multiplies it in the mixture; None without a hiding correction.
-    evidence : int8 array, shape (layer, n)
-        Keys of `EVIDENCE`. Lower layers filled "same" are extrapolated (2), compositions are given by the
-        user (5); the rim (3) and land (4) go before both.
-    rim_weight : float array, shape (n,)
-        1 where the bed is the rim's own, 0 outside the rim.
-    account : Account
-    """
-
-    classes: ClassProperties
-    class_fraction: Floats
-    erodible_thickness: Floats
-    class_mass_content: Floats
-    dry_density: Floats
-    porosity: Floats
-    mixture_median_diameter: Floats
-    mixture_geometric_mean_diameter: Floats
-    skin_roughness_length: Floats
-    critical_stress_for_erosion: Floats | None
-    class_critical_stress: Floats
-    hiding_exposure_factor: Floats | None
-    evidence: Flags
-    rim_weight: Floats
-    account: Account = field(hash=False)
-
-    def __repr__(self) -> str:
-        k, layers, n = self.class_fraction.shape
-        total = sum(self.account.tonnes.values())
-        return f"<Bed: {k} classes, {layers} layers, {n:,} cells, {total:,.0f} t in water>"
 
 
 def make_bed(
@@ -185,7 +84,9 @@ def make_bed(
 
     fraction = np.empty((len(classes.names), len(settings.layers), n))
     mapped, rimmed, dropped, final = np.zeros((4, *fraction.shape[:2]))  # tonnes by class and layer
-    for some in _blocks(np.flatnonzero(cells.active)):
+    wet = np.flatnonzero(cells.active)
+    for block in in_blocks(wet.size):
+        some = wet[block]
         volume = cells.area_m2[some] * thickness[:, some]
         layers = layer_fractions(to_classes(fractions[some], classes), settings.layers, classes, parts)
         before = _tonnes(layers, classes, volume, pack)
@@ -201,7 +102,9 @@ def make_bed(
         final += _tonnes(kept, classes, volume, pack)
     land = np.flatnonzero(~cells.active)
     if settings.land_fill == "nearest":
-        fraction[:, :, land] = fraction[:, :, nearest_water(cells)[land]]
+        source = nearest_water(cells)
+        for block in in_blocks(land.size):
+            fraction[:, :, land[block]] = fraction[:, :, source[land[block]]]
     else:
         fraction[:, :, land] = composition_in_classes(settings.land_fill, classes, parts)[:, None, None]
     stress = layer_stress(settings.layers, classes)
@@ -220,10 +123,12 @@ def make_bed(
         classes=classes,
         class_fraction=fraction,
         erodible_thickness=thickness,
-        **_mixture(fraction, classes, thickness, settings, pack, stress, strength_known(settings, classes, rim)),
         class_critical_stress=stress,
         evidence=_flags(evidence, settings, cells, weight),
         rim_weight=weight,
+        pack=pack,
+        hidden=settings.hiding != "none",
+        strong=strength_known(settings, classes, rim),
         account=account,
     )
 
@@ -245,26 +150,23 @@ def _strong_in_all_layers(classes: ClassProperties, stress: Floats) -> set[str]:
     return {f"{name}: critical stress" for name, good in zip(classes.names, known, strict=True) if good}
 
 
-def _blocks(cells: NDArray[np.int64]) -> Iterator[NDArray[np.int64]]:
-    """Cells in groups that bound the memory of what is between the steps."""
-    for start in range(0, cells.size, CELLS_AT_ONCE):
-        yield cells[start : start + CELLS_AT_ONCE]
-
-
 def _check_map(fractions: Floats, evidence: NDArray[np.integer], cells: Cells, n_parts: int) -> None:
     n = cells.active.size
     if fractions.shape != (n, n_parts) or evidence.shape != (n,):
         raise BedError(
             f"fractions {fractions.shape} and evidence {evidence.shape}, expected ({n}, {n_parts}) and ({n},)"
         )
-    holes = cells.active & ~np.isfinite(fractions).all(axis=1)
+    holes, wrong = np.zeros(n, dtype=bool), np.zeros(n, dtype=bool)
+    for some in in_blocks(n):
+        here, wet = fractions[some], cells.active[some]
+        holes[some] = wet & ~np.isfinite(here).all(axis=1)
+        off = np.abs(here.sum(axis=1) - 1.0) > SUM_TOLERANCE
+        wrong[some] = wet & (off | (here < 0.0).any(axis=1))
     if holes.any():
         raise BedError(
             f"{int(holes.sum())} water cells of {cells.name} have no fractions, the first is {_place(cells, holes)}; "
             "a model's bed cannot have holes"
         )
-    off = np.abs(fractions.sum(axis=1) - 1.0) > SUM_TOLERANCE
-    wrong = cells.active & (off | (fractions < 0.0).any(axis=1))
     if wrong.any():
         raise BedError(
             f"{int(wrong.sum())} water cells of {cells.name} have fractions below 0 or not summing to 1, the first is "
@@ -313,36 +215,3 @@ def _flags(evidence: NDArray[np.integer], settings: BedSettings, cells: Cells, w
     flags[:, weight > 0.0] = RIM
     flags[:, ~cells.active] = LAND
     return flags
-
-
-def _mixture(
-    fraction: Floats, classes: ClassProperties, thickness: Floats, settings: BedSettings, pack: Packer, stress: Floats,
-    strong: bool,
-) -> dict[str, Any]:  # fmt: skip
-    """What follows from a bed's fractions, worked out in groups of cells."""
-    content = np.empty_like(fraction)
-    diameter, mean, pores, density = (np.empty(fraction.shape[1:]) for _ in range(4))
-    mixed = np.empty(fraction.shape[1:]) if strong else None
-    factor = None if settings.hiding == "none" else np.empty_like(fraction)
-    for some in _blocks(np.arange(fraction.shape[2])):
-        here = fraction[:, :, some]
-        diameter[:, some] = median_diameter(here, classes.diameter_m)
-        mean[:, some] = geometric_mean_diameter(here, classes.diameter_m)
-        pores[:, some], density[:, some] = pack(here, diameter[:, some])
-        content[:, :, some] = thickness[:, some] * density[:, some] * here
-        strength = np.nan_to_num(stress)[:, :, None]  # unknown only in classes without mass, where it is not used
-        if factor is not None:
-            factor[:, :, some] = hiding_factor(here, classes.diameter_m, classes.loose)
-            strength = strength * factor[:, :, some]
-        if mixed is not None:
-            mixed[:, some] = mean_critical_stress(here, strength)
-    return {
-        "class_mass_content": content,
-        "dry_density": density,
-        "porosity": pores,
-        "mixture_median_diameter": diameter,
-        "mixture_geometric_mean_diameter": mean,
-        "skin_roughness_length": skin_roughness_length(diameter[0]),
-        "critical_stress_for_erosion": mixed,
-        "hiding_exposure_factor": factor,
-    }

@@ -30,12 +30,11 @@ class Cells(Protocol):
         """Area, shape (n,)."""
 
     @property
-    def edges(self) -> Ints:
+    def edges(self) -> NDArray[np.integer]:
         """Pairs of cells that share a side, shape (m, 2)."""
 
-    @property
-    def edge_length_m(self) -> Floats:
-        """Distance between the centres of each pair, shape (m,); NaN where a position is unknown."""
+    def distance_m(self, pairs: NDArray[np.integer]) -> Floats:
+        """Distance between the centres of pairs of cells, shape (m,); NaN where a position is unknown."""
 
     @property
     def open_cells(self) -> Bools:

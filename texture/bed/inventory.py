@@ -9,7 +9,7 @@ from itertools import pairwise
 import numpy as np
 from numpy.typing import NDArray
 
-from texture.bed.build import CELLS_AT_ONCE, Bed
+from texture.bed.bed import Bed, in_blocks
 from texture.bed.cells import Bools, Cells, Floats, Ints
 from texture.recipe import Bed as BedSettings
 
@@ -110,7 +110,7 @@ def depth_groups(active: Bools, depth_m: Floats | None, limits_m: Sequence[float
 
 
 def take_stock(
-    bed: Bed, settings: BedSettings, cells: Cells, fractions: Floats, quantiles: Floats, groups: Sequence[Group],
+    bed: Bed, settings: BedSettings, cells: Cells, fractions: Floats, quantiles: NDArray[np.floating], groups: Sequence[Group],
     alike: Alike, seed: int = 1,
 ) -> list[Stock]:  # fmt: skip
     """Count the tonnes of each class in each group.
@@ -140,22 +140,22 @@ def take_stock(
     for group in groups:
         some = np.flatnonzero(group.cells)
         area_km2 = float(cells.area_m2[some].sum() / 1e6)
+        tonnes, below, above = np.zeros((3, len(classes.names)))
+        weights = np.empty((len(classes.names), some.size), dtype=np.float32)
+        for block in in_blocks(some.size):
+            here = some[block]
+            tonnes += bed.tonnes_each(here, cells.area_m2[here]).sum(axis=1)
+            gain = mapped[here] * classes.share[:, None]
+            mean, (low, _, high) = fractions[here].T[classes.part], quantiles[:, here].swapaxes(1, 2)[:, classes.part]
+            down, up = gain * np.maximum(mean - low, 0.0), gain * np.maximum(high - mean, 0.0)
+            below, above = below + down.sum(axis=1), above + up.sum(axis=1)
+            weights[:, block] = down + up
         for k, name in enumerate(classes.names):
-            tonnes, below, above = 0.0, 0.0, 0.0
-            weights = np.empty(some.size, dtype=np.float32)
-            for start in range(0, some.size, CELLS_AT_ONCE):
-                here = some[start : start + CELLS_AT_ONCE]
-                part, gain = classes.part[k], mapped[here] * classes.share[k]
-                down = gain * np.maximum(fractions[here, part] - quantiles[0, here, part], 0.0)
-                up = gain * np.maximum(quantiles[2, here, part] - fractions[here, part], 0.0)
-                weights[start : start + CELLS_AT_ONCE] = down + up
-                below, above = below + down.sum(), above + up.sum()
-                tonnes += (bed.class_mass_content[k][:, here] * cells.area_m2[here]).sum() / 1000.0
-            factor = np.sqrt(mean_correlation(some, weights, alike, seed))
-            low = float(np.maximum(tonnes - factor * below, 0.0))
+            factor = np.sqrt(mean_correlation(some, weights[k], alike, seed))
+            least = float(np.maximum(tonnes[k] - factor * below[k], 0.0))
             stocks.append(
-                Stock(group.zone, group.depth_from_m, group.depth_to_m, name, int(some.size), area_km2, float(tonnes), low,
-                      float(tonnes + factor * above))
+                Stock(group.zone, group.depth_from_m, group.depth_to_m, name, int(some.size), area_km2, float(tonnes[k]), least,
+                      float(tonnes[k] + factor * above[k]))
             )  # fmt: skip
     return stocks
 

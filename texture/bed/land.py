@@ -36,18 +36,25 @@ def nearest_water(cells: Cells) -> Ints:
     source = np.arange(n, dtype=np.int64)
     if cells.active.all():
         return source
-    touches_land = ~cells.active[cells.edges].all(axis=1)
-    a, b = cells.edges[touches_land].T
-    length = cells.edge_length_m[touches_land]
+    # A graph of land and shore alone: on ten million cells one of them all takes gigabytes.
+    pairs = cells.edges[~cells.active[cells.edges].all(axis=1)]
+    length = cells.distance_m(pairs)
     known = np.isfinite(length)
     # Land often has no coordinates in model grids; its cells then count as of ordinary size.
     length = np.where(known, length, np.median(length[known]) if known.any() else 1.0)
-    shore = np.unique(np.concatenate([a, b])[cells.active[np.concatenate([a, b])]])
+    there = np.zeros(n, dtype=bool)
+    there[pairs.ravel()] = True
+    cell = np.flatnonzero(there)
+    shore = np.flatnonzero(cells.active[cell])
+    source[~cells.active] = -1
     if shore.size:
-        graph = csr_array((length, (a, b)), shape=(n, n))
+        number = np.cumsum(there, dtype=np.int32) - 1
+        graph = csr_array((length, number[pairs].T), shape=(cell.size, cell.size))
+        del pairs, length, number
         _, _, found = dijkstra(graph, directed=False, indices=shore, min_only=True, return_predecessors=True)
-        source[~cells.active] = found[~cells.active]
-    lost = ~cells.active & (source < 0 if shore.size else True)
+        land = ~cells.active[cell] & (found >= 0)
+        source[cell[land]] = cell[found[land]]
+    lost = source < 0
     if lost.any():
         raise BedError(
             f"{int(lost.sum())} land cells of {cells.name} touch no water in any way; the bed cannot fill them"

@@ -9,7 +9,7 @@ from typing import Literal
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-from texture.bed.build import Bed
+from texture.bed.bed import Bed
 from texture.bed.cells import Bools, Cells, Floats
 from texture.bed.water import Water
 from texture.bed.waves import current_stress, wave_current_stress, wave_stress
@@ -179,15 +179,17 @@ def moved_by(condition: Condition, bed: Bed, cells: Cells, water: Water) -> Move
     area = np.where(wet, cells.area_m2, 0.0)
     total = area.sum()
     strength = np.broadcast_to(bed.class_critical_stress[:, :1], (len(classes.names), wet.size))
-    if bed.hiding_exposure_factor is not None:
-        strength = strength * bed.hiding_exposure_factor[:, 0]
+    factor = bed.hiding_exposure_factor
+    if factor is not None:
+        strength = strength * factor[:, 0]
     surface = bed.class_fraction[:, 0]
     known = np.isfinite(bed.class_critical_stress[:, 0])
     rim = wet & (bed.rim_weight == 1.0)
     stress = np.full(wet.size, np.nan)
     moving, eroding, times = np.zeros(len(known)), np.zeros(wet.size, dtype=bool), 0
+    diameter_m, roughness_m = bed.surface_median_diameter, bed.skin_roughness_length
     for now in condition.each():
-        here = skin_stress(now, bed.mixture_median_diameter[0], bed.skin_roughness_length, water, wet)
+        here = skin_stress(now, diameter_m, roughness_m, water, wet)
         moves = (here > strength) & (surface > 0.0)
         moving += [area[row].sum() for row in moves]  # no matrix product: its digits depend on the number of threads
         eroding |= np.where(moves, surface, 0.0).sum(axis=0) > 0.5

@@ -120,7 +120,7 @@ def water_distance(cells: Cells, start: Bools, in_metres: bool, limit: float = n
     while front.any():
         touched = np.flatnonzero(front[a] | front[b])
         ends = cells.edges[touched]
-        length = cells.edge_length_m[touched] if in_metres else np.ones(touched.size)
+        length = cells.distance_m(ends) if in_metres else np.ones(touched.size)
         front = np.zeros(start.size, dtype=bool)
         for origin, reached in (ends.T, ends.T[::-1]):
             longer = distance[origin] + length

@@ -10,7 +10,8 @@ import numpy as np
 from texture.bed import HIDING_WORDS, PACKING_WORDS, single_fractions
 from texture.bed.mixture_packing import class_dry_density
 from texture.output.bed_variables import BED_VARIABLES, FORMS, KINDS, SOURCES
-from texture.output.cf import global_attributes, on_cells
+from texture.output.cf import global_attributes, on_cells, on_cells_later
+from texture.output.on_demand import on_demand
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -88,40 +89,40 @@ def _single(dataset: xr.Dataset) -> xr.Dataset:
     """Measured values in single precision; coordinates and their bounds keep theirs."""
     for name in BED_VARIABLES:
         if name in dataset and dataset[name].dtype == np.float64:
-            values = dataset[name].values
-            single = single_fractions(values) if name == "class_fraction" else values.astype(np.float32)
-            dataset[name] = dataset[name].copy(data=single)
+            dataset[name] = _rounded(name, dataset.variables[name])
     return dataset
 
 
+def _rounded(name: str, variable: xr.Variable) -> xr.Variable:
+    round_all = single_fractions if name == "class_fraction" else lambda values: values.astype(np.float32)
+    made = on_demand(variable.dims, lambda: round_all(variable.values), variable.shape, np.float32, variable.attrs)  # type: ignore[arg-type]
+    made.encoding = dict(variable.encoding)
+    return made
+
+
 def _cell_variables(bed: Bed, target: Target, settings: BedSettings) -> dict[str, xr.Variable]:
-    with_class = ("class_fraction", "class_mass_content", "hiding_exposure_factor")
-    with_layer = (
-        "erodible_thickness", "dry_density", "porosity", "mixture_median_diameter", "mixture_geometric_mean_diameter",
-        "critical_stress_for_erosion", "evidence",
-    )  # fmt: skip
+    k, layers, _ = bed.class_fraction.shape
+    each, both = {"layer": layers}, {"class": k, "layer": layers}
     variables = {}
-    for name in with_class:
-        values = getattr(bed, name)
-        if values is None:
-            continue
-        variables[name] = on_cells(target, ("class", "layer"), values, "class_name", **BED_VARIABLES[name])
-    for name in with_layer:
-        values = getattr(bed, name)
-        if values is not None:
-            variables[name] = on_cells(target, ("layer",), values, **BED_VARIABLES[name])
+    for name in ("class_fraction", "class_mass_content", *(["hiding_exposure_factor"] if bed.hidden else [])):
+        variables[name] = _later(bed, name, target, both, "class_name")
+    for name in ("erodible_thickness", "dry_density", "porosity", "mixture_median_diameter", "mixture_geometric_mean_diameter",
+                 *(["critical_stress_for_erosion"] if bed.strong else [])):  # fmt: skip
+        variables[name] = _later(bed, name, target, each)
+    variables["evidence"] = on_cells(target, ("layer",), bed.evidence, **BED_VARIABLES["evidence"])
     variables["porosity"].attrs["comment"] = PACKING_WORDS[settings.packing]
-    if "critical_stress_for_erosion" in variables:
+    if bed.strong:
         variables["critical_stress_for_erosion"].attrs["comment"] = (
             f"mass-weighted mean of the critical stresses of the classes, {HIDING_WORDS[settings.hiding]}"
         )
-    for name, values in (
-        ("skin_roughness_length", bed.skin_roughness_length),
-        ("rim_weight", bed.rim_weight),
-        ("water", target.active.astype(np.int8)),
-    ):
-        variables[name] = on_cells(target, (), values, **BED_VARIABLES[name])
+    for name in ("skin_roughness_length", "rim_weight"):
+        variables[name] = _later(bed, name, target, {})
+    variables["water"] = on_cells(target, (), target.active.astype(np.int8), **BED_VARIABLES["water"])
     return variables
+
+
+def _later(bed: Bed, name: str, target: Target, leading: dict[str, int], labels: str = "") -> xr.Variable:
+    return on_cells_later(target, leading, lambda: getattr(bed, name), labels, **BED_VARIABLES[name])
 
 
 def _mobility(moved: Sequence[Moved], target: Target, classes: ClassProperties) -> dict[str, xr.Variable]:

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import Any
 
-from texture.bed.build import EVIDENCE
+from texture.bed.bed import EVIDENCE
 from texture.output.cf import flags
 
 __all__ = ["BED_VARIABLES", "FORMS", "KINDS", "SOURCES"]

@@ -2,21 +2,23 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
+from numpy.typing import NDArray
 
 import texture
 from texture.errors import OutputError
+from texture.output.on_demand import on_demand
 
 if TYPE_CHECKING:
     import xarray as xr
 
     from texture.targets import Target
 
-__all__ = ["FILL", "flags", "global_attributes", "on_cells", "write_netcdf"]
+__all__ = ["FILL", "flags", "global_attributes", "on_cells", "on_cells_later", "write_netcdf"]
 
 FILL = 9.969209968386869e36
 """NetCDF's own default fill value for floats."""
@@ -66,12 +68,37 @@ def on_cells(target: Target, leading: tuple[str, ...], values: Any, labels: str 
     import xarray as xr
 
     array = np.asarray(values)
+    shaped = array.reshape(*array.shape[:-1], *target.shape)
+    return xr.Variable((*leading, *target.dims), shaped, _with_coordinates(target, labels, attributes))
+
+
+def on_cells_later(
+    target: Target, leading: Mapping[str, int], make: Callable[[], NDArray[Any]], labels: str = "", **attributes: Any
+) -> xr.Variable:
+    """A variable as `on_cells` makes it, of double precision, whose values `make` works out when they are written.
+
+    Parameters
+    ----------
+    target, labels, **attributes
+        As for `on_cells`.
+    leading : mapping of str to int
+        Names and lengths of the dimensions before the cells'.
+    make : callable
+        Returns the flat values, shape (*leading, n).
+    """
+    shape = (*leading.values(), *target.shape)
+    attrs = _with_coordinates(target, labels, attributes)
+    variable = on_demand((*leading, *target.dims), make, shape, np.float64, attrs)
+    variable.encoding["_FillValue"] = None  # a bed has no holes
+    return variable
+
+
+def _with_coordinates(target: Target, labels: str, attributes: Mapping[str, Any]) -> dict[str, Any]:
     own = dict(target.data_attributes)
     coordinates = " ".join(filter(None, [own.pop("coordinates", ""), labels]))
     if coordinates:
         own["coordinates"] = coordinates
-    shaped = array.reshape(*array.shape[:-1], *target.shape)
-    return xr.Variable((*leading, *target.dims), shaped, {**attributes, **own})
+    return {**attributes, **own}
 
 
 def write_netcdf(dataset: xr.Dataset, path: Path) -> None:
@@ -85,16 +112,31 @@ def write_netcdf(dataset: xr.Dataset, path: Path) -> None:
         If the file cannot be written.
     """
     encoding: dict[str, dict[str, Any]] = {}
+    filled: dict[str, xr.Variable] = {}
     for name, variable in dataset.variables.items():
         own: dict[str, Any] = {"_FillValue": None}
         if variable.dtype.kind == "f" and "_FillValue" in variable.encoding:
             own["_FillValue"] = variable.encoding["_FillValue"]
         elif variable.dtype.kind == "f" and name not in dataset.coords and np.isnan(variable.values).any():
-            own["_FillValue"] = variable.dtype.type(FILL)
+            # Filled one variable at a time while it is written; left to xarray, all would be copied before the first.
+            filled[str(name)] = _filled(variable)
+            del own["_FillValue"]
         if variable.size > 1000 and variable.dtype.kind in "fiu":
             own |= {"zlib": True, "complevel": 2, "shuffle": True}
         encoding[str(name)] = own
     try:
-        dataset.to_netcdf(path, engine="netcdf4", format="NETCDF4", encoding=encoding)
+        dataset.assign(filled).to_netcdf(path, engine="netcdf4", format="NETCDF4", encoding=encoding)
     except RuntimeError as error:  # the HDF5 library's way to say that the disk is full or read-only
         raise OutputError(f"{path.name}: cannot be written ({error}); is the disk full?") from error
+
+
+def _filled(variable: xr.Variable) -> xr.Variable:
+    fill = variable.dtype.type(FILL)
+
+    def make() -> NDArray[Any]:
+        values = variable.values
+        return np.where(np.isnan(values), fill, values)
+
+    made = on_demand(variable.dims, make, variable.shape, variable.dtype, {**variable.attrs, "_FillValue": fill})  # type: ignore[arg-type]
+    made.encoding = dict(variable.encoding)
+    return made

@@ -195,7 +195,8 @@ def write_geotiff(
         "overview_resampling": "NEAREST" if whole else "AVERAGE",
     }
     try:
-        with rasterio.open(path, "w", **profile) as image_file:
+        # By default GDAL may fill a twentieth of the machine's memory with tiles.
+        with rasterio.Env(GDAL_CACHEMAX=64), rasterio.open(path, "w", **profile) as image_file:
             image_file.write(image, 1)
             image_file.set_band_description(1, f"{description} ({grid.note})" if grid.note else description)
             image_file.update_tags(**tags, **({"resampled": grid.note} if grid.note else {}))
@@ -230,7 +231,7 @@ def write_geotiffs(
     cell_size_m : float, optional
         Of the resample of a curvilinear grid.
     """
-    from texture.bed.build import EVIDENCE
+    from texture.bed.bed import EVIDENCE
 
     folder.mkdir(parents=True, exist_ok=True)
     grid = pixel_grid(target, cell_size_m)

@@ -7,11 +7,13 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from texture.bed import Account, Bed, Moved, Water, class_properties, strength_known
+from texture.bed.mixture_packing import packer
 from texture.errors import RecipeError
 from texture.output.bed_nc import bed_dataset
 from texture.output.folder import RESULTS
 from texture.output.into import check_into
 from texture.output.names import read_names
+from texture.output.on_demand import is_on_demand
 from texture.output.renaming import apply_names
 
 if TYPE_CHECKING:
@@ -28,32 +30,35 @@ def bed_outline(target: Target, recipe: Recipe) -> xr.Dataset:
 
     Every variable, dimension and attribute is the real one; values are not. Takes no memory worth speaking of.
     """
+    import xarray as xr
+
     water = Water(recipe.bed.water.temperature_c, recipe.bed.water.salinity)
     classes = class_properties(recipe.bed.classes, water, recipe.composition.parts)
     k, layers, n = len(classes.names), len(recipe.bed.layers), target.n_cells
-    full, flat = np.broadcast_to(0.5, (k, layers, n)), np.broadcast_to(0.5, (layers, n))
+    flat = np.broadcast_to(0.5, (layers, n))
     bed = Bed(
         classes=classes,
-        class_fraction=full,
+        class_fraction=np.broadcast_to(0.5, (k, layers, n)),
         erodible_thickness=flat,
-        class_mass_content=full,
-        dry_density=flat,
-        porosity=flat,
-        mixture_median_diameter=flat,
-        mixture_geometric_mean_diameter=flat,
-        skin_roughness_length=flat[0],
-        critical_stress_for_erosion=flat if strength_known(recipe.bed, classes, recipe.rim) else None,
         class_critical_stress=np.broadcast_to(0.5, (k, layers)),
-        hiding_exposure_factor=None if recipe.bed.hiding == "none" else full,
         evidence=np.broadcast_to(np.int8(1), (layers, n)),
         rim_weight=flat[0],
+        pack=packer(recipe.bed.packing, classes, recipe.bed.layers),
+        hidden=recipe.bed.hiding != "none",
+        strong=strength_known(recipe.bed, classes, recipe.rim),
         account=Account({}, {}, {}, 0.0, 0, 0, ()),
     )
     moved = [
         Moved(m.name, False, flat[0], 0.5, 0.5, 0.0, dict.fromkeys(classes.names, 0.5), {}, flat[0] > 1.0, 0.5, 0.5)
         for m in recipe.mobility
     ]
-    return bed_dataset(bed, target, recipe, moved).isel({dim: slice(0, 1) for dim in target.dims})
+    made = bed_dataset(bed, target, recipe, moved)
+    cells = {
+        name: xr.Variable(v.dims, np.full(_one_cell(v, target), 0.5, dtype=v.dtype), v.attrs)
+        for name, v in made.variables.items()
+        if is_on_demand(v)
+    }
+    return made.drop_vars(cells).isel({dim: slice(0, 1) for dim in target.dims}).assign(cells)
 
 
 def check_outputs(target: Target, recipe: Recipe) -> None:
@@ -83,3 +88,7 @@ def check_outputs(target: Target, recipe: Recipe) -> None:
     own = {names.dimensions.get(dim, dim): length for dim, length in zip(target.dims, target.shape, strict=True)}
     lengths = {dim: named.sizes[dim] - 1 + length for dim, length in own.items() if dim in named.sizes}
     check_into(named, names, outputs.into, outputs.into_record, lengths)
+
+
+def _one_cell(variable: xr.Variable, target: Target) -> tuple[int, ...]:
+    return tuple(1 if d in target.dims else length for d, length in zip(variable.dims, variable.shape, strict=True))

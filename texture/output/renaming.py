@@ -10,6 +10,7 @@ from texture.errors import RecipeError
 from texture.output.bed_variables import BED_VARIABLES
 from texture.output.halo import pad, unpad
 from texture.output.names import Names, VariableName
+from texture.output.on_demand import in_memory
 from texture.output.units import Conversion, find_conversion, scaling
 
 if TYPE_CHECKING:
@@ -57,7 +58,7 @@ def apply_names(dataset: xr.Dataset, names: Names, where: str = "names") -> xr.D
 
     names.check([str(d) for d in dataset.sizes], [str(v) for v in dataset.variables], where)
     cells = tuple(str(d) for d in dataset["water"].dims)
-    dataset = _padded(dataset, names, cells, where)
+    dataset = _padded(in_memory(dataset), names, cells, where)
     land = dataset["water"].values == 0
     if names.values.layer_order == "bottom_first":
         dataset = dataset.isel(layer=slice(None, None, -1))

@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING, Protocol
 import numpy as np
 from numpy.typing import NDArray
 
-from texture.bed.build import EVIDENCE
+from texture.bed.bed import EVIDENCE
 from texture.output.cf import flags, global_attributes, on_cells
 
 if TYPE_CHECKING:
@@ -20,6 +20,7 @@ if TYPE_CHECKING:
 __all__ = ["QUANTILES", "MapArrays", "texture_dataset"]
 
 Floats = NDArray[np.float64]
+AnyFloats = NDArray[np.floating]
 
 QUANTILES = (0.05, 0.5, 0.95)
 MAP_EVIDENCE = {code: EVIDENCE[code] for code in (0, 1, 2, 4, 5, 6)}
@@ -42,15 +43,15 @@ class MapArrays(Protocol):
         """Expected cell means, shape (n, parts)."""
 
     @property
-    def quantiles(self) -> Floats:
+    def quantiles(self) -> AnyFloats:
         """Quantiles of the cell mean, shape (3, n, parts); NaN for a method without a variance."""
 
     @property
-    def mean(self) -> Floats:
+    def mean(self) -> AnyFloats:
         """Log-ratio coordinates, shape (n, d)."""
 
     @property
-    def variance(self) -> Floats:
+    def variance(self) -> AnyFloats:
         """Their variance at a point of the bed, shape (n, d); NaN for a method without one."""
 
     @property
@@ -62,7 +63,7 @@ class MapArrays(Protocol):
         """Number of the class, 0 where there is no map, shape (n,)."""
 
     @property
-    def class_probability(self) -> Floats:
+    def class_probability(self) -> AnyFloats:
         """Of that class, shape (n,)."""
 
 

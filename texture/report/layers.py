@@ -82,7 +82,7 @@ def map_layers(result: Result) -> list[MapLayer]:
             layers.append(_steps(f"interval_{i}", f"{part}, width of the 90 % interval", width, active))
     layers.append(_classes("evidence", "evidence", estimate.evidence, active, EVIDENCE, EVIDENCE_COLOURS))
     layers.append(_steps("rim", "rim weight", bed.rim_weight, active))
-    micrometres = np.log10(bed.mixture_median_diameter[0] * 1e6)
+    micrometres = np.log10(bed.surface_median_diameter * 1e6)
     low, high = float(micrometres[active].min()), float(micrometres[active].max())
     layers.append(
         _steps(
@@ -102,7 +102,13 @@ def map_layers(result: Result) -> list[MapLayer]:
 
 
 def _steps(
-    key: str, title: str, values: Floats, active: NDArray[np.bool_], low: float = 0.0, high: float = 1.0, unit: str = ""
+    key: str,
+    title: str,
+    values: NDArray[np.floating],
+    active: NDArray[np.bool_],
+    low: float = 0.0,
+    high: float = 1.0,
+    unit: str = "",
 ) -> MapLayer:
     share = (values - low) / (high - low)
     known = active & np.isfinite(share)

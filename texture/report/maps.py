@@ -40,7 +40,7 @@ class Layer:
     """
 
     title: str
-    values: Floats
+    values: NDArray[np.floating]
     label: str = "fraction of dry mass"
     limits: tuple[float, float] = (0.0, 1.0)
     names: Mapping[int, str] = field(default_factory=dict)

@@ -142,7 +142,7 @@ def _trust_picture(result: Result) -> Picture:
 
 def _bed_picture(result: Result) -> Picture:
     found, bed = result.found, result.bed
-    diameter_um = np.where(found.target.active, bed.mixture_median_diameter[0] * 1e6, np.nan)
+    diameter_um = np.where(found.target.active, bed.surface_median_diameter * 1e6, np.nan)
     layers = [
         Layer("rim weight", np.where(found.target.active, bed.rim_weight, np.nan), label="share of the rim's own bed"),
         Layer("median diameter of the first layer", np.log10(diameter_um), label="log10 of µm",

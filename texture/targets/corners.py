@@ -4,11 +4,15 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 from dataclasses import dataclass
+from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.typing import NDArray
 
-__all__ = ["Corners", "OwnCorners", "SharedVertices"]
+if TYPE_CHECKING:
+    import pyproj
+
+__all__ = ["AxisCorners", "Corners", "OwnCorners", "SharedVertices"]
 
 Floats = NDArray[np.float64]
 Ints = NDArray[np.int64]
@@ -96,6 +100,51 @@ class SharedVertices(Corners):
     def bounds(self) -> tuple[float, float, float, float]:
         """West, south, east and north."""
         return _bounds(self.longitude, self.latitude)
+
+
+@dataclass(frozen=True, eq=False)
+class AxisCorners(Corners):
+    """Corners of a raster, projected anew whenever they are asked for: only the edges of its rows and columns are kept.
+
+    Parameters
+    ----------
+    to_degrees : pyproj.Transformer
+        From the raster's projection, x first.
+    x, y : float arrays, shapes (columns + 1,) and (rows + 1,)
+        Edges in the order of the file.
+    """
+
+    to_degrees: pyproj.Transformer
+    x: Floats
+    y: Floats
+
+    def of(self, pieces: Ints | slice) -> tuple[Floats, Floats]:
+        """Longitude and latitude of some polygons."""
+        cells = np.arange(self.count)[pieces] if isinstance(pieces, slice) else pieces
+        row, column = np.divmod(cells, self.x.size - 1)
+        near, far = (row, row + 1) if self.y[0] < self.y[-1] else (row + 1, row)
+        left, right = (column, column + 1) if self.x[0] < self.x[-1] else (column + 1, column)
+        x = self.x[np.stack([left, right, right, left], axis=-1)]
+        y = self.y[np.stack([near, near, far, far], axis=-1)]
+        longitude, latitude = self.to_degrees.transform(x, y)
+        return np.asarray(longitude), np.asarray(latitude)
+
+    @property
+    def count(self) -> int:
+        """Number of polygons."""
+        return (self.x.size - 1) * (self.y.size - 1)
+
+    @property
+    def bounds(self) -> tuple[float, float, float, float]:
+        """West, south, east and north, by the outer edge and a choice of corners inside it."""
+        inner_x, inner_y = (a[np.unique(np.linspace(0, a.size - 1, 201).astype(np.int64))] for a in (self.x, self.y))
+        meshes = [
+            np.meshgrid(inner_x, inner_y),
+            np.meshgrid(self.x, self.y[[0, -1]]),
+            np.meshgrid(self.x[[0, -1]], self.y),
+        ]
+        x, y = (np.concatenate([mesh[axis].ravel() for mesh in meshes]) for axis in (0, 1))
+        return _bounds(*(np.asarray(a) for a in self.to_degrees.transform(x, y)))
 
 
 def _bounds(lon: Floats, lat: Floats) -> tuple[float, float, float, float]:

@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 
 from texture.errors import TargetError
 from texture.recipe import TargetSettings
-from texture.targets.corners import SharedVertices
+from texture.targets.corners import AxisCorners
 from texture.targets.crs import read_crs
 from texture.targets.land import on_land, read_land
 from texture.targets.structured import Structured
@@ -105,7 +105,7 @@ def raster(
         latitude=latitude,
         active=wet & ~topology.in_halo(),
         topology=topology,
-        corners=_corners(to_geographic, _edges(x), _edges(y)),
+        corners=AxisCorners(to_geographic, _edges(x), _edges(y)),
         x=x,
         y=y,
         depth_m=depth_m,
@@ -150,10 +150,3 @@ def _transform_mesh(
     mesh_x, mesh_y = np.meshgrid(x, y)
     longitude, latitude = transformer.transform(mesh_x.ravel(), mesh_y.ravel())
     return np.asarray(longitude), np.asarray(latitude)
-
-
-def _corners(transformer: pyproj.Transformer, x: NDArray[np.float64], y: NDArray[np.float64]) -> SharedVertices:
-    """Vertices that the cells share."""
-    shape = (y.size, x.size)
-    longitude, latitude = (a.reshape(shape) for a in _transform_mesh(transformer, x, y))
-    return SharedVertices(longitude, latitude, upward=bool(y[0] < y[-1]))

@@ -30,12 +30,15 @@ class Structured:
     shape: tuple[int, int]
     halo: int = 0
 
-    def edges(self) -> Ints:
+    def edges(self) -> NDArray[np.integer]:
         """Pairs of cells that share a side, shape (m, 2)."""
-        index = np.arange(self.shape[0] * self.shape[1], dtype=np.int64).reshape(self.shape)
-        across = np.column_stack([index[:, :-1].ravel(), index[:, 1:].ravel()])
-        down = np.column_stack([index[:-1].ravel(), index[1:].ravel()])
-        return np.concatenate([across, down])
+        rows, columns = self.shape
+        index = np.arange(rows * columns, dtype=np.int32).reshape(self.shape)
+        pairs = np.empty((rows * (columns - 1) + (rows - 1) * columns, 2), dtype=np.int32)  # half the memory of int64
+        across, down = np.split(pairs, [rows * (columns - 1)])
+        across[:, 0], across[:, 1] = index[:, :-1].ravel(), index[:, 1:].ravel()
+        down[:, 0], down[:, 1] = index[:-1].ravel(), index[1:].ravel()
+        return pairs
 
     def in_halo(self) -> Bools:
         """Cells of the halo, shape (n,)."""

@@ -33,7 +33,7 @@ PIECES_AT_ONCE = 500_000  # bounds the memory of areas to some tens of megabytes
 class Topology(Protocol):
     """How cells hang together; see `Structured` and `Mesh`."""
 
-    def edges(self) -> Ints:
+    def edges(self) -> NDArray[np.integer]:
         """Pairs of neighbouring cells, shape (m, 2)."""
         ...
 
@@ -158,16 +158,15 @@ class Target:
         return np.asarray(np.bincount(self.piece_cell, area, minlength=self.n_cells), dtype=np.float64)
 
     @cached_property
-    def edges(self) -> Ints:
+    def edges(self) -> NDArray[np.integer]:
         """Pairs of neighbouring cells, shape (m, 2), land cells included; none for points."""
         return np.empty((0, 2), dtype=np.int64) if self.topology is None else self.topology.edges()
 
-    @cached_property
-    def edge_length_m(self) -> Floats:
-        """Distance on the ellipsoid between the centres of each pair in `edges`, shape (m,)."""
+    def distance_m(self, pairs: NDArray[np.integer]) -> Floats:
+        """Distance on the ellipsoid between the centres of pairs of cells (m, 2), shape (m,); NaN where a place is unknown."""
         import pyproj
 
-        a, b = self.edges.T
+        a, b = pairs.T
         located = np.isfinite(self.longitude) & np.isfinite(self.latitude)
         good = located[a] & located[b]
         length = np.full(a.size, np.nan)
