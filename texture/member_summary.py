@@ -58,7 +58,7 @@ class MemberSummary:
         spread = f"; mud varies between them by {self.sd[wet, 0].mean():.3f} in a cell" if wet.any() else ""
         return f"  members     {self.count} equally likely beds ({self.method}){spread}"
 
-    def smoother(self, estimate: Floats, edges: NDArray[np.int64]) -> list[float]:
+    def smoother(self, estimate: Floats, edges: NDArray[np.integer]) -> list[float]:
         """How much the estimate changes from cell to neighbour over how much a member does, rms, for each part.
 
         Parameters
