@@ -1,5 +1,7 @@
 """From stations to a normal in the columns of a treatment: learning, methods with and without a variance, threads."""
 
+from dataclasses import replace
+
 import numpy as np
 import pytest
 
@@ -8,6 +10,7 @@ from texture.mapping import learn, learn_all, make_mapper
 from texture.observations import Observations
 from texture.recipe import Method
 from texture.structure import Covariance, CovarianceSet, Structure
+from texture.structure.displacement import displacement_variance
 from texture.treatments import Censor, Presence, Replace
 
 LR = LogRatio(["mud", "sand", "gravel"])
@@ -25,7 +28,7 @@ def stations() -> Observations:
     unknown = np.full((n, 3), NAN)
     return Observations(
         points, fractions, np.full(n, 0.001), unknown, unknown.copy(), np.full(n, "", dtype="<U8"), np.full(n, NAN),
-        np.arange(n) % 2, np.ones(n, dtype=bool), np.arange(n), np.full(n, NAN),
+        np.arange(n) % 2, np.ones(n, dtype=bool), np.arange(n), np.full(n, NAN), np.zeros(n),
     )  # fmt: skip
 
 
@@ -114,3 +117,22 @@ def test_no_survey_is_given_where_there_is_but_one(stations):
     one = stations.take(np.flatnonzero(stations.survey == 0))
     assert learn(Replace(LR), one, Method()).survey is None
     assert learn(Replace(LR), stations, Method()).survey is not None
+
+
+def test_a_badly_known_place_weighs_less_and_widens_its_own_interval(stations):
+    """The same stations, ten of them known to ± 2 km: their weight goes to the others, and the small-scale variation is not theirs."""
+    rough = replace(stations, accuracy_m=np.where(np.arange(60) < 10, 2_000.0, 3.0))
+    exact, learned = (learn(Replace(LR), o, Method()) for o in (stations, rough))
+    assert (exact.noise[:10, 0] < 0.1).all()
+    expected = displacement_variance(learn(Replace(LR), stations, Method()).structure[0], [2_000.0])[0]
+    np.testing.assert_allclose(learned.noise[:10, 0] - exact.noise[:10, 0], expected, rtol=1e-9)
+    np.testing.assert_array_equal(learned.noise[10:, 0], exact.noise[10:, 0])
+    at = stations.points[:10]
+    moved = [
+        np.abs(make_mapper("kriging", o, Method()).predict(at)[0][:, 0] - o.values[:10, 0]).mean()
+        for o in (exact, learned)
+    ]
+    assert moved[1] > 2.0 * moved[0] + 0.01
+    inside = learn(Replace(LR), rough, Method(), start=learned.structure)  # as in a fold: from the structure of all
+    assert (inside.noise[:10, 0] > 0.1).all()
+    assert (learned.sample_noise[:10, 0] > exact.sample_noise[:10, 0]).all()

@@ -36,7 +36,7 @@ def observations(points, fractions) -> Observations:
     n, unknown = len(points), np.full((len(points), 3), NAN)
     return Observations(
         points, fractions, np.full(n, 0.001), unknown, unknown.copy(), np.full(n, "", dtype="<U8"), np.full(n, NAN),
-        np.zeros(n, dtype=np.int64), np.ones(n, dtype=bool), np.arange(n), np.full(n, NAN),
+        np.zeros(n, dtype=np.int64), np.ones(n, dtype=bool), np.arange(n), np.full(n, NAN), np.zeros(n),
     )  # fmt: skip
 
 

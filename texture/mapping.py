@@ -16,6 +16,7 @@ from numpy.typing import NDArray
 from texture.observations import Observations
 from texture.recipe import Method
 from texture.space import PLANE, Seen, Space
+from texture.structure.displacement import place_noise
 from texture.treatments import Censor, Treatment
 from texture.validation.columns import Columns
 
@@ -64,6 +65,12 @@ class Learned:
         return replace(self, noise=self.noise * factors, structure=self.structure.scaled(factors))
 
     @property
+    def sample_noise(self) -> Floats:
+        """Noise variance that a sample at each station's stated place has, shape (n, k): of its analysis and of the place."""
+        values, noise = self.treatment.columns(self.observations)
+        return noise + place_noise(self.structure, self.observations.accuracy_m, values)
+
+    @property
     def survey(self) -> NDArray[np.int64] | None:
         """Survey of each station, None where there is but one."""
         survey = self.observations.survey
@@ -101,10 +108,17 @@ def learn(
         Where distance is taken; stations that lack one of its covariates inform nothing.
     """
     values, noise = columns_in(space, treatment, observations)
-    if not isinstance(treatment, Censor):
+    first = None
+    if start is None and (isinstance(treatment, Censor) or (observations.accuracy_m > 0.0).any()):
+        first = _fitted(treatment, observations, values, noise, method, None, space)
+        start = first.structure
+    if start is not None:  # what a badly known place is worth shows only once there is a structure
+        places = place_noise(start, observations.accuracy_m, values)
+        if first is not None and not isinstance(treatment, Censor) and not places.any():
+            return first
+        noise = noise + places
+    if start is None or not isinstance(treatment, Censor):
         return _fitted(treatment, observations, values, noise, method, start, space)
-    if start is None:
-        start = _fitted(treatment, observations, values, noise, method, None, space).structure
     # Structure and censored values hang together: sweeps with one, a fit to the other, and sweeps again.
     low, high = treatment.bounds(observations)
     learned = Learned(treatment, observations, values, noise, start, space)

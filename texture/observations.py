@@ -52,6 +52,8 @@ class Observations:
         Row of the stations table.
     median_phi : float array, shape (n,)
         Median grain size of rows that know nothing else; NaN elsewhere.
+    accuracy_m : float array, shape (n,)
+        How far each position may be off in either direction; 0 where nothing says.
     """
 
     points: Floats
@@ -65,6 +67,7 @@ class Observations:
     measured: NDArray[np.bool_]
     rows: NDArray[np.int64]
     median_phi: Floats
+    accuracy_m: Floats
 
     @property
     def count(self) -> int:
@@ -155,6 +158,7 @@ def observe(stations: Stations, logratio: LogRatio, plane: Plane) -> Observation
         survey=table["survey"].map({name: i for i, name in enumerate(names)}).to_numpy(dtype=np.int64),
         measured=~words & ~medians,
         rows=table.index.to_numpy(dtype=np.int64),
+        accuracy_m=table["position_accuracy_m"].fillna(0.0).to_numpy(dtype=np.float64),
     )
     informs = np.isfinite(said.coordinates(logratio)[0]).any(axis=1)
     if int(informs.sum()) < LEAST_STATIONS:

@@ -218,6 +218,7 @@ def _hold_out(
 ) -> QuantityMethod:
     scale = cast(_Column, learned.treatment).scale
     predicted, low, high = np.full((3, count), np.nan)
+    noise = learned.sample_noise
     for (_, test), fold in zip(pairs, inside, strict=True):
         mapper = make_mapper(name, fold, recipe.method)
         mean, variance = mapper.predict(learned.observations.points[test])
@@ -226,7 +227,7 @@ def _hold_out(
             predicted[at] = scale.back(mean[:, 0])
             continue
         predicted[at] = scale.expected(mean[:, 0], variance[:, 0])
-        spread = NORMAL_95 * np.sqrt(mapper.sample_variance(variance, learned.noise[test])[:, 0])
+        spread = NORMAL_95 * np.sqrt(mapper.sample_variance(variance, noise[test])[:, 0])
         low[at], high[at] = scale.back(mean[:, 0] - spread), scale.back(mean[:, 0] + spread)
     return QuantityMethod(name, predicted, low, high, plain_scores(measured, predicted, low, high))
 

@@ -219,7 +219,7 @@ class _Bench:
         from texture.structure import CovarianceSet
 
         treatment, observations = learned.treatment, learned.observations
-        sample_noise = treatment.columns(observations)[1]
+        sample_noise = learned.sample_noise
         found = Columns.empty(observations.count, len(treatment.column_names))
         pairs = self.folds.pairs()
         open_folds = []

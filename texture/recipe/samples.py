@@ -41,6 +41,9 @@ class Samples(Settings):
     degrees: Literal["decimal", "minutes"] = Field(
         "decimal", description='what 54.30 says: degrees with decimals, or 54 degrees and 30 minutes if "minutes"'
     )
+    position_accuracy_m: Positive | None = Field(
+        None, description="how far positions may be off either way, where that is more than their digits tell"
+    )
     basis: Literal["whole", "below_2mm"] = Field(
         "whole", description="whether the laboratory saw the whole sample or only what passed 2 mm"
     )

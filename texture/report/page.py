@@ -62,6 +62,7 @@ def write_page(result: Result, map_picture: Picture, settings: str, versions: st
         folds_line=_folds_line(result),
         error_notes=_error_notes(result),
         opinion_line=_opinion_line(result),
+        place_line=_place_line(result),
         bed_notes=_bed_notes(result),
         settings=settings,
         versions=versions,
@@ -231,6 +232,24 @@ def _opinion_line(result: Result) -> str:
     if result.look is None:
         return "The method has no variance, so no second opinion was sought."
     return " ".join(f"{text[0].upper()}{text[1:]}." for text in (str(result.look.opinion), str(result.look.honesty)))
+
+
+def _place_line(result: Result) -> str:
+    """Say which stations count for less because their places are badly known; empty where none does."""
+    from texture.structure.displacement import place_noise
+
+    learned = result.found.validation.learned
+    accuracy = learned.observations.accuracy_m
+    noise = place_noise(learned.structure, accuracy, np.zeros(learned.values.shape))
+    rough = (noise > 0.0).any(axis=1)
+    if not rough.any():
+        return ""
+    sills = [max(sum(s.sill for s in c.structures), 1e-12) for c in learned.structure]
+    low, high = (f"{v:,.0f}" for v in (accuracy[rough].min(), accuracy[rough].max()))
+    return (
+        f"The places of {int(rough.sum()):,} stations are known to no better than ± {low}{f' to {high}' * (high != low)} m. That is noise with up to "
+        f"{100 * float((noise / sills).max()):.0f} % of the fitted sill: the variance between two points of the bed as far apart as that."
+    )
 
 
 def _bed_notes(result: Result) -> list[str]:

@@ -35,6 +35,7 @@ from texture.stations.where import Where
 
 __all__ = ["LIMIT_COLUMNS", "bare_places", "read_rows"]
 
+ROUGH_M = 100.0  # positions known no better than this are worth a note
 LIMIT_COLUMNS = tuple(f"{part}_{end}" for part in ("mud", "sand", "gravel") for end in ("low", "high"))
 
 
@@ -105,7 +106,7 @@ def read_rows(
             "date": dates,
             "depth_m": depth,
             "resolution": np.where(hard, np.nan, shares.resolution),
-            "position_accuracy_m": positions.accuracy_m,
+            "position_accuracy_m": _accuracy(positions, block, table, notes),
             "description": texts_of(source, "description", ""),
             "described_class": fates.described,
             **_limit_columns(shares, hard),
@@ -123,6 +124,26 @@ def read_rows(
         }
     )
     return frame, notes
+
+
+def _accuracy(positions: Positions, block: Samples, table: Table, notes: list[str]) -> npt.NDArray[np.float64]:
+    """How far each position may be off: by its digits, or as the recipe says where that is more."""
+    accuracy = np.where(
+        np.isnan(positions.accuracy_m), np.nan, np.fmax(positions.accuracy_m, block.position_accuracy_m or 0.0)
+    )
+    rough = accuracy[accuracy >= ROUGH_M]
+    if len(rough):
+        said = (
+            "as the recipe says"
+            if block.position_accuracy_m and rough.max() == block.position_accuracy_m
+            else "by their digits"
+        )
+        notes.append(
+            f"{table.where.text()}: {len(rough)} positions are known to ± {rough.min():,.0f}"
+            + (f" … {rough.max():,.0f}" if round(rough.max()) > round(rough.min()) else "")
+            + f" m {said}; that becomes noise of these stations"
+        )
+    return accuracy
 
 
 def bare_places(joined: Joined, block: Samples) -> pd.DataFrame:
