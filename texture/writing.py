@@ -87,6 +87,7 @@ def input_files(recipe: Recipe) -> list[Path]:
     """List every file that a recipe names, each once."""
     paths: Iterable[Path | None] = (
         *(s.file for s in recipe.samples), *(s.join.file for s in recipe.samples if s.join), recipe.target.file,
+        *(v.file for v in recipe.intake.void),
         recipe.target.land, recipe.outputs.names, recipe.outputs.into,
         *(p for p in ((recipe.rim.sides, recipe.rim.parent, recipe.rim.parent_names) if recipe.rim else ()) if isinstance(p, Path)),
         *(c.file for c in recipe.method.covariates), *(m.file for m in recipe.mobility),

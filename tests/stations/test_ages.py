@@ -2,7 +2,6 @@
 
 import numpy as np
 import pytest
-from pydantic import ValidationError
 
 from tests.stations.samples import HEADER, ROWS
 from texture.composition import LogRatio
@@ -11,7 +10,6 @@ from texture.structure.plane import Plane
 
 DATES = ["1984-01-01", "2004-01-01", "1994-01-01", "", "2004-01-01", "2004-01-01"]
 DATED = [[*HEADER, "Date"], *[[*r, d] for r, d in zip(ROWS, DATES, strict=True)]]
-BOX = [[3.2, 54.1], [3.22, 54.1], [3.22, 54.12], [3.2, 54.12]]  # around A1 and A2
 
 
 def test_noise_grows_with_age_and_the_undated_count_as_oldest(read):
@@ -33,19 +31,3 @@ def test_limits_move_apart_with_age(read):
     rows[1][3] = "10-15"
     low, high = read(rows, intake={"noise_per_decade": 0.02}).table.loc[0, ["mud_low", "mud_high"]]
     assert (low, high) == (pytest.approx(0.06, abs=1e-5), pytest.approx(0.19, abs=1e-5))
-
-
-def test_samples_older_than_a_dredging_are_set_aside_inside_its_polygon(read):
-    more = [["A7", 54.2, 3.3, 10, 90, 0, "", "1980-01-01"], ["A8", 54.11, 3.21, 10, 90, 0, "", ""]]
-    void = {"polygon": BOX, "date": "2000-06-01", "reason": "dredging of the channel"}
-    stations = read([*DATED, *more], intake={"void": [void]})
-    assert stations.set_aside["id"].tolist() == ["A1"]  # A2 lies inside too, but was taken later
-    assert stations.set_aside["reason"][0] == "older than the dredging of the channel of 2000-06-01 at its place"
-    assert any(note.startswith("1 samples without a date lie where there was dredging") for note in stations.notes)
-
-
-def test_a_polygon_without_samples_is_said(read):
-    far = {"polygon": [[10, 10], [11, 10], [11, 11]], "date": "2000-06-01"}
-    assert any("check its polygon" in note for note in read(DATED, intake={"void": [far]}).notes)
-    with pytest.raises(ValidationError, match="at least 3 items"):
-        read(DATED, intake={"void": [{"polygon": BOX[:2], "date": "2000-06-01"}]})

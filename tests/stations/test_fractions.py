@@ -101,11 +101,19 @@ def test_rows_off_the_sum_are_refused_with_the_sum():
     assert shares.mud[2] == pytest.approx(0.305 / 1.005)
 
 
-def test_a_single_share_above_one_stops_with_its_row():
+def test_the_odd_share_above_one_sets_its_row_aside():
+    shares = share({"mud": [20.0, 30.0, 10.0], "sand": [80.0, 137.0, 90.0]}, unit="percent", basis="whole")
+    assert shares.problem.tolist() == ["", 'column "Sand": 137 is more than 100 %', ""]
+    assert np.isnan(shares.sand[1])
+    assert shares.sand[[0, 2]].tolist() == [0.8, 0.9]
+
+
+def test_a_column_of_shares_above_one_stops_with_its_first_row():
     with pytest.raises(
-        SampleError, match=r'a\.csv, row 3, column "Sand": found 137, expected a share of at most 100 %'
+        SampleError,
+        match=r'a\.csv, row 3, column "Sand": found 137 and 2 more like it, expected a share of at most 100 %',
     ):
-        share({"mud": [20.0, 30.0], "sand": [80.0, 137.0]}, unit="percent", basis="whole")
+        share({"mud": [20.0] * 8, "sand": [80.0, 137.0, 200.0, 300.0, *[80.0] * 4]}, unit="percent", basis="whole")
 
 
 def test_percent_read_as_fractions_is_refused():

@@ -217,7 +217,7 @@ def test_no_row_is_ever_lost(read, extra):
         said = str(error)
     else:
         said = ""
-    if said:  # a single share above 100 % stops the file
+    if said:  # several shares above 100 % stop the file
         assert re.search(r'any\.csv, row \d+, column ".*expected a share of at most 100 %', said)
         return
     assert law(stations)

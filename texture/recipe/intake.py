@@ -3,9 +3,10 @@
 from __future__ import annotations
 
 import datetime as dt
+from pathlib import Path
 from typing import Annotated, Literal
 
-from pydantic import Field
+from pydantic import Field, model_validator
 
 from texture.recipe.settings import Positive, Settings
 
@@ -15,13 +16,28 @@ __all__ = ["Intake", "Void"]
 class Void(Settings):
     """A place where older samples no longer hold: dredged, filled, or covered since."""
 
-    polygon: tuple[tuple[float, float], ...] = Field(
-        min_length=3, description="corners as [longitude, latitude] in degrees of WGS 84"
+    polygon: tuple[tuple[float, float], ...] | None = Field(
+        None, min_length=3, description="corners as [longitude, latitude] in degrees of WGS 84"
     )
-    date: dt.date = Field(description="day of the change; samples taken before it are set aside")
+    file: Path | None = Field(None, description="polygons instead: GeoJSON, GeoPackage or Shapefile, in any projection")
+    date: dt.date | None = Field(
+        None,
+        description="day of the change; samples taken before it are set aside; else each polygon's own, an attribute",
+    )
+    date_attribute: str = Field(
+        "date", description="what the file calls the day of each polygon, where `date` is absent"
+    )
     reason: Annotated[str, Field(min_length=1)] = Field(
         "dredging", description="what happened, for the account of rows"
     )
+
+    @model_validator(mode="after")
+    def _one_place(self) -> Void:
+        if (self.polygon is None) == (self.file is None):
+            raise ValueError("void: give either polygon or file")
+        if self.polygon is not None and self.date is None:
+            raise ValueError("void: a polygon needs its date")
+        return self
 
 
 class Intake(Settings):

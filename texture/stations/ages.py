@@ -1,4 +1,4 @@
-"""Old samples: they say less of the present bed, and nothing of a place that was dredged or filled since."""
+"""Old samples say less of the present bed."""
 
 from __future__ import annotations
 
@@ -8,10 +8,9 @@ import numpy as np
 import numpy.typing as npt
 import pandas as pd
 
-from texture.recipe import Intake, Void
 from texture.stations.audit import as_text
 
-__all__ = ["decades_before_last", "first_day", "grow_noise", "set_void"]
+__all__ = ["decades_before_last", "first_day", "grow_noise"]
 
 FloatArray = npt.NDArray[np.float64]
 DAYS_PER_DECADE = 3652.425
@@ -64,39 +63,3 @@ def grow_noise(table: pd.DataFrame, per_decade: float) -> tuple[pd.DataFrame, tu
         table[f"{part}_high"] = np.minimum(table[f"{part}_high"] + grown, 1.0)
     note = f"fractions of samples are taken as known to ± {as_text(per_decade)} more for each decade before the latest, up to ± {grown.max():.3g}"
     return table, (note + (f"; {undated} undated ones count as the oldest" if undated else ""),)
-
-
-def set_void(rows: pd.DataFrame, intake: Intake) -> tuple[str, ...]:
-    """Set aside, in place, the rows that were taken in a void's polygon before its date.
-
-    Returns
-    -------
-    notes : tuple of str
-        Rows inside without a date, which stay.
-    """
-    notes = []
-    for void in intake.void:
-        inside = _inside(void, rows) & rows["fate"].isin(["used", "evidence"]).to_numpy()
-        days = [first_day(str(text)) for text in rows["date"]]
-        old = inside & np.array([day is not None and day < void.date for day in days], dtype=bool)
-        undated = int((inside & np.array([day is None for day in days], dtype=bool)).sum())
-        rows.loc[old, "reason"] = f"older than the {void.reason} of {void.date.isoformat()} at its place"
-        rows.loc[old, "fate"], rows.loc[old, "deep"] = "set_aside", False
-        if undated:
-            notes.append(
-                f"{undated} samples without a date lie where there was {void.reason} on {void.date.isoformat()}; DOUBT: they are kept"
-            )
-        if not inside.any():
-            notes.append(f"no sample lies where there was {void.reason} on {void.date.isoformat()}; check its polygon")
-    return tuple(notes)
-
-
-def _inside(void: Void, rows: pd.DataFrame) -> npt.NDArray[np.bool_]:
-    import shapely
-
-    polygon = shapely.make_valid(shapely.Polygon(void.polygon))
-    lon, lat = (rows[name].to_numpy(dtype=np.float64) for name in ("longitude", "latitude"))
-    located = np.isfinite(lon) & np.isfinite(lat)
-    inside = np.zeros(len(rows), dtype=bool)
-    inside[located] = shapely.intersects_xy(polygon, lon[located], lat[located])
-    return inside

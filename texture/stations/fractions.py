@@ -27,6 +27,7 @@ __all__ = ["share_out"]
 FloatArray = npt.NDArray[np.float64]
 BoolArray = npt.NDArray[np.bool_]
 
+MOST_ABOVE, MOST_ABOVE_SHARE = 2, 0.1  # rows with a share above 1 that are slips of the pen rather than another unit
 BINARY_NOISE = 1e-12  # sums of typed decimals differ from 1 by this much in binary
 THREE = ("mud", "sand", "gravel")
 
@@ -55,7 +56,7 @@ def share_out(
     audit : AuditLog
         Receives a row for each reading that is not plain, each completion and each closing.
     placed : bool array, shape (n,), optional
-        Rows that have a position; only in these is a share above 1 refused, for totals stand in the others.
+        Rows that have a position; only in these is a share above 1 looked at, for totals stand in the others.
     sum_tolerance : float
         Rows whose parts sum outside 1 ± this are refused.
     detection_limit : float
@@ -64,7 +65,7 @@ def share_out(
     Raises
     ------
     SampleError
-        If a single part is more than 1 (100 %) beyond the tolerance.
+        If parts of more than a few rows are more than 1 (100 %) beyond the tolerance.
     """
     unit, note = find_unit(numbers, columns, block.unit, where)
     n = len(rows)
@@ -78,7 +79,7 @@ def share_out(
         given |= (column.reading > Reading.MISSING) | (column.reading == Reading.PLAIN)
         if unit != "weight":
             checked = part.value if placed is None else np.where(placed, part.value, np.nan)
-            _refuse_above_one(checked, cells[role], sum_tolerance, unit, place, rows)
+            _above_one(checked, cells[role], sum_tolerance, unit, place, rows, problem)
         _note_readings(column, part.value, cells[role], place, rows, audit)
         unreadable = column.reading == Reading.UNREADABLE
         for i in map(int, np.flatnonzero(unreadable & (problem == ""))):
@@ -114,15 +115,30 @@ def share_out(
     return Shares(values[:, 0], values[:, 1], values[:, 2], resolution, given, problem, low, high, notes)
 
 
-def _refuse_above_one(
-    value: FloatArray, cells: Sequence[Cell], tolerance: float, unit: str, place: Where, rows: npt.NDArray[np.int64]
+def _above_one(
+    value: FloatArray,
+    cells: Sequence[Cell],
+    tolerance: float,
+    unit: str,
+    place: Where,
+    rows: npt.NDArray[np.int64],
+    problem: npt.NDArray[np.object_],
 ) -> None:
-    above = value > 1.0 + tolerance
-    if above.any():
-        i = int(np.argmax(above))
-        whole = "1" if unit == "fraction" else "100 %" if unit == "percent" else "1000 ‰"
+    """Set aside the odd row with a share above 1; refuse a column of them, for then its unit or heading is wrong."""
+    above = np.flatnonzero(value > 1.0 + tolerance)
+    if not len(above):
+        return
+    whole = "1" if unit == "fraction" else "100 %" if unit == "percent" else "1000 ‰"
+    known = int(np.isfinite(value).sum())
+    if len(above) > max(MOST_ABOVE, MOST_ABOVE_SHARE * known) or 2 * len(above) > known:
         hint = 'or say unit = "percent"' if unit == "fraction" else "or name the right column"
-        raise place.error(shown(cells[i]), f"a share of at most {whole}", f"correct the cell, {hint}", row=int(rows[i]))
+        many = f" and {len(above) - 1} more like it" if len(above) > 1 else ""
+        i = int(above[0])
+        raise place.error(
+            shown(cells[i]) + many, f"a share of at most {whole}", f"correct the cell, {hint}", row=int(rows[i])
+        )
+    for i in above[problem[above] == ""]:
+        problem[i] = f'column "{place.column}": {shown(cells[i])} is more than {whole}'
 
 
 _RULES = {

@@ -14,7 +14,7 @@ import pandas as pd
 from texture.errors import SampleError
 from texture.recipe import Recipe, Samples
 from texture.stations.account import DEEPER_COLUMNS, FATES, LEDGER_COLUMNS, TABLE_COLUMNS, Stations, _with_points
-from texture.stations.ages import grow_noise, set_void
+from texture.stations.ages import grow_noise
 from texture.stations.audit import AuditLog
 from texture.stations.copies import find_copies
 from texture.stations.offsets import Offset, method_offsets
@@ -22,6 +22,7 @@ from texture.stations.quantities import check_found, merge_quantities, width_nam
 from texture.stations.repeats import merge_repeats
 from texture.stations.rows import bare_places, read_rows
 from texture.stations.sources import find_source
+from texture.stations.voids import set_void
 
 __all__ = ["FEWEST", "read_samples"]
 
