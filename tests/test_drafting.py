@@ -57,3 +57,17 @@ def test_grid_that_cannot_be_read_is_a_doubt(table):
     (table.parent / "grid.nc").write_text("no grid")
     text = draft([table], table.parent / "new.toml", grid=table.parent / "grid.nc")
     assert "# DOUBT: grid.nc: cannot be read as NetCDF" in text
+
+
+def test_what_the_grid_can_give_is_proposed_and_can_be_switched_on(table, demo_recipe):
+    from texture.recipe.file import read_recipe
+
+    text = draft([table], table.parent / "new.toml", grid=demo_recipe.parent / "model_grid.nc")
+    plain = read_recipe(table.parent / "new.toml")
+    assert not plain.method.covariates
+    begin, end = text.index("# [[method.covariates]]"), text.index("# A coarse rim")
+    proposal = text[begin:end].replace("# ", "", 1).replace("\n# ", "\n")
+    (table.parent / "new.toml").write_text(text[:begin] + proposal + text[end:])
+    recipe = read_recipe(table.parent / "new.toml")
+    assert [c.name for c in recipe.method.covariates] == ["depth", "shore_distance"]
+    assert recipe.validation.compare[-2:] == ("kriging_with_covariates", "kriging_in_water")

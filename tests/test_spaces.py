@@ -145,3 +145,44 @@ def test_water_that_is_not_connected_falls_back_to_the_plane_and_says_so(bay):
     assert result.found.mapper.space.ground is None
     assert "the water is not connected" in repr(result)
     assert "distance in the plane is taken instead" in (result.found.recipe.output / "report.html").read_text()
+
+
+@pytest.mark.parametrize(
+    ("method", "message"),
+    [
+        ({"radius_m": 500.0}, 'radius_m chooses stations point by point; it needs neighbourhood = "nearest"'),
+        ({"at_least": 3}, "at_least acts with radius_m or per_sector_at_most only"),
+        ({"name": "nearest", "neighbourhood": "nearest", "radius_m": 500.0}, "acts on kriging only"),
+        ({"neighbourhood": "nearest", "radius_m": 500.0, "neighbours": 8, "at_least": 9}, "more than the 8 neighbours"),
+    ],
+)
+def test_a_rule_that_cannot_act_is_told(small, method, message):
+    change(small, **method)
+    with pytest.raises(RecipeError, match=message):
+        read_recipe(small)
+
+
+@pytest.mark.slow
+def test_a_radius_leaves_the_map_empty_and_the_bed_whole(small):
+    change(small, neighbourhood="nearest", radius_m=1_200.0, at_least=3, per_sector_at_most=4)
+    result = build(small, validation={"count": 3, "compare": ["nearest"]}, composition={"zeros": "replace"})
+    target, out = result.found.target, result.found.recipe.output
+    outside = result.estimate.outside
+    # The same by hand: fewer than three stations within the radius of any of the points inside the cell.
+    centres = result.found.cell_centres
+    near = np.linalg.norm(centres[:, None] - result.found.observations.points, axis=2)
+    sure = (np.sort(near, axis=1)[:, 2] > 1_200.0 + 360.0), (np.sort(near, axis=1)[:, 2] < 1_200.0 - 360.0)
+    assert outside[sure[0]].all()
+    assert not outside[sure[1]].any()
+    assert 0 < outside.sum() < target.n_cells
+    with xr.open_dataset(out / "texture.nc") as texture, xr.open_dataset(out / "bed.nc") as bed:
+        empty = np.isnan(texture["mud_fraction"].to_numpy()).ravel()
+        np.testing.assert_array_equal(empty, outside)
+        np.testing.assert_array_equal(np.isnan(texture["logratio_1_variance"].to_numpy()).ravel(), outside)
+        assert (texture["evidence"].to_numpy().ravel()[outside] == 6).all()
+        assert (texture["texture_class"].to_numpy().ravel()[outside] == 0).all()
+        assert np.isfinite(bed["class_fraction"].to_numpy()).all()
+        rim = bed["rim_weight"].to_numpy().ravel() > 0
+        evidence = bed["evidence"].to_numpy()[0].ravel()
+        assert (evidence[outside & ~rim] == 6).all()
+    assert f"{outside.sum():,} cells have fewer than 3 stations within 1.2 km" in repr(result)

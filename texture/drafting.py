@@ -12,6 +12,7 @@ from texture.recipe import TargetSettings
 from texture.stations.draft import draft_recipe
 from texture.stations.plausible import DepthAt
 from texture.targets import Target, read_target
+from texture.targets.water import knows_land
 
 if TYPE_CHECKING:
     import numpy as np
@@ -27,6 +28,20 @@ RIM = """
 # sides = "open"
 # width_cells = 6
 # classes = { sand = 1.0 }
+"""
+COVARIATES = """
+# Mud often follows depth and shore. Whether they help here, held-out error says: take the # away, run texture validate, and look at
+# kriging_with_covariates beside kriging; to map with them, set distance = "with_covariates" under [method].
+# [[method.covariates]]
+# name = "depth"                 # of this grid; transform = "log" counts shallow steps for more
+"""
+SHORE = """\
+# [[method.covariates]]
+# name = "shore_distance"        # from this grid's land
+"""
+COMPARE = """\
+# [validation]
+# compare = ["nearest", "inverse_distance", "kriging", "kriging_with_covariates"{}]
 """
 CLASSES = """
 # The bed gets one class for each part unless [[bed.classes]] says more. Settling, threshold and erosion of
@@ -71,7 +86,7 @@ def draft(
     extent = target.bounds if target is not None else None
     depth_at = _depth_at(target) if target is not None else None
     text = draft_recipe(files, recipe_path.absolute().parent, grid, extent, depth_at=depth_at)
-    text += _grid_lines(target, problem) + RIM + CLASSES
+    text += _grid_lines(target, problem) + _covariate_lines(target) + RIM + CLASSES
     aside = recipe_path.with_name(f".{recipe_path.name}.new")
     aside.write_text(text, encoding="utf-8")
     aside.replace(recipe_path)
@@ -104,6 +119,14 @@ def _depth_at(target: Target) -> DepthAt | None:
         return np.where(distance <= side[cell], depth[cell], np.nan)
 
     return depth_at
+
+
+def _covariate_lines(target: Target | None) -> str:
+    """Propose what the grid itself can give, as comments."""
+    if target is None or target.depth_m is None:
+        return ""
+    land = knows_land(target)
+    return COVARIATES + SHORE * land + COMPARE.format(', "kriging_in_water"' if land else "")
 
 
 def _grid_lines(target: Target | None, problem: str) -> str:

@@ -2,8 +2,8 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
-from typing import TYPE_CHECKING
+from dataclasses import dataclass, replace
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -48,6 +48,8 @@ class Estimate:
     texture_class : int array, shape (n,)
         Number of the most probable class in the scheme's own order, from 1; 0 where there is no map.
     class_probability : float array, shape (n,)
+    outside : bool array, shape (n,)
+        Cells that have too few stations within the radius that the user set; what stands here for them is of the nearest.
     """
 
     fractions: Floats
@@ -57,6 +59,20 @@ class Estimate:
     evidence: NDArray[np.int8]
     texture_class: NDArray[np.int8]
     class_probability: Singles
+    outside: NDArray[np.bool_]
+
+    @property
+    def within_radius(self) -> Estimate:
+        """The map with nothing in cells outside the user's radius but their evidence."""
+        if not self.outside.any():
+            return self
+        emptied: dict[str, Any] = {"texture_class": np.where(self.outside, np.int8(0), self.texture_class)}
+        for name in ("fractions", "mean", "variance", "class_probability"):
+            emptied[name] = getattr(self, name).copy()
+            emptied[name][self.outside] = np.nan
+        emptied["quantiles"] = self.quantiles.copy()
+        emptied["quantiles"][:, self.outside] = np.nan
+        return replace(self, **emptied)
 
 
 def estimate_on(
@@ -94,13 +110,13 @@ def estimate_on(
     fractions, quantiles = np.full((n, parts), np.nan), np.full((len(QUANTILES), n, parts), np.nan, dtype=np.float32)
     mean, variance = np.full((2, n, d), np.nan, dtype=np.float32)
     evidence, classes = np.zeros(n, dtype=np.int8), np.zeros(n, dtype=np.int8)
-    probability = np.full(n, np.nan, dtype=np.float32)
+    probability, outside = np.full(n, np.nan, dtype=np.float32), np.zeros(n, dtype=bool)
     apart_m = sampling_distance_m(stations)
     with progress.stage("estimate", total=cells.size) as advance:
         for start in range(0, cells.size, CELLS_AT_ONCE):
             some = cells[start : start + CELLS_AT_ONCE]
             inside = cell_points(target, some, per_side, plane.to_metres)
-            m, v, rung = mapper.predict_with_rung(inside.reshape(-1, 2))
+            m, v, rung = mapper.predict_with_rung(inside.reshape(-1, inside.shape[-1]))
             shape = inside.shape[:2]
             back = mapper.back(m) if median else mapper.expected(m, v)
             fractions[some] = back.reshape(*shape, parts).mean(axis=1)
@@ -114,5 +130,6 @@ def estimate_on(
             evidence[some] = np.where(beyond_reach(centre, stations, reach_m), EXTRAPOLATED, SUPPORTED)
             fell_back = rung.reshape(*shape).max(axis=1) > 0
             evidence[some[fell_back]] = WIDER
+            outside[some[fell_back]] = mapper.has_radius
             advance(some.size)
-    return Estimate(fractions, quantiles, mean, variance, evidence, classes, probability)
+    return Estimate(fractions, quantiles, mean, variance, evidence, classes, probability, outside)

@@ -256,6 +256,11 @@ class Mapper:
         return isinstance(self.predictor, Kriging)
 
     @property
+    def has_radius(self) -> bool:
+        """Tell whether the user set a radius beyond which no station counts."""
+        return self.solves and self.predictor.radius_m is not None
+
+    @property
     def small_scale(self) -> Floats:
         """Variance of the bed's patchiness in each column, shape (k,)."""
         return np.array([c.small_scale for c in self.structure])

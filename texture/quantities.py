@@ -127,7 +127,7 @@ class QuantityMap:
     ----------
     model : QuantityModel
     mean : float array, shape (n,)
-        Expected mean of each cell, in the quantity's unit.
+        Expected mean of each cell, in the quantity's unit; NaN where a radius set by the user finds too few stations.
     quantiles : float array, shape (3, n)
         At 0.05, 0.5 and 0.95, of the cell mean; NaN for methods without a variance.
     evidence : int array, shape (n,)
@@ -258,7 +258,8 @@ def _map(
         evidence[some] = np.where(
             beyond_reach(points.mean(axis=1), model.points, model.reach_m), EXTRAPOLATED, SUPPORTED
         )
-        evidence[some[rung.max(axis=1) > 0]] = WIDER
+        fell_back = rung.max(axis=1) > 0
+        evidence[some[fell_back]] = WIDER
         if mapper.has_variance:
             mean[some] = scale.expected(m, v).mean(axis=1)
             middle, whole = m.mean(axis=1), v.mean(axis=1)
@@ -266,5 +267,7 @@ def _map(
             quantiles[:, some] = scale.expected(middle + normal * np.sqrt(whole - within), within)
         else:
             mean[some] = scale.back(m).mean(axis=1)
+        if mapper.has_radius:
+            mean[some[fell_back]], quantiles[:, some[fell_back]] = np.nan, np.nan
         advance(some.size)
     return QuantityMap(model, mean, quantiles, evidence)

@@ -246,6 +246,7 @@ class Result:
         lines.append(
             f"  support     {100 * self.beyond_share:.1f} % of the water area is further than {found.reach_m / 1000:.1f} km from any sample"
         )
+        lines += radius_lines(self)
         lines.append(bed)
         lines += mobility_lines(self.moved)
         lines += [] if self.members is None else [self.members.line()]
@@ -323,6 +324,17 @@ def structure_lines(found: Validated) -> list[str]:
             + "".join(f"; range of {n} {r:.2g} sd" for n, r in own_ranges(found.mapper.space, covariance).items())
         )
     return lines
+
+
+def radius_lines(result: Result) -> list[str]:
+    """Say how many cells a radius of the user's leaves without a map."""
+    method, outside = result.found.recipe.method, int(result.estimate.outside.sum())
+    if method.radius_m is None:
+        return []
+    return [
+        f"  radius      {outside:,} cells have fewer than {method.at_least} stations within {method.radius_m / 1000:g} km: empty in "
+        "texture.nc, from the nearest stations in bed.nc"
+    ]
 
 
 def distance_lines(found: Validated) -> list[str]:

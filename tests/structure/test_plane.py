@@ -5,6 +5,8 @@ from hypothesis import strategies as st
 from pyproj import Geod
 
 from texture.errors import StructureError
+from texture.predict import Kriging
+from texture.structure import Covariance
 from texture.structure.plane import Plane, check_metres
 
 WGS84 = Geod(ellps="WGS84")
@@ -78,6 +80,13 @@ def test_degrees_are_not_metres():
     with pytest.raises(StructureError, match="look like degrees, expected metres"):
         check_metres([[3.0, 55.0], [3.2, 55.1]])
     check_metres([[500_000.0, 55.0], [500_100.0, 80.0]])
+    check_metres([[0.0, 0.0], [10.0, 0.0], [0.0, 10.0]])  # a worked example around its origin
+    rng = np.random.default_rng(1)
+    degrees = np.column_stack([rng.uniform(-27.0, -26.0, 30), rng.uniform(44.0, 44.6, 30)])
+    for call in (Covariance.fit, Kriging(Covariance([], small_scale=1.0)).fit):
+        with pytest.raises(StructureError, match=r"convert them with Plane\.choose"):
+            call(degrees, rng.normal(size=30))
+    Covariance.fit(degrees - degrees.mean(axis=0), rng.normal(size=30))
 
 
 @pytest.mark.parametrize(

@@ -13,6 +13,7 @@ from texture.errors import StructureError, TextureWarning
 from texture.predict.inputs import Stations, check_columns, check_drift, check_stations
 from texture.predict.system import MOST_DENSE, System
 from texture.structure.covariance import Covariance, CovarianceSet, check_points
+from texture.structure.plane import check_metres
 
 __all__ = ["Kriging"]
 
@@ -146,6 +147,7 @@ class Kriging:
             with a known mean, more than 3,000 stations with ``neighbours=None``.
         """
         stations = check_stations(points, values, noise_variance, survey, drift)
+        check_metres(stations.points)
         covariances = self._covariances(stations.columns)
         means = self._means(stations.columns)
         if means is not None and stations.drift is not None:

@@ -65,11 +65,14 @@ class Method:
     drift: bool = False
 
 
+KRIGING_SETTINGS = ("neighbours", "neighbourhood", "radius_m", "at_least", "per_sector_at_most")
+
+
 def _kriging(distance: str = "plane", drift: bool = False) -> Method:
     def make(covariance: Any, **settings: Any) -> Predictor:
         return Kriging(covariance, **settings)
 
-    return Method(make, True, True, ("neighbours", "neighbourhood"), distance, drift)
+    return Method(make, True, True, KRIGING_SETTINGS, distance, drift)
 
 
 METHODS: dict[str, Method] = {

@@ -7,7 +7,7 @@ from typing import Annotated, Any, Literal
 from pydantic import Field, model_validator
 
 from texture.recipe.covariate import Covariate
-from texture.recipe.settings import Settings, check_names
+from texture.recipe.settings import Positive, Settings, check_names
 
 __all__ = ["Method", "MethodName"]
 
@@ -31,6 +31,18 @@ class Method(Settings):
     neighbours: Annotated[int, Field(ge=4, le=500)] = Field(32, description="stations around a point")
     neighbourhood: Literal["tile", "nearest"] = Field(
         "tile", description="one neighbourhood for each small tile, or exactly `neighbours` for each point"
+    )
+    radius_m: Positive | None = Field(
+        None,
+        description='with neighbourhood = "nearest": stations further off are not used; cells with fewer than `at_least` within it '
+        "are empty in texture.nc, and filled from the nearest stations in bed.nc",
+    )
+    at_least: Annotated[int, Field(ge=1)] = Field(
+        1,
+        description="stations that a point needs within the radius and sectors; with fewer the nearest serve, and it is flagged",
+    )
+    per_sector_at_most: Annotated[int, Field(ge=1)] | None = Field(
+        None, description='with neighbourhood = "nearest": stations from each quadrant around a point at most'
     )
     distance: Literal["plane", "in_water", "with_covariates"] = Field(
         "plane",
@@ -66,6 +78,7 @@ class Method(Settings):
 
     @model_validator(mode="after")
     def _agrees(self) -> Method:
+        self._check_neighbourhood()
         names = tuple(c.name for c in self.covariates)
         for name in names:
             if names.count(name) > 1:
@@ -74,6 +87,19 @@ class Method(Settings):
         if len(set(self.drift)) < len(self.drift):
             raise ValueError(f"drift: found {list(self.drift)}, expected each name once")
         return self
+
+    def _check_neighbourhood(self) -> None:
+        ruled = [key for key in ("radius_m", "per_sector_at_most") if getattr(self, key) is not None]
+        if ruled and self.neighbourhood != "nearest":
+            raise ValueError(f'{ruled[0]} chooses stations point by point; it needs neighbourhood = "nearest"')
+        if ruled and not self.name.startswith("kriging"):
+            raise ValueError(f'{ruled[0]} acts on kriging only; found name = "{self.name}"')
+        if self.at_least > 1 and not ruled:
+            raise ValueError("at_least acts with radius_m or per_sector_at_most only; give one of them")
+        if self.at_least > self.neighbours:
+            raise ValueError(
+                f"at_least = {self.at_least}: more than the {self.neighbours} neighbours that are looked for"
+            )
 
     def check_used(self, names: tuple[str, ...]) -> None:
         """See that the methods of a run have the covariates they need, and that none is given in vain."""

@@ -323,7 +323,9 @@ class Covariance:
         Covariance for values (n,), CovarianceSet for values (n, v)
         """
         from texture.structure.fit import fit_covariance
+        from texture.structure.plane import check_metres
 
+        check_metres(check_points(points))
         return fit_covariance(points, values, method, noise_variance, survey, drift, groups, start, seed, **options)
 
 

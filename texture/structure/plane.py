@@ -31,21 +31,36 @@ def _transformer(source: str, target: str) -> Any:
 
 
 def check_metres(points: ArrayLike) -> None:
-    """Refuse coordinates that look like degrees where metres are expected.
+    """Refuse plane coordinates that can only be degrees where metres are expected.
+
+    Parameters
+    ----------
+    points : float array, shape (n, d)
+        Looked at where d is 2 and n at least 2.
 
     Raises
     ------
     StructureError
-        If there are at least two points, all of them within 360 and 90 and none farther than that apart: a survey
-        less than 360 m wide that also lies at the origin of its projection does not occur; degrees do.
+        If all points lie within 360 and 90 of the origin and their middle is more than twice as far from it as they are
+        spread. Numbers alone cannot prove degrees, and small coordinates are legitimate in metres (a local grid, a flume, a worked
+        example): those surround their origin or touch it, while the degrees of a survey stand well off theirs.
+        A region of degrees that is wide against its distance from 0° N 0° E passes; metres that are refused pass once their mean is
+        taken away, which changes no result.
+
+    Examples
+    --------
+    >>> check_metres([[0.0, 0.0], [10.0, 3.0]])
     """
     array = np.asarray(points, dtype=np.float64)
-    if len(array) < 2 or array.shape[1] < 2:
+    if len(array) < 2 or array.shape[1] != 2:
         return
-    if np.abs(array[:, 0]).max() <= 360.0 and np.abs(array[:, 1]).max() <= 90.0:
+    low, high = array.min(axis=0), array.max(axis=0)
+    if max(-low[0], high[0]) > 360.0 or max(-low[1], high[1]) > 90.0:
+        return
+    if np.linalg.norm(0.5 * (low + high)) > 2.0 * np.linalg.norm(high - low):
         raise StructureError(
-            f"points: found x {array[:, 0].min():g} to {array[:, 0].max():g}, y {array[:, 1].min():g} to "
-            f"{array[:, 1].max():g}, which look like degrees, expected metres; convert them with Plane.choose"
+            f"points: found x {low[0]:g} to {high[0]:g}, y {low[1]:g} to {high[1]:g}, which look like degrees, expected metres; "
+            "convert them with Plane.choose, or take their mean away if they are metres"
         )
 
 
