@@ -88,7 +88,7 @@ def fit_candidates(observations: Observations, recipe: Recipe, space: Space = PL
     from texture.predict import METHODS
 
     plain = learn(plain_treatment(recipe.composition), observations, recipe.method, space=space)
-    wanted = candidates(recipe.composition, observations, METHODS[recipe.method.name].has_variance)
+    wanted = candidates(recipe.composition, observations, METHODS[recipe.method.tried_with].has_variance)
     others = [t for t in wanted if t != plain.treatment]
     found = learn_all([(t, observations, warm_start(t, plain)) for t in others], recipe.method, space)
     return plain, [plain] * (len(wanted) > len(others)) + found
@@ -185,7 +185,7 @@ def limit_effect(learned: Learned, method: Method, places: Floats) -> LimitEffec
     )
     means = []
     for other in (learned, *others):
-        mapper = make_mapper(method.name, other, method)
+        mapper = make_mapper(method.tried_with, other, method)
         fractions = mapper.expected(*mapper.predict(places))
         means.append(tuple(float(v) for v in fractions.mean(axis=0)))
     return LimitEffect(treatment.limit, means[0], means[1], means[2], len(places))

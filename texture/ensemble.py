@@ -27,7 +27,7 @@ def check_ensemble(recipe: Recipe) -> None:
     """Refuse members of a method without a variance, before the work; raises `RecipeError`."""
     from texture.predict import METHODS
 
-    if recipe.ensemble.members and not METHODS[recipe.method.name].has_variance:
+    if recipe.ensemble.members and not METHODS[recipe.method.tried_with].has_variance:
         raise RecipeError(
             f'ensemble.members = {recipe.ensemble.members}: method.name = "{recipe.method.name}" does not say how uncertain '
             'it is, so there is nothing to draw from; use "kriging"'

@@ -215,6 +215,8 @@ class Mapper:
     predictor : Predictor
     error : (variance (k,), correlation (k, k)) or None
         Spread of the held-out errors of a method that knows no variance; None where it is not known either.
+    factors : float array, shape (k,), or None
+        Calibration of a variance that does not come from `structure`.
     space : Space
         Where it sees places.
     """
@@ -224,6 +226,7 @@ class Mapper:
     structure: CovarianceSet
     predictor: Any
     error: tuple[Floats, Floats] | None = None
+    factors: Floats | None = None
     space: Space = PLANE
 
     @property
@@ -273,7 +276,7 @@ class Mapper:
         mean, variance = self.predictor.predict(seen.points, drift=seen.drift)
         if not self.integrates and self.error is not None:
             variance = np.tile(self.error[0], (len(mean), 1))
-        return mean, variance
+        return mean, variance if self.factors is None else variance * self.factors
 
     def predict_with_rung(self, points: Floats) -> tuple[Floats, Floats, NDArray[np.int8]]:
         """Mean, variance, and per point how far the neighbourhood had to look: 0 the usual one, above it wider.
@@ -338,7 +341,12 @@ class Mapper:
 
 
 def make_mapper(
-    name: str, learned: Learned, method: Method, error: tuple[Floats, Floats] | None = None, **settings: Any
+    name: str,
+    learned: Learned,
+    method: Method,
+    error: tuple[Floats, Floats] | None = None,
+    factors: Floats | None = None,
+    **settings: Any,
 ) -> Mapper:
     """Fit one method on the stations that a treatment has learned from, in the space that it learned in.
 
@@ -351,6 +359,8 @@ def make_mapper(
         Of the recipe.
     error : (variance (k,), correlation (k, k)), optional
         Spread of held-out errors, for methods that know no variance.
+    factors : float array, shape (k,), optional
+        Calibration of a variance that does not come from the structure of `learned`.
     **settings
         Further arguments of the method's class.
     """
@@ -362,4 +372,4 @@ def make_mapper(
         predictor.fit(
             seen.points, learned.values, noise_variance=learned.noise, survey=learned.survey, drift=seen.drift
         )
-    return Mapper(name, learned.treatment, learned.structure, predictor, error, learned.space)
+    return Mapper(name, learned.treatment, learned.structure, predictor, error, factors, learned.space)

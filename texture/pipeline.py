@@ -17,12 +17,11 @@ from texture.ensemble import drawn_ensemble
 from texture.estimate import estimate_on
 from texture.flagging import flag_stations
 from texture.inventory import make_inventory
-from texture.mapping import make_mapper
 from texture.observations import observe
 from texture.placing import place_stations
 from texture.progress import Progress, Silent
 from texture.quantities import learn_quantities, map_quantities
-from texture.recipe import Recipe
+from texture.recipe import Recipe, with_method
 from texture.recipe.file import read_recipe
 from texture.result import Intake, Result, Validated
 from texture.second_look import second_look
@@ -149,10 +148,11 @@ def _validated(recipe: Recipe, progress: Progress, clock: Clock, before: Check |
     with clock.stage("space"), progress.stage("find what distance means"):
         spaces = make_spaces(recipe, target, plane, observations)
     with clock.stage("fit"), progress.stage("fit the spatial structure"):
-        plain, treated = fit_candidates(observations, recipe, spaces[recipe.method.name])
+        plain, treated = fit_candidates(observations, recipe, spaces[recipe.method.tried_with])
     with clock.stage("validate"):
         validation = validate_methods(observations, target, plane, plain, treated, recipe, progress, spaces=spaces)
+        recipe = with_method(recipe, validation.method)
         quantities = learn_quantities(stations, observations, validation.folds, recipe, progress, spaces)
-    mapper = make_mapper(validation.method, validation.learned, recipe.method, validation.judged.error)
+    mapper = validation.mapper(recipe.method)
     stations = flag_stations(stations, mapper, observations)
     return Validated(recipe, stations, target, plane, observations, mapper, validation, quantities, spaces)

@@ -157,7 +157,8 @@ def learn_quantities(
     """
     if not recipe.quantities:
         return ()
-    methods = tuple(dict.fromkeys((recipe.method.name, *recipe.validation.compare)))
+    asked = dict.fromkeys((recipe.method.tried_with, *recipe.validation.compare))
+    methods = tuple(name for name in asked if name != "average")  # its weights are those of the parts
     with progress.stage("further numbers", total=len(recipe.quantities) * len(methods)) as advance:
         places: dict[str, Space] = {name: (spaces or {}).get(name, PLANE) for name in methods}
         return tuple(_learn(q, stations, observations, folds, recipe, places, advance) for q in recipe.quantities)
@@ -202,7 +203,7 @@ def _learn(
         held_out.append(_hold_out(name, learned, pairs, inside, recipe, observations.count, known, measured))
         advance(1)
     reach_m = validated_reach_m(own.held_out_distances(some.points))
-    mapper = make_mapper(recipe.method.name, found[id(spaces[recipe.method.name])][0], recipe.method)
+    mapper = make_mapper(recipe.method.tried_with, found[id(spaces[recipe.method.tried_with])][0], recipe.method)
     return QuantityModel(quantity, mapper, some.points, measured, tuple(held_out), reach_m)
 
 

@@ -13,6 +13,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from texture.space import own_ranges, space_line, space_record
+from texture.validation_lines import validation_lines, validation_record
 
 if TYPE_CHECKING:
     from texture.bed import Bed, Moved, Stock
@@ -118,6 +119,7 @@ class Validated:
         """Counts, scores and files."""
         return {**self.stations.counts, "folds": self.validation.folds.count, "zeros": self.mapper.treatment.label,
                 "space": space_record(self.mapper.space), "scores": self.scores(),
+                "validation": validation_record(self),
                 "files": [p.name for p in self.files]}  # fmt: skip
 
     def summary_lines(self) -> list[str]:
@@ -127,7 +129,7 @@ class Validated:
             *lines,
             *zeros_lines(self),
             *distance_lines(self),
-            *error_lines(self),
+            *validation_lines(self),
             *quantity_lines(self),
             *written_line(self.recipe, self.files),
         ]
@@ -207,6 +209,7 @@ class Result:
             "zeros": self.found.mapper.treatment.label,
             "space": space_record(self.found.mapper.space),
             "scores": self.found.scores(),
+            "validation": validation_record(self.found),
             "share_beyond_samples": self.beyond_share,
             "share_of_mass_below_samples": account.share_below_samples,
             "tonnes": account.tonnes,

@@ -2,8 +2,9 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
-from typing import TYPE_CHECKING
+from collections.abc import Mapping
+from dataclasses import dataclass, field, replace
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -42,12 +43,18 @@ class Judged:
         Spread of a method without a variance, from all its held-out errors.
     before : DrawScores
         As `held_out.draws`, without the factors.
+    columns : Columns
+        As predicted, not calibrated.
+    settings : mapping
+        What the method is to be made with for the map.
     """
 
     held_out: HeldOut
     factors: Floats | None
     error: tuple[Floats, Floats] | None
     before: DrawScores
+    columns: Columns
+    settings: Mapping[str, Any] = field(default_factory=dict)
 
 
 @dataclass(frozen=True, eq=False)
@@ -118,7 +125,7 @@ class Judge:
                 c: np.where(np.isfinite(z2[:, j]), z2[:, j], np.nan) for j, c in enumerate(treatment.column_names)
             },
         )
-        return Judged(held, factors, error, before or draws)
+        return Judged(held, factors, error, before or draws, columns)
 
     def compare(self, judged: Judged, controls: dict[str, Floats]) -> Judged:
         """Add the table of scores, with skill over the controls' predictions."""

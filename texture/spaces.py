@@ -41,14 +41,15 @@ def make_spaces(recipe: Recipe, target: Target, plane: Plane, observations: Obse
 
     maker = Spaces(recipe, target, plane, observations)
     found: dict[str, Space] = {}
-    for name in dict.fromkeys((recipe.method.name, *recipe.validation.compare)):
+    for name in recipe.methods:
         method = METHODS[name]
         if method.distance == "in_water":
             found[name] = maker.in_water
         elif method.distance == "with_covariates":
             found[name] = maker.with_covariates
         else:
-            found[name] = maker.with_drift if method.drift else PLANE
+            given = bool(recipe.method.covariates or recipe.method.drift)  # a forest can do without
+            found[name] = maker.with_drift if method.drift and given else PLANE
     return found
 
 

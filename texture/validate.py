@@ -10,8 +10,9 @@ from typing import TYPE_CHECKING, Any, Protocol
 import numpy as np
 from numpy.typing import NDArray
 
+from texture.averaging_methods import average_held_out
 from texture.choosing import LimitEffect, Tried, choose, limit_effect, with_columns_of
-from texture.mapping import Learned, columns_in, learn, learn_each, make_mapper
+from texture.mapping import Learned, Mapper, columns_in, learn, learn_each, make_mapper
 from texture.observations import Observations
 from texture.progress import Progress
 from texture.recipe import Recipe
@@ -25,6 +26,7 @@ from texture.validation.reach import validated_reach_m
 from texture.validation.resampling import block_weights, map_weights
 
 if TYPE_CHECKING:
+    from texture.recipe import Method
     from texture.structure import CovarianceSet
     from texture.structure.plane import Plane
     from texture.targets import Target
@@ -85,6 +87,8 @@ class Validation:
         All methods by energy score, the simplest first; empty where no station knows all parts.
     block_m : float
         Side of the blocks that scores are resampled in.
+    searched : bool
+        Whether the map's method was chosen among all.
     """
 
     folds: Folds
@@ -97,6 +101,7 @@ class Validation:
     judged: Judged
     standings: list[Standing] = field(default_factory=list)
     block_m: float = np.nan
+    searched: bool = False
 
     @property
     def chosen(self) -> HeldOut:
@@ -107,6 +112,13 @@ class Validation:
     def method(self) -> str:
         """Name of the map's method."""
         return self.methods[0].method
+
+    def mapper(self, method: Method) -> Mapper:
+        """Fit the map's method on all stations."""
+        from texture.predict import solves
+
+        factors = None if solves(self.method) else self.judged.factors
+        return make_mapper(self.method, self.learned, method, self.judged.error, factors, **self.judged.settings)
 
 
 def validate_methods(
@@ -139,7 +151,7 @@ def validate_methods(
     spaces : mapping of str to Space, optional
         Where each method takes distance; the plane where it is not named. In each space structure is fitted anew.
     """
-    from texture.predict import METHODS
+    from texture.predict import METHODS, solves
 
     limit, points = recipe.composition.detection_limit, observations.points
     places = _map_points(target, plane, recipe.seed)
@@ -150,40 +162,58 @@ def validate_methods(
     weights = ScoreWeights(map_weights(points, places), block_weights(points, block_m, recipe.seed))
     scored = np.where(observations.measured[:, None], observations.fractions, np.nan)
     judge = Judge(recipe.composition.parts, scored, folds.labels, weights, limit)
-    own = recipe.method.name
-    compared = [n for n in dict.fromkeys(recipe.validation.compare) if n != own]
+    own = recipe.method.tried_with
+    compared = [n for n in recipe.methods if n != own and (n != "triangulation" or points.shape[1] == 2)]
     runs = [(own, learned) for learned in treated] + [
         (name, _plain_in((spaces or {}).get(name, PLANE), plain, recipe, METHODS[name].needs_covariance))
         for name in compared
     ]
+    runs.sort(key=lambda run: run[0] == "average")  # made of what the others predicted
     with progress.stage(f"validate {len(runs)} × {folds.count} folds", total=len(runs) * folds.count) as advance:
         bench = _Bench(recipe, plain, folds, journal or Forgets(), advance)
-        judged = []
+        judged: list[Judged] = []
         for number, (name, learned) in enumerate(runs):
-            columns = bench.run(number, name, learned)
-            judged.append(judge.judge(name, learned, columns, METHODS[name].has_variance))
+            if name == "average":
+                members = {
+                    n: j.columns
+                    for (n, other), j in zip(runs, judged, strict=False)
+                    if other is plain and n not in ("mean", "average")
+                }
+                columns, settings = average_held_out(members, plain, observations.measured, folds.labels)
+                advance(folds.count)
+            else:
+                columns, settings = bench.run(number, name, learned), {}
+            found = judge.judge(name, learned, columns, METHODS[name].has_variance)
+            judged.append(replace(found, settings=settings))
     first = len(treated)
     tried = choose([run.treatment for run in treated], [j.held_out for j in judged[:first]], scored, limit)
     taken = next(i for i, t in enumerate(tried) if t.chosen)
     controls = {j.held_out.method: j.held_out.predicted for j in judged if j.held_out.method in CONTROLS}
     judged = [judge.compare(j, controls) for j in judged]
     tried = [replace(t, held_out=j.held_out) for t, j in zip(tried, judged[:first], strict=True)]
-    learned = treated[taken]
-    effect = limit_effect(learned, recipe.method, places[:: max(1, -(-len(places) // MOST_LIMIT_CELLS))])
+    effect = limit_effect(treated[taken], recipe.method, places[:: max(1, -(-len(places) // MOST_LIMIT_CELLS))])
     methods = [judged[taken], *judged[first:]]
     standings = _standings([j.held_out for j in methods], weights)
-    factors = judged[taken].factors
+    wanted: str = recipe.method.name
+    if wanted == "best":
+        wanted = next((s.method for s in standings if s.simplest), own)
+    methods.sort(key=lambda j: j.held_out.method != wanted)
+    chosen = methods[0]
+    learned = runs[judged.index(chosen)][1]
+    if chosen.factors is not None and solves(chosen.held_out.method):
+        learned = learned.calibrated(chosen.factors)
     return Validation(
         folds,
         [j.held_out for j in methods],
         validated_reach_m(folds.held_out_distances(points)),
         tried,
-        learned if factors is None else learned.calibrated(factors),
+        learned,
         plain,
         effect,
-        judged[taken],
+        chosen,
         standings,
         block_m,
+        searched=recipe.method.name == "best",
     )
 
 

@@ -46,6 +46,7 @@ def write_all(result: Result, folder: ResultFolder, recipe_path: Path, maps: Mem
     from texture.recipe.file import resolved_toml
     from texture.report import result_picture, versions_line, write_page
     from texture.stations import write_tables
+    from texture.validation_lines import validation_record
 
     found, recipe = result.found, result.found.recipe
     base = recipe_path.absolute().parent
@@ -71,6 +72,7 @@ def write_all(result: Result, folder: ResultFolder, recipe_path: Path, maps: Mem
             files=made,
             seed=recipe.seed,
             structure=found.mapper.structure.to_dict(),
+            validation=validation_record(found),
             **(
                 {"quantities": {q.settings.name: q.mapper.structure.to_dict() for q in found.quantities}}
                 if found.quantities

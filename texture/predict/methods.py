@@ -1,8 +1,8 @@
-"""The methods by name, and how each is made."""
+"""The methods by name, in the order of how much each uses of what is known, and how each is made."""
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from typing import Any, Protocol
 
@@ -10,12 +10,17 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from texture.errors import RecipeError
+from texture.predict.average import Average
+from texture.predict.forest import Forest
+from texture.predict.forest_kriging import ForestKriging
 from texture.predict.inverse_distance import InverseDistance
 from texture.predict.kriging import Kriging
 from texture.predict.mean import WholeMean
 from texture.predict.nearest import Nearest
+from texture.predict.triangulation import Triangulation
+from texture.predict.tuned import TunedInverseDistance
 
-__all__ = ["METHODS", "Method", "Predictor", "make_method"]
+__all__ = ["METHODS", "Method", "Predictor", "make_method", "solves"]
 
 
 class Predictor(Protocol):
@@ -75,15 +80,33 @@ def _kriging(distance: str = "plane", drift: bool = False) -> Method:
     return Method(make, True, True, KRIGING_SETTINGS, distance, drift)
 
 
+def _inverse_distance(covariance: Any, **settings: Any) -> Predictor:
+    return InverseDistance(**settings) if settings else TunedInverseDistance()
+
+
+def _average(covariance: Any, weights: Mapping[str, float], spreads: Mapping[str, Any] | None = None) -> Predictor:
+    members = [make_method(name, covariance) for name in weights]
+    return Average(members, list(weights.values()), [(spreads or {}).get(name) for name in weights])
+
+
 METHODS: dict[str, Method] = {
     "mean": Method(lambda covariance, **settings: WholeMean(**settings), False, False),
     "nearest": Method(lambda covariance, **settings: Nearest(**settings), False, False),
-    "inverse_distance": Method(lambda covariance, **settings: InverseDistance(**settings), False, False),
+    "triangulation": Method(lambda covariance, **settings: Triangulation(**settings), False, False),
+    "inverse_distance": Method(_inverse_distance, False, False),
     "kriging": _kriging(),
     "kriging_in_water": _kriging("in_water"),
     "kriging_with_covariates": _kriging("with_covariates"),
     "kriging_with_drift": _kriging(drift=True),
+    "forest": Method(lambda covariance, **settings: Forest(**settings), False, True, drift=True),
+    "forest_kriging": Method(lambda covariance, **settings: ForestKriging(**settings), False, True, drift=True),
+    "average": Method(_average, True, True),
 }
+
+
+def solves(name: str) -> bool:
+    """Tell whether a method is a kriging system, whose variance follows its covariance alone."""
+    return name.startswith("kriging")
 
 
 def make_method(name: str, covariance: Any = None, **settings: Any) -> Predictor:

@@ -21,7 +21,7 @@ from texture.recipe.samples import COLUMN_ROLES, Join, Samples
 from texture.recipe.settings import Settings
 from texture.recipe.target import TargetSettings
 from texture.recipe.validation import Validation
-from texture.recipe.whole import Recipe
+from texture.recipe.whole import Recipe, with_method
 
 __all__ = [
     "COLUMN_ROLES",
@@ -51,4 +51,5 @@ __all__ = [
     "Void",
     "WaterColumn",
     "WaterSettings",
+    "with_method",
 ]

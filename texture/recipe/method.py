@@ -14,11 +14,15 @@ __all__ = ["Method", "MethodName"]
 MethodName = Literal[
     "mean",
     "nearest",
+    "triangulation",
     "inverse_distance",
     "kriging",
     "kriging_in_water",
     "kriging_with_covariates",
     "kriging_with_drift",
+    "forest",
+    "forest_kriging",
+    "average",
 ]
 KRIGING_BY = {"plane": "kriging", "in_water": "kriging_in_water", "with_covariates": "kriging_with_covariates"}
 """What `name = "kriging"` means with each distance."""
@@ -27,7 +31,10 @@ KRIGING_BY = {"plane": "kriging", "in_water": "kriging_in_water", "with_covariat
 class Method(Settings):
     """How values travel from stations to cells."""
 
-    name: MethodName = Field("kriging", description="method of the map")
+    name: MethodName | Literal["best"] = Field(
+        "kriging",
+        description="method of the map; best takes the simplest within one standard error of the lowest energy score",
+    )
     neighbours: Annotated[int, Field(ge=4, le=500)] = Field(32, description="stations around a point")
     neighbourhood: Literal["tile", "nearest"] = Field(
         "tile", description="one neighbourhood for each small tile, or exactly `neighbours` for each point"
@@ -112,10 +119,16 @@ class Method(Settings):
                 raise ValueError(f'method "{name}" needs [[method.covariates]], such as name = "depth"')
             if name == "kriging_with_drift" and not (self.covariates or self.drift):
                 raise ValueError(f'method "{name}" needs method.drift = ["x", "y"] or [[method.covariates]]')
-        if self.covariates and not {"kriging_with_covariates", "kriging_with_drift"} & set(names):
+        takers = {"kriging_with_covariates", "kriging_with_drift", "forest", "forest_kriging"}
+        if self.covariates and not takers & set(names):
             raise ValueError(
                 'method.covariates are given, but no method takes them; set method.distance = "with_covariates", or '
                 'put "kriging_with_covariates" into validation.compare'
             )
         if self.drift and "kriging_with_drift" not in names:
             raise ValueError('method.drift acts with name = "kriging_with_drift", or with that in validation.compare')
+
+    @property
+    def tried_with(self) -> MethodName:
+        """The method that treatments of zeros are compared by."""
+        return "kriging" if self.name == "best" or self.name == "average" else self.name

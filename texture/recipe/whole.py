@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from pathlib import Path
-from typing import Annotated
+from typing import Annotated, get_args
 
 from pydantic import Field, model_validator
 
@@ -12,7 +12,7 @@ from texture.recipe.composition import Composition
 from texture.recipe.ensemble import Ensemble
 from texture.recipe.intake import Intake
 from texture.recipe.inventory import Inventory
-from texture.recipe.method import Method
+from texture.recipe.method import Method, MethodName
 from texture.recipe.mobility import Mobility
 from texture.recipe.outputs import Outputs
 from texture.recipe.quantities import Quantity
@@ -22,7 +22,7 @@ from texture.recipe.settings import Settings, check_composition, check_names, ne
 from texture.recipe.target import TargetSettings
 from texture.recipe.validation import Validation
 
-__all__ = ["Recipe"]
+__all__ = ["Recipe", "with_method"]
 
 
 class Recipe(Settings):
@@ -64,7 +64,7 @@ class Recipe(Settings):
             if conditions.count(name) > 1:
                 raise ValueError(f'mobility: the name "{name}" is given twice')
         self._check_quantities()
-        self.method.check_used((self.method.name, *self.validation.compare))
+        self.method.check_used(self.methods)
         if self.rim is not None and self.rim.classes is not None:
             check_names("rim.classes", self.rim.classes, classes)
         if self.rim is not None and self.rim.composition is not None:
@@ -88,3 +88,24 @@ class Recipe(Settings):
                 and not any(quantity.name in s.quantities for s in self.samples)
             ):
                 raise ValueError(f'quantities "{quantity.name}": give column, the heading where it stands, or curve')
+
+    @property
+    def methods(self) -> tuple[MethodName, ...]:
+        """Every method of a run: what treatments of zeros are tried with, the map's own, and those compared, the simplest first.
+
+        With `name = "best"` these are all whose covariates are given; ways through water only where they are asked for.
+        """
+        method, every = self.method, get_args(MethodName)
+        asked = {method.tried_with, *self.validation.compare}
+        if method.name != "best":
+            asked.add(method.name)
+        else:
+            asked |= set(every) - {"kriging_in_water", "kriging_with_covariates", "kriging_with_drift"}
+            asked |= {"kriging_with_covariates"} if method.covariates and method.fit == "likelihood" else set()
+            asked |= {"kriging_with_drift"} if method.covariates or method.drift else set()
+        return tuple(name for name in every if name in asked)
+
+
+def with_method(recipe: Recipe, name: str) -> Recipe:
+    """The same recipe with the method that was found best, or already named."""
+    return recipe.model_copy(update={"method": recipe.method.model_copy(update={"name": name})})
