@@ -174,7 +174,7 @@ def validate_methods(
         judged: list[Judged] = []
         for number, (name, learned) in enumerate(runs):
             if name == "average":
-                members = {
+                members: dict[str, Columns] = {
                     n: j.columns
                     for (n, other), j in zip(runs, judged, strict=False)
                     if other is plain and n not in ("mean", "average")

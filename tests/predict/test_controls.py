@@ -2,7 +2,15 @@ import numpy as np
 import pytest
 
 from texture.errors import RecipeError, StructureError
-from texture.predict import METHODS, InverseDistance, Nearest, WholeMean, make_method
+from texture.predict import (
+    METHODS,
+    InverseDistance,
+    Nearest,
+    Triangulation,
+    TunedInverseDistance,
+    WholeMean,
+    make_method,
+)
 from texture.structure import Covariance, Structure
 
 # Cells of meuse.grid, ln(zinc): x, y, inverse square distance over all samples, nearest sample (R gstat 2.1).
@@ -41,7 +49,7 @@ def test_leave_one_out_order_on_meuse(meuse):
     assert rmse(WholeMean()) == pytest.approx(0.724221, abs=1e-5)
 
 
-@pytest.mark.parametrize("make", [Nearest, InverseDistance, WholeMean])
+@pytest.mark.parametrize("make", [Nearest, Triangulation, InverseDistance, TunedInverseDistance, WholeMean])
 def test_unknown_values_and_batches(make):
     rng = np.random.default_rng(1)
     points, z, cells = rng.random((50, 2)), rng.normal(size=(50, 2)), rng.random((30, 2))
@@ -60,8 +68,10 @@ def test_inverse_distance_at_stations():
 
 def test_the_table_makes_all_methods():
     c = Covariance([Structure("exponential", 1.0, 10.0)])
+    points = np.random.default_rng(0).uniform(0, 10, (20, 2))
     for name in METHODS:
-        k = make_method(name, c).fit([[0.0, 0.0], [5.0, 5.0], [0.0, 4.0]], [1.0, 2.0, 3.0])
+        settings = {"weights": {"nearest": 0.5, "kriging": 0.5}} if name == "average" else {}
+        k = make_method(name, c, **settings).fit(points, points[:, 0])
         assert np.isfinite(k.predict([[1.0, 1.0]])[0]).all()
 
 
