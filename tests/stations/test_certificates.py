@@ -1,5 +1,6 @@
 """Certificates: a file for each sample, forms that are none, and what is said when there are none."""
 
+import numpy as np
 import pytest
 from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
@@ -94,3 +95,29 @@ def test_whatever_stands_between_certificates_no_row_is_lost(read, place, extra)
     assert counts["rows_read"] == sum(counts[f] for f in fates)
     whole = stations.samples[["mud", "sand", "gravel"]].dropna().to_numpy()
     assert abs(whole.sum(axis=1) - 1.0).max(initial=0.0) < 1e-9
+
+
+def test_german_certificates_stacked_on_one_sheet(read):
+    rows = [["Prüfbericht Korngrößenanalyse"], []]
+    for i in range(6):
+        rows += [
+            ["Probe:", f"P{i}"],
+            ["Breite:", f"54° 1{i},30' N"],
+            ["Länge:", f"7° 2{i},10' O"],
+            ["Wassertiefe (m):", 18],
+        ]
+        rows += [
+            ["Sieb (mm)", "Rückstand (g)"],
+            [2, 5],
+            [1, 10],
+            [0.25, 40],
+            [0.063, 35],
+            ["< 0,063", 10],
+            ["Summe", 100],
+            [],
+        ]
+    table = read(rows, "bericht.xlsx").table
+    assert table["id"].tolist() == [f"P{i}" for i in range(6)]
+    np.testing.assert_allclose(table[["mud", "sand", "gravel"]], [[0.10, 0.85, 0.05]] * 6)
+    assert table["longitude"][0] == pytest.approx(7 + 20.1 / 60)  # Ost
+    assert (table["depth_m"] == 18.0).all()

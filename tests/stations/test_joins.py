@@ -86,3 +86,9 @@ def test_a_join_that_is_not_there(book):
         SampleError, match="no table of positions with ids to join in Cover; correct join in the recipe"
     ):
         book(join={"sheet": "Cover"})
+
+
+def test_ids_that_two_people_punctuated_differently(book):
+    stations = book(places=[PLACES[0], *[[r[0].replace("A", "A-"), *r[1:]] for r in PLACES[1:]]])
+    assert stations.counts["stations"] == 6
+    assert any("the ids meet only without their hyphens" in note for note in stations.notes)

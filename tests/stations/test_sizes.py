@@ -176,3 +176,28 @@ def test_two_columns_for_one_size_are_refused(read, heads):
         SampleError, match=r"sizes\.xlsx.*: found two columns for one size, .* expected one; take one out"
     ):
         table(read, heads, [[1.0] * len(heads)] * 6)
+
+
+def cumulative(group, cells):
+    head = [
+        ["Sample", "Lat", "Long", group, *[""] * 5],
+        ["", "", "", "-2 phi", "-1 phi", "0 phi", "1 phi", "3 phi", "4 phi"],
+    ]
+    return head + [[f"K{i}", 54.101 + i / 100, 3.201 + i / 100, *cells] for i in range(6)]
+
+
+@pytest.mark.parametrize("group", ["Cumulative % retained", "Cum. wt % coarser", "cumulative %", "% acumulado"])
+def test_a_group_heading_says_that_sizes_are_cumulative(read, group):
+    table = read(cumulative(group, [0, 3, 10, 30, 70, 88])).table
+    np.testing.assert_allclose(table[["mud", "sand", "gravel"]], [[0.12, 0.85, 0.03]] * 6, atol=1e-12)
+
+
+def test_cumulative_from_the_fine_end_is_told_by_the_numbers(read):
+    stations = read(cumulative("cumulative %", [100, 97, 90, 70, 30, 12]))
+    np.testing.assert_allclose(stations.table[["mud", "sand", "gravel"]], [[0.12, 0.85, 0.03]] * 6, atol=1e-12)
+    assert any("fall to the fine end: read as passing" in note for note in stations.notes)
+
+
+def test_percents_that_sum_to_anything_are_no_weights(read):
+    with pytest.raises(SampleError, match=r"size classes sum to 201, expected 100 ± 2"):
+        read(cumulative("% retained", [0, 3, 10, 30, 70, 88]))

@@ -1,7 +1,7 @@
 """Angles as people write them: degrees, minutes and seconds with marks, signs, letters, or packed (ISO 6709).
 
-Hemisphere letters: N, S, E, W and the words they stand for. A lone `O` is refused, since it is west in
-Spanish, French and Italian but east in German and Dutch.
+Hemisphere letters: N, S, E, W and the words they stand for. A lone `O` is refused unless the recipe or the heading tells, since
+it is west in Spanish, French and Italian but east in German and Dutch.
 """
 
 from __future__ import annotations
@@ -29,7 +29,7 @@ _FIELD = re.compile(r"\d+(?:[.,]\d+)?|[.,]\d+")
 _ISO_PAIR = re.compile(r"([+-]\d{2,6}(?:[.,]\d+)?)([+-]\d{2,7}(?:[.,]\d+)?)(?:[+-]\d+(?:[.,]\d+)?)?(?:CRS\S*)?/?")
 
 
-def parse_angle(text: str, axis: str) -> tuple[float, float]:
+def parse_angle(text: str, axis: str, o_is: str = "") -> tuple[float, float]:
     """Read one latitude or longitude; return degrees and half the step of its last digit, in degrees.
 
     Understood: decimal degrees, degrees and minutes, degrees, minutes and seconds, with or without marks,
@@ -39,6 +39,8 @@ def parse_angle(text: str, axis: str) -> tuple[float, float]:
     ----------
     text : str
     axis : {"latitude", "longitude"}
+    o_is : {"", "W", "E"}
+        What a lone `O` means; refused if empty.
 
     Raises
     ------
@@ -59,8 +61,11 @@ def parse_angle(text: str, axis: str) -> tuple[float, float]:
         return " "
 
     body = _LETTER.sub(note, clean).strip()
-    if "O" in letters:
-        raise ValueError(f'{shown(text)}: "O" is west in some languages and east in others')
+    if "O" in letters and not o_is:
+        raise ValueError(
+            'the letter O in longitudes is west in some languages and east in others: say hemisphere = "W" or "E"'
+        )
+    letters = [o_is if letter == "O" else letter for letter in letters]
     wanted = "NS" if axis == "latitude" else "EW"
     if len(letters) > 1 or (letters and letters[0] not in wanted):
         raise ValueError(f"{shown(text)} is no {axis}")

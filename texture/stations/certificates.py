@@ -25,7 +25,9 @@ _CUMULATIVE = re.compile(r"\b(cum\w*|passing|finer|coarser|durchgang|passant)\b"
 _GROSS = re.compile(
     r"\b(gross|with (tare|dish|sieve)|(sieve|dish|tare) (and|\+|with) \w+|sample (and|\+) \w+|brutto|bruto)\b"
 )
-_SIZES = re.compile(r"\b(size|sieve|fraction|aperture|mesh|class|diameter|phi)\b")
+_SIZES = re.compile(
+    r"\b(size|sieve|fraction|aperture|mesh|class|diameter|phi|sieb\w*|korngro\w*|tamiz|tamices|tamis|zeef\w*|peneira|setaccio)\b"
+)
 
 
 @dataclass
@@ -205,7 +207,10 @@ def _read_sizes(rows: Sequence[Sequence[Cell]], i: int, form: _Form) -> int:
         if tare is not None:
             form.values[f"{heading} tare (g)"] = row[tare] if tare < len(row) else None
     while end < len(rows) and (word := next((c for c in rows[end] if not is_blank(c)), None)) is not None:
-        if not (isinstance(word, str) and plain(word).startswith(("total", "sum"))):
+        if not (
+            isinstance(word, str)
+            and plain(word).startswith(("total", "sum", "gesamt", "suma", "somme", "somma", "soma"))
+        ):
             break
         end += 1
     return end

@@ -36,6 +36,7 @@ __all__ = ["draft_recipe"]
 
 DETECTION_LIMIT = 0.005  # of the recipe's default; a draft only counts rows with it
 DOUBTFUL = ("DOUBT", "tells the unit", "headings say", "is not known here", "cannot be told")  # words of notes
+MANY_ASIDE = 0.2  # of a file's rows; more need a word on why
 ROWS_SHOWN = 4  # of a file in which no table was found
 _ORDER = {role: i for i, role in enumerate(COLUMN_ROLES)}
 
@@ -142,6 +143,12 @@ def _look(file: Path, crs: str | None = None, sheet: str | None = None) -> _Look
     look.notes = [note for note in said if note not in doubtful]
     look.doubts += [f"DOUBT: {note.replace('DOUBT: ', '')}" for note in doubtful]
     look.counts = {str(k): int(v) for k, v in frame["fate"].value_counts().items()}
+    aside = frame.loc[frame["fate"] == "set_aside", "reason"]
+    if len(aside) > MANY_ASIDE * sum(look.counts.values()):
+        most = aside.value_counts()
+        look.doubts.append(
+            f"DOUBT: {len(aside)} rows are set aside, most often because: {most.index[0]} ({most.iloc[0]} rows)"
+        )
     lon, lat = frame["longitude"].to_numpy(), frame["latitude"].to_numpy()
     if "latitude" in look.source.columns and look_like_minutes(lon, lat):
         look.doubts.append(

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass, field
 
 import numpy as np
@@ -54,6 +55,15 @@ def same_id(cell: Cell) -> str:
     return "".join(str(cell).split()).casefold()
 
 
+def bare_id(cell: Cell) -> str:
+    """Letters and digits alone, for ids that two people punctuated each in their own way.
+
+    >>> bare_id("KB-16.001"), bare_id("kb16 001")
+    ('kb16001', 'kb16001')
+    """
+    return "".join(c for c in same_id(cell) if c.isalnum())
+
+
 def best_ids(results: Table, result_id: Column, places: Table, place_id: Column) -> tuple[Column, Column]:
     """Choose the pair of id columns that meet most often; a column that the recipe names is not exchanged.
 
@@ -64,13 +74,15 @@ def best_ids(results: Table, result_id: Column, places: Table, place_id: Column)
         named = [i for i, h in enumerate(table.headings) if (role_of(h) or ("",))[0] == "id" and i != first.index]
         return [first] + ([] if first.named else [Column("id", i, table.headings[i]) for i in named])
 
-    known = [(c, {same_id(x) for x in places.columns[c.index]} - {""}) for c in candidates(places, place_id)]
-    pairs = [
-        (sum(same_id(x) in ids for x in results.columns[a.index]), a, b)
-        for a in candidates(results, result_id)
-        for b, ids in known
-    ]
-    return max(pairs, key=lambda pair: pair[0])[1:]
+    pairs = [(a, b) for a in candidates(results, result_id) for b in candidates(places, place_id)]
+
+    def meetings(as_key: Callable[[Cell], str]) -> list[int]:
+        known = {b.index: {as_key(x) for x in places.columns[b.index]} - {""} for _, b in pairs}
+        return [sum(as_key(x) in known[b.index] for x in results.columns[a.index]) for a, b in pairs]
+
+    exact = meetings(same_id)
+    counts = exact if any(exact) else meetings(bare_id)
+    return pairs[counts.index(max(counts))]
 
 
 def join_tables(results: Table, result_id: Column, places: Table, columns: dict[str, Column]) -> Joined:
@@ -83,12 +95,16 @@ def join_tables(results: Table, result_id: Column, places: Table, columns: dict[
     SampleError
         If an id stands twice among the positions with different entries, or no id is found at all.
     """
-    wanted = [same_id(c) for c in results.columns[result_id.index]]
+    bare = not _meet(results.columns[result_id.index], places.columns[columns["id"].index], same_id) and _meet(
+        results.columns[result_id.index], places.columns[columns["id"].index], bare_id
+    )
+    as_key = bare_id if bare else same_id
+    wanted = [as_key(c) for c in results.columns[result_id.index]]
     by_id: dict[str, int] = {}
     place_id = columns["id"]
     matters = [c.index for role, c in columns.items() if role in POSITION_ROLES]
     for i, cell in enumerate(places.columns[place_id.index]):
-        key = same_id(cell)
+        key = as_key(cell)
         if not key:
             continue
         first = by_id.setdefault(key, i)
@@ -121,4 +137,10 @@ def join_tables(results: Table, result_id: Column, places: Table, columns: dict[
     note = f'{results.where.text()}: positions from {places.where.text()} by "{result_id.heading}" = "{place_id.heading}"; {len(places.rows)} position rows'
     if without:
         note += f", {without} of them without results"
+    if bare:
+        note += "; DOUBT: the ids meet only without their hyphens, dots and other signs"
     return Joined(places, columns, match, problem, (note,))
+
+
+def _meet(one: list[Cell], other: list[Cell], as_key: Callable[[Cell], str]) -> bool:
+    return bool(({as_key(c) for c in one} & {as_key(c) for c in other}) - {""})

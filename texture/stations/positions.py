@@ -14,6 +14,7 @@ from texture.errors import RecipeError
 from texture.stations.angles import angle_digits, parse_angle
 from texture.stations.cells import read_numbers, usual_decimals
 from texture.stations.files import Cell, is_blank
+from texture.stations.halves import o_in
 from texture.stations.where import Where, shown
 
 if TYPE_CHECKING:
@@ -79,7 +80,8 @@ def read_degrees(
     RecipeError
         If `crs` is unknown or in metres.
     """
-    lon, lon_half, lon_problem = _angles(longitude, "longitude", where[0], rows, minutes)
+    o_is = next((x for x in "WE" if x in hemisphere), o_in(where[0].column))
+    lon, lon_half, lon_problem = _angles(longitude, "longitude", where[0], rows, minutes, o_is)
     lat, lat_half, lat_problem = _angles(latitude, "latitude", where[1], rows, minutes)
     accuracy = _accuracy_m(lon_half, lat_half, lat)
     if "W" in hemisphere:
@@ -130,7 +132,7 @@ def placed(
 
 
 def _angles(
-    cells: Sequence[Cell], axis: str, where: Where, rows: Sequence[int], minutes: bool = False
+    cells: Sequence[Cell], axis: str, where: Where, rows: Sequence[int], minutes: bool = False, o_is: str = ""
 ) -> tuple[FloatArray, FloatArray, npt.NDArray[np.object_]]:
     """Degrees, half steps in degrees and problems of one column."""
     n = len(cells)
@@ -168,7 +170,7 @@ def _angles(
             problem[i] = f"{axis} {shown(cell)} is no {axis}"
             continue
         try:
-            value[i], half[i] = parse_angle(cell, axis)
+            value[i], half[i] = parse_angle(cell, axis, o_is)
         except ValueError as error:
             problem[i] = str(error)
         else:

@@ -21,6 +21,7 @@ from texture.stations.entries import days_of, interval_of, metres_of, texts_of
 from texture.stations.fates import judge, words_of
 from texture.stations.files import Cell, Sheet, is_blank
 from texture.stations.fractions import share_out
+from texture.stations.halves import halves_of
 from texture.stations.headings import PARTS, role_of
 from texture.stations.joins import Joined
 from texture.stations.medians import medians_of
@@ -203,14 +204,17 @@ def _positions(table: Table, columns: Mapping[str, Column], block: Samples) -> P
     def place(role: str) -> Where:
         return table.where.at(columns[role].heading)
 
-    said = block.crs, block.hemisphere, block.degrees == "minutes"
     degrees = "latitude" in columns and "longitude" in columns
     metres = "easting" in columns and "northing" in columns
     if degrees and metres and block.crs is not None:
         degrees = not is_projected(block.crs)
+    minutes = block.degrees == "minutes"
+    said = block.crs, block.hemisphere, minutes
     if degrees:
         where = place("longitude"), place("latitude")
-        return read_degrees(cells("longitude"), cells("latitude"), where, table.rows, *said)
+        halves, told = halves_of(table, columns, block.hemisphere)
+        found = read_degrees(cells("longitude"), cells("latitude"), where, table.rows, block.crs, halves, minutes)
+        return replace(found, notes=(*told, *found.notes))
     if metres and not degrees and _hold_degrees(columns, block):
         pair = place("easting"), place("northing")
         return read_degrees(cells("easting"), cells("northing"), pair, table.rows, *said)

@@ -192,6 +192,8 @@ def _as_classes(
         if max(rising) >= CUMULATIVE:
             kinds = {"finer"} if rising[0] >= rising[1] else {"coarser"}
             note = f"{table.where.text()}: the values of every row run steadily to 100 with size: read as {'passing' if kinds == {'finer'} else 'retained'}, cumulative"
+    if kinds <= {"cumulative", "pan"} and "cumulative" in kinds:
+        kinds, note = _direction(table, columns, amounts[used])
     if kinds == {"finer"}:
         top = np.where(np.isfinite(amounts[:, :1]), _whole_of(amounts), np.nan)
         steps = np.column_stack([top - amounts[:, :1], -np.diff(amounts, axis=1), amounts[:, -1:]])
@@ -211,6 +213,23 @@ def _as_classes(
         "size columns of several kinds (" + ", ".join(sorted(kinds)) + ")",
         "one kind",
         "name mud, sand and gravel under columns",
+    )
+
+
+def _direction(table: Table, columns: Sequence[SizeColumn], amounts: FloatArray) -> tuple[set[str], str]:
+    """Whether cumulative amounts, whose headings do not say, are cumulated from the coarse or the fine end."""
+    steps = np.diff(amounts, axis=1)
+    rising, falling = float((steps >= -1e-9).all(axis=1).mean()), float((steps <= 1e-9).all(axis=1).mean())
+    if not len(amounts) or max(rising, falling) < CUMULATIVE or rising == falling:
+        raise table.where.at(columns[0].heading).error(
+            "cumulative amounts that neither rise nor fall with size",
+            "one of the two",
+            "correct the headings, or name mud, sand and gravel",
+        )
+    kind = "coarser" if rising > falling else "finer"
+    return (
+        {kind},
+        f"{table.where.text()}: cumulative amounts {'rise to the fine end: read as retained' if kind == 'coarser' else 'fall to the fine end: read as passing'}",
     )
 
 
@@ -246,6 +265,8 @@ def _check_sums(
     middle = float(np.median(total[ok]))
     weights = any(is_weight(table.units[c.index]) or is_weight(c.heading) for c in columns)
     whole = next((w for w in (1.0, 100.0) if not weights and abs(middle / w - 1.0) < 0.1), None)
+    if whole is None and not weights and all("%" in c.heading or "%" in table.units[c.index] for c in columns):
+        whole = 100.0  # said to be percent: sums far from 100 are a mistake, not weights
     stated = _total_column(table, columns)
     if whole is not None and stated is None:
         off = ok & ~empty & (np.abs(total / whole - 1.0) > tolerance + 1e-9)

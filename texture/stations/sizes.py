@@ -26,10 +26,13 @@ _BETWEEN = re.compile(rf"(?<![\d.]){_N}\s*{_U}\s*(?:to|-|–|a|bis|and)\s*{_N}\s
 _LESS = re.compile(rf"(?:<=?|≤|less than|finer than|under|below|smaller than)\s*{_N}\s*{_U}")
 _MORE = re.compile(rf"(?:>=?|≥|more than|coarser than|over|above|larger than|greater than)\s*{_N}\s*{_U}")
 _SINGLE = re.compile(rf"(?:phi)?\s*{_N}\s*{_U}")
-_SCALE = re.compile(r"\b(size|sieve|sieves|diameter|aperture|mesh|grain|phi|korngroesse|tamiz|tamis)\b")
+_SCALE = re.compile(
+    r"\b(size|sieve|sieves|diameter|aperture|mesh|grain|phi|korngro(e|s)\w*|sieb\w*|maschenweite|tamiz|tamices|tamis|maille|malla|zeef\w*|peneira|setaccio|vaglio|luz)\b"
+)
 _PAN = re.compile(r"\b(pan|finest|rest|residue|bottom pan|passing last)\b")
 _FINER = re.compile(r"\b(passing|finer|undersize|cum\w* (finer|passing)|durchgang|passant)\b")
-_COARSER = re.compile(r"\b(cum\w*( \w+)? retained|retained cum\w*|oversize|cum\w* coarser)\b")
+_COARSER = re.compile(r"\b(cum\w*( \S+){0,3} retained|retained( \S+)? cum\w*|oversize|coarser)\b")
+_CUMULATIVE = re.compile(r"\b(cum|cumul\w*|acum\w*|kumul\w*|summenkurve)\b")
 _OF_SAND = re.compile(r"\b(of|von|de la|du|del) (the )?(sand|total sand|sand fraction|arena|sable|sandes)\b")
 _NO_SIZE = re.compile(
     r"\b(depth|interval|top|bottom|date|lat\w*|lon\w*|d\d\d|median|mean|sorting|skew\w*|kurt\w*|percentile|core|layer|sample|temperature|station)\b"
@@ -47,7 +50,8 @@ class SizeColumn:
     heading : str
     coarse_phi, fine_phi : float
         Limits of the class; -inf and inf where it is open. For a single size both are that size.
-    meaning : {"class", "single", "pan", "finer", "coarser"}
+    meaning : {"class", "single", "pan", "finer", "coarser", "cumulative"}
+        Cumulative where the heading does not say from which end.
     tare : int
         Number of the column whose weights have to be taken off, -1 if there is none.
     of_sand : bool
@@ -225,6 +229,8 @@ def _meant(size: tuple[float, float, str], heading: str) -> tuple[float, float, 
             return limit, limit, "coarser"
         if _FINER.search(words) and (size[2] == "single" or "cum" in words):
             return limit, limit, "finer"
+        if _CUMULATIVE.search(words) and size[2] == "single":
+            return limit, limit, "cumulative"
     return size
 
 
