@@ -30,7 +30,7 @@ def truth(demo_recipe) -> np.ndarray:
 def test_every_file_is_there(plain):
     out = plain.found.recipe.output
     expected = {
-        "stations.csv", "stations.gpkg", "audit.csv", "texture.nc", "bed.nc", "inventory.csv", "validation.csv", "held_out.csv",
+        "stations.csv", "stations.gpkg", "audit.csv", "rows.csv", "texture.nc", "bed.nc", "inventory.csv", "validation.csv", "held_out.csv",
         "report.html", "map.png", "provenance.json", "recipe_resolved.toml",
     }  # fmt: skip
     assert {p.name for p in out.iterdir()} == expected | {"geotiff"}

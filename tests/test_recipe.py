@@ -10,6 +10,9 @@ from hypothesis import strategies as st
 from texture.errors import RecipeError
 from texture.recipe import Recipe
 from texture.recipe.file import read_recipe, resolved_toml
+from texture.recipe.paths import named_files
+from texture.recipe.reference import recipe_schema, setting_keys, settings_reference
+from texture.recipe.unset import left_to_default
 
 BASE = """
 title = "Test"
@@ -118,3 +121,63 @@ def test_missing_block_is_named(tmp_path):
 def test_any_title_survives_the_round_trip(title):
     recipe = Recipe.model_validate(tomllib.loads(BASE) | {"title": title})
     assert tomllib.loads(resolved_toml(recipe, Path("/")))["title"] == title
+
+
+def test_settings_reference_is_current():
+    written = Path(__file__).parents[1] / "docs" / "settings.md"
+    fresh = settings_reference()
+    assert written.read_text(encoding="utf-8") == fresh, "run: texture recipe --reference > docs/settings.md"
+
+
+def test_reference_and_schema_name_every_setting_and_what_it_means():
+    text = settings_reference()
+    for key in setting_keys():
+        assert f"| `{key.rsplit('.', 1)[-1]}` |" in text, key
+    assert "| |\n" not in text.replace("| | |\n", "").replace("default | |\n", "")  # none without a description
+    properties = recipe_schema()["$defs"]["Samples"]["properties"]
+    assert properties["from"]["description"] == "first day of the survey"
+    assert properties["columns"]["additionalProperties"] is False
+    assert "longitude" in properties["columns"]["properties"]
+
+
+def unknown_keys(schema, node, value, place=""):
+    """Keys of a recipe that a reader of the schema would call unknown."""
+    while "$ref" in node:
+        node = schema["$defs"][node["$ref"].rsplit("/", 1)[-1]]
+    if isinstance(value, list):
+        return [k for v in value for k in unknown_keys(schema, node.get("items", {}), v, place)]
+    if not isinstance(value, dict):
+        return []
+    if "anyOf" in node:
+        return min((unknown_keys(schema, n, value, place) for n in node["anyOf"]), key=len)
+    known, found = node.get("properties", {}), []
+    for key, inside in value.items():
+        if key in known:
+            found += unknown_keys(schema, known[key], inside, f"{place}{key}.")
+        elif node.get("additionalProperties") is False:
+            found.append(f"{place}{key}")
+    return found
+
+
+def test_schema_knows_the_demo_s_recipe_and_no_typing_mistake(demo_recipe):
+    schema, given = recipe_schema(), tomllib.loads(demo_recipe.read_text())
+    assert unknown_keys(schema, schema, given) == []
+    given["method"]["nieghbours"] = 3
+    given["samples"][0]["columns"]["lattitude"] = "Lat"
+    assert unknown_keys(schema, schema, given) == ["samples.columns.lattitude", "method.nieghbours"]
+
+
+def test_what_the_recipe_left_out_is_known_after_its_paths_were_found(recipe_path):
+    unset = {u.key: u.value for u in left_to_default(read_recipe(recipe_path, ["method.neighbours=20"]))}
+    assert unset["rim"] is None
+    assert unset["samples.basis"] == "whole"
+    assert unset["bed.least_fraction"] == 0.005
+    assert not {"title", "samples.file", "target.bounds", "method.neighbours"} & set(unset)
+    assert all(u.description for u in left_to_default(read_recipe(recipe_path)))
+
+
+def test_every_file_that_a_recipe_names_is_listed_once(recipe_path):
+    recipe = read_recipe(recipe_path)
+    assert named_files(recipe) == [recipe.samples[0].file]
+    again = recipe.model_copy(update={"samples": (recipe.samples[0], recipe.samples[0])})
+    assert named_files(again) == [recipe.samples[0].file]

@@ -43,9 +43,15 @@ COMPARE = """\
 # [validation]
 # compare = ["nearest", "inverse_distance", "kriging", "kriging_with_covariates"{}]
 """
+UNSURE = ("every cell is taken as water", "does not say what its values mean")  # words of a target's notes
 CLASSES = """
 # The bed gets one class for each part unless [[bed.classes]] says more. Settling, threshold and erosion of
 # mud are not in grain size: give them there, or the model will have to be told.
+
+# [outputs]
+# figures = true            # every map and diagnostic as PNG and PDF for a paper
+# [report]
+# stations = "hidden"       # where positions of samples are confidential: none on the page and in the figures
 """
 
 
@@ -134,7 +140,7 @@ def _grid_lines(target: Target | None, problem: str) -> str:
         return f"# DOUBT: {problem}\n" if problem else ""
     lines = [
         f"# {target.size_text}, {int(target.active.sum()):,} of them water, found by the file's own attributes",
-        *(f"# {note}" for note in target.notes),
+        *(f"# {'DOUBT: ' if any(words in note for words in UNSURE) else ''}{note}" for note in target.notes),
         *(f"# outer edge, {opening}" for opening in target.openings),
     ]
     return "\n".join(lines) + "\n"

@@ -34,6 +34,8 @@ if TYPE_CHECKING:
 __all__ = ["Intake", "Result", "Validated"]
 
 Floats = NDArray[np.float64]
+MOST_LINES = 12
+MOST_CONDITIONS = 2  # of the mobility screen in a summary that fits a dozen lines
 
 
 @dataclass(frozen=True, eq=False)
@@ -185,6 +187,33 @@ class Result:
         area = self.found.target.area_m2[wet]
         return float(area[self.estimate.evidence[wet] != 1].sum() / area.sum())
 
+    def plot(self, part: str = "mud", ax: Any = None) -> Any:
+        """Draw the map of one part with the stations as rings, on matplotlib axes that are made where none are given.
+
+        Parameters
+        ----------
+        part : str
+            One of the recipe's parts.
+        ax : matplotlib Axes, optional
+
+        Returns
+        -------
+        matplotlib Axes
+
+        Raises
+        ------
+        ValueError
+            If there is no such part.
+        """
+        parts, target = self.found.recipe.composition.parts, self.found.target
+        if part not in parts:
+            raise ValueError(f'the map has no part "{part}"; expected one of {list(parts)}')
+        ax = target.plot(self.estimate.fractions[:, parts.index(part)], ax, f"{part}, expected fraction of dry mass")
+        if self.found.recipe.report.stations == "shown":
+            table = self.found.stations.samples
+            ax.plot(table["longitude"], table["latitude"], "o", ms=3, mfc="none", mec="white", mew=0.7)
+        return ax
+
     def answer(self) -> str:
         """Say the one-line result: stations, error against the controls, support, bed below any sample."""
         found = self.found
@@ -233,7 +262,8 @@ class Result:
         total = sum(account.tonnes.values())
         mud = [n for n, c in zip(self.bed.classes.names, self.bed.classes.part, strict=True) if c == 0]
         rim = sum(-account.rim_tonnes[n] for n in mud)
-        bed = f"  bed         {total / 1e6:,.1f} Mt dry in {len(account.tonnes)} classes and {len(self.bed.erodible_thickness)} layers"
+        layers = len(self.bed.erodible_thickness)
+        bed = f"  bed         {total / 1e6:,.1f} Mt dry in {len(account.tonnes)} classes and {layers} layer{'s' * (layers != 1)}"
         bed += f"; hiding and exposure: {found.recipe.bed.hiding}"
         if account.rim_cells:
             bed += f"; the rim ({account.rim_cells:,} cells) took out {rim / 1e6:,.2f} Mt of mud"
@@ -241,21 +271,26 @@ class Result:
             found.recipe.title,
             *rows_lines(found.stations),
             *zeros_lines(found),
-            *distance_lines(found),
-            *structure_lines(found),
-            *error_lines(found),
-            *quantity_lines(found),
+            *distance_lines(found)[:1],
+            structure_line(found),
+            *quantity_lines(found)[:1],
         ]
         lines.append(
             f"  support     {100 * self.beyond_share:.1f} % of the water area is further than {found.reach_m / 1000:.1f} km from any sample"
         )
         lines += radius_lines(self)
         lines.append(bed)
-        lines += mobility_lines(self.moved)
+        lines += mobility_lines(self.moved)[:MOST_CONDITIONS]
+        if len(self.moved) > MOST_CONDITIONS:
+            lines[-1] += f" (and {len(self.moved) - MOST_CONDITIONS} more, on the page)"
         lines += [] if self.members is None else [self.members.line()]
         if account.not_given:
             lines.append(f"  not given   {', '.join(account.not_given)}")
-        return [*lines, *written_line(found.recipe, self.files), self.answer()]
+        lines += [*written_line(found.recipe, self.files), self.answer()]
+        for least in ("structure", "zeros"):  # what the page says best goes first
+            if len(lines) > MOST_LINES:
+                lines = [line for line in lines if not line.startswith(f"  {least}")]
+        return lines
 
     def __repr__(self) -> str:
         return "\n".join(self.summary_lines())
@@ -312,21 +347,17 @@ def rows_lines(stations: Stations) -> list[str]:
     ]
 
 
-def structure_lines(found: Validated) -> list[str]:
-    """Say the fitted structure of each coordinate."""
-    lines: list[str] = []
+def structure_line(found: Validated) -> str:
+    """Say model and ranges of each coordinate; sills stand on the page."""
+    said: list[str] = []
     for name, covariance in zip(found.mapper.column_names, found.mapper.structure, strict=True):
-        head = "structure" if not lines else ""
-        if not covariance.structures:
-            lines.append(f"  {head:<11} {name}: no spatial structure, variance {covariance.sill:.2f}")
-            continue
         model = " + ".join(s.model + (f" {s.smoothness:g}" if s.smoothness else "") for s in covariance.structures)
-        lines.append(
-            f"  {head:<11} {name}: {model}, range {covariance.range_m / 1000:.1f} km, sill "
-            f"{sum(s.sill for s in covariance.structures):.2f}, small-scale {covariance.small_scale:.2f}"
-            + "".join(f"; range of {n} {r:.2g} sd" for n, r in own_ranges(found.mapper.space, covariance).items())
+        own = "".join(f", of {n} {r:.2g} sd" for n, r in own_ranges(found.mapper.space, covariance).items())
+        said.append(
+            f"{name}: "
+            + (f"{model}, range {covariance.range_m / 1000:.1f} km{own}" if model else "no spatial structure")
         )
-    return lines
+    return f"  structure   {'; '.join(said)}"
 
 
 def radius_lines(result: Result) -> list[str]:

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable
 from dataclasses import replace
 from pathlib import Path
 from typing import TYPE_CHECKING
@@ -19,7 +18,6 @@ if TYPE_CHECKING:
 
     from texture.members import MemberMaps
     from texture.output import ResultFolder
-    from texture.recipe import Recipe
 
 __all__ = ["write_all", "write_intake", "write_validation"]
 
@@ -44,7 +42,8 @@ def write_all(result: Result, folder: ResultFolder, recipe_path: Path, maps: Mem
     """Write everything a build makes; return the result with its files."""
     from texture.output import provenance, write_json
     from texture.recipe.file import resolved_toml
-    from texture.report import result_picture, versions_line, write_page
+    from texture.recipe.paths import named_files
+    from texture.report import result_picture, versions_line, write_figures, write_page
     from texture.stations import write_tables
     from texture.validation_lines import validation_record
 
@@ -61,11 +60,13 @@ def write_all(result: Result, folder: ResultFolder, recipe_path: Path, maps: Mem
         (aside / "recipe_resolved.toml").write_text(settings, encoding="utf-8")
         picture = result_picture(result)
         (aside / "map.png").write_bytes(picture.content)
-        page = write_page(result, picture, settings, versions_line(result))
+        page = write_page(result, picture, resolved_toml(recipe, base, outside="name"), versions_line(result))
         (aside / "report.html").write_text(page, encoding="utf-8")
+        if recipe.outputs.figures:
+            write_figures(result, aside / "figures")
         made = sorted(p for p in aside.rglob("*") if p.is_file())
         record = provenance(
-            [recipe_path.absolute(), *input_files(recipe)],
+            [recipe_path.absolute(), *named_files(recipe)],
             base,
             counts=found.stations.counts,
             seconds=result.clock.seconds,
@@ -83,19 +84,6 @@ def write_all(result: Result, folder: ResultFolder, recipe_path: Path, maps: Mem
         )
         write_json(aside / "provenance.json", record)
     return replace(result, files=folder.files)
-
-
-def input_files(recipe: Recipe) -> list[Path]:
-    """List every file that a recipe names, each once."""
-    paths: Iterable[Path | None] = (
-        *(s.file for s in recipe.samples), *(s.join.file for s in recipe.samples if s.join), recipe.target.file,
-        *(v.file for v in recipe.intake.void),
-        recipe.target.land, recipe.outputs.names, recipe.outputs.into,
-        *(p for p in ((recipe.rim.sides, recipe.rim.parent, recipe.rim.parent_names) if recipe.rim else ()) if isinstance(p, Path)),
-        *(c.file for c in recipe.method.covariates), *(m.file for m in recipe.mobility),
-        *(v for m in recipe.mobility for v in (m.orbital_velocity_m_s, m.period_s, m.current_m_s, m.depth_m) if isinstance(v, Path)),
-    )  # fmt: skip
-    return list(dict.fromkeys(p for p in paths if p is not None))
 
 
 def _write_grids(result: Result, aside: Path) -> None:

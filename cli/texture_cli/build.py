@@ -2,9 +2,11 @@
 
 from __future__ import annotations
 
-from typing import Any
+from typing import Annotated, Any
 
-from texture_cli.options import JsonFlag, OutputFolder, Overwrite, Quiet, RecipePath, Settings
+import typer
+
+from texture_cli.options import WORK, JsonFlag, OutputFolder, Overwrite, Quiet, RecipePath, Settings
 from texture_cli.running import Report, run
 
 __all__ = ["build"]
@@ -15,6 +17,12 @@ def build(
     output: OutputFolder = None,
     set_: Settings = None,
     overwrite: Overwrite = False,
+    plan: Annotated[
+        bool,
+        typer.Option(
+            "--plan", help="Say stations, cells, memory and time, write nothing, and stop.", rich_help_panel=WORK
+        ),
+    ] = False,
     quiet: Quiet = False,
     as_json: JsonFlag = False,
 ) -> None:
@@ -27,7 +35,11 @@ def build(
 
     def work(progress: Any) -> Report:
         from texture.pipeline import build as run_build
+        from texture.planning import plan as make_plan
 
+        if plan:
+            planned = make_plan(recipe, overrides=set_ or (), output=output, progress=progress)
+            return Report(planned.summary_lines(), planned.summary())
         result = run_build(recipe, overrides=set_ or (), output=output, overwrite=overwrite, progress=progress)
         return Report(result.summary_lines(), result.summary())
 

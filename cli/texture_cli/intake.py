@@ -20,7 +20,7 @@ def intake(
 ) -> None:
     """Read the spreadsheets, check them, and account for every row.
 
-    Writes stations.csv, stations.gpkg and audit.csv; deeper.csv for what cores hold below the surface.
+    Writes stations.csv, stations.gpkg, audit.csv and rows.csv; deeper.csv for what cores hold below the surface.
 
     Example: texture intake recipe.toml --output check
     """

@@ -16,6 +16,7 @@ import typer
 __all__ = ["Report", "run"]
 
 DONE, FAILED, WRONG_INPUT, INTERRUPTED = 0, 1, 2, 130
+MOST_NOTES = 3  # a summary has to fit a screen
 
 
 @dataclass(frozen=True)
@@ -71,7 +72,7 @@ def _stop(message: str, code: int) -> NoReturn:
 
 
 def _grouped(caught: list[warnings.WarningMessage]) -> list[str]:
-    """One line for each distinct warning of ours, with its count; others are kept for debugging."""
+    """One line for each distinct warning of ours, with its count, at most three; others are kept for debugging."""
     from texture.errors import TextureWarning
 
     ours = Counter(
@@ -79,4 +80,7 @@ def _grouped(caught: list[warnings.WarningMessage]) -> list[str]:
         for w in caught
         if issubclass(w.category, TextureWarning) or os.environ.get("TEXTURE_DEBUG") is not None
     )
-    return [f"note: {text}" + (f" ({count} times)" if count > 1 else "") for text, count in ours.items()]
+    lines = [f"note: {text}" + (f" ({count} times)" if count > 1 else "") for text, count in ours.most_common()]
+    if len(lines) > MOST_NOTES and os.environ.get("TEXTURE_DEBUG") is None:
+        lines = [*lines[:MOST_NOTES], f"note: and {len(lines) - MOST_NOTES} more kinds; TEXTURE_DEBUG=1 shows them"]
+    return lines

@@ -34,7 +34,7 @@ def test_intake_accounts_for_rows_and_prints_one_object(small):
         data[f"rows_{f}"] for f in ("used", "merged", "evidence", "set_aside", "not_samples")
     )
     assert data["stations"] == 30
-    assert set(data["files"]) == {"stations.csv", "stations.gpkg", "audit.csv"}
+    assert set(data["files"]) == {"stations.csv", "stations.gpkg", "audit.csv", "rows.csv"}
     assert "31 read: 30 used" in done.stderr
 
 
@@ -43,7 +43,7 @@ def test_build_on_a_raster_says_what_it_wrote(small):
     done = texture("build", small)
     assert done.returncode == DONE, done.stderr
     assert done.stdout == ""
-    lines = done.stderr.splitlines()
+    lines = [line for line in done.stderr.splitlines() if not line.startswith("…")]  # progress of a slow machine
     assert lines[0] == "Small"
     assert "wrote       out/: " in done.stderr
     assert "30 stations; held-out RMSE mud 0." in done.stderr
@@ -165,7 +165,7 @@ def test_wrong_usage_is_code_2():
 def test_help_names_the_commands_and_an_example():
     done = texture("--help")
     assert done.returncode == DONE
-    for command in ("draft", "intake", "validate", "build", "inspect"):
+    for command in ("draft", "recipe", "intake", "validate", "build", "inspect"):
         assert command in done.stdout
         assert "Example: texture" in texture(command, "--help").stdout
     assert texture("--version").stdout.startswith("texture 0.")
@@ -201,6 +201,12 @@ def test_how_each_failure_ends(small, monkeypatch, raised, code, words):
     assert done.stdout == ""
 
 
+@pytest.mark.slow
+def test_summary_of_the_demo_fits_twelve_lines_and_a_screen(plain):
+    assert len(plain.summary_lines()) <= 12
+    assert max(len(line) for line in plain.summary_lines()[:-2]) < 200
+
+
 def test_warnings_are_counted_and_grouped(small, monkeypatch):
     import warnings
 
@@ -223,3 +229,26 @@ def test_warnings_are_counted_and_grouped(small, monkeypatch):
     done = CliRunner().invoke(app, ["build", str(small)])
     assert done.exit_code == DONE
     assert done.stderr.splitlines() == ["done", "note: the range is longer than the survey (3 times)"]
+
+
+def test_many_kinds_of_warnings_stay_a_few_lines(small, monkeypatch):
+    import warnings
+
+    from texture.errors import TextureWarning
+
+    class Nothing:
+        def summary_lines(self):
+            return ["done"]
+
+        def summary(self):
+            return {}
+
+    def warn(*arguments, **settings):
+        for i in range(5):
+            warnings.warn(f"kind {i}", TextureWarning, stacklevel=1)
+        return Nothing()
+
+    monkeypatch.setattr("texture.pipeline.build", warn)
+    done = CliRunner().invoke(app, ["build", str(small)])
+    assert done.stderr.splitlines()[-1] == "note: and 2 more kinds; TEXTURE_DEBUG=1 shows them"
+    assert len(done.stderr.splitlines()) == 5

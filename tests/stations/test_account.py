@@ -79,7 +79,7 @@ def test_changes_need_their_words(stations):
 
 def test_written_tables_come_back_and_start_no_formula(stations, tmp_path):
     paths = write_tables(stations, tmp_path)
-    assert [p.name for p in paths] == ["stations.csv", "stations.gpkg", "audit.csv"]
+    assert [p.name for p in paths] == ["stations.csv", "stations.gpkg", "audit.csv", "rows.csv"]
     table = pd.read_csv(paths[0], keep_default_na=False, dtype=str)
     assert list(table.columns[:11]) == [
         "id",
@@ -96,6 +96,10 @@ def test_written_tables_come_back_and_start_no_formula(stations, tmp_path):
     ]
     assert [float(v) for v in table["mud"][:6]] == stations.table["mud"].tolist()[:6]
     assert table["mud"][6] == ""
+    rows = pd.read_csv(paths[3], keep_default_na=False)
+    assert list(rows.columns) == ["file", "sheet", "row", "id", "fate", "reason"]
+    assert len(rows) == stations.counts["rows_read"]
+    assert (rows["reason"][rows["fate"] == "set_aside"] != "").all()
     again = gpd.read_file(paths[1])
     assert again.crs.to_epsg() == 4326
     np.testing.assert_array_equal(again.geometry.x, stations.table["longitude"])

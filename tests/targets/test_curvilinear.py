@@ -49,6 +49,16 @@ def test_rotated_grid_keeps_file_order_and_names_its_dimensions(tmp_path):
     assert any("every cell is taken as water" in note for note in target.notes)
 
 
+def test_without_a_mask_the_note_names_what_could_tell(tmp_path):
+    lon, lat = rotated()
+    wet = np.ones((6, 8))
+    wet[0] = 0
+    told = {"wetness": (("row", "column"), wet), "h": (("row", "column"), np.where(wet == 1, 20.0, np.nan))}
+    notes = " ".join(read(write(tmp_path / "told.nc", lon, lat, **told)).notes)
+    assert '"wetness" holds 0 and 1, "h" is missing in 8 cells: if one of them tells, name a mask' in notes
+    assert read(tmp_path / "told.nc", mask="wetness").active.sum() == 40
+
+
 def test_corners_between_centres_are_exact_on_a_regular_grid(tmp_path):
     lon, lat = rotated(angle=0.0)
     target = read(write(tmp_path / "g.nc", lon, lat))

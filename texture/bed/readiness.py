@@ -278,7 +278,7 @@ def _support(bed: BedArrays) -> Iterator[Check]:
         return
     surface = bed.evidence[0][bed.wet]
     beyond = float(np.isin(surface, (2, 6)).mean())
-    detail = f"{100 * beyond:.1f} % of the water cells lie beyond what the samples support"
+    detail = f"{100 * beyond:.1f} % of the water cells, the rim not counted, lie beyond what the samples support"
     yield Check("support", "warn" if beyond > 0.5 else "pass", detail)
 
 

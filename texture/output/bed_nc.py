@@ -81,7 +81,10 @@ def bed_dataset(bed: Bed, target: Target, recipe: Recipe, moved: Sequence[Moved]
     samples = ", ".join(s.survey or s.file.stem for s in recipe.samples)
     method = recipe.method.name.replace("_", " ")
     source = f"{method} of grab samples ({samples}) on {target.name}"
-    dataset.attrs = {**global_attributes(recipe.title, source, COMMENT, REFERENCES), **dataset.attrs}
+    dataset.attrs = {
+        **global_attributes(recipe.title, source, COMMENT, REFERENCES, (s.credit for s in recipe.samples)),
+        **dataset.attrs,
+    }
     return _single(dataset) if recipe.outputs.precision == "float32" else dataset
 
 

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Iterable, Mapping
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -34,8 +34,10 @@ def flags(meanings: Mapping[int, str], dtype: type = np.int8) -> dict[str, Any]:
     return {"flag_values": np.array(list(meanings), dtype=dtype), "flag_meanings": " ".join(words)}
 
 
-def global_attributes(title: str, summary: str, comment: str, references: str) -> dict[str, str]:
-    """Global attributes of CF-1.11.
+def global_attributes(
+    title: str, summary: str, comment: str, references: str, credits: Iterable[str | None] = ()
+) -> dict[str, str]:
+    """Global attributes of CF-1.11, and the data credits as ACDD-1.3 names them.
 
     `history` carries no date: the same inputs make the same bytes. Dates and the inputs' hashes are in
     provenance.json.
@@ -48,6 +50,7 @@ def global_attributes(title: str, summary: str, comment: str, references: str) -
         "history": f"made by Seabed Texture {texture.__version__}; inputs and settings are in provenance.json beside this file",
         "references": references,
         "comment": comment,
+        **({"acknowledgement": thanks} if (thanks := "; ".join(dict.fromkeys(c for c in credits if c))) else {}),
     }
 
 

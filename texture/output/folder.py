@@ -17,8 +17,8 @@ from texture.output.provenance import file_record
 __all__ = ["RESULTS", "ResultFolder"]
 
 RESULTS = (
-    "stations.csv", "stations.gpkg", "audit.csv", "deeper.csv", "texture.nc", "bed.nc", "bed.csv", "inventory.csv", "geotiff", "validation.csv",
-    "held_out.csv", "report.html", "map.png", "provenance.json", "recipe_resolved.toml", "members.nc",
+    "stations.csv", "stations.gpkg", "audit.csv", "rows.csv", "deeper.csv", "texture.nc", "bed.nc", "bed.csv", "inventory.csv", "geotiff", "validation.csv",
+    "held_out.csv", "report.html", "map.png", "figures", "provenance.json", "recipe_resolved.toml", "members.nc",
     "members_summary.nc", "members",
 )  # fmt: skip
 """What a run writes into its folder; other files there are the user's and are never touched."""

@@ -125,7 +125,7 @@ def texture_dataset(
     method = recipe.method.name.replace("_", " ")
     source = f"{method} of {recipe.composition.logratio} coordinates of grab samples on {target.name}"
     dataset.attrs = {
-        **global_attributes(recipe.title, source, COMMENT, REFERENCES),
+        **global_attributes(recipe.title, source, COMMENT, REFERENCES, (s.credit for s in recipe.samples)),
         **dataset.attrs,  # the target's own: UGRID's convention, the type of feature of points
         **(attributes or {}),
     }

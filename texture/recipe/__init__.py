@@ -16,6 +16,7 @@ from texture.recipe.method import Method, MethodName
 from texture.recipe.mobility import Mobility
 from texture.recipe.outputs import Outputs
 from texture.recipe.quantities import Quantity
+from texture.recipe.report import Report
 from texture.recipe.rim import Rim
 from texture.recipe.samples import COLUMN_ROLES, Join, Samples
 from texture.recipe.settings import Settings
@@ -43,6 +44,7 @@ __all__ = [
     "Packing",
     "Quantity",
     "Recipe",
+    "Report",
     "Rim",
     "Samples",
     "Settings",

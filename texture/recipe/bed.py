@@ -68,8 +68,12 @@ class Bed(Settings):
         "none", description="small grains shelter behind large ones: not at all, or by Wu, Wang & Jia (2000)"
     )
     water: WaterSettings = Field(default_factory=WaterSettings)
-    layers: tuple[Layer, ...] = Field((Layer(thickness_m=0.10),), min_length=1)
-    classes: tuple[BedClass, ...] = Field(default_factory=_default_classes, min_length=1)
+    layers: tuple[Layer, ...] = Field((Layer(thickness_m=0.10),), min_length=1, description="layers from the top")
+    classes: tuple[BedClass, ...] = Field(
+        default_factory=_default_classes,
+        min_length=1,
+        description="sediment classes of the model; one a part if absent",
+    )
 
     @model_validator(mode="after")
     def _shares_close(self) -> Bed:

@@ -5,7 +5,7 @@ from __future__ import annotations
 import tomllib
 from collections.abc import Iterable, Mapping
 from pathlib import Path
-from typing import Any
+from typing import Any, Literal
 
 from pydantic import ValidationError
 
@@ -57,14 +57,19 @@ def read_recipe(
     return with_absolute_paths(recipe, path.absolute().parent, path.name)
 
 
-def resolved_toml(recipe: Recipe, base: Path) -> str:
-    """Write every setting, defaults included, as TOML text with paths relative to `base`."""
+def resolved_toml(recipe: Recipe, base: Path, outside: Literal["relative", "name"] = "relative") -> str:
+    """Write every setting, defaults included, as TOML text with paths relative to `base`.
+
+    Paths outside it are relative too, or their name alone, which tells nothing of the machine.
+    """
     import os
 
     import tomli_w
 
     def plain(value: Any) -> Any:
         if isinstance(value, Path):
+            if outside == "name" and not value.is_relative_to(base):
+                return value.name
             return Path(os.path.relpath(value, base)).as_posix() if value.is_absolute() else value.as_posix()
         if isinstance(value, Mapping):
             return {key: plain(v) for key, v in value.items() if v is not None}

@@ -31,6 +31,10 @@ class Outputs(Settings):
     )
     text: bool = Field(False, description="write bed.csv as well: one row for each cell, in the grid's own order")
 
+    figures: bool = Field(
+        False, description="write every map and diagnostic as PNG and PDF for a paper, in figures/ (some seconds)"
+    )
+
     @model_validator(mode="after")
     def _into_has_names(self) -> Outputs:
         if self.into is not None and self.names is None:

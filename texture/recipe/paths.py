@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
 from pathlib import Path
 from typing import Any
 
@@ -9,7 +10,7 @@ from texture.errors import RecipeError
 from texture.recipe.settings import Settings
 from texture.recipe.whole import Recipe
 
-__all__ = ["with_absolute_paths"]
+__all__ = ["named_files", "with_absolute_paths"]
 
 
 def with_absolute_paths(recipe: Recipe, base: Path, recipe_name: str) -> Recipe:
@@ -45,6 +46,26 @@ def with_absolute_paths(recipe: Recipe, base: Path, recipe_name: str) -> Recipe:
 
     changes: dict[str, Any] = {"output": (base / recipe.output).resolve()}
     for name in type(recipe).model_fields:
-        if name != "output":
-            changes[name] = fixed(getattr(recipe, name), name)
+        if name == "output":
+            continue
+        new = fixed(old := getattr(recipe, name), name)
+        if new is not old:  # what nobody set must not look as if somebody had
+            changes[name] = new
     return recipe.model_copy(update=changes)
+
+
+def named_files(recipe: Recipe) -> list[Path]:
+    """List every file that a recipe names, each once, in the order of the recipe's blocks."""
+
+    def inside(value: Any) -> Iterator[Path]:
+        if isinstance(value, Path):
+            yield value
+        elif isinstance(value, Settings):
+            for name in type(value).model_fields:
+                yield from inside(getattr(value, name))
+        elif isinstance(value, tuple):
+            for item in value:
+                yield from inside(item)
+
+    names = (name for name in type(recipe).model_fields if name != "output")
+    return list(dict.fromkeys(path for name in names for path in inside(getattr(recipe, name))))

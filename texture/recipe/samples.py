@@ -34,6 +34,10 @@ class Samples(Settings):
     file: Path = Field(description="spreadsheet or text table, relative to the recipe")
     sheet: str | None = Field(None, description="sheet name; the first sheet with a table if absent")
     survey: str | None = Field(None, description="name of the survey; the file's stem if absent")
+    credit: str | None = Field(
+        None,
+        description="who is to be thanked for the data, and under which licence; stands on the page and in the files",
+    )
     crs: str | None = Field(None, description="EPSG code or WKT of the positions; longitude and latitude if absent")
     hemisphere: Literal["", "N", "S", "E", "W", "NE", "NW", "SE", "SW"] = Field(
         "", description="half of the globe of degrees that carry neither sign nor letter; north and east if empty"

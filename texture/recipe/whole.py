@@ -16,6 +16,7 @@ from texture.recipe.method import Method, MethodName
 from texture.recipe.mobility import Mobility
 from texture.recipe.outputs import Outputs
 from texture.recipe.quantities import Quantity
+from texture.recipe.report import Report
 from texture.recipe.rim import Rim
 from texture.recipe.samples import Samples
 from texture.recipe.settings import Settings, check_composition, check_names, nearest_known
@@ -38,12 +39,15 @@ class Recipe(Settings):
     method: Method = Field(default_factory=Method)
     validation: Validation = Field(default_factory=Validation)
     bed: Bed = Field(default_factory=Bed)
-    rim: Rim | None = None
-    mobility: tuple[Mobility, ...] = ()
+    rim: Rim | None = Field(None, description="coarse cells along the open boundary; none if absent")
+    mobility: tuple[Mobility, ...] = Field((), description="waves and currents, to see what they would move")
     inventory: Inventory = Field(default_factory=Inventory)
-    quantities: tuple[Quantity, ...] = ()
+    quantities: tuple[Quantity, ...] = Field(
+        (), description="further numbers of the samples, each with a map of its own"
+    )
     ensemble: Ensemble = Field(default_factory=Ensemble)
     outputs: Outputs = Field(default_factory=Outputs)
+    report: Report = Field(default_factory=Report)
 
     @model_validator(mode="after")
     def _names_agree(self) -> Recipe:

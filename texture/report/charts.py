@@ -34,16 +34,21 @@ def draw_scatter(parts: tuple[str, ...], observed: Floats, held_out: HeldOut) ->
 
 
 def draw_variograms(structure: Any, names: tuple[str, ...]) -> Figure:
-    """Draw the empirical variogram of each coordinate with the fitted models."""
+    """Draw the empirical variogram of each coordinate with both fits, a line down at the range of each."""
     with styled():
-        figure = new_figure(4.2 * len(names), 2.9)
+        figure = new_figure(4.4 * len(names), 3.1)
         for axis, covariance, name in zip(np.atleast_1d(figure.subplots(1, len(names))), structure, names, strict=True):
             record = covariance.fit_record
             seen = record.variogram
             far = np.linspace(0.0, float(seen.distance_m.max()), 200)[1:]
-            for (label, gamma), line in zip(record.curves(far).items(), (INK, QUIET), strict=True):
-                axis.plot(far / 1000, gamma, color=line, label=f"fit by {label}")
+            fits = (record.covariance, record.variogram_covariance)
+            for (label, gamma), fit, line in zip(record.curves(far).items(), fits, (INK, QUIET), strict=True):
+                reach = f", range {fit.range_m / 1000:.1f} km" if fit.structures else ""
+                axis.plot(far / 1000, gamma, color=line, label=f"fit by {label}{reach}")
+                if fit.structures and fit.range_m <= far[-1]:
+                    top = float(fit.variogram(np.array([fit.range_m]))[0])
+                    axis.plot([fit.range_m / 1000] * 2, [0.0, top], color=line, lw=0.9, ls=":")
             axis.plot(seen.distance_m / 1000, seen.semivariance, "o", color=STRONG, ms=4, label="pairs of stations")
             axis.set(xlabel="distance, km", ylabel="semivariance", xlim=(0, None), ylim=(0, None), title=name)
-            axis.legend()
+            axis.legend(loc="lower right", fontsize=7.5)
     return figure

@@ -98,6 +98,12 @@ def map_layers(result: Result) -> list[MapLayer]:
     layers.append(
         _steps("thickness", "erodible thickness, m", thickness, active, 0.0, float(thickness[active].max()), "m")
     )
+    for i, moved in enumerate(result.moved):
+        stress = np.asarray(moved.stress_pa, dtype=np.float64)
+        most = max(float(np.nanmax(np.where(active, stress, np.nan))), 1e-6)
+        layers.append(
+            _steps(f"stress_{i}", f"largest stress on the bed, Pa: {moved.name}", stress, active, 0.0, most, "Pa")
+        )
     return layers
 
 

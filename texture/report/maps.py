@@ -10,6 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from texture.report.style import INK, LAND, PART_MAP, new_figure, styled
+from texture.targets.drawing import draw_cells
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
@@ -17,7 +18,7 @@ if TYPE_CHECKING:
 
     from texture.targets import Target
 
-__all__ = ["EVIDENCE_COLOURS", "Layer", "draw_maps"]
+__all__ = ["EVIDENCE_COLOURS", "Layer", "draw_maps", "draw_residuals"]
 
 Floats = NDArray[np.float64]
 EVIDENCE_COLOURS = {
@@ -29,7 +30,6 @@ EVIDENCE_COLOURS = {
     5: (140, 150, 90),
     6: (176, 65, 62),
 }
-MOST_CELLS_ACROSS = 600  # more would not be seen, and would make the file large; the caption says so
 
 
 @dataclass(frozen=True, eq=False)
@@ -48,7 +48,11 @@ class Layer:
 
 
 def draw_maps(
-    target: Target, layers: list[Layer], stations: tuple[Floats, Floats] | None = None, columns: int = 2
+    target: Target,
+    layers: list[Layer],
+    stations: tuple[Floats, Floats] | None = None,
+    columns: int = 2,
+    width: float = 4.9,
 ) -> Figure:
     """Draw layers side by side on one scale of distance.
 
@@ -60,14 +64,11 @@ def draw_maps(
         Longitude and latitude, drawn as small rings.
     columns : int
         Maps in a row.
+    width : float
+        Of one map with its bar, inches.
     """
     rows = -(-len(layers) // columns)
-    middle = float(np.nanmean(target.latitude))
-    stretch = 1.0 / np.cos(np.radians(middle))
-    wide = np.ptp(target.longitude[target.active]) / stretch
-    tall = np.ptp(target.latitude[target.active])
-    width = 4.9
-    height = min(max(0.68 * width * tall / wide, 1.6), 6.5) + 0.65  # the map beside its bar, and room for labels
+    middle, stretch, height = _proportions(target, width)
     with styled():
         figure = new_figure(width * columns, height * rows)
         axes = figure.subplots(rows, columns, squeeze=False, sharex=True, sharey=True)
@@ -80,12 +81,73 @@ def draw_maps(
             axis.set_title(layer.title)
         for axis in axes.flat[len(layers) :]:
             axis.set_visible(False)
-        for axis in axes[-1]:
-            axis.set_xlabel("longitude, degrees")
-        for axis in axes[:, 0]:
-            axis.set_ylabel("latitude, degrees")
-        _scale_bar(axes.flat[0], middle)
+        _dress(axes, middle)
     return figure
+
+
+def draw_residuals(
+    target: Target, place: tuple[Floats, Floats], residuals: Floats, parts: tuple[str, ...], width: float = 4.0
+) -> Figure:
+    """Draw the held-out error of each station where it lies: one map a part, symmetric about zero.
+
+    Parameters
+    ----------
+    target : Target
+    place : pair of float arrays, shape (n,)
+        Longitude and latitude.
+    residuals : float array, shape (n, parts)
+        Prediction minus measurement, NaN where there is none.
+    parts : tuple of str
+    width : float
+        Of one map, inches.
+    """
+    import cmcrameri.cm as cm
+    from matplotlib.colors import ListedColormap, Normalize
+
+    middle, stretch, height = _proportions(target, width)
+    known = np.abs(residuals[np.isfinite(residuals)])
+    most = max(0.1, float(np.quantile(known, 0.98))) if known.size else 0.1
+    colours: Any = cm.vik
+    with styled():
+        figure = new_figure(width * len(parts), height + 0.45)
+        axes = figure.subplots(1, len(parts), squeeze=False, sharex=True, sharey=True)
+        sea = np.where(target.active, 0.0, np.nan)
+        for axis, part, i in zip(axes.flat, parts, range(len(parts)), strict=True):
+            axis.set_facecolor(LAND)
+            draw_cells(axis, target, sea, ListedColormap(["white"]), Normalize(0.0, 1.0))
+            some = np.flatnonzero(np.isfinite(residuals[:, i]))
+            some = some[np.argsort(np.abs(residuals[some, i]), kind="stable")]  # the large ones on top
+            drawn = axis.scatter(
+                place[0][some], place[1][some], c=residuals[some, i], s=14, cmap=colours,
+                norm=Normalize(-most, most), edgecolors=INK, linewidths=0.3,
+            )  # fmt: skip
+            axis.set_aspect(stretch)
+            axis.set_title(part)
+        _dress(axes, middle)
+        figure.colorbar(
+            drawn, ax=axes, orientation="horizontal", shrink=0.5, aspect=40, pad=0.04, extend="both",
+            label="held-out prediction minus measurement, fraction of dry mass",
+        )  # fmt: skip
+    return figure
+
+
+def _proportions(target: Target, width: float) -> tuple[float, float, float]:
+    """Middle latitude, stretch of its degrees, and height in inches of a map of that width beside its bar."""
+    middle = float(np.nanmean(target.latitude))
+    stretch = 1.0 / np.cos(np.radians(middle))
+    wide = np.ptp(target.longitude[target.active]) / stretch
+    tall = np.ptp(target.latitude[target.active])
+    ratio = tall / wide if wide > 0.0 else 1.0
+    return middle, stretch, min(max(0.68 * width * ratio, 1.6), 6.5) + 0.65
+
+
+def _dress(axes: Any, middle: float) -> None:
+    """Label the outer axes, and put scale bar and north arrow into the first map."""
+    for axis in axes[-1]:
+        axis.set_xlabel("longitude, degrees")
+    for axis in axes[:, 0]:
+        axis.set_ylabel("latitude, degrees")
+    _scale_bar(axes.flat[0], middle)
 
 
 def _draw(figure: Figure, axis: Axes, target: Target, layer: Layer) -> None:
@@ -98,13 +160,13 @@ def _draw(figure: Figure, axis: Axes, target: Target, layer: Layer) -> None:
         used = sorted({int(v) for v in values[np.isfinite(values)]})
         values = _positions(values, used)
         colours = ListedColormap([tuple(c / 255 for c in layer.colours[v]) for v in used])
-        mesh = _patches(axis, target, values, colours, BoundaryNorm(np.arange(len(used) + 1) - 0.5, len(used)))
+        mesh = draw_cells(axis, target, values, colours, BoundaryNorm(np.arange(len(used) + 1) - 0.5, len(used)))
         bar = figure.colorbar(mesh, ax=axis, shrink=0.9, pad=0.02, ticks=range(len(used)))
         bar.ax.set_yticklabels([layer.names[v] for v in used])
         bar.ax.tick_params(length=0)
     else:
         colour_map: Any = getattr(cm, PART_MAP)
-        mesh = _patches(axis, target, values, colour_map, Normalize(*layer.limits))
+        mesh = draw_cells(axis, target, values, colour_map, Normalize(*layer.limits))
         figure.colorbar(mesh, ax=axis, shrink=0.9, pad=0.02, label=layer.label)
 
 
@@ -114,52 +176,6 @@ def _positions(values: Floats, used: list[int]) -> Floats:
     result = np.full(values.shape, np.nan)
     result[known] = np.searchsorted(used, values[known].astype(int))
     return result
-
-
-def _patches(axis: Axes, target: Target, values: Floats, colour_map: Any, norm: Any) -> Any:
-    """Draw each cell in its place: rows and columns as one sheet, faces as polygons, places as dots."""
-    if len(target.shape) == 2:
-        lon, lat, grid = _thinned(target, values)
-        sheet = np.ma.masked_invalid(grid)
-        return axis.pcolormesh(lon, lat, sheet, cmap=colour_map, norm=norm, rasterized=True)
-    shown = np.flatnonzero(np.isfinite(values))
-    if target.corners is None:
-        lon, lat = target.longitude[shown], target.latitude[shown]
-        return axis.scatter(lon, lat, c=values[shown], s=9, cmap=colour_map, norm=norm, rasterized=True)
-    from matplotlib.collections import PolyCollection
-
-    pieces = np.flatnonzero(np.isfinite(values[target.cell_of_piece]))
-    polygons = np.stack(target.corners.of(pieces), axis=-1)
-    drawn = PolyCollection(
-        list(polygons), cmap=colour_map, norm=norm, edgecolors="face", linewidths=0.2, rasterized=True
-    )
-    drawn.set_array(values[target.cell_of_piece[pieces]])
-    axis.add_collection(drawn)
-    axis.autoscale_view()
-    return drawn
-
-
-def _thinned(target: Target, values: Floats) -> tuple[Floats, Floats, Floats]:
-    """Vertices and values, every k-th cell where there are more than can be seen."""
-    rows, columns = target.shape
-    step = max(1, -(-max(rows, columns) // MOST_CELLS_ACROSS))
-    grid = values.reshape(rows, columns)[::step, ::step]
-    return _vertices(target, 0, step), _vertices(target, 1, step), grid
-
-
-def _vertices(target: Target, axis: int, step: int) -> Floats:
-    """Shared vertices from centres: drawing wants one array, not four corners a cell."""
-    centres = (target.longitude, target.latitude)[axis].reshape(target.shape)[::step, ::step]
-    if not np.isfinite(centres).all():  # drawing needs a position everywhere; what is missing is land
-        known = np.flatnonzero(np.isfinite(centres.ravel()))
-        from scipy.spatial import KDTree
-
-        index = np.column_stack(np.unravel_index(np.arange(centres.size), centres.shape))
-        centres = centres.ravel()[known[KDTree(index[known]).query(index)[1]]].reshape(centres.shape)
-    if min(centres.shape) < 2:
-        return np.asarray(np.pad(centres, ((0, 1), (0, 1)), mode="edge"))
-    padded = np.pad(centres, 1, mode="reflect", reflect_type="odd")
-    return np.asarray((padded[:-1, :-1] + padded[1:, :-1] + padded[:-1, 1:] + padded[1:, 1:]) / 4.0)
 
 
 def _scale_bar(axis: Axes, latitude: float) -> None:

@@ -8,7 +8,7 @@ import numpy as np
 
 from texture.report.encode import Picture, picture
 from texture.report.maps import Layer, draw_maps
-from texture.report.tables import Table, number
+from texture.report.table import Table, number
 
 if TYPE_CHECKING:
     from texture.result import Result

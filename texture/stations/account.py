@@ -202,6 +202,12 @@ class Stations:
         order = size[size > FLAGGED_FROM].sort_values(ascending=False, kind="stable").index
         return pd.DataFrame(self.table.loc[order, columns]).reset_index(drop=True)
 
+    def plot(self, part: str = "mud", ax: Any = None) -> Any:
+        """Draw the stations on matplotlib axes; see `texture.stations.drawing.plot_stations`."""
+        from texture.stations.drawing import plot_stations
+
+        return plot_stations(self, part, ax)
+
     def __len__(self) -> int:
         return len(self.table)
 

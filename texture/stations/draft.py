@@ -258,6 +258,7 @@ def _readable_lines(look: _Look, base: Path) -> list[str]:
     lines += [
         'basis = "whole"                 # "below_2mm" if the laboratory saw only what passed 2 mm',
         'blank_means = "not_measured"    # "zero" if an empty cell says that there is none',
+        '# credit = "whose data these are, and under which licence"   # stands on the page and in the files',
     ]
     if source.joined is not None and source.joined.places.where.sheet:
         lines.append(f"join = {{ sheet = {_toml(source.joined.places.where.sheet)} }}")

@@ -36,7 +36,9 @@ def safe_cell(value: object) -> object:
 
 
 def write_tables(stations: Stations, folder: str | Path) -> list[Path]:
-    """Write `stations.csv`, `stations.gpkg`, `audit.csv` and, if there are cores, `deeper.csv` to a folder that exists.
+    """Write `stations.csv`, `stations.gpkg`, `audit.csv`, `rows.csv` and, if there are cores, `deeper.csv` to a folder that exists.
+
+    `audit.csv` has every reading that was not plain, `rows.csv` the fate of every row with the reason.
 
     Numbers are written so that reading them back gives the same float64. Unknown parts are blank. Texts that start a
     formula are led by an apostrophe in all of them.
@@ -53,7 +55,7 @@ def write_tables(stations: Stations, folder: str | Path) -> list[Path]:
     import pyogrio
 
     folder = Path(folder)
-    paths = [folder / "stations.csv", folder / "stations.gpkg", folder / "audit.csv"]
+    paths = [folder / "stations.csv", folder / "stations.gpkg", folder / "audit.csv", folder / "rows.csv"]
     table = safe_table(stations.table)
     try:
         table.drop(columns="geometry").to_csv(paths[0], index=False, encoding="utf-8", lineterminator="\n")
@@ -65,9 +67,11 @@ def write_tables(stations: Stations, folder: str | Path) -> list[Path]:
         finally:
             pyogrio.set_gdal_config_options({"OGR_CURRENT_DATE": None})
         safe_table(stations.audit).to_csv(paths[2], index=False, encoding="utf-8", lineterminator="\n")
+        rows = stations.ledger.drop(columns="station")
+        safe_table(rows).to_csv(paths[3], index=False, encoding="utf-8", lineterminator="\n")
         if len(stations.deeper):
             paths.append(folder / "deeper.csv")
-            safe_table(stations.deeper).to_csv(paths[3], index=False, encoding="utf-8", lineterminator="\n")
+            safe_table(stations.deeper).to_csv(paths[4], index=False, encoding="utf-8", lineterminator="\n")
     except (OSError, RuntimeError) as error:
         raise OutputError(f"{folder}: the station tables cannot be written ({error})") from error
     return paths

@@ -199,6 +199,12 @@ class Covariance:
             parts.append("axis_scales=({})".format(", ".join(f"{s:g}" for s in self.axis_scales)))
         return f"Covariance({', '.join(parts)})"
 
+    def plot(self, ax: Any = None) -> Any:
+        """Draw its variogram on matplotlib axes; see `texture.structure.drawing.plot_covariance`."""
+        from texture.structure.drawing import plot_covariance
+
+        return plot_covariance(self, ax)
+
     @property
     def sill(self) -> float:
         """Variance of the bed at a point: all structures and the small-scale variation."""

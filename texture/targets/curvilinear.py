@@ -14,7 +14,7 @@ from texture.recipe import TargetSettings
 from texture.targets.corners import Corners, OwnCorners, SharedVertices
 from texture.targets.crs import read_crs, unwrapped
 from texture.targets.land import on_land, read_land
-from texture.targets.mask import find_depth, find_mask
+from texture.targets.mask import find_depth, find_mask, no_mask_note
 from texture.targets.structured import Structured
 from texture.targets.target import Target
 
@@ -50,7 +50,9 @@ def read_grid(dataset: xr.Dataset, settings: TargetSettings, name: str) -> Targe
     flat_lon, flat_lat = longitude.ravel(), latitude.ravel()
     land = read_land(settings.land) if settings.land is not None else None
     topology = Structured(shape, settings.halo_cells)
-    active_flat = _active(active, land, flat_lon, flat_lat, name, notes) & ~topology.in_halo()
+    active_flat = (
+        _active(active, land, flat_lon, flat_lat, no_mask_note(dataset, dims, name), notes) & ~topology.in_halo()
+    )
     _check_folds(corners, active_flat, name)
     return Target(
         kind="curvilinear",
@@ -193,7 +195,7 @@ def _active(
     land: Any,
     lon: NDArray[np.float64],
     lat: NDArray[np.float64],
-    name: str,
+    all_water: str,
     notes: list[str],
 ) -> NDArray[np.bool_]:
     if mask is not None:
@@ -208,5 +210,5 @@ def _active(
     if land is not None:
         notes.append("the file has no mask: cells whose centre is on land are dry")
         return ~on_land(land, lon, lat) & np.isfinite(lon) & np.isfinite(lat)
-    notes.append(f"{name} has no mask and no land was given: every cell is taken as water")
+    notes.append(all_water)
     return np.isfinite(lon) & np.isfinite(lat)

@@ -13,7 +13,7 @@ from texture.errors import TargetError
 if TYPE_CHECKING:
     import xarray as xr
 
-__all__ = ["find_depth", "find_mask"]
+__all__ = ["find_depth", "find_mask", "no_mask_note"]
 
 DEPTH_NAMES = (
     "sea_floor_depth_below_mean_sea_level",
@@ -53,6 +53,24 @@ def find_mask(
         )
     notes.append(f'mask "{variable.name}" does not say what its values mean: 1 is taken as water')
     return np.asarray(values == 1)
+
+
+def no_mask_note(dataset: xr.Dataset, dims: tuple[str, ...], name: str) -> str:
+    """Say that nothing tells land from water, and which variables of the grid look as if they did."""
+    note = f"{name} has no mask that says what it means, and no land was given: every cell is taken as water"
+    told = []
+    for variable in dataset.data_vars.values():
+        if set(variable.dims) != set(dims) or variable.dtype.kind not in "iuf":
+            continue
+        values = np.asarray(variable.to_numpy(), dtype=np.float64)
+        missing = ~np.isfinite(values)
+        if set(np.unique(values[~missing])) == {0.0, 1.0}:
+            told.append(f'"{variable.name}" holds 0 and 1')
+        elif missing.any() and not missing.all():
+            told.append(f'"{variable.name}" is missing in {int(missing.sum()):,} cells')
+    return note + (
+        f"; {', '.join(told[:3])}: if one of them tells, name a mask of 0 and 1 as target.mask" if told else ""
+    )
 
 
 def find_depth(dataset: xr.Dataset, named: str | None, dims: tuple[str, ...], name: str) -> NDArray[np.float64] | None:

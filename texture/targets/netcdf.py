@@ -13,7 +13,7 @@ from texture.recipe import TargetSettings
 from texture.targets.crs import read_crs
 from texture.targets.curvilinear import read_grid
 from texture.targets.land import read_land
-from texture.targets.mask import find_depth, find_mask
+from texture.targets.mask import find_depth, find_mask, no_mask_note
 from texture.targets.raster import raster
 from texture.targets.target import Target
 from texture.targets.ugrid import mesh_variable, read_mesh
@@ -78,7 +78,7 @@ def _read_projected(dataset: xr.Dataset, axes: tuple[str, str], settings: Target
     depth = find_depth(dataset, settings.depth, dims, name)
     land = read_land(settings.land) if settings.land is not None else None
     if mask is None and land is None:
-        notes.append(f"{name} has no mask and no land was given: every cell is taken as water")
+        notes.append(no_mask_note(dataset, dims, name))
     return raster(
         name, x, y, crs, settings, None if mask is None else mask.ravel(), dims,
         None if depth is None else depth.ravel(), land, tuple(notes),

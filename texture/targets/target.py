@@ -212,6 +212,12 @@ class Target:
 
         return coordinate_dataset(self)
 
+    def plot(self, values: Any = None, ax: Any = None, label: str = "") -> Any:
+        """Draw the cells, or values on them, on matplotlib axes; see `texture.targets.drawing.plot_target`."""
+        from texture.targets.drawing import plot_target
+
+        return plot_target(self, values, ax, label)
+
     def __repr__(self) -> str:
         wet = int(self.active.sum())
         west, south, east, north = self.bounds

@@ -1,0 +1,89 @@
+"""Tables of how wrong the map is, and of the structure that was fitted."""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING
+
+from texture.report.table import Table, number
+
+if TYPE_CHECKING:
+    from texture.result import Result
+
+__all__ = ["limits_table", "methods_table", "structure_table", "treatments_table"]
+
+
+def methods_table(result: Result) -> Table:
+    """Held-out scores of each method and part."""
+    found = result.found
+    parts = found.recipe.composition.parts
+    names = [("rmse", "RMSE"), ("mean_error", "mean error"), ("r_squared", "R²"), ("coverage_90", "90 % cover")]
+    rows = []
+    for method in found.validation.methods:
+        for part in parts:
+            scores = [number(method.score(part, key), 3 if key in ("rmse", "mean_error") else 2) for key, _ in names]
+            rows.append([method.method.replace("_", " "), part, f"{method.score(part, 'n'):.0f}", *scores])
+    return Table(
+        "Held-out scores. RMSE and mean error are fractions of dry mass; mean error is prediction minus measurement. "
+        "90 % cover: share of held-out samples inside their 90 % interval.",
+        ["method", "part", "stations", *[label for _, label in names]],
+        rows,
+        numeric=[2, 3, 4, 5, 6],
+    )
+
+
+def treatments_table(result: Result) -> Table:
+    """Treatments of zeros that were compared."""
+    found = result.found
+    parts, tried = found.recipe.composition.parts, found.validation.tried
+    rows = []
+    for t in tried:
+        scores = [number(t.held_out.score(p, s)) for p in parts for s in ("rmse", "mean_error")]
+        above = f"{number(t.above_best)} ± {number(t.standard_error)}"
+        rows.append([t.treatment.label, number(t.error), above, *scores, "" if t.balanced else "out of balance"])
+    return Table(
+        "Treatments of zeros, each by the map's method on the same folds. Error: sum over parts of squared error relative to the part's "
+        "variance; beside it how far above the best of those in balance, with the standard error of that. Out of balance: the mean error of a part is "
+        "beyond a tenth of its mean, which may hold what lies unseen below the detection limit. The lowest error in balance is taken, or the "
+        "first where it is within one standard error.",
+        ["treatment", "error", "above the best", *[f"{p} {s}" for p in parts for s in ("RMSE", "mean error")], ""],
+        rows,
+        numeric=list(range(1, 3 + 2 * len(parts))),
+        chosen=next(i for i, t in enumerate(tried) if t.chosen),
+    )
+
+
+def limits_table(result: Result) -> Table:
+    """How the map's mean moves with the limit of detection."""
+    effect, parts = result.found.validation.limit_effect, result.found.recipe.composition.parts
+    rows = []
+    if effect is not None:
+        for i, part in enumerate(parts):
+            moved = [number(m[i] - effect.mean[i], 4) for m in (effect.halved, effect.doubled)]
+            rows.append([part, number(effect.mean[i], 4), *moved])
+    limit = "" if effect is None else f" ({effect.limit:g}), over {effect.cells:,} cells"
+    return Table(
+        f"How far the map's mean moves when the limit that zeros are treated at is halved and doubled{limit}.",
+        ["part", "mean", "limit halved", "limit doubled"],
+        rows,
+        numeric=[1, 2, 3],
+    )
+
+
+def structure_table(result: Result) -> Table:
+    """Fitted structure of each column."""
+    mapper = result.found.mapper
+    rows = []
+    for name, c in zip(mapper.column_names, mapper.structure, strict=True):
+        model = " + ".join(s.model + (f" {s.smoothness:g}" if s.smoothness else "") for s in c.structures) or "none"
+        sill = sum(s.sill for s in c.structures)
+        rows.append(
+            [name, model, number(c.range_m / 1000, 1) if c.structures else "–"]
+            + [number(v, 2) for v in (sill, c.small_scale, c.survey)]
+        )
+    return Table(
+        "Fitted structure of each log-ratio coordinate. Range: where the correlation has fallen to 0.05. Small-scale: "
+        "the bed's own patchiness below the sampling distance. Survey: variance of the offset that samples of one survey share.",
+        ["coordinate", "model", "range, km", "sill", "small-scale", "survey"],
+        rows,
+        numeric=[2, 3, 4, 5],
+    )
