@@ -1,4 +1,4 @@
-"""Which treatment of zeros the map takes: candidates fitted, compared by held-out error, and one of them chosen."""
+"""The treatments of zeros that held-out error chooses from: fitted on all stations, started anew in folds."""
 
 from __future__ import annotations
 
@@ -17,42 +17,11 @@ if TYPE_CHECKING:
     from texture.observations import Observations
     from texture.recipe import Method
     from texture.structure import CovarianceSet
-    from texture.validation.held_out import HeldOut
 
-__all__ = ["LimitEffect", "Tried", "choose", "fit_candidates", "limit_effect", "warm_start", "with_columns_of"]
+__all__ = ["LimitEffect", "fit_candidates", "limit_effect", "warm_start", "with_columns_of"]
 
 Floats = NDArray[np.float64]
 MOST_LIMIT = 0.33  # a limit of a third of three parts would replace them all
-MOST_MEAN_ERROR = 0.1  # of a part's mean: a map that is further off has too much or too little of it overall
-
-
-@dataclass(frozen=True, eq=False)
-class Tried:
-    """One treatment's record in the comparison.
-
-    Attributes
-    ----------
-    treatment : Treatment
-    held_out : HeldOut
-    error : float
-        Sum over parts of the mean squared error relative to the part's variance; lower is better, and their plain
-        means would score the number of parts.
-    above_best : float
-        How much `error` lies above that of the best candidate.
-    standard_error : float
-        Of `above_best`, from the differences station by station.
-    balanced : bool
-        Whether the mean error of every part is within a tenth of the part's mean.
-    chosen : bool
-    """
-
-    treatment: Treatment
-    held_out: HeldOut
-    error: float
-    above_best: float
-    standard_error: float
-    balanced: bool
-    chosen: bool
 
 
 @dataclass(frozen=True)
@@ -107,61 +76,6 @@ def warm_start(treatment: Treatment, plain: Learned) -> CovarianceSet | None:
     range_m = own.range_m or float(np.linalg.norm(np.ptp(plain.observations.points, axis=0))) / 3.0
     indicator = Covariance([Structure("exponential", 0.15, range_m)], small_scale=0.05, axis_scales=own.axis_scales)
     return CovarianceSet([*plain.structure, indicator])
-
-
-def choose(treatments: list[Treatment], held_out: list[HeldOut], measured: Floats, limit: float) -> list[Tried]:
-    """Compare treatments, the plain one first where it is among them, and mark the one to take.
-
-    The lowest error wins among those whose mean errors are balanced, or among all where none is. The first is taken
-    instead where it is among them and within one standard error. What was measured below the limit is known
-    to lie between 0 and the limit and no better, so a part's mean is known between two bounds: a mean in between has no error.
-
-    Parameters
-    ----------
-    treatments : list of Treatment
-    held_out : list of HeldOut
-        On the same folds.
-    measured : float array, shape (n, parts)
-        NaN where a part is unknown or not to be scored.
-    limit : float
-        The laboratory's.
-    """
-    shares = [_relative_errors(h.predicted, measured) for h in held_out]
-    error = [float(s.sum()) for s in shares]
-    balanced = [_balanced(h.predicted, measured, limit) for h in held_out]
-    open_to = [i for i in range(len(error)) if balanced[i] or not any(balanced)]
-    best = min(open_to, key=lambda i: error[i])
-    spread = [float(np.sqrt(len(s)) * (s - shares[best]).std()) for s in shares]
-    taken = 0 if 0 in open_to and error[0] - error[best] <= spread[0] else best
-    return [
-        Tried(treatments[i], held_out[i], error[i], error[i] - error[best], spread[i], balanced[i], i == taken)
-        for i in range(len(error))
-    ]
-
-
-def _relative_errors(predicted: Floats, measured: Floats) -> Floats:
-    """Each station's share in the sum over parts of the mean squared error relative to the part's variance, shape (n,)."""
-    share = np.zeros(len(measured))
-    for part in range(measured.shape[1]):
-        known = np.isfinite(measured[:, part])
-        spread = float(measured[known, part].var()) if known.any() else 0.0
-        if spread > 0.0:
-            share[known] += (predicted[known, part] - measured[known, part]) ** 2 / spread / known.sum()
-    return share
-
-
-def _balanced(predicted: Floats, measured: Floats, limit: float) -> bool:
-    for part in range(measured.shape[1]):
-        known = np.isfinite(measured[:, part])
-        if not known.any():
-            continue
-        mean, small = float(measured[known, part].mean()), measured[known, part] < limit
-        error = float(predicted[known, part].mean()) - mean
-        # The parts below the limit may hold as much again: that much the mean may lie above what was measured.
-        unseen = float((limit - measured[known, part][small]).sum()) / known.sum()
-        if not -MOST_MEAN_ERROR * mean <= error <= MOST_MEAN_ERROR * mean + unseen:
-            return False
-    return True
 
 
 def limit_effect(learned: Learned, method: Method, places: Floats) -> LimitEffect | None:

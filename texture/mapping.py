@@ -27,9 +27,16 @@ if TYPE_CHECKING:
 __all__ = ["Learned", "Mapper", "columns_in", "learn", "learn_all", "learn_each", "make_mapper"]
 
 Floats = NDArray[np.float64]
-SWEEPS = (4, 2)
-"""Of censored values, before the fit and after it. On 494 stations, 203 of them without gravel, the mean change of a value fell from
-0.07 in the first to 0.035 in the fourth and 0.006 in the eighth, against a noise of standard deviation 1.2."""
+SWEEPS = (8, 2)
+"""Of censored values, before the first fit and in every later turn. On 494 stations, 203 of them without gravel, the mean change of
+a value fell from 0.07 in the first to 0.035 in the fourth and 0.006 in the eighth, against a noise of standard deviation 1.2. With
+four before the first fit, folds need four to six fits, since what replaced the zeros is still in them; with eight, one to three."""
+MOST_TURNS = 8
+LEAST_TURN = 0.05
+"""Turns of sweeps and fits end where the total variance moves by less than this share. On eight simulated fields with 70 % of the
+gravel below the limit one turn found 45 % of the true variance of 2.25, turns to the end 85 %."""
+LONGEST_LEAP = 0.75
+"""Ratio of one turn's move to the one before, at most, that a leap to their limit is reckoned with."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -119,16 +126,56 @@ def learn(
         noise = noise + places
     if start is None or not isinstance(treatment, Censor):
         return _fitted(treatment, observations, values, noise, method, start, space)
-    # Structure and censored values hang together: sweeps with one, a fit to the other, and sweeps again.
     low, high = treatment.bounds(observations)
-    learned = Learned(treatment, observations, values, noise, start, space)
-    for _ in range(SWEEPS[0]):
-        values, noise = treatment.sweep(values, noise, low, high, *_without_each(learned, values, noise))
-    learned = _fitted(treatment, observations, values, noise, method, start, space)
+    learned = _in_turns(Learned(treatment, observations, values, noise, start, space), treatment, low, high, method)
+    values, noise = learned.values, learned.noise
     for _ in range(SWEEPS[1]):
         values, noise = treatment.sweep(values, noise, low, high, *_without_each(learned, values, noise))
     values, noise = treatment.told(values, noise, low, high, *_without_each(learned, values, noise))
     return replace(learned, values=values, noise=noise)
+
+
+def _in_turns(learned: Learned, treatment: Censor, low: Floats, high: Floats, method: Method) -> Learned:
+    """Sweep the censored values and fit the structure to them, in turns until the structure stays.
+
+    Values and structure hang together, and at the end of the turns the structure is a maximum of the likelihood of what
+    was seen, limits included, as far as expectation propagation knows it: with the pseudo-observations held, its gradient is that of
+    the plain likelihood (Rasmussen & Williams 2006, section 5.5.2). Moves shrink by a constant ratio, since each turn
+    sees the variance that the last one left below the limit; every second turn leaps to where they lead (Aitken).
+    """
+    censored = np.flatnonzero((low < high).any(axis=0))
+    values, noise, before = learned.values, learned.noise, None
+    for turn in range(MOST_TURNS):
+        for _ in range(SWEEPS[min(turn, 1)]):
+            values, noise = treatment.sweep(values, noise, low, high, *_without_each(learned, values, noise))
+        fitted = _fitted(treatment, learned.observations, values, noise, method, learned.structure, learned.space)
+        move = np.log(_totals(fitted.structure) / _totals(learned.structure))
+        learned = fitted
+        if censored.size == 0 or np.abs(move[censored]).max() < LEAST_TURN:
+            break
+        if before is None:
+            before = move
+            continue
+        ratio = np.clip(np.divide(move, before, out=np.zeros_like(move), where=before != 0.0), 0.0, LONGEST_LEAP)
+        leap = np.where(np.isin(np.arange(len(move)), censored), move * ratio / (1.0 - ratio), 0.0)
+        learned, before = replace(learned, structure=_scaled(learned.structure, np.exp(leap))), None
+    return replace(learned, values=values, noise=noise)
+
+
+def _totals(structure: CovarianceSet) -> Floats:
+    """Variance of each column as fitted, small-scale included, shape (k,)."""
+    return np.array([max(sum(s.sill for s in c.structures) + c.small_scale, 1e-12) for c in structure])
+
+
+def _scaled(structure: CovarianceSet, factors: Floats) -> CovarianceSet:
+    """The same with each column's variances times a factor."""
+    from texture.structure import CovarianceSet
+
+    columns = [
+        replace(c, structures=tuple(replace(s, sill=s.sill * f) for s in c.structures), small_scale=c.small_scale * f)
+        for c, f in zip(structure, factors.tolist(), strict=True)
+    ]
+    return CovarianceSet(columns, structure.correlation)
 
 
 def learn_all(

@@ -237,6 +237,8 @@ class Result:
             "cells": int(self.found.target.active.sum()),
             "zeros": self.found.mapper.treatment.label,
             "space": space_record(self.found.mapper.space),
+            "zeros_error": self.found.validation.choice.chosen.error,
+            "zeros_error_without_own_fold": self.found.validation.choice.blind_error,
             "scores": self.found.scores(),
             "validation": validation_record(self.found),
             "share_beyond_samples": self.beyond_share,

@@ -11,7 +11,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from texture.averaging_methods import average_held_out
-from texture.choosing import LimitEffect, Tried, choose, limit_effect, with_columns_of
+from texture.choosing import LimitEffect, limit_effect, with_columns_of
 from texture.mapping import Learned, Mapper, columns_in, learn, learn_each, make_mapper
 from texture.observations import Observations
 from texture.progress import Progress
@@ -24,6 +24,7 @@ from texture.validation.folds import Folds, make_folds
 from texture.validation.held_out import HeldOut, ScoreWeights
 from texture.validation.reach import validated_reach_m
 from texture.validation.resampling import block_weights, map_weights
+from texture.zero_choice import Choice, Tried, choose
 
 if TYPE_CHECKING:
     from texture.recipe import Method
@@ -73,8 +74,8 @@ class Validation:
         The map's method first, then those it was compared with.
     reach_m : float
         Distance from the samples up to which the map has been tested.
-    tried : list of Tried
-        Every treatment of zeros that was compared, the simplest first, by one method.
+    choice : Choice
+        Every treatment of zeros that was compared, the simplest first, by one method, and what choosing is worth.
     learned : Learned
         The map's treatment on all stations, calibrated: what the map is made from.
     plain : Learned
@@ -94,7 +95,7 @@ class Validation:
     folds: Folds
     methods: list[HeldOut]
     reach_m: float
-    tried: list[Tried]
+    choice: Choice
     learned: Learned
     plain: Learned
     limit_effect: LimitEffect | None
@@ -102,6 +103,11 @@ class Validation:
     standings: list[Standing] = field(default_factory=list)
     block_m: float = np.nan
     searched: bool = False
+
+    @property
+    def tried(self) -> list[Tried]:
+        """The record of each treatment of zeros."""
+        return self.choice.tried
 
     @property
     def chosen(self) -> HeldOut:
@@ -186,11 +192,13 @@ def validate_methods(
             found = judge.judge(name, learned, columns, METHODS[name].has_variance)
             judged.append(replace(found, settings=settings))
     first = len(treated)
-    tried = choose([run.treatment for run in treated], [j.held_out for j in judged[:first]], scored, limit)
-    taken = next(i for i, t in enumerate(tried) if t.chosen)
+    held_out = [j.held_out for j in judged[:first]]
+    choice = choose([run.treatment for run in treated], held_out, scored, limit, folds.labels)
+    taken = next(i for i, t in enumerate(choice.tried) if t.chosen)
     controls = {j.held_out.method: j.held_out.predicted for j in judged if j.held_out.method in CONTROLS}
     judged = [judge.compare(j, controls) for j in judged]
-    tried = [replace(t, held_out=j.held_out) for t, j in zip(tried, judged[:first], strict=True)]
+    pairs = zip(choice.tried, judged[:first], strict=True)
+    choice = replace(choice, tried=[replace(t, held_out=j.held_out) for t, j in pairs])
     effect = limit_effect(treated[taken], recipe.method, places[:: max(1, -(-len(places) // MOST_LIMIT_CELLS))])
     methods = [judged[taken], *judged[first:]]
     standings = _standings([j.held_out for j in methods], weights)
@@ -206,7 +214,7 @@ def validate_methods(
         folds,
         [j.held_out for j in methods],
         validated_reach_m(folds.held_out_distances(points)),
-        tried,
+        choice,
         learned,
         plain,
         effect,

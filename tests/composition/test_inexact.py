@@ -27,6 +27,28 @@ def test_below_one_percent_by_hand():
     assert variance[1] == pytest.approx(1.0, rel=0.05)
 
 
+def test_below_ten_percent_beside_rounded_neighbours_by_brute_force():
+    # "<10", 60, 40: mud evenly below a tenth, sand and gravel make room for it three to two, and are rounded to a percent.
+    rng = np.random.default_rng(3)
+    mud = rng.uniform(0, 0.1, 1_000_000)
+    sand, gravel = (v + rng.uniform(-0.005, 0.005, mud.size) for v in (0.6 * (1 - mud), 0.4 * (1 - mud)))
+    drawn = np.column_stack([mud, sand, gravel])
+    for lr in (BARE, LogRatio(PARTS)):
+        brute = lr.forward(drawn / drawn.sum(axis=1, keepdims=True))
+        mean, variance = one(lr, [0.0, 0.54, 0.36], [0.1, 0.6, 0.4])
+        np.testing.assert_allclose(mean, brute.mean(axis=0), atol=0.02)
+        assert variance[0] == pytest.approx(brute[:, 0].var(), rel=0.05)
+        # Limits know no ratio: sand against gravel is a little wider than rounding alone makes it.
+        assert brute[:, 1].var() < variance[1] < 0.002
+
+
+def test_which_column_is_below_a_limit_does_not_matter():
+    low, high = np.array([0.0, 0.54, 0.36]), np.array([0.1, 0.6, 0.4])
+    for order in ([0, 1, 2], [1, 0, 2], [2, 1, 0]):
+        lr = LogRatio([PARTS[i] for i in order], tree=("mud", ("gravel", "sand")), detection_limit=1e-9)
+        assert one(lr, low[order], high[order])[1][0] == pytest.approx(1.0, rel=0.1)
+
+
 def test_sand_only_by_hand():
     # Mud anywhere between 0 and 0.3.
     mud = (np.arange(200_000) + 0.5) / 200_000 * 0.3

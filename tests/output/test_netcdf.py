@@ -114,6 +114,14 @@ def test_texture_values_come_back(texture_path, estimate, target):
     assert back.attrs["support"] == "mean over a cell"
 
 
+def test_the_source_names_what_was_kriged(estimate, target, recipe):
+    assert recipe.composition.logratio == "tree"
+    picked = ("mud", "gravel / (sand + gravel)")  # held-out error may pick shares
+    source = texture_dataset(estimate, target, recipe, CLASS_WORDS, picked).attrs["source"]
+    assert "of mud, gravel / (sand + gravel) from grab samples" in source
+    assert "tree" not in source
+
+
 def test_a_method_without_variance_writes_no_quantiles(tmp_path, estimate, target, recipe):
     estimate.variance[:] = np.nan
     data = texture_dataset(estimate, target, recipe, CLASS_WORDS, COORDINATES)

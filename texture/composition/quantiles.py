@@ -4,7 +4,8 @@
 - A part with two is a product of two logistic functions, W = logistic(a) logistic(b). P(W > w) is an integral along
   the curve logistic(a) logistic(b) = w. With t = a - b as parameter the curve is smooth on the scale of 1 everywhere, so that
   panels of six Gauss-Legendre nodes no longer than the integrand's own scale follow any pair of variances
-  and any correlation; a Newton iteration between sure brackets then finds the quantile.
+  and any correlation, or, where forty of them do, equal steps no longer than that; a Newton iteration between sure brackets then
+  finds the quantile. Three quantiles of three parts took 1.3 microseconds a value on one thread, by panels alone 3.1.
 - Three and more: the last split is integrated exactly given 1024 Sobol normal draws of the others.
 - ``ilr``, ``alr``, and products of ``shares``: order statistics of 4096 Sobol normal draws.
 
@@ -73,7 +74,7 @@ def quantiles(
 
     Notes
     -----
-    Largest errors measured, three parts, levels 0.05, 0.5 and 0.95: 6e-5 for quantiles of a point (60 random rows with means
+    Largest errors measured, three parts, levels 0.05, 0.5 and 0.95: 3.4e-5 for quantiles of a point (60 random rows with means
     in [-5, 5], variances from 0.01 to 31 and correlations to 0.95, against dense integration); for the cell mean
     (80 rows with means in [-4, 4], standard deviations from 0.5 to 3, a quarter to three quarters of the variance within)
     4e-4 uncorrelated and 3.7e-3 (root mean square 8e-4) correlated, of which the 32,768 draws it was held against are a

@@ -123,7 +123,8 @@ def texture_dataset(
         coordinate = {"long_name": "probability of a smaller cell mean", "units": "1"}
         dataset = dataset.assign_coords(quantile=("quantile", np.array(QUANTILES), coordinate))
     method = recipe.method.name.replace("_", " ")
-    source = f"{method} of {recipe.composition.logratio} coordinates of grab samples on {target.name}"
+    # What was kriged, not what the recipe asked for: held-out error may have picked shares or presence.
+    source = f"{method} of {', '.join(coordinate_names)} from grab samples on {target.name}"
     dataset.attrs = {
         **global_attributes(recipe.title, source, COMMENT, REFERENCES, (s.credit for s in recipe.samples)),
         **dataset.attrs,  # the target's own: UGRID's convention, the type of feature of points

@@ -43,13 +43,26 @@ def treatments_table(result: Result) -> Table:
     return Table(
         "Treatments of zeros, each by the map's method on the same folds. Error: sum over parts of squared error relative to the part's "
         "variance; beside it how far above the best of those in balance, with the standard error of that. Out of balance: the mean error of a part is "
-        "beyond a tenth of its mean, which may hold what lies unseen below the detection limit. The lowest error in balance is taken, or the "
-        "first where it is within one standard error.",
+        "beyond a tenth of its mean, in which zeros count as what the values above the limit make of them. Of those within one standard error of the "
+        "best in balance the first is taken, or the one whose assumption the measured values speak for."
+        + _worth(result),
         ["treatment", "error", "above the best", *[f"{p} {s}" for p in parts for s in ("RMSE", "mean error")], ""],
         rows,
         numeric=list(range(1, 3 + 2 * len(parts))),
         chosen=next(i for i, t in enumerate(tried) if t.chosen),
     )
+
+
+def _worth(result: Result) -> str:
+    """What zeros were taken to be, and what choosing costs, in sentences."""
+    choice, parts = result.found.validation.choice, result.found.recipe.composition.parts
+    said = [f" Zeros of {part}: absence." for part, u in zip(parts, choice.unseen, strict=True) if u.absent]
+    if len(choice.tried) > 1:
+        said.append(
+            f" The error of the one taken, {number(choice.chosen.error)}, was picked for being low. Where each fold is predicted by "
+            f"what would have been picked without it, the error is {number(choice.blind_error)}."
+        )
+    return "".join(said)
 
 
 def limits_table(result: Result) -> Table:
