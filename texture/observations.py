@@ -8,13 +8,14 @@ from typing import TYPE_CHECKING
 import numpy as np
 from numpy.typing import NDArray
 
-from texture.composition import class_moments, from_intervals, from_median, from_mud_and_sand
+from texture.composition import calibrate_words, class_moments, from_intervals, from_median, from_mud_and_sand
 from texture.errors import SampleError
 
 if TYPE_CHECKING:
     import pandas as pd
 
     from texture.composition import LogRatio
+    from texture.composition.calibrated import Calibrated
     from texture.stations import Stations
     from texture.structure.plane import Plane
 
@@ -92,7 +93,8 @@ class Observations:
     def coordinates(self, logratio: LogRatio) -> tuple[Floats, Floats]:
         """Coordinates of every station, and the variance of each beside the bed's own.
 
-        Exact rows become coordinates directly, limits and words by the spread of what they allow, and rows that only
+        Exact rows become coordinates directly, limits and words by the spread of what they allow (words calibrated on exact rows beside
+        them where there are enough), and rows that only
         know mud : sand by what the exact rows among these observations say of gravel.
 
         Parameters
@@ -114,7 +116,7 @@ class Observations:
         if bounded.any():
             values[bounded], noise[bounded] = from_intervals(logratio, self.low[bounded], self.high[bounded])
         if words.any():
-            values[words], noise[words] = _from_words(self.described[words], logratio)
+            values[words], noise[words], _ = self._words(logratio, values)
         fines = np.isfinite(self.mud_of_fines)
         if fines.any():
             known = _gravel_logit(self.fractions[exact, 2], logratio.detection_limit)
@@ -123,6 +125,17 @@ class Observations:
         if medians.any():
             values[medians], noise[medians] = from_median(logratio, self.median_phi[medians])
         return values, np.nan_to_num(noise)
+
+    def calibrated_words(self, logratio: LogRatio) -> list[Calibrated]:
+        """Classes whose centre and spread were moved by measured samples beside the described stations."""
+        return self._words(logratio, self.coordinates(logratio)[0])[2] if (self.described != "").any() else []
+
+    def _words(self, logratio: LogRatio, values: Floats) -> tuple[Floats, Floats, list[Calibrated]]:
+        words, exact = self.described != "", self.exact
+        mean, variance = _from_words(self.described[words], logratio)
+        return calibrate_words(
+            self.described[words], self.points[words], mean, variance, self.points[exact], values[exact]
+        )
 
 
 def observe(stations: Stations, logratio: LogRatio, plane: Plane) -> Observations:

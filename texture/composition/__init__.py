@@ -1,5 +1,6 @@
 """Fractions and log-ratio coordinates, size curves, texture classes and words for them."""
 
+from texture.composition.calibrated import calibrate_words
 from texture.composition.censoring import censored_site, censoring_bounds
 from texture.composition.classes import ClassOdds, class_numbers, class_odds, classify
 from texture.composition.closure import (
@@ -35,6 +36,7 @@ __all__ = [
     "Scale",
     "Scheme",
     "SizeCurve",
+    "calibrate_words",
     "censored_site",
     "censoring_bounds",
     "centre",

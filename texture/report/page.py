@@ -52,6 +52,7 @@ def write_page(result: Result, map_picture: Picture, settings: str, versions: st
         error_notes=words.error_notes(result),
         opinion_line=words.opinion_line(result),
         place_line=words.place_line(result),
+        word_line=words.word_line(result),
         bed_notes=words.bed_notes(result),
         methods=methods,
         references=references,

@@ -23,6 +23,7 @@ __all__ = [
     "place_line",
     "sentence",
     "versions_line",
+    "word_line",
 ]
 
 CAUTIONS = (
@@ -119,6 +120,24 @@ def opinion_line(result: Result) -> str:
     if result.look is None:
         return "The method has no variance, so no second opinion was sought."
     return " ".join(f"{text[0].upper()}{text[1:]}." for text in (str(result.look.opinion), str(result.look.honesty)))
+
+
+def word_line(result: Result) -> str:
+    """Say which described classes were calibrated on measured samples; empty where nothing was described."""
+    learned = result.found.validation.learned
+    observations, logratio = learned.observations, learned.treatment.logratio
+    described = int((observations.described != "").sum())
+    if not described:
+        return ""
+    told = [
+        f"{c.code}: {logratio.coordinate_names[c.coordinate]} {c.mean:.2f} ± {c.variance**0.5:.2f} from {c.pairs} samples "
+        f"(by the table of classes {c.table_mean:.2f} ± {c.table_variance**0.5:.2f})"
+        for c in observations.calibrated_words(logratio)
+    ]
+    head = f"{described:,} stations are known by words alone."
+    if not told:
+        return f"{head} Too few measured samples stand beside them to calibrate the words on: each class is what its table says."
+    return f"{head} Classes calibrated on measured samples beside them, the others by their table: {'; '.join(told)}."
 
 
 def place_line(result: Result) -> str:
