@@ -151,6 +151,9 @@ def test_water_that_is_not_connected_falls_back_to_the_plane_and_says_so(bay):
     ("method", "message"),
     [
         ({"radius_m": 500.0}, 'radius_m chooses stations point by point; it needs neighbourhood = "nearest"'),
+        ({"anisotropy": [30.0, 2.0], "distance": "in_water"}, "anisotropy acts on kriging in the plane"),
+        ({"anisotropy": [30.0, 0.5]}, "found ratio 0.5, expected longer over shorter"),
+        ({"anisotropy": "fit", "fit": "variogram"}, 'needs fit = "likelihood"'),
         ({"at_least": 3}, "at_least acts with radius_m or per_sector_at_most only"),
         ({"name": "nearest", "neighbourhood": "nearest", "radius_m": 500.0}, "acts on kriging only"),
         ({"neighbourhood": "nearest", "radius_m": 500.0, "neighbours": 8, "at_least": 9}, "more than the 8 neighbours"),
@@ -160,6 +163,21 @@ def test_a_rule_that_cannot_act_is_told(small, method, message):
     change(small, **method)
     with pytest.raises(RecipeError, match=message):
         read_recipe(small)
+
+
+@pytest.mark.slow
+@pytest.mark.parametrize("anisotropy", ["fit", [30.0, 2.0]])
+def test_direction_goes_the_whole_way(small, anisotropy):
+    change(small, anisotropy=anisotropy)
+    result = build(small, validation={"count": 3, "compare": ["nearest"]}, composition={"zeros": "replace"})
+    assert result.look.opinion.agrees
+    found = [c.anisotropy for c in result.found.mapper.structure if c.structures]
+    assert found
+    if anisotropy == "fit":
+        assert len(set(found)) == 1
+    else:
+        assert set(found) == {(30.0, 2.0)}
+        assert "along azimuth 30°, 2 times that across it" in repr(result)
 
 
 @pytest.mark.slow

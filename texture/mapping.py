@@ -231,6 +231,7 @@ def _fitted(
         survey=observations.survey if several else None,
         drift=seen.drift,
         start=start,
+        anisotropy=method.anisotropy if method.anisotropy != "none" and space.ground is None else None,
         own_range_axes=space.own_range_axes(seen.points.shape[1]),
     )
     return Learned(treatment, observations, values, noise, structure, space)

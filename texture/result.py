@@ -355,6 +355,8 @@ def structure_line(found: Validated) -> str:
     for name, covariance in zip(found.mapper.column_names, found.mapper.structure, strict=True):
         model = " + ".join(s.model + (f" {s.smoothness:g}" if s.smoothness else "") for s in covariance.structures)
         own = "".join(f", of {n} {r:.2g} sd" for n, r in own_ranges(found.mapper.space, covariance).items())
+        if covariance.anisotropy is not None:
+            own = " along azimuth {:.0f}°, {:.2g} times that across it".format(*covariance.anisotropy) + own
         said.append(
             f"{name}: "
             + (f"{model}, range {covariance.range_m / 1000:.1f} km{own}" if model else "no spatial structure")

@@ -62,6 +62,11 @@ class Method(Settings):
     drift: tuple[str, ...] = Field(
         (), description='covariates, or "x" and "y", that the mean follows linearly; all covariates if absent'
     )
+    anisotropy: Literal["none", "fit"] | tuple[float, float] = Field(
+        "none",
+        description="ranges that depend on direction: found by likelihood, or azimuth in degrees clockwise from grid north and ratio "
+        "of longer to shorter; not for distance in water",
+    )
     fit: Literal["likelihood", "variogram"] = Field("likelihood", description="how the covariance is fitted")
     estimate: Literal["mean", "median"] = Field(
         "mean", description="expected fraction, or back-transform of the kriged coordinates"
@@ -86,6 +91,14 @@ class Method(Settings):
     @model_validator(mode="after")
     def _agrees(self) -> Method:
         self._check_neighbourhood()
+        if self.anisotropy != "none" and (self.name == "kriging_in_water" or not self.name.startswith("kriging")):
+            raise ValueError(f'anisotropy acts on kriging in the plane; found name = "{self.name}"')
+        if isinstance(self.anisotropy, tuple) and not 1.0 <= self.anisotropy[1] <= 1000.0:
+            raise ValueError(
+                f"anisotropy: found ratio {self.anisotropy[1]:g}, expected longer over shorter range, 1 or more"
+            )
+        if self.anisotropy == "fit" and self.fit == "variogram":
+            raise ValueError('anisotropy = "fit" needs fit = "likelihood"; or give azimuth and ratio')
         names = tuple(c.name for c in self.covariates)
         for name in names:
             if names.count(name) > 1:

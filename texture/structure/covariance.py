@@ -320,9 +320,13 @@ class Covariance:
         groups: Sequence[Sequence[int]] | None = None,
         start: Covariance | CovarianceSet | None = None,
         seed: int = 0,
+        anisotropy: str | tuple[float, float] | None = None,
         **options: Any,
     ) -> Any:
         """Fit a covariance to values at points; see `texture.structure.fit.fit_covariance` for all details.
+
+        With `anisotropy="fit"`, or (azimuth in degrees, ratio), ranges depend on direction; see
+        `texture.structure.anisotropy.fit_with_anisotropy`.
 
         Returns
         -------
@@ -332,6 +336,13 @@ class Covariance:
         from texture.structure.plane import check_metres
 
         check_metres(check_points(points))
+        if anisotropy is not None:
+            from texture.structure.anisotropy import fit_with_anisotropy
+
+            return fit_with_anisotropy(
+                points, values, anisotropy, start, seed, method=method, noise_variance=noise_variance, survey=survey,
+                drift=drift, groups=groups, **options,
+            )  # fmt: skip
         return fit_covariance(points, values, method, noise_variance, survey, drift, groups, start, seed, **options)
 
 
