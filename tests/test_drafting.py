@@ -15,7 +15,7 @@ def test_unedited_draft_of_the_demo_builds_the_same_stations(demo_recipe, tmp_pa
     text = draft([folder / f for f in FILES], tmp_path / "recipe.toml", grid=folder / "model_grid.nc")
     assert "# DOUBT: no file says which system these metres are in; EPSG:32626 puts them where the others are" in text
     assert "8,852 of them water" in text
-    assert "outer edge, north: 2 cells, 1.1 km, river inlet, not rimmed" in text
+    assert "north: 2 cells, 1.1 km, river inlet, not rimmed" in text
     quick = {"validation": {"count": 2, "compare": []}, "outputs": {"geotiff": False}}
     result = build(tmp_path / "recipe.toml", **quick)
     ours, theirs = (r.found.stations.table.set_index(["survey", "id"]) for r in (result, plain))

@@ -141,6 +141,6 @@ def _grid_lines(target: Target | None, problem: str) -> str:
     lines = [
         f"# {target.size_text}, {int(target.active.sum()):,} of them water, found by the file's own attributes",
         *(f"# {'DOUBT: ' if any(words in note for words in UNSURE) else ''}{note}" for note in target.notes),
-        *(f"# outer edge, {opening}" for opening in target.openings),
+        *(f"# outer edge {i}, {opening}" for i, opening in enumerate(target.openings, start=1)),
     ]
     return "\n".join(lines) + "\n"

@@ -186,3 +186,16 @@ def test_distances_agree_with_a_graph_library(target_of, in_metres):
     limited = water_distance(target, start, in_metres, limit=float(np.median(expected[np.isfinite(expected)])))
     assert (limited[np.isfinite(limited)] == found[np.isfinite(limited)]).all()
     assert (np.isfinite(limited) == (found <= np.median(expected[np.isfinite(expected)]))).all()
+
+
+def test_openings_are_struck_out_by_their_number(target_of):
+    active = np.zeros((8, 9), dtype=bool)
+    active[1:, 1:-1] = True
+    active[-1, 4] = False  # two openings to the south, of three cells each
+    target = target_of(active, inlet_width_m=0.0)
+    assert len(target.openings) == 2
+    both, one = rim_weight(target, rim(width_cells=2)), rim_weight(target, rim(width_cells=2, leave_out=(1,)))
+    assert set(np.flatnonzero(both == 1.0)) == set(target.openings[0].cells) | set(target.openings[1].cells)
+    assert set(np.flatnonzero(one == 1.0)) == set(target.openings[1].cells)
+    with pytest.raises(BedError, match=r"has no opening 3; it has 1, south: 3 cells"):
+        rim_weight(target, rim(width_cells=2, leave_out=(3,)))

@@ -237,3 +237,37 @@ def test_folded_cells_are_refused(tmp_path):
     lon[3, 4] = lon[3, 6] + 0.1  # one centre jumps over its neighbours
     with pytest.raises(TargetError, match="water cells are folded or have no area"):
         read(write(tmp_path / "g.nc", lon, lat))
+
+
+def staggered(path):
+    """Centres and the east sides of cells, each with its own coordinates and mask."""
+    lon, lat = np.meshgrid(-25.0 + np.arange(6) * 0.1, 45.0 + np.arange(4) * 0.1)
+    sides = ("j", "i_side")
+    xr.Dataset(
+        {
+            "level": (("j", "i"), np.zeros((4, 6)), {"coordinates": "lon lat"}),
+            "speed_east": (sides, np.zeros((4, 5)), {"coordinates": "lon_side lat_side"}),
+            "wet": (("j", "i"), np.ones((4, 6)), {"standard_name": "sea_binary_mask"}),
+            "wet_side": (sides, np.ones((4, 5)), {"standard_name": "sea_binary_mask"}),
+            "lon": (("j", "i"), lon, LON), "lat": (("j", "i"), lat, LAT),
+            "lon_side": (sides, lon[:, :-1] + 0.05, LON), "lat_side": (sides, lat[:, :-1], LAT),
+        }
+    ).to_netcdf(path)  # fmt: skip
+    return path
+
+
+def test_a_staggered_grid_by_the_variable_to_fill(tmp_path):
+    path = staggered(tmp_path / "s.nc")
+    target = read(path, variable="speed_east")
+    assert target.dims == ("j", "i_side")
+    np.testing.assert_allclose(target.longitude.reshape(4, 5)[0], -24.95 + np.arange(5) * 0.1)
+    assert read(path, variable="level").shape == (4, 6)
+    with pytest.raises(TargetError, match=r"several variables are longitude .* as target.variable"):
+        read(path)
+    with pytest.raises(TargetError, match=r'no variable "sped_east" for target\.variable; did you mean "speed_east"'):
+        read(path, variable="sped_east")
+
+
+def test_a_variable_on_no_cells(tmp_path):
+    with pytest.raises(ValueError, match="leave out longitude and latitude, or variable"):
+        read(staggered(tmp_path / "s.nc"), variable="level", longitude="lon")

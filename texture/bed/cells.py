@@ -7,11 +7,19 @@ from typing import Protocol
 import numpy as np
 from numpy.typing import NDArray
 
-__all__ = ["Bools", "Cells", "Floats", "Ints"]
+__all__ = ["Bools", "Cells", "Floats", "Ints", "Run"]
 
 Floats = NDArray[np.float64]
 Bools = NDArray[np.bool_]
 Ints = NDArray[np.int64]
+
+
+class Run(Protocol):
+    """A run of water along the outer edge; `texture.targets.openings.Opening` is one."""
+
+    @property
+    def cells(self) -> Ints:
+        """Flat indices."""
 
 
 class Cells(Protocol):
@@ -35,6 +43,10 @@ class Cells(Protocol):
 
     def distance_m(self, pairs: NDArray[np.integer]) -> Floats:
         """Distance between the centres of pairs of cells, shape (m,); NaN where a position is unknown."""
+
+    @property
+    def openings(self) -> tuple[Run, ...]:
+        """Runs of water along the outer edge, widest first."""
 
     @property
     def open_cells(self) -> Bools:

@@ -47,7 +47,7 @@ def rim_weight(cells: Cells, rim: Rim, start: Bools | None = None) -> Floats:
     if start is None:
         if not (rim.sides == "open" or isinstance(rim.sides, tuple)):
             raise BedError(f"rim.sides is a file ({rim.sides.name}); its cells have to be given as well")
-        start = open_boundary(cells, rim.sides)
+        start = open_boundary(cells, rim.sides, rim.leave_out)
     distance = water_distance(cells, start, in_metres, limit=width)
     inside = distance < width
     # No way leads from the rim into other water: ponds that the sea does not reach do not count.
@@ -62,17 +62,23 @@ def rim_weight(cells: Cells, rim: Rim, start: Bools | None = None) -> Floats:
     return weight
 
 
-def open_boundary(cells: Cells, sides: str | tuple[str, ...]) -> Bools:
+def open_boundary(cells: Cells, sides: str | tuple[str, ...], leave_out: tuple[int, ...] = ()) -> Bools:
     """Cells that the rim starts from: the whole open boundary, or its cells on compass sides.
 
-    A corner cell belongs to both of its sides; river inlets belong to none.
+    A corner cell belongs to both of its sides; river inlets belong to none. Openings whose number from 1, widest first, is in
+    `leave_out` are struck out.
 
     Raises
     ------
     BedError
-        If none of the cells asked for is open water.
+        If none of the cells asked for is open water, or there is no opening of such a number.
     """
     opened = cells.open_cells & cells.active
+    for number in leave_out:
+        if number > len(cells.openings):
+            listed = "; ".join(f"{i}, {opening}" for i, opening in enumerate(cells.openings, start=1))
+            raise BedError(f"rim.leave_out: {cells.name} has no opening {number}; it has {listed}")
+        opened[cells.openings[number - 1].cells] = False
     if not opened.any():
         raise BedError(
             f"rim: {cells.name} has no open boundary: no water on its outer edge is wider than a river inlet; "

@@ -22,6 +22,9 @@ class Rim(Settings):
         description='"open": found from the mask; compass sides such as ["south", "west"]; or a file of lines, whose cells '
         "are the edge, or of polygons, whose cells are all the rim's own",
     )
+    leave_out: tuple[Annotated[int, Field(ge=1)], ...] = Field(
+        (), description="numbers of openings, as the draft lists them, that are walls or river inlets and get no rim"
+    )
     width_cells: Annotated[int, Field(ge=1)] | None = Field(None, description="width in cells")
     width_m: Positive | None = Field(None, description="width in metres, measured through water")
     profile: Literal["cosine", "linear", "step"] = Field("cosine", description="how the rim fades into the estimate")
@@ -51,6 +54,8 @@ class Rim(Settings):
             raise ValueError("give either width_cells or width_m")
         if sum(given is not None for given in (self.classes, self.composition, self.parent)) != 1:
             raise ValueError("give either classes or composition or parent")
+        if self.leave_out and isinstance(self.sides, Path):
+            raise ValueError("leave_out: strikes openings from those that are found; draw sides without them instead")
         if self.parent_names is not None and self.parent is None:
             raise ValueError("parent_names: is of the file in `parent`, which is missing")
         if self.parent is not None:

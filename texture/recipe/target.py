@@ -26,6 +26,9 @@ class TargetSettings(Settings):
         None, description="variable of cell-centre longitudes, where CF attributes do not tell"
     )
     latitude: str | None = Field(None, description="variable of cell-centre latitudes, where CF attributes do not tell")
+    variable: str | None = Field(
+        None, description="variable of a staggered grid whose places are to be filled; its coordinates are taken"
+    )
     depth: str | None = Field(None, description="variable of water depth, where CF attributes do not tell")
     location: Literal["face", "node"] = Field("face", description="where on a mesh the bed is wanted")
     halo_cells: Annotated[int, Field(ge=0, le=8)] = Field(
@@ -49,6 +52,10 @@ class TargetSettings(Settings):
             west, south, east, north = self.bounds
             if not (west < east and south < north):
                 raise ValueError(f"bounds are west, south, east, north; found {list(self.bounds)}")
+        if self.variable is not None and (self.file is None or self.longitude is not None or self.latitude is not None):
+            raise ValueError(
+                "variable chooses the coordinates in a grid file; leave out longitude and latitude, or variable"
+            )
         if self.points_per_cell != "auto" and round(self.points_per_cell**0.5) ** 2 != self.points_per_cell:
             raise ValueError(f"points_per_cell is 1, 4, 9, 16 …; found {self.points_per_cell}")
         return self

@@ -82,7 +82,11 @@ def map_notes(result: Result) -> list[str]:
     spaces = dict.fromkeys(n for s in found.spaces.values() for n in s.notes)
     notes += [f"{sentence(n)}." for n in spaces]
     notes += (
-        ["Outer edge of the grid: " + "; ".join(str(o) for o in found.target.openings) + "."]
+        [
+            "Outer edge of the grid: "
+            + "; ".join(f"{i}, {o}" for i, o in enumerate(found.target.openings, start=1))
+            + "."
+        ]
         if found.target.openings
         else []
     )

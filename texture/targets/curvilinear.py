@@ -76,8 +76,8 @@ def _centres(
     dataset: xr.Dataset, settings: TargetSettings, name: str
 ) -> tuple[NDArray[np.float64], NDArray[np.float64], tuple[str, str], tuple[str, str]]:
     """Cell centres as two-dimensional arrays, their dimensions, and the variables' names."""
-    lon_name = _coordinate(dataset, "longitude", settings.longitude, name)
-    lat_name = _coordinate(dataset, "latitude", settings.latitude, name)
+    lon_name = _coordinate(dataset, "longitude", settings.longitude, settings.variable, name)
+    lat_name = _coordinate(dataset, "latitude", settings.latitude, settings.variable, name)
     lon, lat = dataset[lon_name], dataset[lat_name]
     if lon.ndim == 1 and lat.ndim == 1:
         dims = (str(lat.dims[0]), str(lon.dims[0]))
@@ -101,24 +101,36 @@ def _centres(
     return unwrapped(longitude), latitude, dims, (lon_name, lat_name)
 
 
-def _coordinate(dataset: xr.Dataset, which: str, named: str | None, name: str) -> str:
+def _coordinate(dataset: xr.Dataset, which: str, named: str | None, on: str | None, name: str) -> str:
     import cf_xarray  # noqa: F401  (registers the accessor)
 
+    asked = on if named is None else named
+    if asked is not None and asked not in dataset.variables:
+        close = difflib.get_close_matches(asked, [str(v) for v in dataset.variables], n=1)
+        hint = f'did you mean "{close[0]}"?' if close else f"it has {', '.join(map(str, dataset.variables))}"
+        raise TargetError(f'{name}: no variable "{asked}" for {which if on is None else "target.variable"}; {hint}')
     if named is not None:
-        if named not in dataset.variables:
-            close = difflib.get_close_matches(named, [str(v) for v in dataset.variables], n=1)
-            hint = f'did you mean "{close[0]}"?' if close else f"it has {', '.join(map(str, dataset.variables))}"
-            raise TargetError(f'{name}: no variable "{named}" for {which}; {hint}')
         return named
     found = [str(v) for v in dataset.cf.coordinates.get(which, []) + dataset.cf.standard_names.get(which, [])]
     found = list(dict.fromkeys(found))
+    if on is not None:
+        found = _coordinates_of(dataset, on, found)
     if len(found) == 1:
         return found[0]
     if not found:
         raise TargetError(
             f"{name}: no {which} with CF attributes (units or standard_name); name the variable as target.{which}"
         )
-    raise TargetError(f"{name}: several variables are {which} ({', '.join(found)}); choose one as target.{which}")
+    raise TargetError(
+        f"{name}: several variables are {which} ({', '.join(found)}); choose one as target.{which}, or a variable on the wanted places as target.variable"
+    )
+
+
+def _coordinates_of(dataset: xr.Dataset, variable: str, found: list[str]) -> list[str]:
+    """Those that a variable names in its CF attribute `coordinates`, or else that lie on its dimensions."""
+    chosen = dataset[variable]
+    words = str(chosen.attrs.get("coordinates") or chosen.encoding.get("coordinates") or "").split()
+    return [f for f in found if f in words] or [f for f in found if set(dataset[f].dims) <= set(chosen.dims)]
 
 
 def _corners(

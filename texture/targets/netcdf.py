@@ -35,9 +35,14 @@ def read_netcdf(settings: TargetSettings) -> Target:
     path = settings.file
     assert path is not None  # the caller has looked
     with _open(path) as dataset:
-        if mesh_variable(dataset) is not None:
+        mesh, axes = mesh_variable(dataset), _projected_axes(dataset)
+        if settings.variable is not None and (mesh is not None or axes is not None):
+            raise TargetError(
+                f"{path.name}: target.variable chooses among longitudes and latitudes of a staggered grid; this file is "
+                + ("a mesh: say location" if mesh is not None else "in projection coordinates: leave it out")
+            )
+        if mesh is not None:
             return read_mesh(dataset, settings, path.name)
-        axes = _projected_axes(dataset)
         if axes is not None and settings.longitude is None:
             return _read_projected(dataset, axes, settings, path.name)
         return read_grid(dataset, settings, path.name)

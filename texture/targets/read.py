@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from texture.errors import TargetError
 from texture.recipe import TargetSettings
 from texture.targets.places import VECTOR_SUFFIXES, read_places
 from texture.targets.target import Target
@@ -22,6 +23,10 @@ def read_target(settings: TargetSettings) -> Target:
 
         return make_raster(settings)
     suffix = settings.file.suffix.lower()
+    if settings.variable is not None and suffix in VECTOR_SUFFIXES | {".tif", ".tiff", ".csv", ".txt", ".tsv"}:
+        raise TargetError(
+            f"target.variable chooses among the coordinates of a NetCDF grid, and {settings.file.name} is none; leave it out"
+        )
     if suffix in {".tif", ".tiff"}:
         from texture.targets.raster import read_template
 
