@@ -87,6 +87,8 @@ def test_clr_refuses_a_zero():
 def test_arctic_lake_centre_and_variation(arctic_lake):
     parts = arctic_lake[:, :3]
     np.testing.assert_allclose(centre(parts), [0.17799805, 0.56374890, 0.25825305], atol=1e-7)
+    arithmetic = (parts / parts.sum(axis=1, keepdims=True)).mean(axis=0)
+    np.testing.assert_allclose(arithmetic, [0.24203967, 0.45687066, 0.30108967], atol=1e-7)  # which is not the centre
     assert total_variance(parts) == pytest.approx(2.46924179, abs=1e-7)
     variation = variation_matrix(parts)
     np.testing.assert_allclose(

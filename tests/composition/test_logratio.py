@@ -49,14 +49,17 @@ def test_ilr_and_alr_of_the_worked_example():
 
 
 @pytest.mark.parametrize(
-    ("fractions", "over_gravel", "pivot"),
+    ("fractions", "over_gravel", "default", "pivot"),
     [
-        ((0.70, 0.25, 0.05), (2.63905733, 1.60943791), (1.49773101, 1.13804446)),
-        ((0.05, 0.90, 0.05), (0.0, 2.89037176), (-1.17998933, 2.04380147)),
-        ((0.60, 0.39, 0.01), (4.09434456, 3.66356165), (1.84737556, 2.59052928)),
+        ((0.70, 0.25, 0.05), (2.63905733, 1.60943791), (0.72805087, 1.73444092), (1.49773101, 1.13804446)),
+        ((0.05, 0.90, 0.05), (0.0, 2.89037176), (-2.04380147, 1.17998933), (-1.17998933, 2.04380147)),
+        ((0.60, 0.39, 0.01), (4.09434456, 3.66356165), (0.30460952, 3.16715195), (1.84737556, 2.59052928)),
     ],
 )
-def test_three_part_coordinates(fractions, over_gravel, pivot):
+def test_three_part_coordinates(fractions, over_gravel, default, pivot):
+    # scikit-bio's default basis: mud against sand, then both against gravel.
+    last_first = tree(kind="ilr", tree=[["mud", "sand"], "gravel"]).forward(fractions)
+    np.testing.assert_allclose(last_first[::-1], default, atol=1e-8)
     # Pivot: sqrt(2/3) ln(mud / sqrt(sand gravel)), sqrt(1/2) ln(sand / gravel), Egozcue et al. (2003).
     np.testing.assert_allclose(tree(kind="alr").forward(fractions), over_gravel, atol=1e-8)
     lr = tree(kind="ilr", tree=["mud", ["sand", "gravel"]])

@@ -36,11 +36,13 @@ def test_an_unknown_unit_is_refused():
 def test_published_limits():
     np.testing.assert_allclose(phi_from_m(find_grades("wentworth").limits_m), [8, 4, 3, 2, 1, 0, -1, -2, -6, -8])
     assert find_grades("wentworth").grades[1:3] == ("silt", "very fine sand")
-    iso = dict(zip(find_grades("iso_14688_1").grades[1:], find_grades("iso_14688_1").limits_m, strict=True))
-    assert iso["fine silt"] == pytest.approx(0.002e-3)
-    assert iso["fine sand"] == pytest.approx(0.063e-3)
-    assert iso["fine gravel"] == pytest.approx(2e-3)
-    assert iso["large boulder"] == pytest.approx(630e-3)
+    # ISO 14688-1, from memory: clay, fine to coarse silt, sand and gravel, cobble, boulder, large boulder.
+    limits_mm = [0.002, 0.0063, 0.02, 0.063, 0.2, 0.63, 2, 6.3, 20, 63, 200, 630]
+    np.testing.assert_allclose(find_grades("iso_14688_1").limits_m, np.array(limits_mm) * 1e-3)
+    grades = find_grades("iso_14688_1").grades
+    assert (grades[0], grades[1], grades[4], grades[9], grades[-1]) == (
+        "clay", "fine silt", "fine sand", "coarse gravel", "large boulder",
+    )  # fmt: skip
 
 
 def test_a_grain_on_a_limit_is_of_the_coarser_grade():
