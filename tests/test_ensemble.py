@@ -13,6 +13,7 @@ from texture.errors import RecipeError
 from texture.members import draw_members
 from texture.recipe.file import read_recipe
 from texture.scratch import Scratch
+from texture.structure.averaging import sampling_distance_m
 
 PLAIN = {"composition": {"zeros": "replace", "detection_limit": 1e-4}, "validation": {"folds": "random", "compare": []}}
 
@@ -25,7 +26,10 @@ def built(small_in, tmp_path_factory):
 
 
 def drawn(found, per_side, numbers, folder, stack):
-    return draw_members(found.target, found.mapper, found.plane, per_side, numbers, found.recipe.seed, folder, stack)
+    apart_m = sampling_distance_m(found.observations.points)
+    return draw_members(
+        found.target, found.mapper, found.plane, per_side, numbers, found.recipe.seed, folder, stack, apart_m=apart_m
+    )
 
 
 def test_members_are_closed_rimmed_and_in_one_file(built):
@@ -129,7 +133,9 @@ def test_members_are_the_same_bytes_again(built):
 
 
 def test_what_cannot_be_is_told_before_the_work(small):
-    with pytest.raises(RecipeError, match=r'ensemble.members = 5: method.name = "nearest" does not say how uncertain'):
+    with pytest.raises(
+        RecipeError, match=r'ensemble.members = 5: members are drawn by kriging, and method.name = "nearest" is none'
+    ):
         build(small, ensemble={"members": 5}, method={"name": "nearest"})
     with pytest.raises(RecipeError, match=r"ensemble.members = -1: expected greater than or equal to 0"):
         read_recipe(small, ["ensemble.members=-1"])

@@ -14,6 +14,7 @@ from texture.member_summary import summarise_members
 from texture.members import MemberMaps, draw_members
 from texture.progress import Progress
 from texture.recipe import Recipe
+from texture.structure.averaging import sampling_distance_m
 
 if TYPE_CHECKING:
     from texture.bed import Bed
@@ -25,12 +26,12 @@ __all__ = ["check_ensemble", "drawn_ensemble", "write_ensemble"]
 
 def check_ensemble(recipe: Recipe) -> None:
     """Refuse members of a method without a variance, before the work; raises `RecipeError`."""
-    from texture.predict import METHODS
+    from texture.predict import solves
 
-    if recipe.ensemble.members and not METHODS[recipe.method.tried_with].has_variance:
+    if recipe.ensemble.members and not solves(recipe.method.tried_with):
         raise RecipeError(
-            f'ensemble.members = {recipe.ensemble.members}: method.name = "{recipe.method.name}" does not say how uncertain '
-            'it is, so there is nothing to draw from; use "kriging"'
+            f'ensemble.members = {recipe.ensemble.members}: members are drawn by kriging, and method.name = "{recipe.method.name}" is none; '
+            'use "kriging"'
         )
 
 
@@ -54,7 +55,7 @@ def drawn_ensemble(
         with result.clock.stage("members"):
             maps = draw_members(
                 found.target, found.mapper, found.plane, result.points_per_side, range(1, settings.members + 1),
-                found.recipe.seed, scratch, stack, progress, found.recipe.method.estimate == "median",
+                found.recipe.seed, scratch, stack, progress, found.recipe.method.estimate == "median", sampling_distance_m(found.observations.points),
             )  # fmt: skip
             summary = summarise_members(
                 maps, found.recipe.composition.parts, settings.quantiles, settings.above, found.mapper.treatment.trace
@@ -79,7 +80,7 @@ def write_ensemble(result: Result, maps: MemberMaps, aside: Path) -> None:
                                    recipe.composition.parts, rim.start, rim.parent)  # fmt: skip
 
     if recipe.ensemble.files == "one":
-        write_members(aside / "members.nc", found.target, recipe, beds(), len(maps.numbers))
+        write_members(aside / "members.nc", found.target, recipe, beds(), maps.numbers)
     else:
         width = len(str(max(maps.numbers)))
         for number, bed in beds():

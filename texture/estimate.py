@@ -17,7 +17,7 @@ if TYPE_CHECKING:
     from texture.mapping import Mapper
     from texture.structure.plane import Plane
 
-__all__ = ["Estimate", "estimate_on"]
+__all__ = ["CELLS_AT_ONCE", "Estimate", "estimate_on", "mean_in_cells"]
 
 Floats = NDArray[np.float64]
 Singles = NDArray[np.float32]
@@ -119,8 +119,7 @@ def estimate_on(
             m, v, rung = mapper.predict_with_rung(inside.reshape(-1, inside.shape[-1]))
             shape = inside.shape[:2]
             back = mapper.back(m) if median else mapper.expected(m, v)
-            fractions[some] = back.reshape(*shape, parts).mean(axis=1)
-            fractions[some] /= fractions[some].sum(axis=1, keepdims=True)
+            fractions[some] = mean_in_cells(back, shape)
             m, v = m.reshape(*shape, d).mean(axis=1), v.reshape(*shape, d).mean(axis=1)
             mean[some], variance[some] = m, v
             averaging = averaged_out(np.sqrt(np.nan_to_num(target.area_m2[some])), apart_m)
@@ -133,3 +132,9 @@ def estimate_on(
             outside[some[fell_back]] = mapper.has_radius
             advance(some.size)
     return Estimate(fractions, quantiles, mean, variance, evidence, classes, probability, outside)
+
+
+def mean_in_cells(fractions: Floats, shape: tuple[int, int]) -> Floats:
+    """Mean of fractions (cells * points, parts) over the points inside each cell, closed; shape (cells, parts)."""
+    mean = fractions.reshape(*shape, fractions.shape[-1]).mean(axis=1)
+    return np.asarray(mean / mean.sum(axis=1, keepdims=True))

@@ -12,12 +12,14 @@ import numpy as np
 from numpy.typing import NDArray
 
 from texture.errors import RecipeError
+from texture.estimate import mean_in_cells
 from texture.member_fractions import member_fractions
 from texture.predict import Kriging
 from texture.predict.circulant import CirculantPrior, find_lattice, pairs_of
 from texture.predict.members import Members
 from texture.progress import Progress, Silent
 from texture.scratch import Scratch
+from texture.structure.averaging import averaged_out
 from texture.targets import Target, cell_points
 
 if TYPE_CHECKING:
@@ -87,6 +89,7 @@ def draw_members(
     stack: ExitStack,
     progress: Progress | None = None,
     median: bool = False,
+    apart_m: float = 0.0,
 ) -> MemberMaps:
     """Draw members on every water cell.
 
@@ -103,6 +106,8 @@ def draw_members(
     stack : ExitStack
         Closes the scratch files.
     progress : Progress, optional
+    apart_m : float
+        Sampling distance: what of the small-scale variation averages out inside a cell follows from it.
     """
     kriging, progress = check_members(mapper), progress or Silent()
     cells = np.flatnonzero(target.active)
@@ -134,6 +139,8 @@ def draw_members(
                         priors.write(j, 0, fields[half].reshape(width, -1)[:, at].T)
                         advance(1)
     del every, at
+    side = np.sqrt(np.nan_to_num(target.area_m2[cells]))
+    averaging = averaged_out(side, apart_m)
     members = Members(kriging, numbers, seed, prior)
     parts = mapper.logratio.n_parts
     store = stack.enter_context(Scratch(folder / "fractions.bin", len(numbers), cells.size, parts))
@@ -148,12 +155,17 @@ def draw_members(
             fields, mean, variance = members.predict_with_moments(
                 seen.points, here, small_scale=False, drift=seen.drift
             )
-            known = members.at_station(seen.points) >= 0
+            # Of the small-scale variation a cell has some in common, and the rest averages out inside it.
+            away = np.where(members.at_station(seen.points) >= 0, 0.0, 1.0)[:, None]
+            gone = np.repeat(averaging[first : first + some.size], inside)[:, None]
+            middle = seen.points.reshape(some.size, inside, -1).mean(axis=1)
+            common = np.repeat(members.patchiness(middle), inside, axis=0)
+            fields += common * (away * np.sqrt(1.0 - gone))[:, :, None]
+            within = away * gone * mapper.small_scale
             for j in range(len(numbers)):
                 own = np.ascontiguousarray(fields[:, :, j])
-                share = member_fractions(mapper, own, mean, variance, known, median)
-                share = share.reshape(some.size, inside, parts).mean(axis=1)
-                store.write(j, first, share / share.sum(axis=1, keepdims=True))
+                share = member_fractions(mapper, own, mean, variance, within, median)
+                store.write(j, first, mean_in_cells(share, (some.size, inside)))
             advance(some.size)
     method = "circulant embedding" if circulant is not None else "spectral method"
     return MemberMaps(tuple(numbers), cells, target.n_cells, method, store)

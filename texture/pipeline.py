@@ -10,6 +10,7 @@ from collections.abc import Callable, Iterable
 from pathlib import Path
 from typing import Any
 
+from texture.cases import CasePlan, plan_cases
 from texture.choosing import fit_candidates
 from texture.clock import Clock
 from texture.early import check_early, read_conditions, read_rim
@@ -25,6 +26,7 @@ from texture.recipe import Recipe, with_method
 from texture.recipe.file import read_recipe
 from texture.result import Intake, Result, Validated
 from texture.second_look import second_look
+from texture.sensitivity import CASE_RESULTS, CaseSet, check_cases, make_case_set
 from texture.spaces import make_spaces
 from texture.stations import Stations, read_samples
 from texture.structure.plane import Plane
@@ -32,7 +34,7 @@ from texture.targets import Target, points_per_side, read_target
 from texture.treatments import plain_treatment
 from texture.validate import validate_methods
 
-__all__ = ["build", "intake", "read_stations", "validate"]
+__all__ = ["build", "cases", "intake", "list_cases", "read_stations", "validate"]
 
 Where = str | Path
 Check = Callable[[Recipe, Target], None]
@@ -124,6 +126,38 @@ def build(
     )
     with drawn_ensemble(result, folder, progress) as (result, maps), clock.stage("write"), progress.stage("write"):
         return write_all(result, folder, Path(recipe_path), maps)
+
+
+def cases(
+    recipe_path: Where, *, overrides: Iterable[str] = (), output: Where | None = None, overwrite: bool = False,
+    only: Iterable[int] = (), progress: Progress | None = None, **settings: Any,
+) -> CaseSet:  # fmt: skip
+    """Make the beds of the recipe's sensitivity set; `only` names single cases by their numbers.
+
+    A case is the same bytes whether it is made alone or with the others.
+    """
+    from texture.output import ResultFolder
+
+    clock, progress, only = Clock(), progress or Silent(), tuple(only)
+    recipe = read_recipe(recipe_path, overrides, output, settings)
+    if recipe.method.name != "best":  # nothing of a case hangs on how other methods do
+        recipe = recipe.model_copy(update={"validation": recipe.validation.model_copy(update={"compare": ()})})
+    folder = ResultFolder(recipe.output, overwrite, CASE_RESULTS)
+    found = _validated(recipe, progress, clock, before=lambda r, t: check_cases(r, t, only))
+    per_side = points_per_side(recipe.target.points_per_cell, found.cell_side_m, found.range_m)
+    with clock.stage("estimate"):
+        estimate = estimate_on(found.target, found.mapper, found.plane, found.observations.points, found.reach_m, per_side,
+                               progress, median=recipe.method.estimate == "median")  # fmt: skip
+    plan = plan_cases(recipe, found.target)
+    return make_case_set(found, plan, only, per_side, estimate.evidence, folder, progress, clock)
+
+
+def list_cases(
+    recipe_path: Where, *, overrides: Iterable[str] = (), output: Where | None = None, **settings: Any
+) -> CasePlan:
+    """List the cases of the recipe's sensitivity set, their size and time, without reading the samples."""
+    recipe = read_recipe(recipe_path, overrides, output, settings)
+    return plan_cases(recipe, read_target(recipe.target))
 
 
 def read_stations(recipe_path: Where, **settings: Any) -> Stations:

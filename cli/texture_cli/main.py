@@ -5,6 +5,7 @@ from __future__ import annotations
 import typer
 
 from texture_cli.build import build
+from texture_cli.cases import cases
 from texture_cli.draft import draft
 from texture_cli.inspect import inspect
 from texture_cli.intake import intake
@@ -29,6 +30,7 @@ app.command(rich_help_panel=START)(recipe)
 app.command(rich_help_panel=WORK)(intake)
 app.command(rich_help_panel=WORK)(validate)
 app.command(rich_help_panel=WORK)(build)
+app.command(rich_help_panel=WORK)(cases)
 app.command(rich_help_panel=LOOK)(inspect)
 
 

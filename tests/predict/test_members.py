@@ -120,6 +120,17 @@ def test_a_member_is_the_same_whatever_is_asked_beside_it(stations, places):
     np.testing.assert_array_equal(alone[:, :, 0], together[[50, 3], :, 32])
 
 
+def test_nor_do_survey_offsets_hang_on_the_number_of_members(places):
+    """Enough stations for a library's solution of many right-hand sides to differ in its last digits from one."""
+    rng = np.random.default_rng(1)
+    structure = CovarianceSet([Covariance([Structure("exponential", 1.0, 400.0)], small_scale=0.2, survey=0.3)])
+    kriging = Kriging(structure).fit(
+        rng.uniform(0, 1000, (300, 2)), rng.normal(size=300), survey=rng.integers(0, 4, 300)
+    )
+    together = Members(kriging, range(1, 6), frequencies=256).predict(places)
+    np.testing.assert_array_equal(Members(kriging, [1], frequencies=256).predict(places)[:, :, 0], together[:, :, 0])
+
+
 def test_class_odds_agree_with_quadrature(stations, places):
     lr = LogRatio(("mud", "sand", "gravel"))
     kriging = Kriging(SAME).fit(*stations)

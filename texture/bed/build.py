@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 
 import numpy as np
 from numpy.typing import NDArray
@@ -21,7 +21,7 @@ from texture.bed.layers import (
     to_classes,
 )
 from texture.bed.mixture import median_diameter
-from texture.bed.mixture_packing import Packer, packer
+from texture.bed.mixture_packing import Packer, packer, repacked
 from texture.bed.rim import blend, rim_weight
 from texture.bed.water import Water
 from texture.errors import BedError
@@ -47,6 +47,7 @@ def make_bed(
     parts: Sequence[str] = ("mud", "sand", "gravel"),
     rim_start: Bools | None = None,
     rim_parent: Floats | None = None,
+    porosity: Callable[[Floats], Floats] | None = None,
 ) -> Bed:
     """Make the bed: classes, layers, then the rim, then the smallest fractions, then land.
 
@@ -66,6 +67,8 @@ def make_bed(
         Cells that the file of `rim.sides` names, where it is a file.
     rim_parent : float array, shape (k, layer, n), optional
         Class fractions of the bed in `rim.parent`, where it is given; looked at in rim cells alone.
+    porosity : callable, optional
+        From the porosity that the packing gives (layer, …) to the bed's; dry density and mass follow.
 
     Raises
     ------
@@ -79,6 +82,8 @@ def make_bed(
     classes = class_properties(settings.classes, water, parts)
     thickness = layer_thickness(settings.layers, cells.active, settings.land_thickness_m, settings.minimum_thickness_m)
     pack = packer(settings.packing, classes, settings.layers)
+    if porosity is not None:
+        pack = repacked(pack, porosity)
     weight = np.zeros(n) if rim is None else rim_weight(cells, rim, rim_start)
     rim_bed = _rim_bed(rim, classes, parts) if rim is not None and rim_parent is None else np.empty(0)
 

@@ -14,7 +14,7 @@ from texture.bed.packing import dry_density, porosity
 from texture.errors import BedError
 from texture.recipe import Layer
 
-__all__ = ["PACKING_WORDS", "Packer", "class_dry_density", "mixture_packing", "packer", "volumes_add_up"]
+__all__ = ["PACKING_WORDS", "Packer", "class_dry_density", "mixture_packing", "packer", "repacked", "volumes_add_up"]
 
 Packer = Callable[[Floats, Floats], tuple[Floats, Floats]]
 """From fractions (k, layer, n) and median diameter (layer, n) to porosity and dry density (layer, n)."""
@@ -48,6 +48,17 @@ def packer(method: Literal["mixture", "class", "layer"], classes: ClassPropertie
         given = np.array([layer.dry_density_kg_m3 or np.nan for layer in layers])
         return lambda fraction, _: _given(fraction, classes.density_kg_m3, given)
     return lambda fraction, median: mixture_packing(fraction, classes.density_kg_m3, median)
+
+
+def repacked(pack: Packer, porosity: Callable[[Floats], Floats]) -> Packer:
+    """The same grains with other pores: dry density falls as they grow."""
+
+    def again(fraction: Floats, median: Floats) -> tuple[Floats, Floats]:
+        pores, density = pack(fraction, median)
+        new = porosity(pores)
+        return new, density * (1.0 - new) / (1.0 - pores)
+
+    return again
 
 
 def mixture_packing(fraction: Floats, density_kg_m3: Floats, median_diameter_m: Floats) -> tuple[Floats, Floats]:

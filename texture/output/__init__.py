@@ -7,7 +7,7 @@ from texture.output.compliance import check_cf
 from texture.output.folder import ResultFolder
 from texture.output.geotiff import pixel_grid, write_geotiff, write_geotiffs
 from texture.output.into import check_into, stores_single, write_into
-from texture.output.members_nc import NOT_A_BED, summary_dataset, write_members
+from texture.output.members_nc import NOT_A_BED, summary_dataset, write_members, write_stack
 from texture.output.names import Names, read_names
 from texture.output.open_bed import bed_arrays, open_bed
 from texture.output.outline import bed_outline, check_outputs
@@ -50,4 +50,5 @@ __all__ = [
     "write_json",
     "write_members",
     "write_netcdf",
+    "write_stack",
 ]

@@ -35,6 +35,9 @@ class ResultFolder:
         Replace the results of an earlier run, file by file. A build also removes what an earlier build wrote
         and it does not, as far as provenance.json lists it and it is unchanged. All other files stay.
 
+    results : tuple of str
+        What this run would write there.
+
     Raises
     ------
     RecipeError
@@ -54,13 +57,13 @@ class ResultFolder:
     ['audit.csv']
     """
 
-    def __init__(self, path: str | Path, overwrite: bool = False) -> None:
+    def __init__(self, path: str | Path, overwrite: bool = False, results: tuple[str, ...] = RESULTS) -> None:
         self.path = Path(path)
         self.overwrite = overwrite
         self.files: tuple[Path, ...] = ()
         if self.path.exists() and not self.path.is_dir():
             raise RecipeError(f"{self.path}: is a file, expected a folder for the results; choose another output")
-        found = [name for name in RESULTS if (self.path / name).exists()]
+        found = [name for name in results if (self.path / name).exists()]
         if found and not overwrite:
             more = f" and {len(found) - 3} more" if len(found) > 3 else ""
             raise RecipeError(

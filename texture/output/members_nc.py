@@ -2,16 +2,16 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Mapping
+from collections.abc import Iterable, Mapping, Sequence
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
 from numpy.typing import NDArray
 
-from texture.bed import single_fractions
 from texture.errors import OutputError
 from texture.output.bed_nc import bed_dataset
+from texture.output.bed_variables import BED_VARIABLES
 from texture.output.cf import FILL, flags, global_attributes, on_cells, write_netcdf
 
 if TYPE_CHECKING:
@@ -21,7 +21,7 @@ if TYPE_CHECKING:
     from texture.recipe import Recipe
     from texture.targets import Target
 
-__all__ = ["NOT_A_BED", "REALIZATION", "summary_dataset", "write_members"]
+__all__ = ["NOT_A_BED", "REALIZATION", "summary_dataset", "write_members", "write_stack"]
 
 Floats = NDArray[np.float64]
 
@@ -30,6 +30,7 @@ NOT_A_BED = (
     "models from single members, or from the shifted beds of a sensitivity set."
 )
 REALIZATION = {"standard_name": "realization", "long_name": "number of the member", "units": "1"}
+SAME_IN_CASES = ("water", "layer", "class_share", "class_kind", "erosion_form")
 SAME_IN_ALL = ("erodible_thickness", "evidence", "rim_weight", "water")
 COMMENT = (
     "Members are equally likely beds given the samples and the fitted structure (Matheron's rule). Each is as rough as the bed "
@@ -39,7 +40,9 @@ COMMENT = (
 REFERENCES = "Journel and Huijbregts (1978), Mining Geostatistics. Chiles and Delfiner (2012), Geostatistics."
 
 
-def write_members(path: Path, target: Target, recipe: Recipe, beds: Iterable[tuple[int, Bed]], count: int) -> None:
+def write_members(
+    path: Path, target: Target, recipe: Recipe, beds: Iterable[tuple[int, Bed]], numbers: Sequence[int]
+) -> None:
     """Write members one after the other along `realization`; memory holds one bed.
 
     Parameters
@@ -48,61 +51,93 @@ def write_members(path: Path, target: Target, recipe: Recipe, beds: Iterable[tup
     target, recipe
     beds : iterable of (number, Bed)
         Rimmed and closed. What all members share (thickness, evidence, rim, classes) is taken from the first.
-    count : int
+    numbers : sequence of int
+        Which members there will be, in the order they stand.
 
     Raises
     ------
     OutputError
         If the file cannot be written.
     """
+    attributes = {"comment": COMMENT, "references": REFERENCES}
+    write_stack(
+        path, target, ((n, recipe, bed) for n, bed in beds), numbers, ("class_fraction",), SAME_IN_ALL, attributes
+    )
+
+
+def write_stack(
+    path: Path,
+    target: Target,
+    beds: Iterable[tuple[int, Recipe, Bed]],
+    numbers: Sequence[int],
+    differ: tuple[str, ...] | None = None,
+    same: tuple[str, ...] = SAME_IN_CASES,
+    attributes: Mapping[str, str] | None = None,
+) -> None:
+    """Write beds one after the other along `realization`.
+
+    Parameters
+    ----------
+    path : path
+    target : Target
+    beds : iterable of (number, Recipe, Bed)
+        In any order.
+    numbers : sequence of int
+        In the order they stand.
+    differ : tuple of str, optional
+        Variables along `realization`; every variable of a bed that is not in `same`, where it is not given.
+    same : tuple of str
+        Variables of the cells that are taken from the first bed. Those of the classes are too, unless they differ.
+    attributes : mapping, optional
+        Global attributes instead of the bed's own.
+    """
     import netCDF4
 
-    single = recipe.outputs.precision == "float32"
-    for place, (number, bed) in enumerate(beds):
-        if place == 0:
-            _write_frame(path, target, recipe, bed)
+    own: tuple[str, ...] = differ or ()
+    for order, (number, recipe, bed) in enumerate(beds):
+        place = list(numbers).index(number)
+        whole = bed_dataset(bed, target, recipe)
+        if differ is None and order == 0:
+            own = tuple(n for n in BED_VARIABLES if n in whole and n not in same and whole[n].dtype.kind in "fi")
         try:
+            if order == 0:
+                cells = set(target.dims)
+                kept = [
+                    n for n, v in whole.data_vars.items() if n not in own and (n in same or not set(v.dims) & cells)
+                ]
+                frame = whole[kept]
+                frame.attrs |= dict(attributes or {})
+                write_netcdf(frame, path)
             with netCDF4.Dataset(path, "a") as file:
-                fraction = _grown(file, target, count, single) if place == 0 else file["class_fraction"]
-                values = single_fractions(bed.class_fraction) if single else bed.class_fraction
-                fraction[place] = values.reshape(*values.shape[:2], *target.shape)
+                if order == 0:
+                    file.createDimension("realization", len(numbers))
+                    file.createVariable("realization", "i4", ("realization",)).setncatts(REALIZATION)
+                for name in own:
+                    if order == 0:
+                        _grow(file, name, whole[name], target)
+                    file[name][place] = whole[name].values
                 file["realization"][place] = number
         except RuntimeError as error:  # the HDF5 library's way to say that the disk is full
             raise OutputError(f"{path.name}: cannot be written ({error}); is the disk full?") from error
 
 
-def _write_frame(path: Path, target: Target, recipe: Recipe, bed: Bed) -> None:
-    """What is the same in all members."""
-    whole = bed_dataset(bed, target, recipe)
-    keep = [
-        str(name) for name, v in whole.data_vars.items() if name in SAME_IN_ALL or not set(v.dims) & set(target.dims)
-    ]
-    frame = whole[keep]
-    frame.attrs["comment"] = COMMENT
-    frame.attrs["references"] = f"{REFERENCES} {whole.attrs['references']}"
-    write_netcdf(frame, path)
-
-
-def _grown(file: Any, target: Target, count: int, single: bool) -> Any:
-    """Add the variables that differ between members."""
-    file.createDimension("realization", count)
-    own = file.createVariable("realization", "i4", ("realization",))
-    own.setncatts(REALIZATION)
-    dims = ("realization", "class", "layer", *target.dims)
-    sizes = [1, len(file.dimensions["class"]), 1, *target.shape]
-    # A chunk is one member's layer, cut along the first dimension of the cells to some 4 MB.
-    sizes[3] = max(1, min(target.shape[0], int(500_000 * target.shape[0] / (sizes[1] * target.n_cells)) or 1))
-    kind = "f4" if single else "f8"
-    fraction = file.createVariable(
-        "class_fraction", kind, dims, zlib=True, complevel=2, shuffle=True, chunksizes=sizes, fill_value=False
-    )
-    own_attributes = dict(target.data_attributes)
-    coordinates = " ".join(filter(None, [own_attributes.pop("coordinates", ""), "class_name"]))
-    fraction.setncatts({
-        "long_name": "fraction of the dry mass of the bed in each sediment class", "units": "1", "cell_methods": "area: mean",
-        "coordinates": coordinates, **own_attributes,
-    })  # fmt: skip
-    return fraction
+def _grow(file: Any, name: str, like: xr.DataArray, target: Target) -> None:
+    """Add a variable that differs between the beds."""
+    for dim, length in like.sizes.items():
+        if dim not in file.dimensions:
+            file.createDimension(dim, length)
+    sizes = [1, *like.shape]
+    if target.dims[0] in like.dims:
+        # A chunk is one bed, cut along the first dimension of the cells to some 4 MB.
+        axis = 1 + like.dims.index(target.dims[0])
+        sizes[axis] = max(1, min(like.sizes[target.dims[0]], 500_000 * like.sizes[target.dims[0]] // max(like.size, 1)))
+    holes = like.dtype.kind == "f" and bool(np.isnan(like.values).any())
+    made = file.createVariable(
+        name, like.dtype, ("realization", *like.dims), zlib=True, complevel=2, shuffle=True, chunksizes=sizes,
+        fill_value=like.dtype.type(FILL) if holes else False,
+    )  # fmt: skip
+    coordinates = like.encoding.get("coordinates")
+    made.setncatts(like.attrs | ({"coordinates": coordinates} if coordinates else {}))
 
 
 def summary_dataset(summary: Any, target: Target, recipe: Recipe, class_words: Mapping[int, str]) -> xr.Dataset:

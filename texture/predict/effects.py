@@ -67,7 +67,7 @@ def estimate_effects(
     indicator = np.eye(surveys)[survey] if own else np.empty((n, 0))
     columns = np.column_stack([design, indicator, values])
     if n <= MOST_DENSE:
-        gram = _dense_products(points, noise, c, columns)
+        gram = _dense_products(points, noise, c, columns, columns.shape[1] - values.shape[1])
     else:
         _, gram = Vecchia(points, columns, all_stations=True).whiten(c.packed, noise + c.small_scale, _threads())
     coefficients, covariance, _ = mixed_model(gram, design.shape[1], c.survey, values.shape[1])
@@ -84,7 +84,7 @@ def _threads() -> int:
     return int(get_num_threads())
 
 
-def _dense_products(points: Array, noise: Array, c: Covariance, columns: Array) -> Any:
+def _dense_products(points: Array, noise: Array, c: Covariance, columns: Array, effects: int) -> Any:
     from scipy.linalg import cholesky, solve_triangular
 
     from texture.predict.system import station_covariance
@@ -93,5 +93,11 @@ def _dense_products(points: Array, noise: Array, c: Covariance, columns: Array) 
     # Two exact samples of one place by two surveys would outweigh all others by the inverse of this floor, and the
     # products of columns by its size in rounding.
     k[np.diag_indices(len(k))] *= 1.0 + 1e-9
-    white = solve_triangular(cholesky(k, lower=True), columns, lower=True)
-    return white.T @ white
+    lower = cholesky(k, lower=True)
+    white = solve_triangular(lower, columns[:, :effects], lower=True)
+    gram = np.zeros((columns.shape[1], columns.shape[1]))
+    gram[:effects, :effects] = white.T @ white
+    # One value column at a time: the library's result for many at once hangs on how many they are.
+    for j in range(effects, columns.shape[1]):
+        gram[:effects, j] = white.T @ solve_triangular(lower, columns[:, j], lower=True)
+    return gram

@@ -138,10 +138,14 @@ class Members:
         here = station >= 0
         fields[here] += self._small[station[here]]
         if small_scale and not here.all():
-            drawn = place_normals(places[~here], self.seed, self.members, len(self.structure))
-            drawn = np.einsum("ab,mbr->mar", self._colour, drawn)
-            fields[~here] += drawn * np.sqrt([c.small_scale for c in self.structure])[:, None]
+            fields[~here] += self.patchiness(places[~here])
         return fields, mean, variance
+
+    def patchiness(self, points: Array) -> Array:
+        """Small-scale variation at points away from stations, shape (m, v, r): a function of place and member."""
+        drawn = place_normals(points, self.seed, self.members, len(self.structure))
+        drawn = np.einsum("ab,mbr->mar", self._colour, drawn)
+        return np.asarray(drawn * np.sqrt([c.small_scale for c in self.structure])[:, None])
 
     def at_station(self, points: Array) -> NDArray[np.int64]:
         """Number of the station within a micrometre of each point, -1 where there is none; shape (m,)."""

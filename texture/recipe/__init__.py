@@ -19,6 +19,7 @@ from texture.recipe.quantities import Quantity
 from texture.recipe.report import Report
 from texture.recipe.rim import Rim
 from texture.recipe.samples import COLUMN_ROLES, Join, Samples
+from texture.recipe.sensitivity import Sensitivity, Vary
 from texture.recipe.settings import Settings
 from texture.recipe.target import TargetSettings
 from texture.recipe.validation import Validation
@@ -47,9 +48,11 @@ __all__ = [
     "Report",
     "Rim",
     "Samples",
+    "Sensitivity",
     "Settings",
     "TargetSettings",
     "Validation",
+    "Vary",
     "Void",
     "WaterColumn",
     "WaterSettings",

@@ -19,6 +19,7 @@ from texture.recipe.quantities import Quantity
 from texture.recipe.report import Report
 from texture.recipe.rim import Rim
 from texture.recipe.samples import Samples
+from texture.recipe.sensitivity import Sensitivity
 from texture.recipe.settings import Settings, check_composition, check_names, nearest_known
 from texture.recipe.target import TargetSettings
 from texture.recipe.validation import Validation
@@ -46,6 +47,9 @@ class Recipe(Settings):
         (), description="further numbers of the samples, each with a map of its own"
     )
     ensemble: Ensemble = Field(default_factory=Ensemble)
+    sensitivity: Sensitivity | None = Field(
+        None, description="a set of beds that differ in what is not sure; none if absent"
+    )
     outputs: Outputs = Field(default_factory=Outputs)
     report: Report = Field(default_factory=Report)
 

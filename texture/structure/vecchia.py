@@ -240,7 +240,9 @@ def mixed_model(gram: Array, drifts: int, survey_variance: float, values: int = 
     information = gram[:effects, :effects].copy()
     if information.shape[0] > drifts:
         information[np.arange(drifts, len(information)), np.arange(drifts, len(information))] += 1.0 / survey_variance
-    coefficients = np.asarray(np.linalg.solve(information, gram[:effects, effects:]), dtype=np.float64)
+    # One at a time: the library's result for many right-hand sides hangs on how many they are.
+    solved = [np.linalg.solve(information, np.ascontiguousarray(column)) for column in gram[:effects, effects:].T]
+    coefficients = np.column_stack(solved)
     covariance = np.asarray(np.linalg.inv(information), dtype=np.float64)
     return coefficients, covariance, float(np.linalg.slogdet(information)[1])
 
