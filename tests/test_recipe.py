@@ -4,7 +4,7 @@ import tomllib
 from pathlib import Path
 
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from texture.errors import RecipeError
@@ -117,6 +117,7 @@ def test_missing_block_is_named(tmp_path):
         read_recipe(path)
 
 
+@settings(deadline=None)  # what is tested is the words, not the speed of a busy machine
 @given(st.text(alphabet=st.characters(codec="utf-8", exclude_categories=["Cs"]), max_size=30))
 def test_any_title_survives_the_round_trip(title):
     recipe = Recipe.model_validate(tomllib.loads(BASE) | {"title": title})

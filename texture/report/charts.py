@@ -12,9 +12,10 @@ from texture.report.style import INK, QUIET, STRONG, new_figure, styled
 if TYPE_CHECKING:
     from matplotlib.figure import Figure
 
+    from texture.validation.ensemble import DrawScores
     from texture.validation.held_out import HeldOut
 
-__all__ = ["draw_scatter", "draw_variograms"]
+__all__ = ["draw_calibration", "draw_scatter", "draw_variograms"]
 
 Floats = NDArray[np.float64]
 
@@ -30,6 +31,29 @@ def draw_scatter(parts: tuple[str, ...], observed: Floats, held_out: HeldOut) ->
             axis.set_title(f"{part}: RMSE {rmse:.3f}, R² {r2:.2f}")
             axis.set(xlim=(-0.02, 1.02), ylim=(-0.02, 1.02), aspect="equal", xlabel="held-out prediction")
         figure.axes[0].set_ylabel("measured fraction")
+    return figure
+
+
+def draw_calibration(parts: tuple[str, ...], before: DrawScores, after: DrawScores) -> Figure:
+    """Draw the share of held-out samples below each predicted quantile, before and after calibration.
+
+    Honest intervals lie on the diagonal; a curve that is steeper in the middle has them too wide.
+    """
+    from texture.validation.ensemble import pit_share_below
+    from texture.validation.scores import QUANTILE_LEVELS
+
+    with styled():
+        figure = new_figure(3.1 * len(parts), 3.3)
+        for i, (axis, part) in enumerate(zip(figure.subplots(1, len(parts), sharey=True), parts, strict=True)):
+            axis.plot([0, 1], [0, 1], color=QUIET, lw=0.8)
+            for draws, line, label in ((before, QUIET, "as fitted"), (after, INK, "calibrated")):
+                low, high = draws.pit_low[:, i], draws.pit_high[:, i]
+                shares = [float(np.nanmean(pit_share_below(low, high, level))) for level in QUANTILE_LEVELS]
+                axis.plot(QUANTILE_LEVELS, shares, "o-", ms=3.5, lw=1.2, color=line, label=label)
+            axis.set_title(part)
+            axis.set(xlim=(0, 1), ylim=(0, 1), aspect="equal", xlabel="predicted quantile")
+        figure.axes[0].set_ylabel("share of samples below it")
+        figure.axes[0].legend(loc="upper left", fontsize=7.5)
     return figure
 
 
@@ -50,5 +74,5 @@ def draw_variograms(structure: Any, names: tuple[str, ...]) -> Figure:
                     axis.plot([fit.range_m / 1000] * 2, [0.0, top], color=line, lw=0.9, ls=":")
             axis.plot(seen.distance_m / 1000, seen.semivariance, "o", color=STRONG, ms=4, label="pairs of stations")
             axis.set(xlabel="distance, km", ylabel="semivariance", xlim=(0, None), ylim=(0, None), title=name)
-            axis.legend(loc="lower right", fontsize=7.5)
+            axis.legend(loc="best", fontsize=7.5)
     return figure

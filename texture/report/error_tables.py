@@ -4,31 +4,49 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING
 
+import numpy as np
+
 from texture.report.table import Table, number
 
 if TYPE_CHECKING:
     from texture.result import Result
+    from texture.validation.held_out import Score
 
 __all__ = ["limits_table", "methods_table", "structure_table", "treatments_table"]
 
 
+SCORES = (
+    ("mean_error", "mean error", 3),
+    ("r_squared", "R²", 2),
+    ("coverage_90", "90 % cover", 2),
+    ("crps", "CRPS", 3),
+    ("skill_over_nearest", "skill", 2),
+)
+
+
 def methods_table(result: Result) -> Table:
-    """Held-out scores of each method and part."""
-    found = result.found
-    parts = found.recipe.composition.parts
-    names = [("rmse", "RMSE"), ("mean_error", "mean error"), ("r_squared", "R²"), ("coverage_90", "90 % cover")]
+    """Held-out scores of each method and part, the map's own method first."""
     rows = []
-    for method in found.validation.methods:
-        for part in parts:
-            scores = [number(method.score(part, key), 3 if key in ("rmse", "mean_error") else 2) for key, _ in names]
-            rows.append([method.method.replace("_", " "), part, f"{method.score(part, 'n'):.0f}", *scores])
+    for method in result.found.validation.methods:
+        energy = _with_interval(method.find("all", "energy_score"), 4)
+        for i, part in enumerate(result.found.recipe.composition.parts):
+            scores = [number(method.score(part, key), digits) for key, _, digits in SCORES]
+            name = method.method.replace("_", " ")
+            rmse = _with_interval(method.find(part, "rmse"), 3)
+            rows.append([name, part, f"{method.score(part, 'n'):.0f}", rmse, *scores, energy if i == 0 else ""])
     return Table(
-        "Held-out scores. RMSE and mean error are fractions of dry mass; mean error is prediction minus measurement. "
-        "90 % cover: share of held-out samples inside their 90 % interval.",
-        ["method", "part", "stations", *[label for _, label in names]],
+        "Held-out scores, the map's own method first. RMSE, mean error and CRPS are fractions of dry mass, RMSE with its 90 % interval from "
+        "resampled blocks; mean error is prediction minus measurement. 90 % cover: share of held-out samples inside their 90 % interval. "
+        "Skill: share of the nearest station's mean square error that is gone. Energy score: of the whole predicted composition, lower is better.",
+        ["method", "part", "stations", "RMSE", *[label for _, label, _ in SCORES], "energy score"],
         rows,
-        numeric=[2, 3, 4, 5, 6],
+        numeric=list(range(2, 5 + len(SCORES))),
     )
+
+
+def _with_interval(score: Score, digits: int) -> str:
+    text = number(score.value, digits)
+    return f"{text} ({number(score.low, digits)} to {number(score.high, digits)})" if np.isfinite(score.low) else text
 
 
 def treatments_table(result: Result) -> Table:

@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 from numpy.typing import NDArray
 
-from texture.report.charts import draw_scatter, draw_variograms
+from texture.report.charts import draw_calibration, draw_scatter, draw_variograms
 from texture.report.encode import Picture, picture
 from texture.report.maps import EVIDENCE_COLOURS, Layer, draw_maps, draw_residuals
 from texture.report.members import members_picture
@@ -73,6 +73,13 @@ def page_pictures(result: Result) -> dict[str, Picture]:
     numbers = quantity_picture(result)
     if numbers is not None:
         pictures["quantities"] = numbers
+    if result.found.validation.judged.factors is not None:
+        pictures["calibration"] = picture(
+            _calibration(result),
+            "Are the intervals honest? Share of held-out samples below each predicted quantile; on the line they are. Grey as fitted, "
+            "dark after calibration, by factors that were learned without the samples that they meet.",
+            "Calibration curves, one panel for each part.",
+        )
     if result.members is not None:
         pictures["members"] = members_picture(result)
     if _places(result) is not None:
@@ -113,6 +120,8 @@ def _paper_figures(result: Result) -> Iterator[tuple[str, Figure]]:
         yield name, draw_maps(target, [layer], rings, columns=1, width=PAPER_WIDTH)
     yield "held_out", _scatter(result)
     yield "variograms", _variograms(result)
+    if result.found.validation.judged.factors is not None:
+        yield "calibration", _calibration(result)
     yield "triangle", _triangles(result)
     if place is not None:
         yield "residuals", _residuals(result)
@@ -173,6 +182,11 @@ def _bed_layers(result: Result) -> list[Layer]:
 def _scatter(result: Result) -> Figure:
     found = result.found
     return draw_scatter(found.recipe.composition.parts, found.observations.fractions, found.validation.chosen)
+
+
+def _calibration(result: Result) -> Figure:
+    validation = result.found.validation
+    return draw_calibration(result.found.recipe.composition.parts, validation.judged.before, validation.chosen.draws)
 
 
 def _variograms(result: Result) -> Figure:

@@ -107,7 +107,21 @@ def folds_line(result: Result) -> str:
 
 def error_notes(result: Result) -> list[str]:
     """Name the parts of which the map has too much or too little overall."""
+    from texture.validation.choice import cannot_be_told_apart
+
     found, notes = result.found, []
+    told = cannot_be_told_apart(found.validation.standings)
+    if told:
+        notes.append(f"{sentence(told)}.")
+    if found.validation.searched:
+        notes.append(
+            f"The recipe asked for the best method: {found.validation.method.replace('_', ' ')} is the simplest within one standard error of "
+            "the lowest energy score."
+        )
+    if found.validation.judged.factors is not None:
+        factors = zip(found.mapper.column_names, found.validation.judged.factors, strict=True)
+        told = ", ".join(f"{name} by {factor:.2f}" for name, factor in factors)
+        notes.append(f"Calibration multiplies the variance of {told}; the map's intervals and odds have it.")
     for part, i in zip(found.recipe.composition.parts, range(9), strict=False):
         mean = float(np.nanmean(found.observations.fractions[:, i]))
         error = found.validation.chosen.score(part, "mean_error")
