@@ -2,8 +2,6 @@
 
 from __future__ import annotations
 
-import json
-import os
 from collections.abc import Sequence
 from dataclasses import dataclass, field
 from pathlib import Path
@@ -12,12 +10,11 @@ import numpy as np
 import numpy.typing as npt
 
 from texture.errors import RecipeError, SampleError
-from texture.recipe import COLUMN_ROLES, Intake, Samples
+from texture.recipe import Intake, Samples
 from texture.stations.audit import AuditLog
 from texture.stations.certificates import CERTIFICATES
-from texture.stations.columns import Column
-from texture.stations.files import Cell, is_blank, read_sheets
-from texture.stations.headings import PARTS, plain
+from texture.stations.draft_lines import column_lines, target_lines, toml_path, toml_text
+from texture.stations.files import is_blank, read_sheets
 from texture.stations.plausible import (
     DepthAt,
     Extent,
@@ -29,7 +26,6 @@ from texture.stations.plausible import (
 )
 from texture.stations.rows import read_rows
 from texture.stations.sources import Source, find_source, sheets_with_samples
-from texture.stations.tables import Table
 from texture.stations.where import shown
 
 __all__ = ["draft_recipe"]
@@ -38,7 +34,6 @@ DETECTION_LIMIT = 0.005  # of the recipe's default; a draft only counts rows wit
 DOUBTFUL = ("DOUBT", "tells the unit", "headings say", "is not known here", "cannot be told")  # words of notes
 MANY_ASIDE = 0.2  # of a file's rows; more need a word on why
 ROWS_SHOWN = 4  # of a file in which no table was found
-_ORDER = {role: i for i, role in enumerate(COLUMN_ROLES)}
 
 
 @dataclass
@@ -110,13 +105,13 @@ def draft_recipe(
     lines = [
         "# A draft: read it through, above all where it says DOUBT. Paths are relative to this file.",
         "",
-        f"title = {_toml(title)}",
+        f"title = {toml_text(title)}",
         'output = "out"',
         "",
     ]
     for look in looks:
         lines += _block_lines(look, Path(base), none)
-    lines += _target_lines(looks, Path(base), grid)
+    lines += target_lines(_together([look.extent for look in looks if look.extent]), Path(base), grid)
     return "\n".join(lines) + "\n"
 
 
@@ -230,7 +225,7 @@ def _block_lines(look: _Look, base: Path, none_read: bool) -> list[str]:
     lines.append(f"# {'DOUBT: not' if none_read else 'NOT'} READ: {look.error}".replace("not READ", "not read yet"))
     lines += [f"# {row}" for row in look.shown]
     block = _readable_lines(_Look(look.file, look.block, look.source), base) if look.source is not None else [
-        "[[samples]]", f"file = {_path(look.file, base)}", "# header_row = 1", "", "[samples.columns]",
+        "[[samples]]", f"file = {toml_path(look.file, base)}", "# header_row = 1", "", "[samples.columns]",
         *(f'# {role} = "the heading there"' for role in ("id", "latitude", "longitude", "mud", "sand", "gravel")), "",
     ]  # fmt: skip
     if "without a coordinate system" in look.error:
@@ -247,110 +242,20 @@ def _readable_lines(look: _Look, base: Path) -> list[str]:
         lines.append(f"# rows: {fates}")
     if source is None:
         return lines
-    lines += ["[[samples]]", f"file = {_path(look.file, base)}"]
+    lines += ["[[samples]]", f"file = {toml_path(look.file, base)}"]
     own = source.sheet.own_header
     if source.table.where.sheet and not (own and source.table.where.sheet == CERTIFICATES):
-        lines.append(f"sheet = {_toml(source.table.where.sheet)}")
+        lines.append(f"sheet = {toml_text(source.table.where.sheet)}")
     if own or source.sheet.across:
         lines.append(f'layout = "{"certificates" if own else "columns"}"')
     if look.block.crs:
-        lines.append(f"crs = {_toml(look.block.crs)}")
+        lines.append(f"crs = {toml_text(look.block.crs)}")
     lines += [
         'basis = "whole"                 # "below_2mm" if the laboratory saw only what passed 2 mm',
         'blank_means = "not_measured"    # "zero" if an empty cell says that there is none',
         '# credit = "whose data these are, and under which licence"   # stands on the page and in the files',
     ]
     if source.joined is not None and source.joined.places.where.sheet:
-        lines.append(f"join = {{ sheet = {_toml(source.joined.places.where.sheet)} }}")
-    lines += ["", "[samples.columns]", *_column_lines(source), ""]
+        lines.append(f"join = {{ sheet = {toml_text(source.joined.places.where.sheet)} }}")
+    lines += ["", "[samples.columns]", *column_lines(source), ""]
     return lines
-
-
-def _column_lines(source: Source) -> list[str]:
-    """One line for each column recognised, with an example; the others are listed."""
-    lines: list[str] = []
-    tables: list[tuple[Table, dict[str, Column]]] = [(source.table, source.columns)]
-    if source.joined is not None:
-        places = {r: c for r, c in source.joined.columns.items() if r not in source.columns}
-        tables.append((source.joined.places, places))
-    for table, columns in tables:
-        sizes = {s.index for s in source.sizes} if table is source.table else set()
-        for role, column in sorted(columns.items(), key=lambda item: _ORDER.get(item[0], len(_ORDER))):
-            if role not in _ORDER:
-                continue
-            example = _example(table.columns[column.index])
-            unit = (
-                f"{column.unit}, "
-                if column.unit and (role not in PARTS or column.unit in ("percent", "fraction", "g"))
-                else ""
-            )
-            line = f"{role} = {_toml(column.heading)}"
-            if sum(plain(h) == plain(column.heading) for h in table.headings) > 1:
-                line = f"# {line}  (this heading stands there more than once)"
-            lines.append(f"{line:<40} # {unit}such as {example}")
-        if sizes:
-            names = ", ".join(table.headings[i] for i in sorted(sizes))
-            lines.append(f"# size classes: {names}")
-        used = {c.index for c in columns.values()} | sizes
-        if table is source.table and source.joined is not None:
-            used |= {source.columns["id"].index}
-        idle = [h for i, h in enumerate(table.headings) if h and i not in used and (table is source.table or h != "")]
-        idle = (
-            [h for h in idle if not (table is not source.table and h == source.joined.columns["id"].heading)]
-            if source.joined
-            else idle
-        )
-        if idle:
-            lines.append(
-                f"# not used: {', '.join(idle)}  (a number among them can be mapped too: [[quantities]] with name, unit, column)"
-            )
-    return lines
-
-
-def _example(cells: list[Cell]) -> str:
-    return next((shown(c) for c in cells if not is_blank(c)), "nothing, it is empty")
-
-
-def _target_lines(looks: list[_Look], base: Path, grid: str | Path | None) -> list[str]:
-    if grid is not None:
-        return ["[target]", f"file = {_path(Path(grid), base)}"]
-    extent = _together([look.extent for look in looks if look.extent])
-    if extent is None:
-        return [
-            "# DOUBT: no positions were read to propose a raster around; give a grid file, or bounds, cell_size and crs",
-            "[target]",
-            '# file = "grid.nc"',
-        ]
-    west, south, east, north = extent
-    code = (32600 if south + north >= 0 else 32700) + int(((west + east) / 2 + 180.0) // 6.0) + 1
-    bounds, size = _metric_bounds(extent, code)
-    return [
-        "# No grid was given: a raster around the stations, in the UTM zone of their middle.",
-        "[target]",
-        f"bounds = [{', '.join(f'{b:.0f}.0' for b in bounds)}]  # west, south, east, north in metres",
-        f"cell_size = {size:.0f}.0",
-        f'crs = "EPSG:{code}"',
-    ]
-
-
-def _metric_bounds(extent: Extent, code: int) -> tuple[tuple[float, ...], float]:
-    """Bounds in whole cells around an extent in degrees, and a cell size of about a hundredth of the longer side."""
-    import pyproj
-
-    transformer = pyproj.Transformer.from_crs(4326, code, always_xy=True)
-    west, south, east, north = transformer.transform_bounds(*extent)
-    side = max(east - west, north - south, 1000.0)
-    step = 10.0 ** np.floor(np.log10(side / 100.0))
-    size = float(step * min((1, 2, 5, 10), key=lambda m: abs(m * step - side / 100.0)))
-    margin = 0.05 * side
-    low = [np.floor((v - margin) / size) * size for v in (west, south)]
-    high = [np.ceil((v + margin) / size) * size for v in (east, north)]
-    return (low[0], low[1], high[0], high[1]), size
-
-
-def _path(file: Path, base: Path) -> str:
-    return _toml(Path(os.path.relpath(file.absolute(), base.absolute())).as_posix())
-
-
-def _toml(text: str) -> str:
-    return json.dumps(text, ensure_ascii=False)  # a JSON string is a TOML basic string
