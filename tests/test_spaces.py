@@ -122,6 +122,7 @@ def test_covariates_with_holes_leave_no_hole_in_the_bed(bay):
     page = (out / "report.html").read_text()
     assert "slope, shore_distance as further coordinates" in page
     assert "cells have none: the nearest value stands in" in page
+    assert "direction, other ranges" in page
     assert "4 dimensions" in str(result.look.opinion)
     assert {m.method for m in found.validation.methods} == {
         "kriging_with_covariates", "nearest", "kriging_in_water", "kriging_with_drift",

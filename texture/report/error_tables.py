@@ -7,6 +7,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from texture.report.table import Table, number
+from texture.space import own_ranges
 
 if TYPE_CHECKING:
     from texture.result import Result
@@ -103,8 +104,10 @@ def limits_table(result: Result) -> Table:
 def structure_table(result: Result) -> Table:
     """Fitted structure of each column."""
     mapper = result.found.mapper
-    rows = []
+    rows, more = [], []
     for name, c in zip(mapper.column_names, mapper.structure, strict=True):
+        turned = ["along azimuth {:.0f}°, {:.2g} times that across it".format(*c.anisotropy)] if c.anisotropy else []
+        more.append(", ".join(turned + [f"{n} {r:.2g} sd" for n, r in own_ranges(mapper.space, c).items()]))
         model = " + ".join(s.model + (f" {s.smoothness:g}" if s.smoothness else "") for s in c.structures) or "none"
         sill = sum(s.sill for s in c.structures)
         rows.append(
@@ -114,7 +117,7 @@ def structure_table(result: Result) -> Table:
     return Table(
         "Fitted structure of each log-ratio coordinate. Range: where the correlation has fallen to 0.05. Small-scale: "
         "the bed's own patchiness below the sampling distance. Survey: variance of the offset that samples of one survey share.",
-        ["coordinate", "model", "range, km", "sill", "small-scale", "survey"],
-        rows,
+        ["coordinate", "model", "range, km", "sill", "small-scale", "survey"] + ["direction, other ranges"] * any(more),
+        [[*row, text] for row, text in zip(rows, more, strict=True)] if any(more) else rows,
         numeric=[2, 3, 4, 5],
     )
