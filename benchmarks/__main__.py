@@ -23,6 +23,8 @@ RESULTS = Path(__file__).parent / "results"
 FULL = {
     "kriging kernel against PyKrige's moving window": ["benchmarks.kernel"],
     "kriging kernel, clustered stations": ["benchmarks.kernel", "--layout", "clusters", "--skip-pykrige"],
+    "members beside the kriging alone": ["benchmarks.members"],
+    "memory of members": ["benchmarks.members", "--memory"],
     "a million compositions": ["benchmarks.composition"],
     "reading spreadsheets": ["benchmarks.intake"],
     "a bed of ten million cells": ["benchmarks.build"],

@@ -228,3 +228,12 @@ def test_a_shift_is_one_standard_deviation_of_the_first_coordinate(made):
     )
     control = make_mapper("nearest", made.found.validation.plain, made.found.recipe.method)
     assert not control.integrates
+
+
+def test_the_plan_of_a_build_says_what_cases_there_would_be(small):
+    from texture.planning import plan
+
+    found = plan(small, sensitivity={"vary": [MUDDY]}, ensemble={"members": 3})
+    assert found.summary()["cases"]["cases"] == 3
+    assert found.seconds["members"] > 0.0
+    assert any("3, each at most" in line for line in found.summary_lines())

@@ -8,6 +8,7 @@ from dataclasses import dataclass, field
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
+from texture.cases import CasePlan, plan_cases
 from texture.clock import Clock
 from texture.early import check_early
 from texture.observations import Observations, observe
@@ -31,6 +32,7 @@ FIT_S = 1.0  # one fit of all coordinates on 500 stations
 REFIT_S = 0.25  # the same inside a fold, from a warm start
 DENSE_TO = 500  # stations up to which a fit grows with their square, beyond it in proportion
 CELLS_PER_S = 15_000.0  # points estimated with means, quantiles and odds
+MEMBER_POINTS_PER_S = 150_000.0  # points of members drawn, put back to fractions and summed up
 WRITE_S = 8.0  # page, figures and files of a small grid
 WRITE_CELLS_PER_S = 40_000.0
 BASE_MB = 450.0  # the program with its libraries
@@ -54,6 +56,8 @@ class Plan:
         Points along each side of a cell, as if the range were twenty cells or more where the recipe says "auto".
     seconds : dict of str to float
         Of each stage; those of reading were measured just now.
+    cases : CasePlan or None
+        What `texture cases` would make with the recipe's sensitivity set.
     """
 
     recipe: Recipe
@@ -62,6 +66,7 @@ class Plan:
     treatments: int
     per_side: int
     seconds: dict[str, float] = field(default_factory=dict)
+    cases: CasePlan | None = None
 
     @property
     def cells(self) -> int:
@@ -84,6 +89,8 @@ class Plan:
             "treatments": self.treatments,
             "folds": self.recipe.validation.count,
             "memory_mb": round(self.memory_mb),
+            "members": self.recipe.ensemble.members,
+            "cases": None if self.cases is None else self.cases.summary(),
             "seconds": {name: round(value, 1) for name, value in self.seconds.items()},
         }
 
@@ -102,6 +109,8 @@ class Plan:
             f"  memory      about {memory:.1f} GB{fits}",
             f"  time        about {_about(sum(self.seconds.values()))}: {stages}; may be off by a factor of three",
         ]
+        if self.cases is not None:
+            lines += [self.cases.lines()[0], "              by texture cases; its --list names them"]
         if there and memory > 0.8 * there:
             lines.append(
                 "  look        this may not fit into memory: choose larger cells, fewer layers or smaller bounds"
@@ -144,7 +153,8 @@ def plan(
     count = len(candidates(recipe.composition, observations, has_variance=True))
     per_side = points_per_side(recipe.target.points_per_cell, 0.0, 1.0)
     seconds = {**clock.seconds, **_seconds(recipe, observations, target, count, per_side)}
-    return Plan(recipe, stations, target, count, per_side, seconds)
+    cases = None if recipe.sensitivity is None else plan_cases(recipe, target)
+    return Plan(recipe, stations, target, count, per_side, seconds, cases)
 
 
 def _seconds(
@@ -157,11 +167,14 @@ def _seconds(
     folds = observations.count if recipe.validation.folds == "each" else recipe.validation.count
     if not recipe.method.name.startswith("kriging"):
         return {"estimate": cells * per_side**2 / CELLS_PER_S, "write": write}
+    points = cells * per_side**2
+    members = recipe.ensemble.members
     return {
         "fit": treatments * FIT_S * growth,
         "validate": treatments * folds * REFIT_S * growth,
-        "estimate": cells * per_side**2 / CELLS_PER_S,
-        "write": write,
+        "estimate": points / CELLS_PER_S,
+        **({"members": members * points / MEMBER_POINTS_PER_S} if members else {}),
+        "write": write + members * target.n_cells / WRITE_CELLS_PER_S / 4.0,
     }
 
 

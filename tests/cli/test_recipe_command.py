@@ -106,4 +106,4 @@ def test_plan_finds_mistakes_as_the_build_would(small):
 
 def test_every_command_is_listed_in_the_help():
     names = {info.name or info.callback.__name__ for info in app.registered_commands}
-    assert names == {"draft", "recipe", "intake", "validate", "build", "inspect"}
+    assert names == {"draft", "recipe", "intake", "validate", "build", "cases", "inspect"}

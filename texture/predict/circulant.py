@@ -35,6 +35,7 @@ FREE_NODES = 1 << 20
 MOST_SPARSE = 4.0
 """Nodes for each point asked for beyond which a lattice is a poor way to reach them."""
 AROUND, BEFORE = 6, 8
+STATIONS_AT_ONCE = 1000
 OFF_NODE = 1e-5
 """Share of a step by which a point may lie off its node: a thousandth of a metre on cells of a hundred metres."""
 
@@ -210,31 +211,43 @@ def _neighbourhoods(c: Covariance, lattice: Lattice, stations: Array) -> tuple[I
     i, j = (a.ravel() for a in np.meshgrid(np.arange(AROUND), np.arange(AROUND)))
     nodes = (corner[:, 1:] + j) * lattice.shape[1] + corner[:, :1] + i
     before = np.full((n, BEFORE), -1, dtype=np.int64)
-    for s, others in enumerate(cKDTree(at).query_ball_point(at, 2.0)):
-        earlier = [o for o in others if o < s]
-        if earlier:
-            order = np.argsort(((at[earlier] - at[s]) ** 2).sum(axis=1), kind="stable")[:BEFORE]
-            before[s, : len(order)] = np.array(earlier)[order]
+    for station, others in enumerate(cKDTree(at).query_ball_point(at, 2.0)):
+        earlier = np.array([o for o in others if o < station], dtype=np.int64)
+        if earlier.size:
+            order = np.argsort(((at[earlier] - at[station]) ** 2).sum(axis=1), kind="stable")[:BEFORE]
+            before[station, : len(order)] = earlier[order]
     weight, spread = np.zeros((n, AROUND**2 + BEFORE)), np.zeros(n)
-    sill = sum(s.sill for s in c.structures)
-    smooth = Covariance(c.structures, 0.0, 0.0, 0.0, c.anisotropy, c.axis_scales) if c.structures else None
-    for s in range(n if smooth is not None else 0):
-        assert smooth is not None
-        node = np.column_stack([corner[s, 0] + i, corner[s, 1] + j])
-        exact = np.flatnonzero(np.abs(node - at[s]).max(axis=1) <= OFF_NODE)
-        if exact.size:
-            weight[s, exact[0]] = 1.0
-            continue
-        known = before[s][before[s] >= 0]
-        place = np.vstack([node * lattice.step + lattice.origin, stations[known]])
-        # Nodes a small share of the range apart nearly determine one another: the diagonal is lifted by 1e-10.
-        k = smooth.matrix(place) + 1e-10 * sill * np.eye(len(place))
-        own = smooth.matrix(place, stations[s : s + 1])[:, 0]
-        solved = np.linalg.solve(k, own)
-        weight[s, : AROUND**2] = solved[: AROUND**2]
-        weight[s, AROUND**2 : AROUND**2 + len(known)] = solved[AROUND**2 :]
-        spread[s] = np.sqrt(max(sill - float(own @ solved), 0.0))
+    if not c.structures:
+        return nodes, before, weight, spread
+    place = np.stack([corner[:, :1] + i, corner[:, 1:] + j], axis=-1)
+    off = np.abs(place - at[:, None]).max(axis=2)
+    exact = off.min(axis=1) <= OFF_NODE
+    weight[exact, off[exact].argmin(axis=1)] = 1.0
+    known = (before >= 0).sum(axis=1)
+    for count in np.unique(known[~exact]):
+        group = np.flatnonzero(~exact & (known == count))
+        for start in range(0, len(group), STATIONS_AT_ONCE):
+            some = group[start : start + STATIONS_AT_ONCE]
+            around = place[some] * np.array(lattice.step) + np.array(lattice.origin)
+            everything = np.concatenate([around, stations[before[some, :count]], stations[some, None]], axis=1)
+            solved, left = _conditional(c, everything)
+            weight[some, : AROUND**2 + count], spread[some] = solved, left
     return nodes, before, weight, spread
+
+
+def _conditional(c: Covariance, places: Array) -> tuple[Array, Array]:
+    """Weights of all places but the last (g, k, 2) in the last one's conditional mean, and its standard deviation."""
+    from texture.structure.compiled import covariance_matrix
+
+    g, k, _ = places.shape
+    own = c.metric(places.reshape(g * k, 2)).reshape(g, k, 2)
+    distance = np.sqrt(((own[:, :, None] - own[:, None]) ** 2).sum(axis=3))
+    matrix = covariance_matrix(c.packed, 0.0, np.ascontiguousarray(distance.reshape(g * k, k))).reshape(g, k, k)
+    sill = sum(s.sill for s in c.structures)
+    # Nodes a small share of the range apart nearly determine one another: the diagonal is lifted by 1e-10.
+    known = matrix[:, :-1, :-1] + 1e-10 * sill * np.eye(k - 1)
+    solved = np.linalg.solve(known, matrix[:, :-1, -1:])[:, :, 0]
+    return solved, np.sqrt(np.maximum(sill - (solved * matrix[:, :-1, -1]).sum(axis=1), 0.0))
 
 
 @compiled

@@ -133,7 +133,7 @@ class Members:
         fields = self._spectral.at(places, self.members) if self._spectral is not None else prior
         assert fields is not None
         mean, variance, kriged = self._kriging.predict_columns(places, drift)
-        fields = fields + kriged
+        fields = np.add(fields, kriged, out=kriged)
         station = self.at_station(places)
         here = station >= 0
         fields[here] += self._small[station[here]]
