@@ -71,7 +71,12 @@ def with_many_stations(found, rng):
     )  # fmt: skip
     observations = replace(found.observations.take(take), rows=np.arange(STATIONS))
     methods = [
-        replace(m, predicted=m.predicted[take], low=m.low[take], high=m.high[take]) for m in found.validation.methods
+        replace(
+            m,
+            predicted=m.predicted[take],
+            intervals={share: (low[take], high[take]) for share, (low, high) in m.intervals.items()},
+        )
+        for m in found.validation.methods
     ]
     return replace(
         found, stations=stations, observations=observations, validation=replace(found.validation, methods=methods)
