@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 from texture.mapping import Learned, learn, learn_all, make_mapper
 from texture.recipe import Recipe
 from texture.space import PLANE, Space
-from texture.treatments import Presence, Shares, Treatment, candidates, plain_treatment
+from texture.treatments import Censor, Presence, Shares, Treatment, candidates, plain_treatment
 
 if TYPE_CHECKING:
     from texture.observations import Observations
@@ -58,6 +58,8 @@ def fit_candidates(observations: Observations, recipe: Recipe, space: Space = PL
 
     plain = learn(plain_treatment(recipe.composition), observations, recipe.method, space=space)
     wanted = candidates(recipe.composition, observations, METHODS[recipe.method.tried_with].has_variance)
+    if any(zone.soft_edge_m == 0.0 for zone in recipe.zones):
+        wanted = [t for t in wanted if not isinstance(t, Censor)]  # its sweeps would carry values across the edge
     others = [t for t in wanted if t != plain.treatment]
     found = learn_all([(t, observations, warm_start(t, plain)) for t in others], recipe.method, space)
     return plain, [plain] * (len(wanted) > len(others)) + found

@@ -13,6 +13,7 @@ from numpy.typing import NDArray
 from texture.errors import TargetError
 from texture.recipe import Mobility, Recipe
 from texture.targets import Target
+from texture.zones import zone_areas
 
 if TYPE_CHECKING:
     from texture.bed import Condition
@@ -33,6 +34,7 @@ def check_early(recipe: Recipe, target: Target) -> None:
 
     check_ensemble(recipe)
     check_outputs(target, recipe)
+    zone_areas(recipe, target)
     read_rim(recipe, target)
     read_conditions(recipe, target)
 

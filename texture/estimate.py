@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import NDArray
 
+from texture.composition.classes import class_numbers
 from texture.progress import Progress
 from texture.structure.averaging import averaged_out, sampling_distance_m
 from texture.targets import Target, cell_points
@@ -16,15 +17,17 @@ from texture.validation.reach import beyond_reach
 if TYPE_CHECKING:
     from texture.mapping import Mapper
     from texture.structure.plane import Plane
+    from texture.zones import Share
 
 __all__ = ["CELLS_AT_ONCE", "Estimate", "estimate_on", "mean_in_cells"]
 
 Floats = NDArray[np.float64]
 Singles = NDArray[np.float32]
+Heard = list[NDArray[np.bool_]]
 
 QUANTILES = (0.05, 0.5, 0.95)
 CELLS_AT_ONCE = 20_000  # bounds the memory of the points inside cells to some tens of megabytes
-SUPPORTED, EXTRAPOLATED, WIDER = 1, 2, 6  # of `texture.bed.EVIDENCE`
+SUPPORTED, EXTRAPOLATED, GIVEN, WIDER = 1, 2, 5, 6  # of `texture.bed.EVIDENCE`
 
 
 @dataclass(frozen=True, eq=False)
@@ -44,7 +47,7 @@ class Estimate:
         The kriged columns (log-ratio coordinates, and what else a treatment of zeros maps), averaged over the points
         inside the cell; variance of the bed at a point.
     evidence : int array, shape (n,)
-        1 supported by samples, 2 extrapolated, 6 wider fall-back; 0 where there is no map.
+        1 supported by samples, 2 extrapolated, 5 given by the user, 6 wider fall-back; 0 where there is no map.
     texture_class : int array, shape (n,)
         Number of the most probable class in the scheme's own order, from 1; 0 where there is no map.
     class_probability : float array, shape (n,)
@@ -84,6 +87,7 @@ def estimate_on(
     per_side: int,
     progress: Progress,
     median: bool = False,
+    heard: Heard | None = None,
 ) -> Estimate:
     """Estimate every active cell.
 
@@ -103,7 +107,10 @@ def estimate_on(
     progress : Progress
     median : bool
         Back-transform the kriged coordinates instead of taking expected fractions.
+    heard : list of bool array, optional
+        With zones: which of `stations` speak in zone 0 (none), 1, 2, ….
     """
+    zones = mapper.zones
     cells = np.flatnonzero(target.active)
     parts, d = mapper.logratio.n_parts, len(mapper.column_names)
     n = target.n_cells
@@ -116,20 +123,34 @@ def estimate_on(
         for start in range(0, cells.size, CELLS_AT_ONCE):
             some = cells[start : start + CELLS_AT_ONCE]
             inside = cell_points(target, some, per_side, plane.to_metres)
-            m, v, rung = mapper.predict_with_rung(inside.reshape(-1, inside.shape[-1]))
             shape = inside.shape[:2]
+            share = None if zones is None else zones.cells.take(some)
+            m, v, rung = mapper.predict_with_rung(
+                inside.reshape(-1, inside.shape[-1]), None if share is None else share.repeat(shape[1])
+            )
             back = mapper.back(m) if median else mapper.expected(m, v)
-            fractions[some] = mean_in_cells(back, shape)
+            fractions[some] = mapper.impose(mean_in_cells(back, shape), share)
             m, v = m.reshape(*shape, d).mean(axis=1), v.reshape(*shape, d).mean(axis=1)
             mean[some], variance[some] = m, v
             averaging = averaged_out(np.sqrt(np.nan_to_num(target.area_m2[some])), apart_m)
-            quantiles[:, some] = mapper.cell_quantiles(m, v, QUANTILES, averaging)
+            quantiles[:, some] = mapper.impose(mapper.cell_quantiles(m, v, QUANTILES, averaging), share)
             classes[some], probability[some] = mapper.likely_class(m, v)
             centre = inside.mean(axis=1)
-            evidence[some] = np.where(beyond_reach(centre, stations, reach_m), EXTRAPOLATED, SUPPORTED)
+            beyond = (
+                beyond_reach(centre, stations, reach_m)
+                if share is None
+                else _beyond(centre, stations, reach_m, share, heard)
+            )
+            evidence[some] = np.where(beyond, EXTRAPOLATED, SUPPORTED)
             fell_back = rung.reshape(*shape).max(axis=1) > 0
             evidence[some[fell_back]] = WIDER
             outside[some[fell_back]] = mapper.has_radius
+            if zones is not None and share is not None:
+                own = zones.is_given(share)
+                evidence[some[own]] = GIVEN
+                classes[some[own]] = class_numbers(fractions[some[own]])
+                probability[some[own]] = np.nan
+                mean[some[own]], variance[some[own]] = np.nan, np.nan
             advance(some.size)
     return Estimate(fractions, quantiles, mean, variance, evidence, classes, probability, outside)
 
@@ -138,3 +159,13 @@ def mean_in_cells(fractions: Floats, shape: tuple[int, int]) -> Floats:
     """Mean of fractions (cells * points, parts) over the points inside each cell, closed; shape (cells, parts)."""
     mean = fractions.reshape(*shape, fractions.shape[-1]).mean(axis=1)
     return np.asarray(mean / mean.sum(axis=1, keepdims=True))
+
+
+def _beyond(centre: Floats, stations: Floats, reach_m: float, share: Share, heard: Heard | None) -> NDArray[np.bool_]:
+    """Cells that the stations which speak in their zone do not reach."""
+    beyond = np.ones(len(centre), dtype=bool)
+    for number in np.unique(share.zone).tolist():
+        some, speak = share.zone == number, stations if heard is None else stations[heard[number]]
+        if len(speak):
+            beyond[some] = beyond_reach(centre[some], speak, reach_m)
+    return beyond

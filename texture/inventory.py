@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -23,6 +24,14 @@ def make_inventory(found: Validated, estimate: Estimate, bed: Bed) -> tuple[Stoc
     if target.kind == "points":
         return ()
     groups = depth_groups(target.active, target.depth_m, recipe.inventory.depth_bands_m)
+    zones = found.mapper.zones
+    if zones is not None:
+        names = ["outside the zones", *(z.name for z in zones.settings)]
+        for number, name in enumerate(names):
+            own = depth_groups(
+                target.active & (zones.cells.zone == number), target.depth_m, recipe.inventory.depth_bands_m
+            )
+            groups += [replace(g, zone=name if g.zone == "all" else f"{name}, {g.zone}") for g in own]
     return tuple(
         take_stock(
             bed, recipe.bed, target, estimate.fractions, estimate.quantiles, groups, bed_correlation(found), recipe.seed

@@ -22,7 +22,9 @@ from texture.validation.columns import Columns
 
 if TYPE_CHECKING:
     from texture.composition import LogRatio
+    from texture.predict.by_zone import ByZone
     from texture.structure import CovarianceSet
+    from texture.zones import Share, Zones
 
 __all__ = ["Learned", "Mapper", "columns_in", "learn", "learn_all", "learn_each", "make_mapper"]
 
@@ -267,6 +269,10 @@ class Mapper:
         Calibration of a variance that does not come from `structure`.
     space : Space
         Where it sees places.
+    zones : Zones or None
+        Places then have to come with their `Share` of them; without it they are predicted as places in no zone.
+    by_zone : ByZone or None
+        What predicts them; `predictor` is that of the places in no zone.
     """
 
     name: str
@@ -276,6 +282,8 @@ class Mapper:
     error: tuple[Floats, Floats] | None = None
     factors: Floats | None = None
     space: Space = PLANE
+    zones: Zones | None = None
+    by_zone: ByZone | None = None
 
     @property
     def logratio(self) -> LogRatio:
@@ -316,25 +324,34 @@ class Mapper:
         """Variance of the bed's patchiness in each column, shape (k,)."""
         return np.array([c.small_scale for c in self.structure])
 
-    def predict(self, points: Floats) -> tuple[Floats, Floats]:
+    def predict(self, points: Floats, share: Share | None = None) -> tuple[Floats, Floats]:
         """Mean and variance of the bed at points of the plane, shapes (n, k); variance NaN where nothing is known of it."""
-        return self._predict_seen(self.space.at(points))
+        return self._predict_seen(self.space.at(points), share)[:2]
 
-    def _predict_seen(self, seen: Seen) -> tuple[Floats, Floats]:
-        mean, variance = self.predictor.predict(seen.points, drift=seen.drift)
+    def impose(self, fractions: Floats, share: Share | None) -> Floats:
+        """Put the compositions that zones are given into fractions, shape (..., n, parts)."""
+        return fractions if self.zones is None or share is None else self.zones.impose(fractions, share)
+
+    def _predict_seen(self, seen: Seen, share: Share | None) -> tuple[Floats, Floats, NDArray[np.int8]]:
+        rung = np.zeros(len(seen.points), dtype=np.int8)
+        if self.by_zone is not None and share is not None:
+            mean, variance, rung = self.by_zone.predict(seen.points, share.zone, share.weight, seen.drift)
+        else:
+            mean, variance = self.predictor.predict(seen.points, drift=seen.drift)
         if not self.integrates and self.error is not None:
             variance = np.tile(self.error[0], (len(mean), 1))
-        return mean, variance if self.factors is None else variance * self.factors
+        return mean, variance if self.factors is None else variance * self.factors, rung
 
-    def predict_with_rung(self, points: Floats) -> tuple[Floats, Floats, NDArray[np.int8]]:
+    def predict_with_rung(self, points: Floats, share: Share | None = None) -> tuple[Floats, Floats, NDArray[np.int8]]:
         """Mean, variance, and per point how far the neighbourhood had to look: 0 the usual one, above it wider.
 
         A point that lacks a covariate counts as 1.
         """
         seen = self.space.at(points)
         guessed = seen.missing.astype(np.int8)
-        if not self.solves:
-            return *self._predict_seen(seen), guessed
+        if not self.solves or (self.by_zone is not None and share is not None):
+            mean, variance, rung = self._predict_seen(seen, share)
+            return mean, variance, np.maximum(rung, guessed)
         mean, variance, rung = self.predictor.predict_with_support(seen.points, drift=seen.drift)
         return mean, variance, np.maximum(rung.max(axis=1), guessed)
 
@@ -342,9 +359,9 @@ class Mapper:
         """Variance of a new sample: of the bed, of its analysis (per row) and of its survey's offset."""
         return np.asarray(variance + noise + np.array([c.noise + c.survey for c in self.structure]))
 
-    def columns(self, points: Floats, noise: Floats) -> Columns:
+    def columns(self, points: Floats, noise: Floats, share: Share | None = None) -> Columns:
         """Predictions of samples at points, of which the analysis is known to have a noise of its own, shape (n, k)."""
-        mean, variance = self.predict(points)
+        mean, variance = self.predict(points, share)
         correlation = np.broadcast_to(self.correlation, (len(mean), *self.correlation.shape))
         return Columns(mean, variance, self.sample_variance(np.zeros_like(mean), noise), correlation)
 
@@ -394,6 +411,7 @@ def make_mapper(
     method: Method,
     error: tuple[Floats, Floats] | None = None,
     factors: Floats | None = None,
+    zones: Zones | None = None,
     **settings: Any,
 ) -> Mapper:
     """Fit one method on the stations that a treatment has learned from, in the space that it learned in.
@@ -409,15 +427,31 @@ def make_mapper(
         Spread of held-out errors, for methods that know no variance.
     factors : float array, shape (k,), optional
         Calibration of a variance that does not come from the structure of `learned`.
+    zones : Zones, optional
+        In each zone the method is fitted to the stations that are heard there, with the same structure.
     **settings
         Further arguments of the method's class.
     """
     from texture.predict import METHODS, make_method
 
     settings = {**{key: getattr(method, key) for key in METHODS[name].settings}, **settings}
-    predictor, seen = make_method(name, learned.structure, **settings), learned.seen
+    seen, chosen = learned.seen, METHODS[name]
+
+    def make() -> Any:
+        return make_method(name, learned.structure, **settings)
+
     with _one_blas_thread():
-        predictor.fit(
-            seen.points, learned.values, noise_variance=learned.noise, survey=learned.survey, drift=seen.drift
-        )
-    return Mapper(name, learned.treatment, learned.structure, predictor, error, factors, learned.space)
+        by_zone = None
+        if zones is not None:
+            sill = np.array([c.sill for c in learned.structure]) if chosen.has_variance else None
+            own = zones.stations.zone[learned.observations.rows]
+            by_zone = zones.predictor(make, sill).fit(
+                seen.points, learned.values, learned.noise, learned.survey, own, seen.drift
+            )
+        if by_zone is not None and 0 in by_zone.fitted:
+            predictor = by_zone.fitted[0][1]
+        else:
+            predictor = make().fit(
+                seen.points, learned.values, noise_variance=learned.noise, survey=learned.survey, drift=seen.drift
+            )
+    return Mapper(name, learned.treatment, learned.structure, predictor, error, factors, learned.space, zones, by_zone)

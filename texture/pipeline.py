@@ -17,6 +17,7 @@ from texture.early import check_early, read_conditions, read_rim
 from texture.ensemble import drawn_ensemble
 from texture.estimate import estimate_on
 from texture.flagging import flag_stations
+from texture.hard_ground import hard_ground_probability
 from texture.inventory import make_inventory
 from texture.observations import observe
 from texture.placing import place_stations
@@ -33,6 +34,7 @@ from texture.structure.plane import Plane
 from texture.targets import Target, points_per_side, read_target
 from texture.treatments import plain_treatment
 from texture.validate import validate_methods
+from texture.zones import locate_zones
 
 __all__ = ["build", "cases", "intake", "list_cases", "read_stations", "validate"]
 
@@ -110,14 +112,14 @@ def build(
     with clock.stage("estimate"):
         per_side = points_per_side(recipe.target.points_per_cell, found.cell_side_m, found.range_m)
         estimate = estimate_on(target, mapper, found.plane, found.observations.points, found.reach_m, per_side,
-                               progress, median=recipe.method.estimate == "median")  # fmt: skip
+                               progress, recipe.method.estimate == "median", found.heard)  # fmt: skip
         quantities = map_quantities(found.quantities, target, found.plane, per_side, progress)
     with clock.stage("second look"), progress.stage("second look"):
         look = second_look(mapper, found.some_centres(20_000), recipe.seed)
     with clock.stage("bed"):
         rim = read_rim(recipe, target)
         bed = make_bed(estimate.fractions, estimate.evidence, target, recipe.bed, recipe.rim, recipe.composition.parts,
-                       rim.start, rim.parent)  # fmt: skip
+                       rim.start, rim.parent, hard_ground=hard_ground_probability(found))  # fmt: skip
         water = Water(recipe.bed.water.temperature_c, recipe.bed.water.salinity)
         moved = tuple(moved_by(condition, bed, target, water) for condition in read_conditions(recipe, target))
         inventory = make_inventory(found, estimate, bed)
@@ -178,15 +180,18 @@ def _validated(recipe: Recipe, progress: Progress, clock: Clock, before: Check |
     with clock.stage("read"):
         target, stations = _stations(recipe, progress, before)
     plane = Plane.choose(stations.table["longitude"].to_numpy(), stations.table["latitude"].to_numpy(), target.crs)
+    zones = locate_zones(recipe, target, stations)
     observations = observe(stations, plain_treatment(recipe.composition).logratio, plane)
     with clock.stage("space"), progress.stage("find what distance means"):
         spaces = make_spaces(recipe, target, plane, observations)
     with clock.stage("fit"), progress.stage("fit the spatial structure"):
         plain, treated = fit_candidates(observations, recipe, spaces[recipe.method.tried_with])
     with clock.stage("validate"):
-        validation = validate_methods(observations, target, plane, plain, treated, recipe, progress, spaces=spaces)
+        validation = validate_methods(
+            observations, target, plane, plain, treated, recipe, progress, spaces=spaces, zones=zones
+        )
         recipe = with_method(recipe, validation.method)
         quantities = learn_quantities(stations, observations, validation.folds, recipe, progress, spaces)
-    mapper = validation.mapper(recipe.method)
+    mapper = validation.mapper(recipe.method, zones)
     stations = flag_stations(stations, mapper, observations)
     return Validated(recipe, stations, target, plane, observations, mapper, validation, quantities, spaces)

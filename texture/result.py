@@ -92,9 +92,18 @@ class Validated:
         """Side of a square of the median water cell's area."""
         return float(np.sqrt(np.median(self.target.area_m2[self.target.active])))
 
+    @property
+    def heard(self) -> list[NDArray[np.bool_]] | None:
+        """Which observations speak in zone 0 (none), 1, 2, …; None without zones."""
+        zones = self.mapper.zones
+        return (
+            None if zones is None else [zones.heard(i, self.observations.rows) for i in range(len(zones.settings) + 1)]
+        )
+
     def some_centres(self, count: int) -> Floats:
-        """Centres of a seeded choice of water cells in the plane, shape (cells, 2); all of them where there are no more."""
-        wet = np.flatnonzero(self.target.active)
+        """Centres of a seeded choice of water cells in no zone, in the plane, shape (cells, 2); all where there are no more."""
+        zones = self.mapper.zones
+        wet = np.flatnonzero(self.target.active if zones is None else self.target.active & (zones.cells.zone == 0))
         if wet.size > count:
             wet = np.sort(np.random.default_rng(self.recipe.seed).choice(wet, count, replace=False))
         return self.plane.to_metres(self.target.longitude[wet], self.target.latitude[wet])
@@ -249,6 +258,9 @@ class Result:
             "not_given": list(account.not_given),
             "packing": settings.packing,
             "hiding": settings.hiding,
+            "zones": []
+            if self.found.mapper.zones is None
+            else self.found.mapper.zones.lines(self.found.observations.rows),
             "inventory": [{k: known(v) for k, v in vars(stock).items()} for stock in self.inventory],
             "mobility": [mobility_record(m) for m in self.moved],
             "members": 0 if self.members is None else self.members.count,
@@ -281,6 +293,13 @@ class Result:
             f"  support     {100 * self.beyond_share:.1f} % of the water area is further than {found.reach_m / 1000:.1f} km from any sample"
         )
         lines += radius_lines(self)
+        if account.hard_cells:
+            lines.append(
+                f"  hard ground {account.hard_cells:,} cells cannot erode: hard with a probability of {found.recipe.bed.hard_ground_threshold:g} or more"
+            )
+        zones = found.mapper.zones
+        for i, line in enumerate(zones.lines(found.observations.rows) if zones is not None else []):
+            lines.append(f"  {'zones' if i == 0 else '':<11} {line}")
         lines.append(bed)
         lines += mobility_lines(self.moved)[:MOST_CONDITIONS]
         if len(self.moved) > MOST_CONDITIONS:

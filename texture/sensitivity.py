@@ -15,6 +15,7 @@ from texture.clock import Clock
 from texture.early import check_early, read_rim
 from texture.errors import RecipeError
 from texture.progress import Progress
+from texture.hard_ground import hard_ground_probability
 from texture.result import Validated, written_line
 
 if TYPE_CHECKING:
@@ -109,6 +110,7 @@ def make_case_set(
     recipe, cases = found.recipe, choose_cases(plan, only)
     assert recipe.sensitivity is not None  # the plan comes from it
     tonnes: dict[int, dict[str, float]] = {}
+    hard = hard_ground_probability(found)
     with clock.stage("cases"), folder.scratch() as scratch, folder.filling() as aside:
 
         def beds() -> Iterator[tuple[Case, Recipe, Bed]]:
@@ -117,7 +119,7 @@ def make_case_set(
                 for settings, fractions in case_maps(found, per_side, wanted, scratch, progress):
                     for case in (c for c in cases if c.map_settings == settings):
                         changed = recipe.model_copy(update={"bed": case.made_by.bed, "rim": case.made_by.rim})
-                        bed = _bed(case, changed, found, fractions, evidence)
+                        bed = _bed(case, changed, found, fractions, evidence, hard)
                         tonnes[case.number] = bed.account.tonnes
                         yield case, changed, bed
                         advance(1)
@@ -132,13 +134,15 @@ def make_case_set(
     return replace(result, files=folder.files)
 
 
-def _bed(case: Case, changed: Recipe, found: Validated, fractions: Any, evidence: NDArray[np.int8]) -> Bed:
+def _bed(
+    case: Case, changed: Recipe, found: Validated, fractions: Any, evidence: NDArray[np.int8], hard: NDArray[np.float64] | None
+) -> Bed:
     from texture.bed import make_bed
 
     rim = read_rim(changed, found.target)
     return make_bed(
         fractions, evidence, found.target, changed.bed, changed.rim, changed.composition.parts, rim.start, rim.parent,
-        case.made_by.porosity,
+        case.made_by.porosity, hard,
     )  # fmt: skip
 
 

@@ -31,6 +31,7 @@ if TYPE_CHECKING:
     from texture.structure import CovarianceSet
     from texture.structure.plane import Plane
     from texture.targets import Target
+    from texture.zones import Zones
 
 __all__ = ["Journal", "Validation", "validate_methods"]
 
@@ -119,12 +120,12 @@ class Validation:
         """Name of the map's method."""
         return self.methods[0].method
 
-    def mapper(self, method: Method) -> Mapper:
-        """Fit the map's method on all stations."""
+    def mapper(self, method: Method, zones: Zones | None = None) -> Mapper:
+        """Fit the map's method on all stations, in each zone on those that are heard there."""
         from texture.predict import solves
 
         factors = None if solves(self.method) else self.judged.factors
-        return make_mapper(self.method, self.learned, method, self.judged.error, factors, **self.judged.settings)
+        return make_mapper(self.method, self.learned, method, self.judged.error, factors, zones, **self.judged.settings)
 
 
 def validate_methods(
@@ -137,6 +138,7 @@ def validate_methods(
     progress: Progress,
     journal: Journal | None = None,
     spaces: Mapping[str, Space] | None = None,
+    zones: Zones | None = None,
 ) -> Validation:
     """Cross-validate the recipe's method with each treatment of zeros, and those it is compared with, on the same folds.
 
@@ -156,6 +158,8 @@ def validate_methods(
     journal : Journal, optional
     spaces : mapping of str to Space, optional
         Where each method takes distance; the plane where it is not named. In each space structure is fitted anew.
+    zones : Zones, optional
+        A station is predicted by the rule of the zone it stands in; in a zone whose composition is given it is not scored.
     """
     from texture.predict import METHODS, solves
 
@@ -166,7 +170,10 @@ def validate_methods(
         recipe.validation.folds, points, recipe.validation.count, recipe.seed, targets=places, block_m=block_m
     )
     weights = ScoreWeights(map_weights(points, places), block_weights(points, block_m, recipe.seed))
-    scored = np.where(observations.measured[:, None], observations.fractions, np.nan)
+    counts = observations.measured
+    if zones is not None:
+        counts = counts & ~zones.is_given(zones.stations.take(observations.rows))
+    scored = np.where(counts[:, None], observations.fractions, np.nan)
     judge = Judge(recipe.composition.parts, scored, folds.labels, weights, limit)
     own = recipe.method.tried_with
     compared = [n for n in recipe.methods if n != own and (n != "triangulation" or points.shape[1] == 2)]
@@ -176,7 +183,7 @@ def validate_methods(
     ]
     runs.sort(key=lambda run: run[0] == "average")  # made of what the others predicted
     with progress.stage(f"validate {len(runs)} × {folds.count} folds", total=len(runs) * folds.count) as advance:
-        bench = _Bench(recipe, plain, folds, journal or Forgets(), advance)
+        bench = _Bench(recipe, plain, folds, journal or Forgets(), advance, zones)
         judged: list[Judged] = []
         for number, (name, learned) in enumerate(runs):
             if name == "average":
@@ -246,9 +253,15 @@ class _Bench:
     """Runs methods over the folds; the structure of the plain treatment in a fold serves others as a warm start."""
 
     def __init__(
-        self, recipe: Recipe, plain: Learned, folds: Folds, journal: Journal, advance: Callable[[int], None]
+        self,
+        recipe: Recipe,
+        plain: Learned,
+        folds: Folds,
+        journal: Journal,
+        advance: Callable[[int], None],
+        zones: Zones | None = None,
     ) -> None:
-        self.recipe, self.plain, self.folds = recipe, plain, folds
+        self.recipe, self.plain, self.folds, self.zones = recipe, plain, folds, zones
         self.journal, self.advance = journal, advance
         self.plain_structures: dict[int, CovarianceSet] = {}
 
@@ -273,9 +286,9 @@ class _Bench:
         with closing(self._learn(name, learned, [pairs[fold][0] for fold in open_folds], open_folds)) as folds:
             for fold, inside in zip(open_folds, folds, strict=True):
                 test = pairs[fold][1]
-                columns = make_mapper(name, inside, self.recipe.method).columns(
-                    observations.points[test], sample_noise[test]
-                )
+                share = None if self.zones is None else self.zones.stations.take(observations.rows[test])
+                mapper = make_mapper(name, inside, self.recipe.method, zones=self.zones)
+                columns = mapper.columns(observations.points[test], sample_noise[test], share)
                 found.put(test, columns)
                 fitted = inside.structure is not learned.structure
                 if fitted and learned is self.plain:

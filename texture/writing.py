@@ -89,10 +89,14 @@ def write_all(result: Result, folder: ResultFolder, recipe_path: Path, maps: Mem
 def _write_grids(result: Result, aside: Path) -> None:
     from texture.composition import find_scheme
     from texture.output import (
+        BED_VARIABLES,
         class_colours,
+        on_cells,
+        pixel_grid,
         quantity_geotiffs,
         texture_dataset,
         with_quantities,
+        write_geotiff,
         write_geotiffs,
         write_netcdf,
     )
@@ -115,6 +119,12 @@ def _write_grids(result: Result, aside: Path) -> None:
     names = found.mapper.column_names
     quantities = [(q.model.settings, q) for q in result.quantities]
     texture = texture_dataset(result.estimate.within_radius, found.target, recipe, words, names, attributes)
+    hard = result.bed.hard_ground_probability
+    if hard is not None:
+        values = np.where(found.target.active, hard, np.nan)
+        texture["hard_ground_probability"] = on_cells(
+            found.target, (), values, **BED_VARIABLES["hard_ground_probability"]
+        )
     write_netcdf(with_quantities(texture, quantities, found.target, support), aside / "texture.nc")
     write_bed(result.bed, found.target, recipe, aside / "bed.nc", result.moved, into=True)
     if recipe.outputs.geotiff and found.target.corners is not None:  # places have no cells to show
@@ -122,6 +132,11 @@ def _write_grids(result: Result, aside: Path) -> None:
         parts, size = recipe.composition.parts, recipe.outputs.geotiff_cell_size_m
         write_geotiffs(aside / "geotiff", result.estimate.within_radius, found.target, parts, words, colours, size)
         quantity_geotiffs(aside / "geotiff", quantities, found.target, size)
+        if hard is not None:
+            path, grid = aside / "geotiff" / "hard_ground_probability.tif", pixel_grid(found.target, size)
+            write_geotiff(
+                path, grid, np.where(found.target.active, hard, np.nan), "probability of hard ground", units="1"
+            )
 
 
 def _write_inventory(result: Result, aside: Path) -> None:

@@ -52,6 +52,8 @@ class Account:
         Cells touched by the rim, and land cells that were filled.
     not_given : tuple of str
         Properties that the model will have to be told by hand.
+    hard_cells : int
+        Water cells of hard ground, where nothing can erode.
     """
 
     tonnes: dict[str, float]
@@ -61,6 +63,7 @@ class Account:
     rim_cells: int
     land_cells: int
     not_given: tuple[str, ...]
+    hard_cells: int = 0
 
 
 @dataclass(frozen=True, eq=False, repr=False)
@@ -91,6 +94,8 @@ class Bed:
     strong : bool
         Whether every class with mass in the bed has a critical stress.
     account : Account
+    hard_ground_probability : float array, shape (n,), or None
+        Above the recipe's threshold the thickness is the least there may be. None where nothing tells of hard ground.
     """
 
     classes: ClassProperties
@@ -103,6 +108,7 @@ class Bed:
     hidden: bool
     strong: bool
     account: Account = field(hash=False)
+    hard_ground_probability: Floats | None = None
 
     @property
     def class_mass_content(self) -> Floats:

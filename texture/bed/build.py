@@ -48,6 +48,7 @@ def make_bed(
     rim_start: Bools | None = None,
     rim_parent: Floats | None = None,
     porosity: Callable[[Floats], Floats] | None = None,
+    hard_ground: Floats | None = None,
 ) -> Bed:
     """Make the bed: classes, layers, then the rim, then the smallest fractions, then land.
 
@@ -69,6 +70,8 @@ def make_bed(
         Class fractions of the bed in `rim.parent`, where it is given; looked at in rim cells alone.
     porosity : callable, optional
         From the porosity that the packing gives (layer, …) to the bed's; dry density and mass follow.
+    hard_ground : float array, shape (n,), optional
+        Probability that the ground is hard; from the recipe's threshold on nothing but the least thickness can erode.
 
     Raises
     ------
@@ -81,6 +84,12 @@ def make_bed(
     water = Water(settings.water.temperature_c, settings.water.salinity)
     classes = class_properties(settings.classes, water, parts)
     thickness = layer_thickness(settings.layers, cells.active, settings.land_thickness_m, settings.minimum_thickness_m)
+    hard = (
+        np.zeros(n, dtype=bool)
+        if hard_ground is None
+        else cells.active & (hard_ground >= settings.hard_ground_threshold)
+    )
+    thickness[:, hard] = settings.minimum_thickness_m
     pack = packer(settings.packing, classes, settings.layers)
     if porosity is not None:
         pack = repacked(pack, porosity)
@@ -117,14 +126,18 @@ def make_bed(
         tonnes=_named(classes, final.sum(axis=1)),
         rim_tonnes=_named(classes, (rimmed - mapped).sum(axis=1)),
         least_fraction_tonnes=_named(classes, dropped.sum(axis=1)),
-        share_below_samples=float(final[:, 1:].sum() / final.sum()),
+        share_below_samples=float(final[:, 1:].sum() / final.sum())
+        if final.any()
+        else 0.0,  # all of it may be hard ground
         rim_cells=int((weight > 0.0).sum()),
         land_cells=int(land.size),
+        hard_cells=int(hard.sum()),
         not_given=tuple(
             missing for missing in classes.not_given if missing not in _strong_in_all_layers(classes, stress)
         ),
     )
     return Bed(
+        hard_ground_probability=hard_ground,
         classes=classes,
         class_fraction=fraction,
         erodible_thickness=thickness,

@@ -1,7 +1,8 @@
 """Files out: CF NetCDF, GeoTIFF, tables, provenance, all put in place together or not at all."""
 
 from texture.output.bed_nc import bed_dataset
-from texture.output.cf import write_netcdf
+from texture.output.bed_variables import BED_VARIABLES
+from texture.output.cf import on_cells, write_netcdf
 from texture.output.class_colours import class_colours
 from texture.output.compliance import check_cf
 from texture.output.folder import ResultFolder
@@ -20,6 +21,7 @@ from texture.output.text_table import cell_table, write_cells
 from texture.output.texture_nc import texture_dataset
 
 __all__ = [
+    "BED_VARIABLES",
     "NOT_A_BED",
     "Names",
     "ResultFolder",
@@ -32,6 +34,7 @@ __all__ = [
     "check_into",
     "check_outputs",
     "class_colours",
+    "on_cells",
     "open_bed",
     "parent_bed",
     "pixel_grid",

@@ -120,6 +120,10 @@ def _cell_variables(bed: Bed, target: Target, settings: BedSettings) -> dict[str
         )
     for name in ("skin_roughness_length", "rim_weight"):
         variables[name] = _later(bed, name, target, {})
+    hard = np.broadcast_to(0.0, target.n_cells) if bed.hard_ground_probability is None else bed.hard_ground_probability
+    variables["hard_ground_probability"] = on_cells_later(
+        target, {}, lambda: hard, **BED_VARIABLES["hard_ground_probability"]
+    )
     variables["water"] = on_cells(target, (), target.active.astype(np.int8), **BED_VARIABLES["water"])
     return variables
 

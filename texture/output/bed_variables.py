@@ -54,11 +54,16 @@ BED_VARIABLES: dict[str, dict[str, Any]] = {
     "skin_roughness_length": {
         "long_name": "roughness length of the grains at the surface",
         "units": "m",
-        "comment": "z0 = d50 / 12; roughness of the grains, not total drag",
+        "comment": "z0 = d50 / 12; roughness of the grains, not total drag; it does not hold on hard ground",
     },
     "rim_weight": {
         "long_name": "weight of the padded rim in the cell, 1 at the open boundary and 0 outside the rim",
         "units": "1",
+    },
+    "hard_ground_probability": {
+        "long_name": "probability that the ground is hard, so that nothing can erode",
+        "units": "1",
+        "comment": "indicator kriging of stations that found hard ground, 1 inside the user's polygons; 0 where neither tells of any",
     },
     "water": {
         "standard_name": "sea_binary_mask",

@@ -24,6 +24,7 @@ from texture.recipe.settings import Settings
 from texture.recipe.target import TargetSettings
 from texture.recipe.validation import Validation
 from texture.recipe.whole import Recipe, with_method
+from texture.recipe.zones import Zone
 
 __all__ = [
     "COLUMN_ROLES",
@@ -56,5 +57,6 @@ __all__ = [
     "Void",
     "WaterColumn",
     "WaterSettings",
+    "Zone",
     "with_method",
 ]

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from pathlib import Path
 from typing import Annotated, Literal
 
 from pydantic import Field, model_validator
@@ -58,6 +59,13 @@ class Bed(Settings):
     )
     minimum_thickness_m: Annotated[float, Field(ge=0.0)] = Field(
         0.0, description="no layer is thinner than this, on land neither: for models that divide by it"
+    )
+    hard_ground: Path | None = Field(
+        None, description="polygons of rock and other ground that cannot erode (GeoJSON, GeoPackage, Shapefile)"
+    )
+    hard_ground_threshold: Annotated[float, Field(gt=0.0, le=1.0)] = Field(
+        0.5,
+        description="probability of hard ground, from polygons and from stations that found it, above which nothing can erode",
     )
     packing: Literal["mixture", "class", "layer"] = Field(
         "mixture",

@@ -23,6 +23,7 @@ from texture.recipe.sensitivity import Sensitivity
 from texture.recipe.settings import Settings, check_composition, check_names, nearest_known
 from texture.recipe.target import TargetSettings
 from texture.recipe.validation import Validation
+from texture.recipe.zones import Zone
 
 __all__ = ["Recipe", "with_method"]
 
@@ -37,6 +38,7 @@ class Recipe(Settings):
     intake: Intake = Field(default_factory=Intake)
     composition: Composition = Field(default_factory=Composition)
     target: TargetSettings
+    zones: tuple[Zone, ...] = ()
     method: Method = Field(default_factory=Method)
     validation: Validation = Field(default_factory=Validation)
     bed: Bed = Field(default_factory=Bed)
@@ -67,6 +69,7 @@ class Recipe(Settings):
                 check_composition(f"bed.layers[{i}].fill", layer.fill, parts, classes)
         if self.bed.land_fill != "nearest":
             check_composition("bed.land_fill", self.bed.land_fill, parts, classes)
+        self._check_zones()
         conditions = [m.name for m in self.mobility]
         for name in conditions:
             if conditions.count(name) > 1:
@@ -112,6 +115,26 @@ class Recipe(Settings):
             asked |= {"kriging_with_covariates"} if method.covariates and method.fit == "likelihood" else set()
             asked |= {"kriging_with_drift"} if method.covariates or method.drift else set()
         return tuple(name for name in every if name in asked)
+
+    def _check_zones(self) -> None:
+        names = [z.name for z in self.zones]
+        for zone in self.zones:
+            if names.count(zone.name) > 1 or zone.name == "all":
+                raise ValueError(
+                    f'zones: the name "{zone.name}" is {"kept for all cells" if zone.name == "all" else "given twice"}'
+                )
+            if zone.composition is not None:
+                check_composition(f'zones "{zone.name}", composition', zone.composition, self.composition.parts, ())
+        if self.zones and self.ensemble.members:
+            raise ValueError("ensemble.members: members are drawn without zones; leave one of the two out")
+        if self.zones and self.sensitivity is not None:
+            raise ValueError("sensitivity: its cases are mapped without zones; leave one of the two out")
+        hard = any(z.soft_edge_m == 0.0 for z in self.zones)
+        if hard and self.composition.zeros == "censor":
+            raise ValueError(
+                'composition.zeros = "censor" fills in each station from its neighbours, across the hard edges of zones too; '
+                'choose "auto", "replace" or "presence", or give the zones a soft_edge_m'
+            )
 
 
 def with_method(recipe: Recipe, name: str) -> Recipe:

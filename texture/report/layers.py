@@ -94,9 +94,13 @@ def map_layers(result: Result) -> list[MapLayer]:
             max(high, low + 1e-6),
         )
     )
+    if bed.hard_ground_probability is not None:
+        layers.append(_steps("hard_ground", "probability of hard ground", bed.hard_ground_probability, active))
     thickness = bed.erodible_thickness.sum(axis=0)
     layers.append(
-        _steps("thickness", "erodible thickness, m", thickness, active, 0.0, float(thickness[active].max()), "m")
+        _steps(
+            "thickness", "erodible thickness, m", thickness, active, 0.0, max(float(thickness[active].max()), 1e-6), "m"
+        )
     )
     for i, moved in enumerate(result.moved):
         stress = np.asarray(moved.stress_pa, dtype=np.float64)

@@ -8,7 +8,7 @@ from numpy.typing import NDArray
 
 from texture.errors import TargetError
 
-__all__ = ["read_crs", "to_degrees", "unwrapped"]
+__all__ = ["beside", "read_crs", "to_degrees", "unwrapped"]
 
 Floats = NDArray[np.float64]
 
@@ -25,6 +25,15 @@ def to_degrees(x: Floats, y: Floats, crs: pyproj.CRS) -> tuple[Floats, Floats]:
     """Longitude and latitude (WGS 84) of flat coordinates."""
     longitude, latitude = pyproj.Transformer.from_crs(crs, 4326, always_xy=True).transform(x, y)
     return np.asarray(longitude), np.asarray(latitude)
+
+
+def beside(longitude: Floats, middle: float) -> Floats:
+    """Longitudes by whole turns within half a turn of a middle.
+
+    >>> beside(np.array([359.0, -181.0]), -10.0).tolist()
+    [-1.0, -181.0]
+    """
+    return np.asarray(longitude - 360.0 * np.round((longitude - middle) / 360.0))
 
 
 def unwrapped(longitude: Floats) -> Floats:

@@ -17,7 +17,7 @@ if TYPE_CHECKING:
 
     from texture.targets.target import Target
 
-__all__ = ["LENGTH", "SPEED", "TIME", "read_field"]
+__all__ = ["LENGTH", "SPEED", "TIME", "read_field", "read_numbers"]
 
 Floats = NDArray[np.float64]
 
@@ -74,7 +74,14 @@ def read_field(
     return values
 
 
-def _variable(file: Path, name: str, target: Target, key: str, units: Mapping[str, float], series: bool) -> Floats:
+def read_numbers(file: Path, name: str, target: Target, key: str) -> Floats:
+    """Read one number without a unit for each cell, shape (n,), NaN where there is none; raises as `read_field`."""
+    return _variable(file, name, target, key, None, False)
+
+
+def _variable(
+    file: Path, name: str, target: Target, key: str, units: Mapping[str, float] | None, series: bool
+) -> Floats:
     import xarray as xr
 
     try:
@@ -89,6 +96,8 @@ def _variable(file: Path, name: str, target: Target, key: str, units: Mapping[st
         if isinstance(error, TargetError):
             raise
         raise TargetError(f"{file.name}: cannot be read as NetCDF ({error})") from error
+    if units is None:
+        return _on_cells(variable, target, file.name, series)
     unit = str(variable.attrs.get("units", "")).strip()
     if unit not in units:
         found = f'is in "{unit}"' if unit else "does not say its units"
