@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 
 import texture
 from texture.errors import OutputError
-from texture.output.on_demand import on_demand
+from texture.output.on_demand import is_on_demand, on_demand
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -114,6 +114,8 @@ def write_netcdf(dataset: xr.Dataset, path: Path) -> None:
     OutputError
         If the file cannot be written.
     """
+    import xarray as xr
+
     encoding: dict[str, dict[str, Any]] = {}
     filled: dict[str, xr.Variable] = {}
     for name, variable in dataset.variables.items():
@@ -127,8 +129,15 @@ def write_netcdf(dataset: xr.Dataset, path: Path) -> None:
         if variable.size > 1000 and variable.dtype.kind in "fiu":
             own |= {"zlib": True, "complevel": 2, "shuffle": True}
         encoding[str(name)] = own
+    whole = dataset.assign(filled)
+    later = [str(name) for name, variable in whole.variables.items() if is_on_demand(variable)]
     try:
-        dataset.assign(filled).to_netcdf(path, engine="netcdf4", format="NETCDF4", encoding=encoding)
+        first = {name: own for name, own in encoding.items() if name not in later}
+        whole.drop_vars(later).to_netcdf(path, engine="netcdf4", format="NETCDF4", encoding=first)
+        # One at a time: xarray works out all variables of a dataset before it writes the first.
+        for name in later:
+            one = xr.Dataset({name: whole.variables[name]})
+            one.to_netcdf(path, mode="a", engine="netcdf4", format="NETCDF4", encoding={name: encoding[name]})
     except RuntimeError as error:  # the HDF5 library's way to say that the disk is full or read-only
         raise OutputError(f"{path.name}: cannot be written ({error}); is the disk full?") from error
 
