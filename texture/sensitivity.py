@@ -14,8 +14,8 @@ from texture.cases import Case, CasePlan, plan_cases
 from texture.clock import Clock
 from texture.early import check_early, read_rim
 from texture.errors import RecipeError
-from texture.progress import Progress
 from texture.hard_ground import hard_ground_probability
+from texture.progress import Progress
 from texture.result import Validated, written_line
 
 if TYPE_CHECKING:
@@ -135,7 +135,12 @@ def make_case_set(
 
 
 def _bed(
-    case: Case, changed: Recipe, found: Validated, fractions: Any, evidence: NDArray[np.int8], hard: NDArray[np.float64] | None
+    case: Case,
+    changed: Recipe,
+    found: Validated,
+    fractions: Any,
+    evidence: NDArray[np.int8],
+    hard: NDArray[np.float64] | None,
 ) -> Bed:
     from texture.bed import make_bed
 
