@@ -38,7 +38,7 @@ class Recipe(Settings):
     intake: Intake = Field(default_factory=Intake)
     composition: Composition = Field(default_factory=Composition)
     target: TargetSettings
-    zones: tuple[Zone, ...] = ()
+    zones: tuple[Zone, ...] = Field((), description="places with a bed of their own")
     method: Method = Field(default_factory=Method)
     validation: Validation = Field(default_factory=Validation)
     bed: Bed = Field(default_factory=Bed)
