@@ -88,7 +88,7 @@ def choose(
     The lowest error among those whose mean errors are balanced (among all where none is) is the best, and those within one
     standard error of it are as good as it (Breiman et al. 1984, section 3.4.3). Of these the plain one is taken; then the one
     whose assumption what was measured speaks for: presence where zeros are absence, censoring where they are the rest of
-    small values; then the others, shares last unless zeros are absence, since they know none of the limits.
+    small values; then the others, shares last: they know none of the limits, and a normal distribution of a share reaches beyond 0 and 1.
 
     A part's true mean is that of what was measured with what lies below the limit put at its `unseen_below` mean. Where that
     cannot be told, any mean between zeros at 0 and zeros at the limit has no error.
@@ -149,12 +149,13 @@ def _rank(treatment: Treatment, absent: bool, place: int) -> tuple[int, int]:
     """Order of preference among treatments that are as good as each other."""
     if place == 0:
         return 0, place
-    order = (Presence, Shares) if absent else (Censor, Presence)
-    last = Censor if absent else Shares
+    order = (Presence,) if absent else (Censor, Presence)
     for rank, kind in enumerate(order, start=1):
         if isinstance(treatment, kind):
             return rank, place
-    return (4 if isinstance(treatment, last) else 3), place
+    if isinstance(treatment, Shares):
+        return 5, place
+    return (4 if isinstance(treatment, Censor) else 3), place
 
 
 def _standard_errors(shares: Floats, best: int) -> list[float]:
