@@ -1,5 +1,7 @@
 """Words of messages that no other test raises: each names what was found, what was expected or what to do."""
 
+from pathlib import Path
+
 import numpy as np
 import pytest
 import shapely
@@ -8,11 +10,15 @@ import xarray as xr
 from texture import Covariance, Kriging, LogRatio, Structure
 from texture.bed import Water
 from texture.composition import censoring_bounds, presence_forward
+from texture.composition.cumulative import parts_from_weights
 from texture.composition.presence_draws import Presence
-from texture.errors import BedError, CompositionError, RecipeError, StructureError, TargetError
+from texture.composition.schemes import Scheme
+from texture.errors import BedError, CompositionError, OutputError, RecipeError, StructureError, TargetError
+from texture.output import ResultFolder
 from texture.predict import make_method
-from texture.recipe import TargetSettings
+from texture.recipe import Rim, TargetSettings
 from texture.recipe.file import read_recipe
+from texture.recipe.sensitivity import Vary
 from texture.structure.covariance import CovarianceSet
 from texture.structure.plane import Plane
 from texture.structure.variogram import empirical_variogram, fit_variogram
@@ -120,6 +126,28 @@ ARRAYS = {
         ),
         CompositionError,
         "within = ... works with kind 'tree' and 'shares', not with 'ilr'",
+    ),
+    "falling cuts": (
+        lambda: parts_from_weights([4.0, 0.0], np.array([[1.0]]), [2e-3, 63e-6]),
+        CompositionError,
+        "expected rising diameters",
+    ),
+    "basis of a tree": (
+        lambda: LogRatio(("mud", "sand", "gravel"), kind="tree").log_basis,
+        CompositionError,
+        "has no linear basis, only ilr and alr have",
+    ),
+    "classes twice": (
+        lambda: Scheme.from_table(
+            {
+                "title": "t",
+                "source": "s",
+                "parts": ["mud", "sand", "gravel"],
+                "classes": [{"code": "a", "words": "a", "number": 1, "when": []}] * 2,
+            }
+        ),
+        CompositionError,
+        "expected codes and numbers (from 1) without repeats",
     ),
 }
 
@@ -233,6 +261,10 @@ def test_projected_grids_need_their_projection(tmp_path):
 @pytest.mark.parametrize(
     ("override", "words"),
     [
+        (
+            'quantities=[{ name = "d50", curve = "median_phi", unit = "mm" }]',
+            'd50: a median in phi has unit "phi" and scale "plain"',
+        ),
         ("method.neighbours", "expected key.path=value, such as method.neighbours=24"),
         ("target.crs=", "bounds need cell_size and crs beside them"),
         ("bed.land_fill={ mud = 0.5, sand_x = 0.5 }", 'unknown name "sand_x"; did you mean "sand"?'),
@@ -257,3 +289,34 @@ def test_a_fill_is_in_parts_or_in_classes(small):
 def test_water_that_is_none():
     with pytest.raises(BedError, match=r"water: density = 3, expected 900 to 1300 kg m-3"):
         Water(density=3.0)
+
+
+def test_a_result_that_appears_meanwhile_is_kept(tmp_path):
+    def fill():
+        with ResultFolder(tmp_path).filling() as aside:
+            (aside / "bed.nc").write_text("ours")
+            (tmp_path / "bed.nc").write_text("of another run")
+
+    with pytest.raises(OutputError, match="appeared while the run was going on; kept, nothing written"):
+        fill()
+    assert (tmp_path / "bed.nc").read_text() == "of another run"
+
+
+@pytest.mark.parametrize(
+    ("override", "words"),
+    [
+        ({"what": "thickness", "values": [1.0], "classes": ["sand"]}, "is not of classes; leave out `classes`"),
+        ({"what": "diameter", "factors": [1.0], "layers": [1]}, "is not of layers; leave out `layers`"),
+        ({"what": "thickness", "range": [2.0, 1.0]}, "expected two numbers, the lower one first"),
+        ({"what": "thickness", "values": [True]}, "expected numbers, or words for control, found True"),
+    ],
+)
+def test_sensitivities_that_contradict_themselves(override, words):
+    with pytest.raises(ValueError, match="1 validation error") as raised:
+        Vary.model_validate(override)
+    assert words in str(raised.value)
+
+
+def test_openings_cannot_be_struck_from_a_drawing():
+    with pytest.raises(ValueError, match="draw sides without them instead"):
+        Rim(width_cells=3, sides=Path("sides.geojson"), leave_out=(1,), classes={"sand": 1.0})
