@@ -10,6 +10,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.typing import NDArray
+from threadpoolctl import threadpool_limits  # type: ignore[import-untyped]  # ships no annotations
 
 from texture.errors import RecipeError
 from texture.estimate import mean_in_cells
@@ -110,6 +111,7 @@ def draw_members(
         Sampling distance: what of the small-scale variation averages out inside a cell follows from it.
     """
     kriging, progress = check_members(mapper), progress or Silent()
+    stack.enter_context(threadpool_limits(limits=1, user_api="blas"))  # a library's sums hang on its threads
     cells = np.flatnonzero(target.active)
     stations = kriging.stations.points
 

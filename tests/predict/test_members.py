@@ -2,8 +2,10 @@
 
 from __future__ import annotations
 
+import numba
 import numpy as np
 import pytest
+from threadpoolctl import threadpool_limits
 
 from texture.composition import LogRatio, class_numbers, class_odds
 from texture.errors import StructureError
@@ -129,6 +131,13 @@ def test_nor_do_survey_offsets_hang_on_the_number_of_members(places):
     )
     together = Members(kriging, range(1, 6), frequencies=256).predict(places)
     np.testing.assert_array_equal(Members(kriging, [1], frequencies=256).predict(places)[:, :, 0], together[:, :, 0])
+    for threads in (1, 2):  # nor on the threads of the library, or of compiled code
+        before = numba.get_num_threads()
+        numba.set_num_threads(min(threads, before))
+        with threadpool_limits(limits=threads, user_api="blas"):
+            again = Members(kriging, range(1, 6), frequencies=256).predict(places)
+        numba.set_num_threads(before)
+        np.testing.assert_array_equal(again, together)
 
 
 def test_class_odds_agree_with_quadrature(stations, places):

@@ -16,6 +16,7 @@ from collections.abc import Sequence
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
+from threadpoolctl import threadpool_limits  # type: ignore[import-untyped]  # ships no annotations
 
 from texture.errors import StructureError
 from texture.predict.draws import NOISE, STATIONS, SURVEYS, colour, generator, place_normals
@@ -80,10 +81,12 @@ class Members:
         self._small *= np.sqrt([c.small_scale for c in self.structure])[:, None]
         said = structured + self._small + self._errors(kriging)
         columns = stations.values[:, :, None] - said
-        self._kriging = Kriging(
-            kriging.covariance, kriging.neighbours, "tile" if kriging.neighbourhood == "all" else kriging.neighbourhood,
-            kriging.mean, kriging.radius_m, kriging.at_least, kriging.per_sector_at_most, kriging.drift,
-        ).fit(stations.points, stations.values, stations.noise_variance, stations.survey, stations.drift, columns)  # fmt: skip
+        # A library's sums hang on its threads; a member must not.
+        with threadpool_limits(limits=1, user_api="blas"):
+            self._kriging = Kriging(
+                kriging.covariance, kriging.neighbours, "tile" if kriging.neighbourhood == "all" else kriging.neighbourhood,
+                kriging.mean, kriging.radius_m, kriging.at_least, kriging.per_sector_at_most, kriging.drift,
+            ).fit(stations.points, stations.values, stations.noise_variance, stations.survey, stations.drift, columns)  # fmt: skip
 
     def _normals(self, stream: int, count: int) -> Array:
         """Standard normals correlated between columns, shape (count, v, r)."""
