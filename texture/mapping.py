@@ -396,6 +396,7 @@ class Mapper:
         if not self.has_variance:
             return np.full((len(levels), mean.shape[0], self.logratio.n_parts), np.nan)
         share = np.broadcast_to(np.asarray(averaged_out, dtype=np.float64), (len(mean),))
+        variance = np.asarray(variance, dtype=np.float64)  # maps keep float32, too coarse to say what lies within what
         within = np.minimum(variance, self.small_scale * share[:, None])
         return self.treatment.cell_quantiles(mean, self.covariance(variance), levels, within)
 
