@@ -135,7 +135,7 @@ class Judge:
         return replace(judged, held_out=replace(held, scores=table))
 
     def _draws(self, treatment: Treatment, columns: Columns) -> DrawScores:
-        from texture.composition.expected import normal_draws
+        from texture.composition.draws import normal_draws
 
         normals = normal_draws(columns.mean.shape[1], DRAWS)
         covariance = columns.covariance(columns.sample_variance)

@@ -256,9 +256,7 @@ class Presence(Replace):
 
     def samples(self, mean: Floats, covariance: Floats, normals: Floats) -> Floats:
         """Fractions of samples, shape (n, m, parts), from standard normal draws (m, k): the part is in each or not."""
-        from texture.composition.presence_samples import presence_samples
-
-        return presence_samples(self.distribution, *self._given(mean, covariance), normals)
+        return self.distribution.samples(*self._given(mean, covariance), normals)
 
     def bounds(self, observations: Observations) -> tuple[Floats, Floats]:
         """Columns of exact stations twice, shapes (n, k): what is below the limit is absent."""

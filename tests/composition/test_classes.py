@@ -5,7 +5,7 @@ from hypothesis import strategies as st
 from hypothesis.extra.numpy import arrays
 
 from texture.composition import LogRatio, Scheme, class_numbers, class_odds, classify, find_scheme, scheme_names
-from texture.composition.expected import normal_draws
+from texture.composition.draws import normal_draws
 from texture.errors import CompositionError
 
 NAN = float("nan")

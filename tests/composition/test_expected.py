@@ -4,7 +4,7 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from texture.composition import LogRatio
-from texture.composition.expected import normal_draws
+from texture.composition.draws import normal_draws
 from texture.errors import CompositionError
 
 PARTS = ["mud", "sand", "gravel"]

@@ -5,7 +5,7 @@ from hypothesis import strategies as st
 from scipy.special import expit, ndtr, ndtri
 
 from texture.composition import LogRatio
-from texture.composition.expected import normal_draws
+from texture.composition.draws import normal_draws
 from texture.errors import CompositionError
 
 PARTS = ["mud", "sand", "gravel"]

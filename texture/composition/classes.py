@@ -120,7 +120,8 @@ def class_odds(
         As for `LogRatio.expected` and `classify`.
     """
     # Compiled: imported only where it is needed.
-    from texture.composition.expected import as_moments, normal_draws, refuse_matrix
+    from texture.composition.draws import normal_draws
+    from texture.composition.moments import as_moments, refuse_matrix
     from texture.composition.odds import odds_kernel
 
     chosen = scheme if isinstance(scheme, Scheme) else find_scheme(scheme)

@@ -31,6 +31,7 @@ __all__ = [
 ]
 
 Array = npt.NDArray[np.float64]
+Ints = npt.NDArray[np.int64]
 
 
 def check_parts(parts: npt.ArrayLike, *, n_parts: int | None = None, positive: bool = False) -> Array:

@@ -3,14 +3,15 @@
 import math
 
 import numpy as np
-from numba import njit, prange
+from numba import prange
 
-from texture.composition.kernels import cholesky, has_nan, inverse_row
+from texture.compiling import compiled
+from texture.composition.rows import add_to_class, cholesky, draw, has_nan, inverse_row
 
 __all__ = ["odds_kernel"]
 
 
-@njit(cache=True, parallel=True)
+@compiled(parallel=True)
 def odds_kernel(  # type: ignore[no-untyped-def]
     mean, covariance, index, sign, basis, clipped, coefficients, lookup, draws, tie, out, status
 ):
@@ -30,17 +31,6 @@ def odds_kernel(  # type: ignore[no-untyped-def]
         shares = np.empty((2, d))
         weight = 1.0 / draws.shape[0]
         for k in range(draws.shape[0]):
-            for i in range(d):
-                y[i] = mean[row, i]
-                for j in range(i + 1):
-                    y[i] += factor[i, j] * draws[k, j]
+            draw(mean[row], factor, draws[k], y)
             inverse_row(y, index, sign, basis, clipped, shares, x)
-            pattern = 0
-            for c in range(coefficients.shape[0]):
-                total = tie
-                for p in range(parts):
-                    total += coefficients[c, p] * x[p]
-                if total >= 0.0:
-                    pattern |= 1 << c
-            if lookup[pattern] >= 0:
-                out[row, lookup[pattern]] += weight
+            add_to_class(x, coefficients, lookup, tie, weight, out[row])

@@ -1,4 +1,4 @@
-"""What follows from presence × share: expected fractions, quantiles and class odds by draws.
+"""What follows from presence × share: expected fractions, quantiles, class odds and samples by draws.
 
 Whether a part is there is a threshold on a hidden standard normal, present with the given probability (the indicator's
 kriged value) and correlated with the coordinates: gravel that lies where mud is scarce is more gravel than the
@@ -11,33 +11,22 @@ itself where it is 0, and in between the share of a cell above a threshold when 
 from the variance by r = sin(π / 2 × variance / (p (1 - p))), which is exact at p = 1/2 (Sheppard 1899).
 """
 
-import math
 from functools import cache
 
 import numpy as np
 import numpy.typing as npt
-from numba import njit, prange
 
 from texture.composition.closure import Array
-from texture.composition.expected import as_moments, normal_draws, refuse_matrix
-from texture.composition.kernels import (
-    cholesky,
-    has_nan,
-    inverse_row,
-    mixture_scales,
-    normal_cdf,
-    normal_pdf,
-    normal_quantile,
-    smooth_logistic,
-)
+from texture.composition.draws import normal_draws
 from texture.composition.logratio import LogRatio
+from texture.composition.moments import as_moments, refuse_matrix
+from texture.composition.presence_kernels import expected_kernel, odds_kernel, quantile_kernel, sample_kernel
 from texture.composition.schemes import TIE, Scheme, find_scheme
 from texture.errors import CompositionError
 
 __all__ = ["Presence"]
 
 DRAWS = 512
-_MOST_TOLD = 0.9  # share of the hidden normal's variance that the coordinates may tell
 _LEAST = 1e-6  # probabilities nearer to 0 or 1 are taken as this far from them
 
 
@@ -90,7 +79,7 @@ class Presence:
         status = np.zeros(len(m), dtype=np.bool_)
         index, sign = self.logratio.partition.path_arrays()
         draws = _draws(self.logratio.n_coordinates)
-        _expected_kernel(m, c, p, r, index, sign, self.column, self.sibling, draws, out, status)
+        expected_kernel(m, c, p, r, index, sign, self.column, self.sibling, draws, out, status)
         refuse_matrix(status)
         out /= out.sum(axis=1, keepdims=True)
         return out
@@ -131,7 +120,7 @@ class Presence:
         index, sign = self.logratio.partition.path_arrays()
         draws = _draws(self.logratio.n_coordinates)
         inside = np.ascontiguousarray(inside)
-        _quantile_kernel(m, outer, inside, p, r, tie, index, sign, self.column, self.sibling, draws, q, out, status)
+        quantile_kernel(m, outer, inside, p, r, tie, index, sign, self.column, self.sibling, draws, q, out, status)
         refuse_matrix(status)
         return out
 
@@ -153,12 +142,36 @@ class Presence:
         status = np.zeros(len(m), dtype=np.bool_)
         index, sign = self.logratio.partition.path_arrays()
         draws = _draws(self.logratio.n_coordinates)
-        _odds_kernel(
-            m, c, p, r, index, sign, self.column, self.sibling, draws, coefficients, lookup, TIE, every, status
-        )
+        odds_kernel(m, c, p, r, index, sign, self.column, self.sibling, draws, coefficients, lookup, TIE, every, status)
         refuse_matrix(status)
         best = np.argmax(every, axis=1)
         return np.array(chosen.numbers, dtype=np.int8)[best], every[np.arange(len(m)), best]
+
+    def samples(
+        self,
+        mean: npt.ArrayLike,
+        covariance: npt.ArrayLike,
+        probability: npt.ArrayLike,
+        correlation: npt.ArrayLike,
+        normals: Array,
+    ) -> Array:
+        """Fractions of single samples, shape (n, m, D): the part is in each, or it is not.
+
+        Parameters
+        ----------
+        mean, covariance, probability, correlation
+            As for `expected`.
+        normals : float array, shape (m, d + 1)
+            Standard normal draws; the last column decides, with the others, whether the part is there.
+        """
+        m, c, p, r = self._checked(mean, covariance, probability, correlation)
+        out = np.full((len(m), len(normals), self.logratio.n_parts), np.nan)
+        status = np.zeros(len(m), dtype=np.bool_)
+        index, sign = self.logratio.partition.path_arrays()
+        draws = np.ascontiguousarray(normals, dtype=np.float64)
+        sample_kernel(m, c, p, r, index, sign, self.column, self.sibling, draws, out, status)
+        refuse_matrix(status)
+        return out
 
     def _checked(
         self, mean: npt.ArrayLike, covariance: npt.ArrayLike, probability: npt.ArrayLike, correlation: npt.ArrayLike
@@ -179,162 +192,3 @@ class Presence:
 def _draws(d: int) -> Array:
     """Draws of the coordinates and, in the last column, of the hidden normal."""
     return normal_draws(d + 1, DRAWS)
-
-
-@njit(cache=True)
-def _loadings(probability, correlation, covariance, factor, load):  # type: ignore[no-untyped-def]
-    """Threshold of the hidden normal; its loadings on the coordinates' draws into `load`, and on its own draw."""
-    threshold = normal_quantile(probability)
-    larger = math.sqrt(probability * (1.0 - probability)) / max(normal_pdf(threshold), 1e-12)
-    told = 0.0
-    for i in range(load.size):
-        left = correlation[i] * larger * math.sqrt(covariance[i, i])
-        for j in range(i):
-            left -= factor[i, j] * load[j]
-        load[i] = left / factor[i, i] if factor[i, i] > 0.0 else 0.0
-        told += load[i] ** 2
-    if told > _MOST_TOLD:
-        for i in range(load.size):
-            load[i] *= math.sqrt(_MOST_TOLD / told)
-        told = _MOST_TOLD
-    return threshold, math.sqrt(1.0 - told)
-
-
-@njit(cache=True)
-def _take_away(x, column, sibling, there):  # type: ignore[no-untyped-def]
-    """Leave only the share `there` of a part, the rest to its sibling in proportion."""
-    freed = x[column] * (1.0 - there)
-    x[column] -= freed
-    whole = 0.0
-    for j in sibling:
-        whole += x[j]
-    for j in sibling:
-        x[j] += freed * (x[j] / whole if whole > 0.0 else 1.0 / sibling.size)
-
-
-@njit(cache=True, parallel=True)
-def _expected_kernel(  # type: ignore[no-untyped-def]
-    mean, covariance, probability, correlation, index, sign, column, sibling, draws, out, status
-):
-    n, d = mean.shape
-    parts = index.shape[0]
-    basis = np.zeros((0, 0))
-    for row in prange(n):
-        if has_nan(mean[row]) or has_nan(covariance[row]) or math.isnan(probability[row]):
-            continue
-        factor = np.zeros((d, d))
-        if not cholesky(covariance[row], factor):
-            status[row] = True
-            continue
-        load, y, x, shares = np.zeros(d), np.empty(d), np.empty(parts), np.empty((2, d))
-        threshold, own = _loadings(probability[row], correlation[row], covariance[row], factor, load)
-        total = np.zeros(parts)
-        for k in range(draws.shape[0]):
-            hidden = threshold
-            for i in range(d):
-                y[i] = mean[row, i]
-                hidden += load[i] * draws[k, i]
-                for j in range(i + 1):
-                    y[i] += factor[i, j] * draws[k, j]
-            inverse_row(y, index, sign, basis, False, shares, x)
-            _take_away(x, column, sibling, normal_cdf(hidden / own))
-            total += x
-        out[row] = total / draws.shape[0]
-
-
-@njit(cache=True, parallel=True)
-def _quantile_kernel(  # type: ignore[no-untyped-def]
-    mean, covariance, inside, probability, correlation, tie, index, sign, column, sibling, draws, q, out, status
-):
-    n, d = mean.shape
-    parts = index.shape[0]
-    count = draws.shape[0]
-    basis = np.zeros((0, 0))
-    for row in prange(n):
-        if has_nan(mean[row]) or has_nan(covariance[row]) or math.isnan(probability[row]):
-            continue
-        factor = np.zeros((d, d))
-        if not cholesky(covariance[row], factor):
-            status[row] = True
-            continue
-        load, y, x, shares = np.zeros(d), np.empty(d), np.empty(parts), np.empty((2, d))
-        scales = np.empty((d, 5))
-        for i in range(d):
-            mixture_scales(inside[row, i], scales[i])
-        threshold, own = _loadings(probability[row], correlation[row], covariance[row], factor, load)
-        values = np.empty((parts, count))
-        for k in range(count):
-            hidden = own * draws[k, d]
-            for i in range(d):
-                hidden += load[i] * draws[k, i]
-                y[i] = mean[row, i]
-                for j in range(i + 1):
-                    y[i] += factor[i, j] * draws[k, j]
-                if inside[row, i] > 0.0:
-                    small = min(max(smooth_logistic(-abs(y[i]), scales[i]), 1e-300), 0.5)
-                    y[i] = math.copysign(math.log((1.0 - small) / small), y[i])
-            inverse_row(y, index, sign, basis, False, shares, x)
-            if tie[row] >= 1.0 - 1e-9:
-                there = 1.0 if threshold + hidden > 0.0 else 0.0
-            else:
-                there = normal_cdf((threshold + math.sqrt(tie[row]) * hidden) / math.sqrt(1.0 - tie[row]))
-            _take_away(x, column, sibling, there)
-            for p in range(parts):
-                values[p, k] = x[p]
-        for p in range(parts):
-            ordered = np.sort(values[p])
-            for level in range(q.size):
-                place = min(max(q[level] * count - 0.5, 0.0), count - 1.0)
-                below = min(int(place), count - 2)
-                share = place - below
-                out[level, row, p] = ordered[below] * (1.0 - share) + ordered[below + 1] * share
-
-
-@njit(cache=True, parallel=True)
-def _odds_kernel(  # type: ignore[no-untyped-def]
-    mean,
-    covariance,
-    probability,
-    correlation,
-    index,
-    sign,
-    column,
-    sibling,
-    draws,
-    coefficients,
-    lookup,
-    tie,
-    out,
-    status,
-):
-    n, d = mean.shape
-    parts = index.shape[0]
-    basis = np.zeros((0, 0))
-    for row in prange(n):
-        if has_nan(mean[row]) or has_nan(covariance[row]) or math.isnan(probability[row]):
-            out[row] = math.nan
-            continue
-        factor = np.zeros((d, d))
-        if not cholesky(covariance[row], factor):
-            status[row] = True
-            continue
-        load, y, x, shares = np.zeros(d), np.empty(d), np.empty(parts), np.empty((2, d))
-        threshold, own = _loadings(probability[row], correlation[row], covariance[row], factor, load)
-        for k in range(draws.shape[0]):
-            hidden = threshold + own * draws[k, d]
-            for i in range(d):
-                hidden += load[i] * draws[k, i]
-                y[i] = mean[row, i]
-                for j in range(i + 1):
-                    y[i] += factor[i, j] * draws[k, j]
-            inverse_row(y, index, sign, basis, False, shares, x)
-            _take_away(x, column, sibling, 1.0 if hidden > 0.0 else 0.0)
-            pattern = 0
-            for c in range(coefficients.shape[0]):
-                total = tie
-                for p in range(parts):
-                    total += coefficients[c, p] * x[p]
-                if total >= 0.0:
-                    pattern |= 1 << c
-            if lookup[pattern] >= 0:
-                out[row, lookup[pattern]] += 1.0 / draws.shape[0]

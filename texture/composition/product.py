@@ -3,10 +3,10 @@
 import math
 
 import numpy as np
-from numba import njit
 
+from texture.compiling import compiled
 from texture.composition.closure import Array
-from texture.composition.kernels import (
+from texture.composition.logistic_normal import (
     logistic,
     logistic_normal,
     logistic_normal_slope,
@@ -35,8 +35,10 @@ _MOST_CORRELATION = 0.9999
 _LEAST_SPREAD = 1e-7
 
 
-@njit(cache=True)
-def pair_quantiles(m, sign, sub, shared, table_a, table_b, z, q, out):  # type: ignore[no-untyped-def]
+@compiled
+def pair_quantiles(
+    m: Array, sign: Array, sub: Array, shared: float, table_a: Array, table_b: Array, z: Array, q: Array, out: Array
+) -> None:
     """Quantiles of logistic(T(a)) logistic(T(b)) for one bivariate normal; `shared` is the covariance within."""
     sa, sb = math.sqrt(sub[0, 0]), math.sqrt(sub[1, 1])
     # u, along which we integrate, has the smaller spread; the other keeps the step smooth.
@@ -98,15 +100,27 @@ def pair_quantiles(m, sign, sub, shared, table_a, table_b, z, q, out):  # type: 
         last_z = z[k]
 
 
-@njit(cache=True)
+@compiled
 def _logit_product(a: float, b: float) -> float:
     """Logit of logistic(a) logistic(b)."""
     x, y = math.exp(-max(a, -300.0)), math.exp(-max(b, -300.0))
     return -math.log(max(x + y + x * y, 1e-300))
 
 
-@njit(cache=True)
-def _pair_cdf(omega, mu, su, mv, sv, rho, eu, ev, shared, table_u, table_v):  # type: ignore[no-untyped-def]
+@compiled
+def _pair_cdf(
+    omega: float,
+    mu: float,
+    su: float,
+    mv: float,
+    sv: float,
+    rho: float,
+    eu: float,
+    ev: float,
+    shared: float,
+    table_u: Array,
+    table_v: Array,
+) -> tuple[float, float]:
     """P(logit W <= omega) and its derivative; the curve lives in p = T(u), r = T(v)."""
     R = math.exp(-omega)  # 1 / w - 1; the curve is x + y + x y = R with x = exp(-p), y = exp(-r)
     w = logistic(omega)
@@ -176,15 +190,31 @@ def _pair_cdf(omega, mu, su, mv, sv, rho, eu, ev, shared, table_u, table_v):  # 
     return 1.0 - above, density
 
 
-@njit(cache=True)
-def _rate(t, R, su, sc, beta, steepest_u, steepest_v):  # type: ignore[no-untyped-def]
+@compiled
+def _rate(t: float, R: float, su: float, sc: float, beta: float, steepest_u: float, steepest_v: float) -> float:
     """How fast the standard normals that u and v stand for move along the curve."""
     s = _curve(t, R)[2]
     return math.hypot(s * steepest_u / su, ((s - 1.0) * steepest_v - beta * s * steepest_u) / sc)
 
 
-@njit(cache=True)
-def _trapezoid(t_lo, t_hi, h, R, w, mu, su, mv, sc, beta, eu, ev, shared, table_u, table_v):  # type: ignore[no-untyped-def]
+@compiled
+def _trapezoid(
+    t_lo: float,
+    t_hi: float,
+    h: float,
+    R: float,
+    w: float,
+    mu: float,
+    su: float,
+    mv: float,
+    sc: float,
+    beta: float,
+    eu: float,
+    ev: float,
+    shared: float,
+    table_u: Array,
+    table_v: Array,
+) -> tuple[float, float]:
     """P(logit W <= omega) and its derivative by equal steps in t; the integrand has died away at both ends."""
     above = 0.0
     density = 0.0
@@ -211,14 +241,14 @@ def _trapezoid(t_lo, t_hi, h, R, w, mu, su, mv, sc, beta, eu, ev, shared, table_
     return 1.0 - above * h / su, density * (1.0 - w) * h / (su * sc)
 
 
-@njit(cache=True)
+@compiled
 def _steepest(table: Array) -> float:
     """Largest slope of the inverse of T."""
     return 1.0 / table[:, 2].min() if table.shape[0] else 1.0
 
 
-@njit(cache=True)
-def _curve(t, R):  # type: ignore[no-untyped-def]
+@compiled
+def _curve(t: float, R: float) -> tuple[float, float, float]:
     """exp(-|t|), x = exp(-p) and dp / dt on the curve x + y + x y = R with y = x exp(t); no overflow."""
     e = math.exp(-abs(t))
     root = (1.0 + e) + math.sqrt((1.0 + e) ** 2 + 4.0 * R * e)
@@ -229,8 +259,10 @@ def _curve(t, R):  # type: ignore[no-untyped-def]
     return e, x, e * (x + 1.0) / (2.0 * e * x + 1.0 + e)
 
 
-@njit(cache=True)
-def path_quantiles(m, sign, factor, inside, table, q, draws, out):  # type: ignore[no-untyped-def]
+@compiled
+def path_quantiles(
+    m: Array, sign: float, factor: Array, inside: Array, table: Array, q: Array, draws: Array, out: Array
+) -> None:
     """Quantiles of a product of three or more logistics, the last one integrated exactly given draws."""
     last = m.size - 1
     count = draws.shape[0]

@@ -22,12 +22,15 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 import numpy.typing as npt
-from numba import njit, prange
+from numba import prange
 
+from texture.compiling import compiled
 from texture.composition.closure import Array
-from texture.composition.expected import as_moments, normal_draws, refuse_matrix
-from texture.composition.kernels import cholesky, has_nan, inverse_row, logistic_normal, normal_quantile
+from texture.composition.draws import normal_draws
+from texture.composition.logistic_normal import logistic_normal, normal_quantile
+from texture.composition.moments import as_moments, refuse_matrix
 from texture.composition.product import pair_quantiles, path_quantiles
+from texture.composition.rows import cholesky, draw, has_nan, inverse_row, order_statistics
 from texture.composition.smoothing import KNOTS, fill_table
 from texture.errors import CompositionError
 
@@ -136,8 +139,8 @@ def _share_out(logratio: "LogRatio", covariance: Array, within: npt.ArrayLike) -
     return covariance * outer[:, :, None] * outer[:, None, :], covariance * inner[:, :, None] * inner[:, None, :]
 
 
-@njit(cache=True)
-def _tamed(mean, covariance, inside):  # type: ignore[no-untyped-def]
+@compiled
+def _tamed(mean: Array, covariance: Array, inside: Array) -> tuple[Array, Array, Array]:
     """Moments without the extremes that would overflow: means of at most 120, standard deviations of at most 25.
 
     Larger spreads are scaled down together with the means: every quantile that is not 0 or 1 to many digits is then
@@ -151,7 +154,7 @@ def _tamed(mean, covariance, inside):  # type: ignore[no-untyped-def]
     return centre, covariance * factor**2, inside * factor**2
 
 
-@njit(cache=True, parallel=True)
+@compiled(parallel=True)
 def _tree_kernel(mean, covariance, inside, index, sign, z, q, draws, out, status):  # type: ignore[no-untyped-def]
     n, d = mean.shape
     parts, depth = index.shape
@@ -199,7 +202,7 @@ def _tree_kernel(mean, covariance, inside, index, sign, z, q, draws, out, status
                 path_quantiles(m[:length], s[length - 1], factor, sub_in, table, q, draws, out[:, row, part])
 
 
-@njit(cache=True, parallel=True)
+@compiled(parallel=True)
 def _draw_kernel(mean, covariance, index, sign, basis, q, draws, out, status):  # type: ignore[no-untyped-def]
     """Order statistics of draws: closed exp(y @ basis), or products of clipped shares where basis is empty."""
     n, d = mean.shape
@@ -217,17 +220,8 @@ def _draw_kernel(mean, covariance, index, sign, basis, q, draws, out, status):  
         x = np.empty(parts)
         shares = np.empty((2, d))
         for k in range(count):
-            for i in range(d):
-                y[i] = mean[row, i]
-                for j in range(i + 1):
-                    y[i] += factor[i, j] * draws[k, j]
+            draw(mean[row], factor, draws[k], y)
             inverse_row(y, index, sign, basis, True, shares, x)
             for p in range(parts):
                 values[p, k] = x[p]
-        for p in range(parts):
-            ordered = np.sort(values[p])
-            for level in range(q.size):
-                place = min(max(q[level] * count - 0.5, 0.0), count - 1.0)
-                below = min(int(place), count - 2)
-                share = place - below
-                out[level, row, p] = ordered[below] * (1.0 - share) + ordered[below + 1] * share
+        order_statistics(values, q, out[:, row])

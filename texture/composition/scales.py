@@ -2,15 +2,12 @@
 
 from __future__ import annotations
 
-import math
 from dataclasses import dataclass
 from typing import Literal
 
 import numpy as np
 import numpy.typing as npt
-from numba import njit
 
-from texture.composition.kernels import logistic_normal
 from texture.errors import CompositionError
 
 __all__ = ["Scale"]
@@ -85,12 +82,7 @@ class Scale:
             return np.array(m)
         if self.name == "log":
             return np.asarray(np.exp(m + 0.5 * v))
-        return np.asarray(self.upper * _logistic_means(m.ravel(), v.ravel()).reshape(m.shape))
+        # Compiled: imported only where it is needed.
+        from texture.composition.logistic_normal import logistic_means
 
-
-@njit(cache=True)
-def _logistic_means(mean, variance):  # type: ignore[no-untyped-def]
-    out = np.empty(mean.size)
-    for i in range(mean.size):
-        out[i] = math.nan if math.isnan(mean[i] + variance[i]) else logistic_normal(mean[i], variance[i])
-    return out
+        return np.asarray(self.upper * logistic_means(m.ravel(), v.ravel()).reshape(m.shape))

@@ -2,10 +2,9 @@
 
 import math
 
-from numba import njit
-
+from texture.compiling import compiled
 from texture.composition.closure import Array
-from texture.composition.kernels import logistic_normal, logistic_normal_slope
+from texture.composition.logistic_normal import logistic_normal, logistic_normal_slope
 
 __all__ = ["KNOTS", "fill_table", "from_table"]
 
@@ -15,7 +14,7 @@ _LEAST_SLOPE = 0.01
 _REACH = 5.0  # standard deviations that the knots cover; straight on beyond
 
 
-@njit(cache=True)
+@compiled
 def fill_table(mean: float, spread: float, variance: float, table: Array) -> None:
     """Knots of T(b) = logit E[logistic(b + N(0, variance))]: columns b, T, dT/db."""
     reach = max(_REACH * spread, 0.5)
@@ -34,8 +33,8 @@ def fill_table(mean: float, spread: float, variance: float, table: Array) -> Non
         table[k, 2] = slope
 
 
-@njit(cache=True)
-def _find(table, column, value):  # type: ignore[no-untyped-def]
+@compiled
+def _find(table: Array, column: int, value: float) -> int:
     low, high = 0, KNOTS - 1
     while high - low > 1:
         middle = (low + high) // 2
@@ -46,8 +45,8 @@ def _find(table, column, value):  # type: ignore[no-untyped-def]
     return low
 
 
-@njit(cache=True)
-def from_table(value, sign, table, backwards):  # type: ignore[no-untyped-def]
+@compiled
+def from_table(value: float, sign: float, table: Array, backwards: bool) -> tuple[float, float]:
     """T(value), or its inverse, and the slope there; `sign` -1 for a coordinate turned round (T is odd)."""
     if table.shape[0] == 0:
         return value, 1.0

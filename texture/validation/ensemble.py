@@ -16,8 +16,10 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
-from numba import njit, prange
+from numba import prange
 from numpy.typing import NDArray
+
+from texture.compiling import compiled
 
 __all__ = ["DrawScores", "pit_share_below", "score_draws"]
 
@@ -74,7 +76,7 @@ def pit_share_below(pit_low: Floats, pit_high: Floats, level: float) -> Floats:
     return np.where(width > 0.0, np.clip(inside, 0.0, 1.0), np.where(np.isnan(width), np.nan, pit_low < level))
 
 
-@njit(cache=True, parallel=True)
+@compiled(parallel=True)
 def _score_kernel(draws, observed, limit, crps, energy, pit):  # type: ignore[no-untyped-def]
     n, m, parts = draws.shape
     for row in prange(n):

@@ -1,7 +1,4 @@
-"""Compiled pieces that expected fractions, quantiles and class odds share.
-
-All work on one row at a time; loops over rows run in parallel and give the same bytes whatever the thread count,
-as no row depends on another.
+"""Compiled functions of one number: the normal distribution, the logistic function, and the one under the other.
 
 References
 ----------
@@ -12,15 +9,13 @@ logistic-normal integral. In: Balakrishnan, N. (ed.), Handbook of the Logistic D
 import math
 
 import numpy as np
-from numba import njit
 
+from texture.compiling import compiled
 from texture.composition.closure import Array
 
 __all__ = [
-    "cholesky",
-    "has_nan",
-    "inverse_row",
     "logistic",
+    "logistic_means",
     "logistic_normal",
     "logistic_normal_slope",
     "mixture_scales",
@@ -66,19 +61,19 @@ _WEIGHT_5 = np.array([0.02331837, 0.20770156, 0.42983276, 0.29485252, 0.04429479
 _SCALE_5 = np.array([0.29151215, 0.41096707, 0.57627258, 0.80399089, 1.12281045])
 
 
-@njit(cache=True)
+@compiled
 def normal_cdf(x: float) -> float:
     """Standard normal distribution function."""
     return 0.5 * math.erfc(-x * _SQRT_HALF)
 
 
-@njit(cache=True)
+@compiled
 def normal_pdf(x: float) -> float:
     """Standard normal density."""
     return _INV_SQRT_2PI * math.exp(-0.5 * x * x)
 
 
-@njit(cache=True)
+@compiled
 def upper_tail(x: float, density: float) -> float:
     """1 - normal_cdf(x) from the density at x, error below 7.5e-8: half the price where the density is at hand.
 
@@ -89,7 +84,7 @@ def upper_tail(x: float, density: float) -> float:
     return tail if x >= 0.0 else 1.0 - tail
 
 
-@njit(cache=True)
+@compiled
 def normal_quantile(p: float) -> float:
     """Standard normal quantile for p in (0, 1): a rational start, then Newton steps with the exact function.
 
@@ -103,7 +98,7 @@ def normal_quantile(p: float) -> float:
     return z if p <= 0.5 else -z
 
 
-@njit(cache=True)
+@compiled
 def logistic(x: float) -> float:
     """1 / (1 + exp(-x)) without overflow."""
     if x >= 0.0:
@@ -112,7 +107,7 @@ def logistic(x: float) -> float:
     return e / (1.0 + e)
 
 
-@njit(cache=True)
+@compiled
 def logistic_normal(mean: float, variance: float) -> float:
     """E[logistic(N(mean, variance))], error below 3e-9 for any mean and variance."""
     if variance <= 0.0:
@@ -124,7 +119,7 @@ def logistic_normal(mean: float, variance: float) -> float:
     return min(total, 1.0)
 
 
-@njit(cache=True)
+@compiled
 def logistic_normal_slope(mean: float, variance: float) -> float:
     """Derivative of `logistic_normal` by the mean."""
     total = 0.0
@@ -134,7 +129,7 @@ def logistic_normal_slope(mean: float, variance: float) -> float:
     return total
 
 
-@njit(cache=True)
+@compiled
 def smooth_logistic(mean: float, scales: Array) -> float:
     """The same integral with five terms (error below 1e-6); `scales` from `mixture_scales` for one variance."""
     total = 0.0
@@ -143,7 +138,7 @@ def smooth_logistic(mean: float, scales: Array) -> float:
     return total
 
 
-@njit(cache=True)
+@compiled
 def mixture_scales(variance: float, out: Array) -> None:
     """Fill `out` (5,) with what `smooth_logistic` needs for one variance."""
     for k in range(_WEIGHT_5.size):
@@ -151,84 +146,10 @@ def mixture_scales(variance: float, out: Array) -> None:
         out[k] = s / math.sqrt(1.0 + s * s * variance)
 
 
-@njit(cache=True)
-def cholesky(covariance: Array, out: Array) -> bool:
-    """Lower factor of a positive semi-definite matrix into `out`; False where it is not one.
-
-    A pivot below 1e-12 of its variance is taken as zero (a coordinate that follows from the others), a
-    clearly negative one is refused.
-    """
-    n = covariance.shape[0]
-    for i in range(n):
-        for j in range(n):
-            out[i, j] = 0.0
-    for j in range(n):
-        pivot = covariance[j, j]
-        for k in range(j):
-            pivot -= out[j, k] * out[j, k]
-        floor = 1e-12 * abs(covariance[j, j])
-        # Rounding in a matrix given to single precision: allow that, not more.
-        if pivot < -1e-6 * abs(covariance[j, j]) or covariance[j, j] < 0.0:
-            return False
-        if pivot <= floor:
-            for i in range(j + 1, n):
-                rest = covariance[i, j]
-                for k in range(j):
-                    rest -= out[i, k] * out[j, k]
-                if rest * rest > 1e-6 * abs(covariance[i, i]) * (abs(covariance[j, j]) + floor):
-                    return False
-            continue
-        root = math.sqrt(pivot)
-        out[j, j] = root
-        for i in range(j + 1, n):
-            value = covariance[i, j]
-            for k in range(j):
-                value -= out[i, k] * out[j, k]
-            out[i, j] = value / root
-    return True
-
-
-@njit(cache=True)
-def has_nan(row: Array) -> bool:
-    """Whether any entry is NaN."""
-    return bool(np.isnan(row).any())
-
-
-@njit(cache=True)
-def inverse_row(y, index, sign, basis, clipped, shares, out):  # type: ignore[no-untyped-def]
-    """Parts of one row of coordinates: closed exp(y @ basis), or, where `basis` is empty, products along paths.
-
-    `clipped` takes coordinates as shares, clipped to [0, 1], rather than as their logits; `shares` (2, d) is scratch.
-    """
-    parts, depth = index.shape
-    if basis.size:
-        top = -math.inf
-        for p in range(parts):
-            out[p] = 0.0
-            for i in range(y.size):
-                out[p] += y[i] * basis[i, p]
-            top = max(top, out[p])
-        total = 0.0
-        for p in range(parts):
-            out[p] = math.exp(out[p] - top)
-            total += out[p]
-        for p in range(parts):
-            out[p] /= total
-        return
-    for i in range(y.size):
-        if clipped:
-            shares[0, i] = min(max(y[i], 0.0), 1.0)
-            shares[1, i] = 1.0 - shares[0, i]
-        else:
-            decay = math.exp(-abs(y[i]))
-            large = 1.0 / (1.0 + decay)
-            small = decay * large
-            shares[0, i] = large if y[i] >= 0.0 else small
-            shares[1, i] = small if y[i] >= 0.0 else large
-    for p in range(parts):
-        out[p] = 1.0
-        for a in range(depth):
-            i = index[p, a]
-            if i < 0:
-                break
-            out[p] *= shares[0, i] if sign[p, a] > 0.0 else shares[1, i]
+@compiled
+def logistic_means(mean: Array, variance: Array) -> Array:
+    """`logistic_normal` of each pair, shape (n,); NaN where one of the two is."""
+    out = np.empty(mean.size)
+    for i in range(mean.size):
+        out[i] = math.nan if math.isnan(mean[i] + variance[i]) else logistic_normal(mean[i], variance[i])
+    return out
