@@ -26,6 +26,7 @@ FULL = {
     "members beside the kriging alone": ["benchmarks.members"],
     "memory of members": ["benchmarks.members", "--memory"],
     "a million compositions": ["benchmarks.composition"],
+    "validation of 10,000 stations": ["benchmarks.validation"],
     "reading spreadsheets": ["benchmarks.intake"],
     "a bed of ten million cells": ["benchmarks.build"],
 }

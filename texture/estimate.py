@@ -12,11 +12,11 @@ from texture.composition.classes import class_numbers
 from texture.progress import Progress
 from texture.structure.averaging import averaged_out, sampling_distance_m
 from texture.targets import Target, cell_points
-from texture.validation.reach import beyond_reach
 
 if TYPE_CHECKING:
     from texture.mapping import Mapper
     from texture.structure.plane import Plane
+    from texture.support import Support
     from texture.zones import Share
 
 __all__ = ["CELLS_AT_ONCE", "Estimate", "estimate_on", "mean_in_cells"]
@@ -53,6 +53,11 @@ class Estimate:
     class_probability : float array, shape (n,)
     outside : bool array, shape (n,)
         Cells that have too few stations within the radius that the user set; what stands here for them is of the nearest.
+    sample_distance_m : float array, shape (n,)
+        From the cell's centre to the nearest sample.
+    expected_error : float array, shape (n,)
+        Root mean square error over the parts that held-out stations as unlike the others as this cell had; NaN where
+        none was scored.
     """
 
     fractions: Floats
@@ -63,6 +68,8 @@ class Estimate:
     texture_class: NDArray[np.int8]
     class_probability: Singles
     outside: NDArray[np.bool_]
+    sample_distance_m: Singles
+    expected_error: Singles
 
     @property
     def within_radius(self) -> Estimate:
@@ -82,8 +89,7 @@ def estimate_on(
     target: Target,
     mapper: Mapper,
     plane: Plane,
-    stations: Floats,
-    reach_m: float,
+    support: Support,
     per_side: int,
     progress: Progress,
     median: bool = False,
@@ -98,10 +104,8 @@ def estimate_on(
         The fitted method.
     plane : Plane
         From longitude and latitude to the metres that the method was fitted in.
-    stations : float array, shape (s, 2)
-        Stations in the plane, to tell which cells are beyond the tested reach.
-    reach_m : float
-        Cells whose centre lies further than this from every station are flagged as extrapolated.
+    support : Support
+        Cells whose centre is less like every station than its reach are flagged as extrapolated.
     per_side : int
         Points along each side of a cell that its value is averaged over.
     progress : Progress
@@ -117,8 +121,9 @@ def estimate_on(
     fractions, quantiles = np.full((n, parts), np.nan), np.full((len(QUANTILES), n, parts), np.nan, dtype=np.float32)
     mean, variance = np.full((2, n, d), np.nan, dtype=np.float32)
     evidence, classes = np.zeros(n, dtype=np.int8), np.zeros(n, dtype=np.int8)
-    probability, outside = np.full(n, np.nan, dtype=np.float32), np.zeros(n, dtype=bool)
-    apart_m = sampling_distance_m(stations)
+    probability, away, error = np.full((3, n), np.nan, dtype=np.float32)
+    outside = np.zeros(n, dtype=bool)
+    apart_m = sampling_distance_m(support.stations)
     with progress.stage("estimate", total=cells.size) as advance:
         for start in range(0, cells.size, CELLS_AT_ONCE):
             some = cells[start : start + CELLS_AT_ONCE]
@@ -136,12 +141,9 @@ def estimate_on(
             quantiles[:, some] = mapper.impose(mapper.cell_quantiles(m, v, QUANTILES, averaging), share)
             classes[some], probability[some] = mapper.likely_class(m, v)
             centre = inside.mean(axis=1)
-            beyond = (
-                beyond_reach(centre, stations, reach_m)
-                if share is None
-                else _beyond(centre, stations, reach_m, share, heard)
-            )
-            evidence[some] = np.where(beyond, EXTRAPOLATED, SUPPORTED)
+            away[some], unlike = support.at(centre) if share is None else _by_zone(centre, support, share, heard)
+            error[some] = support.curve.at(unlike)
+            evidence[some] = np.where(unlike <= support.reach_m, SUPPORTED, EXTRAPOLATED)
             fell_back = rung.reshape(*shape).max(axis=1) > 0
             evidence[some[fell_back]] = WIDER
             outside[some[fell_back]] = mapper.has_radius
@@ -152,7 +154,7 @@ def estimate_on(
                 probability[some[own]] = np.nan
                 mean[some[own]], variance[some[own]] = np.nan, np.nan
             advance(some.size)
-    return Estimate(fractions, quantiles, mean, variance, evidence, classes, probability, outside)
+    return Estimate(fractions, quantiles, mean, variance, evidence, classes, probability, outside, away, error)
 
 
 def mean_in_cells(fractions: Floats, shape: tuple[int, int]) -> Floats:
@@ -161,11 +163,11 @@ def mean_in_cells(fractions: Floats, shape: tuple[int, int]) -> Floats:
     return np.asarray(mean / mean.sum(axis=1, keepdims=True))
 
 
-def _beyond(centre: Floats, stations: Floats, reach_m: float, share: Share, heard: Heard | None) -> NDArray[np.bool_]:
-    """Cells that the stations which speak in their zone do not reach."""
-    beyond = np.ones(len(centre), dtype=bool)
+def _by_zone(centre: Floats, support: Support, share: Share, heard: Heard | None) -> tuple[Floats, Floats]:
+    """As `Support.at`, of the stations that speak in each cell's zone; NaN where none does."""
+    away, unlike = np.full((2, len(centre)), np.nan)
     for number in np.unique(share.zone).tolist():
-        some, speak = share.zone == number, stations if heard is None else stations[heard[number]]
-        if len(speak):
-            beyond[some] = beyond_reach(centre[some], speak, reach_m)
-    return beyond
+        some, speak = share.zone == number, support if heard is None else support.among(heard[number])
+        if len(speak.stations):
+            away[some], unlike[some] = speak.at(centre[some])
+    return away, unlike

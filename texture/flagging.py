@@ -22,17 +22,13 @@ def flag_stations(stations: Stations, mapper: Mapper, observations: Observations
     """
     if not mapper.solves or mapper.predictor.neighbourhood == "nearest":
         return stations
-    from threadpoolctl import threadpool_limits  # type: ignore[import-untyped]  # ships no annotations
-
     from texture.predict.leave_out import leave_out
 
     z = np.full((observations.count, len(mapper.column_names)), np.nan)
     everywhere = [(np.arange(observations.count), mapper.predictor)]
-    # Matrices of a hundred rows: a second thread takes ten times longer.
-    with threadpool_limits(limits=1, user_api="blas"):
-        # A zone's own stations come last: each is judged where it is heard and nowhere else, as the map hears it.
-        for index, kriging in everywhere if mapper.by_zone is None else mapper.by_zone.fitted.values():
-            mean, variance = leave_out(kriging)
-            with np.errstate(invalid="ignore"):  # a coordinate that a station says nothing of
-                z[index] = (kriging.stations.values - mean) / np.sqrt(variance)
+    # A zone's own stations come last: each is judged where it is heard and nowhere else, as the map hears it.
+    for index, kriging in everywhere if mapper.by_zone is None else mapper.by_zone.fitted.values():
+        mean, variance = leave_out(kriging)
+        with np.errstate(invalid="ignore"):  # a coordinate that a station says nothing of
+            z[index] = (kriging.stations.values - mean) / np.sqrt(variance)
     return stations.with_outliers(z, observations.rows)

@@ -26,6 +26,7 @@ from texture.quantities import learn_quantities, map_quantities
 from texture.recipe import Recipe, with_method
 from texture.recipe.file import read_recipe
 from texture.result import Intake, Result, Validated
+from texture.resuming import close_journal, open_journal
 from texture.second_look import second_look
 from texture.sensitivity import CASE_RESULTS, CaseSet, check_cases, make_case_set
 from texture.spaces import make_spaces
@@ -66,7 +67,9 @@ def validate(
 
     recipe, progress = read_recipe(recipe_path, overrides, output, settings), progress or Silent()
     folder = ResultFolder(recipe.output, overwrite)
-    return write_validation(_validated(recipe, progress, Clock()), folder)
+    result = write_validation(_validated(recipe, progress, Clock(), folder.path), folder)
+    close_journal(folder.path)
+    return result
 
 
 def build(
@@ -107,11 +110,11 @@ def build(
     clock, progress = Clock(), progress or Silent()
     recipe = read_recipe(recipe_path, overrides, output, settings)
     folder = ResultFolder(recipe.output, overwrite)
-    found = _validated(recipe, progress, clock, before=check_early)
+    found = _validated(recipe, progress, clock, folder.path, before=check_early)
     target, mapper = found.target, found.mapper
     with clock.stage("estimate"):
         per_side = points_per_side(recipe.target.points_per_cell, found.cell_side_m, found.range_m)
-        estimate = estimate_on(target, mapper, found.plane, found.observations.points, found.reach_m, per_side,
+        estimate = estimate_on(target, mapper, found.plane, found.validation.support, per_side,
                                progress, recipe.method.estimate == "median", found.heard)  # fmt: skip
         quantities = map_quantities(found.quantities, target, found.plane, per_side, progress)
     with clock.stage("second look"), progress.stage("second look"):
@@ -127,7 +130,9 @@ def build(
         found, estimate, per_side, look, bed, clock, moved=moved, inventory=inventory, quantities=quantities
     )
     with drawn_ensemble(result, folder, progress) as (result, maps), clock.stage("write"), progress.stage("write"):
-        return write_all(result, folder, Path(recipe_path), maps)
+        result = write_all(result, folder, Path(recipe_path), maps)
+    close_journal(folder.path)
+    return result
 
 
 def cases(
@@ -176,7 +181,9 @@ def _stations(recipe: Recipe, progress: Progress, before: Check | None = None) -
         return target, place_stations(read_samples(recipe), target, recipe.intake)
 
 
-def _validated(recipe: Recipe, progress: Progress, clock: Clock, before: Check | None = None) -> Validated:
+def _validated(
+    recipe: Recipe, progress: Progress, clock: Clock, output: Path, before: Check | None = None
+) -> Validated:
     with clock.stage("read"):
         target, stations = _stations(recipe, progress, before)
     plane = Plane.choose(stations.table["longitude"].to_numpy(), stations.table["latitude"].to_numpy(), target.crs)
@@ -187,8 +194,9 @@ def _validated(recipe: Recipe, progress: Progress, clock: Clock, before: Check |
     with clock.stage("fit"), progress.stage("fit the spatial structure"):
         plain, treated = fit_candidates(observations, recipe, spaces[recipe.method.tried_with])
     with clock.stage("validate"):
+        journal = open_journal(output, recipe, observations, target)
         validation = validate_methods(
-            observations, target, plane, plain, treated, recipe, progress, spaces=spaces, zones=zones
+            observations, target, plane, plain, treated, recipe, progress, journal, spaces, zones
         )
         recipe = with_method(recipe, validation.method)
         quantities = learn_quantities(stations, observations, validation.folds, recipe, progress, spaces)

@@ -111,7 +111,7 @@ class Validated:
     @property
     def reach_m(self) -> float:
         """Distance from the samples up to which the map has been tested."""
-        return self.validation.reach_m
+        return self.validation.support.reach_m
 
     def scores(self) -> dict[str, dict[str, dict[str, float | None]]]:
         """Method → part → score → value, None where a score could not be made."""

@@ -18,11 +18,11 @@ from texture.progress import Progress
 from texture.recipe import Recipe
 from texture.scoring import Judge, Judged
 from texture.space import PLANE, Space
+from texture.support import Support, find_support
 from texture.validation.choice import Standing, rank_methods
 from texture.validation.columns import Columns
 from texture.validation.folds import Folds, make_folds
 from texture.validation.held_out import HeldOut, ScoreWeights
-from texture.validation.reach import validated_reach_m
 from texture.validation.resampling import block_weights, map_weights
 from texture.zero_choice import Choice, Tried, choose
 
@@ -73,8 +73,8 @@ class Validation:
     folds : Folds
     methods : list of HeldOut
         The map's method first, then those it was compared with.
-    reach_m : float
-        Distance from the samples up to which the map has been tested.
+    support : Support
+        Where the samples support the map, and what error to expect.
     choice : Choice
         Every treatment of zeros that was compared, the simplest first, by one method, and what choosing is worth.
     learned : Learned
@@ -95,7 +95,7 @@ class Validation:
 
     folds: Folds
     methods: list[HeldOut]
-    reach_m: float
+    support: Support
     choice: Choice
     learned: Learned
     plain: Learned
@@ -167,7 +167,13 @@ def validate_methods(
     places = _map_points(target, plane, recipe.seed)
     block_m = _block_m(points, plain.structure, recipe.validation.count)
     folds = make_folds(
-        recipe.validation.folds, points, recipe.validation.count, recipe.seed, targets=places, block_m=block_m
+        recipe.validation.folds,
+        points,
+        recipe.validation.count,
+        recipe.seed,
+        targets=places,
+        block_m=block_m,
+        groups=observations.survey if recipe.validation.group_by == "survey" else None,
     )
     weights = ScoreWeights(map_weights(points, places), block_weights(points, block_m, recipe.seed))
     counts = observations.measured
@@ -220,7 +226,7 @@ def validate_methods(
     return Validation(
         folds,
         [j.held_out for j in methods],
-        validated_reach_m(folds.held_out_distances(points)),
+        find_support(learned.space, learned.structure, points, folds, scored, chosen.held_out),
         choice,
         learned,
         plain,

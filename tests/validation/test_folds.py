@@ -98,6 +98,31 @@ def test_fewer_places_than_folds_is_said():
     assert folds.note == "10 folds were asked, but stations stand at 3 places: 3 folds"
 
 
+@given(st.integers(0, 10_000), st.sampled_from(["matched", "random", "blocks", "each"]))
+@settings(max_examples=20, deadline=None)
+def test_surveys_come_before_places_and_the_design(seed, kind):
+    rng = np.random.default_rng(seed)
+    points = clustered(rng)
+    survey = rng.integers(0, 6, len(points))
+    points[3] = points[np.flatnonzero(survey != survey[3])[0]]  # two surveys at one place: held out together
+    cells = rng.uniform(0, 100_000, (300, 2))
+    folds = make_folds(kind, points, 4, seed, cells, block_m=20_000.0, groups=survey)
+    for number in range(6):
+        assert np.unique(folds.labels[survey == number]).size == 1
+    _, place = np.unique(np.round(points), axis=0, return_inverse=True)
+    for p in np.unique(place):
+        assert np.unique(folds.labels[place.reshape(-1) == p]).size == 1
+
+
+def test_fewer_surveys_than_folds_is_said():
+    points = np.random.default_rng(0).uniform(0, 1000, (30, 2))
+    folds = make_folds("random", points, 10, 1, groups=np.arange(30) % 3)
+    assert folds.count == 3
+    assert folds.note == "10 folds were asked, but stations make 3 separate groups: 3 folds"
+    with pytest.raises(StructureError, match="make 1 group that shares places; expected at least 2"):
+        make_folds("random", points, 10, 1, groups=np.zeros(30, dtype=int))
+
+
 def test_mistakes():
     with pytest.raises(StructureError, match="1 place; expected at least 2"):
         make_folds("random", np.zeros((4, 2)), 2, 1)

@@ -63,6 +63,14 @@ class MapArrays(Protocol):
         """Number of the class, 0 where there is no map, shape (n,)."""
 
     @property
+    def sample_distance_m(self) -> NDArray[np.float32]:
+        """From each cell's centre to the nearest sample, shape (n,)."""
+
+    @property
+    def expected_error(self) -> NDArray[np.float32]:
+        """Root mean square error to expect, shape (n,); NaN where it is not known."""
+
+    @property
     def class_probability(self) -> AnyFloats:
         """Of that class, shape (n,)."""
 
@@ -94,7 +102,7 @@ def texture_dataset(
     -------
     xarray.Dataset
         `<part>_fraction`, `<part>_fraction_quantile` (where the method has a variance), `texture_class` and
-        its probability, `evidence`, `logratio_<i>` and `logratio_<i>_variance`.
+        its probability, `evidence`, `sample_distance`, `expected_error`, `logratio_<i>` and `logratio_<i>_variance`.
     """
     parts = recipe.composition.parts
     with_variance = bool(np.isfinite(estimate.variance[target.active]).any())
@@ -110,6 +118,13 @@ def texture_dataset(
                 long_name=f"quantile of the cell mean of the fraction of {part} by dry mass", units="1",
             )  # fmt: skip
     variables |= _classes(estimate, target, class_words)
+    variables["sample_distance"] = on_cells(
+        target, (), estimate.sample_distance_m, long_name="distance to the nearest sample", units="m"
+    )
+    variables["expected_error"] = on_cells(
+        target, (), estimate.expected_error, units="1",
+        long_name="root mean square error of the fractions that held-out samples as far from the others had",
+    )  # fmt: skip
     for i, name in enumerate(coordinate_names):
         variables[f"logratio_{i + 1}"] = on_cells(
             target, (), estimate.mean[:, i], long_name=f"kriged coordinate {name}", units="1"

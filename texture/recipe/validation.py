@@ -17,6 +17,9 @@ class Validation(Settings):
 
     folds: Literal["matched", "random", "blocks", "each"] = Field("matched", description="how stations are held out")
     count: Annotated[int, Field(ge=2, le=100)] = Field(10, description="number of folds")
+    group_by: Literal["nothing", "survey"] = Field(
+        "nothing", description="hold whole surveys out, to see what the map knows where no survey of its own has been"
+    )
     compare: tuple[MethodName, ...] = Field(
         ("nearest", "inverse_distance", "kriging"), description="methods validated beside the chosen one"
     )

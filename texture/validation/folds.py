@@ -98,6 +98,7 @@ def make_folds(
     seed: int,
     targets: Floats | None = None,
     block_m: float | None = None,
+    groups: Ints | None = None,
 ) -> Folds:
     """Make folds of one design.
 
@@ -112,6 +113,8 @@ def make_folds(
         Places of the map, needed by "matched"; where given, W is reported for every design.
     block_m : float, optional
         Side of a block for "blocks".
+    groups : int array, shape (n,), optional
+        Stations of one group, such as a survey, are never split. They come first, then places, then the design.
 
     Raises
     ------
@@ -119,24 +122,30 @@ def make_folds(
         With fewer than two places, or a design that lacks what it needs.
     """
     points = np.asarray(points, dtype=np.float64)
-    place = _places(points)
+    place = _units(points, groups)
     places = int(place.max()) + 1 if place.size else 0
+    units = "places" if groups is None else "separate groups"
     if places < 2:
-        raise StructureError(f"stations stand at {places} place; expected at least 2 to hold some out")
+        what = f"stand at {places} place" if groups is None else f"make {places} group that shares places"
+        raise StructureError(f"stations {what}; expected at least 2 to hold some out")
     rng = np.random.default_rng(seed)
     note = f"blocks of {block_m:,.0f} m" if kind == "blocks" and block_m else ""
+    verb = "stand at" if groups is None else "make"
     if kind != "each" and places < count:
-        note = _also(note, f"{count} folds were asked, but stations stand at {places} places: {places} folds")
+        note = _also(note, f"{count} folds were asked, but stations {verb} {places} {units}: {places} folds")
         count = places
     random = _deal(places, count, rng)[place]
     if kind == "each":
         labels = place
     elif kind == "random":
         labels = random
+    elif kind == "blocks" and groups is not None:
+        # Surveys that overlap would chain their blocks into one: whole groups are dealt instead.
+        labels, note = _fill(place, count, rng)[place], _also("whole groups instead of blocks", note.partition("; ")[2])
     elif kind == "blocks":
         if block_m is None or not block_m > 0.0:
             raise StructureError(f"block folds need a block size above 0 m; found {block_m}")
-        labels, note = _blocks(points, block_m, count, rng, note)
+        labels, note = _blocks(points, block_m, count, rng, note, place)
     elif kind == "matched":
         if targets is None:
             raise StructureError("matched folds need the places of the map")
@@ -161,13 +170,31 @@ def _matched(points: Floats, targets: Floats, place: Ints, count: int, random: I
 
 
 def _also(note: str, more: str) -> str:
-    return f"{note}; {more}" if note else more
+    return "; ".join(part for part in (note, more) if part)
 
 
 def _places(points: Floats) -> Ints:
     """Number the places; stations within half a metre of a lattice of a metre are at one place."""
     _, place = np.unique(np.round(points), axis=0, return_inverse=True)
     return place.reshape(-1).astype(np.int64)
+
+
+def _units(points: Floats, groups: Ints | None) -> Ints:
+    """Number what is never split: places, or all that groups and places hold together."""
+    place = _places(points)
+    return place if groups is None else _joined(place, np.asarray(groups, dtype=np.int64))
+
+
+def _joined(a: Ints, b: Ints) -> Ints:
+    """Number the smallest sets that split neither what shares a number in `a` nor what does in `b`."""
+    from scipy.sparse import coo_array
+    from scipy.sparse.csgraph import connected_components
+
+    first, second = (np.unique(v, return_inverse=True)[1].reshape(-1) for v in (a, b))
+    size = int(first.max()) + 1
+    links = coo_array((np.ones(first.size), (first, second + size)), shape=(size + int(second.max()) + 1,) * 2)
+    component = connected_components(links, directed=False)[1][first]
+    return np.unique(component, return_inverse=True)[1].reshape(-1).astype(np.int64)
 
 
 def _deal(items: int, count: int, rng: np.random.Generator) -> Ints:
@@ -177,21 +204,29 @@ def _deal(items: int, count: int, rng: np.random.Generator) -> Ints:
     return labels
 
 
-def _blocks(points: Floats, block_m: float, count: int, rng: np.random.Generator, note: str) -> tuple[Ints, str]:
-    """Deal square blocks into folds, the fullest first, each into the emptiest fold."""
+def _blocks(
+    points: Floats, block_m: float, count: int, rng: np.random.Generator, note: str, unit: Ints
+) -> tuple[Ints, str]:
+    """Deal square blocks, those that share a unit together, into folds, the fullest first, each into the emptiest fold."""
     corner = points.min(axis=0)
     _, block = np.unique(np.floor((points - corner) / block_m), axis=0, return_inverse=True)
-    block = block.reshape(-1)
+    block = _joined(block.reshape(-1), unit)
     sizes = np.bincount(block)
     if sizes.size < 2:
         raise StructureError(f"one block of {block_m:g} m holds all stations; choose a smaller block size")
     if sizes.size < count:
         note = _also(note, f"{count} folds were asked, but there are {sizes.size} blocks: {sizes.size} folds")
         count = sizes.size
+    return _fill(block, count, rng)[block], note
+
+
+def _fill(unit: Ints, count: int, rng: np.random.Generator) -> Ints:
+    """Fold of each unit: the fullest first, each into the emptiest fold."""
+    sizes = np.bincount(unit)
     order = rng.permutation(sizes.size)
     order = order[np.argsort(-sizes[order], kind="stable")]
     fold_of, load = np.empty(sizes.size, dtype=np.int64), np.zeros(count)
     for b in order:
         fold_of[b] = int(np.argmin(load))
         load[fold_of[b]] += sizes[b]
-    return fold_of[block], note
+    return fold_of

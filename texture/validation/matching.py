@@ -100,9 +100,8 @@ def match_labels(match: Match, place: Ints, count: int, random: Ints) -> Ints:
     places = int(place.max()) + 1
     if match.random_will_do() or places <= count:
         return random
-    where = np.zeros((places, match.points.shape[1]))
-    where[place] = match.points
     weight = np.bincount(place)
+    where = np.column_stack([np.bincount(place, column) / weight for column in match.points.T])
     largest = LARGEST_OF_TWO if count == 2 else LARGEST_FOLD
     best, least = random, match.statistic(random)
     for clusters in _clusterings(where, count):
