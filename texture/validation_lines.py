@@ -7,14 +7,12 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from texture.validation.choice import cannot_be_told_apart
-from texture.validation.ensemble import pit_share_below
-from texture.validation.scores import QUANTILE_LEVELS
+from texture.validation.scores import quantile_cover
 
 if TYPE_CHECKING:
     from texture.result import Validated
-    from texture.validate import Validation
 
-__all__ = ["calibration_table", "validation_lines", "validation_record"]
+__all__ = ["validation_lines", "validation_record"]
 
 COLUMNS = (
     ("rmse", "RMSE", 3),
@@ -59,21 +57,6 @@ def validation_lines(found: Validated) -> list[str]:
     return lines
 
 
-def calibration_table(validation: Validation) -> list[tuple[float, list[float], list[float]]]:
-    """For each quantile level the share of held-out samples below it, part by part, before and after calibration.
-
-    Both are out of fold: the factors that a station meets were learned without its fold.
-    """
-    table = []
-    for level in QUANTILE_LEVELS:
-        before, after = (
-            [_mean(pit_share_below(low, high, level)) for low, high in zip(d.pit_low.T, d.pit_high.T, strict=True)]
-            for d in (validation.judged.before, validation.chosen.draws)
-        )
-        table.append((level, before, after))
-    return table
-
-
 def validation_record(found: Validated) -> dict[str, Any]:
     """Choice, calibration and folds as plain numbers, None where there are none."""
     validation, parts = found.validation, found.recipe.composition.parts
@@ -87,7 +70,7 @@ def validation_record(found: Validated) -> dict[str, Any]:
         "calibration": None if factors is None else dict(zip(names, factors.tolist(), strict=True)),
         "below_quantile": [
             {"level": level, **{key: dict(zip(parts, map(_known, shares), strict=True)) for key, shares in both}}
-            for level, before, after in calibration_table(validation)
+            for level, before, after in quantile_cover(validation.judged.before, validation.chosen.draws)
             for both in [(("before", before), ("after", after))]
         ],
         "folds": {
@@ -102,11 +85,6 @@ def validation_record(found: Validated) -> dict[str, Any]:
     if validation.judged.settings:
         record["average"] = validation.judged.settings["weights"]
     return record
-
-
-def _mean(values: Any) -> float:
-    known = values[np.isfinite(values)]
-    return float(known.mean()) if known.size else float("nan")
 
 
 def _known(value: Any) -> Any:

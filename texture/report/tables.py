@@ -16,6 +16,7 @@ from texture.report.error_tables import limits_table, methods_table, structure_t
 from texture.report.quantities import quantity_table
 from texture.report.row_tables import audit_table, credits_table, outliers_table, rows_table, set_aside_table
 from texture.report.table import Table
+from texture.report.trust_tables import agreement_table, quantiles_table, standings_table
 
 if TYPE_CHECKING:
     from texture.result import Result
@@ -27,6 +28,9 @@ def page_tables(result: Result) -> dict[str, Table]:
     """Make all tables of the page."""
     return {
         "methods": methods_table(result),
+        "standings": standings_table(result),
+        "quantile_cover": quantiles_table(result),
+        "agreement": agreement_table(result),
         "treatments": treatments_table(result),
         "limits": limits_table(result),
         "structure": structure_table(result),

@@ -12,7 +12,7 @@ from collections.abc import Mapping
 import numpy as np
 from numpy.typing import NDArray
 
-from texture.validation.ensemble import pit_share_below
+from texture.validation.ensemble import DrawScores, pit_share_below
 
 __all__ = [
     "QUANTILE_LEVELS",
@@ -23,6 +23,7 @@ __all__ = [
     "part_scores",
     "pit_histogram",
     "plain_scores",
+    "quantile_cover",
     "r_squared",
     "weighted_mean",
 ]
@@ -121,6 +122,21 @@ def pit_histogram(pit_low: Floats, pit_high: Floats) -> Floats:
     edges = np.linspace(0.0, 1.0, PIT_BINS + 1)[1:-1]
     below = [float(pit_share_below(pit_low[known], pit_high[known], level).mean()) for level in edges]
     return np.diff([0.0, *below, 1.0])
+
+
+def quantile_cover(before: DrawScores, after: DrawScores) -> list[tuple[float, list[float], list[float]]]:
+    """For each quantile level the share of held-out samples below it, part by part, by two distributions of each sample."""
+    table = []
+    for level in QUANTILE_LEVELS:
+        shares = [
+            [
+                float(weighted_mean(pit_share_below(low, high, level), _ones(low))[0])
+                for low, high in zip(d.pit_low.T, d.pit_high.T, strict=True)
+            ]
+            for d in (before, after)
+        ]
+        table.append((level, shares[0], shares[1]))
+    return table
 
 
 def part_scores(
