@@ -147,16 +147,18 @@ def cases(
 
     clock, progress, only = Clock(), progress or Silent(), tuple(only)
     recipe = read_recipe(recipe_path, overrides, output, settings)
-    if recipe.method.name != "best":  # nothing of a case hangs on how other methods do
+    if recipe.method.name not in ("best", "average"):  # nothing of a case hangs on how other methods do
         recipe = recipe.model_copy(update={"validation": recipe.validation.model_copy(update={"compare": ()})})
     folder = ResultFolder(recipe.output, overwrite, CASE_RESULTS)
-    found = _validated(recipe, progress, clock, before=lambda r, t: check_cases(r, t, only))
+    found = _validated(recipe, progress, clock, folder.path, before=lambda r, t: check_cases(r, t, only))
     per_side = points_per_side(recipe.target.points_per_cell, found.cell_side_m, found.range_m)
     with clock.stage("estimate"):
-        estimate = estimate_on(found.target, found.mapper, found.plane, found.observations.points, found.reach_m, per_side,
+        estimate = estimate_on(found.target, found.mapper, found.plane, found.validation.support, per_side,
                                progress, median=recipe.method.estimate == "median")  # fmt: skip
     plan = plan_cases(recipe, found.target)
-    return make_case_set(found, plan, only, per_side, estimate.evidence, folder, progress, clock)
+    made = make_case_set(found, plan, only, per_side, estimate.evidence, folder, progress, clock)
+    close_journal(folder.path)
+    return made
 
 
 def list_cases(
