@@ -5,7 +5,7 @@ from __future__ import annotations
 from typing import TYPE_CHECKING
 
 from texture.output.journal import FoldJournal, fingerprint
-from texture.writing import input_files
+from texture.recipe.paths import named_files
 
 if TYPE_CHECKING:
     from pathlib import Path
@@ -28,7 +28,7 @@ def open_journal(output: Path, recipe: Recipe, observations: Observations, targe
     said = [getattr(observations, name) for name in observations.__dataclass_fields__]
     mapped = [target.longitude, target.latitude, target.active]
     blocks = recipe.model_dump_json(exclude=AFTER)
-    return FoldJournal(output, fingerprint([blocks], [*said, *mapped], input_files(recipe)))
+    return FoldJournal(output, fingerprint([blocks], [*said, *mapped], named_files(recipe)))
 
 
 def close_journal(output: Path) -> None:
