@@ -22,18 +22,17 @@ from typing import Literal
 import numpy as np
 import numpy.typing as npt
 
-from texture.composition.closure import Array, check_parts, clr_inverse
+from texture.composition.closure import Array, clr_inverse
+from texture.composition.coordinate_names import coordinate_name
 from texture.composition.partition import Partition, Split, Tree
-from texture.composition.zeros import REPLACEMENT_RATIO, replace, replace_pair
+from texture.composition.rounding import rounding_noise
+from texture.composition.sides import closed_rows, mean_sides, refuse_zero_sides, side_total, sum_sides
 from texture.errors import CompositionError
 
 __all__ = ["KINDS", "Kind", "LogRatio", "logistic_pair"]
 
 Kind = Literal["tree", "ilr", "alr", "shares"]
 KINDS: tuple[Kind, ...] = ("tree", "ilr", "alr", "shares")
-
-PARTIAL_SUM_TOLERANCE = 0.02
-"""Known parts of an incomplete row may exceed 1 by this much (rounding), not more."""
 
 
 @dataclass(frozen=True)
@@ -133,7 +132,7 @@ class LogRatio:
     @cached_property
     def coordinate_names(self) -> tuple[str, ...]:
         """A formula for each coordinate, such as ``ln(mud / (sand + gravel))``."""
-        return tuple(self._name(split) for split in self.splits)
+        return tuple(coordinate_name(self.kind, self.parts, split) for split in self.splits)
 
     @property
     def amalgamates(self) -> bool:
@@ -173,10 +172,8 @@ class LogRatio:
             For negative or infinite parts, a row of zeros, an incomplete row whose known parts exceed 1 by more
             than 0.02, or a zero when `detection_limit` is 0.
         """
-        rows, shape = self._rows(fractions)
-        coords = np.empty((len(rows), self.n_coordinates))
-        for i, (top, bottom) in enumerate(self._sides(rows)):
-            coords[:, i] = self._coordinate(i, top, bottom)
+        rows, shape = closed_rows(fractions, self.n_parts)
+        coords = self._coordinates(self._sides(rows))
         return coords.reshape(*shape, self.n_coordinates)
 
     def forward_with_noise(
@@ -203,16 +200,14 @@ class LogRatio:
         coords, noise_variance : float arrays, shape (..., D - 1)
             Variance is NaN where the coordinate is.
         """
-        rows, shape = self._rows(fractions)
+        rows, shape = closed_rows(fractions, self.n_parts)
         step = np.asarray(self.detection_limit if resolution is None else resolution, dtype=np.float64)
         if not (np.isfinite(step).all() and (step >= 0).all()):
             raise CompositionError(f"resolution = {resolution!r}, expected finite steps of zero or more")
         step = np.broadcast_to(step, shape).reshape(-1)
         pairs = self._sides(rows)
-        coords = np.empty((len(rows), self.n_coordinates))
-        for i, (top, bottom) in enumerate(pairs):
-            coords[:, i] = self._coordinate(i, top, bottom)
-        noise = self._noise(rows, pairs, step)
+        coords = self._coordinates(pairs)
+        noise = rounding_noise(self, rows, pairs, step)
         out = (*shape, self.n_coordinates)
         return coords.reshape(out), noise.reshape(out)
 
@@ -228,8 +223,8 @@ class LogRatio:
         -------
         sides : list of (numerator, denominator), each of shape (n,)
         """
-        rows, _ = self._rows(fractions)
-        return [(_total(rows, s.numerator), _total(rows, s.denominator)) for s in self.splits]
+        rows, _ = closed_rows(fractions, self.n_parts)
+        return [(side_total(rows, s.numerator), side_total(rows, s.denominator)) for s in self.splits]
 
     def inverse(self, coords: npt.ArrayLike) -> Array:
         """Fractions of coordinates; rows sum to 1.
@@ -308,105 +303,24 @@ class LogRatio:
 
     # -- inside ------------------------------------------------------------------------------------------------------
 
-    def _name(self, split: Split) -> str:
-        top = [self.parts[j] for j in split.numerator]
-        bottom = [self.parts[j] for j in split.denominator]
-        if self.kind == "shares":
-            both = [self.parts[j] for j in sorted(split.numerator + split.denominator)]
-            return _sum(top) if len(both) == self.n_parts else f"{_sum(top)} / {_sum(both)}"
-        if self.kind == "ilr":
-            r, s = len(top), len(bottom)
-            return f"sqrt({r * s}/{r + s}) ln({_geometric(top)} / {_geometric(bottom)})"
-        return f"ln({_sum(top)} / {_sum(bottom)})"
-
-    def _rows(self, fractions: npt.ArrayLike) -> tuple[Array, tuple[int, ...]]:
-        """Closed complete rows, filled partial rows, flattened to 2-D, with the leading shape."""
-        array = check_parts(fractions, n_parts=self.n_parts)
-        rows = array.reshape(-1, self.n_parts)
-        sums = rows.sum(axis=1)
-        partial = np.isnan(sums)
-        if (sums == 0).any():
-            row = int(np.argmax(sums == 0))
-            raise CompositionError(f"row {row} (counted from 0): all parts are zero, expected one above zero")
-        # Rows that sum to 1 to the last few bits are left alone, so that fractions come back as they were.
-        rows = rows / np.where(partial | (np.abs(sums - 1.0) < 4e-16), 1.0, sums)[:, None]
-        if partial.any():
-            self._fill(rows, np.flatnonzero(partial))
-        return rows, array.shape[:-1]
-
-    def _fill(self, rows: Array, partial: npt.NDArray[np.intp]) -> None:
-        """Check incomplete rows; a single unknown part is what the others leave."""
-        some = rows[partial]
-        known = np.nansum(some, axis=1)
-        if (known > 1.0 + PARTIAL_SUM_TOLERANCE).any():
-            worst = int(np.argmax(known > 1.0 + PARTIAL_SUM_TOLERANCE))
-            raise CompositionError(
-                f"row {int(partial[worst])} (counted from 0): known parts sum to {known[worst]:.6g}, expected at most "
-                "1; a row with unknown parts must be in fractions of the whole sample"
-            )
-        unknown = np.isnan(some)
-        single = unknown.sum(axis=1) == 1
-        left = np.broadcast_to(np.maximum(1.0 - known, 0.0)[:, None], some.shape)
-        rows[partial] = np.where(unknown & single[:, None], left, some)
-
     def _sides(self, rows: Array) -> list[tuple[Array, Array]]:
         """Both sides of every split, after replacement; NaN where unknown."""
-        if self.amalgamates:
-            limit = 0.0 if self.kind == "shares" else self.detection_limit
-            pairs = [replace_pair(_total(rows, s.numerator), _total(rows, s.denominator), limit) for s in self.splits]
-        else:
-            replaced = replace(rows, self.detection_limit)
-            pairs = []
-            for s in self.splits:
-                top = _geometric_mean(replaced, s.numerator)
-                bottom = _geometric_mean(replaced, s.denominator)
-                limit = self.detection_limit
-                unknown = (_total(rows, s.numerator) < limit) & (_total(rows, s.denominator) < limit)
-                pairs.append((np.where(unknown, np.nan, top), np.where(unknown, np.nan, bottom)))
-        if self.kind != "shares" and self.detection_limit == 0.0:
-            for top, bottom in pairs:
-                if ((top == 0) | (bottom == 0)).any():
-                    row = int(np.argmax((top == 0) | (bottom == 0)))
-                    raise CompositionError(
-                        f"row {row} (counted from 0): a part is zero, expected positive parts since "
-                        "detection_limit = 0; give a detection limit"
-                    )
+        if self.kind == "shares":
+            return sum_sides(rows, self.splits, 0.0)
+        make = sum_sides if self.amalgamates else mean_sides
+        pairs = make(rows, self.splits, self.detection_limit)
+        if self.detection_limit == 0.0:
+            refuse_zero_sides(pairs)
         return pairs
 
-    def _coordinate(self, i: int, top: Array, bottom: Array) -> Array:
+    def _coordinates(self, pairs: list[tuple[Array, Array]]) -> Array:
         if self.kind == "shares":
-            return top / (top + bottom)
-        logs = np.log(top / bottom)
+            return np.column_stack([top / (top + bottom) for top, bottom in pairs])
+        logs = np.column_stack([np.log(top / bottom) for top, bottom in pairs])
         if self.kind == "ilr":
-            r, s = len(self.splits[i].numerator), len(self.splits[i].denominator)
-            logs *= np.sqrt(r * s / (r + s))
+            sizes = [(len(s.numerator), len(s.denominator)) for s in self.splits]
+            logs *= [np.sqrt(r * s / (r + s)) for r, s in sizes]
         return logs
-
-    def _noise(self, rows: Array, pairs: list[tuple[Array, Array]], step: Array) -> Array:
-        """Delta-method variance of each coordinate; `step` is the rounding step of each row."""
-        limit = self.detection_limit
-
-        def error_variance(side: Array) -> Array:
-            # A replaced side is known to the limit at best, however fine the digits.
-            return np.where(side <= REPLACEMENT_RATIO * limit, np.maximum(step, limit), step) ** 2 / 12.0
-
-        noise = np.empty((len(rows), self.n_coordinates))
-        replaced = None if self.amalgamates else replace(rows, limit)
-        for i, (top, bottom) in enumerate(pairs):
-            if self.kind == "shares":
-                total = top + bottom
-                variance = (error_variance(top) * bottom**2 + error_variance(bottom) * top**2) / total**4
-                # A share lies in [0, 1]: no error is wider than a uniform guess.
-                noise[:, i] = np.minimum(variance, 1.0 / 12.0)
-            elif replaced is None:
-                noise[:, i] = error_variance(top) / top**2 + error_variance(bottom) / bottom**2
-            else:
-                # The same sum over parts, each weighted with its coefficient in the coordinate.
-                noise[:, i] = np.where(np.isnan(top) | np.isnan(bottom), np.nan, 0.0)
-                for j in (*self.splits[i].numerator, *self.splits[i].denominator):
-                    weight = self.partition.balance_basis()[i, j] if self.kind == "ilr" else 1.0
-                    noise[:, i] += weight**2 * error_variance(replaced[:, j]) / replaced[:, j] ** 2
-        return noise
 
     def _coords(self, coords: npt.ArrayLike) -> Array:
         y = np.asarray(coords, dtype=np.float64)
@@ -428,30 +342,3 @@ def logistic_pair(y: Array) -> tuple[Array, Array]:
     small = decay * large
     positive = y >= 0
     return np.where(positive, large, small), np.where(positive, small, large)
-
-
-def _total(rows: Array, columns: tuple[int, ...]) -> Array:
-    """Sum of columns; where one of them is unknown, 1 minus all others if those are known."""
-    total = rows[:, columns[0]].copy()
-    for j in columns[1:]:
-        total += rows[:, j]
-    missing = np.flatnonzero(np.isnan(total))
-    if len(missing):
-        outside = [j for j in range(rows.shape[1]) if j not in columns]
-        total[missing] = np.maximum(1.0 - rows[missing][:, outside].sum(axis=1), 0.0)
-    return total
-
-
-def _geometric_mean(rows: Array, columns: tuple[int, ...]) -> Array:
-    if len(columns) == 1:
-        return rows[:, columns[0]].copy()
-    with np.errstate(divide="ignore"):  # a zero part gives a zero mean, refused later
-        return np.asarray(np.exp(np.log(rows[:, list(columns)]).mean(axis=1)))
-
-
-def _sum(names: list[str]) -> str:
-    return names[0] if len(names) == 1 else "(" + " + ".join(names) + ")"
-
-
-def _geometric(names: list[str]) -> str:
-    return names[0] if len(names) == 1 else f"gmean({', '.join(names)})"
