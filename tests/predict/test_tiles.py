@@ -6,7 +6,7 @@ from hypothesis import strategies as st
 from scipy.spatial import cKDTree
 
 from texture.predict import Kriging
-from texture.predict.neighbours import DEPTH, build_tree, nearest
+from texture.predict.neighbours import build_tree, make_search, nearest
 from texture.predict.tiles import build_tiles
 from texture.structure import Covariance, CovarianceSet, Structure
 
@@ -32,14 +32,13 @@ def test_the_tree_finds_what_scipy_finds(seed, d, n, lattice):
     points = rng.integers(0, 4, (n, d)).astype(float) if lattice else rng.normal(size=(n, d))
     tree = build_tree(points, 8)
     k = min(n, 12)
-    heap, index = np.empty(k), np.empty(k, dtype=np.int64)
-    work = np.empty(DEPTH, dtype=np.int64), np.empty((DEPTH, d + 1))
+    search = make_search(tree, k)
     for place in rng.normal(size=(5, d)):
         expected = np.atleast_1d(cKDTree(points).query(place, k)[0])
-        assert nearest(points, *tree, place, k, np.inf, heap, index, *work) == k
-        assert np.sqrt(np.sort(heap)) == pytest.approx(expected, abs=1e-12)
-        assert len(set(index.tolist())) == k
-        within = nearest(points, *tree, place, k, expected[k // 2] ** 2 * (1 + 1e-12), heap, index, *work)
+        assert nearest(tree, place, k, np.inf, search) == k
+        assert np.sqrt(np.sort(search.heap)) == pytest.approx(expected, abs=1e-12)
+        assert len(set(search.index.tolist())) == k
+        within = nearest(tree, place, k, expected[k // 2] ** 2 * (1 + 1e-12), search)
         assert within == min(k, int((np.linalg.norm(points - place, axis=1) <= expected[k // 2] * (1 + 1e-12)).sum()))
 
 
@@ -101,10 +100,10 @@ def test_tiles_stay_small_and_hold_the_nearest_stations(name):
     cells = points.min(axis=0) + rng.random((300, 2)) * np.ptp(points, axis=0)
     tree = cKDTree(points)
     missing = []
-    for cell, tile in zip(cells, tiles.locate(cells), strict=True):
-        assert (tiles.low[tile] <= cell).all()
-        assert (cell <= tiles.high[tile]).all()
-        own = tiles.stations(tile)
+    begin, tile, weight = tiles.serving(cells)
+    for i, cell in enumerate(cells):
+        first = tile[begin[i] : begin[i + 1]][np.argmax(weight[begin[i] : begin[i + 1]])]
+        own = tiles.stations(first)
         assert len(own) == len(set(own.tolist())) <= 11 * 16 + 3 * 32
         nearest_four = tree.query(cell, 4)[0]
         reached = np.sort(np.linalg.norm(points[own] - cell, axis=1))[:4]

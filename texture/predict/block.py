@@ -1,193 +1,122 @@
-"""One neighbourhood and one block of cells: the kriging equations in the form that needs no backward substitution.
-
-With the covariance matrix of the stations K = U'U, w = U'^-1 k for a cell, and the value and drift columns
-transformed once in the same way (z~ = U'^-1 z, F~ = U'^-1 F), the kriging mean and variance are
-
-    mean     = w'z~ + d'b            d = f0 - F~'w,  b = (F~'F~)^-1 F~'z~
-    variance = C(0) - w'w + d'(F~'F~)^-1 d
+"""Cells of one neighbourhood, a block at a time: forward substitution alone gives their means and variances.
 
 Cells go through in blocks of at most `LANES`, and every inner loop runs along the cells of a block: the compiler turns
 it into vector instructions, and since no operation mixes cells and fast-math is off, a cell gets the same bits
-wherever it stands in whatever batch. Columns stand in the order drift, values, global drift.
+wherever it stands in whatever batch. The formulas are in `texture.predict.equations`.
 """
 
 from __future__ import annotations
 
 import math
+from typing import NamedTuple
 
 import numpy as np
 
+from texture.predict.equations import Factors, Models, padded
 from texture.structure.compiled import add_structures
 from texture.structure.jit import compiled
-from texture.structure.linear import factor, forward
+from texture.structure.linear import forward
 
-__all__ = [
-    "LANES",
-    "block_size",
-    "cell_distances",
-    "column_width",
-    "finish",
-    "gather",
-    "padded",
-    "prepare",
-    "solve_block",
-    "station_distances",
-]
+__all__ = ["LANES", "Cells", "Lanes", "krige_cells", "make_lanes"]
 
 # Measured with 80 stations: forward substitution makes 43 billion multiply-adds a second with 80 or 40 cells in a
 # block and 36 with 64 or 96 (their rows lie a multiple of 512 bytes apart and fall on the same cache sets).
 LANES = 80
 
 
-@compiled
-def padded(count: int) -> int:
-    """Stations rounded up to the four that the factor takes at a time."""
-    return (count + 3) // 4 * 4
+class Cells(NamedTuple):
+    """Places to krige: points (c, d) in the covariances' metric, local drift (c, drifts), global drift (c, g)."""
+
+    points: np.ndarray
+    drift: np.ndarray
+    wide: np.ndarray
+
+
+class Lanes(NamedTuple):
+    """Room for one block of cells, flat: its first part is given the shape that the block has."""
+
+    distance: np.ndarray
+    w: np.ndarray
+    sums: np.ndarray
+    drift: np.ndarray
+    wide: np.ndarray
+    place: np.ndarray
 
 
 @compiled
-def column_width(columns: int) -> int:
-    """Columns rounded up to two vectors of eight: forward substitution on fewer takes longer."""
-    return (columns + 15) // 16 * 16
+def make_lanes(models: Models, capacity: int, lanes: int) -> Lanes:
+    """Room for blocks of at most `lanes` cells and neighbourhoods of at most `capacity` stations."""
+    q, most = models.columns.shape[2], padded(capacity)
+    return Lanes(
+        np.empty(most * lanes),
+        np.empty(most * lanes),
+        np.empty((q + 1) * lanes),
+        np.empty(models.drifts * lanes),
+        np.empty((q - models.drifts - models.values) * lanes),
+        np.empty(models.points.shape[1] * lanes),
+    )
 
 
 @compiled
 def block_size(cells: int) -> int:
     """Places in a block for so many cells: rounded up to a vector of eight, at least two of them."""
-    return max(16, (min(cells, LANES) + 7) // 8 * 8)
+    return max(16, (cells + 7) // 8 * 8)
 
 
 @compiled
-def station_distances(points: np.ndarray, station: np.ndarray, out: np.ndarray) -> None:
-    """Upper triangle of the distances between the stations of one neighbourhood, into `out` (m, m)."""
-    count, d = station.size, points.shape[1]
-    own = np.empty((d, count))
-    for i in range(count):
-        for a in range(d):
-            own[a, i] = points[station[i], a]
-    for i in range(count):
-        row = out[i, i:count]
-        for j in range(row.size):
-            row[j] = 0.0
-        for a in range(d):
-            x = own[a, i]
-            others = own[a, i:]
-            for j in range(row.size):
-                step = x - others[j]
-                row[j] += step * step
-        for j in range(row.size):
-            row[j] = math.sqrt(row[j])
-
-
-@compiled
-def prepare(
+def krige_cells(
+    models: Models,
     station: np.ndarray,
-    between: np.ndarray,
-    structures: np.ndarray,
-    small_scale: float,
-    survey_variance: np.ndarray,
-    noise: np.ndarray,
-    survey: np.ndarray,
-    station_columns: np.ndarray,
-    drifts: int,
-    u: np.ndarray,
-    own: np.ndarray,
-    dropped: np.ndarray,
-    columns: np.ndarray,
-    normal: np.ndarray,
-) -> int:
-    """Factor of one neighbourhood for one model, and its transformed columns; returns the redundant stations.
+    factors: Factors,
+    cells: Cells,
+    which: np.ndarray,
+    lanes: Lanes,
+    mean: np.ndarray,
+    variance: np.ndarray,
+) -> None:
+    """Krige the cells `which` from one neighbourhood.
 
     Parameters
     ----------
-    station : (count,) stations, padded below to m
-    between : (m, m) distances, upper triangle
-    survey_variance : (surveys,); noise, survey : (n,) of all stations
-    station_columns : (n, q) of all stations
-    u : (m, m), own : (m,), dropped : (m,) bool, columns : (m, width), normal : (q, drifts), written
-        `normal` holds the Cholesky factor of F~'F~ in its first rows and each further column's drift coefficients
-        below. A drift column that the neighbourhood cannot tell from the earlier ones has 0 on the diagonal there and
-        is left out.
+    station : (count,) stations that `factors` were made for
+    which : (c,) rows of `cells`
+    lanes : room for blocks; their size decides how many cells go through together, and changes no bit
+    mean : (c, v, values), variance : (c, v), written in the order of `which`
     """
-    count, m, q = station.size, u.shape[0], station_columns.shape[1]
-    for i in range(m):
-        for j in range(columns.shape[1]):
-            columns[i, j] = station_columns[station[i], j] if i < count and j < q else 0.0
-        if i >= count:
-            for j in range(i, m):
-                u[i, j] = 0.0
-            u[i, i] = 1.0
-            own[i] = 0.0
-            continue
-        add_structures(structures, small_scale, between[i, i:count], u[i, i:count])
-        offset = survey_variance[survey[station[i]]]
-        if offset > 0.0:
-            for j in range(i, count):
-                if survey[station[j]] == survey[station[i]]:
-                    u[i, j] += offset
-        u[i, i] += noise[station[i]]
-        for j in range(count, m):
-            u[i, j] = 0.0
-        own[i] = u[i, i]
-    redundant = factor(u, own, dropped)
-    if redundant > 0:
-        for i in range(m):
-            if dropped[i]:
-                for j in range(q):
-                    columns[i, j] = 0.0
-    forward(u, columns)
-    _normal_equations(columns, q, drifts, normal)
-    return redundant
+    v, q, d = models.columns.shape[0], models.columns.shape[2], models.points.shape[1]
+    drifts, values = models.drifts, models.values
+    g = q - drifts - values
+    count = station.size
+    m = padded(count)
+    most = lanes.place.size // d
+    for begin in range(0, which.size, most):
+        block = which[begin : min(begin + most, which.size)]
+        size = block_size(block.size)
+        distance, w = lanes.distance[: count * size], lanes.w[: m * size].reshape(m, size)
+        place, sums = lanes.place[: d * size].reshape(d, size), lanes.sums[: (q + 1) * size].reshape(q + 1, size)
+        drift, wide = lanes.drift[: drifts * size].reshape(drifts, size), lanes.wide[: g * size].reshape(g, size)
+        _gather(block, cells.points, place)
+        _cell_distances(models.points, station, place, distance.reshape(count, size))
+        _gather(block, cells.drift, drift)
+        _gather(block, cells.wide, wide)
+        for k in range(v):
+            structures = models.structures[k, : models.structure_count[k]]
+            _solve_block(
+                factors.u[k, : m * m].reshape(m, m), count, factors.dropped[k], factors.redundant[k], structures,
+                models.small_scale[k], distance, factors.columns[k], q, w, sums,
+            )  # fmt: skip
+            sill = models.small_scale[k] + structures[:, 1].sum()
+            _finish(sums, sill, factors.normal[k], drifts, values, drift, wide, models.global_covariance[k])
+            for c in range(block.size):
+                variance[begin + c, k] = sums[0, c]
+                for j in range(values):
+                    mean[begin + c, k, j] = sums[1 + drifts + j, c]
 
 
 @compiled
-def _product(columns: np.ndarray, a: int, b: int) -> float:
-    total = 0.0
-    for i in range(columns.shape[0]):
-        total += columns[i, a] * columns[i, b]
-    return total
-
-
-@compiled
-def _normal_equations(columns: np.ndarray, q: int, drifts: int, normal: np.ndarray) -> None:
-    """Cholesky factor of the drift's normal matrix and the drift coefficients of all further columns."""
-    for a in range(drifts):
-        for b in range(a + 1):
-            size = _product(columns, a, b)
-            total = size
-            for c in range(b):
-                total -= normal[a, c] * normal[b, c]
-            if a != b:
-                normal[a, b] = total / normal[b, b] if normal[b, b] > 0.0 else 0.0
-            else:
-                # 1e-10: a column that differs from the others by less than 1e-5 of its length tells nothing here.
-                normal[a, a] = math.sqrt(total) if total > 1e-10 * size else 0.0
-    for j in range(drifts, q):
-        for a in range(drifts):
-            total = _product(columns, a, j)
-            for c in range(a):
-                total -= normal[a, c] * normal[j, c]
-            normal[j, a] = total / normal[a, a] if normal[a, a] > 0.0 else 0.0
-        for a in range(drifts - 1, -1, -1):
-            if normal[a, a] == 0.0:
-                normal[j, a] = 0.0
-                continue
-            total = normal[j, a]
-            for c in range(a + 1, drifts):
-                total -= normal[c, a] * normal[j, c]
-            normal[j, a] = total / normal[a, a]
-
-
-@compiled
-def cell_distances(
-    points: np.ndarray, station: np.ndarray, cells: np.ndarray, which: np.ndarray, place: np.ndarray, out: np.ndarray
-) -> None:
-    """Distances of a block's cells to the stations, into `out` (count, lanes); spare lanes repeat the last cell."""
-    d, lanes, used = points.shape[1], out.shape[1], which.size
-    for c in range(lanes):
-        at = which[min(c, used - 1)]
-        for a in range(d):
-            place[a, c] = cells[at, a]
+def _cell_distances(points: np.ndarray, station: np.ndarray, place: np.ndarray, out: np.ndarray) -> None:
+    """Distances of a block's places (d, lanes) to the stations, into `out` (count, lanes)."""
+    d, lanes = points.shape[1], out.shape[1]
     for i in range(station.size):
         s = station[i]
         row = out[i]
@@ -211,7 +140,7 @@ def cell_distances(
 
 
 @compiled
-def solve_block(
+def _solve_block(
     u: np.ndarray,
     count: int,
     dropped: np.ndarray,
@@ -257,7 +186,7 @@ def solve_block(
 
 
 @compiled
-def gather(which: np.ndarray, source: np.ndarray, out: np.ndarray) -> None:
+def _gather(which: np.ndarray, source: np.ndarray, out: np.ndarray) -> None:
     """Columns of `source` (cells, p) at a block's cells, into rows of `out` (p, lanes); spare lanes repeat the last."""
     used = which.size
     for c in range(out.shape[1]):
@@ -267,7 +196,7 @@ def gather(which: np.ndarray, source: np.ndarray, out: np.ndarray) -> None:
 
 
 @compiled
-def finish(
+def _finish(
     sums: np.ndarray,
     sill: float,
     normal: np.ndarray,

@@ -10,7 +10,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from texture.predict.system import System, station_covariance
+from texture.predict.system import System
 
 __all__ = ["Problem"]
 
@@ -25,16 +25,14 @@ class Problem:
 
     def __init__(self, system: System, k: int, rows: Any, place: Array, local: Array, wide: Array) -> None:
         self.covariance = system.covariances[k]
-        self.points, self.place = system.points[rows], place
-        self.noise, self.survey = system.noise[k][rows], system.survey[rows]
-        block = system.station_columns[k][rows]
+        self.points, self.place = system.models.points[rows], place
+        self.noise = system.models.noise[k][rows]
+        block = system.models.columns[k][rows]
         self.drift, self.values = block[:, : system.drifts], block[:, system.drifts]
         self.wide_columns = block[:, system.drifts + system.value_columns :]
         self.local, self.wide = local, wide
-        self.wide_covariance = system.global_covariance[k]
-        self.matrix = station_covariance(
-            self.covariance, self.points, self.noise, system.survey_variance[k], self.survey
-        )
+        self.wide_covariance = system.models.global_covariance[k]
+        self.matrix = system.station_covariance(k, rows)
 
     def gap(self, ours: tuple[float, float], theirs: tuple[float, float]) -> tuple[float, float]:
         """Differences of means over the root of the sill, and of variances over the sill."""

@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 from texture.errors import StructureError
 from texture.structure.covariance import Covariance
 
-__all__ = ["MOST_SURVEYS", "Effects", "estimate_effects"]
+__all__ = ["MOST_SURVEYS", "Effects", "estimate_effects", "station_covariance"]
 
 Array = NDArray[np.float64]
 
@@ -78,6 +78,19 @@ def estimate_effects(
     return Effects(coefficients[1:p].T, covariance[1:p, 1:p], offsets, left)
 
 
+def station_covariance(
+    c: Covariance, metric_points: Array, noise: Array, survey_variance: Array, survey: Ints
+) -> Array:
+    """Covariance of the samples: of the bed, noise and survey offsets (one variance for each survey)."""
+    from texture.structure.compiled import covariance_matrix, distance_matrix
+
+    k: Array = covariance_matrix(c.packed, c.small_scale, distance_matrix(metric_points, metric_points))
+    k += np.diag(noise)
+    if survey_variance.any():
+        k += survey_variance[survey] * (survey[:, None] == survey[None, :])
+    return k
+
+
 def _threads() -> int:
     from numba import get_num_threads
 
@@ -86,8 +99,6 @@ def _threads() -> int:
 
 def _dense_products(points: Array, noise: Array, c: Covariance, columns: Array, effects: int) -> Any:
     from scipy.linalg import cholesky, solve_triangular
-
-    from texture.predict.system import station_covariance
 
     k = station_covariance(c, points, noise, np.zeros(1), np.zeros(len(points), dtype=np.int64))
     # Two exact samples of one place by two surveys would outweigh all others by the inverse of this floor, and the

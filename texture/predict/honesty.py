@@ -91,7 +91,7 @@ def neighbourhood_honesty(
         local, wide = system.cell_columns(len(places), columns)
         metric = system.covariances[0].metric(places)
         used = max(used, min(stations, len(system.rows)))
-        near = cKDTree(system.points).query(metric, k=np.arange(1, min(stations, len(system.rows)) + 1))[1]
+        near = cKDTree(system.models.points).query(metric, k=np.arange(1, min(stations, len(system.rows)) + 1))[1]
         for k, column in enumerate(system.columns):
             base = system.centre[k, 0] + wide @ system.coefficients[k, 0]
 

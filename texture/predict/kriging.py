@@ -304,12 +304,21 @@ class Kriging:
         return variance
 
     def stations_of(self, point: ArrayLike, column: int = 0) -> NDArray[np.int64]:
-        """Row numbers (into what `fit` was given) of the stations that serve one point (d,) in one column."""
+        """Row numbers (into what `fit` was given) of all stations that serve one point (d,) in one column."""
+        return np.unique(np.concatenate([rows for rows, _ in self.neighbourhoods_of(point, column)]))
+
+    def neighbourhoods_of(self, point: ArrayLike, column: int = 0) -> list[tuple[NDArray[np.int64], float]]:
+        """The sets of stations that serve one point (d,) in one column, and the weight of each set's answer.
+
+        Where tiles overlap there is more than one; the weights add up to one. Mean and variance at the point are the
+        weighted averages of what kriging from each set gives.
+        """
         stations, systems = self._ready()
         place = check_points(np.atleast_2d(np.asarray(point, dtype=np.float64)), stations.points.shape[1])
         system = next(s for s in systems if column in s.columns)
         radius2 = np.inf if self.radius_m is None else self.radius_m**2
-        return system.stations_of(place, (radius2, self.at_least, self.per_sector_at_most or 0))
+        served = system.served_by(place, (radius2, self.at_least, self.per_sector_at_most or 0))
+        return [(system.rows[numbers], weight) for numbers, weight in served]
 
     @property
     def systems(self) -> Sequence[Any]:

@@ -14,7 +14,7 @@ from numpy.typing import ArrayLike, NDArray
 
 from texture.errors import StructureError
 from texture.predict.kriging import Kriging
-from texture.predict.system import System, station_covariance
+from texture.predict.system import System
 
 __all__ = ["leave_out"]
 
@@ -73,26 +73,20 @@ def _bordered_inverse(system: System, k: int, rows: Any) -> tuple[Array, Array, 
     """
     from scipy.linalg import cho_factor, cho_solve
 
-    covariance = station_covariance(
-        system.covariances[k],
-        system.points[rows],
-        system.noise[k][rows],
-        system.survey_variance[k],
-        system.survey[rows],
-    )
+    covariance = system.station_covariance(k, rows)
     # The same relative floor as the kernel's: a redundant sample must not spoil the inverse of the others.
     covariance[np.diag_indices(len(covariance))] *= 1.0 + 1e-12
     inverse = cho_solve(cho_factor(covariance, lower=True), np.eye(len(covariance)))
-    drift = system.station_columns[k][rows][:, : system.drifts]
+    drift = system.models.columns[k][rows][:, : system.drifts]
     weighted = inverse @ drift
     bordered = inverse - weighted @ np.linalg.pinv(drift.T @ weighted, hermitian=True) @ weighted.T
-    return bordered, bordered @ system.station_columns[k][rows, system.drifts], inverse
+    return bordered, bordered @ system.models.columns[k][rows, system.drifts], inverse
 
 
 def _restore(system: System, k: int, row: Any, departure: Any) -> Any:
     """From a departure to the value: the centre, global drift and the survey's offset at the station."""
-    wide = system.global_columns[row] @ system.coefficients[k, 0]
-    return departure + system.centre[k, 0] + wide + system.offsets[k, 0][system.survey[row]]
+    wide = system.wide[row] @ system.coefficients[k, 0]
+    return departure + system.centre[k, 0] + wide + system.offsets[k, 0][system.models.survey[row]]
 
 
 def _leave_groups_out(system: System, labels: NDArray[np.int64], mean: Array, variance: Array) -> None:
@@ -102,7 +96,7 @@ def _leave_groups_out(system: System, labels: NDArray[np.int64], mean: Array, va
     members = [np.flatnonzero(own == g) for g in np.unique(own)]
     for k, column in enumerate(system.columns):
         bordered, weighted, inverse = _bordered_inverse(system, k, np.arange(len(system.rows)))
-        value = system.station_columns[k, :, system.drifts]
+        value = system.models.columns[k, :, system.drifts]
         for group in members:
             block = bordered[np.ix_(group, group)]
             # The drift took away from inv(K) all that the group tells: without it the drift (or the mean) is not known.
@@ -115,15 +109,24 @@ def _leave_groups_out(system: System, labels: NDArray[np.int64], mean: Array, va
 
 
 def _leave_out_of_tiles(system: System, mean: Array, variance: Array) -> None:
-    tiles = system.tiles
-    tile_of = tiles.locate(system.points)
-    for tile in np.unique(tile_of):
-        rows = tiles.stations(int(tile))
-        here = np.flatnonzero(tile_of[rows] == tile)
-        for k, column in enumerate(system.columns):
+    tiles, n = system.tiles, len(system.rows)
+    begin, tile, weight = tiles.serving(system.models.points)
+    station = np.repeat(np.arange(n), np.diff(begin))
+    by_tile = np.argsort(tile, kind="stable")
+    departure, spread = np.zeros((n, len(system.columns))), np.zeros((n, len(system.columns)))
+    for pairs in np.split(by_tile, np.flatnonzero(np.diff(tile[by_tile])) + 1):
+        rows = tiles.stations(int(tile[pairs[0]]))
+        place = np.empty(n, dtype=np.int64)
+        place[rows] = np.arange(len(rows))
+        here = place[station[pairs]]
+        for k in range(len(system.columns)):
             bordered, weighted, inverse = _bordered_inverse(system, k, rows)
-            told = np.diag(bordered)[here] > 1e-10 * np.diag(inverse)[here]
-            spread = 1.0 / np.where(told, np.diag(bordered)[here], np.nan)
-            departure = system.station_columns[k, rows[here], system.drifts] - spread * weighted[here]
-            mean[system.rows[rows[here]], column] = _restore(system, k, rows[here], departure)
-            variance[system.rows[rows[here]], column] = spread
+            own = np.diag(bordered)[here]
+            told = own > 1e-10 * np.diag(inverse)[here]
+            own = 1.0 / np.where(told, own, np.nan)
+            value = system.models.columns[k, station[pairs], system.drifts]
+            departure[station[pairs], k] += weight[pairs] * (value - own * weighted[here])
+            spread[station[pairs], k] += weight[pairs] * own
+    for k, column in enumerate(system.columns):
+        mean[system.rows, column] = _restore(system, k, np.arange(n), departure[:, k])
+        variance[system.rows, column] = spread[:, k]

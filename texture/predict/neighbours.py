@@ -5,14 +5,54 @@ Our own because the kernel asks it from inside compiled loops, where scipy's tre
 
 from __future__ import annotations
 
+from typing import NamedTuple
+
 import numpy as np
 
 from texture.structure.jit import compiled
 
-__all__ = ["DEPTH", "build_tree", "nearest"]
+__all__ = ["DEPTH", "Search", "Tree", "build_tree", "make_search", "nearest", "partition"]
 
 # A median split halves the stations, ties aside; 200 levels are never reached by data, and checked.
 DEPTH = 200
+
+
+class Tree(NamedTuple):
+    """Stations (n, d) and the tree over them.
+
+    Parameters
+    ----------
+    points : float64 array, shape (n, d)
+    nodes : int64 array, shape (m, 5)
+        Split dimension (-1 in a leaf), left child, right child, begin and end of its stations in `order`.
+    splits : float64 array, shape (m,)
+    order : int64 array, shape (n,)
+    """
+
+    points: np.ndarray
+    nodes: np.ndarray
+    splits: np.ndarray
+    order: np.ndarray
+
+
+class Search(NamedTuple):
+    """Room for a search: squared distances and numbers of what was found, and the nodes still to visit."""
+
+    heap: np.ndarray
+    index: np.ndarray
+    stack: np.ndarray
+    offsets: np.ndarray
+
+
+@compiled
+def make_search(tree: Tree, k: int) -> Search:
+    """Room for searches of at most k stations."""
+    return Search(
+        np.empty(k),
+        np.empty(k, dtype=np.int64),
+        np.empty(DEPTH, dtype=np.int64),
+        np.empty((DEPTH, tree.points.shape[1] + 1)),
+    )
 
 
 @compiled
@@ -86,16 +126,8 @@ def partition(points: np.ndarray, order: np.ndarray, begin: int, end: int, dim: 
 
 
 @compiled
-def build_tree(points: np.ndarray, leaf: int) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
-    """k-d tree by median splits across the widest extent, at most `leaf` stations in a leaf (more where they coincide).
-
-    Returns
-    -------
-    nodes : int64 array, shape (m, 5)
-        Split dimension (-1 in a leaf), left child, right child, begin and end of its stations in `order`.
-    splits : float64 array, shape (m,)
-    order : int64 array, shape (n,)
-    """
+def build_tree(points: np.ndarray, leaf: int) -> Tree:
+    """k-d tree by median splits across the widest extent, at most `leaf` stations in a leaf (more where they coincide)."""
     n, d = points.shape
     order = np.arange(n)
     nodes = np.empty((2 * n + 1, 5), dtype=np.int64)
@@ -123,7 +155,7 @@ def build_tree(points: np.ndarray, leaf: int) -> tuple[np.ndarray, np.ndarray, n
                 nodes[count + 1, 3], nodes[count + 1, 4] = middle, end
                 count += 2
         todo += 1
-    return nodes[:count].copy(), splits[:count].copy(), order
+    return Tree(points, nodes[:count].copy(), splits[:count].copy(), order)
 
 
 @compiled
@@ -157,33 +189,14 @@ def _sift_up(heap: np.ndarray, index: np.ndarray, at: int) -> None:
 
 
 @compiled
-def nearest(
-    points: np.ndarray,
-    nodes: np.ndarray,
-    splits: np.ndarray,
-    order: np.ndarray,
-    place: np.ndarray,
-    k: int,
-    bound2: float,
-    heap: np.ndarray,
-    index: np.ndarray,
-    stack: np.ndarray,
-    offsets: np.ndarray,
-) -> int:
+def nearest(tree: Tree, place: np.ndarray, k: int, bound2: float, search: Search) -> int:
     """The k stations nearest to `place` and within the squared distance `bound2`; unsorted, the farthest first.
 
-    Parameters
-    ----------
-    heap, index : float64 and int64 arrays, length >= k
-        Filled with squared distances and station numbers.
-    stack : int64 array (DEPTH,); offsets : float64 array (DEPTH, d + 1)
-        Workspace: nodes still to visit and the box distance to each, by dimension and in total.
-
-    Returns
-    -------
-    int
-        Stations found; fewer than k where the bound or the number of stations stops it.
+    They stand in `search.index`, their squared distances in `search.heap`. Returns how many were found: fewer than k
+    where the bound or the number of stations stops it.
     """
+    points, nodes, splits, order = tree.points, tree.nodes, tree.splits, tree.order
+    heap, index, stack, offsets = search.heap, search.index, search.stack, search.offsets
     d = points.shape[1]
     found = 0
     worst = bound2

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import asdict, dataclass
 from typing import Any
 
@@ -94,27 +95,35 @@ def second_opinion(
     for system in kriging.systems:
         local, wide = system.cell_columns(len(places), columns)
         for i, place in enumerate(places):
-            rows = np.searchsorted(system.rows, kriging.stations_of(place, system.columns[0]))
+            sets = kriging.neighbourhoods_of(place, system.columns[0])
             metric = system.covariances[0].metric(place[None])[0]
             for k, column in enumerate(system.columns):
-                problem = Problem(system, k, rows, metric, local[i], wide[i])
                 base = system.centre[k, 0] + wide[i] @ system.coefficients[k, 0]
                 ours = (mean[i, column] - base, variance[i, column])
-                why = _beyond_pykrige(problem)
-                theirs = problem.dense() if why else _by_pykrige(problem)
+                problems = [
+                    (Problem(system, k, np.searchsorted(system.rows, rows), metric, local[i], wide[i]), weight)
+                    for rows, weight in sets
+                ]
+                why = next((reason for reason in (_beyond_pykrige(p) for p, _ in problems) if reason), "")
                 solvers.add(f"dense solve ({why})" if why else "PyKrige")
-                allowed = problem.tolerance()
-                gap = problem.gap(ours, theirs)
-                if max(gap) > allowed and not why:
-                    gap_dense = problem.gap(ours, problem.dense())
-                    agrees = agrees and max(gap_dense) <= allowed
-                elif max(gap) > allowed:
-                    agrees = False
+                allowed = max(p.tolerance() for p, _ in problems)
+                gap = _gap(ours, problems, Problem.dense if why else _by_pykrige)
+                if max(gap) > allowed:
+                    agrees = agrees and not why and max(_gap(ours, problems, Problem.dense)) <= allowed
                 worst_mean, worst_variance = max(worst_mean, gap[0]), max(worst_variance, gap[1])
                 tolerance = max(tolerance, allowed)
     return SecondOpinion(
         len(places), " and ".join(sorted(solvers)), worst_mean, worst_variance, tolerance, bool(agrees)
     )
+
+
+def _gap(
+    ours: tuple[float, float], problems: list[tuple[Problem, float]], solve: Callable[[Problem], tuple[float, float]]
+) -> tuple[float, float]:
+    """How far our answer is from the weighted average over the neighbourhoods that served the place."""
+    solved = [(*solve(p), weight) for p, weight in problems]
+    theirs = (sum(weight * mean for mean, _, weight in solved), sum(weight * spread for _, spread, weight in solved))
+    return problems[0][0].gap(ours, theirs)
 
 
 def _beyond_pykrige(problem: Problem) -> str:

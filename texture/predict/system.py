@@ -2,15 +2,21 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
-from concurrent.futures import ThreadPoolExecutor
-from typing import Any
+from collections.abc import Sequence
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 from numpy.typing import NDArray
 
 from texture.predict.inputs import Stations
+from texture.predict.threads import in_parts_of_equal_cost
 from texture.structure.covariance import Covariance
+
+if TYPE_CHECKING:
+    from texture.predict.block import Cells
+    from texture.predict.equations import Factors
+    from texture.predict.neighbours import Tree
+    from texture.predict.tiles import Tiles
 
 __all__ = ["MOST_DENSE", "Rule", "System"]
 
@@ -40,73 +46,68 @@ class System:
         mode: str,
         drift: str,
     ) -> None:
+        from texture.predict.effects import estimate_effects
+        from texture.predict.equations import Models
+
         self.columns, self.rows, self.mode = columns, rows, mode
         self.covariances = covariances
         self.neighbours = len(rows) if neighbours is None else neighbours
-        self.points = covariances[0].metric(stations.points[rows])
+        points = covariances[0].metric(stations.points[rows])
         self._metric = covariances[0].metric
         v, n = len(columns), len(rows)
         values = np.concatenate([stations.values[rows][:, columns, None], extra[rows][:, columns]], axis=2)
         self.value_columns = values.shape[2]
-        self.survey = np.zeros(n, dtype=np.int64) if stations.survey is None else stations.survey[rows]
+        survey = np.zeros(n, dtype=np.int64) if stations.survey is None else stations.survey[rows]
         own = np.array([c.noise for c in covariances])
-        self.noise = np.ascontiguousarray((stations.noise_variance[rows][:, columns] + own).T)
-        values = _average_coincident(self.points, values, self.noise, self.survey, covariances)
+        noise = np.ascontiguousarray((stations.noise_variance[rows][:, columns] + own).T)
+        values = _average_coincident(points, values, noise, survey, covariances)
         most = max(1, max(len(c.structures) for c in covariances))
-        self.structures = np.zeros((v, most, 4))
-        self.structure_count = np.array([len(c.structures) for c in covariances], dtype=np.int64)
-        self.small_scale = np.array([c.small_scale for c in covariances])
+        structures = np.zeros((v, most, 4))
         for k, c in enumerate(covariances):
-            self.structures[k, : len(c.structures)] = c.packed
+            structures[k, : len(c.structures)] = c.packed
         # Values are kriged as departures from a plain number, so that large means cost no digits.
         # (Laid out so that a column's sum has the same bits whatever stands beside it.)
         own_means = np.ascontiguousarray(values.transpose(1, 2, 0)).mean(axis=2)
         self.centre = own_means if means is None else np.repeat(means[columns, None], values.shape[2], axis=1)
         departures = values - self.centre
         self._drift_centre, self._drift_scale, station_drift = _standardised(stations.drift, rows)
-        self.local = np.empty((n, 0)) if means is not None else np.ones((n, 1))
+        local = np.empty((n, 0)) if means is not None else np.ones((n, 1))
         wide = np.empty((n, 0))
         if station_drift is not None:
             if drift == "local" or mode == "all":
-                self.local = np.column_stack([self.local, station_drift])
+                local = np.column_stack([local, station_drift])
             else:
                 wide = station_drift
-        self.global_columns = wide
-        surveys = int(self.survey.max()) + 1
-        g = wide.shape[1]
-        self.coefficients, self.global_covariance = np.zeros((v, self.value_columns, g)), np.zeros((v, g, g))
+        self.wide = wide
+        surveys, g = int(survey.max()) + 1, wide.shape[1]
+        self.coefficients = np.zeros((v, self.value_columns, g))
         self.offsets = np.zeros((v, self.value_columns, surveys))
-        self.survey_variance = np.array([[c.survey] * surveys for c in covariances])
+        survey_variance, global_covariance = np.array([[c.survey] * surveys for c in covariances]), np.zeros((v, g, g))
         if mode != "all" and means is None:
-            self._take_out_effects(departures)
+            # A neighbourhood inside one survey cannot tell that survey's offset from the bed; all stations together
+            # can. What is left of the offsets' variance stays with the stations as their survey variance.
+            for k, c in enumerate(covariances):
+                if c.survey == 0.0 and not g:
+                    continue
+                effects = estimate_effects(points, departures[:, k], noise[k], survey, c, wide)
+                self.coefficients[k], global_covariance[k] = effects.coefficients, effects.covariance
+                self.offsets[k], survey_variance[k] = effects.offsets, effects.offset_variance
             departures -= np.einsum("ng,vcg->nvc", wide, self.coefficients)
-            departures -= self.offsets.transpose(2, 0, 1)[self.survey]
-        self.drifts = self.local.shape[1]
+            departures -= self.offsets.transpose(2, 0, 1)[survey]
+        self.drifts = local.shape[1]
         ends = self.drifts + self.value_columns
-        self.station_columns = np.empty((v, n, ends + g))
-        self.station_columns[:, :, : self.drifts] = self.local
-        self.station_columns[:, :, self.drifts : ends] = departures.transpose(1, 0, 2)
-        self.station_columns[:, :, ends:] = self.global_columns
-        self._tiles: Any = None
-        self._tree: Any = None
-        self._factors: list[Any] | None = None
-
-    def _take_out_effects(self, departures: Array) -> None:
-        """Estimate global drift and survey offsets from all stations, where there are any.
-
-        A neighbourhood inside one survey cannot tell that survey's offset from the bed; all stations together can.
-        What is left of the offsets' variance stays with the stations as their survey variance.
-        """
-        from texture.predict.effects import estimate_effects
-
-        for k, c in enumerate(self.covariances):
-            if c.survey == 0.0 and not self.global_columns.shape[1]:
-                continue
-            effects = estimate_effects(
-                self.points, departures[:, k], self.noise[k], self.survey, c, self.global_columns
-            )
-            self.coefficients[k], self.global_covariance[k] = effects.coefficients, effects.covariance
-            self.offsets[k], self.survey_variance[k] = effects.offsets, effects.offset_variance
+        station_columns = np.empty((v, n, ends + g))
+        station_columns[:, :, : self.drifts] = local
+        station_columns[:, :, self.drifts : ends] = departures.transpose(1, 0, 2)
+        station_columns[:, :, ends:] = wide
+        self.models = Models(
+            points, structures, np.array([len(c.structures) for c in covariances], dtype=np.int64),
+            np.array([c.small_scale for c in covariances]), survey_variance, noise, survey, station_columns,
+            self.drifts, self.value_columns, global_covariance,
+        )  # fmt: skip
+        self._tiles: Tiles | None = None
+        self._tree: Tree | None = None
+        self._factors: Factors | None = None
 
     @classmethod
     def make(
@@ -143,21 +144,24 @@ class System:
 
         Returns counts of repaired neighbourhoods and stations.
         """
+        from texture.predict.block import Cells
+
         repairs = np.zeros(2, dtype=np.int64)
         chunk = max(CHUNK // self.value_columns, CHUNK // 16)
         for begin in range(0, len(cells), chunk):
             part = slice(begin, begin + chunk)
             own = self._metric(cells[part])
             local, wide = self.cell_columns(len(own), None if drift is None else drift[part])
+            places = Cells(own, local, wide)
             if len(self.rows) < rule[1]:
-                kriged, spread = self._whole_mean(local, wide)
+                kriged, spread = self._whole_mean(len(own))
                 rung[part, self.columns] = 2
             elif self.mode == "tile":
-                kriged, spread = self._by_tiles(own, local, wide, repairs)
+                kriged, spread = self._by_tiles(places, repairs)
             elif self.mode == "all":
-                kriged, spread = self._by_all(own, local, wide, repairs)
+                kriged, spread = self._by_all(places, repairs)
             else:
-                kriged, spread, fell = self._by_nearest(own, local, wide, rule, repairs)
+                kriged, spread, fell = self._by_nearest(places, rule, repairs)
                 rung[part, self.columns] = fell[:, None]
             kriged += self.centre
             if wide.shape[1]:
@@ -175,29 +179,26 @@ class System:
             fell = [len(self._chosen(own[i], rule)) < rule[1] for i in range(len(own))]
             rung[:, self.columns] = np.array(fell, dtype=np.int8)[:, None]
 
-    def stations_of(self, place: Array, rule: Rule) -> Ints:
-        """Rows of the stations that serve one place (1, d)."""
+    def served_by(self, place: Array, rule: Rule) -> list[tuple[Ints, float]]:
+        """Stations (numbers within this system) that serve one place (1, d), and the weight of what they say.
+
+        More than one set where tiles overlap.
+        """
         own = self._metric(place)
         if self.mode == "all" or len(self.rows) < rule[1]:
-            return self.rows
+            return [(np.arange(len(self.rows)), 1.0)]
         if self.mode == "tile":
-            tiles = self.tiles
-            return np.asarray(self.rows[tiles.stations(int(tiles.locate(own)[0]))])
+            _, tile, weight = self.tiles.serving(own)
+            return [(self.tiles.stations(t), w) for t, w in zip(tile.tolist(), weight.tolist(), strict=True)]
         chosen = self._chosen(own[0], rule)
-        if len(chosen) < rule[1]:
-            chosen = self._chosen(own[0], (np.inf, 1, 0))
-        return self.rows[chosen]
+        return [(chosen if len(chosen) >= rule[1] else self._chosen(own[0], (np.inf, 1, 0)), 1.0)]
 
     def _chosen(self, place: Array, rule: Rule) -> Ints:
-        from texture.predict.neighbours import DEPTH
         from texture.predict.window import choose_nearest
 
         k = min(self.neighbours, len(self.rows))
         station = np.empty(k, dtype=np.int64)
-        stack, offsets = np.empty(DEPTH, dtype=np.int64), np.empty((DEPTH, self.points.shape[1] + 1))
-        nodes, splits, order = self._get_tree()
-        count = choose_nearest(self.points, nodes, splits, order, place, k, rule[0], rule[2], stack, offsets, station)
-        return station[:count]
+        return station[: choose_nearest(self._get_tree(), place, k, rule[0], rule[2], station)]
 
     def cell_columns(self, count: int, drift: Array | None) -> tuple[Array, Array]:
         """Local and global drift columns at cells, scaled as at the stations."""
@@ -205,148 +206,127 @@ class System:
         if drift is None:
             return constant, np.empty((count, 0))
         scaled = (drift - self._drift_centre) / self._drift_scale
-        if self.global_columns.shape[1]:
+        if self.wide.shape[1]:
             return constant, scaled
         return np.column_stack([constant, scaled]), np.empty((count, 0))
 
     @property
-    def tiles(self) -> Any:
+    def tiles(self) -> Tiles:
         """Tiles of these stations, made when first asked for."""
         if self._tiles is None:
             from texture.predict.tiles import build_tiles
 
-            self._tiles = build_tiles(self.points, self.neighbours)
+            self._tiles = build_tiles(self.models.points, self.neighbours)
         return self._tiles
 
-    def _get_tree(self) -> Any:
+    def _get_tree(self) -> Tree:
         if self._tree is None:
             from texture.predict.neighbours import build_tree
-            from texture.predict.tiles import LEAF
+            from texture.predict.union import LEAF
 
-            self._tree = build_tree(self.points, LEAF)
+            self._tree = build_tree(self.models.points, LEAF)
         return self._tree
-
-    def _by_tiles(self, cells: Array, local: Array, wide: Array, repairs: Ints) -> tuple[Array, Array]:
-        from texture.predict.kernel import krige_tiles
-        from texture.predict.tiles import probe_capacity
-
-        tiles = self.tiles
-        tile = tiles.locate(cells)
-        which = np.argsort(tile, kind="stable")
-        used, begins = np.unique(tile[which], return_index=True)
-        begins = np.append(begins, len(cells)).astype(np.int64)
-        mean, variance = self._empty(len(cells))
-        capacity = probe_capacity(self.points.shape[1], self.neighbours, len(self.points))
-
-        def run(first: int, last: int) -> Ints:
-            repaired = np.zeros(2, dtype=np.int64)
-            krige_tiles(
-                used[first:last], begins[first : last + 1], which, cells, local, wide, self.points, tiles.nodes,
-                tiles.splits, tiles.order, tiles.low, tiles.high, tiles.own, self.neighbours, capacity,
-                self.structures, self.structure_count, self.small_scale, self.survey_variance, self.noise, self.survey, self.station_columns,
-                self.drifts, self.global_covariance, mean, variance, repaired,
-            )  # fmt: skip
-            return repaired
-
-        # A tile costs about what 60 of its cells cost.
-        repairs += _on_threads(run, np.diff(begins) + 60)
-        return mean, variance
 
     def _empty(self, count: int) -> tuple[Array, Array]:
         v = len(self.columns)
         return np.empty((count, v, self.value_columns)), np.empty((count, v))
 
-    def _by_nearest(
-        self, cells: Array, local: Array, wide: Array, rule: Rule, repairs: Ints
-    ) -> tuple[Array, Array, NDArray[np.int8]]:
+    def _by_tiles(self, cells: Cells, repairs: Ints) -> tuple[Array, Array]:
+        from texture.predict.kernel import krige_tiles
+        from texture.predict.overlap import average, count_tiles, list_tiles, sort_by_tile
+        from texture.predict.union import capacity
+
+        tiles, places = self.tiles, cells.points
+        n = len(places)
+        even = np.ones(n, dtype=np.int64)
+        many = np.empty(n, dtype=np.int64)
+        in_parts_of_equal_cost(lambda first, last: count_tiles(tiles.cuts, tiles.boxes, places, first, last, many), even)
+        begin = np.concatenate([[0], np.cumsum(many)])
+        tile, weight = np.empty(begin[-1], dtype=np.int64), np.empty(begin[-1])
+        in_parts_of_equal_cost(
+            lambda first, last: list_tiles(tiles.cuts, tiles.boxes, places, first, last, begin, tile, weight), even
+        )
+        start, which, slot = sort_by_tile(len(tiles), begin, tile)
+        used = np.flatnonzero(np.diff(start))
+        runs = np.append(start[used], start[-1])
+        pair_mean, pair_variance = self._empty(len(which))
+        most = capacity(self.models.points.shape[1], self.neighbours, len(self.rows))
+
+        def run(first: int, last: int) -> Ints:
+            repaired = np.zeros(2, dtype=np.int64)
+            krige_tiles(
+                self.models, tiles.tree, tiles.boxes, self.neighbours, most, used[first:last], runs[first : last + 1],
+                cells, which, pair_mean, pair_variance, repaired,
+            )  # fmt: skip
+            return repaired
+
+        # A tile costs about what 60 of its cells cost.
+        repairs += np.sum(in_parts_of_equal_cost(run, np.diff(runs) + 60), axis=0)
+        mean, variance = self._empty(n)
+        in_parts_of_equal_cost(
+            lambda first, last: average(first, last, begin, slot, weight, pair_mean, pair_variance, mean, variance), even
+        )
+        return mean, variance
+
+    def _by_nearest(self, cells: Cells, rule: Rule, repairs: Ints) -> tuple[Array, Array, NDArray[np.int8]]:
         from texture.predict.window import krige_nearest
 
-        mean, variance = self._empty(len(cells))
-        rung = np.zeros(len(cells), dtype=np.int8)
-        nodes, splits, order = self._get_tree()
+        n = len(cells.points)
+        mean, variance = self._empty(n)
+        rung = np.zeros(n, dtype=np.int8)
 
         def run(first: int, last: int) -> Ints:
             repaired = np.zeros(2, dtype=np.int64)
             krige_nearest(
-                first, last, cells, local, wide, self.points, nodes, splits, order, self.neighbours, rule[0], rule[1], rule[2],
-                self.structures, self.structure_count, self.small_scale, self.survey_variance, self.noise, self.survey, self.station_columns,
-                self.drifts, self.global_covariance, mean, variance, rung, repaired,
-            )  # fmt: skip
+                self.models, self._get_tree(), cells, first, last, self.neighbours, *rule, mean, variance, rung, repaired
+            )
             return repaired
 
-        repairs += _on_threads(run, np.ones(len(cells), dtype=np.int64))
+        self._get_tree()
+        repairs += np.sum(in_parts_of_equal_cost(run, np.ones(n, dtype=np.int64)), axis=0)
         return mean, variance, rung
 
-    def _get_factors(self) -> list[Any]:
+    def _by_all(self, cells: Cells, repairs: Ints) -> tuple[Array, Array]:
+        from texture.predict.kernel import factor_stations, krige_stations
+
         if self._factors is None:
-            from texture.predict.block import column_width, padded
-            from texture.predict.kernel import factor_stations
+            self._factors = factor_stations(self.models)
+        factors = self._factors
+        n = len(cells.points)
+        mean, variance = self._empty(n)
+        which = np.arange(n)
 
-            n, q = len(self.rows), self.station_columns.shape[2]
-            m = padded(n)
-            self._factors = []
-            for k in range(len(self.columns)):
-                u, dropped = np.empty((m, m)), np.empty(m, dtype=np.bool_)
-                columns, normal = np.empty((m, column_width(q))), np.zeros((q, max(self.drifts, 1)))
-                redundant = factor_stations(
-                    self.points, self._nested(k), self.small_scale[k], self.survey_variance[k], self.noise[k],
-                    self.survey, self.station_columns[k], self.drifts, u, dropped, columns, normal,
-                )  # fmt: skip
-                self._factors.append((u, dropped, columns, normal, redundant))
-        return self._factors
+        def run(first: int, last: int) -> None:
+            part = slice(first, last)
+            krige_stations(self.models, factors, cells, which[part], mean[part], variance[part])
 
-    def _nested(self, k: int) -> Array:
-        return self.structures[k, : self.structure_count[k]]
-
-    def _by_all(self, cells: Array, local: Array, wide: Array, repairs: Ints) -> tuple[Array, Array]:
-        from texture.predict.kernel import krige_stations
-
-        mean, variance = self._empty(len(cells))
-        for k, (u, dropped, columns, normal, redundant) in enumerate(self._get_factors()):
-            one_mean, one_variance = np.empty((len(cells), self.value_columns)), np.empty(len(cells))
-
-            def run(
-                first: int, last: int, *, factors: Any = (u, dropped, columns, normal, redundant), k: int = k
-            ) -> Ints:
-                u, dropped, columns, normal, redundant = factors
-                krige_stations(
-                    first, last, cells, local, wide, self.points, self._nested(k), self.small_scale[k],
-                    self.station_columns.shape[2], u, dropped, redundant, columns, self.drifts, normal,
-                    self.global_covariance[k], one_mean, one_variance,  # noqa: B023
-                )  # fmt: skip
-                return np.zeros(2, dtype=np.int64)
-
-            _on_threads(run, np.ones(len(cells), dtype=np.int64))
-            mean[:, k], variance[:, k] = one_mean, one_variance
-            repairs += np.array([redundant > 0, redundant])
+        in_parts_of_equal_cost(run, np.ones(n, dtype=np.int64))
+        redundant = int(factors.redundant.sum())
+        repairs += np.array([redundant > 0, redundant])
         return mean, variance
 
-    def _whole_mean(self, local: Array, wide: Array) -> tuple[Array, Array]:
+    def station_covariance(self, k: int, rows: Any = slice(None)) -> Array:
+        """Covariance of the samples of model k at some stations: of the bed, noise and what is left of survey offsets."""
+        from texture.predict.effects import station_covariance
+
+        models = self.models
+        return station_covariance(
+            self.covariances[k], models.points[rows], models.noise[k][rows], models.survey_variance[k], models.survey[rows]
+        )
+
+    def _whole_mean(self, count: int) -> tuple[Array, Array]:
         """Generalised least squares mean of the few stations there are, and the bed's variance about it."""
-        mean, variance = self._empty(len(local))
+        mean, variance = self._empty(count)
         mean[:], variance[:] = 0.0, 0.0
         for k, c in enumerate(self.covariances):
-            covariance = station_covariance(c, self.points, self.noise[k], self.survey_variance[k], self.survey)
+            covariance = self.station_covariance(k)
             weight = np.linalg.lstsq(covariance, np.ones(len(self.rows)), rcond=None)[0]
             if self.drifts:
-                values = self.station_columns[k, :, self.drifts : self.drifts + self.value_columns]
+                values = self.models.columns[k, :, self.drifts : self.drifts + self.value_columns]
                 mean[:, k] = weight @ values / weight.sum()
                 variance[:, k] = 1.0 / weight.sum()
             variance[:, k] += c.sill
         return mean, variance
-
-
-def station_covariance(
-    c: Covariance, metric_points: Array, noise: Array, survey_variance: Array, survey: Ints
-) -> Array:
-    """Covariance of the samples: of the bed, noise and survey offsets (one variance for each survey)."""
-    from texture.structure.compiled import covariance_matrix, distance_matrix
-
-    k: Array = covariance_matrix(c.packed, c.small_scale, distance_matrix(metric_points, metric_points))
-    k += np.diag(noise)
-    if survey_variance.any():
-        k += survey_variance[survey] * (survey[:, None] == survey[None, :])
-    return k
 
 
 def _standardised(drift: Array | None, rows: Ints) -> tuple[Any, Any, Array | None]:
@@ -385,25 +365,3 @@ def _average_coincident(
         for own in values[:, k].T:
             own[:] = (np.bincount(label, own) / np.bincount(label))[label]
     return values
-
-
-def _on_threads(run: Callable[[int, int], Ints], cost: Ints) -> Ints:
-    """Run pieces of about equal cost on threads (the kernel lets go of the interpreter) and add up what they return.
-
-    Each piece writes its own cells only, so the number of threads cannot change a result.
-    """
-    from numba import get_num_threads
-
-    threads = int(get_num_threads())
-    total = np.cumsum(cost)
-    if len(cost) == 0:
-        return np.zeros(2, dtype=np.int64)
-    pieces = 1 if threads == 1 or total[-1] < 2000 else 8 * threads
-    ends = np.searchsorted(total, np.linspace(0.0, float(total[-1]), pieces + 1)[1:])
-    ends[-1] = len(cost) - 1
-    bounds = np.unique(np.concatenate([[0], ends + 1]))
-    if len(bounds) == 2:
-        return run(0, len(cost))
-    with ThreadPoolExecutor(threads) as pool:
-        results = list(pool.map(run, bounds[:-1].tolist(), bounds[1:].tolist()))
-    return np.asarray(np.sum(results, axis=0))
