@@ -83,26 +83,3 @@ def test_nominal_ninety_percent_intervals_cover(neighbours):
         spread = np.sqrt(k.sample_variance(points[400:], noise_variance=noise[400:])[:, 0])
         inside.append(np.abs(z[400:] - mean) < 1.6449 * spread)
     assert 0.87 < np.mean(inside) < 0.93
-
-
-@pytest.mark.parametrize("layout", ["uniform", "gap", "transects", "two scales"])
-def test_tiles_leave_no_seams(layout):
-    # Cells of 4 m on 1,000 m: where a step between cells crosses a tile's edge the rms jump is at most 1.2 times that of
-    # steps inside tiles, on a smooth field.
-    rng = np.random.default_rng(9)
-    points = rng.random((3000, 2)) * 1000.0
-    if layout == "gap":
-        points = points[np.abs(points - 500.0).max(axis=1) > 200.0]
-    elif layout == "transects":
-        points = np.column_stack([np.repeat(np.arange(10) * 100.0, 300), np.tile(np.arange(300) / 0.3, 10)])
-    elif layout == "two scales":
-        points[1500:] = points[1500:] * 0.15 + 400.0
-    z = np.sin(points[:, 0] / 70.0) + np.cos(points[:, 1] / 90.0)
-    k = Kriging(Covariance([Structure("exponential", 1.0, 600.0)], noise=0.05), 32).fit(points, z)
-    steps = np.arange(50.0, 950.0, 4.0)
-    cells = np.concatenate([np.column_stack([steps, np.full(225, y)]) for y in np.linspace(60.0, 940.0, 40)])
-    values = k.predict(cells)[0][:, 0].reshape(40, 225)
-    tile = k.systems[0].tiles.locate(cells).reshape(40, 225)
-    step, crossing = np.diff(values, axis=1), np.diff(tile, axis=1) != 0
-    rms_edge, rms_inside = (np.sqrt(np.mean(step[where] ** 2)) for where in (crossing, ~crossing))
-    assert rms_edge < 1.2 * rms_inside

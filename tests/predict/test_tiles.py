@@ -125,7 +125,7 @@ def expected_distance(points, cells, mode):
 
 
 @pytest.mark.slow
-@pytest.mark.parametrize(("name", "most"), [("uniform", 0.02), ("gap", 0.08), ("transects", 0.08), ("clusters", 0.12)])
+@pytest.mark.parametrize(("name", "most"), [("uniform", 0.01), ("gap", 0.04), ("transects", 0.05), ("clusters", 0.08)])
 def test_close_to_the_answer_of_all_stations(name, most):
     # Cells anywhere, in the gaps too; what 0.03 kriging standard deviations would be beside stations is not
     # reached between clusters, where any 100 stations know less of the mean than all do.

@@ -6,10 +6,10 @@ from typing import NamedTuple
 
 import numpy as np
 
-from texture.predict.neighbours import Tree, make_search, nearest, partition
+from texture.predict.neighbours import DEPTH, Tree, make_search, nearest, partition
 from texture.structure.jit import compiled
 
-__all__ = ["SIDE_OVER_REACH", "Boxes", "Cuts", "cut_space", "overlap_part"]
+__all__ = ["SIDE_OVER_REACH", "Boxes", "Cuts", "cut_space", "stations_within"]
 
 # Longest side of a tile over the distance to the k-th nearest station. Uniform stations give leaves of 0.7 to 0.9;
 # only longer ones are halved.
@@ -25,11 +25,14 @@ class Boxes(NamedTuple):
         Outermost tiles also serve everything beyond.
     own : int64 array, shape (t, 2)
         Begin and end of the tile's own stations in the tree's order.
+    overlap : float64 array, shape (t,)
+        How far a tile reaches beyond each side, as a part of that side.
     """
 
     low: np.ndarray
     high: np.ndarray
     own: np.ndarray
+    overlap: np.ndarray
 
 
 class Cuts(NamedTuple):
@@ -52,13 +55,51 @@ class Cuts(NamedTuple):
 
 
 @compiled
-def overlap_part(dimensions: int) -> float:
+def stations_within(tree: Tree, low: np.ndarray, high: np.ndarray, overlap: float, out: np.ndarray) -> int:
+    """How many stations a tile with these sides reaches; they are listed as far as `out` has room."""
+    d, count, depth = low.size, 0, 1
+    stack = np.empty(DEPTH, dtype=np.int64)
+    stack[0] = 0
+    while depth > 0:
+        depth -= 1
+        at = stack[depth]
+        while tree.nodes[at, 0] >= 0:
+            dim, value = tree.nodes[at, 0], tree.splits[at]
+            band = overlap * (high[dim] - low[dim])
+            left, right = low[dim] - band <= value, high[dim] + band >= value
+            if left and right:
+                stack[depth] = tree.nodes[at, 2]
+                depth += 1
+            at = tree.nodes[at, 1] if left else tree.nodes[at, 2]
+        for i in range(tree.nodes[at, 3], tree.nodes[at, 4]):
+            inside = True
+            for j in range(d):
+                band = overlap * (high[j] - low[j])
+                inside = inside and low[j] - band <= tree.points[tree.order[i], j] <= high[j] + band
+            if inside:
+                if count < out.size:
+                    out[count] = tree.order[i]
+                count += 1
+    return count
+
+
+@compiled
+def _overlap(tree: Tree, low: np.ndarray, high: np.ndarray, k: int) -> float:
     """How far a tile reaches beyond each side, as a part of that side: a place lies in two tiles on average.
 
     In the plane 0.207: a square tile so enlarged still lies within the distance of its side from its centre, and with it
-    within the reach of the k-th nearest station there, so that all stations in it are among the tile's own set.
+    within the reach of the k-th nearest station there, so that all stations in it are among the tile's own set. In more
+    dimensions, where tiles are not halved, it may reach into dense data: half as far then, until 2 k stations are enough.
     """
-    return 0.5 * (2.0 ** (1.0 / dimensions) - 1.0)
+    d = low.size
+    both_sides: float = 2.0 ** (1.0 / d) - 1.0
+    part, none = 0.5 * both_sides, np.empty(0, dtype=np.int64)
+    if d > 2:
+        for _ in range(8):
+            if stations_within(tree, low, high, part, none) <= 2 * k:
+                return part
+            part *= 0.5
+    return part
 
 
 @compiled
@@ -71,9 +112,7 @@ def _grow(array: np.ndarray) -> np.ndarray:
 
 
 @compiled
-def cut_space(
-    tree: Tree, low: np.ndarray, high: np.ndarray, k: int, least_side: float
-) -> tuple[Cuts, Boxes]:
+def cut_space(tree: Tree, low: np.ndarray, high: np.ndarray, k: int, least_side: float) -> tuple[Cuts, Boxes]:
     """Tile tree on top of the station tree; the first nodes of both are the same.
 
     Parameters
@@ -141,7 +180,9 @@ def cut_space(
             ints[count + 1, 0], ints[count + 1, 1], ints[count + 1, 2] = middle, ints[at, 1], right
             count += 2
         at += 1
-    done = Boxes(boxes[:tiles, :d].copy(), boxes[:tiles, d:].copy(), own[:tiles].copy())
+    done = Boxes(boxes[:tiles, :d].copy(), boxes[:tiles, d:].copy(), own[:tiles].copy(), np.empty(tiles))
+    for t in range(tiles):
+        done.overlap[t] = _overlap(tree, done.low[t], done.high[t], k)
     return Cuts(cuts[:count].copy(), _reach(cuts[:count], done), low, high), done
 
 
@@ -155,7 +196,7 @@ def _reach(nodes: np.ndarray, boxes: Boxes) -> np.ndarray:
         dim, left, right = nodes[at, 0], nodes[at, 1], nodes[at, 2]
         for j in range(d):
             if dim < 0:
-                band = overlap_part(d) * (boxes.high[left, j] - boxes.low[left, j])
+                band = boxes.overlap[left] * (boxes.high[left, j] - boxes.low[left, j])
                 lowest[at, j], highest[at, j] = boxes.low[left, j] - band, boxes.high[left, j] + band
             else:
                 lowest[at, j] = min(lowest[left, j], lowest[right, j])

@@ -79,7 +79,7 @@ def estimate_effects(
 
 
 def station_covariance(
-    c: Covariance, metric_points: Array, noise: Array, survey_variance: Array, survey: Ints
+    c: Covariance, metric_points: Array, noise: Array, survey_variance: Array, survey: NDArray[np.int64]
 ) -> Array:
     """Covariance of the samples: of the bed, noise and survey offsets (one variance for each survey)."""
     from texture.structure.compiled import covariance_matrix, distance_matrix

@@ -27,19 +27,23 @@ class Tree(NamedTuple):
         Split dimension (-1 in a leaf), left child, right child, begin and end of its stations in `order`.
     splits : float64 array, shape (m,)
     order : int64 array, shape (n,)
+    low, high : float64 arrays, shape (m, d)
+        Smallest box around the stations of each node.
     """
 
     points: np.ndarray
     nodes: np.ndarray
     splits: np.ndarray
     order: np.ndarray
+    low: np.ndarray
+    high: np.ndarray
 
 
 class Search(NamedTuple):
     """Room for a search: squared distances and numbers of what was found, and the nodes still to visit."""
 
     heap: np.ndarray
-    index: np.ndarray
+    index: np.ndarray  # type: ignore[assignment]  # hides tuple.index, which nothing here asks for
     stack: np.ndarray
     offsets: np.ndarray
 
@@ -133,29 +137,30 @@ def build_tree(points: np.ndarray, leaf: int) -> Tree:
     nodes = np.empty((2 * n + 1, 5), dtype=np.int64)
     splits = np.zeros(2 * n + 1)
     nodes[0, 3], nodes[0, 4] = 0, n
+    low, high = np.empty((2 * n + 1, d)), np.empty((2 * n + 1, d))
     count, todo = 1, 0
     while todo < count:
         begin, end = nodes[todo, 3], nodes[todo, 4]
         nodes[todo, 0] = -1
-        if end - begin > leaf:
-            widest, dim = 0.0, -1
-            for k in range(d):
-                low, high = np.inf, -np.inf
-                for i in range(begin, end):
-                    x = points[order[i], k]
-                    low, high = min(low, x), max(high, x)
-                if high - low > widest:
-                    widest, dim = high - low, k
-            if dim >= 0:
-                value = _split_value(points, order, begin, end, dim)
-                middle = partition(points, order, begin, end, dim, value)
-                nodes[todo, 0], nodes[todo, 1], nodes[todo, 2] = dim, count, count + 1
-                splits[todo] = value
-                nodes[count, 3], nodes[count, 4] = begin, middle
-                nodes[count + 1, 3], nodes[count + 1, 4] = middle, end
-                count += 2
+        widest, dim = 0.0, -1
+        for k in range(d):
+            least, most = np.inf, -np.inf
+            for i in range(begin, end):
+                x = points[order[i], k]
+                least, most = min(least, x), max(most, x)
+            low[todo, k], high[todo, k] = least, most
+            if most - least > widest:
+                widest, dim = most - least, k
+        if end - begin > leaf and dim >= 0:
+            value = _split_value(points, order, begin, end, dim)
+            middle = partition(points, order, begin, end, dim, value)
+            nodes[todo, 0], nodes[todo, 1], nodes[todo, 2] = dim, count, count + 1
+            splits[todo] = value
+            nodes[count, 3], nodes[count, 4] = begin, middle
+            nodes[count + 1, 3], nodes[count + 1, 4] = middle, end
+            count += 2
         todo += 1
-    return Tree(points, nodes[:count].copy(), splits[:count].copy(), order)
+    return Tree(points, nodes[:count].copy(), splits[:count].copy(), order, low[:count].copy(), high[:count].copy())
 
 
 @compiled

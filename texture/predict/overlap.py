@@ -10,7 +10,7 @@ from __future__ import annotations
 
 import numpy as np
 
-from texture.predict.cuts import Boxes, Cuts, overlap_part
+from texture.predict.cuts import Boxes, Cuts
 from texture.predict.neighbours import DEPTH
 from texture.structure.jit import compiled
 
@@ -27,7 +27,7 @@ def _weight(boxes: Boxes, tile: int, place: np.ndarray) -> float:
     lowest, highest = boxes.low[tile], boxes.high[tile]
     weight = 1.0
     for j in range(d):
-        band = overlap_part(d) * (highest[j] - lowest[j])
+        band = boxes.overlap[tile] * (highest[j] - lowest[j])
         if band == 0.0:
             continue  # all stations agree in this coordinate
         inside = min(place[j] - lowest[j], highest[j] - place[j])
@@ -40,9 +40,7 @@ def _weight(boxes: Boxes, tile: int, place: np.ndarray) -> float:
 
 
 @compiled
-def _visit(
-    cuts: Cuts, boxes: Boxes, place: np.ndarray, stack: np.ndarray, tile: np.ndarray, weight: np.ndarray
-) -> int:
+def _visit(cuts: Cuts, boxes: Boxes, place: np.ndarray, stack: np.ndarray, tile: np.ndarray, weight: np.ndarray) -> int:
     """Tiles that reach a place inside the outermost box, in the order of the tree; returns how many.
 
     They are listed as far as `tile` and `weight` have room.

@@ -240,7 +240,9 @@ class System:
         n = len(places)
         even = np.ones(n, dtype=np.int64)
         many = np.empty(n, dtype=np.int64)
-        in_parts_of_equal_cost(lambda first, last: count_tiles(tiles.cuts, tiles.boxes, places, first, last, many), even)
+        in_parts_of_equal_cost(
+            lambda first, last: count_tiles(tiles.cuts, tiles.boxes, places, first, last, many), even
+        )
         begin = np.concatenate([[0], np.cumsum(many)])
         tile, weight = np.empty(begin[-1], dtype=np.int64), np.empty(begin[-1])
         in_parts_of_equal_cost(
@@ -264,7 +266,8 @@ class System:
         repairs += np.sum(in_parts_of_equal_cost(run, np.diff(runs) + 60), axis=0)
         mean, variance = self._empty(n)
         in_parts_of_equal_cost(
-            lambda first, last: average(first, last, begin, slot, weight, pair_mean, pair_variance, mean, variance), even
+            lambda first, last: average(first, last, begin, slot, weight, pair_mean, pair_variance, mean, variance),
+            even,
         )
         return mean, variance
 
@@ -278,7 +281,17 @@ class System:
         def run(first: int, last: int) -> Ints:
             repaired = np.zeros(2, dtype=np.int64)
             krige_nearest(
-                self.models, self._get_tree(), cells, first, last, self.neighbours, *rule, mean, variance, rung, repaired
+                self.models,
+                self._get_tree(),
+                cells,
+                first,
+                last,
+                self.neighbours,
+                *rule,
+                mean,
+                variance,
+                rung,
+                repaired,
             )
             return repaired
 
@@ -311,7 +324,11 @@ class System:
 
         models = self.models
         return station_covariance(
-            self.covariances[k], models.points[rows], models.noise[k][rows], models.survey_variance[k], models.survey[rows]
+            self.covariances[k],
+            models.points[rows],
+            models.noise[k][rows],
+            models.survey_variance[k],
+            models.survey[rows],
         )
 
     def _whole_mean(self, count: int) -> tuple[Array, Array]:

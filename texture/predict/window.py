@@ -6,7 +6,7 @@ import numpy as np
 
 from texture.predict.block import Cells, krige_cells, make_lanes
 from texture.predict.equations import Models, factor_neighbourhood, make_factors
-from texture.predict.neighbours import Search, Tree, make_search, nearest
+from texture.predict.neighbours import Tree, make_search, nearest
 from texture.structure.jit import compiled
 
 __all__ = ["choose_nearest", "krige_nearest"]
@@ -23,9 +23,7 @@ def _sector(points: np.ndarray, station: int, place: np.ndarray) -> int:
 
 
 @compiled
-def choose_nearest(
-    tree: Tree, place: np.ndarray, k: int, radius2: float, per_sector: int, station: np.ndarray
-) -> int:
+def choose_nearest(tree: Tree, place: np.ndarray, k: int, radius2: float, per_sector: int, station: np.ndarray) -> int:
     """Stations of one place, nearest first: at most k, within a radius, at most `per_sector` (0: any) per sector."""
     n = tree.points.shape[0]
     wanted = min(n, k if per_sector == 0 else 4 * k)
