@@ -25,6 +25,8 @@ FULL = {
     "kriging kernel, clustered stations": ["benchmarks.kernel", "--layout", "clusters", "--skip-pykrige"],
     "members beside the kriging alone": ["benchmarks.members"],
     "memory of members": ["benchmarks.members", "--memory"],
+    "seams between tiles": ["benchmarks.seams"],
+    "ten million cells, a million stations": ["benchmarks.scale"],
     "a million compositions": ["benchmarks.composition"],
     "validation of 10,000 stations": ["benchmarks.validation"],
     "reading spreadsheets": ["benchmarks.intake"],

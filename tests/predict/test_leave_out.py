@@ -40,6 +40,18 @@ def test_meuse_summaries(meuse):
     assert found[1:] == pytest.approx((0.392021, 0.285857, 0.806146, 0.838802), abs=1e-5)
 
 
+def test_meuse_sixteen_nearest(meuse):
+    # R gstat 2.1, leave-one-out from the 16 nearest of the others, no refit: RMSE, MAE, mean error^2/variance, r.
+    mean, variance = np.empty(155), np.empty(155)
+    for i in range(155):
+        rest = np.arange(155) != i
+        k = Kriging(SPHERICAL, 16, "nearest").fit(meuse.points[rest], meuse.log_zinc[rest])
+        value, spread = k.predict(meuse.points[i : i + 1])
+        mean[i], variance[i] = value[0, 0], spread[0, 0]
+    found = summary(mean, variance, meuse.log_zinc)
+    assert found[1:] == pytest.approx((0.389825, 0.286983, 0.808015, 0.841042), abs=1e-5)
+
+
 @pytest.mark.parametrize("groups", [None, [0, 0, 1, 1, 1, 2, 3, 3, 3, 3, 4, 5, 5, 6, 6, 6, 6, 7, 8, 8]])
 def test_equal_to_really_leaving_them_out(groups):
     # Dubrule (1983); Ginsbourger & Schärer (2024): equal to brute force to 1e-9.

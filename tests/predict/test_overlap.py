@@ -44,7 +44,7 @@ def test_weights_add_up_and_stations_within_reach_serve(d):
 def test_the_map_is_continuous_and_exact(d):
     rng = np.random.default_rng(10 + d)
     points = 1000.0 * np.concatenate([rng.random((200, d)), 0.02 * rng.random((100, d)) + 0.4])
-    z = rng.normal(size=300)
+    z = np.sin(points.sum(axis=1) / 150.0)
     kriging = Kriging(Covariance([Structure("exponential", 1.0, 500.0)]), 8).fit(points, z)
     mean, variance = kriging.predict(points)
     assert mean[:, 0] == pytest.approx(z, abs=1e-6)
@@ -57,4 +57,4 @@ def test_the_map_is_continuous_and_exact(d):
         at[:, :1] = boxes.high[:, :1] + part * side
         hair = 1e-6 * np.eye(d)[0]
         before, after = (kriging.predict(at + sign * hair)[0] for sign in (-1.0, 1.0))
-        assert np.abs(after - before).max() < 1e-3
+        assert np.abs(after - before).max() < 1e-6
