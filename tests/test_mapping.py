@@ -9,9 +9,11 @@ from texture.composition import LogRatio
 from texture.mapping import learn, learn_all, make_mapper
 from texture.observations import Observations
 from texture.recipe import Method
+from texture.scoring import Judge
 from texture.structure import Covariance, CovarianceSet, Structure
 from texture.structure.displacement import displacement_variance
 from texture.treatments import Censor, Presence, Replace
+from texture.validation.held_out import ScoreWeights
 
 LR = LogRatio(["mud", "sand", "gravel"])
 NAN = float("nan")
@@ -136,3 +138,28 @@ def test_a_badly_known_place_weighs_less_and_widens_its_own_interval(stations):
     inside = learn(Replace(LR), rough, Method(), start=learned.structure)  # as in a fold: from the structure of all
     assert (inside.noise[:10, 0] > 0.1).all()
     assert (learned.sample_noise[:10, 0] > exact.sample_noise[:10, 0]).all()
+
+
+def test_an_average_and_forest_kriging_take_the_neighbours_of_the_recipe(stations):
+    learned, method = learn(Replace(LR), stations, Method()), Method(neighbours=5)
+    assert make_mapper("forest_kriging", learned, method).predictor.neighbours == 5
+    weights = {"nearest": 0.5, "kriging": 0.5}
+    spreads = {"nearest": np.ones(2)}
+    average = make_mapper("average", learned, method, weights=weights, spreads=spreads).predictor
+    assert average.members[1].neighbours == 5
+
+
+def test_what_is_scored_is_what_is_mapped(stations):
+    """A map of medians is scored as medians: the prediction is the plain back-transform, whatever the variance."""
+    learned = learn(Replace(LR), stations, Method())
+    columns = make_mapper("kriging", learned, Method()).columns(stations.points + 300.0, learned.sample_noise)
+    n = stations.count
+    weights = ScoreWeights(np.ones(n), np.empty((0, n)))
+    mean, median = (
+        Judge(LR.parts, stations.fractions, np.arange(n) % 4, weights, 0.005, asked)
+        .judge("kriging", learned, columns, True)
+        .held_out.predicted
+        for asked in (False, True)
+    )
+    np.testing.assert_array_equal(median, LR.inverse(columns.mean))
+    assert np.abs(mean - median).max() > 0.01

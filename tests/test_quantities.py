@@ -2,6 +2,7 @@
 
 import tomllib
 
+import geopandas
 import numpy as np
 import pandas as pd
 import pytest
@@ -9,6 +10,7 @@ import rasterio
 import tomli_w
 import xarray as xr
 from pydantic import ValidationError
+from shapely.geometry import box
 
 from texture import build
 from texture.errors import RecipeError, SampleError
@@ -19,6 +21,7 @@ from texture.recipe.file import read_recipe
 from texture.recipe.quantities import TAKEN_NAMES, Quantity
 from texture.stations.account import TABLE_COLUMNS
 from texture.structure import Covariance
+from texture.structure.averaging import averaged_out, sampling_distance_m
 
 CARBON = {"name": "organic_carbon", "unit": "percent", "column": "OC", "scale": "log"}
 
@@ -76,13 +79,17 @@ def test_the_map_of_a_number_is_that_of_its_column_alone(built):
     value, half = (table.loc[known, c].to_numpy() for c in ("organic_carbon", "organic_carbon_half_width"))
     noise = ((half / value) ** 2 / 3.0)[:, None]
     structure = Covariance.fit(points, np.log(value)[:, None], noise_variance=noise)
-    kriging = Kriging(structure).fit(points, np.log(value)[:, None], noise_variance=noise)
+    factor = carbon.model.methods[0].factor  # of its own held-out errors, on every variance
+    assert factor != 1.0
+    structure = structure.scaled(np.array([factor]))
+    kriging = Kriging(structure).fit(points, np.log(value)[:, None], noise_variance=factor * noise)
     target = result.found.target
     assert result.points_per_side == 1
     mean, variance = kriging.predict(result.found.some_centres(10**6))
     expected = np.exp(mean[:, 0] + 0.5 * variance[:, 0])
     np.testing.assert_allclose(carbon.mean[target.active], expected, rtol=1e-9)
-    inside = np.minimum(variance[:, 0], structure[0].small_scale)
+    gone = averaged_out(np.sqrt(target.area_m2[target.active]), sampling_distance_m(points))
+    inside = np.minimum(variance[:, 0], structure[0].small_scale * gone)
     median = np.exp(mean[:, 0] + 0.5 * inside)
     np.testing.assert_allclose(carbon.quantiles[1, target.active], median, rtol=1e-9)
     assert (np.diff(carbon.quantiles[:, target.active], axis=0) >= 0.0).all()
@@ -127,6 +134,41 @@ def test_methods_without_a_variance_map_numbers_too(with_carbon, tmp_path):
     measured = found.quantities[0].measured
     said = method.predicted[np.isfinite(method.predicted)]
     assert np.isin(said.round(9), measured[np.isfinite(measured)].round(9)).all()  # a neighbour's own number
+
+
+def test_methods_of_the_composition_alone_leave_numbers_blank(with_carbon, tmp_path):
+    compare = ["nearest", "inverse_distance", "average"]
+    found = validate(with_carbon, output=tmp_path / "out", validation={"count": 3, "compare": compare})
+    assert found.validation.method == "kriging"
+    table = pd.read_csv(tmp_path / "out" / "held_out.csv").set_index("method")
+    assert table.loc["average", "organic_carbon_predicted"].isna().all()
+    assert table.loc["average", "organic_carbon_measured"].notna().any()
+    assert table.loc["kriging", "organic_carbon_predicted"].notna().any()
+
+
+def test_numbers_keep_to_their_zones(with_carbon, tmp_path):
+    """A hard edge half-way: each side is the kriging of its own stations."""
+    east = box(505_000.0, 4_900_000.0, 510_000.0, 4_906_000.0)
+    geopandas.GeoDataFrame(geometry=[east], crs="EPSG:32626").to_file(tmp_path / "east.gpkg")
+    zone = {"name": "east", "polygons": str(tmp_path / "east.gpkg")}
+    quick = {
+        "validation": {"count": 3, "compare": []},
+        "outputs": {"geotiff": False},
+        "composition": {"zeros": "replace"},
+    }
+    result = build(with_carbon, output=tmp_path / "out", zones=[zone], rim=None, **quick)
+    carbon, zones, target = result.quantities[0], result.found.mapper.zones, result.found.target
+    mapper, rows = carbon.model.mapper, carbon.model.rows
+    known = np.log(result.found.stations.table["organic_carbon"].to_numpy()[rows])
+    place = result.found.plane.to_metres(target.longitude, target.latitude)
+    width = result.found.stations.table["organic_carbon_half_width"].fillna(0.0).to_numpy()[rows]
+    noise = carbon.model.methods[0].factor * (width / np.exp(known)) ** 2 / 3.0
+    assert result.points_per_side == 1
+    for i in (0, 1):
+        own, cells = zones.stations.zone[rows] == i, target.active & (zones.cells.zone == i)
+        alone = Kriging(mapper.structure).fit(carbon.model.points[own], known[own], noise_variance=noise[own])
+        mean, variance = alone.predict(place[cells])
+        np.testing.assert_allclose(carbon.mean[cells], np.exp(mean + 0.5 * variance)[:, 0], rtol=1e-9)
 
 
 def test_medians_come_from_curves_or_the_laboratory_never_from_three_parts(tmp_path):

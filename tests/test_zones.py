@@ -105,3 +105,17 @@ def test_censoring_would_cross_the_edge(small, tmp_path):
     zone = {"name": "far", "polygons": polygons(tmp_path, EAST)}
     with pytest.raises(RecipeError, match='"censor" fills in each station from its neighbours, across the hard edges'):
         read_recipe(small, settings={"zones": [zone], "composition": {"zeros": "censor"}})
+
+
+def test_zones_that_ask_no_station_are_no_emptier_for_a_radius(small, tmp_path):
+    river = {
+        "name": "river",
+        "polygons": polygons(tmp_path, (500_000.0, 4_900_000.0, 501_000.0, 4_900_500.0), name="r.gpkg"),
+    }
+    given = {**river, "kind": "given", "composition": {"sand": 0.75, "gravel": 0.25}}
+    shelf = {"name": "shelf", "polygons": polygons(tmp_path, EAST), "kind": "mean"}
+    near = {"neighbourhood": "nearest", "radius_m": 300.0}
+    result = build(small, output=tmp_path / "out", zones=[given, shelf], rim=None, method=near, **QUICK)
+    zone, shown = result.found.mapper.zones.cells.zone, result.estimate.within_radius.fractions
+    assert np.isfinite(shown[zone > 0]).all()
+    assert np.isnan(shown[zone == 0]).any()

@@ -102,7 +102,8 @@ def limit_effect(learned: Learned, method: Method, places: Floats) -> LimitEffec
     means = []
     for other in (learned, *others):
         mapper = make_mapper(method.tried_with, other, method)
-        fractions = mapper.expected(*mapper.predict(places))
+        mean, variance = mapper.predict(places)
+        fractions = mapper.back(mean) if method.estimate == "median" else mapper.expected(mean, variance)
         means.append(tuple(float(v) for v in fractions.mean(axis=0)))
     return LimitEffect(treatment.limit, means[0], means[1], means[2], len(places))
 

@@ -146,6 +146,8 @@ def estimate_on(
             evidence[some] = np.where(unlike <= support.reach_m, SUPPORTED, EXTRAPOLATED)
             fell_back = rung.reshape(*shape).max(axis=1) > 0
             evidence[some[fell_back]] = WIDER
+            if share is not None:  # a zone that is filled with a composition or a mean asks no station how near it is
+                fell_back &= ~mapper.needs_no_station(share)
             outside[some[fell_back]] = mapper.has_radius
             if zones is not None and share is not None:
                 own = zones.is_given(share)

@@ -332,6 +332,12 @@ class Mapper:
         """Put the compositions that zones are given into fractions, shape (..., n, parts)."""
         return fractions if self.zones is None or share is None else self.zones.impose(fractions, share)
 
+    def needs_no_station(self, share: Share) -> NDArray[np.bool_]:
+        """Tell which places are filled with the composition or the mean of their zone."""
+        if self.zones is None or self.by_zone is None:
+            return np.zeros(share.zone.shape, dtype=bool)
+        return np.asarray(self.zones.is_given(share) | np.isin(share.zone, list(self.by_zone.means)))
+
     def _predict_seen(self, seen: Seen, share: Share | None) -> tuple[Floats, Floats, NDArray[np.int8]]:
         rung = np.zeros(len(seen.points), dtype=np.int8)
         if self.by_zone is not None and share is not None:

@@ -201,7 +201,7 @@ def _validated(
             observations, target, plane, plain, treated, recipe, progress, journal, spaces, zones
         )
         recipe = with_method(recipe, validation.method)
-        quantities = learn_quantities(stations, observations, validation.folds, recipe, progress, spaces)
+        quantities = learn_quantities(stations, observations, validation.folds, recipe, progress, spaces, zones)
     mapper = validation.mapper(recipe.method, zones)
     stations = flag_stations(stations, mapper, observations)
     return Validated(recipe, stations, target, plane, observations, mapper, validation, quantities, spaces)

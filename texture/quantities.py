@@ -1,7 +1,8 @@
 """Further numbers of the samples, each mapped and validated by the machinery of the composition, on the same folds.
 
 A quantity is one column on its own scale. It is fitted (`texture.mapping.learn_all`), kriged and held out exactly as the
-coordinates of a composition are; what it means in its own unit comes last.
+coordinates of a composition are, calibrated by its own held-out errors and in zones by their stations; what it means in its own unit
+comes last.
 """
 
 from __future__ import annotations
@@ -21,8 +22,11 @@ from texture.observations import Observations
 from texture.progress import Progress
 from texture.recipe import Quantity, Recipe
 from texture.space import PLANE, Space
+from texture.structure.averaging import averaged_out, sampling_distance_m
 from texture.targets import Target, cell_points
 from texture.treatments import Treatment
+from texture.validation.calibration import calibration_factors, out_of_fold_factors
+from texture.validation.columns import Columns
 from texture.validation.folds import Folds
 from texture.validation.reach import beyond_reach, validated_reach_m
 from texture.validation.scores import plain_scores
@@ -30,6 +34,7 @@ from texture.validation.scores import plain_scores
 if TYPE_CHECKING:
     from texture.stations import Stations
     from texture.structure.plane import Plane
+    from texture.zones import Share, Zones
 
 __all__ = ["QuantityMap", "QuantityMethod", "QuantityModel", "learn_quantities", "map_quantities"]
 
@@ -69,7 +74,8 @@ class _Column:
 class QuantityMethod:
     """Held-out predictions of one method, NaN at stations that do not know the quantity; shapes (n,) of all observations.
 
-    `low` and `high` are the ends of the 90 % interval of a sample, NaN where the method has no variance.
+    `low` and `high` are the ends of the 90 % interval of a sample, calibrated on the other folds, NaN where the method has no
+    variance. `factor` is the calibration from all folds.
     """
 
     method: str
@@ -77,6 +83,7 @@ class QuantityMethod:
     low: Floats
     high: Floats
     scores: dict[str, float]
+    factor: float = 1.0
 
 
 @dataclass(frozen=True, eq=False)
@@ -90,6 +97,8 @@ class QuantityModel:
         Of one column, the quantity on its scale.
     points : float array
         Its stations in the plane.
+    rows : int array
+        Their rows of the stations table.
     measured : float array, shape (n,)
         As measured, NaN where not, for all observations of the run.
     methods : tuple of QuantityMethod
@@ -101,6 +110,7 @@ class QuantityModel:
     settings: Quantity
     mapper: Mapper
     points: Floats
+    rows: Ints
     measured: Floats
     methods: tuple[QuantityMethod, ...]
     reach_m: float
@@ -131,7 +141,8 @@ class QuantityMap:
     quantiles : float array, shape (3, n)
         At 0.05, 0.5 and 0.95, of the cell mean; NaN for methods without a variance.
     evidence : int array, shape (n,)
-        1 supported by samples that know it, 2 extrapolated, 6 wider fall-back; 0 where there is no map.
+        1 supported by samples that know it, 2 extrapolated, 6 wider fall-back; 0 where there is no map. Where a zone's composition
+        is given the map around it goes on, flagged as extrapolated: the user gave no number.
     """
 
     model: QuantityModel
@@ -147,8 +158,10 @@ def learn_quantities(
     recipe: Recipe,
     progress: Progress,
     spaces: Mapping[str, Space] | None = None,
+    zones: Zones | None = None,
 ) -> tuple[QuantityModel, ...]:
-    """Fit every quantity of the recipe and hold its stations out in the folds of the composition, each method in its space.
+    """Fit every quantity of the recipe and hold its stations out in the folds of the composition, each method in its space and
+    each station in its zone.
 
     Raises
     ------
@@ -161,7 +174,9 @@ def learn_quantities(
     methods = tuple(name for name in asked if name != "average")  # its weights are those of the parts
     with progress.stage("further numbers", total=len(recipe.quantities) * len(methods)) as advance:
         places: dict[str, Space] = {name: (spaces or {}).get(name, PLANE) for name in methods}
-        return tuple(_learn(q, stations, observations, folds, recipe, places, advance) for q in recipe.quantities)
+        return tuple(
+            _learn(q, stations, observations, folds, recipe, places, zones, advance) for q in recipe.quantities
+        )
 
 
 def _learn(
@@ -171,8 +186,10 @@ def _learn(
     folds: Folds,
     recipe: Recipe,
     spaces: Mapping[str, Space],
+    zones: Zones | None,
     advance: Callable[[int], None],
 ) -> QuantityModel:
+    from texture.predict import solves
     from texture.stations.quantities import width_name
 
     value, half = (stations.table[c].to_numpy(dtype=np.float64) for c in (quantity.name, width_name(quantity.name)))
@@ -200,37 +217,42 @@ def _learn(
             tasks = [(treatment, some.take(train), whole.structure) for train, _ in pairs]
             found[id(space)] = whole, learn_all(tasks, recipe.method, space)
         learned, inside = found[id(space)]
-        held_out.append(_hold_out(name, learned, pairs, inside, recipe, observations.count, known, measured))
+        columns = Columns.empty(known.size, 1)
+        for (_, test), fold in zip(pairs, inside, strict=True):
+            fitted = make_mapper(name, fold, recipe.method, zones=zones)
+            share = None if zones is None else zones.stations.take(some.rows[test])
+            columns.put(test, fitted.columns(some.points[test], learned.sample_noise[test], share))
+        held_out.append(_judged(name, column.scale, columns, learned, own.labels, known, measured))
         advance(1)
     reach_m = validated_reach_m(own.held_out_distances(some.points))
-    mapper = make_mapper(recipe.method.tried_with, found[id(spaces[recipe.method.tried_with])][0], recipe.method)
-    return QuantityModel(quantity, mapper, some.points, measured, tuple(held_out), reach_m)
+    name = recipe.method.tried_with
+    learned, factors = found[id(spaces[name])][0], np.array([held_out[0].factor])
+    if solves(name):
+        mapper = make_mapper(name, learned.calibrated(factors), recipe.method, zones=zones)
+    else:
+        mapper = make_mapper(name, learned, recipe.method, factors=factors, zones=zones)
+    return QuantityModel(quantity, mapper, some.points, some.rows, measured, tuple(held_out), reach_m)
 
 
-def _hold_out(
-    name: str,
-    learned: Learned,
-    pairs: list[tuple[Ints, Ints]],
-    inside: list[Learned],
-    recipe: Recipe,
-    count: int,
-    known: Ints,
-    measured: Floats,
+def _judged(
+    name: str, scale: Scale, columns: Columns, learned: Learned, labels: Ints, known: Ints, measured: Floats
 ) -> QuantityMethod:
-    scale = cast(_Column, learned.treatment).scale
-    predicted, low, high = np.full((3, count), np.nan)
-    noise = learned.sample_noise
-    for (_, test), fold in zip(pairs, inside, strict=True):
-        mapper = make_mapper(name, fold, recipe.method)
-        mean, variance = mapper.predict(learned.observations.points[test])
-        at = known[test]
-        if not mapper.has_variance:
-            predicted[at] = scale.back(mean[:, 0])
-            continue
-        predicted[at] = scale.expected(mean[:, 0], variance[:, 0])
-        spread = NORMAL_95 * np.sqrt(mapper.sample_variance(variance, noise[test])[:, 0])
-        low[at], high[at] = scale.back(mean[:, 0] - spread), scale.back(mean[:, 0] + spread)
-    return QuantityMethod(name, predicted, low, high, plain_scores(measured, predicted, low, high))
+    """Calibrate on the held-out errors, and go back to the quantity's own unit; a fold is scored with factors of the others."""
+    from texture.predict import METHODS
+
+    predicted, low, high = np.full((3, measured.size), np.nan)
+    if not METHODS[name].has_variance:
+        predicted[known] = scale.back(columns.mean[:, 0])
+        return QuantityMethod(name, predicted, low, high, plain_scores(measured, predicted, low, high))
+    value = learned.treatment.columns(learned.observations)[0]
+    variance = columns.sample_variance
+    factor = calibration_factors(columns.mean, variance, value, value)[0]
+    wide = columns.scaled(out_of_fold_factors(columns.mean, variance, value, value, labels))
+    middle, spread = wide.mean[:, 0], NORMAL_95 * np.sqrt(wide.sample_variance[:, 0])
+    predicted[known] = scale.expected(middle, wide.variance[:, 0])
+    low[known], high[known] = scale.back(middle - spread), scale.back(middle + spread)
+    scores = plain_scores(measured, predicted, low, high)
+    return QuantityMethod(name, predicted, low, high, scores, float(factor))
 
 
 def map_quantities(
@@ -250,21 +272,24 @@ def _map(
     mean, evidence = np.full(target.n_cells, np.nan), np.zeros(target.n_cells, dtype=np.int8)
     quantiles = np.full((len(QUANTILES), target.n_cells), np.nan)
     normal = np.array([-NORMAL_95, 0.0, NORMAL_95])[:, None]
+    apart_m, zones = sampling_distance_m(model.points), mapper.zones
     for start in range(0, cells.size, CELLS_AT_ONCE):
         some = cells[start : start + CELLS_AT_ONCE]
         points = cell_points(target, some, per_side, plane.to_metres)
+        share = None if zones is None else zones.cells.take(some)
+        around = None if share is None else share.repeat(points.shape[1])
         m, v, rung = (
-            a.reshape(points.shape[:2]) for a in mapper.predict_with_rung(points.reshape(-1, points.shape[-1]))
+            a.reshape(points.shape[:2]) for a in mapper.predict_with_rung(points.reshape(-1, points.shape[-1]), around)
         )
-        evidence[some] = np.where(
-            beyond_reach(points.mean(axis=1), model.points, model.reach_m), EXTRAPOLATED, SUPPORTED
-        )
+        beyond = _beyond(model, points.mean(axis=1), share)
+        evidence[some] = np.where(beyond, EXTRAPOLATED, SUPPORTED)
         fell_back = rung.max(axis=1) > 0
         evidence[some[fell_back]] = WIDER
         if mapper.has_variance:
             mean[some] = scale.expected(m, v).mean(axis=1)
             middle, whole = m.mean(axis=1), v.mean(axis=1)
-            within = np.minimum(whole, mapper.small_scale[0])  # averages out inside the cell
+            averaging = averaged_out(np.sqrt(np.nan_to_num(target.area_m2[some])), apart_m)
+            within = np.minimum(whole, mapper.small_scale[0] * averaging)
             quantiles[:, some] = scale.expected(middle + normal * np.sqrt(whole - within), within)
         else:
             mean[some] = scale.back(m).mean(axis=1)
@@ -272,3 +297,15 @@ def _map(
             mean[some[fell_back]], quantiles[:, some[fell_back]] = np.nan, np.nan
         advance(some.size)
     return QuantityMap(model, mean, quantiles, evidence)
+
+
+def _beyond(model: QuantityModel, centre: Floats, share: Share | None) -> NDArray[np.bool_]:
+    """Cells that no station reaches which knows the quantity and speaks in their zone."""
+    zones = model.mapper.zones
+    if zones is None or share is None:
+        return beyond_reach(centre, model.points, model.reach_m)
+    beyond = zones.is_given(share)
+    for number in np.unique(share.zone[~beyond]).tolist():
+        some, speak = (share.zone == number) & ~beyond, zones.heard(number, model.rows)
+        beyond[some] = beyond_reach(centre[some], model.points[speak], model.reach_m) if speak.any() else True
+    return beyond

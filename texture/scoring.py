@@ -71,6 +71,8 @@ class Judge:
     weights : ScoreWeights
     limit : float
         Detection limit.
+    median : bool
+        Whether the map back-transforms coordinates instead of taking expected fractions; what is scored then does so too.
     """
 
     parts: tuple[str, ...]
@@ -78,6 +80,7 @@ class Judge:
     labels: Ints
     weights: ScoreWeights
     limit: float
+    median: bool = False
 
     def judge(self, name: str, learned: Learned, columns: Columns, integrates: bool) -> Judged:
         """Calibrate, transform to fractions, and score; skill over controls comes with `compare`.
@@ -102,7 +105,11 @@ class Judge:
             factors = calibration_factors(columns.mean, variance, low, high)
             wide = columns.scaled(out_of_fold_factors(columns.mean, variance, low, high, self.labels))
             before = self._draws(treatment, columns) if (factors != 1.0).any() else None
-            predicted = treatment.expected(wide.mean, wide.covariance(wide.variance))
+            predicted = (
+                treatment.back(wide.mean)
+                if self.median
+                else treatment.expected(wide.mean, wide.covariance(wide.variance))
+            )
         else:
             errors = np.where(scored, learned.values - columns.mean, np.nan)
             error = residual_spread(errors)

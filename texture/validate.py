@@ -180,7 +180,8 @@ def validate_methods(
     if zones is not None:
         counts = counts & ~zones.is_given(zones.stations.take(observations.rows))
     scored = np.where(counts[:, None], observations.fractions, np.nan)
-    judge = Judge(recipe.composition.parts, scored, folds.labels, weights, limit)
+    median = recipe.method.estimate == "median"
+    judge = Judge(recipe.composition.parts, scored, folds.labels, weights, limit, median)
     own = recipe.method.tried_with
     compared = [n for n in recipe.methods if n != own and (n != "triangulation" or points.shape[1] == 2)]
     runs = [(own, learned) for learned in treated] + [

@@ -197,8 +197,9 @@ def _held_out(result: Validated) -> pd.DataFrame:
             block[f"{part}_predicted"] = method.predicted[:, i]
             block[f"{part}_low"], block[f"{part}_high"] = method.low[:, i], method.high[:, i]
         for quantity in result.quantities:
-            name, own = quantity.settings.name, next(m for m in quantity.methods if m.method == method.method)
-            block[f"{name}_measured"], block[f"{name}_predicted"] = quantity.measured, own.predicted
-            block[f"{name}_low"], block[f"{name}_high"] = own.low, own.high
+            name, own = quantity.settings.name, {m.method: m for m in quantity.methods}.get(method.method)
+            block[f"{name}_measured"] = quantity.measured
+            for column in ("predicted", "low", "high"):  # not every method of the composition maps numbers
+                block[f"{name}_{column}"] = np.nan if own is None else getattr(own, column)
         blocks.append(block)
     return pd.concat(blocks, ignore_index=True)

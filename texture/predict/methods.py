@@ -84,8 +84,13 @@ def _inverse_distance(covariance: Any, **settings: Any) -> Predictor:
     return InverseDistance(**settings) if settings else TunedInverseDistance()
 
 
-def _average(covariance: Any, weights: Mapping[str, float], spreads: Mapping[str, Any] | None = None) -> Predictor:
-    members = [make_method(name, covariance) for name in weights]
+def _average(
+    covariance: Any, weights: Mapping[str, float], spreads: Mapping[str, Any] | None = None, **settings: Any
+) -> Predictor:
+    members = [
+        make_method(name, covariance, **{k: v for k, v in settings.items() if k in METHODS[name].settings})
+        for name in weights
+    ]
     return Average(members, list(weights.values()), [(spreads or {}).get(name) for name in weights])
 
 
@@ -99,8 +104,10 @@ METHODS: dict[str, Method] = {
     "kriging_with_covariates": _kriging("with_covariates"),
     "kriging_with_drift": _kriging(drift=True),
     "forest": Method(lambda covariance, **settings: Forest(**settings), False, True, drift=True),
-    "forest_kriging": Method(lambda covariance, **settings: ForestKriging(**settings), False, True, drift=True),
-    "average": Method(_average, True, True),
+    "forest_kriging": Method(
+        lambda covariance, **settings: ForestKriging(**settings), False, True, ("neighbours",), drift=True
+    ),
+    "average": Method(_average, True, True, KRIGING_SETTINGS),
 }
 
 
