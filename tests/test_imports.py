@@ -17,6 +17,7 @@ ALLOWED = {
     "composition": GROUND,
     "structure": GROUND,
     "space": GROUND,
+    "treatments": GROUND | {"composition", "observations"},
     "predict": GROUND | {"structure", "composition"},
     "validation": GROUND | {"structure", "composition", "predict"},
     "bed": GROUND | {"composition"},
