@@ -1,4 +1,4 @@
-"""What all tests share: tools that only some of them need, and how a skip is treated."""
+"""What all tests share: a small recipe, the demo, published samples, and how a skip is treated."""
 
 from __future__ import annotations
 
@@ -7,11 +7,13 @@ import shutil
 import tomllib
 from collections.abc import Callable
 from pathlib import Path
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, NamedTuple
 
 import pytest
 
 if TYPE_CHECKING:
+    import numpy as np
+
     from texture.result import Result
 
 ROOT = Path(__file__).resolve().parents[1]
@@ -102,3 +104,26 @@ def pytest_sessionfinish(session: pytest.Session, exitstatus: int) -> None:
         session.exitstatus = pytest.ExitCode.TESTS_FAILED
         for report in wanting:
             reporter.write_line(f"skipped where no skip is allowed: {report.nodeid}", red=True)
+
+
+class Meuse(NamedTuple):
+    points: np.ndarray
+    log_zinc: np.ndarray
+    root_distance: np.ndarray
+
+
+@pytest.fixture(scope="session")
+def meuse() -> Meuse:
+    """155 flood-plain samples, in file order (the data set that the gstat and sp documentation works with)."""
+    import numpy as np
+
+    skgstat = pytest.importorskip("skgstat")
+    file = Path(skgstat.__file__).parent / "data" / "samples" / "meuse.txt"
+    if not file.exists():
+        pytest.skip("this scikit-gstat carries no meuse.txt")
+    with file.open() as handle:
+        names = handle.readline().replace('"', "").replace("\t", ",").strip().split(",")
+        rows = [line.replace('"', "").replace("\t", ",").strip().split(",") for line in handle]
+    table = {name: [row[i] for row in rows] for i, name in enumerate(names)}
+    column = {name: np.array(table[name], dtype=float) for name in ("x", "y", "zinc", "dist")}
+    return Meuse(np.column_stack([column["x"], column["y"]]), np.log(column["zinc"]), np.sqrt(column["dist"]))
