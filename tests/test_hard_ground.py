@@ -26,6 +26,11 @@ def test_an_indicator_between_two_camps():
     assert between[1] + between[2] == pytest.approx(1.0, abs=0.15)
 
 
+def test_a_zone_of_two_stations_takes_their_mean():
+    predict = indicator_map(np.array([[0.0, 0.0], [500.0, 0.0]]), np.array([1.0, 0.0]))
+    np.testing.assert_array_equal(predict(np.array([[0.0, 0.0], [9_000.0, 0.0]])), 0.5)
+
+
 def test_rows_without_a_sample_and_a_polygon(small, tmp_path):
     table = small.parent / "grabs.csv"
     lines = table.read_text().splitlines()

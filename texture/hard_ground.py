@@ -15,6 +15,7 @@ __all__ = ["hard_ground_probability", "indicator_map"]
 
 Floats = NDArray[np.float64]
 CELLS_AT_ONCE = 100_000
+FEWEST = 5  # stations that show any structure, as for the composition
 
 
 def hard_ground_probability(found: Validated) -> Floats | None:
@@ -53,6 +54,8 @@ def hard_ground_probability(found: Validated) -> Floats | None:
 def indicator_map(points: Floats, indicator: Floats) -> Callable[[Floats], Floats]:
     """Krige an indicator of 0 and 1 (Journel 1983): the mean of what its neighbours say, within 0 and 1.
 
+    Where so few stations speak that no structure can be fitted, as in a small zone, it is their mean everywhere.
+
     Parameters
     ----------
     points : float array, shape (n, d), metres
@@ -70,7 +73,7 @@ def indicator_map(points: Floats, indicator: Floats) -> Callable[[Floats], Float
     from texture.predict import Kriging
     from texture.structure import Covariance
 
-    if indicator.min() == indicator.max():
-        return lambda places: np.full(len(places), float(indicator[0]))
+    if indicator.min() == indicator.max() or indicator.size < FEWEST:
+        return lambda places: np.full(len(places), float(indicator.mean()))
     kriging = Kriging(Covariance.fit(points, indicator)).fit(points, indicator)
     return lambda places: np.clip(kriging.predict(places)[0][:, 0], 0.0, 1.0)
