@@ -128,7 +128,7 @@ def _write_grids(result: Result, aside: Path) -> None:
     write_netcdf(with_quantities(texture, quantities, found.target, support), aside / "texture.nc")
     write_bed(result.bed, found.target, recipe, aside / "bed.nc", result.moved, into=True)
     if recipe.outputs.geotiff and found.target.corners is not None:  # places have no cells to show
-        colours = class_colours(scheme.numbers)
+        colours = class_colours(scheme)
         parts, size = recipe.composition.parts, recipe.outputs.geotiff_cell_size_m
         write_geotiffs(aside / "geotiff", result.estimate.within_radius, found.target, parts, words, colours, size)
         quantity_geotiffs(aside / "geotiff", quantities, found.target, size)

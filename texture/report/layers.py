@@ -72,7 +72,7 @@ def map_layers(result: Result) -> list[MapLayer]:
             estimate.texture_class,
             active,
             words,
-            class_colours(scheme.numbers),
+            class_colours(scheme),
         )
     )
     layers.append(_steps("class_probability", "probability of that class", estimate.class_probability, active))

@@ -166,7 +166,7 @@ def _class_layer(result: Result) -> Layer:
     scheme = find_scheme("folk")
     values = np.where(result.estimate.texture_class > 0, result.estimate.texture_class.astype(float), np.nan)
     names = dict(zip(scheme.numbers, scheme.words, strict=True))
-    return Layer("most probable texture class", values, names=names, colours=class_colours(scheme.numbers))
+    return Layer("most probable texture class", values, names=names, colours=class_colours(scheme))
 
 
 def _bed_layers(result: Result) -> list[Layer]:
