@@ -108,6 +108,8 @@ def make_estimate(target, seed=3):
         evidence=np.where(wet, rng.choice([1, 2, 6], n), 0).astype(np.int8),
         texture_class=np.where(wet, rng.integers(1, 4, n), 0).astype(np.int8),
         class_probability=probability,
+        sample_distance_m=np.where(wet, rng.uniform(10.0, 3000.0, n), np.nan).astype(np.float32),
+        expected_error=np.where(wet, rng.uniform(0.01, 0.3, n), np.nan).astype(np.float32),
     )
 
 
