@@ -78,7 +78,7 @@ def write_ensemble(result: Result, maps: MemberMaps, aside: Path) -> None:
             fractions = maps.fractions(number)
             yield number, make_bed(fractions, result.estimate.evidence, found.target, recipe.bed, recipe.rim,
                                    recipe.composition.parts, rim.start, rim.parent,
-                                   hard_ground=result.bed.hard_ground_probability)  # fmt: skip
+                                   hard_ground=result.bed.hard_ground_probability, cores=result.cores)  # fmt: skip
 
     if recipe.ensemble.files == "one":
         write_members(aside / "members.nc", found.target, recipe, beds(), maps.numbers)

@@ -13,6 +13,7 @@ from typing import Any
 from texture.cases import CasePlan, plan_cases
 from texture.choosing import fit_candidates
 from texture.clock import Clock
+from texture.core_layers import check_cores, core_layers
 from texture.early import check_early, read_conditions, read_rim
 from texture.ensemble import drawn_ensemble
 from texture.estimate import estimate_on
@@ -120,14 +121,23 @@ def build(
     with clock.stage("second look"), progress.stage("second look"):
         look = second_look(mapper, found.some_centres(20_000), recipe.seed)
     with clock.stage("bed"):
-        rim = read_rim(recipe, target)
+        rim, cores = read_rim(recipe, target), core_layers(found)
         bed = make_bed(estimate.fractions, estimate.evidence, target, recipe.bed, recipe.rim, recipe.composition.parts,
-                       rim.start, rim.parent, hard_ground=hard_ground_probability(found))  # fmt: skip
+                       rim.start, rim.parent, hard_ground=hard_ground_probability(found), cores=cores)  # fmt: skip
         water = Water(recipe.bed.water.temperature_c, recipe.bed.water.salinity)
         moved = tuple(moved_by(condition, bed, target, water) for condition in read_conditions(recipe, target))
         inventory = make_inventory(found, estimate, bed)
     result = Result(
-        found, estimate, per_side, look, bed, clock, moved=moved, inventory=inventory, quantities=quantities
+        found,
+        estimate,
+        per_side,
+        look,
+        bed,
+        clock,
+        moved=moved,
+        inventory=inventory,
+        quantities=quantities,
+        cores=cores,
     )
     with drawn_ensemble(result, folder, progress) as (result, maps), clock.stage("write"), progress.stage("write"):
         result = write_all(result, folder, Path(recipe_path), maps)
@@ -188,6 +198,7 @@ def _validated(
 ) -> Validated:
     with clock.stage("read"):
         target, stations = _stations(recipe, progress, before)
+        check_cores(recipe, stations)
     plane = Plane.choose(stations.table["longitude"].to_numpy(), stations.table["latitude"].to_numpy(), target.crs)
     zones = locate_zones(recipe, target, stations)
     observations = observe(stations, plain_treatment(recipe.composition).logratio, plane)

@@ -10,6 +10,7 @@ from typing import TYPE_CHECKING, Any
 
 from texture.cases import CasePlan, plan_cases
 from texture.clock import Clock
+from texture.core_layers import check_cores
 from texture.early import check_early
 from texture.observations import Observations, observe
 from texture.placing import place_stations
@@ -148,6 +149,7 @@ def plan(
             check_early(recipe, target)
         with progress.stage("read the samples"):
             stations = place_stations(read_samples(recipe), target, recipe.intake)
+            check_cores(recipe, stations)
     plane = Plane.choose(stations.table["longitude"].to_numpy(), stations.table["latitude"].to_numpy(), target.crs)
     observations = observe(stations, plain_treatment(recipe.composition).logratio, plane)
     count = len(candidates(recipe.composition, observations, has_variance=True))

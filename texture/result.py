@@ -16,7 +16,7 @@ from texture.space import own_ranges, space_line, space_record
 from texture.validation_lines import validation_lines, validation_record
 
 if TYPE_CHECKING:
-    from texture.bed import Bed, Moved, Stock
+    from texture.bed import Bed, CoreLayer, Moved, Stock
     from texture.clock import Clock
     from texture.estimate import Estimate
     from texture.mapping import Mapper
@@ -175,6 +175,8 @@ class Result:
         Maps of the recipe's further numbers.
     members : MemberSummary or None
         What the members of the recipe's ensemble say together.
+    cores : mapping of layer from 0 to CoreLayer
+        Layers of the bed that are filled from cores.
     """
 
     found: Validated
@@ -188,6 +190,7 @@ class Result:
     inventory: tuple[Stock, ...] = ()
     quantities: tuple[QuantityMap, ...] = ()
     members: MemberSummary | None = None
+    cores: Mapping[int, CoreLayer] = field(default_factory=dict)
 
     @property
     def beyond_share(self) -> float:
@@ -252,6 +255,15 @@ class Result:
             "validation": validation_record(self.found),
             "share_beyond_samples": self.beyond_share,
             "share_of_mass_below_samples": account.share_below_samples,
+            "core_layers": [
+                {
+                    "layer": i + 1,
+                    "cores": c.cores,
+                    "covered": c.covered,
+                    "share_of_area": c.share_sampled(self.found.target.active, self.found.target.area_m2),
+                }
+                for i, c in self.cores.items()
+            ],
             "tonnes": account.tonnes,
             "rim_tonnes": account.rim_tonnes,
             "least_fraction_tonnes": account.least_fraction_tonnes,
@@ -279,6 +291,8 @@ class Result:
         layers = len(self.bed.erodible_thickness)
         bed = f"  bed         {total / 1e6:,.1f} Mt dry in {len(account.tonnes)} classes and {layers} layer{'s' * (layers != 1)}"
         bed += f"; hiding and exposure: {found.recipe.bed.hiding}"
+        for i, core in self.cores.items():
+            bed += f"; layer {i + 1} from {core.line()}"
         if account.rim_cells:
             bed += f"; the rim ({account.rim_cells:,} cells) took out {rim / 1e6:,.2f} Mt of mud"
         lines = [

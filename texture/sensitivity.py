@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Sequence
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
@@ -12,6 +12,7 @@ from numpy.typing import NDArray
 
 from texture.cases import Case, CasePlan, plan_cases
 from texture.clock import Clock
+from texture.core_layers import core_layers
 from texture.early import check_early, read_rim
 from texture.errors import RecipeError
 from texture.hard_ground import hard_ground_probability
@@ -19,7 +20,7 @@ from texture.progress import Progress
 from texture.result import Validated, written_line
 
 if TYPE_CHECKING:
-    from texture.bed import Bed
+    from texture.bed import Bed, CoreLayer
     from texture.output import ResultFolder
     from texture.recipe import Recipe
     from texture.targets import Target
@@ -110,7 +111,7 @@ def make_case_set(
     recipe, cases = found.recipe, choose_cases(plan, only)
     assert recipe.sensitivity is not None  # the plan comes from it
     tonnes: dict[int, dict[str, float]] = {}
-    hard = hard_ground_probability(found)
+    hard, cores = hard_ground_probability(found), core_layers(found)
     with clock.stage("cases"), folder.scratch() as scratch, folder.filling() as aside:
 
         def beds() -> Iterator[tuple[Case, Recipe, Bed]]:
@@ -119,7 +120,7 @@ def make_case_set(
                 for settings, fractions in case_maps(found, per_side, wanted, scratch, progress):
                     for case in (c for c in cases if c.map_settings == settings):
                         changed = recipe.model_copy(update={"bed": case.made_by.bed, "rim": case.made_by.rim})
-                        bed = _bed(case, changed, found, fractions, evidence, hard)
+                        bed = _bed(case, changed, found, fractions, evidence, hard, cores)
                         tonnes[case.number] = bed.account.tonnes
                         yield case, changed, bed
                         advance(1)
@@ -141,13 +142,14 @@ def _bed(
     fractions: Any,
     evidence: NDArray[np.int8],
     hard: NDArray[np.float64] | None,
+    cores: Mapping[int, CoreLayer],
 ) -> Bed:
     from texture.bed import make_bed
 
     rim = read_rim(changed, found.target)
     return make_bed(
         fractions, evidence, found.target, changed.bed, changed.rim, changed.composition.parts, rim.start, rim.parent,
-        case.made_by.porosity, hard,
+        case.made_by.porosity, hard, cores,
     )  # fmt: skip
 
 

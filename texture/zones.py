@@ -90,6 +90,10 @@ class Zones:
         """Tell where the composition is the user's own for the most part."""
         return np.asarray(np.isfinite(self.given[share.zone, 0]) & (share.weight >= 0.5))
 
+    def at(self, longitude: Floats, latitude: Floats) -> Share:
+        """Find the zones of further places."""
+        return _share(self.settings, self.areas, longitude, latitude)
+
     def impose(self, fractions: Floats, share: Share) -> Floats:
         """Put given compositions into fractions of shape (..., n, parts)."""
         some = np.flatnonzero(np.isfinite(self.given[share.zone, 0]))
@@ -102,7 +106,10 @@ class Zones:
 
     def heard(self, number: int, rows: Ints) -> NDArray[np.bool_]:
         """Which of some rows of the stations table speak in a zone."""
-        zone = self.stations.zone[rows]
+        return self.hears(number, self.stations.zone[rows])
+
+    def hears(self, number: int, zone: NDArray[np.int8]) -> NDArray[np.bool_]:
+        """Which places, by the zones that they stand in, speak in a zone."""
         hard = np.array([False, *(r.hard for r in self.regions)])
         return np.asarray(~hard[zone] if number == 0 or self.regions[number - 1].kind == "given" else zone == number)
 

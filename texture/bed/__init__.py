@@ -3,6 +3,7 @@
 from texture.bed.bed import EVIDENCE, Account, Bed
 from texture.bed.build import make_bed, strength_known
 from texture.bed.classes import ClassProperties, class_properties
+from texture.bed.cores import CoreLayer
 from texture.bed.hiding import HIDING_WORDS
 from texture.bed.inventory import Stock
 from texture.bed.mixture_packing import PACKING_WORDS
@@ -26,6 +27,7 @@ __all__ = [
     "Check",
     "ClassProperties",
     "Condition",
+    "CoreLayer",
     "Moved",
     "Stock",
     "Water",

@@ -47,7 +47,7 @@ class Account:
     least_fraction_tonnes : dict
         What `least_fraction` took out of each class.
     share_below_samples : float
-        Share of the bed's mass in layers below the first, where no sample was taken.
+        Share of the bed's mass in layers below the first, where no core reaches.
     rim_cells, land_cells : int
         Cells touched by the rim, and land cells that were filled.
     not_given : tuple of str
@@ -83,8 +83,8 @@ class Bed:
     class_critical_stress : float array, shape (k, layer)
         Of each class alone in each layer, Pa; NaN where not known.
     evidence : int8 array, shape (layer, n)
-        Keys of `EVIDENCE`. Lower layers filled "same" are extrapolated (2), compositions are given by the
-        user (5); the rim (3) and land (4) go before both.
+        Keys of `EVIDENCE`. Lower layers filled "same" are extrapolated (2), those filled from cores supported (1) where one
+        reaches and extrapolated elsewhere, compositions are given by the user (5); the rim (3) and land (4) go before both.
     rim_weight : float array, shape (n,)
         1 where the bed is the rim's own, 0 outside the rim.
     pack : Packer

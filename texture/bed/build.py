@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Mapping, Sequence
 
 import numpy as np
 from numpy.typing import NDArray
@@ -10,6 +10,7 @@ from numpy.typing import NDArray
 from texture.bed.bed import Account, Bed, in_blocks
 from texture.bed.cells import Bools, Cells, Floats
 from texture.bed.classes import ClassProperties, class_properties
+from texture.bed.cores import CoreLayer, moved_fractions
 from texture.bed.land import nearest_water
 from texture.bed.layers import (
     close_classes,
@@ -35,7 +36,7 @@ Flags = NDArray[np.int8]
 SUM_TOLERANCE = 1e-6
 """Sums of the map's parts further from 1 than this are a mistake upstream, not rounding."""
 
-RIM, LAND, SAME, GIVEN = 3, 4, 2, 5
+SAMPLED, SAME, RIM, LAND, GIVEN = 1, 2, 3, 4, 5
 
 
 def make_bed(
@@ -49,6 +50,7 @@ def make_bed(
     rim_parent: Floats | None = None,
     porosity: Callable[[Floats], Floats] | None = None,
     hard_ground: Floats | None = None,
+    cores: Mapping[int, CoreLayer] | None = None,
 ) -> Bed:
     """Make the bed: classes, layers, then the rim, then the smallest fractions, then land.
 
@@ -72,6 +74,8 @@ def make_bed(
         From the porosity that the packing gives (layer, …) to the bed's; dry density and mass follow.
     hard_ground : float array, shape (n,), optional
         Probability that the ground is hard; from the recipe's threshold on nothing but the least thickness can erode.
+    cores : mapping of layer from 0 to CoreLayer, optional
+        How the layers that are filled from cores differ from the map.
 
     Raises
     ------
@@ -97,12 +101,17 @@ def make_bed(
     rim_bed = _rim_bed(rim, classes, parts) if rim is not None and rim_parent is None else np.empty(0)
 
     fraction = np.empty((len(classes.names), len(settings.layers), n))
-    mapped, rimmed, dropped, final = np.zeros((4, *fraction.shape[:2]))  # tonnes by class and layer
+    mapped, rimmed, dropped, final, sampled = np.zeros((5, *fraction.shape[:2]))  # tonnes by class and layer
+    below = _cores_of(settings, cores)
     wet = np.flatnonzero(cells.active)
     for block in in_blocks(wet.size):
         some = wet[block]
         volume = cells.area_m2[some] * thickness[:, some]
-        layers = layer_fractions(to_classes(fractions[some], classes), settings.layers, classes, parts)
+        from_cores = {
+            i: to_classes(moved_fractions(fractions[some], core.shift[some], core.logratio), classes)
+            for i, core in below.items()
+        }
+        layers = layer_fractions(to_classes(fractions[some], classes), settings.layers, classes, parts, from_cores)
         before = _tonnes(layers, classes, volume, pack)
         if rim is not None:
             layers = blend(
@@ -114,6 +123,9 @@ def make_bed(
         rimmed += _tonnes(layers, classes, volume, pack) if rim is not None else before
         dropped += _tonnes(layers, classes, volume, pack, of=small)
         final += _tonnes(kept, classes, volume, pack)
+        if below:
+            reached = np.array([below[i].sampled[some] if i in below else some < 0 for i in range(len(volume))])
+            sampled += _tonnes(kept, classes, volume * reached, pack)
     land = np.flatnonzero(~cells.active)
     if settings.land_fill == "nearest":
         source = nearest_water(cells)
@@ -126,7 +138,7 @@ def make_bed(
         tonnes=_named(classes, final.sum(axis=1)),
         rim_tonnes=_named(classes, (rimmed - mapped).sum(axis=1)),
         least_fraction_tonnes=_named(classes, dropped.sum(axis=1)),
-        share_below_samples=float(final[:, 1:].sum() / final.sum())
+        share_below_samples=float((final - sampled)[:, 1:].sum() / final.sum())
         if final.any()
         else 0.0,  # all of it may be hard ground
         rim_cells=int((weight > 0.0).sum()),
@@ -142,7 +154,7 @@ def make_bed(
         class_fraction=fraction,
         erodible_thickness=thickness,
         class_critical_stress=stress,
-        evidence=_flags(evidence, settings, cells, weight),
+        evidence=_flags(evidence, settings, cells, weight, below),
         rim_weight=weight,
         pack=pack,
         hidden=settings.hiding != "none",
@@ -154,7 +166,7 @@ def make_bed(
 def strength_known(settings: BedSettings, classes: ClassProperties, rim: Rim | None = None) -> bool:
     """Tell whether every class that may have mass in the bed has a critical stress, so that the mixture has one."""
     unknown = np.isnan(layer_stress(settings.layers, classes)).any(axis=1)
-    fills = [layer.fill for layer in settings.layers if layer.fill != "same"]
+    fills = [layer.fill for layer in settings.layers if isinstance(layer.fill, dict)]
     fills += [] if settings.land_fill == "nearest" else [settings.land_fill]
     named = {name for fill in fills for name in fill} | set((rim and rim.classes) or {})
     has_mass = np.array(
@@ -225,11 +237,28 @@ def _named(classes: ClassProperties, values: Floats) -> dict[str, float]:
     return dict(zip(classes.names, values.tolist(), strict=True))
 
 
-def _flags(evidence: NDArray[np.integer], settings: BedSettings, cells: Cells, weight: Floats) -> Flags:
+def _cores_of(settings: BedSettings, cores: Mapping[int, CoreLayer] | None) -> dict[int, CoreLayer]:
+    """Layers that are filled from cores, by their number from 0."""
+    asked = [i for i, layer in enumerate(settings.layers) if layer.fill == "cores"]
+    for i in asked:
+        if cores is None or i not in cores:
+            raise BedError(f'bed.layers[{i}].fill = "cores": what the cores found has to be given as well')
+    return {i: (cores or {})[i] for i in asked}
+
+
+def _flags(
+    evidence: NDArray[np.integer],
+    settings: BedSettings,
+    cells: Cells,
+    weight: Floats,
+    below: Mapping[int, CoreLayer],
+) -> Flags:
     flags = np.empty((len(settings.layers), evidence.size), dtype=np.int8)
     flags[0] = evidence
     for i, layer in enumerate(settings.layers[1:], start=1):
         flags[i] = SAME if layer.fill == "same" else GIVEN
+        if i in below:
+            flags[i] = np.where(below[i].sampled, SAMPLED, SAME)
     flags[:, weight > 0.0] = RIM
     flags[:, ~cells.active] = LAND
     return flags

@@ -120,7 +120,7 @@ def take_stock(
     bed : Bed
         Its tonnes are counted, rim and least fractions included.
     settings : texture.recipe.Bed
-        Which layers repeat the map.
+        Which layers repeat the map; those from cores vary with it.
     cells : Cells
     fractions : float array, shape (n, parts)
         The map.
@@ -133,7 +133,7 @@ def take_stock(
         Of the pairs that are drawn.
     """
     classes = bed.classes
-    same = np.array([layer.fill == "same" for layer in settings.layers])
+    same = np.array([layer.fill in ("same", "cores") for layer in settings.layers])
     mapped = (bed.erodible_thickness * bed.dry_density)[same].sum(axis=0) * cells.area_m2 / 1000.0
     mapped *= 1.0 - bed.rim_weight  # tonnes for each unit of a fraction that the map has
     stocks = []

@@ -66,6 +66,7 @@ def layer_fractions(
     layers: Sequence[Layer],
     classes: ClassProperties,
     parts: Sequence[str] = ("mud", "sand", "gravel"),
+    from_cores: Mapping[int, Floats] | None = None,
 ) -> Floats:
     """Fractions of all layers, shape (k, layer, n): the map on top, below it what the recipe says.
 
@@ -75,11 +76,15 @@ def layer_fractions(
         Class fractions of the map.
     layers : sequence of Layer
         `fill = "same"` repeats the map; a composition is the same in every cell.
+    from_cores : mapping of layer from 0 to float array, shape (k, n)
+        Class fractions of the layers that are filled from cores.
     """
     fraction = np.empty((surface.shape[0], len(layers), surface.shape[1]))
     for i, layer in enumerate(layers):
         if layer.fill == "same":
             fraction[:, i] = surface
+        elif layer.fill == "cores":
+            fraction[:, i] = (from_cores or {})[i]
         else:
             fraction[:, i] = composition_in_classes(layer.fill, classes, parts)[:, None]
     return fraction

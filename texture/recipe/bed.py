@@ -17,9 +17,9 @@ class Layer(Settings):
     """One layer of the bed, from the top."""
 
     thickness_m: Positive = Field(description="thickness where the bed is erodible")
-    fill: Literal["same"] | dict[str, Fraction] = Field(
+    fill: Literal["same", "cores"] | dict[str, Fraction] = Field(
         "same",
-        description='"same" as the map, or a composition in parts or in classes, such as { sand = 0.9, mud = 0.1 }',
+        description='"same" as the map; from "cores" within their reach and the same as the map away from them; or a composition in parts or in classes, such as { sand = 0.9, mud = 0.1 }',
     )
     critical_stress_pa: dict[str, Positive] = Field(
         default_factory=dict,

@@ -65,7 +65,7 @@ class Recipe(Settings):
             if part not in {c.part for c in self.bed.classes}:
                 raise ValueError(f'bed.classes: no class takes part "{part}"; its mass would be lost')
         for i, layer in enumerate(self.bed.layers):
-            if layer.fill != "same":
+            if isinstance(layer.fill, dict):
                 check_composition(f"bed.layers[{i}].fill", layer.fill, parts, classes)
         if self.bed.land_fill != "nearest":
             check_composition("bed.land_fill", self.bed.land_fill, parts, classes)

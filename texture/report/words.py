@@ -182,6 +182,12 @@ def bed_notes(result: Result) -> list[str]:
     notes = [
         f"{100 * account.share_below_samples:.0f} % of the bed's mass lies below any sample: those layers are what the recipe says, not what was found."
     ]
+    for i, core in result.cores.items():
+        share = core.share_sampled(result.found.target.active, result.found.target.area_m2)
+        notes.append(
+            f"Layer {i + 1} is filled from {core.line()}; {100 * share:.0f} % of the water area is within the tested reach of "
+            "one, and the layer fades into the map away from them."
+        )
     if account.rim_cells:
         notes.append(f"The rim touches {account.rim_cells:,} cells; it is numerical, not observed.")
     else:
