@@ -6,6 +6,7 @@ from pathlib import Path
 
 import pytest
 
+from texture import build
 from texture.recipe import Report
 from texture.recipe.file import resolved_toml
 from texture.report import CAUTIONS, result_picture, versions_line, write_figures, write_page
@@ -89,6 +90,20 @@ def test_hostile_text_is_shown_as_text(plain):
     body = without_scripts(page)
     assert "<script>document.title" not in page
     assert body.count("&lt;script&gt;") >= 3  # title, heading, settings
+
+
+def test_a_map_that_is_not_kriged_claims_no_kriging(small, tmp_path):
+    quick = {
+        "validation": {"count": 3, "compare": []},
+        "composition": {"zeros": "replace"},
+        "outputs": {"geotiff": False},
+    }
+    result = build(small, output=tmp_path / "out", method={"name": "inverse_distance"}, **quick)
+    text, references = methods_paragraph(result)
+    assert "come from inverse distance, as back-transformed coordinates" in text
+    assert "kriging" not in text
+    assert "Covariances were fitted" not in text
+    assert not any("Vigsnes" in r or "Patterson" in r for r in references)
 
 
 def test_methods_paragraph_has_this_run_s_numbers_and_its_sources(plain):

@@ -80,7 +80,7 @@ def _coordinates(result: Result) -> str:
 
 def _structure(result: Result) -> str:
     mapper = result.found.mapper
-    if not mapper.has_variance:
+    if not mapper.solves:
         return ""
     fits = []
     for name, c in zip(mapper.column_names, mapper.structure, strict=True):
@@ -108,8 +108,6 @@ def _map(result: Result) -> str:
     cells = f"{int(found.target.active.sum()):,} water cells about {found.cell_side_m:,.0f} m wide"
     inside = result.points_per_side**2
     mean = f"the mean over {inside} points inside each" if inside > 1 else "taken at the centre of each"
-    if not found.mapper.has_variance:
-        return f"Values at {cells} come from {found.validation.method.replace('_', ' ')}, {mean}."
     shared = (
         "in neighbourhoods shared by a small tile (Vigsnes et al. 2017)"
         if method.neighbourhood == "tile"
@@ -118,9 +116,12 @@ def _map(result: Result) -> str:
     back = (
         "expected fractions, which integrate the predicted distribution instead of transforming its mean back "
         "(Pawlowsky-Glahn and Olea 2004)"
-        if method.estimate == "mean"
+        if method.estimate == "mean" and found.mapper.integrates
         else "back-transformed coordinates, near the median of each part"
     )
+    if not found.mapper.solves:
+        name = found.validation.method.replace("_", " ")
+        return f"Values at {cells} come from {name}, as {back}, {mean}; texture classes are the most probable of Folk 1954."
     kriging = KRIGING.get(found.validation.method, "ordinary kriging")
     return (
         f"The map at {cells} is by {kriging} {shared}, as {back}, {mean}; texture classes are the most probable of "
