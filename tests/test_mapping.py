@@ -6,7 +6,8 @@ import numpy as np
 import pytest
 
 from texture.composition import LogRatio
-from texture.mapping import learn, learn_all, make_mapper
+from texture.learning import learn, learn_all
+from texture.mapping import make_mapper
 from texture.observations import Observations
 from texture.recipe import Method
 from texture.scoring import Judge

@@ -9,7 +9,8 @@ from benchmarks.zeros import PARTS, observations, recipe, simulate
 from texture.choosing import limit_effect
 from texture.composition import LogRatio, classify
 from texture.errors import RecipeError
-from texture.mapping import learn, make_mapper
+from texture.learning import learn
+from texture.mapping import make_mapper
 from texture.observations import Observations
 from texture.treatments import Presence, Replace, Shares, candidates
 

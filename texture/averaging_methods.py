@@ -13,7 +13,7 @@ from texture.validation.columns import Columns
 from texture.validation.spread import residual_spread
 
 if TYPE_CHECKING:
-    from texture.mapping import Learned
+    from texture.learning import Learned
 
 __all__ = ["average_held_out"]
 

@@ -14,7 +14,8 @@ from numpy.typing import NDArray
 from texture.cases import MapSettings
 from texture.errors import RecipeError
 from texture.estimate import CELLS_AT_ONCE, mean_in_cells
-from texture.mapping import Mapper, columns_in, learn, make_mapper
+from texture.learning import columns_in, learn
+from texture.mapping import Mapper, make_mapper
 from texture.members import draw_members
 from texture.progress import Progress
 from texture.space import PLANE

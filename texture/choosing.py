@@ -8,7 +8,8 @@ from typing import TYPE_CHECKING
 import numpy as np
 from numpy.typing import NDArray
 
-from texture.mapping import Learned, learn, learn_all, make_mapper
+from texture.learning import Learned, learn, learn_all
+from texture.mapping import make_mapper
 from texture.recipe import Recipe
 from texture.space import PLANE, Space
 from texture.treatments import Censor, Presence, Shares, Treatment, candidates, plain_treatment

@@ -1,6 +1,6 @@
 """Further numbers of the samples, each mapped and validated by the machinery of the composition, on the same folds.
 
-A quantity is one column on its own scale. It is fitted (`texture.mapping.learn_all`), kriged and held out exactly as the
+A quantity is one column on its own scale. It is fitted (`texture.learning.learn_all`), kriged and held out exactly as the
 coordinates of a composition are, calibrated by its own held-out errors and in zones by their stations; what it means in its own unit
 comes last.
 """
@@ -9,7 +9,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, replace
-from typing import TYPE_CHECKING, cast
+from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.typing import NDArray
@@ -17,14 +17,14 @@ from numpy.typing import NDArray
 from texture.composition import Scale
 from texture.errors import SampleError
 from texture.estimate import CELLS_AT_ONCE, EXTRAPOLATED, QUANTILES, SUPPORTED, WIDER
-from texture.mapping import Learned, Mapper, learn_all, make_mapper
+from texture.learning import Learned, learn_all
+from texture.mapping import Mapper, make_mapper
 from texture.observations import Observations
 from texture.progress import Progress
 from texture.recipe import Quantity, Recipe
 from texture.space import PLANE, Space
 from texture.structure.averaging import averaged_out, sampling_distance_m
 from texture.targets import Target, cell_points
-from texture.treatments import Treatment
 from texture.validation.calibration import calibration_factors, out_of_fold_factors
 from texture.validation.columns import Columns
 from texture.validation.folds import Folds
@@ -47,7 +47,7 @@ NORMAL_95 = 1.6448536269514722
 
 @dataclass(frozen=True)
 class _Column:
-    """What a quantity is to `learn_all` and `Mapper`: a treatment of one column instead of a composition's."""
+    """A quantity as `learn_all` and `Mapper` take it, which ask no more than `Columned`: one column, no composition."""
 
     quantity: Quantity
     scale: Scale
@@ -108,7 +108,7 @@ class QuantityModel:
     """
 
     settings: Quantity
-    mapper: Mapper
+    mapper: Mapper[_Column]
     points: Floats
     rows: Ints
     measured: Floats
@@ -207,14 +207,13 @@ def _learn(
             f"{FEWEST} in 2; take the block out of the recipe"
         )
     some = observations.take(known)
-    treatment = cast(Treatment, column)  # what learning and mapping ask of a treatment, the column has
     pairs = [(train, test) for train, test in own.pairs() if train.size >= FEWEST]
-    found: dict[int, tuple[Learned, list[Learned]]] = {}
+    found: dict[int, tuple[Learned[_Column], list[Learned[_Column]]]] = {}
     held_out = []
     for name, space in spaces.items():
         if id(space) not in found:
-            whole = learn_all([(treatment, some, None)], recipe.method, space)[0]
-            tasks = [(treatment, some.take(train), whole.structure) for train, _ in pairs]
+            whole = learn_all([(column, some, None)], recipe.method, space)[0]
+            tasks = [(column, some.take(train), whole.structure) for train, _ in pairs]
             found[id(space)] = whole, learn_all(tasks, recipe.method, space)
         learned, inside = found[id(space)]
         columns = Columns.empty(known.size, 1)
@@ -235,7 +234,7 @@ def _learn(
 
 
 def _judged(
-    name: str, scale: Scale, columns: Columns, learned: Learned, labels: Ints, known: Ints, measured: Floats
+    name: str, scale: Scale, columns: Columns, learned: Learned[_Column], labels: Ints, known: Ints, measured: Floats
 ) -> QuantityMethod:
     """Calibrate on the held-out errors, and go back to the quantity's own unit; a fold is scored with factors of the others."""
     from texture.predict import METHODS

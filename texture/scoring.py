@@ -17,7 +17,7 @@ from texture.validation.held_out import HeldOut, ScoreWeights, score_table
 from texture.validation.spread import out_of_fold_spread, residual_spread
 
 if TYPE_CHECKING:
-    from texture.mapping import Learned
+    from texture.learning import Learned
     from texture.treatments import Treatment
 
 __all__ = ["Judge", "Judged"]

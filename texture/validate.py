@@ -12,7 +12,8 @@ from numpy.typing import NDArray
 
 from texture.averaging_methods import average_held_out
 from texture.choosing import LimitEffect, limit_effect, with_columns_of
-from texture.mapping import Learned, Mapper, columns_in, learn, learn_each, make_mapper
+from texture.learning import Learned, columns_in, learn, learn_each
+from texture.mapping import Mapper, make_mapper
 from texture.observations import Observations
 from texture.progress import Progress
 from texture.recipe import Recipe

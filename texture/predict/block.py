@@ -12,9 +12,9 @@ from typing import NamedTuple
 
 import numpy as np
 
+from texture.compiling import compiled
 from texture.predict.equations import Factors, Models, padded
 from texture.structure.compiled import add_structures
-from texture.structure.jit import compiled
 from texture.structure.linear import forward
 
 __all__ = ["LANES", "Cells", "Lanes", "krige_cells", "make_lanes"]

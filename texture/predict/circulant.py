@@ -17,9 +17,9 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from texture.compiling import compiled
 from texture.predict.draws import LATTICE, STATIONS, colour, generator
 from texture.structure.covariance import Covariance, CovarianceSet
-from texture.structure.jit import compiled
 
 __all__ = ["CirculantPrior", "Lattice", "find_lattice"]
 

@@ -6,8 +6,8 @@ from typing import NamedTuple
 
 import numpy as np
 
+from texture.compiling import compiled
 from texture.predict.neighbours import DEPTH, Tree, make_search, nearest, partition
-from texture.structure.jit import compiled
 
 __all__ = ["SIDE_OVER_REACH", "Boxes", "Cuts", "cut_space", "stations_within"]
 

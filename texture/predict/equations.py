@@ -17,8 +17,8 @@ from typing import NamedTuple
 
 import numpy as np
 
+from texture.compiling import compiled
 from texture.structure.compiled import add_structures
-from texture.structure.jit import compiled
 from texture.structure.linear import factor, forward
 
 __all__ = ["Factors", "Models", "factor_neighbourhood", "make_factors", "padded"]

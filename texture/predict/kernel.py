@@ -4,12 +4,12 @@ from __future__ import annotations
 
 import numpy as np
 
+from texture.compiling import compiled
 from texture.predict.block import LANES, Cells, krige_cells, make_lanes
 from texture.predict.cuts import Boxes
 from texture.predict.equations import Factors, Models, factor_neighbourhood, make_factors
 from texture.predict.neighbours import Tree
 from texture.predict.union import neighbourhood
-from texture.structure.jit import compiled
 
 __all__ = ["factor_stations", "krige_stations", "krige_tiles"]
 

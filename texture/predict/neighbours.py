@@ -9,7 +9,7 @@ from typing import NamedTuple
 
 import numpy as np
 
-from texture.structure.jit import compiled
+from texture.compiling import compiled
 
 __all__ = ["DEPTH", "Search", "Tree", "build_tree", "make_search", "nearest", "partition"]
 

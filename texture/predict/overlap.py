@@ -10,9 +10,9 @@ from __future__ import annotations
 
 import numpy as np
 
+from texture.compiling import compiled
 from texture.predict.cuts import Boxes, Cuts
 from texture.predict.neighbours import DEPTH
-from texture.structure.jit import compiled
 
 __all__ = ["average", "count_tiles", "list_tiles", "sort_by_tile"]
 

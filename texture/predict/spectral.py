@@ -19,11 +19,11 @@ from collections.abc import Sequence
 import numpy as np
 from numpy.typing import NDArray
 
+from texture.compiling import compiled
 from texture.predict.draws import AMPLITUDES, colour, generator
 from texture.predict.spectra import density, radius_quantile, spectral_dimensions
 from texture.predict.threads import on_threads
 from texture.structure.covariance import Covariance, CovarianceSet, Structure
-from texture.structure.jit import compiled
 
 __all__ = ["SpectralPrior"]
 

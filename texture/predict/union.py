@@ -15,9 +15,9 @@ from __future__ import annotations
 
 import numpy as np
 
+from texture.compiling import compiled
 from texture.predict.cuts import Boxes, stations_within
 from texture.predict.neighbours import DEPTH, Tree, make_search, nearest
-from texture.structure.jit import compiled
 
 __all__ = ["LEAF", "capacity", "neighbourhood"]
 

@@ -4,10 +4,10 @@ from __future__ import annotations
 
 import numpy as np
 
+from texture.compiling import compiled
 from texture.predict.block import Cells, krige_cells, make_lanes
 from texture.predict.equations import Models, factor_neighbourhood, make_factors
 from texture.predict.neighbours import Tree, make_search, nearest
-from texture.structure.jit import compiled
 
 __all__ = ["choose_nearest", "krige_nearest"]
 

@@ -16,7 +16,7 @@ from llvmlite import ir  # type: ignore[import-untyped]  # ships no annotations
 from numba import types
 from numba.extending import intrinsic
 
-from texture.structure.jit import compiled
+from texture.compiling import compiled
 from texture.structure.models import (
     CUBIC,
     EXPONENTIAL,

@@ -10,7 +10,7 @@ import math
 
 import numpy as np
 
-from texture.structure.jit import compiled
+from texture.compiling import compiled
 
 __all__ = ["REDUNDANT", "factor", "forward"]
 

@@ -13,8 +13,8 @@ from concurrent.futures import ThreadPoolExecutor
 import numpy as np
 from numpy.typing import NDArray
 
+from texture.compiling import compiled
 from texture.structure.compiled import add_structures
-from texture.structure.jit import compiled
 from texture.structure.likelihood import Family, Parameters
 from texture.structure.linear import factor, forward
 
