@@ -16,6 +16,7 @@ TAKEN_NAMES = frozenset((
     "mud_high", "sand_low", "sand_high", "gravel_low", "gravel_high", "median_phi", "mud_below_mm", "gravel_above_mm", "held_out_z",
     "geometry", "x", "y", "column", "face", "node", "layer", "class", "quantile", "evidence", "texture_class", "texture_class_probability",
     "crs", "mesh", "depth", "method", "fold", "nearest_kept_m", "all",
+    "sample_distance", "expected_error",
 ))  # fmt: skip
 """What columns of tables and variables of files are already called."""
 TAKEN_ENDS = ("_bounds", "_fraction", "_fraction_quantile", "_half_width")
