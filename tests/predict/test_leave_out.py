@@ -89,6 +89,35 @@ def test_in_tiles_each_station_leaves_its_own_tile():
         assert [mean[i, 0], variance[i, 0]] == pytest.approx(expected, abs=1e-9)
 
 
+def test_in_tiles_coincident_and_smooth_stations():
+    # Exact samples at one place tell one another: without one of them its value is still known.
+    rng = np.random.default_rng(3)
+    points = rng.random((150, 2)) * 1000.0
+    points[100:] = points[:50]
+    z = np.sin(points[:, 0] / 150.0) + points[:, 1] / 500.0
+    mean, variance = leave_out(Kriging(Covariance([Structure("exponential", 1.0, 600.0)]), 12).fit(points, z))
+    twice = np.r_[0:50, 100:150]
+    assert mean[twice, 0] == pytest.approx(z[twice], abs=1e-6)
+    assert variance[twice, 0] == pytest.approx(0.0, abs=1e-9)
+    assert (variance[50:100, 0] > 0.01).all()
+    # A model so smooth that its matrix is singular to rounding answers for every station all the same.
+    with pytest.warns(match="Gaussian|gaussian"):
+        smooth = Kriging(Covariance([Structure("gaussian", 1.0, 2000.0)]), 12).fit(points[:100], z[:100])
+    mean, _ = leave_out(smooth)
+    assert np.abs(mean[:, 0] - z[:100]).max() < 0.5
+
+
+def test_more_stations_at_one_place_than_a_neighbourhood_holds():
+    rng = np.random.default_rng(4)
+    points, z = rng.random((700, 2)) * 1000.0, rng.normal(size=700)
+    points[:500] = [300.0, 400.0]
+    mean, variance = leave_out(Kriging(Covariance([Structure("exponential", 1.0, 600.0)], noise=0.5), 4).fit(points, z))
+    assert np.isfinite(mean).all()
+    # Hundreds of neighbours at the place itself: the error's variance is the sample's own noise and little more.
+    assert (variance[:500, 0] > 0.5).all()
+    assert (variance[:500, 0] < 0.56).all()
+
+
 def test_what_the_rest_cannot_support_is_nan():
     points, z = np.arange(5.0)[:, None], np.array([1.0, 2, 3, 4, 5])
     k = Kriging(Covariance([], 1.0), None).fit(points, z, drift=[0.0, 0, 0, 0, 1])

@@ -17,7 +17,7 @@ from texture.predict.equations import Factors, Models, padded
 from texture.structure.compiled import add_structures
 from texture.structure.linear import forward
 
-__all__ = ["LANES", "Cells", "Lanes", "krige_cells", "make_lanes"]
+__all__ = ["LANES", "Cells", "Lanes", "block_size", "krige_cells", "make_lanes", "substitute"]
 
 # Measured with 80 stations: forward substitution makes 43 billion multiply-adds a second with 80 or 40 cells in a
 # block and 36 with 64 or 96 (their rows lie a multiple of 512 bytes apart and fall on the same cache sets).
@@ -168,6 +168,18 @@ def _solve_block(
             row = w[i]
             for c in range(lanes):
                 row[c] = 0.0
+    substitute(u, columns, q, w, sums)
+
+
+@compiled
+def substitute(u: np.ndarray, columns: np.ndarray, q: int, w: np.ndarray, sums: np.ndarray) -> None:
+    """Forward substitution of the right-hand sides `w` (m, lanes) in place, and the sums of squares and products.
+
+    Parameters
+    ----------
+    sums : (1 + q, lanes), written: w'w, then each transformed column's product with w
+    """
+    m, lanes = w.shape
     forward(u, w)
     square = sums[0]
     for j in range(q + 1):

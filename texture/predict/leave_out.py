@@ -20,6 +20,13 @@ __all__ = ["leave_out"]
 
 Array = NDArray[np.float64]
 
+# Each sample's variance is raised by this part of itself, so that a redundant sample does not spoil the inverse of the
+# others: twice the part below which the kernel drops one.
+FLOOR = 2e-12
+
+# A sample or group of which the drift leaves less than this part of inv(K) is all that tells the drift.
+UNTOLD = 1e-10
+
 
 def leave_out(kriging: Kriging, groups: ArrayLike | None = None) -> tuple[Array, Array]:
     """Predict each sample from all others, or from all outside its group.
@@ -43,8 +50,6 @@ def leave_out(kriging: Kriging, groups: ArrayLike | None = None) -> tuple[Array,
     StructureError
         Groups with tiles; the "nearest" neighbourhood, whose stations change when one is left out.
     """
-    from threadpoolctl import threadpool_limits  # type: ignore[import-untyped]  # ships no annotations
-
     stations = kriging.stations
     mean = np.full(stations.values.shape, np.nan)
     variance = np.full(stations.values.shape, np.nan)
@@ -61,26 +66,24 @@ def leave_out(kriging: Kriging, groups: ArrayLike | None = None) -> tuple[Array,
         elif groups is not None:
             raise StructureError("leave_out: groups need neighbours=None (all stations)")
         else:
-            with threadpool_limits(limits=1, user_api="blas"):  # a hundred rows: threads cost ten times what they save
-                _leave_out_of_tiles(system, mean, variance)
+            _leave_out_of_tiles(system, mean, variance)
     return mean, variance
 
 
-def _bordered_inverse(system: System, k: int, rows: Any) -> tuple[Array, Array, Array]:
-    """Upper left block of the inverse of the bordered matrix for some stations, that block times the values, inv(K).
+def _bordered_inverse(system: System, k: int) -> tuple[Array, Array, Array]:
+    """Upper left block of the inverse of the bordered matrix, that block times the values, inv(K).
 
     By way of the covariance's own inverse: B = inv(K) - inv(K) F inv(F' inv(K) F) F' inv(K).
     """
     from scipy.linalg import cho_factor, cho_solve
 
-    covariance = system.station_covariance(k, rows)
-    # The same relative floor as the kernel's: a redundant sample must not spoil the inverse of the others.
-    covariance[np.diag_indices(len(covariance))] *= 1.0 + 1e-12
+    covariance = system.station_covariance(k)
+    covariance[np.diag_indices(len(covariance))] *= 1.0 + FLOOR
     inverse = cho_solve(cho_factor(covariance, lower=True), np.eye(len(covariance)))
-    drift = system.models.columns[k][rows][:, : system.drifts]
+    drift = system.models.columns[k][:, : system.drifts]
     weighted = inverse @ drift
     bordered = inverse - weighted @ np.linalg.pinv(drift.T @ weighted, hermitian=True) @ weighted.T
-    return bordered, bordered @ system.models.columns[k][rows, system.drifts], inverse
+    return bordered, bordered @ system.models.columns[k, :, system.drifts], inverse
 
 
 def _restore(system: System, k: int, row: Any, departure: Any) -> Any:
@@ -95,12 +98,12 @@ def _leave_groups_out(system: System, labels: NDArray[np.int64], mean: Array, va
     own = labels[system.rows]
     members = [np.flatnonzero(own == g) for g in np.unique(own)]
     for k, column in enumerate(system.columns):
-        bordered, weighted, inverse = _bordered_inverse(system, k, np.arange(len(system.rows)))
+        bordered, weighted, inverse = _bordered_inverse(system, k)
         value = system.models.columns[k, :, system.drifts]
         for group in members:
             block = bordered[np.ix_(group, group)]
             # The drift took away from inv(K) all that the group tells: without it the drift (or the mean) is not known.
-            if eigh(block, inverse[np.ix_(group, group)], eigvals_only=True)[0] < 1e-10:
+            if eigh(block, inverse[np.ix_(group, group)], eigvals_only=True)[0] < UNTOLD:
                 continue
             spread = np.linalg.inv(block)
             error = spread @ weighted[group]
@@ -109,24 +112,31 @@ def _leave_groups_out(system: System, labels: NDArray[np.int64], mean: Array, va
 
 
 def _leave_out_of_tiles(system: System, mean: Array, variance: Array) -> None:
-    tiles, n = system.tiles, len(system.rows)
-    begin, tile, weight = tiles.serving(system.models.points)
-    station = np.repeat(np.arange(n), np.diff(begin))
-    by_tile = np.argsort(tile, kind="stable")
-    departure, spread = np.zeros((n, len(system.columns))), np.zeros((n, len(system.columns)))
-    for pairs in np.split(by_tile, np.flatnonzero(np.diff(tile[by_tile])) + 1):
-        rows = tiles.stations(int(tile[pairs[0]]))
-        place = np.empty(n, dtype=np.int64)
-        place[rows] = np.arange(len(rows))
-        here = place[station[pairs]]
-        for k in range(len(system.columns)):
-            bordered, weighted, inverse = _bordered_inverse(system, k, rows)
-            own = np.diag(bordered)[here]
-            told = own > 1e-10 * np.diag(inverse)[here]
-            own = 1.0 / np.where(told, own, np.nan)
-            value = system.models.columns[k, station[pairs], system.drifts]
-            departure[station[pairs], k] += weight[pairs] * (value - own * weighted[here])
-            spread[station[pairs], k] += weight[pairs] * own
+    from texture.predict.leave_one_out import leave_out_of_runs
+    from texture.predict.overlap import sort_by_tile
+    from texture.predict.threads import in_parts_of_equal_cost
+    from texture.predict.union import capacity
+
+    tiles, models, n = system.tiles, system.models, len(system.rows)
+    begin, tile, weight = tiles.serving(models.points)
+    start, which, slot = sort_by_tile(len(tiles), begin, tile)
+    used = np.flatnonzero(np.diff(start))
+    runs = np.append(start[used], start[-1])
+    own = models.noise + np.array([c.sill for c in system.covariances])[:, None]
+    own += models.survey_variance[:, models.survey]
+    raised = models._replace(noise=models.noise + FLOOR * own)
+    most = capacity(models.points.shape[1], system.neighbours, n)
+    value, spread = np.empty((len(which), len(system.columns))), np.empty((len(which), len(system.columns)))
+
+    def run(first: int, last: int) -> None:
+        leave_out_of_runs(
+            raised, tiles.tree, tiles.boxes, system.neighbours, most, used[first:last], runs[first : last + 1], which,
+            UNTOLD, value, spread,
+        )  # fmt: skip
+
+    in_parts_of_equal_cost(run, np.diff(runs) + 60)
+    # Pairs of a station stand together, and each station has at least one.
     for k, column in enumerate(system.columns):
-        mean[system.rows, column] = _restore(system, k, np.arange(n), departure[:, k])
-        variance[system.rows, column] = spread[:, k]
+        departure = np.add.reduceat(weight * value[slot, k], begin[:-1])
+        mean[system.rows, column] = _restore(system, k, np.arange(n), departure)
+        variance[system.rows, column] = np.add.reduceat(weight * spread[slot, k], begin[:-1])
