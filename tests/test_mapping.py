@@ -164,3 +164,17 @@ def test_what_is_scored_is_what_is_mapped(stations):
     )
     np.testing.assert_array_equal(median, LR.inverse(columns.mean))
     assert np.abs(mean - median).max() > 0.01
+
+
+def test_the_seed_of_the_recipe_reaches_forests_and_their_variance_is_that_of_a_sample(stations):
+    learned, method = learn(Replace(LR), stations, Method()), Method()
+    forests = [make_mapper("forest", learned, method, seed=seed) for seed in (1, 1, 2)]
+    places = stations.points[:20] + 300.0
+    means = [forest.predict(places)[0] for forest in forests]
+    np.testing.assert_array_equal(means[0], means[1])
+    assert (means[0] != means[2]).any()
+    assert make_mapper("forest_kriging", learned, method, seed=7).predictor.forest.seed == 7
+    own = np.full((20, 2), 0.3) + np.array([c.noise + c.survey for c in learned.structure])
+    for name, expected in (("forest", np.maximum), ("kriging", np.add)):
+        columns = make_mapper(name, learned, method, seed=1).columns(places, np.full((20, 2), 0.3))
+        np.testing.assert_allclose(columns.sample_variance, expected(columns.variance, own), rtol=1e-12)

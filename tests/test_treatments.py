@@ -102,8 +102,12 @@ def test_presence_reads_words_and_limits_only_where_they_tell():
 def test_half_and_twice_the_limit_move_the_mean_of_what_is_replaced():
     field = simulate("patches", 0.3, 1)
     cells, o, method = field.cells, observations(field.points, field.measured), recipe().method
-    effect = limit_effect(learn(Replace(LR), o, method), method, cells[::7])
+
+    def kriged(learned):
+        return make_mapper("kriging", learned, method)
+
+    effect = limit_effect(learn(Replace(LR), o, method), method, cells[::7], kriged)
     assert effect.cells == len(cells[::7])
     assert effect.halved[2] < effect.mean[2] < effect.doubled[2]
     np.testing.assert_allclose([sum(effect.mean), sum(effect.halved), sum(effect.doubled)], 1.0, atol=1e-9)
-    assert limit_effect(learn(Shares(LogRatio(PARTS, "shares")), o, method), method, cells[::7]) is None
+    assert limit_effect(learn(Shares(LogRatio(PARTS, "shares")), o, method), method, cells[::7], kriged) is None

@@ -119,3 +119,19 @@ def test_zones_that_ask_no_station_are_no_emptier_for_a_radius(small, tmp_path):
     zone, shown = result.found.mapper.zones.cells.zone, result.estimate.within_radius.fractions
     assert np.isfinite(shown[zone > 0]).all()
     assert np.isnan(shown[zone == 0]).any()
+
+
+def test_the_effect_of_the_limit_is_that_of_the_map_in_its_zones(small, tmp_path):
+    given = {"name": "east", "polygons": polygons(tmp_path, EAST), "kind": "given", "composition": {"mud": 1.0}}
+    result = build(
+        small,
+        output=tmp_path / "out",
+        zones=[given],
+        rim=None,
+        target={"points_per_cell": 1},
+        method={"name": "best"},
+        **QUICK,
+    )
+    effect = result.found.validation.limit_effect
+    np.testing.assert_allclose(effect.mean, np.nanmean(result.estimate.fractions, axis=0), atol=1e-9)
+    assert effect.mean[0] > 0.5

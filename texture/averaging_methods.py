@@ -84,6 +84,8 @@ def _mixed(members: Mapping[str, Columns], settings: Mapping[str, Any], rows: In
         np.tile(spreads[name], (len(rows), 1)) if name in spreads else members[name].variance[rows] for name in weights
     ]
     mean, variance = mix(means, variances, np.array(list(weights.values())))
-    noise = next(iter(members.values())).noise[rows]
+    # The spread of held-out errors has the samples' noise in it already.
+    plain = np.zeros_like(mean)
+    noise = sum((w * members[n].noise[rows] for n, w in weights.items() if n not in spreads), plain)
     correlation = np.broadcast_to(learned.structure.correlation, (len(rows), *learned.structure.correlation.shape))
     return Columns(mean, variance, noise, correlation)

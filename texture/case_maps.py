@@ -113,7 +113,7 @@ def _fitted(found: Validated, limit: float | None, stretch: float) -> Mapper:
             for c in structure
         ]  # fmt: skip
         learned = replace(learned, structure=CovarianceSet(longer, structure.correlation))
-    return replace(found.validation, learned=learned).mapper(method)
+    return replace(found.validation, learned=learned).mapper(found.recipe)
 
 
 def _control(found: Validated, name: str) -> Mapper:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
@@ -9,15 +10,16 @@ import numpy as np
 from numpy.typing import NDArray
 
 from texture.learning import Learned, learn, learn_all
-from texture.mapping import make_mapper
 from texture.recipe import Recipe
 from texture.space import PLANE, Space
 from texture.treatments import Censor, Presence, Shares, Treatment, candidates, plain_treatment
 
 if TYPE_CHECKING:
+    from texture.mapping import Mapper
     from texture.observations import Observations
     from texture.recipe import Method
     from texture.structure import CovarianceSet
+    from texture.zones import Share
 
 __all__ = ["LimitEffect", "fit_candidates", "limit_effect", "warm_start", "with_columns_of"]
 
@@ -81,17 +83,27 @@ def warm_start(treatment: Treatment, plain: Learned) -> CovarianceSet | None:
     return CovarianceSet([*plain.structure, indicator])
 
 
-def limit_effect(learned: Learned, method: Method, places: Floats) -> LimitEffect | None:
+def limit_effect(
+    learned: Learned,
+    method: Method,
+    places: Floats,
+    make: Callable[[Learned], Mapper],
+    share: Share | None = None,
+) -> LimitEffect | None:
     """Map some places with the limit of a treatment halved and doubled; None for shares, which know none.
 
     Parameters
     ----------
     learned : Learned
-        What the map is made from.
+        What the map is made from, before calibration.
     method : Method
         Of the recipe.
     places : float array, shape (m, 2)
         Cells in the plane, a few thousand at most.
+    make : callable
+        Makes of something learned what the map would be made with: the chosen method, calibrated, in its zones.
+    share : Share, optional
+        Of the places, where there are zones.
     """
     treatment = learned.treatment
     if isinstance(treatment, Shares):
@@ -102,9 +114,10 @@ def limit_effect(learned: Learned, method: Method, places: Floats) -> LimitEffec
     )
     means = []
     for other in (learned, *others):
-        mapper = make_mapper(method.tried_with, other, method)
-        mean, variance = mapper.predict(places)
+        mapper = make(other)
+        mean, variance = mapper.predict(places, share)
         fractions = mapper.back(mean) if method.estimate == "median" else mapper.expected(mean, variance)
+        fractions = mapper.impose(fractions, share)
         means.append(tuple(float(v) for v in fractions.mean(axis=0)))
     return LimitEffect(treatment.limit, means[0], means[1], means[2], len(places))
 

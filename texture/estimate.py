@@ -130,7 +130,7 @@ def estimate_on(
             inside = cell_points(target, some, per_side, plane.to_metres)
             shape = inside.shape[:2]
             share = None if zones is None else zones.cells.take(some)
-            m, v, rung = mapper.predict_with_rung(
+            m, v, rung, guessed = mapper.predict_with_rung(
                 inside.reshape(-1, inside.shape[-1]), None if share is None else share.repeat(shape[1])
             )
             back = mapper.back(m) if median else mapper.expected(m, v)
@@ -145,7 +145,7 @@ def estimate_on(
             error[some] = support.curve.at(unlike)
             evidence[some] = np.where(unlike <= support.reach_m, SUPPORTED, EXTRAPOLATED)
             fell_back = rung.reshape(*shape).max(axis=1) > 0
-            evidence[some[fell_back]] = WIDER
+            evidence[some[fell_back | guessed.reshape(*shape).any(axis=1)]] = WIDER
             if share is not None:  # a zone that is filled with a composition or a mean asks no station how near it is
                 fell_back &= ~mapper.needs_no_station(share)
             outside[some[fell_back]] = mapper.has_radius

@@ -123,28 +123,34 @@ class Mapper(Generic[T]):
             variance = np.tile(self.error[0], (len(mean), 1))
         return mean, variance if self.factors is None else variance * self.factors, rung
 
-    def predict_with_rung(self, points: Floats, share: Share | None = None) -> tuple[Floats, Floats, NDArray[np.int8]]:
+    def predict_with_rung(
+        self, points: Floats, share: Share | None = None
+    ) -> tuple[Floats, Floats, NDArray[np.int8], NDArray[np.bool_]]:
         """Mean, variance, and per point how far the neighbourhood had to look: 0 the usual one, above it wider.
 
-        A point that lacks a covariate counts as 1.
+        The last array tells which points lack a covariate, so that the nearest value stands in, or lie off the water that is laid out.
         """
         seen = self.space.at(points)
-        guessed = seen.missing.astype(np.int8)
         if not self.solves or (self.by_zone is not None and share is not None):
-            mean, variance, rung = self._predict_seen(seen, share)
-            return mean, variance, np.maximum(rung, guessed)
+            return *self._predict_seen(seen, share), seen.missing
         mean, variance, rung = self.predictor.predict_with_support(seen.points, drift=seen.drift)
-        return mean, variance, np.maximum(rung.max(axis=1), guessed)
+        return mean, variance, rung.max(axis=1), seen.missing
 
-    def sample_variance(self, variance: Floats, noise: Floats) -> Floats:
-        """Variance of a new sample: of the bed, of its analysis (per row) and of its survey's offset."""
-        return np.asarray(variance + noise + np.array([c.noise + c.survey for c in self.structure]))
+    def added_by_sample(self, variance: Floats, noise: Floats) -> Floats:
+        """What a new sample adds to the variance of the bed: noise of its analysis (per row) and the offset of its survey.
+
+        Where the method's variance is that of a sample already, only what that falls short of the sample's own noise by.
+        """
+        from texture.predict import METHODS
+
+        own = noise + np.array([c.noise + c.survey for c in self.structure])
+        return np.asarray(np.maximum(own - variance, 0.0) if METHODS[self.name].variance_of_sample else own)
 
     def columns(self, points: Floats, noise: Floats, share: Share | None = None) -> Columns:
         """Predictions of samples at points, of which the analysis is known to have a noise of its own, shape (n, k)."""
         mean, variance = self.predict(points, share)
         correlation = np.broadcast_to(self.correlation, (len(mean), *self.correlation.shape))
-        return Columns(mean, variance, self.sample_variance(np.zeros_like(mean), noise), correlation)
+        return Columns(mean, variance, self.added_by_sample(variance, noise), correlation)
 
     @property
     def correlation(self) -> Floats:
@@ -198,6 +204,7 @@ def make_mapper(
     error: tuple[Floats, Floats] | None = None,
     factors: Floats | None = None,
     zones: Zones | None = None,
+    seed: int = 0,
     **settings: Any,
 ) -> Mapper[T]:
     """Fit one method on the stations that a treatment has learned from, in the space that it learned in.
@@ -215,12 +222,15 @@ def make_mapper(
         Calibration of a variance that does not come from the structure of `learned`.
     zones : Zones, optional
         In each zone the method is fitted to the stations that are heard there, with the same structure.
+    seed : int
+        Of the recipe, for methods that draw.
     **settings
         Further arguments of the method's class.
     """
     from texture.predict import METHODS, make_method
 
-    settings = {**{key: getattr(method, key) for key in METHODS[name].settings}, **settings}
+    of_recipe = {key: seed if key == "seed" else getattr(method, key) for key in METHODS[name].settings}
+    settings = {**of_recipe, **settings}
     seen, chosen = learned.seen, METHODS[name]
 
     def make() -> Any:

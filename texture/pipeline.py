@@ -213,6 +213,6 @@ def _validated(
         )
         recipe = with_method(recipe, validation.method)
         quantities = learn_quantities(stations, observations, validation.folds, recipe, progress, spaces, zones)
-    mapper = validation.mapper(recipe.method, zones)
+    mapper = validation.mapper(recipe, zones)
     stations = flag_stations(stations, mapper, observations)
     return Validated(recipe, stations, target, plane, observations, mapper, validation, quantities, spaces)

@@ -218,7 +218,7 @@ def _learn(
         learned, inside = found[id(space)]
         columns = Columns.empty(known.size, 1)
         for (_, test), fold in zip(pairs, inside, strict=True):
-            fitted = make_mapper(name, fold, recipe.method, zones=zones)
+            fitted = make_mapper(name, fold, recipe.method, zones=zones, seed=recipe.seed)
             share = None if zones is None else zones.stations.take(some.rows[test])
             columns.put(test, fitted.columns(some.points[test], learned.sample_noise[test], share))
         held_out.append(_judged(name, column.scale, columns, learned, own.labels, known, measured))
@@ -227,9 +227,9 @@ def _learn(
     name = recipe.method.tried_with
     learned, factors = found[id(spaces[name])][0], np.array([held_out[0].factor])
     if solves(name):
-        mapper = make_mapper(name, learned.calibrated(factors), recipe.method, zones=zones)
+        mapper = make_mapper(name, learned.calibrated(factors), recipe.method, zones=zones, seed=recipe.seed)
     else:
-        mapper = make_mapper(name, learned, recipe.method, factors=factors, zones=zones)
+        mapper = make_mapper(name, learned, recipe.method, factors=factors, zones=zones, seed=recipe.seed)
     return QuantityModel(quantity, mapper, some.points, some.rows, measured, tuple(held_out), reach_m)
 
 
@@ -277,13 +277,13 @@ def _map(
         points = cell_points(target, some, per_side, plane.to_metres)
         share = None if zones is None else zones.cells.take(some)
         around = None if share is None else share.repeat(points.shape[1])
-        m, v, rung = (
+        m, v, rung, guessed = (
             a.reshape(points.shape[:2]) for a in mapper.predict_with_rung(points.reshape(-1, points.shape[-1]), around)
         )
         beyond = _beyond(model, points.mean(axis=1), share)
         evidence[some] = np.where(beyond, EXTRAPOLATED, SUPPORTED)
         fell_back = rung.max(axis=1) > 0
-        evidence[some[fell_back]] = WIDER
+        evidence[some[fell_back | guessed.any(axis=1)]] = WIDER
         if mapper.has_variance:
             mean[some] = scale.expected(m, v).mean(axis=1)
             middle, whole = m.mean(axis=1), v.mean(axis=1)

@@ -28,7 +28,6 @@ from texture.validation.resampling import block_weights, map_weights
 from texture.zero_choice import Choice, Tried, choose
 
 if TYPE_CHECKING:
-    from texture.recipe import Method
     from texture.structure import CovarianceSet
     from texture.structure.plane import Plane
     from texture.targets import Target
@@ -121,12 +120,21 @@ class Validation:
         """Name of the map's method."""
         return self.methods[0].method
 
-    def mapper(self, method: Method, zones: Zones | None = None) -> Mapper:
+    def mapper(self, recipe: Recipe, zones: Zones | None = None) -> Mapper:
         """Fit the map's method on all stations, in each zone on those that are heard there."""
         from texture.predict import solves
 
         factors = None if solves(self.method) else self.judged.factors
-        return make_mapper(self.method, self.learned, method, self.judged.error, factors, zones, **self.judged.settings)
+        return make_mapper(
+            self.method,
+            self.learned,
+            recipe.method,
+            self.judged.error,
+            factors,
+            zones,
+            recipe.seed,
+            **self.judged.settings,
+        )
 
 
 def validate_methods(
@@ -162,10 +170,11 @@ def validate_methods(
     zones : Zones, optional
         A station is predicted by the rule of the zone it stands in; in a zone whose composition is given it is not scored.
     """
-    from texture.predict import METHODS, solves
+    from texture.predict import METHODS
 
     limit, points = recipe.composition.detection_limit, observations.points
-    places = _map_points(target, plane, recipe.seed)
+    cells = _map_cells(target, recipe.seed)
+    places = plane.to_metres(target.longitude[cells], target.latitude[cells])
     block_m = _block_m(points, plain.structure, recipe.validation.count)
     folds = make_folds(
         recipe.validation.folds,
@@ -214,7 +223,6 @@ def validate_methods(
     judged = [judge.compare(j, controls) for j in judged]
     pairs = zip(choice.tried, judged[:first], strict=True)
     choice = replace(choice, tried=[replace(t, held_out=j.held_out) for t, j in pairs])
-    effect = limit_effect(treated[taken], recipe.method, places[:: max(1, -(-len(places) // MOST_LIMIT_CELLS))])
     methods = [judged[taken], *judged[first:]]
     standings = _standings([j.held_out for j in methods], weights)
     wanted: str = recipe.method.name
@@ -223,20 +231,37 @@ def validate_methods(
     methods.sort(key=lambda j: j.held_out.method != wanted)
     chosen = methods[0]
     learned = runs[judged.index(chosen)][1]
-    if chosen.factors is not None and solves(chosen.held_out.method):
-        learned = learned.calibrated(chosen.factors)
-    return Validation(
+    calibrated = _calibrated(learned, chosen)
+    validation = Validation(
         folds,
         [j.held_out for j in methods],
-        find_support(learned.space, learned.structure, points, folds, scored, chosen.held_out),
+        find_support(learned.space, calibrated.structure, points, folds, scored, chosen.held_out),
         choice,
-        learned,
+        calibrated,
         plain,
-        effect,
+        None,
         chosen,
         standings,
         block_m,
         searched=recipe.method.name == "best",
+    )
+    thinned = slice(None, None, max(1, -(-len(cells) // MOST_LIMIT_CELLS)))
+    effect = limit_effect(
+        learned,
+        recipe.method,
+        places[thinned],
+        lambda other: replace(validation, learned=_calibrated(other, chosen)).mapper(recipe, zones),
+        None if zones is None else zones.cells.take(cells[thinned]),
+    )
+    return replace(validation, limit_effect=effect)
+
+
+def _calibrated(learned: Learned, judged: Judged) -> Learned:
+    """What was learned, with the variances that a method's held-out errors want; other methods keep factors of their own."""
+    from texture.predict import solves
+
+    return (
+        learned if judged.factors is None or not solves(judged.held_out.method) else learned.calibrated(judged.factors)
     )
 
 
@@ -295,7 +320,7 @@ class _Bench:
             for fold, inside in zip(open_folds, folds, strict=True):
                 test = pairs[fold][1]
                 share = None if self.zones is None else self.zones.stations.take(observations.rows[test])
-                mapper = make_mapper(name, inside, self.recipe.method, zones=self.zones)
+                mapper = make_mapper(name, inside, self.recipe.method, zones=self.zones, seed=self.recipe.seed)
                 columns = mapper.columns(observations.points[test], sample_noise[test], share)
                 found.put(test, columns)
                 fitted = inside.structure is not learned.structure
@@ -338,8 +363,8 @@ def _block_m(points: Floats, structure: CovarianceSet, count: int) -> float:
     return min(longest, most) if longest > 0.0 else most
 
 
-def _map_points(target: Target, plane: Plane, seed: int) -> Floats:
+def _map_cells(target: Target, seed: int) -> Ints:
     cells = np.flatnonzero(target.active)
     if cells.size > MOST_MAP_POINTS:
         cells = np.sort(np.random.default_rng(seed).choice(cells, MOST_MAP_POINTS, replace=False))
-    return plane.to_metres(target.longitude[cells], target.latitude[cells])
+    return cells

@@ -55,11 +55,13 @@ class Method:
     needs_covariance : bool
     has_variance : bool
     settings : tuple of str
-        What of a recipe's `[method]` it is made with.
+        What of a recipe's `[method]` it is made with; "seed" is the recipe's own.
     distance : {"plane", "in_water", "with_covariates"}
         The space that it sees places in.
     drift : bool
         Whether its mean follows drift columns.
+    variance_of_sample : bool
+        Whether its variance is that of a further sample, noise of analysis and offset of survey included.
     """
 
     make: Callable[..., Predictor]
@@ -68,6 +70,7 @@ class Method:
     settings: tuple[str, ...] = ()
     distance: str = "plane"
     drift: bool = False
+    variance_of_sample: bool = False
 
 
 KRIGING_SETTINGS = ("neighbours", "neighbourhood", "radius_m", "at_least", "per_sector_at_most")
@@ -103,11 +106,13 @@ METHODS: dict[str, Method] = {
     "kriging_in_water": _kriging("in_water"),
     "kriging_with_covariates": _kriging("with_covariates"),
     "kriging_with_drift": _kriging(drift=True),
-    "forest": Method(lambda covariance, **settings: Forest(**settings), False, True, drift=True),
-    "forest_kriging": Method(
-        lambda covariance, **settings: ForestKriging(**settings), False, True, ("neighbours",), drift=True
+    "forest": Method(
+        lambda covariance, **settings: Forest(**settings), False, True, ("seed",), drift=True, variance_of_sample=True
     ),
-    "average": Method(_average, True, True, KRIGING_SETTINGS),
+    "forest_kriging": Method(
+        lambda covariance, **settings: ForestKriging(**settings), False, True, ("neighbours", "seed"), drift=True
+    ),
+    "average": Method(_average, True, True, (*KRIGING_SETTINGS, "seed")),
 }
 
 
