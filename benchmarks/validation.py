@@ -51,6 +51,7 @@ def simulated(count: int, seed: int = 1) -> Observations:
         points=points, fractions=fractions, step=np.zeros(count), low=nothing, high=nothing,
         described=np.full(count, "", dtype="<U8"), mud_of_fines=nan, survey=np.zeros(count, dtype=np.int64),
         accuracy_m=np.zeros(count), measured=np.ones(count, dtype=bool), rows=np.arange(count), median_phi=nan,
+        repeats=np.ones(count, dtype=np.int64), repeat_sd=nothing,
     )  # fmt: skip
 
 

@@ -135,6 +135,7 @@ def observations(points: Floats, fractions: Floats) -> Observations:
     return Observations(
         points, fractions, np.full(n, 0.001), unknown, unknown.copy(), np.full(n, "", dtype="<U8"), np.full(n, np.nan),
         np.zeros(n, dtype=np.int64), np.ones(n, dtype=bool), np.arange(n), np.full(n, np.nan), np.zeros(n),
+        np.ones(n, dtype=np.int64), unknown.copy(),
     )  # fmt: skip
 
 

@@ -32,6 +32,7 @@ def stations() -> Observations:
     return Observations(
         points, fractions, np.full(n, 0.001), unknown, unknown.copy(), np.full(n, "", dtype="<U8"), np.full(n, NAN),
         np.arange(n) % 2, np.ones(n, dtype=bool), np.arange(n), np.full(n, NAN), np.zeros(n),
+        np.ones(n, dtype=np.int64), unknown.copy(),
     )  # fmt: skip
 
 

@@ -42,6 +42,7 @@ def test_in_the_plane_support_is_distance(world):
     np.testing.assert_allclose(unlike, brute)
     assert support.curve.at(unlike) == pytest.approx(np.full(2000, np.sqrt(0.02 / 3)))
     assert (unlike <= support.reach_m).mean() > 0.9
+    assert support.beyond_text == f"is further than {support.reach_m / 1000:.1f} km from any sample"
 
 
 @pytest.mark.parametrize("as_axis", [True, False])
@@ -57,6 +58,7 @@ def test_covariate_that_equals_the_answer_at_stations_only_is_flagged(world, as_
     support = find_support(space, CovarianceSet([scaled] * 2), stations, folds, observed, held)
     _, unlike = support.at(cells)
     assert (unlike > support.reach_m).mean() > 0.8
+    assert support.beyond_text.startswith("is less like every sample, in place and covariates, than ")
     # The same covariate where it is real everywhere flags little.
     x, y = np.meshgrid((np.arange(100) + 0.5) * 100.0, (np.arange(100) + 0.5) * 100.0)
     real = 1 / (1 + np.exp(-np.sin(x / 2000.0) - np.cos(y / 2500.0)))

@@ -118,6 +118,27 @@ def test_duplicated_stations_do_not_lift_the_score(tmp_path, table):
     assert twice.chosen.score("mud", "rmse") > 0.9 * once.score("mud", "rmse")
 
 
+def test_repeats_say_what_is_attainable_and_figures_are_drawn(tmp_path, table):
+    again = table.head(8).assign(id=[f"R{i}" for i in range(8)])
+    shift = np.minimum(0.05, again["sand"] / 2)
+    again["mud"], again["sand"] = again["mud"] + shift, again["sand"] - shift
+    both = pd.concat([table, again], ignore_index=True)
+    found = validate(recipe(tmp_path, both, outputs={"figures": True}, validation={"compare": ["nearest"], "count": 4}))
+    held = found.validation.chosen
+    assert held.score("mud", "repeated_places") == 8.0
+    # Pairs that lie `shift` apart have a variance of shift² / 2; eight stations are means of two, 142 are single samples.
+    mud = found.observations.fractions[:, 0]
+    noise = np.mean(shift**2 / 2) * (142 + 8 / 2) / 150
+    assert held.score("mud", "r_squared_attainable") == pytest.approx(1.0 - noise / mud.var(), abs=1e-6)
+    assert "R² attainable at best" in "\n".join(found.summary_lines())
+    scores = pd.read_csv(tmp_path / "out" / "validation.csv")
+    tenths = scores[scores["score"].str.startswith("pit_")].groupby(["method", "treatment", "part"])["value"].sum()
+    assert tenths.to_numpy() == pytest.approx(1.0)
+    assert set(scores["stations"]) == {"measured"}
+    drawn = {p.name for p in (tmp_path / "out" / "figures").iterdir()}
+    assert {"held_out.png", "residuals.pdf", "calibration.png", "pit.png"} <= drawn
+
+
 def test_surveys_are_held_out_whole(tmp_path, table):
     surveyed = table.assign(
         survey=np.where(table["easting"] < 507_000, "west", np.where(table["easting"] < 513_000, "mid", "east"))

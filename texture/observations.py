@@ -55,6 +55,10 @@ class Observations:
         Median grain size of rows that know nothing else; NaN elsewhere.
     accuracy_m : float array, shape (n,)
         How far each position may be off in either direction; 0 where nothing says.
+    repeats : int array, shape (n,)
+        Samples that the fractions are the mean of.
+    repeat_sd : float array, shape (n, parts)
+        Standard deviation between them; NaN where there is but one.
     """
 
     points: Floats
@@ -69,6 +73,8 @@ class Observations:
     rows: NDArray[np.int64]
     median_phi: Floats
     accuracy_m: Floats
+    repeats: NDArray[np.int64]
+    repeat_sd: Floats
 
     @property
     def count(self) -> int:
@@ -172,6 +178,8 @@ def observe(stations: Stations, logratio: LogRatio, plane: Plane) -> Observation
         measured=~words & ~medians,
         rows=table.index.to_numpy(dtype=np.int64),
         accuracy_m=table["position_accuracy_m"].fillna(0.0).to_numpy(dtype=np.float64),
+        repeats=table["repeats"].to_numpy(dtype=np.int64),
+        repeat_sd=table[[f"repeat_sd_{part}" for part in parts]].to_numpy(dtype=np.float64),
     )
     informs = np.isfinite(said.coordinates(logratio)[0]).any(axis=1)
     if int(informs.sum()) < LEAST_STATIONS:

@@ -11,6 +11,7 @@ from typing import TYPE_CHECKING, Any
 from texture.cases import CasePlan, plan_cases
 from texture.clock import Clock
 from texture.core_layers import check_cores
+from texture.cost import about, fit_seconds, validate_seconds
 from texture.early import check_early
 from texture.observations import Observations, observe
 from texture.placing import place_stations
@@ -27,11 +28,8 @@ if TYPE_CHECKING:
 
 __all__ = ["Plan", "plan"]
 
-# Measured on two cores of one machine: the demo (494 stations; fit 5.4 s, validate 15.3 s, estimate 0.56 s of 8,852 cells), and a raster of
+# Measured on two cores of one machine: the demo (estimate 0.56 s of 8,852 cells), and a raster of
 # 1.06 million cells in two layers of four classes, whose peak was 1.57 GB where this says 1.60. The plan says how far it may be off.
-FIT_S = 1.0  # one fit of all coordinates on 500 stations
-REFIT_S = 0.25  # the same inside a fold, from a warm start
-DENSE_TO = 500  # stations up to which a fit grows with their square, beyond it in proportion
 CELLS_PER_S = 15_000.0  # points estimated with means, quantiles and odds
 MEMBER_POINTS_PER_S = 150_000.0  # points of members drawn, put back to fractions and summed up
 WRITE_S = 8.0  # page, figures and files of a small grid
@@ -97,7 +95,7 @@ class Plan:
 
     def summary_lines(self) -> list[str]:
         """Lines for a person."""
-        stages = ", ".join(f"{name} {_about(value)}" for name, value in self.seconds.items())
+        stages = ", ".join(f"{name} {about(value)}" for name, value in self.seconds.items())
         memory, there = self.memory_mb / 1000.0, _machine_gb()
         fits = f" of {there:.0f} GB here" if there else ""
         lines = [
@@ -108,7 +106,7 @@ class Plan:
             f"  work        {self.treatments} treatment{'s' * (self.treatments != 1)} of zeros and {_controls(self.recipe)} other methods in "
             f"{self.recipe.validation.count} folds, then the map",
             f"  memory      about {memory:.1f} GB{fits}",
-            f"  time        about {_about(sum(self.seconds.values()))}: {stages}; may be off by a factor of three",
+            f"  time        about {about(sum(self.seconds.values()))}: {stages}; may be off by a factor of three",
         ]
         if self.cases is not None:
             lines += [self.cases.lines()[0], "              by texture cases; its --list names them"]
@@ -162,8 +160,6 @@ def plan(
 def _seconds(
     recipe: Recipe, observations: Observations, target: Target, treatments: int, per_side: int
 ) -> dict[str, float]:
-    share = observations.count / DENSE_TO
-    growth = max(share**2, 0.1) if share <= 1.0 else share
     cells = float(target.active.sum())
     write = WRITE_S + target.n_cells / WRITE_CELLS_PER_S
     folds = observations.count if recipe.validation.folds == "each" else recipe.validation.count
@@ -172,8 +168,8 @@ def _seconds(
     points = cells * per_side**2
     members = recipe.ensemble.members
     return {
-        "fit": treatments * FIT_S * growth,
-        "validate": treatments * folds * REFIT_S * growth,
+        "fit": fit_seconds(observations.count, treatments),
+        "validate": validate_seconds(observations.count, treatments, folds),
         "estimate": points / CELLS_PER_S,
         **({"members": members * points / MEMBER_POINTS_PER_S} if members else {}),
         "write": write + members * target.n_cells / WRITE_CELLS_PER_S / 4.0,
@@ -182,17 +178,6 @@ def _seconds(
 
 def _controls(recipe: Recipe) -> int:
     return len([name for name in dict.fromkeys(recipe.validation.compare) if name != recipe.method.name])
-
-
-def _about(seconds: float) -> str:
-    """Two digits are more than a plan knows.
-
-    >>> _about(0.3), _about(42), _about(600)
-    ('1 s', '42 s', '10 min')
-    """
-    if seconds < 90:
-        return f"{max(round(seconds), 1)} s"
-    return f"{round(seconds / 60)} min" if seconds < 5400 else f"{seconds / 3600:.1f} h"
 
 
 def _machine_gb() -> float:

@@ -304,7 +304,7 @@ class Result:
             *quantity_lines(found)[:1],
         ]
         lines.append(
-            f"  support     {100 * self.beyond_share:.1f} % of the water area is further than {found.reach_m / 1000:.1f} km from any sample"
+            f"  support     {100 * self.beyond_share:.1f} % of the water area {found.validation.support.beyond_text}"
         )
         lines += radius_lines(self)
         if account.hard_cells:

@@ -10,11 +10,13 @@ import numpy as np
 from numpy.typing import NDArray
 
 from texture.validation.agreement import class_agreement
+from texture.validation.attainable import Repeats
 from texture.validation.calibration import calibration_factors, out_of_fold_factors
 from texture.validation.columns import Columns
 from texture.validation.ensemble import DrawScores, score_draws
 from texture.validation.held_out import HeldOut, ScoreWeights, score_table
 from texture.validation.spread import out_of_fold_spread, residual_spread
+from texture.validation.told import compare_told
 
 if TYPE_CHECKING:
     from texture.learning import Learned
@@ -73,6 +75,8 @@ class Judge:
         Detection limit.
     median : bool
         Whether the map back-transforms coordinates instead of taking expected fractions; what is scored then does so too.
+    repeats : Repeats, optional
+        Of the stations.
     """
 
     parts: tuple[str, ...]
@@ -81,6 +85,7 @@ class Judge:
     weights: ScoreWeights
     limit: float
     median: bool = False
+    repeats: Repeats | None = None
 
     def judge(self, name: str, learned: Learned, columns: Columns, integrates: bool) -> Judged:
         """Calibrate, transform to fractions, and score; skill over controls comes with `compare`.
@@ -122,6 +127,10 @@ class Judge:
         exact = np.where(low == high, low, np.nan)
         with np.errstate(divide="ignore", invalid="ignore"):
             z2 = (exact - wide.mean) ** 2 / wide.sample_variance
+            # A method without a variance has its errors at measured stations for one: what words leave open comes on top.
+            own = learned.noise if not integrates else 0.0
+            told = (learned.values - wide.mean) ** 2 / (wide.sample_variance + own)
+        said = learned.observations
         held = HeldOut(
             name,
             predicted,
@@ -131,6 +140,7 @@ class Judge:
             square_z={
                 c: np.where(np.isfinite(z2[:, j]), z2[:, j], np.nan) for j, c in enumerate(treatment.column_names)
             },
+            told=compare_told(predicted, said.described, said.median_phi, told, self.limit),
         )
         return Judged(held, factors, error, before or draws, columns)
 
@@ -138,7 +148,7 @@ class Judge:
         """Add the table of scores, with skill over the controls' predictions."""
         held = judged.held_out
         others = {name: predicted for name, predicted in controls.items() if name != held.method}
-        table = score_table(self.parts, self.observed, held, self.weights, self.limit, others)
+        table = score_table(self.parts, self.observed, held, self.weights, self.limit, others, self.repeats)
         return replace(judged, held_out=replace(held, scores=table))
 
     def _draws(self, treatment: Treatment, columns: Columns) -> DrawScores:

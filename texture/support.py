@@ -53,6 +53,14 @@ class Support:
     reach_m: float
     curve: ErrorCurve
 
+    @property
+    def beyond_text(self) -> str:
+        """What is said of water that the samples do not support."""
+        reach = f"{self.reach_m / 1000:.1f} km"
+        if self.scales.size:
+            return f"is less like every sample, in place and covariates, than {reach} away: the most that held-out samples tested"
+        return f"is further than {reach} from any sample" + ("" if self.space.flat else " by the way through water")
+
     @cached_property
     def _trees(self) -> tuple[Any, Any]:
         from scipy.spatial import KDTree

@@ -12,6 +12,7 @@ from numpy.typing import NDArray
 
 from texture.averaging_methods import average_held_out
 from texture.choosing import LimitEffect, limit_effect, with_columns_of
+from texture.cost import about, validate_seconds
 from texture.learning import Learned, columns_in, learn, learn_each
 from texture.mapping import Mapper, make_mapper
 from texture.observations import Observations
@@ -20,6 +21,7 @@ from texture.recipe import Recipe
 from texture.scoring import Judge, Judged
 from texture.space import PLANE, Space
 from texture.support import Support, find_support
+from texture.validation.attainable import Repeats
 from texture.validation.choice import Standing, rank_methods
 from texture.validation.columns import Columns
 from texture.validation.folds import Folds, make_folds
@@ -191,7 +193,8 @@ def validate_methods(
         counts = counts & ~zones.is_given(zones.stations.take(observations.rows))
     scored = np.where(counts[:, None], observations.fractions, np.nan)
     median = recipe.method.estimate == "median"
-    judge = Judge(recipe.composition.parts, scored, folds.labels, weights, limit, median)
+    repeats = Repeats(observations.repeats, observations.repeat_sd)
+    judge = Judge(recipe.composition.parts, scored, folds.labels, weights, limit, median, repeats)
     own = recipe.method.tried_with
     compared = [n for n in recipe.methods if n != own and (n != "triangulation" or points.shape[1] == 2)]
     runs = [(own, learned) for learned in treated] + [
@@ -199,7 +202,11 @@ def validate_methods(
         for name in compared
     ]
     runs.sort(key=lambda run: run[0] == "average")  # made of what the others predicted
-    with progress.stage(f"validate {len(runs)} × {folds.count} folds", total=len(runs) * folds.count) as advance:
+    fitted = sum(METHODS[name].needs_covariance for name, _ in runs)
+    cost = about(validate_seconds(observations.count, fitted, folds.count))
+    with progress.stage(
+        f"validate {len(runs)} × {folds.count} folds, about {cost}", total=len(runs) * folds.count
+    ) as advance:
         bench = _Bench(recipe, plain, folds, journal or Forgets(), advance, zones)
         judged: list[Judged] = []
         for number, (name, learned) in enumerate(runs):

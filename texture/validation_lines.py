@@ -6,8 +6,10 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
+from texture.validation.attainable import attainable_text
 from texture.validation.choice import cannot_be_told_apart
 from texture.validation.scores import quantile_cover
+from texture.validation.told import told_text
 
 if TYPE_CHECKING:
     from texture.result import Validated
@@ -43,6 +45,10 @@ def validation_lines(found: Validated) -> list[str]:
         "  * the map's method; skill: share of the nearest station's mean square error that is gone; energy score with its "
         "90 % interval"
     )
+    lines.append(f"  {attainable_text(parts, validation.chosen.score)}")
+    unscored = told_text(validation.chosen.told)
+    if unscored:
+        lines.append(f"  {unscored}")
     told = cannot_be_told_apart(validation.standings)
     if told:
         lines.append(f"  apart       {told}")
@@ -82,6 +88,8 @@ def validation_record(found: Validated) -> dict[str, Any]:
             "block_m": _known(validation.block_m),
         },
     }
+    if validation.chosen.told:
+        record["told"] = [{k: _known(v) for k, v in vars(t).items()} for t in validation.chosen.told]
     if validation.judged.settings:
         record["average"] = validation.judged.settings["weights"]
     return record

@@ -33,8 +33,12 @@ def write_intake(result: Intake, folder: ResultFolder) -> Intake:
 
 def write_validation(result: Validated, folder: ResultFolder) -> Validated:
     """Write the scores and every held-out prediction; return the result with its files."""
+    from texture.report import write_error_figures
+
     with folder.filling() as aside:
         _write_scores(result, aside)
+        if result.recipe.outputs.figures:
+            write_error_figures(result, aside / "figures")
     return replace(result, files=folder.files)
 
 
@@ -156,8 +160,13 @@ def _write_scores(result: Validated, aside: Path) -> None:
 
 
 def _scores(result: Validated) -> pd.DataFrame:
-    """One row for each method, part and score, and for each treatment of zeros that the map's method was tried with."""
+    """One row for each method, part and score, and for each treatment of zeros that the map's method was tried with.
+
+    The column `stations` says whether they were measured; rows of stations known by words or a median stand apart.
+    """
     import pandas as pd
+
+    from texture.validation.told import told_rows
 
     found = result.validation
     taken = next(t.treatment.label for t in found.tried if t.chosen)
@@ -170,10 +179,10 @@ def _scores(result: Validated) -> pd.DataFrame:
             "treatment": label,
             "folds": found.folds.kind,
             "count": found.folds.count,
-            **vars(score),
+            **row,
         }
         for held, label in runs
-        for score in held.scores
+        for row in (*({"stations": "measured", **vars(score)} for score in held.scores), *told_rows(held.told))
     ]
     rows += [row for quantity in result.quantities for row in quantity.score_rows(found.folds)]
     return pd.DataFrame(rows)

@@ -20,7 +20,7 @@ def validate(
 ) -> None:
     """Hold stations out, predict them, and score the methods against each other.
 
-    Writes validation.csv and held_out.csv.
+    Writes validation.csv and held_out.csv, and figures where the recipe asks for them.
 
     Example: texture validate recipe.toml --set validation.folds=random
     """

@@ -2,6 +2,7 @@ import numpy as np
 import pytest
 
 from texture.errors import StructureError
+from texture.structure import Covariance
 from texture.structure import variogram as module
 from texture.structure.variogram import empirical_variogram, fit_variogram
 
@@ -95,3 +96,9 @@ def test_errors():
         empirical_variogram(LINE, VALUES, EDGES, "madogram")
     with pytest.raises(StructureError, match="found 1 stations with a value, expected at least 2"):
         empirical_variogram(LINE, [1.0] + [np.nan] * 4)
+
+
+def test_stations_with_no_pair_near_enough_are_one_clear_line():
+    points, values = [[0.0, 0.0], [1000.0, 0.0], [0.0, 1000.0]], np.array([[0.1, 0.2], [0.5, 0.1], [0.3, 0.4]])
+    with pytest.raises(StructureError, match="no two stations"):
+        Covariance.fit(points, values)

@@ -90,7 +90,9 @@ def test_interval_score_by_hand():
 def test_histogram_spreads_what_is_only_known_between_two_ends():
     # One station anywhere in the lower half, one exactly at 0.95.
     found = pit_histogram(np.array([0.0, 0.95]), np.array([0.5, 0.95]))
-    assert found == pytest.approx([0.1] * 5 + [0.0] * 4 + [0.5])
+    assert found[0] == pytest.approx([0.1] * 5 + [0.0] * 4 + [0.5])
+    low, high = np.array([0.0, 0.95]), np.array([0.5, 0.95])
+    assert pit_histogram(low, high, np.array([[3.0, 1.0]]))[0] == pytest.approx([0.15] * 5 + [0.0] * 4 + [0.25])
     assert np.isnan(pit_histogram(np.array([np.nan]), np.array([np.nan]))).all()
 
 

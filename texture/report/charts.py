@@ -15,7 +15,7 @@ if TYPE_CHECKING:
     from texture.validation.ensemble import DrawScores
     from texture.validation.held_out import HeldOut
 
-__all__ = ["draw_calibration", "draw_scatter", "draw_variograms"]
+__all__ = ["draw_calibration", "draw_pit", "draw_scatter", "draw_variograms"]
 
 Floats = NDArray[np.float64]
 
@@ -54,6 +54,25 @@ def draw_calibration(parts: tuple[str, ...], before: DrawScores, after: DrawScor
             axis.set(xlim=(0, 1), ylim=(0, 1), aspect="equal", xlabel="predicted quantile")
         figure.axes[0].set_ylabel("share of samples below it")
         figure.axes[0].legend(loc="upper left", fontsize=7.5)
+    return figure
+
+
+def draw_pit(parts: tuple[str, ...], draws: DrawScores) -> Figure:
+    """Draw the share of held-out samples in each tenth of their predicted distribution, part by part.
+
+    Honest distributions give a tenth in each (line); a hump says too wide, a bowl too narrow, a slope biased.
+    """
+    from texture.validation.scores import PIT_BINS, pit_histogram
+
+    left = np.arange(PIT_BINS) / PIT_BINS
+    with styled():
+        figure = new_figure(3.1 * len(parts), 2.3)
+        for i, (axis, part) in enumerate(zip(figure.subplots(1, len(parts), sharey=True), parts, strict=True)):
+            shares = pit_histogram(draws.pit_low[:, i], draws.pit_high[:, i])[0]
+            axis.bar(left, shares, width=1.0 / PIT_BINS, align="edge", color=INK, edgecolor="white", alpha=0.6)
+            axis.axhline(1.0 / PIT_BINS, color=STRONG, lw=0.9)
+            axis.set(title=part, xlim=(0, 1), xlabel="place in the predicted distribution")
+        figure.axes[0].set_ylabel("share of samples")
     return figure
 
 

@@ -8,6 +8,7 @@ import numpy as np
 
 from texture.report.table import Table, number
 from texture.space import own_ranges
+from texture.validation.attainable import attainable_text
 
 if TYPE_CHECKING:
     from texture.result import Result
@@ -38,7 +39,9 @@ def methods_table(result: Result) -> Table:
     return Table(
         "Held-out scores, the map's own method first. RMSE, mean error and CRPS are fractions of dry mass, RMSE with its 90 % interval from "
         "resampled blocks; mean error is prediction minus measurement. 90 % cover: share of held-out samples inside their 90 % interval. "
-        "Skill: share of the nearest station's mean square error that is gone. Energy score: of the whole predicted composition, lower is better.",
+        "Skill: share of the nearest station's mean square error that is gone. Energy score: of the whole predicted composition, lower is better. "
+        + attainable_text(result.found.recipe.composition.parts, result.found.validation.chosen.score)
+        + ".",
         ["method", "part", "stations", "RMSE", *[label for _, label, _ in SCORES], "energy score"],
         rows,
         numeric=list(range(2, 5 + len(SCORES))),

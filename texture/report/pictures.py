@@ -2,16 +2,16 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterable, Iterator
 from pathlib import Path
 from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.typing import NDArray
 
-from texture.report.charts import draw_calibration, draw_scatter, draw_variograms
+from texture.report import error_pictures
 from texture.report.encode import Picture, picture
-from texture.report.maps import EVIDENCE_COLOURS, Layer, draw_maps, draw_residuals
+from texture.report.maps import EVIDENCE_COLOURS, Layer, draw_maps
 from texture.report.members import members_picture
 from texture.report.quantities import quantity_picture
 from texture.report.triangle import draw_triangles
@@ -19,9 +19,9 @@ from texture.report.triangle import draw_triangles
 if TYPE_CHECKING:
     from matplotlib.figure import Figure
 
-    from texture.result import Result
+    from texture.result import Result, Validated
 
-__all__ = ["page_pictures", "result_picture", "write_figures"]
+__all__ = ["page_pictures", "result_picture", "write_error_figures", "write_figures"]
 
 Floats = NDArray[np.float64]
 PAPER_WIDTH = 5.5  # inches, 140 mm: between one and two columns of most journals (common practice, no source)
@@ -31,9 +31,9 @@ PAPER_DPI = 300
 def result_picture(result: Result) -> Picture:
     """Draw the map itself: the parts and the most probable class, for the page, a README or a slide."""
     layers = [*_part_layers(result), _class_layer(result)]
-    rings = "" if _places(result) is None else " Rings: stations."
+    rings = "" if error_pictures.station_places(result.found) is None else " Rings: stations."
     return picture(
-        draw_maps(result.found.target, layers, _places(result)),
+        draw_maps(result.found.target, layers, error_pictures.station_places(result.found)),
         "Expected fractions of dry mass in each water cell, and the most probable texture class (Folk 1954)." + rings,
         "Four maps: mud, sand and gravel fraction, and texture class"
         + (", with the stations on them." if rings else "."),
@@ -55,12 +55,12 @@ def page_pictures(result: Result) -> dict[str, Picture]:
             "Maps of the rim's weight and of the median diameter.",
         ),
         "scatter": picture(
-            _scatter(result),
+            error_pictures.scatter(found),
             "Each dot is a station, measured against what was predicted while it was held out. On the line they agree.",
             "Scatter of measured against held-out fractions, one panel for each part.",
         ),
         "variograms": picture(
-            _variograms(result),
+            error_pictures.variograms(found),
             "Variogram of each coordinate: points from the samples, both fits as lines, dotted lines down at their ranges.",
             "Empirical variogram points and two fitted curves with their ranges for each log-ratio coordinate.",
         ),
@@ -75,16 +75,22 @@ def page_pictures(result: Result) -> dict[str, Picture]:
         pictures["quantities"] = numbers
     if result.found.validation.judged.factors is not None:
         pictures["calibration"] = picture(
-            _calibration(result),
+            error_pictures.calibration(found),
             "Are the intervals honest? Share of held-out samples below each predicted quantile; on the line they are. Grey as fitted, "
             "dark after calibration, by factors that were learned without the samples that they meet.",
             "Calibration curves, one panel for each part.",
         )
+    pictures["pit"] = picture(
+        error_pictures.pit(found),
+        "Where held-out samples lie in what was predicted for them, after calibration: a tenth of them in each bar where intervals are "
+        "honest (line). A hump: too wide; a bowl: too narrow; a slope: biased.",
+        "Histograms of the probability integral transform, one panel for each part.",
+    )
     if result.members is not None:
         pictures["members"] = members_picture(result)
-    if _places(result) is not None:
+    if error_pictures.station_places(result.found) is not None:
         pictures["residuals"] = picture(
-            _residuals(result),
+            error_pictures.residuals(found),
             "Where the map was wrong: prediction minus measurement of each station while it was held out. Patches of one "
             "colour are errors that neighbours share.",
             "Maps of held-out error, one for each part, stations coloured from too little to too much.",
@@ -97,8 +103,17 @@ def write_figures(result: Result, folder: Path) -> None:
 
     Neither holds a date, so that the same result gives the same bytes.
     """
+    _save(_paper_figures(result), folder)
+
+
+def write_error_figures(found: Validated, folder: Path) -> None:
+    """Write the figures of cross-validation alone, as `write_figures` does those of a build."""
+    _save(error_pictures.error_figures(found), folder)
+
+
+def _save(figures: Iterable[tuple[str, Figure]], folder: Path) -> None:
     folder.mkdir()
-    for name, figure in _paper_figures(result):
+    for name, figure in figures:
         figure.savefig(folder / f"{name}.png", dpi=PAPER_DPI, facecolor="white", metadata={"Software": None})
         figure.savefig(
             folder / f"{name}.pdf", dpi=PAPER_DPI, metadata={"CreationDate": None, "Producer": None, "Creator": None}
@@ -106,7 +121,7 @@ def write_figures(result: Result, folder: Path) -> None:
 
 
 def _paper_figures(result: Result) -> Iterator[tuple[str, Figure]]:
-    target, place = result.found.target, _places(result)
+    target, place = result.found.target, error_pictures.station_places(result.found)
     parts = result.found.recipe.composition.parts
     named = [
         *((f"{part}_fraction", layer) for part, layer in zip(parts, _part_layers(result), strict=True)),
@@ -118,21 +133,8 @@ def _paper_figures(result: Result) -> Iterator[tuple[str, Figure]]:
     for name, layer in named:
         rings = place if name in {*(f"{part}_fraction" for part in parts), "texture_class"} else None
         yield name, draw_maps(target, [layer], rings, columns=1, width=PAPER_WIDTH)
-    yield "held_out", _scatter(result)
-    yield "variograms", _variograms(result)
-    if result.found.validation.judged.factors is not None:
-        yield "calibration", _calibration(result)
     yield "triangle", _triangles(result)
-    if place is not None:
-        yield "residuals", _residuals(result)
-
-
-def _places(result: Result) -> tuple[Floats, Floats] | None:
-    """Longitude and latitude of the stations, None where the recipe hides them."""
-    if result.found.recipe.report.stations == "hidden":
-        return None
-    table = result.found.stations.samples
-    return table["longitude"].to_numpy(), table["latitude"].to_numpy()
+    yield from error_pictures.error_figures(result.found)
 
 
 def _part_layers(result: Result) -> list[Layer]:
@@ -179,34 +181,10 @@ def _bed_layers(result: Result) -> list[Layer]:
     ]
 
 
-def _scatter(result: Result) -> Figure:
-    found = result.found
-    return draw_scatter(found.recipe.composition.parts, found.observations.fractions, found.validation.chosen)
-
-
-def _calibration(result: Result) -> Figure:
-    validation = result.found.validation
-    return draw_calibration(result.found.recipe.composition.parts, validation.judged.before, validation.chosen.draws)
-
-
-def _variograms(result: Result) -> Figure:
-    return draw_variograms(result.found.mapper.structure, result.found.mapper.column_names)
-
-
 def _triangles(result: Result) -> Figure:
     found = result.found
     wet = found.target.active
     area = found.target.area_m2[wet]
     return draw_triangles(
         found.recipe.composition.parts, found.observations.fractions, result.estimate.fractions[wet], area
-    )
-
-
-def _residuals(result: Result) -> Figure:
-    found = result.found
-    table = found.stations.table.iloc[found.observations.rows]
-    place = table["longitude"].to_numpy(), table["latitude"].to_numpy()
-    measured = np.where(found.observations.measured[:, None], found.observations.fractions, np.nan)
-    return draw_residuals(
-        found.target, place, found.validation.chosen.predicted - measured, found.recipe.composition.parts
     )

@@ -108,11 +108,15 @@ def folds_line(result: Result) -> str:
 def error_notes(result: Result) -> list[str]:
     """Name the parts of which the map has too much or too little overall."""
     from texture.validation.choice import cannot_be_told_apart
+    from texture.validation.told import told_text
 
     found, notes = result.found, []
     told = cannot_be_told_apart(found.validation.standings)
     if told:
         notes.append(f"{sentence(told)}.")
+    unscored = told_text(found.validation.chosen.told)
+    if unscored:
+        notes.append(f"{sentence(unscored)}.")
     if found.validation.searched:
         notes.append(
             f"The recipe asked for the best method: {found.validation.method.replace('_', ' ')} is the simplest within one standard error of "

@@ -157,10 +157,20 @@ def fit_variogram(
         The nugget is its `small_scale`; a variogram without a rise gives a covariance without structure.
     loss : float
         Weighted sum of squares at the optimum.
+
+    Raises
+    ------
+    StructureError
+        No pair of stations in any distance class, or unknown weights.
     """
     from scipy.optimize import minimize_scalar, nnls
 
     h, gamma, pairs = variogram.distance_m, variogram.semivariance, variogram.pairs.astype(np.float64)
+    if h.size == 0:
+        raise StructureError(
+            "variogram: found no two stations (of one survey, where surveys are told apart) as near to each other as its distance "
+            "classes reach, expected at least one such pair; use more stations, or a method that fits none, such as inverse_distance"
+        )
     if weights == "pairs_over_square_distance":
         w = np.sqrt(pairs) / h
     elif weights == "pairs":

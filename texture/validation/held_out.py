@@ -9,8 +9,10 @@ import numpy as np
 from numpy.typing import NDArray
 
 from texture.validation.agreement import Agreement
+from texture.validation.attainable import Repeats, r_squared_attainable, repeated_places
 from texture.validation.ensemble import DrawScores
 from texture.validation.scores import aitchison_distance, part_scores, weighted_mean
+from texture.validation.told import Told
 
 __all__ = ["HeldOut", "Score", "ScoreWeights", "score_table"]
 
@@ -79,6 +81,8 @@ class HeldOut:
     scores : list of Score
     square_z : mapping of str to float array, shape (n,)
         Squared standardised error of each column, by its formula; NaN where unknown.
+    told : list of Told
+        Stations known by words or a median, which no score counts.
     """
 
     method: str
@@ -88,6 +92,7 @@ class HeldOut:
     agreement: Agreement
     scores: list[Score] = field(default_factory=list)
     square_z: Mapping[str, Floats] = field(default_factory=dict)
+    told: list[Told] = field(default_factory=list)
 
     @property
     def low(self) -> Floats:
@@ -119,6 +124,7 @@ def score_table(
     weights: ScoreWeights,
     limit: float,
     controls: Mapping[str, Floats] | None = None,
+    repeats: Repeats | None = None,
 ) -> list[Score]:
     """Score every part and the composition.
 
@@ -134,6 +140,8 @@ def score_table(
         Detection limit: the floor of the Aitchison distance, and the level below which an interval reaches down to zero.
     controls : mapping of str to float array, shape (n, parts)
         Predictions of methods that skill is measured over.
+    repeats : Repeats, optional
+        What R² is attainable at best follows from them.
     """
     rows = weights.rows
     table: list[Score] = []
@@ -156,6 +164,11 @@ def score_table(
         )
         for name, values in found.items():
             add(part, name, values)
+        if repeats is not None:
+            known = np.where(np.isfinite(held.predicted[:, i]), observed[:, i], np.nan)
+            add(part, "r_squared_attainable", r_squared_attainable(known, repeats.of_part(i), rows))
+            places = float(repeated_places(known, repeats.of_part(i)))
+            table.append(Score(part, "repeated_places", places, map_weighted=places))
     add("all", "energy_score", weighted_mean(held.draws.energy, rows))
     add("all", "aitchison_distance", weighted_mean(aitchison_distance(observed, held.predicted, limit), rows))
     add("all", "class_agreement", held.agreement.share(rows))

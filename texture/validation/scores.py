@@ -114,14 +114,13 @@ def aitchison_distance(observed: Floats, predicted: Floats, limit: float) -> Flo
     return np.asarray(np.sqrt(((centred[0] - centred[1]) ** 2).sum(axis=1)))
 
 
-def pit_histogram(pit_low: Floats, pit_high: Floats) -> Floats:
-    """Share of the stations in each tenth of the probability integral transform, shape (10,); NaN without stations."""
-    known = np.isfinite(pit_low)
-    if not known.any():
-        return np.full(PIT_BINS, np.nan)
+def pit_histogram(pit_low: Floats, pit_high: Floats, weights: Floats | None = None) -> Floats:
+    """Share of the stations in each tenth of the probability integral transform, shape (w, 10); NaN without stations."""
+    w = _ones(pit_low) if weights is None else weights
     edges = np.linspace(0.0, 1.0, PIT_BINS + 1)[1:-1]
-    below = [float(pit_share_below(pit_low[known], pit_high[known], level).mean()) for level in edges]
-    return np.diff([0.0, *below, 1.0])
+    below = [weighted_mean(pit_share_below(pit_low, pit_high, level), w) for level in edges]
+    bottom = np.where(np.isnan(below[0]), np.nan, 0.0)
+    return np.diff(np.column_stack([bottom, *below, bottom + 1.0]), axis=1)
 
 
 def quantile_cover(before: DrawScores, after: DrawScores) -> list[tuple[float, list[float], list[float]]]:
@@ -181,6 +180,9 @@ def part_scores(
     for level in QUANTILE_LEVELS:
         below = pit_share_below(pit[0][known], pit[1][known], level)
         scores[f"below_quantile_{round(100 * level)}"] = weighted_mean(below, w)
+    step = round(100 / PIT_BINS)
+    for tenth, values in enumerate(pit_histogram(pit[0][known], pit[1][known], w).T):
+        scores[f"pit_{step * tenth}_to_{step * (tenth + 1)}"] = values
     return scores
 
 
