@@ -10,19 +10,60 @@ from typing import TYPE_CHECKING
 import numpy as np
 from numpy.typing import NDArray
 
-from texture.errors import TargetError
-from texture.recipe import Mobility, Recipe
-from texture.targets import Target
+from texture.errors import TargetError, TextureError
+from texture.recipe import Mobility, Recipe, further_recipes
+from texture.targets import Target, read_target
 from texture.zones import zone_areas
 
 if TYPE_CHECKING:
     from texture.bed import Condition
 
-__all__ = ["check_early", "read_conditions", "read_rim"]
+__all__ = ["Early", "RimInputs", "check_early", "read_rim"]
 
 
-def check_early(recipe: Recipe, target: Target) -> None:
-    """Find mistakes in the user's files and names now rather than after the estimate.
+@dataclass(frozen=True, eq=False)
+class RimInputs:
+    """Where the rim is, and what files say of it.
+
+    Attributes
+    ----------
+    weight : float array, shape (n,), or None
+        Of `texture.bed.rim.rim_weight`; None without a rim.
+    start : bool array, shape (n,), or None
+        Cells that the file of `rim.sides` names.
+    parent : float array, shape (k, layer, n), or None
+        Bed of `rim.parent` in the rim's cells, NaN elsewhere.
+    """
+
+    weight: NDArray[np.float64] | None = None
+    start: NDArray[np.bool_] | None = None
+    parent: NDArray[np.float64] | None = None
+
+
+@dataclass(frozen=True, eq=False)
+class Early:
+    """What was read on the cells of a target, kept for the bed.
+
+    Attributes
+    ----------
+    recipe : Recipe
+    target : Target
+    rim : RimInputs
+    conditions : tuple of Condition
+        Waves and currents of the mobility screen.
+    further : tuple of Early
+        The same of each further target.
+    """
+
+    recipe: Recipe
+    target: Target
+    rim: RimInputs
+    conditions: tuple[Condition, ...] = ()
+    further: tuple[Early, ...] = ()
+
+
+def check_early(recipe: Recipe, target: Target) -> Early:
+    """Find mistakes in the user's files and names now rather than after the estimate, and keep what was read.
 
     Raises
     ------
@@ -35,24 +76,22 @@ def check_early(recipe: Recipe, target: Target) -> None:
     check_ensemble(recipe)
     check_outputs(target, recipe)
     zone_areas(recipe, target)
-    read_rim(recipe, target)
-    read_conditions(recipe, target)
+    rim = read_rim(recipe, target)
+    conditions = tuple(_condition(settings, target) for settings in recipe.mobility)
+    names = (further.name for further in recipe.further_targets)
+    further = tuple(_further(name, own) for name, own in zip(names, further_recipes(recipe), strict=True))
+    return Early(recipe, target, rim, conditions, further)
 
 
-@dataclass(frozen=True, eq=False)
-class RimInputs:
-    """What files say of the rim.
+def _further(name: str, recipe: Recipe) -> Early:
+    from texture.output import check_outputs
 
-    Attributes
-    ----------
-    start : bool array, shape (n,), or None
-        Cells that the file of `rim.sides` names.
-    parent : float array, shape (k, layer, n), or None
-        Bed of `rim.parent` in the rim's cells, NaN elsewhere.
-    """
-
-    start: NDArray[np.bool_] | None = None
-    parent: NDArray[np.float64] | None = None
+    try:
+        target = read_target(recipe.target)
+        check_outputs(target, recipe)
+        return Early(recipe, target, read_rim(recipe, target))
+    except TextureError as error:
+        raise type(error)(f'further_targets "{name}": {error}') from error
 
 
 def read_rim(recipe: Recipe, target: Target) -> RimInputs:
@@ -67,22 +106,18 @@ def read_rim(recipe: Recipe, target: Target) -> RimInputs:
     start = drawn_cells(rim.sides, target) if isinstance(rim.sides, Path) else None
     weight = rim_weight(target, rim, start)
     if rim.parent is None:
-        return RimInputs(start)
+        return RimInputs(weight, start)
     names = tuple(c.name for c in recipe.bed.classes)
     rimmed = np.flatnonzero(weight > 0.0)
     found = np.full((len(names), len(recipe.bed.layers), target.n_cells), np.nan)
     found[:, :, rimmed] = parent_bed(
         rim.parent, rim.parent_names, names, len(recipe.bed.layers), target.longitude[rimmed], target.latitude[rimmed]
     )
-    return RimInputs(start, found)
-
-
-def read_conditions(recipe: Recipe, target: Target) -> tuple[Condition, ...]:
-    """Read the waves and currents of the mobility screen onto the target's cells."""
-    return tuple(_condition(settings, target) for settings in recipe.mobility)
+    return RimInputs(weight, start, found)
 
 
 def _condition(settings: Mobility, target: Target) -> Condition:
+    """Read waves and currents onto the target's cells."""
     from texture.bed import Condition
     from texture.bed.mobility import FLUSH_RATIO
     from texture.targets.fields import LENGTH, SPEED, TIME, read_field

@@ -8,7 +8,6 @@ from dataclasses import replace
 from pathlib import Path
 from typing import TYPE_CHECKING
 
-from texture.early import read_rim
 from texture.errors import RecipeError
 from texture.member_summary import summarise_members
 from texture.members import MemberMaps, draw_members
@@ -71,13 +70,13 @@ def write_ensemble(result: Result, maps: MemberMaps, aside: Path) -> None:
     from texture.writing_bed import write_bed
 
     found, recipe = result.found, result.found.recipe
-    rim = read_rim(recipe, found.target)
+    rim = result.rim
 
     def beds() -> Iterator[tuple[int, Bed]]:
         for number in maps.numbers:
             fractions = maps.fractions(number)
             yield number, make_bed(fractions, result.estimate.evidence, found.target, recipe.bed, recipe.rim,
-                                   recipe.composition.parts, rim.start, rim.parent,
+                                   recipe.composition.parts, rim.weight, rim.parent,
                                    hard_ground=result.bed.hard_ground_probability, cores=result.cores)  # fmt: skip
 
     if recipe.ensemble.files == "one":

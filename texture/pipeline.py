@@ -6,7 +6,7 @@ functions on folds.
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterable
+from collections.abc import Iterable
 from pathlib import Path
 from typing import Any
 
@@ -14,10 +14,11 @@ from texture.cases import CasePlan, plan_cases
 from texture.choosing import fit_candidates
 from texture.clock import Clock
 from texture.core_layers import check_cores, core_layers
-from texture.early import check_early, read_conditions, read_rim
+from texture.early import check_early
 from texture.ensemble import drawn_ensemble
 from texture.estimate import estimate_on
 from texture.flagging import flag_stations
+from texture.further import map_further
 from texture.hard_ground import hard_ground_probability
 from texture.inventory import make_inventory
 from texture.observations import observe
@@ -41,7 +42,6 @@ from texture.zones import locate_zones
 __all__ = ["build", "cases", "intake", "list_cases", "read_stations", "validate"]
 
 Where = str | Path
-Check = Callable[[Recipe, Target], None]
 
 
 def intake(
@@ -54,7 +54,7 @@ def intake(
 
     recipe, progress = read_recipe(recipe_path, overrides, output, settings), progress or Silent()
     folder = ResultFolder(recipe.output, overwrite)
-    _, stations = _stations(recipe, progress)
+    stations = _stations(recipe, _target(recipe, progress), progress)
     return write_intake(Intake(recipe, stations), folder)
 
 
@@ -68,7 +68,8 @@ def validate(
 
     recipe, progress = read_recipe(recipe_path, overrides, output, settings), progress or Silent()
     folder = ResultFolder(recipe.output, overwrite)
-    result = write_validation(_validated(recipe, progress, Clock(), folder.path), folder)
+    target = _target(recipe, progress)
+    result = write_validation(_validated(recipe, target, progress, Clock(), folder.path), folder)
     close_journal(folder.path)
     return result
 
@@ -105,14 +106,17 @@ def build(
         One of its leaves, with a line that says where, what was found and what to do.
     """
     from texture.bed import Water, make_bed, moved_by
-    from texture.output import ResultFolder
+    from texture.output import RESULTS, ResultFolder
     from texture.writing import write_all
 
     clock, progress = Clock(), progress or Silent()
     recipe = read_recipe(recipe_path, overrides, output, settings)
-    folder = ResultFolder(recipe.output, overwrite)
-    found = _validated(recipe, progress, clock, folder.path, before=check_early)
-    target, mapper = found.target, found.mapper
+    folder = ResultFolder(recipe.output, overwrite, (*RESULTS, *(f.name for f in recipe.further_targets)))
+    with clock.stage("read"):
+        target = _target(recipe, progress)
+        early = check_early(recipe, target)
+    found = _validated(recipe, target, progress, clock, folder.path)
+    mapper = found.mapper
     with clock.stage("estimate"):
         per_side = points_per_side(recipe.target.points_per_cell, found.cell_side_m, found.range_m)
         estimate = estimate_on(target, mapper, found.plane, found.validation.support, per_side,
@@ -121,12 +125,13 @@ def build(
     with clock.stage("second look"), progress.stage("second look"):
         look = second_look(mapper, found.some_centres(20_000), recipe.seed)
     with clock.stage("bed"):
-        rim, cores = read_rim(recipe, target), core_layers(found)
+        rim, cores = early.rim, core_layers(found)
         bed = make_bed(estimate.fractions, estimate.evidence, target, recipe.bed, recipe.rim, recipe.composition.parts,
-                       rim.start, rim.parent, hard_ground=hard_ground_probability(found), cores=cores)  # fmt: skip
+                       rim.weight, rim.parent, hard_ground=hard_ground_probability(found), cores=cores)  # fmt: skip
         water = Water(recipe.bed.water.temperature_c, recipe.bed.water.salinity)
-        moved = tuple(moved_by(condition, bed, target, water) for condition in read_conditions(recipe, target))
+        moved = tuple(moved_by(condition, bed, target, water) for condition in early.conditions)
         inventory = make_inventory(found, estimate, bed)
+    further = map_further(found, early.further, clock, progress)
     result = Result(
         found,
         estimate,
@@ -138,6 +143,8 @@ def build(
         inventory=inventory,
         quantities=quantities,
         cores=cores,
+        rim=rim,
+        further=further,
     )
     with drawn_ensemble(result, folder, progress) as (result, maps), clock.stage("write"), progress.stage("write"):
         result = write_all(result, folder, Path(recipe_path), maps)
@@ -160,7 +167,10 @@ def cases(
     if recipe.method.name not in ("best", "average"):  # nothing of a case hangs on how other methods do
         recipe = recipe.model_copy(update={"validation": recipe.validation.model_copy(update={"compare": ()})})
     folder = ResultFolder(recipe.output, overwrite, CASE_RESULTS)
-    found = _validated(recipe, progress, clock, folder.path, before=lambda r, t: check_cases(r, t, only))
+    with clock.stage("read"):
+        target = _target(recipe, progress)
+        check_cases(recipe, target, only)
+    found = _validated(recipe, target, progress, clock, folder.path)
     per_side = points_per_side(recipe.target.points_per_cell, found.cell_side_m, found.range_m)
     with clock.stage("estimate"):
         estimate = estimate_on(found.target, found.mapper, found.plane, found.validation.support, per_side,
@@ -181,23 +191,23 @@ def list_cases(
 
 def read_stations(recipe_path: Where, **settings: Any) -> Stations:
     """Read the samples of a recipe as stations with their audit, writing nothing."""
-    return _stations(read_recipe(recipe_path, settings=settings), Silent())[1]
+    recipe = read_recipe(recipe_path, settings=settings)
+    return _stations(recipe, _target(recipe, Silent()), Silent())
 
 
-def _stations(recipe: Recipe, progress: Progress, before: Check | None = None) -> tuple[Target, Stations]:
+def _target(recipe: Recipe, progress: Progress) -> Target:
     with progress.stage("read the grid"):
-        target = read_target(recipe.target)
-        if before is not None:
-            before(recipe, target)
+        return read_target(recipe.target)
+
+
+def _stations(recipe: Recipe, target: Target, progress: Progress) -> Stations:
     with progress.stage("read the samples"):
-        return target, place_stations(read_samples(recipe), target, recipe.intake)
+        return place_stations(read_samples(recipe), target, recipe.intake)
 
 
-def _validated(
-    recipe: Recipe, progress: Progress, clock: Clock, output: Path, before: Check | None = None
-) -> Validated:
+def _validated(recipe: Recipe, target: Target, progress: Progress, clock: Clock, output: Path) -> Validated:
     with clock.stage("read"):
-        target, stations = _stations(recipe, progress, before)
+        stations = _stations(recipe, target, progress)
         check_cores(recipe, stations)
     plane = Plane.choose(stations.table["longitude"].to_numpy(), stations.table["latitude"].to_numpy(), target.crs)
     zones = locate_zones(recipe, target, stations)

@@ -57,6 +57,8 @@ class Plan:
         Of each stage; those of reading were measured just now.
     cases : CasePlan or None
         What `texture cases` would make with the recipe's sensitivity set.
+    further : tuple of Target
+        The recipe's further targets.
     """
 
     recipe: Recipe
@@ -66,6 +68,7 @@ class Plan:
     per_side: int
     seconds: dict[str, float] = field(default_factory=dict)
     cases: CasePlan | None = None
+    further: tuple[Target, ...] = ()
 
     @property
     def cells(self) -> int:
@@ -77,7 +80,11 @@ class Plan:
         """Largest memory of the build."""
         bed = self.recipe.bed
         cell = CELL_BYTES + len(bed.layers) * (LAYER_BYTES + CLASS_BYTES * len(bed.classes))
-        return BASE_MB + self.target.n_cells * cell / 1e6
+        return BASE_MB + sum(t.n_cells for t in (self.target, *self.further)) * cell / 1e6
+
+    @property
+    def _named(self) -> list[tuple[str, Target]]:
+        return [(s.name, t) for s, t in zip(self.recipe.further_targets, self.further, strict=True)]
 
     def summary(self) -> dict[str, Any]:
         """Numbers for a program."""
@@ -89,6 +96,7 @@ class Plan:
             "folds": self.recipe.validation.count,
             "memory_mb": round(self.memory_mb),
             "members": self.recipe.ensemble.members,
+            "further_targets": {name: int(t.active.sum()) for name, t in self._named},
             "cases": None if self.cases is None else self.cases.summary(),
             "seconds": {name: round(value, 1) for name, value in self.seconds.items()},
         }
@@ -108,6 +116,11 @@ class Plan:
             f"  memory      about {memory:.1f} GB{fits}",
             f"  time        about {about(sum(self.seconds.values()))}: {stages}; may be off by a factor of three",
         ]
+        for i, (name, grid) in enumerate(self._named):
+            lines.insert(
+                3 + i,
+                f"  {'' if i else 'further':<11} {name}: {grid.size_text}, {int(grid.active.sum()):,} of them water; the same fit",
+            )
         if self.cases is not None:
             lines += [self.cases.lines()[0], "              by texture cases; its --list names them"]
         if there and memory > 0.8 * there:
@@ -144,7 +157,7 @@ def plan(
     with clock.stage("read"):
         with progress.stage("read the grid"):
             target = read_target(recipe.target)
-            check_early(recipe, target)
+            further = tuple(early.target for early in check_early(recipe, target).further)
         with progress.stage("read the samples"):
             stations = place_stations(read_samples(recipe), target, recipe.intake)
             check_cores(recipe, stations)
@@ -152,26 +165,25 @@ def plan(
     observations = observe(stations, plain_treatment(recipe.composition).logratio, plane)
     count = len(candidates(recipe.composition, observations, has_variance=True))
     per_side = points_per_side(recipe.target.points_per_cell, 0.0, 1.0)
-    seconds = {**clock.seconds, **_seconds(recipe, observations, target, count, per_side)}
+    seconds = {**clock.seconds, **_seconds(recipe, observations, (target, *further), count, per_side)}
     cases = None if recipe.sensitivity is None else plan_cases(recipe, target)
-    return Plan(recipe, stations, target, count, per_side, seconds, cases)
+    return Plan(recipe, stations, target, count, per_side, seconds, cases, further)
 
 
 def _seconds(
-    recipe: Recipe, observations: Observations, target: Target, treatments: int, per_side: int
+    recipe: Recipe, observations: Observations, targets: tuple[Target, ...], treatments: int, per_side: int
 ) -> dict[str, float]:
-    cells = float(target.active.sum())
-    write = WRITE_S + target.n_cells / WRITE_CELLS_PER_S
+    target, cells = targets[0], float(sum(t.active.sum() for t in targets))
+    write = WRITE_S + sum(t.n_cells for t in targets) / WRITE_CELLS_PER_S
     folds = observations.count if recipe.validation.folds == "each" else recipe.validation.count
     if not recipe.method.name.startswith("kriging"):
         return {"estimate": cells * per_side**2 / CELLS_PER_S, "write": write}
-    points = cells * per_side**2
-    members = recipe.ensemble.members
+    members, points = recipe.ensemble.members, cells * per_side**2
     return {
         "fit": fit_seconds(observations.count, treatments),
         "validate": validate_seconds(observations.count, treatments, folds),
         "estimate": points / CELLS_PER_S,
-        **({"members": members * points / MEMBER_POINTS_PER_S} if members else {}),
+        **({"members": members * int(target.active.sum()) * per_side**2 / MEMBER_POINTS_PER_S} if members else {}),
         "write": write + members * target.n_cells / WRITE_CELLS_PER_S / 4.0,
     }
 

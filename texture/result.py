@@ -12,6 +12,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import NDArray
 
+from texture.early import RimInputs
 from texture.space import own_ranges, space_line, space_record
 from texture.validation_lines import validation_lines, validation_record
 
@@ -177,6 +178,10 @@ class Result:
         What the members of the recipe's ensemble say together.
     cores : mapping of layer from 0 to CoreLayer
         Layers of the bed that are filled from cores.
+    rim : RimInputs
+        Where the rim is, and what files say of it.
+    further : mapping of name to Result
+        The same fit on the recipe's further targets.
     """
 
     found: Validated
@@ -191,6 +196,8 @@ class Result:
     quantities: tuple[QuantityMap, ...] = ()
     members: MemberSummary | None = None
     cores: Mapping[int, CoreLayer] = field(default_factory=dict)
+    rim: RimInputs = field(default_factory=RimInputs)
+    further: Mapping[str, Result] = field(default_factory=dict)
 
     @property
     def beyond_share(self) -> float:
@@ -275,12 +282,34 @@ class Result:
             else self.found.mapper.zones.lines(self.found.observations.rows),
             "inventory": [{k: known(v) for k, v in vars(stock).items()} for stock in self.inventory],
             "mobility": [mobility_record(m) for m in self.moved],
+            "further_targets": {name: self.further_record(name) for name in self.further},
             "members": 0 if self.members is None else self.members.count,
             **(self.look.to_dict() if self.look is not None else {"second_opinion": None, "neighbourhood": None}),
             "answer": self.answer(),
             "seconds": {name: round(value, 3) for name, value in self.clock.seconds.items()},
             "files": [p.name for p in self.files],
         }
+
+    def further_record(self, name: str) -> dict[str, Any]:
+        """Numbers of one further target."""
+        there, root = self.further[name], self.found.recipe.output
+        inside = [p.relative_to(root) for p in self.files if p.is_relative_to(root / name)]
+        return {
+            "cells": int(there.found.target.active.sum()),
+            "share_beyond_samples": there.beyond_share,
+            "tonnes": there.bed.account.tonnes,
+            "rim_cells": there.bed.account.rim_cells,
+            "files": [p.as_posix() for p in inside],
+        }
+
+    def further_lines(self) -> list[str]:
+        """Say what each further target got."""
+        return [
+            f"{name}: {there.found.target.size_text}, {int(there.found.target.active.sum()):,} of them water; "
+            f"{sum(there.bed.account.tonnes.values()) / 1e6:,.3g} Mt dry; {100 * there.beyond_share:.1f} % beyond what the samples support"
+            + (f"; a rim of {there.bed.account.rim_cells:,} cells" if there.bed.account.rim_cells else "; no rim")
+            for name, there in self.further.items()
+        ]
 
     def summary_lines(self) -> list[str]:
         """Lines for a person, at most a dozen."""
@@ -319,6 +348,7 @@ class Result:
         if len(self.moved) > MOST_CONDITIONS:
             lines[-1] += f" (and {len(self.moved) - MOST_CONDITIONS} more, on the page)"
         lines += [] if self.members is None else [self.members.line()]
+        lines += [f"  {'further' if i == 0 else '':<11} {line}" for i, line in enumerate(self.further_lines())]
         if account.not_given:
             lines.append(f"  not given   {', '.join(account.not_given)}")
         lines += [*written_line(found.recipe, self.files), self.answer()]

@@ -13,7 +13,7 @@ from numpy.typing import NDArray
 from texture.cases import Case, CasePlan, plan_cases
 from texture.clock import Clock
 from texture.core_layers import core_layers
-from texture.early import check_early, read_rim
+from texture.early import RimInputs, check_early, read_rim
 from texture.errors import RecipeError
 from texture.hard_ground import hard_ground_probability
 from texture.progress import Progress
@@ -112,6 +112,7 @@ def make_case_set(
     assert recipe.sensitivity is not None  # the plan comes from it
     tonnes: dict[int, dict[str, float]] = {}
     hard, cores = hard_ground_probability(found), core_layers(found)
+    rims: dict[str, RimInputs] = {}
     with clock.stage("cases"), folder.scratch() as scratch, folder.filling() as aside:
 
         def beds() -> Iterator[tuple[Case, Recipe, Bed]]:
@@ -120,7 +121,9 @@ def make_case_set(
                 for settings, fractions in case_maps(found, per_side, wanted, scratch, progress):
                     for case in (c for c in cases if c.map_settings == settings):
                         changed = recipe.model_copy(update={"bed": case.made_by.bed, "rim": case.made_by.rim})
-                        bed = _bed(case, changed, found, fractions, evidence, hard, cores)
+                        key = repr(changed.rim)
+                        rims[key] = rims[key] if key in rims else read_rim(changed, found.target)
+                        bed = _bed(case, changed, found, fractions, evidence, hard, cores, rims[key])
                         tonnes[case.number] = bed.account.tonnes
                         yield case, changed, bed
                         advance(1)
@@ -143,12 +146,12 @@ def _bed(
     evidence: NDArray[np.int8],
     hard: NDArray[np.float64] | None,
     cores: Mapping[int, CoreLayer],
+    rim: RimInputs,
 ) -> Bed:
     from texture.bed import make_bed
 
-    rim = read_rim(changed, found.target)
     return make_bed(
-        fractions, evidence, found.target, changed.bed, changed.rim, changed.composition.parts, rim.start, rim.parent,
+        fractions, evidence, found.target, changed.bed, changed.rim, changed.composition.parts, rim.weight, rim.parent,
         case.made_by.porosity, hard, cores,
     )  # fmt: skip
 

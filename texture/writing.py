@@ -58,6 +58,9 @@ def write_all(result: Result, folder: ResultFolder, recipe_path: Path, maps: Mem
         write_tables(found.stations, aside)
         _write_scores(found, aside)
         _write_grids(result, aside)
+        for name, there in result.further.items():
+            (aside / name).mkdir()
+            _write_grids(there, aside / name)
         _write_inventory(result, aside)
         if maps is not None:
             write_ensemble(result, maps, aside)

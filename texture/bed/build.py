@@ -46,7 +46,7 @@ def make_bed(
     settings: BedSettings,
     rim: Rim | None = None,
     parts: Sequence[str] = ("mud", "sand", "gravel"),
-    rim_start: Bools | None = None,
+    weight: Floats | None = None,
     rim_parent: Floats | None = None,
     porosity: Callable[[Floats], Floats] | None = None,
     hard_ground: Floats | None = None,
@@ -66,8 +66,8 @@ def make_bed(
     rim : texture.recipe.Rim, optional
         Without it, no rim.
     parts : sequence of str
-    rim_start : bool array, shape (n,), optional
-        Cells that the file of `rim.sides` names, where it is a file.
+    weight : float array, shape (n,), optional
+        Of the rim, as `rim_weight` gives it; worked out here from its sides where it is not given.
     rim_parent : float array, shape (k, layer, n), optional
         Class fractions of the bed in `rim.parent`, where it is given; looked at in rim cells alone.
     porosity : callable, optional
@@ -97,7 +97,10 @@ def make_bed(
     pack = packer(settings.packing, classes, settings.layers)
     if porosity is not None:
         pack = repacked(pack, porosity)
-    weight = np.zeros(n) if rim is None else rim_weight(cells, rim, rim_start)
+    if rim is None:
+        weight = np.zeros(n)
+    elif weight is None:
+        weight = rim_weight(cells, rim)
     rim_bed = _rim_bed(rim, classes, parts) if rim is not None and rim_parent is None else np.empty(0)
 
     fraction = np.empty((len(classes.names), len(settings.layers), n))

@@ -5,7 +5,7 @@ from texture.output.bed_variables import BED_VARIABLES
 from texture.output.cf import on_cells, write_netcdf
 from texture.output.class_colours import class_colours
 from texture.output.compliance import check_cf
-from texture.output.folder import ResultFolder
+from texture.output.folder import RESULTS, ResultFolder
 from texture.output.geotiff import pixel_grid, write_geotiff, write_geotiffs
 from texture.output.into import check_into, stores_single, write_into
 from texture.output.members_nc import NOT_A_BED, summary_dataset, write_members, write_stack
@@ -23,6 +23,7 @@ from texture.output.texture_nc import texture_dataset
 __all__ = [
     "BED_VARIABLES",
     "NOT_A_BED",
+    "RESULTS",
     "Names",
     "ResultFolder",
     "apply_names",

@@ -10,6 +10,7 @@ from texture.recipe.classes import BedClass, Erosion, Grain, Packing, WaterColum
 from texture.recipe.composition import Composition
 from texture.recipe.covariate import Covariate
 from texture.recipe.ensemble import Ensemble
+from texture.recipe.further import FurtherTarget
 from texture.recipe.intake import Intake, Void
 from texture.recipe.inventory import Inventory
 from texture.recipe.method import Method, MethodName
@@ -23,7 +24,7 @@ from texture.recipe.sensitivity import Sensitivity, Vary
 from texture.recipe.settings import Settings
 from texture.recipe.target import TargetSettings
 from texture.recipe.validation import Validation
-from texture.recipe.whole import Recipe, with_method
+from texture.recipe.whole import Recipe, further_recipes, with_method
 from texture.recipe.zones import Zone
 
 __all__ = [
@@ -34,6 +35,7 @@ __all__ = [
     "Covariate",
     "Ensemble",
     "Erosion",
+    "FurtherTarget",
     "Grain",
     "Intake",
     "Inventory",
@@ -58,5 +60,6 @@ __all__ = [
     "WaterColumn",
     "WaterSettings",
     "Zone",
+    "further_recipes",
     "with_method",
 ]

@@ -10,6 +10,7 @@ from pydantic import Field, model_validator
 from texture.recipe.bed import Bed
 from texture.recipe.composition import Composition
 from texture.recipe.ensemble import Ensemble
+from texture.recipe.further import FurtherTarget
 from texture.recipe.intake import Intake
 from texture.recipe.inventory import Inventory
 from texture.recipe.method import Method, MethodName
@@ -25,7 +26,7 @@ from texture.recipe.target import TargetSettings
 from texture.recipe.validation import Validation
 from texture.recipe.zones import Zone
 
-__all__ = ["Recipe", "with_method"]
+__all__ = ["Recipe", "further_recipes", "with_method"]
 
 
 class Recipe(Settings):
@@ -38,6 +39,9 @@ class Recipe(Settings):
     intake: Intake = Field(default_factory=Intake)
     composition: Composition = Field(default_factory=Composition)
     target: TargetSettings
+    further_targets: tuple[FurtherTarget, ...] = Field(
+        (), description="more grids, such as nested ones, that the same fit is mapped on by `texture build`"
+    )
     zones: tuple[Zone, ...] = Field((), description="places with a bed of their own")
     method: Method = Field(default_factory=Method)
     validation: Validation = Field(default_factory=Validation)
@@ -70,17 +74,28 @@ class Recipe(Settings):
         if self.bed.land_fill != "nearest":
             check_composition("bed.land_fill", self.bed.land_fill, parts, classes)
         self._check_zones()
+        self._check_further(classes)
         conditions = [m.name for m in self.mobility]
         for name in conditions:
             if conditions.count(name) > 1:
                 raise ValueError(f'mobility: the name "{name}" is given twice')
         self._check_quantities()
         self.method.check_used(self.methods)
-        if self.rim is not None and self.rim.classes is not None:
-            check_names("rim.classes", self.rim.classes, classes)
-        if self.rim is not None and self.rim.composition is not None:
-            check_names("rim.composition", self.rim.composition, parts)
+        self._check_rim("rim", self.rim, classes)
         return self
+
+    def _check_rim(self, key: str, rim: Rim | None, classes: tuple[str, ...]) -> None:
+        if rim is not None and rim.classes is not None:
+            check_names(f"{key}.classes", rim.classes, classes)
+        if rim is not None and rim.composition is not None:
+            check_names(f"{key}.composition", rim.composition, self.composition.parts)
+
+    def _check_further(self, classes: tuple[str, ...]) -> None:
+        names = [t.name.lower() for t in self.further_targets]
+        for target in self.further_targets:
+            if names.count(target.name.lower()) > 1:
+                raise ValueError(f'further_targets: the name "{target.name}" is given twice')
+            self._check_rim(f'further_targets "{target.name}", rim', target.rim, classes)
 
     def _check_quantities(self) -> None:
         names = [q.name for q in self.quantities]
@@ -140,3 +155,20 @@ class Recipe(Settings):
 def with_method(recipe: Recipe, name: str) -> Recipe:
     """The same recipe with the method that was found best, or already named."""
     return recipe.model_copy(update={"method": recipe.method.model_copy(update={"name": name})})
+
+
+def further_recipes(recipe: Recipe) -> tuple[Recipe, ...]:
+    """One recipe for each further target, with it in the place of the run's own: nothing in it is of the run's own cells."""
+    return tuple(
+        recipe.model_copy(
+            update={
+                "title": f"{recipe.title}: {further.name}",
+                "target": further.target,
+                "rim": further.rim,
+                "further_targets": (),
+                "mobility": (),
+                "outputs": recipe.outputs.model_copy(update={"into": None, "into_record": None}),
+            }
+        )
+        for further in recipe.further_targets
+    )

@@ -196,6 +196,8 @@ def bed_notes(result: Result) -> list[str]:
         notes.append(f"The rim touches {account.rim_cells:,} cells; it is numerical, not observed.")
     else:
         notes.append("No rim was asked for: the open boundary has the estimate itself.")
+    for line in result.further_lines():
+        notes.append(f"Further target, from the same fit and with the same classes and layers: {line}.")
     if account.not_given:
         notes.append(
             f"Not given, and not to be had from grain size: {', '.join(account.not_given)}. The model has to be told."
