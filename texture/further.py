@@ -17,6 +17,7 @@ from texture.targets import points_per_side
 if TYPE_CHECKING:
     from texture.clock import Clock
     from texture.early import Early
+    from texture.learning import T
     from texture.mapping import Mapper
     from texture.progress import Progress
     from texture.result import Validated
@@ -71,9 +72,9 @@ def _moved(found: Validated, early: Early, name: str) -> Validated:
     )
     wet = early.target.active
     places = found.plane.to_metres(early.target.longitude[wet], early.target.latitude[wet])
-    for mapper in (found.mapper, *(q.mapper for q in found.quantities)):
-        if mapper.space.at(places).missing.all():
-            used = mapper.space.axes or mapper.space.columns
+    for space in (found.mapper.space, *(q.mapper.space for q in found.quantities)):
+        if space.at(places).missing.all():
+            used = space.axes or space.columns
             raise RecipeError(
                 f'further_targets "{name}": no water cell of {early.target.name} has a value of '
                 f"{' and '.join(used.names) if used is not None else 'the covariates'}, which the map follows and which is known "
@@ -88,7 +89,7 @@ def _moved(found: Validated, early: Early, name: str) -> Validated:
     )
 
 
-def _on(mapper: Mapper, target: Target) -> Mapper:
+def _on(mapper: Mapper[T], target: Target) -> Mapper[T]:
     """The same method where the zones' shares are those of another target's cells."""
     if mapper.zones is None:
         return mapper
