@@ -125,5 +125,5 @@ def test_a_folder_of_that_name_is_not_written_into(small):
 def test_a_plan_counts_them(small):
     alone, both = plan(small), plan(small, further_targets=[INNER])
     assert both.memory_mb > alone.memory_mb
-    assert any("further     inner: raster, 18 × 18 cells" in line for line in both.summary_lines())
+    assert any("further     inner: 18 × 18 cells" in line for line in both.summary_lines())
     assert both.summary()["further_targets"] == {"inner": 324}
