@@ -1,6 +1,7 @@
 import numpy as np
 import pytest
 
+from benchmarks.kernel import MODELS, stations
 from texture.predict import Kriging
 from texture.predict.honesty import neighbourhood_honesty
 from texture.structure import Covariance, Structure
@@ -30,3 +31,17 @@ def test_the_reference_is_the_nearest_stations():
     c = Covariance([Structure("exponential", 1.0, 0.5)], noise=0.2)
     k = Kriging(c, 40, "nearest").fit(points, z)
     assert neighbourhood_honesty(k, cells, 1, stations=40).largest < 1e-10
+
+
+@pytest.mark.slow
+@pytest.mark.parametrize("layout", ["uniform", "clusters"])
+def test_honest_at_held_out_stations(layout):
+    # 18,000 stations kept, a seeded 20 of 2,000 held out compared for two models: within 0.03 kriging standard deviations
+    # of the answer of their 2,000 nearest, and the variance says so.
+    points, values = stations(20_000, layout)
+    held = np.zeros(20_000, dtype=bool)
+    held[np.random.default_rng(9).permutation(20_000)[:2000]] = True
+    found = neighbourhood_honesty(Kriging(MODELS).fit(points[~held], values[~held]), points[held], 1, count=20)
+    assert (found.places, found.stations) == (20, 2000)
+    assert 0.0 < found.rms < 0.03
+    assert 1.0 <= found.variance_ratio < 1.005

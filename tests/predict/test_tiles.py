@@ -57,6 +57,29 @@ def test_the_same_bits_alone_and_in_any_batch():
     assert np.array_equal(backwards[0][::-1], mean)
 
 
+@pytest.mark.slow
+def test_the_same_bits_alone_in_ten_and_in_a_million_on_one_and_two_threads():
+    k = kriged(3000, neighbours=32)
+    cells = np.random.default_rng(2).random((1_000_000, 2)) * 1600.0 - 300.0
+    threads = numba.get_num_threads()
+    try:
+        numba.set_num_threads(1)
+        mean, variance = k.predict(cells)
+        if threads > 1:
+            numba.set_num_threads(2)
+        again = k.predict(cells)
+    finally:
+        numba.set_num_threads(threads)
+    assert np.array_equal(again[0], mean)
+    assert np.array_equal(again[1], variance)
+    for first in np.random.default_rng(3).integers(0, 999_990, 20):
+        for count in (1, 10):
+            part = slice(first, first + count)
+            few = k.predict(cells[part])
+            assert np.array_equal(few[0], mean[part])
+            assert np.array_equal(few[1], variance[part])
+
+
 @pytest.mark.parametrize(("neighbours", "mode"), [(16, "tile"), (16, "nearest"), (None, "tile")])
 def test_threads_change_nothing(neighbours, mode):
     rng = np.random.default_rng(3)
