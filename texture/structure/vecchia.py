@@ -34,30 +34,55 @@ def coarse_to_fine(points: Array, seed: int = 0) -> Ints:
     """Order in which stations first cover the whole area thinly and then ever more finely.
 
     Stands in for the exact max-min order in n log n: on grids of halving cell size each cell that holds no earlier
-    station gives one, drawn by seed.
+    station gives one, drawn by seed. Cells of all sizes nest, so a station enters on the first grid on which it is the
+    first drawn of its cell; stations sorted along a curve through the nested cells (Morton 1966) tell that in one pass.
     """
     n, d = points.shape
-    rng = np.random.default_rng(seed)
-    shuffled = rng.permutation(n)
+    shuffled = np.random.default_rng(seed).permutation(n)
+    drawn = np.empty(n, dtype=np.int64)
+    drawn[shuffled] = np.arange(n)
     low, extent = points.min(axis=0), float(np.ptp(points, axis=0).max()) or 1.0
-    taken = np.zeros(n, dtype=bool)
-    order: list[Ints] = []
-    for level in range(31):
-        cell = np.floor((points - low) / extent * 2.0**level).astype(np.int64)
-        # One number per cell; a product of large odd numbers, so that two cells seldom share one (harmless if so).
-        key = (cell * np.array([1, 2654435761, 40503 * 65537, 2246822519, 3266489917, 668265263, 374761393][:d])).sum(
-            axis=1
-        )
-        occupied = np.unique(key[taken])
-        rest = shuffled[~taken[shuffled]]
-        rest = rest[~np.isin(key[rest], occupied)]
-        first = np.sort(np.unique(key[rest], return_index=True)[1])
-        order.append(rest[first])
-        taken[rest[first]] = True
-        if taken.all():
-            break
-    order.append(shuffled[~taken[shuffled]])
-    return np.concatenate(order)
+    levels = min(31, 62 // d)
+    cell = np.floor((points - low) / extent * 2.0 ** (levels - 1)).astype(np.int64)
+    code = np.zeros(n, dtype=np.int64)
+    for bit in range(levels):
+        for j in range(d):
+            code |= (cell[:, j] >> bit & 1) << (bit * d + j)
+    curve = np.argsort(code, kind="stable")
+    level = np.empty(n, dtype=np.int64)
+    level[curve] = _levels(code[curve], drawn[curve], d, levels)
+    return np.lexsort((drawn, level))
+
+
+@compiled
+def _levels(code: np.ndarray, drawn: np.ndarray, d: int, levels: int) -> np.ndarray:
+    """Grid on which each station along the curve is the first drawn of its cell; `levels` where none is fine enough.
+
+    Shared with the nearest earlier-drawn station on either side, a cell is that station's.
+    """
+    n = code.size
+    level = np.zeros(n, dtype=np.int64)
+    before = np.empty(n, dtype=np.int64)
+    depth = 0
+    for i in range(n):
+        while depth > 0 and drawn[before[depth - 1]] > drawn[i]:
+            depth -= 1
+            level[before[depth]] = max(level[before[depth]], _shared(code[before[depth]] ^ code[i], d, levels))
+        if depth > 0:
+            level[i] = _shared(code[before[depth - 1]] ^ code[i], d, levels)
+        before[depth] = i
+        depth += 1
+    return level
+
+
+@compiled
+def _shared(difference: int, d: int, levels: int) -> int:
+    """Number of grids on which two stations, whose codes differ in these bits, share a cell."""
+    shared = levels
+    while difference > 0:
+        difference >>= d
+        shared -= 1
+    return shared
 
 
 def _predecessors(points: Array, order: Ints, wanted: Ints, m: int) -> Ints:
