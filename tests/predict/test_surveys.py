@@ -4,7 +4,7 @@ import numpy as np
 import pytest
 
 from texture.predict import Kriging
-from texture.predict.effects import estimate_effects
+from texture.predict.effects import arrange_stations, estimate_effects
 from texture.structure import Covariance, Structure
 
 BED = Covariance([Structure("exponential", 1.0, 600.0)], small_scale=0.02, survey=0.5)
@@ -50,9 +50,11 @@ def test_all_stations_and_tiles_agree_on_the_offsets():
 def test_effects_dense_and_by_vecchia_agree(monkeypatch):
     points, bed, patch, offset = patchwork(700, 4)
     noise, drift = np.full(700, 0.05), (points[:, :1] - 500.0) / 289.0
-    dense = estimate_effects(points, (bed + offset[patch])[:, None], noise, patch, BED, drift)
+    dense = estimate_effects(points, (bed + offset[patch])[:, None], noise, patch, BED, drift, arrange_stations(points))
     monkeypatch.setattr("texture.predict.effects.MOST_DENSE", 100)
-    product = estimate_effects(points, (bed + offset[patch])[:, None], noise, patch, BED, drift)
+    product = estimate_effects(
+        points, (bed + offset[patch])[:, None], noise, patch, BED, drift, arrange_stations(points)
+    )
     assert product.offsets == pytest.approx(dense.offsets, abs=0.1)
     assert product.coefficients == pytest.approx(dense.coefficients, abs=0.1 * np.sqrt(dense.covariance[0, 0]) + 0.05)
     assert product.offset_variance == pytest.approx(dense.offset_variance, rel=0.1)
@@ -64,7 +66,7 @@ def test_surveys_that_mix_are_told_apart_well():
     survey = rng.integers(0, 5, 700)
     offset = np.array([-1.0, 0.5, 0.0, 0.7, -0.2])
     z = (bed + offset[survey])[:, None]
-    found = estimate_effects(points, z, np.full(700, 1e-9), survey, BED, np.empty((700, 0)))
+    found = estimate_effects(points, z, np.full(700, 1e-9), survey, BED, np.empty((700, 0)), None)
     assert found.offsets[0] - found.offsets.mean() == pytest.approx(offset - offset.mean(), abs=0.1)
 
 

@@ -5,7 +5,7 @@ from scipy.spatial import cKDTree
 from texture.structure import Covariance, Structure
 from texture.structure import vecchia as module
 from texture.structure.likelihood import DenseLikelihood, Family, Parameters
-from texture.structure.vecchia import Vecchia, VecchiaLikelihood, coarse_to_fine, mixed_model
+from texture.structure.vecchia import Vecchia, VecchiaLikelihood, arrange, coarse_to_fine, mixed_model
 
 
 def stations(n, seed=0):
@@ -21,7 +21,7 @@ def test_with_all_predecessors_it_is_the_dense_likelihood(family, monkeypatch):
     points, z, noise, drift, survey = stations(60)
     p = Parameters(300.0, 1.2, 0.3, 0.4)
     dense = DenseLikelihood(points, z, noise, drift, survey)(family, p)
-    product = VecchiaLikelihood(points, z, noise, drift, survey)(family, p)
+    product = VecchiaLikelihood(points, z, noise, drift, survey, (), arrange(points))(family, p)
     assert product[0] == pytest.approx(dense[0], abs=1e-9)
     assert product[1] == pytest.approx(dense[1], abs=1e-5)
 
@@ -32,17 +32,17 @@ def test_with_few_predecessors_it_is_close():
     z = np.linalg.cholesky(c.matrix(points)) @ z + np.sqrt(noise) * z[::-1]
     for p in (Parameters(400.0, 1.0, 0.1, 0.1), Parameters(200.0, 0.7, 0.2, 0.2)):
         dense = DenseLikelihood(points, z, noise, drift, survey)(Family("exponential"), p)
-        product = VecchiaLikelihood(points, z, noise, drift, survey)(Family("exponential"), p)
+        product = VecchiaLikelihood(points, z, noise, drift, survey, (), arrange(points))(Family("exponential"), p)
         assert product[0] == pytest.approx(dense[0], abs=1.5)
 
 
 def test_a_sample_of_conditionals_stands_for_all(monkeypatch):
     points, z, noise, drift, _ = stations(3000, 2)
     p = Parameters(100.0, 1.0, 0.3)
-    full = VecchiaLikelihood(points, z, noise, drift, None)(Family("exponential"), p, False)[0]
+    full = VecchiaLikelihood(points, z, noise, drift, None, (), arrange(points))(Family("exponential"), p, False)[0]
     monkeypatch.setattr(module, "FIRST", 200)
     monkeypatch.setattr(module, "SAMPLED", 800)
-    sampled = VecchiaLikelihood(points, z, noise, drift, None)
+    sampled = VecchiaLikelihood(points, z, noise, drift, None, (), arrange(points))
     assert sampled.mean_weight == pytest.approx(3.0)
     # The sum of 2,800 terms of standard deviation 0.7 from 800 of them: 2800 / sqrt(800) * 0.7 = 70.
     assert sampled(Family("exponential"), p, False)[0] == pytest.approx(full, abs=210)
@@ -76,7 +76,7 @@ def test_mixed_model_is_generalised_least_squares(monkeypatch):
     c = Covariance([Structure("exponential", 1.0, 300.0)], small_scale=0.2)
     indicator = np.eye(4)[survey]
     monkeypatch.setattr(module, "PREDECESSORS", 100)
-    white = Vecchia(points, np.column_stack([drift, indicator, z]), all_stations=True)
+    white = Vecchia(points, np.column_stack([drift, indicator, z]), arrange(points, all_stations=True))
     _, gram = white.whiten(c.packed, noise + c.small_scale, threads=2)
     assert np.array_equal(gram, white.whiten(c.packed, noise + c.small_scale)[1])
     coefficients, covariance, _ = mixed_model(gram, 2, 0.5)
@@ -106,3 +106,39 @@ def test_large_sets_are_fitted_in_seconds_and_recovered():
     # The area is eight ranges wide: the sill is known to some 15 %, the small-scale variation far better.
     assert fitted.small_scale == pytest.approx(0.3, rel=0.08)
     assert fitted.structures[0].sill / fitted.range_m == pytest.approx(1.0 / 12_000.0, rel=0.12)
+
+
+@pytest.mark.parametrize("d", [1, 2, 3, 4])
+def test_each_grid_adds_the_first_drawn_of_every_cell_that_is_empty(d):
+    rng = np.random.default_rng(d)
+    points = np.concatenate(
+        [rng.random((200, d)), np.round(rng.random((100, d)) * 8.0) / 8.0, 1e-3 * rng.random((99, d))]
+    )
+    drawn = np.random.default_rng(5).permutation(399).tolist()
+    low, extent = points.min(axis=0), np.ptp(points, axis=0).max()
+    expected = []
+    for level in range(15):
+        cells = [tuple(c) for c in np.floor((points - low) / extent * 2.0**level)]
+        taken = {cells[i] for i in expected}
+        for i in drawn:
+            if cells[i] not in taken:
+                taken.add(cells[i])
+                expected.append(i)
+    expected += [i for i in drawn if i not in set(expected)]
+    found = coarse_to_fine(points, 5)
+    assert sorted(found.tolist()) == list(range(399))
+    # Two stations still in one cell of the fifteenth grid come in an order that finer ones decide.
+    same = len({tuple(c) for c in np.floor((points - low) / extent * 2.0**14)})
+    assert found[:same].tolist() == expected[:same]
+
+
+def test_columns_of_the_same_stations_are_arranged_once(monkeypatch):
+    from texture.structure import Covariance, vecchia
+
+    calls = []
+    monkeypatch.setattr(vecchia, "arrange", lambda *a, **k: calls.append(1) or arrange(*a, **k))
+    rng = np.random.default_rng(6)
+    points, values = rng.random((520, 2)) * 1000.0, rng.normal(size=(520, 3))
+    values[0, 2] = np.nan
+    Covariance.fit(points, values)
+    assert len(calls) == 2

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -10,7 +10,10 @@ from numpy.typing import NDArray
 from texture.errors import StructureError
 from texture.structure.covariance import Covariance
 
-__all__ = ["MOST_SURVEYS", "Effects", "estimate_effects", "station_covariance"]
+if TYPE_CHECKING:
+    from texture.structure.vecchia import Arrangement
+
+__all__ = ["MOST_SURVEYS", "Effects", "arrange_stations", "estimate_effects", "station_covariance"]
 
 Array = NDArray[np.float64]
 
@@ -41,8 +44,21 @@ class Effects:
         self.offsets, self.offset_variance = offsets, offset_variance
 
 
+def arrange_stations(points: Array) -> Arrangement | None:
+    """Order and predecessors of the stations; None for so few that the estimate is dense."""
+    from texture.structure.vecchia import arrange
+
+    return arrange(points, all_stations=True) if len(points) > MOST_DENSE else None
+
+
 def estimate_effects(
-    points: Array, values: Array, noise: Array, survey: NDArray[np.int64], c: Covariance, drift: Array
+    points: Array,
+    values: Array,
+    noise: Array,
+    survey: NDArray[np.int64],
+    c: Covariance,
+    drift: Array,
+    arranged: Arrangement | None,
 ) -> Effects:
     """Generalised least squares drift and best linear unbiased survey offsets (Henderson's mixed-model equations).
 
@@ -56,6 +72,8 @@ def estimate_effects(
     c : Covariance
     drift : float array, shape (n, p)
         Without the constant, standardised; p may be 0.
+    arranged : Arrangement, optional
+        What `arrange_stations` made of the points: covariances of the same stations share it.
     """
     from texture.structure.vecchia import Vecchia, mixed_model
 
@@ -66,10 +84,10 @@ def estimate_effects(
     own = c.survey > 0.0 and 1 < surveys <= MOST_SURVEYS
     indicator = np.eye(surveys)[survey] if own else np.empty((n, 0))
     columns = np.column_stack([design, indicator, values])
-    if n <= MOST_DENSE:
+    if arranged is None:
         gram = _dense_products(points, noise, c, columns, columns.shape[1] - values.shape[1])
     else:
-        _, gram = Vecchia(points, columns, all_stations=True).whiten(c.packed, noise + c.small_scale, _threads())
+        _, gram = Vecchia(points, columns, arranged).whiten(c.packed, noise + c.small_scale, _threads())
     coefficients, covariance, _ = mixed_model(gram, design.shape[1], c.survey, values.shape[1])
     p = design.shape[1]
     # A survey that cannot be told from the others keeps its prior: no offset, all of the variance.

@@ -46,7 +46,7 @@ class System:
         mode: str,
         drift: str,
     ) -> None:
-        from texture.predict.effects import estimate_effects
+        from texture.predict.effects import arrange_stations, estimate_effects
         from texture.predict.equations import Models
 
         self.columns, self.rows, self.mode = columns, rows, mode
@@ -86,10 +86,10 @@ class System:
         if mode != "all" and means is None:
             # A neighbourhood inside one survey cannot tell that survey's offset from the bed; all stations together
             # can. What is left of the offsets' variance stays with the stations as their survey variance.
-            for k, c in enumerate(covariances):
-                if c.survey == 0.0 and not g:
-                    continue
-                effects = estimate_effects(points, departures[:, k], noise[k], survey, c, wide)
+            wanted = [k for k, c in enumerate(covariances) if c.survey > 0.0 or g]
+            arranged = arrange_stations(points) if wanted else None
+            for k in wanted:
+                effects = estimate_effects(points, departures[:, k], noise[k], survey, covariances[k], wide, arranged)
                 self.coefficients[k], global_covariance[k] = effects.coefficients, effects.covariance
                 self.offsets[k], survey_variance[k] = effects.offsets, effects.offset_variance
             departures -= np.einsum("ng,vcg->nvc", wide, self.coefficients)

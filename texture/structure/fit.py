@@ -16,7 +16,7 @@ from texture.structure.record import Candidate, Fit
 from texture.structure.variogram import EmpiricalVariogram, empirical_variogram, fit_variogram
 
 if TYPE_CHECKING:
-    from texture.structure.vecchia import VecchiaLikelihood
+    from texture.structure.vecchia import Arrangement, VecchiaLikelihood
 
 __all__ = ["FAMILIES", "fit_covariance"]
 
@@ -139,13 +139,14 @@ def fit_covariance(
         raise StructureError("own_range_axes: own ranges are fitted by likelihood; a variogram knows one distance only")
     warm = [start] * count if isinstance(start, Covariance) else list(start) if start is not None else [None] * count
     fitted: list[Covariance | None] = [None] * count
+    arranged: dict[bytes, Arrangement] = {}
     with one_blas_thread():
         for members in sets:
             own = [columns[v] for v in members]
             if method == "variogram":
                 results = [_by_variogram(c, seed, families) for c in own]
             else:
-                results = _by_likelihood(own, [warm[v] for v in members], seed, families)
+                results = _by_likelihood(own, [warm[v] for v in members], seed, families, arranged)
             for v, covariance in zip(members, results, strict=True):
                 fitted[v] = covariance
         done = [c for c in fitted if c is not None]
@@ -341,15 +342,19 @@ def _dense(column: _Column, seed: int) -> DenseLikelihood:
 
 
 def _by_likelihood(
-    columns: list[_Column], warm: list[Covariance | None], seed: int, families: Sequence[Family]
+    columns: list[_Column],
+    warm: list[Covariance | None],
+    seed: int,
+    families: Sequence[Family],
+    arranged: dict[bytes, Arrangement],
 ) -> list[Covariance]:
-    """Fit the columns of one group, which share range and family."""
+    """Fit the columns of one group, which share range and family; `arranged` keeps what columns of equal stations share."""
     flat = [c.scale == 0.0 for c in columns]
     if any(flat):
         rest = [i for i, f in enumerate(flat) if not f]
         results = [_flat_fit(c) for c in columns]
         if rest:
-            others = _by_likelihood([columns[i] for i in rest], [warm[i] for i in rest], seed, families)
+            others = _by_likelihood([columns[i] for i in rest], [warm[i] for i in rest], seed, families, arranged)
             for i, covariance in zip(rest, others, strict=True):
                 results[i] = covariance
         return results
@@ -357,12 +362,17 @@ def _by_likelihood(
     # Beyond what a dense matrix holds, the dense search on a subset only finds where Vecchia's starts.
     final = search
     if max(len(c.points) for c in columns) > MOST_DENSE:
-        from texture.structure.vecchia import VecchiaLikelihood
+        from texture.structure.vecchia import VecchiaLikelihood, arrange
 
-        final = _Search(
-            columns,
-            [VecchiaLikelihood(c.points, c.values, c.noise_variance, c.drift, c.survey, c.axes, seed) for c in columns],
-        )
+        whole: list[VecchiaLikelihood] = []
+        for c in columns:
+            key = c.points.tobytes()
+            if key not in arranged:
+                arranged[key] = arrange(c.points, seed)
+            whole.append(
+                VecchiaLikelihood(c.points, c.values, c.noise_variance, c.drift, c.survey, c.axes, arranged[key])
+            )
+        final = _Search(columns, whole)
     variograms = [_variograms(c, seed, families) for c in columns]
     tried: list[tuple[Family | None, list[Parameters], float]]
     known = [c for c in warm if c is not None]

@@ -9,6 +9,7 @@ mixed-model equations).
 from __future__ import annotations
 
 from concurrent.futures import ThreadPoolExecutor
+from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
@@ -18,7 +19,7 @@ from texture.structure.compiled import add_structures
 from texture.structure.likelihood import Family, Parameters
 from texture.structure.linear import factor, forward
 
-__all__ = ["Vecchia", "VecchiaLikelihood", "coarse_to_fine", "mixed_model"]
+__all__ = ["Arrangement", "Vecchia", "VecchiaLikelihood", "arrange", "coarse_to_fine", "mixed_model"]
 
 Array = NDArray[np.float64]
 Ints = NDArray[np.int64]
@@ -193,31 +194,50 @@ def _whiten(
     return log_variance
 
 
+@dataclass(frozen=True)
+class Arrangement:
+    """Which stations' conditionals enter, with what weight, and what each is conditioned on.
+
+    Parameters
+    ----------
+    target : int array, shape (c,)
+    given : int array, shape (c, PREDECESSORS), -1 for none
+    weight : float array, shape (c,)
+    """
+
+    target: Ints
+    given: Ints
+    weight: Array
+
+
+def arrange(points: Array, seed: int = 0, *, all_stations: bool = False) -> Arrangement:
+    """Order and predecessors of stations (n, d): of all of them (for estimates) or a weighted sample (for fits)."""
+    n = len(points)
+    order = coarse_to_fine(points, seed)
+    positions = np.arange(n)
+    weight = np.ones(n)
+    if not all_stations and n > FIRST + SAMPLED:
+        sample = np.random.default_rng(seed).choice(np.arange(FIRST, n), SAMPLED, replace=False)
+        positions = np.concatenate([np.arange(FIRST), np.sort(sample)])
+        weight = np.where(positions < FIRST, 1.0, (n - FIRST) / SAMPLED)
+    return Arrangement(order[positions], _predecessors(points, order, positions, PREDECESSORS), weight)
+
+
 class Vecchia:
-    """Order, predecessors and columns of one set of stations; whitens them for any covariance.
+    """Columns at stations arranged; whitens them for any covariance.
 
     Parameters
     ----------
     points : float array, shape (n, d)
     columns : float array, shape (n, q)
         Columns to whiten: drift, then survey indicators, then values.
-    seed : int
-    all_stations : bool
-        Whether each station's conditional enters (for estimates) or a weighted sample of them (for fits).
+    arrangement : Arrangement
+        Of the same points.
     """
 
-    def __init__(self, points: Array, columns: Array, seed: int = 0, *, all_stations: bool = False) -> None:
+    def __init__(self, points: Array, columns: Array, arrangement: Arrangement) -> None:
         n, q = columns.shape
-        order = coarse_to_fine(points, seed)
-        positions = np.arange(n)
-        weight = np.ones(n)
-        if not all_stations and n > FIRST + SAMPLED:
-            sample = np.random.default_rng(seed).choice(np.arange(FIRST, n), SAMPLED, replace=False)
-            positions = np.concatenate([np.arange(FIRST), np.sort(sample)])
-            weight = np.where(positions < FIRST, 1.0, (n - FIRST) / SAMPLED)
-        self.target = order[positions]
-        self.given = _predecessors(points, order, positions, PREDECESSORS)
-        self.weight = weight
+        self.target, self.given, self.weight = arrangement.target, arrangement.given, arrangement.weight
         self.points, self.q = points, q
         self.columns = np.zeros((n, (q + 15) // 16 * 16))
         self.columns[:, :q] = columns
@@ -282,14 +302,14 @@ class VecchiaLikelihood:
         noise_variance: Array,
         drift: Array,
         survey: NDArray[np.int64] | None,
-        axes: tuple[int, ...] = (),
-        seed: int = 0,
+        axes: tuple[int, ...],
+        arrangement: Arrangement,
     ) -> None:
         self.own_points, self.axes = points, axes
         self.drifts, self.surveys = drift.shape[1], 0 if survey is None else int(survey.max()) + 1
         indicator = np.zeros((len(values), 0)) if survey is None else np.eye(self.surveys)[survey]
         self.noise_variance = noise_variance
-        self.vecchia = Vecchia(points, np.column_stack([drift, indicator, values]), seed)
+        self.vecchia = Vecchia(points, np.column_stack([drift, indicator, values]), arrangement)
         self.evaluations = 0
 
     @property
