@@ -118,6 +118,23 @@ def test_more_stations_at_one_place_than_a_neighbourhood_holds():
     assert (variance[:500, 0] < 0.56).all()
 
 
+@pytest.mark.parametrize("size", [3, 20])
+def test_in_tiles_a_sample_tells_nothing_of_its_own_survey(size):
+    # Surveys of a few samples each: an offset that knows the left-out sample makes errors a quarter too small for three.
+    rng = np.random.default_rng(1)
+    points, survey = rng.random((300, 2)) * 1000.0, np.arange(300) // size
+    c = Covariance([Structure("exponential", 1.0, 300.0)], small_scale=0.05, noise=0.1, survey=0.5)
+    same = survey[:, None] == survey[None, :]
+    z = np.linalg.cholesky(c.matrix(points) + 0.1 * np.eye(300) + 0.5 * same) @ rng.normal(size=300)
+    rms, square = [], []
+    for neighbours in (16, None):
+        mean, variance = leave_out(Kriging(c, neighbours).fit(points, z, survey=survey))
+        rms.append(np.sqrt(np.mean((mean[:, 0] - z) ** 2)))
+        square.append(np.mean((mean[:, 0] - z) ** 2 / variance[:, 0]))
+    assert rms[0] == pytest.approx(rms[1], rel=0.06)
+    assert square[0] == pytest.approx(square[1], rel=0.15)
+
+
 def test_what_the_rest_cannot_support_is_nan():
     points, z = np.arange(5.0)[:, None], np.array([1.0, 2, 3, 4, 5])
     k = Kriging(Covariance([], 1.0), None).fit(points, z, drift=[0.0, 0, 0, 0, 1])

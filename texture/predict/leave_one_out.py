@@ -38,6 +38,7 @@ def leave_out_of_runs(
     untold: float,
     value: np.ndarray,
     spread: np.ndarray,
+    alone: np.ndarray,
 ) -> None:
     """Departure of each left-out sample as one tile predicts it, and the variance of its error.
 
@@ -49,12 +50,14 @@ def leave_out_of_runs(
     which : (p,) stations
     untold : part of inv(K) below which what the drift leaves of a station is nothing
     value, spread : (p, v), written in the order of `which`; NaN where the others cannot tell the drift
+    alone : (p, v), written: by how much the error grows when the sample's whole survey is raised by one; 1 where no
+        other sample of that survey has weight
     """
     n, v, q = tree.points.shape[0], models.columns.shape[0], models.columns.shape[2]
     most = min(n, capacity + AT_ONCE)
     stamp, place = np.full(n, -1, dtype=np.int64), np.zeros(n, dtype=np.int64)
     station, factors = np.empty(most, dtype=np.int64), make_factors(models, most)
-    room, room_of_sums = np.empty(padded(most) * AT_ONCE), np.empty((q + 1) * AT_ONCE)
+    room, room_of_sums = np.empty((2, padded(most) * AT_ONCE)), np.empty((2, (q + 1) * AT_ONCE))
     for run in range(tile_of_run.size):
         own = neighbourhood(tile_of_run[run], tree, boxes, neighbours, stamp, station[:capacity])
         for i in range(own):
@@ -70,32 +73,63 @@ def leave_out_of_runs(
                     count += 1
             factor_neighbourhood(models, station[:count], factors)
             m, size = padded(count), block_size(left_out.size)
-            w, sums = room[: m * size].reshape(m, size), room_of_sums[: (q + 1) * size].reshape(q + 1, size)
+            w, sums = room[0, : m * size].reshape(m, size), room_of_sums[0, : (q + 1) * size].reshape(q + 1, size)
+            same, raised = room[1, : m * size].reshape(m, size), room_of_sums[1, : (q + 1) * size].reshape(q + 1, size)
             for k in range(v):
                 w[:] = 0.0
                 for c in range(left_out.size):
                     w[place[left_out[c]], c] = 1.0
-                substitute(factors.u[k, : m * m].reshape(m, m), factors.columns[k], q, w, sums)
+                u, surveys = factors.u[k, : m * m].reshape(m, m), models.survey_variance[k].any()
+                substitute(u, factors.columns[k], q, w, sums)
+                if surveys:
+                    same[:] = 0.0
+                    for c in range(left_out.size):
+                        for i in range(count):
+                            if models.survey[station[i]] == models.survey[left_out[c]]:
+                                same[i, c] = 1.0
+                    substitute(u, factors.columns[k], q, same, raised)
                 for c in range(left_out.size):
                     departure = models.columns[k, left_out[c], models.drifts]
                     error, variance = _error(sums[:, c], factors.normal[k], models.drifts, untold)
                     value[begin + c, k], spread[begin + c, k] = departure - error, variance
+                    if surveys:
+                        product = _column_product(w, same, c)
+                        drift = _drift_product(sums[:, c], raised[:, c], factors.normal[k], models.drifts)
+                        alone[begin + c, k] = variance * (product - drift)
 
 
 @compiled
 def _error(sums: np.ndarray, normal: np.ndarray, drifts: int, untold: float) -> tuple[float, float]:
     """Error of one left-out sample and its variance, from its sums (1 + q,)."""
     inverse, weighted = sums[0], sums[1 + drifts]
-    # The drift's columns go through the factor of their normal matrix as they do for a cell.
-    rest = np.empty(drifts)
-    remains = inverse
     for a in range(drifts):
         weighted -= sums[1 + a] * normal[drifts, a]
-        rest[a] = sums[1 + a]
-        for b in range(a):
-            rest[a] -= normal[a, b] * rest[b]
-        rest[a] = rest[a] / normal[a, a] if normal[a, a] > 0.0 else 0.0
-        remains -= rest[a] * rest[a]
+    remains = inverse - _drift_product(sums, sums, normal, drifts)
     if not remains > untold * inverse:
         return math.nan, math.nan
     return weighted / remains, 1.0 / remains
+
+
+@compiled
+def _drift_product(one: np.ndarray, other: np.ndarray, normal: np.ndarray, drifts: int) -> float:
+    """What the drift takes from the product of two right-hand sides, from their sums (1 + q,)."""
+    rest, beside = np.empty(drifts), np.empty(drifts)
+    total = 0.0
+    for a in range(drifts):
+        rest[a], beside[a] = one[1 + a], other[1 + a]
+        for b in range(a):
+            rest[a] -= normal[a, b] * rest[b]
+            beside[a] -= normal[a, b] * beside[b]
+        inverse = 1.0 / normal[a, a] if normal[a, a] > 0.0 else 0.0
+        rest[a] *= inverse
+        beside[a] *= inverse
+        total += rest[a] * beside[a]
+    return total
+
+
+@compiled
+def _column_product(a: np.ndarray, b: np.ndarray, c: int) -> float:
+    total = 0.0
+    for i in range(a.shape[0]):
+        total += a[i, c] * b[i, c]
+    return total

@@ -35,7 +35,7 @@ def leave_out(kriging: Kriging, groups: ArrayLike | None = None) -> tuple[Array,
     ----------
     kriging : Kriging
         Fitted. With ``neighbours=None`` the answer is that of all stations. With tiles each station is left out of
-        the neighbourhood of its own tile, and groups are refused: a whole group is seldom inside one.
+        the neighbourhoods of the tiles that serve it, and groups are refused: a whole group is seldom inside one.
     groups : int array, shape (n,), optional
         Samples with equal numbers are left out together; each alone by default.
 
@@ -44,6 +44,13 @@ def leave_out(kriging: Kriging, groups: ArrayLike | None = None) -> tuple[Array,
     mean, variance : float arrays, shape (n, v)
         Of the left-out *sample*: noise is in the variance, and so is its survey's offset as far as the rest of that
         survey does not tell it. NaN where a column is unknown, and where the rest cannot support the drift.
+
+    Notes
+    -----
+    With tiles, what is common to all stations was estimated from all of them. What a sample told of its survey's offset
+    is taken out again by the mean share of its survey's samples: with 300 stations in surveys of 2, 5 and 20, rms
+    errors were 6, 2 and 0.1 % below those of the exact answer (35, 16 and 3 % if left as it is). Drift coefficients keep
+    what each sample told of them, of the order of one over the number of stations.
 
     Raises
     ------
@@ -126,17 +133,38 @@ def _leave_out_of_tiles(system: System, mean: Array, variance: Array) -> None:
     own += models.survey_variance[:, models.survey]
     raised = models._replace(noise=models.noise + FLOOR * own)
     most = capacity(models.points.shape[1], system.neighbours, n)
-    value, spread = np.empty((len(which), len(system.columns))), np.empty((len(which), len(system.columns)))
+    value, spread, alone = np.zeros((3, len(which), len(system.columns)))
 
     def run(first: int, last: int) -> None:
         leave_out_of_runs(
             raised, tiles.tree, tiles.boxes, system.neighbours, most, used[first:last], runs[first : last + 1], which,
-            UNTOLD, value, spread,
+            UNTOLD, value, spread, alone,
         )  # fmt: skip
 
     in_parts_of_equal_cost(run, np.diff(runs) + 60)
+    _leave_out_of_offsets(system, which, value, spread, alone)
     # Pairs of a station stand together, and each station has at least one.
     for k, column in enumerate(system.columns):
         departure = np.add.reduceat(weight * value[slot, k], begin[:-1])
         mean[system.rows, column] = _restore(system, k, np.arange(n), departure)
         variance[system.rows, column] = np.add.reduceat(weight * spread[slot, k], begin[:-1])
+
+
+def _leave_out_of_offsets(system: System, which: NDArray[np.int64], value: Array, spread: Array, alone: Array) -> None:
+    """Take out what a left-out sample told of its survey's offset, which was estimated from all of them.
+
+    A survey of m samples whose offset has variance left of variance s before: its samples' shares in the estimate have
+    the mean (1 - left / s) / m, and each of them is given that mean. An estimate without the sample differs by the share
+    of the sample's error, and so does the error, as far as no other sample of the survey has weight.
+    """
+    models = system.models
+    survey, size = models.survey[which], np.bincount(models.survey)
+    for k, c in enumerate(system.covariances):
+        if c.survey == 0.0:
+            continue
+        left = models.survey_variance[k]
+        share = np.clip(1.0 - left / c.survey, 0.0, 1.0 - 1e-9) / np.maximum(size, 1)
+        own, part = share[survey], alone[:, k]
+        departure = models.columns[k, which, models.drifts]
+        value[:, k] = departure - (departure - value[:, k]) / (1.0 - own * part)
+        spread[:, k] += left[survey] * own / (1.0 - own) * part**2
