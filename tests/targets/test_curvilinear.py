@@ -3,13 +3,14 @@
 import numpy as np
 import pyproj
 import pytest
+import shapely
 import xarray as xr
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from texture.errors import TargetError
 from texture.recipe import TargetSettings
-from texture.targets import Target, read_target
+from texture.targets import Target, cell_points, read_target
 from texture.targets.structured import Structured
 
 LON = {"units": "degrees_east", "standard_name": "longitude"}
@@ -208,6 +209,8 @@ def test_coordinates_come_back_through_xarray_and_cf_xarray(tmp_path):
         (lambda p: write(p, *rotated(), np.zeros((6, 8), "i4")), {}, "no cell is water"),
         (lambda p: write(p, *rotated(), np.full((6, 8), 3), {"long_name": "m"}), {"mask": "wet"}, 'holds 3, expected 0 and 1'),
         (lambda p: write(p, rotated()[0], np.where(np.arange(48).reshape(6, 8) == 20, np.nan, rotated()[1]), np.ones((6, 8))), {}, "1 water cells have no position"),
+        (lambda p: write(p, *rotated(), sea=(("k", "m"), np.ones((5, 8)))), {"mask": "sea"}, r"mask \"sea\" has shape .*'k': 5, 'm': 8.*expected the grid's dimensions"),
+        (lambda p: in_radians(write(p, *rotated())), {}, '"lon" is in "radian", expected degrees_east'),
         (lambda p: write(p, rotated()[0], rotated()[1], d=(("k",), [1.0])), {"depth": "d"}, r"depth \"d\" is on"),
     ],
 )  # fmt: skip
@@ -217,6 +220,37 @@ def test_broken_grids_have_one_line(tmp_path, build, settings_, words):
     with pytest.raises(TargetError, match=words) as caught:
         read(path, **settings_)
     assert "\n" not in str(caught.value)
+
+
+def in_radians(path):
+    """The same file with its longitudes in another unit."""
+    with xr.open_dataset(path) as data:
+        data = data.load()
+    data["lon"] = np.radians(data["lon"])
+    data["lon"].attrs = {"standard_name": "longitude", "units": "radian"}
+    data.to_netcdf(path)
+
+
+def test_a_strongly_sheared_grid(tmp_path):
+    """Rows that shift by three cells each: corners stay exact, so that area and points inside are those of the slanted cells."""
+    j, i = np.meshgrid(np.arange(6), np.arange(8), indexing="ij")
+    lon, lat = -25.0 + 0.05 * (i + 3.0 * j), 0.02 + 0.05 * j  # near the equator a degree is as long both ways
+    target = read(write(tmp_path / "g.nc", lon, lat))
+    east, north = 0.025 * (np.array([-1, 1, 1, -1]) + 3.0 * np.array([-1, -1, 1, 1])), 0.025 * np.array([-1, -1, 1, 1])
+    np.testing.assert_allclose(target.corners[0][20] - lon.flat[20], east, atol=1e-12)
+    np.testing.assert_allclose(target.corners[1][20] - lat.flat[20], north, atol=1e-12)
+    geod = pyproj.Geod(ellps="WGS84")
+    for cell in (0, 20, 47):
+        area, _ = geod.polygon_area_perimeter(target.corners[0][cell], target.corners[1][cell])
+        assert target.area_m2[cell] == pytest.approx(area, rel=1e-4)
+    inside = cell_points(target, np.array([20]), 4, lambda *degrees: np.column_stack(degrees))[0]
+    slanted = shapely.Polygon(np.column_stack([c[20] for c in target.corners]))
+    assert len(inside) == 16
+    assert shapely.contains_xy(slanted, *inside.T).all()
+    for side, cells in (("south", np.s_[0]), ("north", np.s_[-1]), ("west", np.s_[:, 0]), ("east", np.s_[:, -1])):
+        edge = np.zeros((6, 8), dtype=bool)
+        edge[cells] = True
+        np.testing.assert_array_equal(target.side_cells[side].reshape(6, 8), edge, err_msg=side)
 
 
 def test_land_without_positions_does_not_spoil_its_neighbours(tmp_path):

@@ -201,6 +201,40 @@ def test_projected_cf_grid_keeps_the_order_of_its_rows(tmp_path, upward, epsg):
     np.testing.assert_array_equal(target.coordinates()["north"], y)
 
 
+def projected(path, units="m", scale=1.0, mapping=True):
+    """A polar stereographic grid of 2 × 3 cells of 25 km around no pole of its own."""
+    crs = pyproj.CRS.from_epsg(3995)
+    x, y = np.array([500_000.0, 525_000.0, 550_000.0]), np.array([-700_000.0, -675_000.0])
+    about = {"units": units} if units else {}
+    sea = {"standard_name": "sea_binary_mask"} | ({"grid_mapping": "m"} if mapping else {})
+    xr.Dataset(
+        {"sea": (("y", "x"), np.ones((2, 3), "i4"), sea)} | ({"m": ((), 0, crs.to_cf())} if mapping else {}),
+        coords={"y": ("y", y * scale, {"standard_name": "projection_y_coordinate", **about}),
+                "x": ("x", x * scale, {"standard_name": "projection_x_coordinate", **about})},
+    ).to_netcdf(path)  # fmt: skip
+    return path
+
+
+def test_projection_coordinates_in_kilometres(tmp_path):
+    metres, kilometres = read(projected(tmp_path / "m.nc")), read(projected(tmp_path / "km.nc", "km", 1e-3))
+    np.testing.assert_allclose(kilometres.x, metres.x, rtol=1e-12)
+    np.testing.assert_allclose(kilometres.area_m2, metres.area_m2, rtol=1e-9)
+    np.testing.assert_allclose(read(projected(tmp_path / "none.nc", "")).x, metres.x)
+
+
+@pytest.mark.parametrize(
+    ("changes", "words"),
+    [
+        ({"units": "furlong"}, '"x" is in "furlong", expected m or km'),
+        ({"mapping": False}, "projection coordinates without a grid mapping; give target.crs"),
+    ],
+)
+def test_projected_grids_that_do_not_say_enough(tmp_path, changes, words):
+    with pytest.raises(TargetError, match=words) as caught:
+        read(projected(tmp_path / "p.nc", **changes))
+    assert "\n" not in str(caught.value)
+
+
 def test_geotiff_of_an_upward_grid_is_not_upside_down(tmp_path):
     from texture.output import pixel_grid
 

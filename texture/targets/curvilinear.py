@@ -92,6 +92,8 @@ def _centres(
             f'{name}: "{lon_name}" has dimensions {lon.dims} and "{lat_name}" {lat.dims}; '
             "expected both one-dimensional, or both on the same two dimensions"
         )
+    for variable in (lon, lat):
+        _check_degrees(variable, name)
     longitude, latitude = mesh_lon.astype(np.float64), mesh_lat.astype(np.float64)
     if np.nanmax(np.abs(latitude)) > 90.0 or np.nanmax(np.abs(longitude)) > 360.0:
         raise TargetError(
@@ -99,6 +101,16 @@ def _centres(
             f"{np.nanmax(np.abs(latitude)):g}, expected degrees; name the variables under [target]"
         )
     return unwrapped(longitude), latitude, dims, (lon_name, lat_name)
+
+
+def _check_degrees(variable: xr.DataArray, name: str) -> None:
+    """Refuse units that are not degrees; a coordinate that says none is taken as degrees."""
+    units = str(variable.attrs.get("units", "")).strip()
+    if units and not units.lower().startswith("degree"):
+        raise TargetError(
+            f'{name}: "{variable.name}" is in "{units}", expected degrees_east and degrees_north; convert it, or name another '
+            "variable under [target]"
+        )
 
 
 def _coordinate(dataset: xr.Dataset, which: str, named: str | None, on: str | None, name: str) -> str:

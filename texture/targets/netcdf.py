@@ -7,6 +7,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 import pyproj
+from numpy.typing import NDArray
 
 from texture.errors import TargetError
 from texture.recipe import TargetSettings
@@ -22,6 +23,8 @@ if TYPE_CHECKING:
     import xarray as xr
 
 __all__ = ["read_netcdf"]
+
+METRES = {"m": 1.0, "metre": 1.0, "metres": 1.0, "meter": 1.0, "meters": 1.0, "km": 1000.0, "kilometre": 1000.0}
 
 
 def read_netcdf(settings: TargetSettings) -> Target:
@@ -69,14 +72,14 @@ def _projected_axes(dataset: xr.Dataset) -> tuple[str, str] | None:
 
 
 def _read_projected(dataset: xr.Dataset, axes: tuple[str, str], settings: TargetSettings, name: str) -> Target:
-    x, y = (np.asarray(dataset[a].to_numpy(), dtype=np.float64) for a in axes)
+    crs = _grid_mapping(dataset, settings, name)
+    x, y = (_axis(dataset[a], crs, name) for a in axes)
     for axis, values in zip(axes, (x, y), strict=True):
         steps = np.diff(values)
         if values.size < 2 or not np.allclose(steps, steps[0], rtol=1e-6, atol=0.0):  # a stored axis is exact to better
             raise TargetError(
                 f'{name}: "{axis}" is not evenly spaced; give longitude and latitude of the cells instead'
             )
-    crs = _grid_mapping(dataset, settings, name)
     dims = (str(dataset[axes[1]].dims[0]), str(dataset[axes[0]].dims[0]))
     notes: list[str] = []
     mask = find_mask(dataset, settings.mask, dims, name, notes)
@@ -88,6 +91,16 @@ def _read_projected(dataset: xr.Dataset, axes: tuple[str, str], settings: Target
         name, x, y, crs, settings, None if mask is None else mask.ravel(), dims,
         None if depth is None else depth.ravel(), land, tuple(notes),
     )  # fmt: skip
+
+
+def _axis(variable: xr.DataArray, crs: pyproj.CRS, name: str) -> NDArray[np.float64]:
+    """A projection coordinate in the units of its system; one that says no units is taken to be in them."""
+    values, units = np.asarray(variable.to_numpy(), dtype=np.float64), str(variable.attrs.get("units", "")).strip()
+    if not units:
+        return values
+    if units not in METRES:
+        raise TargetError(f'{name}: "{variable.name}" is in "{units}", expected m or km; set its attribute units')
+    return np.asarray(values * METRES[units] / crs.axis_info[0].unit_conversion_factor)
 
 
 def _grid_mapping(dataset: xr.Dataset, settings: TargetSettings, name: str) -> pyproj.CRS:

@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 from numpy.typing import NDArray
 
-from texture.targets.openings import COMPASS, Opening, Run, compass_names, sort_openings
+from texture.targets.openings import COMPASS, Opening, Run, sort_openings
 
 if TYPE_CHECKING:
     from texture.targets.target import Target
@@ -18,6 +18,8 @@ __all__ = ["Structured", "perimeter"]
 Ints = NDArray[np.int64]
 Floats = NDArray[np.float64]
 Bools = NDArray[np.bool_]
+TOWARD = np.array([(0.0, 1.0), (1.0, 0.0), (0.0, -1.0), (-1.0, 0.0)])
+"""East and north of each point of `COMPASS`."""
 
 
 @dataclass(frozen=True)
@@ -75,19 +77,23 @@ class Structured:
         return sort_openings(runs, target.inlet_width_m)
 
     def _edges_named(self, target: Target) -> list[tuple[Ints, str]]:
-        """Give the cells of the four edges, each with the compass point nearest to its direction from the middle."""
+        """Give the cells of the four edges, each with a compass point of its own.
+
+        Edges keep their order around the grid, and together they lie as near as can be to the directions of their points from
+        the middle: on a strongly sheared grid two edges may lie west of it, and only one of them is its west.
+        """
         h = self.halo
         index = np.arange(target.n_cells, dtype=np.int64).reshape(self.shape)
         inner = index[h : self.shape[0] - h, h : self.shape[1] - h]
         lon, lat = target.longitude, target.latitude
         middle_lon, middle_lat = np.nanmean(lon[inner]), np.nanmean(lat[inner])
         shrink = np.cos(np.radians(middle_lat))
-        named = []
-        for cells in (inner[0], inner[:, -1], inner[-1], inner[:, 0]):
-            east = (np.nanmean(lon[cells]) - middle_lon) * shrink
-            north = np.nanmean(lat[cells]) - middle_lat
-            named.append((cells, COMPASS[int(compass_names(np.array([east]), np.array([north]))[0])]))
-        return named
+        edges = (inner[0], inner[:, -1], inner[-1], inner[:, 0])
+        away = np.array([((np.nanmean(lon[e]) - middle_lon) * shrink, np.nanmean(lat[e]) - middle_lat) for e in edges])
+        away /= np.maximum(np.linalg.norm(away, axis=1, keepdims=True), np.finfo(np.float64).tiny)
+        orders = [[(first + way * k) % 4 for k in range(4)] for first in range(4) for way in (1, -1)]
+        best = max(orders, key=lambda order: float((away * TOWARD[order]).sum()))
+        return [(cells, COMPASS[point]) for cells, point in zip(edges, best, strict=True)]
 
 
 def perimeter(shape: tuple[int, int]) -> Ints:
