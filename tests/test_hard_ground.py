@@ -8,7 +8,8 @@ import xarray as xr
 from shapely.geometry import box
 
 from texture import build
-from texture.hard_ground import indicator_map
+from texture.hard_ground import hard_ground_probability, indicator_map
+from texture.pipeline import validate
 
 QUICK = {"validation": {"count": 3, "compare": []}, "composition": {"zeros": "replace"}}
 
@@ -64,3 +65,28 @@ def test_all_of_it_hard(small, tmp_path):
     result = build(small, output=tmp_path / "out", bed=bed, outputs={"geotiff": False}, rim=None, **QUICK)
     assert (result.bed.erodible_thickness == 0.0).all()
     assert result.bed.account.share_below_samples == 0.0
+
+
+def test_hard_ground_fades_across_a_soft_edge(small, tmp_path):
+    """Stations of a zone in the east found rock: across its soft edge the map of its own stations fades into that of all."""
+    table = small.parent / "grabs.csv"
+    lines = table.read_text().splitlines()
+    rock = [f"R{i},{508_000 + 150 * (i % 10):d},{4_900_500 + 1_000 * (i // 2):d},,,,rock; no sample" for i in range(10)]
+    table.write_text("\n".join([lines[0] + ",remarks", *(s + "," for s in lines[1:]), *rock]) + "\n")
+    east = box(507_000, 4_880_000, 530_000, 4_930_000)
+    geopandas.GeoDataFrame(geometry=[east], crs="EPSG:32626").to_file(tmp_path / "east.gpkg")
+    zone = {"name": "east", "polygons": str(tmp_path / "east.gpkg"), "soft_edge_m": 4_000.0}
+    found = validate(small, output=tmp_path / "out", zones=[zone], **QUICK)
+    p, zones, target = hard_ground_probability(found), found.mapper.zones, found.target
+    rows = np.concatenate([np.flatnonzero(found.stations.table["kind"] == "hard_ground"), found.observations.rows])
+    table = found.stations.table.iloc[rows]
+    here = found.plane.to_metres(table["longitude"].to_numpy(), table["latitude"].to_numpy())
+    hard = (table["kind"] == "hard_ground").to_numpy(dtype=float)
+    place = found.plane.to_metres(target.longitude, target.latitude)
+    around = indicator_map(here, hard)(place)
+    own = indicator_map(here[zones.heard(1, rows)], hard[zones.heard(1, rows)])(place)
+    inside, w = zones.cells.zone == 1, zones.cells.weight
+    assert ((w > 0.05) & (w < 0.95)).sum() > 40
+    np.testing.assert_allclose(p, np.where(inside, w * own + (1 - w) * around, around), atol=1e-9)
+    # Where the zone has nearly nothing to say yet, its map alone would be far off.
+    assert np.abs(own - around)[inside & (w < 0.5)].max() > 0.1

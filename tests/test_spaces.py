@@ -145,6 +145,7 @@ def test_water_that_is_not_connected_falls_back_to_the_plane_and_says_so(bay):
     result = build(bay, method={"distance": "in_water"}, validation={"count": 3, "compare": ["nearest"]})
     assert result.found.mapper.space.ground is None
     assert "the water is not connected" in repr(result)
+    assert "the water is not connected" in result.answer()
     assert "distance in the plane is taken instead" in (result.found.recipe.output / "report.html").read_text()
 
 

@@ -35,6 +35,7 @@ def average_held_out(
     learned : Learned
         The treatment they share.
     scored : bool array, shape (n,)
+        Stations that weights and spreads learn from.
     labels : int array, shape (n,)
         Folds.
 

@@ -241,7 +241,8 @@ def make_mapper(
         if zones is not None:
             sill = np.array([c.sill for c in learned.structure]) if chosen.has_variance else None
             own = zones.stations.zone[learned.observations.rows]
-            by_zone = zones.predictor(make, sill).fit(
+            noise, survey = np.array([[c.noise, c.survey] for c in learned.structure]).T
+            by_zone = zones.predictor(make, sill, noise, survey).fit(
                 seen.points, learned.values, learned.noise, learned.survey, own, seen.drift
             )
         if by_zone is not None and 0 in by_zone.fitted:

@@ -13,7 +13,7 @@ from texture.clock import Clock
 from texture.core_layers import check_cores
 from texture.cost import about, fit_seconds, validate_seconds
 from texture.early import check_early
-from texture.observations import Observations, observe
+from texture.observations import observe
 from texture.placing import place_stations
 from texture.progress import Progress, Silent
 from texture.recipe.file import read_recipe
@@ -55,6 +55,8 @@ class Plan:
         Points along each side of a cell, as if the range were twenty cells or more where the recipe says "auto".
     seconds : dict of str to float
         Of each stage; those of reading were measured just now.
+    folds : int
+        Folds; with `folds = "each"` as many as stations that inform the map.
     cases : CasePlan or None
         What `texture cases` would make with the recipe's sensitivity set.
     further : tuple of Target
@@ -66,6 +68,7 @@ class Plan:
     target: Target
     treatments: int
     per_side: int
+    folds: int
     seconds: dict[str, float] = field(default_factory=dict)
     cases: CasePlan | None = None
     further: tuple[Target, ...] = ()
@@ -93,7 +96,7 @@ class Plan:
             "cells": self.cells,
             "points_per_cell": self.per_side**2,
             "treatments": self.treatments,
-            "folds": self.recipe.validation.count,
+            "folds": self.folds,
             "memory_mb": round(self.memory_mb),
             "members": self.recipe.ensemble.members,
             "further_targets": {name: int(t.active.sum()) for name, t in self._named},
@@ -112,7 +115,7 @@ class Plan:
             f"  grid        {self.target.name}: {self.target.size_text}, {self.cells:,} of them water; {self.per_side**2} point"
             f"{'s' * (self.per_side > 1)} in each{' or more, by the fitted range' * (self.recipe.target.points_per_cell == 'auto')}",
             f"  work        {self.treatments} treatment{'s' * (self.treatments != 1)} of zeros and {_controls(self.recipe)} other methods in "
-            f"{self.recipe.validation.count} folds, then the map",
+            f"{self.folds:,} folds, then the map",
             f"  memory      about {memory:.1f} GB{fits}",
             f"  time        about {about(sum(self.seconds.values()))}: {stages}; may be off by a factor of three",
         ]
@@ -120,6 +123,11 @@ class Plan:
             lines.insert(
                 3 + i,
                 f"  {'' if i else 'further':<11} {name}: {grid.size_text}, {int(grid.active.sum()):,} of them water; the same fit",
+            )
+        if self.recipe.validation.folds == "each":
+            lines.append(
+                f'  look        folds = "each" fits everything anew for each of {self.folds:,} stations; "matched" needs '
+                f"{self.recipe.validation.count} fits"
             )
         if self.cases is not None:
             lines += [self.cases.lines()[0], "              by texture cases; its --list names them"]
@@ -165,23 +173,24 @@ def plan(
     observations = observe(stations, plain_treatment(recipe.composition).logratio, plane)
     count = len(candidates(recipe.composition, observations, has_variance=True))
     per_side = points_per_side(recipe.target.points_per_cell, 0.0, 1.0)
-    seconds = {**clock.seconds, **_seconds(recipe, observations, (target, *further), count, per_side)}
+    folds = observations.count if recipe.validation.folds == "each" else recipe.validation.count
+    fitting = {
+        "fit": fit_seconds(observations.count, count),
+        "validate": validate_seconds(observations.count, count, folds),
+    }
+    seconds = {**clock.seconds, **_seconds(recipe, fitting, (target, *further), per_side)}
     cases = None if recipe.sensitivity is None else plan_cases(recipe, target)
-    return Plan(recipe, stations, target, count, per_side, seconds, cases, further)
+    return Plan(recipe, stations, target, count, per_side, folds, seconds, cases, further)
 
 
-def _seconds(
-    recipe: Recipe, observations: Observations, targets: tuple[Target, ...], treatments: int, per_side: int
-) -> dict[str, float]:
+def _seconds(recipe: Recipe, fitting: dict[str, float], targets: tuple[Target, ...], per_side: int) -> dict[str, float]:
     target, cells = targets[0], float(sum(t.active.sum() for t in targets))
     write = WRITE_S + sum(t.n_cells for t in targets) / WRITE_CELLS_PER_S
-    folds = observations.count if recipe.validation.folds == "each" else recipe.validation.count
     if not recipe.method.name.startswith("kriging"):
         return {"estimate": cells * per_side**2 / CELLS_PER_S, "write": write}
     members, points = recipe.ensemble.members, cells * per_side**2
     return {
-        "fit": fit_seconds(observations.count, treatments),
-        "validate": validate_seconds(observations.count, treatments, folds),
+        **fitting,
         "estimate": points / CELLS_PER_S,
         **({"members": members * int(target.active.sum()) * per_side**2 / MEMBER_POINTS_PER_S} if members else {}),
         "write": write + members * target.n_cells / WRITE_CELLS_PER_S / 4.0,

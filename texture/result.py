@@ -246,6 +246,7 @@ class Result:
             f"{found.observations.count} stations; held-out RMSE {', '.join(errors)}; "
             f"{100 * self.beyond_share:.1f} % of the map lies beyond what the samples support; "
             f"{100 * self.bed.account.share_below_samples:.0f} % of the bed's mass lies below any sample."
+            + (f" Look: {found.mapper.space.fell_back}." if found.mapper.space.fell_back else "")
         )
 
     def summary(self) -> dict[str, Any]:
@@ -472,7 +473,7 @@ def quantity_lines(found: Validated) -> list[str]:
         beside = ", ".join(f"{m.method.replace('_', ' ')} {m.scores.get('rmse', np.nan):.3g}" for m in others)
         head = "quantities" if not lines else ""
         lines.append(
-            f"  {head:<11} {quantity.settings.name}: {int(own.scores['n'])} stations, held-out RMSE {own.scores.get('rmse', np.nan):.3g} "
+            f"  {head:<11} {quantity.settings.name}: {int(own.scores['n'])} stations, mapped by {own.method.replace('_', ' ')}, held-out RMSE {own.scores.get('rmse', np.nan):.3g} "
             f"{quantity.settings.units}" + (f" ({beside})" if beside else "")
         )
     return lines

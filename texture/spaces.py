@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 from texture.errors import RecipeError
 from texture.space import PLANE, Covariates, Field, Grid, Layer, Space
 from texture.space.fields import MISSING
-from texture.space.in_water import InWater
+from texture.space.in_water import Apart, InWater
 from texture.space.lattice import Lattice
 from texture.targets.covariates import read_covariate, target_depth
 from texture.targets.water import knows_land, water_on
@@ -148,7 +148,7 @@ class Spaces:
 
     @cached_property
     def in_water(self) -> Space:
-        """Ways through water laid out, or the plane with a note that says why not."""
+        """Ways through the largest water laid out, or the plane with a note that says why not."""
         why = ""
         if self.plane.dimensions != 2:
             why = "the map is too wide for a plane"
@@ -159,14 +159,38 @@ class Spaces:
             if wet.all():
                 why = "no land lies within the map"
             else:
-                found = InWater.lay_out(lattice, wet, np.concatenate([self.stations, self.cells]))
-                if isinstance(found, InWater):
-                    return Space(ground=found, notes=(str(found),))
-                why = (
-                    f"the water is not connected (on a lattice of {lattice.step_m:,.0f} m, {found.places:,} of {found.of:,} "
-                    "stations and cells lie off the largest part)"
-                )
-        return Space(notes=(f"distance through water: {why}; distance in the plane is taken instead",))
+                found = InWater.lay_out(lattice, wet, self.cells)
+                if isinstance(found, Apart):
+                    why = (
+                        f"the water is not connected (on a lattice of {lattice.step_m:,.0f} m, {found.places:,} of {found.of:,} "
+                        "cells lie off the largest part)"
+                    )
+                else:
+                    off, cells_off = found.apart(self.stations), int(found.apart(self.cells).sum())
+                    if (~off).sum() >= LEAST_STATIONS:
+                        told = apart_note(int(off.sum()), off.size, cells_off, len(self.cells))
+                        return Space(ground=found, notes=(str(found), told) if told else (str(found),))
+                    why = f"{int((~off).sum())} of {off.size:,} stations lie in the largest water"
+        why = f"distance through water: {why}; distance in the plane is taken instead"
+        return Space(notes=(why,), fell_back=why)
+
+
+def apart_note(stations: int, all_stations: int, cells: int, all_cells: int) -> str:
+    """Say how many stations and cells lie off the largest water and what is done; empty where none does.
+
+    >>> apart_note(0, 9, 3, 1200)
+    'distance through water: 3 of 1,200 cells lie off the largest water: its nearest place stands in, and they are flagged as wider fall-back'
+    """
+    told = []
+    if stations:
+        told.append(
+            f"{stations:,} of {all_stations:,} stations lie off the largest water and do not inform what is mapped through water"
+        )
+    if cells:
+        told.append(
+            f"{cells:,} of {all_cells:,} cells lie off the largest water: its nearest place stands in, and they are flagged as wider fall-back"
+        )
+    return f"distance through water: {'; '.join(told)}" if told else ""
 
 
 def missing_note(name: str, stations: int, all_stations: int, cells: int, all_cells: int) -> str:

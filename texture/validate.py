@@ -216,7 +216,7 @@ def validate_methods(
                     for (n, other), j in zip(runs, judged, strict=False)
                     if other is plain and n not in ("mean", "average")
                 }
-                columns, settings = average_held_out(members, plain, observations.measured, folds.labels)
+                columns, settings = average_held_out(members, plain, counts, folds.labels)
                 advance(folds.count)
             else:
                 columns, settings = bench.run(number, name, learned), {}

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from functools import cached_property
 from pathlib import Path
@@ -43,6 +43,25 @@ class Share:
     def take(self, index: Ints) -> Share:
         """Return the shares of some of the places."""
         return Share(self.zone[index], self.weight[index])
+
+    @classmethod
+    def nowhere(cls, count: int) -> Share:
+        """Of places in no zone."""
+        return cls(np.zeros(count, dtype=np.int8), np.ones(count, dtype=np.float32))
+
+    def layers(self) -> Iterator[tuple[int, Ints, Floats]]:
+        """Zones that speak, in which of the places, and with what weight; the weights of a place sum to one.
+
+        >>> [(n, i.tolist(), w.tolist()) for n, i, w in Share(np.array([0, 1]), np.array([1.0, 0.75])).layers()]
+        [(0, [0, 1], [1.0, 0.25]), (1, [1], [0.75])]
+        """
+        own = np.where(self.zone > 0, self.weight, 1.0).astype(np.float64)
+        around = np.flatnonzero((self.zone == 0) | (own < 1.0))
+        if around.size:
+            yield 0, around, np.where(self.zone[around] == 0, 1.0, 1.0 - own[around])
+        for number in np.unique(self.zone[self.zone > 0]).tolist():
+            inside = np.flatnonzero(self.zone == number)
+            yield number, inside, own[inside]
 
     def repeat(self, count: int) -> Share:
         """Repeat every place."""
@@ -113,9 +132,11 @@ class Zones:
         hard = np.array([False, *(r.hard for r in self.regions)])
         return np.asarray(~hard[zone] if number == 0 or self.regions[number - 1].kind == "given" else zone == number)
 
-    def predictor(self, make: Any, sill: Floats | None) -> ByZone:
+    def predictor(
+        self, make: Any, sill: Floats | None, noise: Floats | None = None, survey: Floats | None = None
+    ) -> ByZone:
         """Make an unfitted predictor for all zones together."""
-        return ByZone(make, self.regions, sill)
+        return ByZone(make, self.regions, sill, noise, survey)
 
     def lines(self, rows: Ints) -> list[str]:
         """Say what each zone is filled with, from the rows of the stations that are used."""

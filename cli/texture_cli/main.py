@@ -52,3 +52,7 @@ def _root(
 def main() -> None:
     """Entry point of the console script."""
     app()
+
+
+if __name__ == "__main__":
+    main()

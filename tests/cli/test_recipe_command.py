@@ -107,3 +107,17 @@ def test_plan_finds_mistakes_as_the_build_would(small):
 def test_every_command_is_listed_in_the_help():
     names = {info.name or info.callback.__name__ for info in app.registered_commands}
     assert names == {"draft", "recipe", "intake", "validate", "build", "cases", "inspect"}
+
+
+def test_plan_counts_a_fold_for_each_station(small):
+    from texture import planning
+
+    made = planning.plan(small, validation={"folds": "each"})
+    assert made.summary()["folds"] == 30
+    assert any('folds = "each" fits everything anew for each of 30 stations' in line for line in made.summary_lines())
+
+
+@pytest.mark.parametrize("module", ["texture_cli", "texture_cli.main"])
+def test_the_command_runs_as_a_module(module):
+    done = subprocess.run([sys.executable, "-m", module, "--version"], capture_output=True, text=True, check=True)
+    assert done.stdout.startswith("texture ")

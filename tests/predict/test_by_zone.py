@@ -59,3 +59,19 @@ def test_means_and_the_ladder_by_hand():
     found, _, rung = zoned.fit(points, values, noise, None, few).predict(np.zeros((2, 2)), np.array([1, 2]), np.ones(2))
     np.testing.assert_allclose(found[:, 0], [values[:2].mean(), values.mean()])
     assert rung.tolist() == [1, 1]
+
+
+def test_a_mean_knows_noise_and_surveys_by_hand():
+    """Two stations of one survey and one of another, values 0, 0, 3; the offset of a survey has variance 1, bed and noise 1 each.
+
+    The covariance is 2 on the diagonal and 1 more within a survey: weights of the three are as 1/4, 1/4, 1/3.
+    """
+    points, values = np.zeros((3, 2)), np.array([[0.0], [0.0], [3.0]])
+    zoned = ByZone(lambda: Kriging(ONE), [Region("mean", True)], SILL, np.array([1.0]), np.array([1.0]))
+    zoned.fit(points, values, np.zeros((3, 1)), np.array([0, 0, 1]), np.ones(3, dtype=np.int8))
+    mean, variance, _ = zoned.predict(np.zeros((1, 2)), np.ones(1, int), np.ones(1))
+    covariance = 2.0 * np.eye(3) + np.array([[1, 1, 0], [1, 1, 0], [0, 0, 1]])
+    weight = np.linalg.solve(covariance, np.ones(3))
+    np.testing.assert_allclose(mean, [[weight @ values[:, 0] / weight.sum()]])
+    np.testing.assert_allclose(mean, [[1.0 / (1 / 4 + 1 / 4 + 1 / 3)]])
+    np.testing.assert_allclose(variance, [[1.0 + 1.0 / weight.sum()]])

@@ -6,6 +6,7 @@ import numpy as np
 import pytest
 
 from texture.predict import Kriging
+from texture.space import Space
 from texture.space.in_water import Apart, InWater
 from texture.space.lattice import Lattice
 from texture.space.paths import STEPS, largest_water, water_graph, ways_from
@@ -122,3 +123,22 @@ def test_kriging_in_water_does_not_leak_through_a_spit():
         mean = kriging.predict(see(nodes[cells]))[0][:, 0]
         rmse.append(float(np.sqrt(np.mean((mean - value[cells]) ** 2))))
     assert rmse[1] < 0.6 * rmse[0], rmse
+
+
+def test_a_pond_beside_the_water_is_told_apart_and_takes_the_nearest_place():
+    """A bay with a pond in the land east of it: under a tenth of the cells, so that the bay is laid out as if it were not there."""
+    lattice = Lattice.covering(SQUARE, 250.0)
+    x, y = lattice.nodes.T
+    bay, pond = x < 7_000.0, (x > 9_000.0) & (y < 1_500.0)
+    found = InWater.lay_out(lattice, bay | pond, lattice.nodes[bay | pond])
+    assert isinstance(found, InWater)
+    np.testing.assert_array_equal(found.apart(lattice.nodes[bay | pond]), pond[bay | pond])
+    edge = x[bay].max()
+    np.testing.assert_allclose(
+        found.at(np.array([[9_500.0, 1_000.0]])), found.at(np.array([[edge, 1_000.0]])), atol=130.0
+    )
+    assert not found.apart(np.array([[edge + 700.0, 5_000.0]])).any()  # within three steps
+    most = InWater.lay_out(lattice, bay | pond, lattice.nodes[pond])
+    assert isinstance(most, Apart)
+    seen = Space(ground=found).at(np.array([[1_000.0, 1_000.0], [9_500.0, 1_000.0]]))
+    assert seen.missing.tolist() == [False, True]

@@ -45,6 +45,8 @@ class ByZone:
         Zone 1, 2, …; zone 0 is the map around them, which hears all stations but those of zones with a hard edge.
     sill : float array, shape (v,), or None
         Variance of the bed in each column, for means; None for methods without a variance.
+    noise, survey : float array, shape (v,), optional
+        Noise variance that all stations have beside their own, and variance of the offset that those of a survey share; for means.
 
     Examples
     --------
@@ -57,8 +59,16 @@ class ByZone:
     [[1.0], [5.0]]
     """
 
-    def __init__(self, make: Callable[[], Any], regions: Sequence[Region], sill: Array | None) -> None:
+    def __init__(
+        self,
+        make: Callable[[], Any],
+        regions: Sequence[Region],
+        sill: Array | None,
+        noise: Array | None = None,
+        survey: Array | None = None,
+    ) -> None:
         self.make, self.regions, self.sill = make, tuple(regions), sill
+        self.noise, self.survey = noise, survey
         self.fitted: dict[int, tuple[Ints, Any]] = {}
         self.means: dict[int, tuple[Array, Array]] = {}
         self.columns = 0
@@ -92,17 +102,24 @@ class ByZone:
                 )
                 self.fitted[number] = (index, predictor)
             elif kind != "given":
-                self.means[number] = self._mean(values, noise_variance, index)
+                self.means[number] = self._mean(values, noise_variance, survey, index)
         return self
 
-    def _mean(self, values: Array, noise: Array, index: Ints) -> tuple[Array, Array]:
-        """Mean of each column over some stations, over all where none of these knows it, and its variance at a point."""
+    def _mean(self, values: Array, noise: Array, survey: Ints | None, index: Ints) -> tuple[Array, Array]:
+        """Mean of each column over some stations, over all where none of these knows it, and its variance at a point.
+
+        Generalised least squares with the offset of each survey (Sherman & Morrison 1950): a survey of many stations counts
+        little more than the offset that they share lets it.
+        """
         mean, variance = np.empty((2, values.shape[1]))
         for v in range(values.shape[1]):
             own = index[np.isfinite(values[index, v])]
             own = own if own.size else np.flatnonzero(np.isfinite(values[:, v]))
             sill = 1.0 if self.sill is None else max(float(self.sill[v]), 1e-12)
-            weight = 1.0 / (sill + noise[own, v])
+            weight = 1.0 / (sill + noise[own, v] + (0.0 if self.noise is None else self.noise[v]))
+            if self.survey is not None and survey is not None:
+                _, group = np.unique(survey[own], return_inverse=True)
+                weight /= 1.0 + self.survey[v] * np.bincount(group, weight)[group]
             mean[v] = (weight * values[own, v]).sum() / weight.sum()
             variance[v] = np.nan if self.sill is None else sill + 1.0 / weight.sum()
         return mean, variance

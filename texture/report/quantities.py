@@ -38,6 +38,8 @@ def quantity_picture(result: Result) -> Picture | None:
 def quantity_table(result: Result) -> Table:
     """Held-out scores of every quantity and method, in its own unit."""
     rows = []
+    mapped = {m.settings.name.replace("_", " "): m.mapper.name.replace("_", " ") for m in result.found.quantities}
+    told = ", ".join(f"{name} by {method}" for name, method in mapped.items())
     for model in result.found.quantities:
         structure = model.mapper.structure[0]
         for method in model.methods:
@@ -50,7 +52,7 @@ def quantity_table(result: Result) -> Table:
                  number(structure.range_m / 1000, 1) if of_map and structure.structures else ""]
             )  # fmt: skip
     return Table(
-        "Further numbers, held out on the same folds and scored in their own unit. Range: of the map's own fit.",
+        f"Further numbers, held out on the same folds and scored in their own unit. Mapped: {told}. Range: of the map's own fit.",
         ["number", "unit", "method", "stations", "RMSE", "mean error", "R²", "90 % cover", "range, km"],
         rows,
         numeric=[3, 4, 5, 6, 7, 8],

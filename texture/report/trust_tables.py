@@ -28,10 +28,13 @@ def standings_table(result: Result) -> Table:
              f"{number(s.low, 4)} to {number(s.high, 4)}", *(number(v, 2) for v in scores)]
         )  # fmt: skip
     told = cannot_be_told_apart(validation.standings)
+    own, plain = validation.choice.chosen.treatment.label, validation.plain.treatment.label
+    zeros = f"{validation.choice.chosen.held_out.method.replace('_', ' ').capitalize()} stands here with the treatment of zeros that was chosen ({own}), the others with {plain}. "
     searched = "The map takes the simplest within one standard error of the best. " if validation.searched else ""
     return Table(
         "Energy score of the composition (lower is better; Gneiting & Raftery 2007), how far above the best, and its standard error and 90 % "
         "interval from resampled blocks of stations. Methods without a variance take part with the spread of their held-out errors. "
+        + (zeros if own != plain else "")
         + searched
         + (told[:1].upper() + told[1:] + "." if told else ""),
         ["method", "energy score", "above the best", "standard error", "90 % interval", "Aitchison distance", "class agreement", "kappa"],

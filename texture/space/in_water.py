@@ -1,5 +1,7 @@
 """Distance through water as plain distance: shortest ways around land, laid out flat again in a few dimensions.
 
+Only the largest connected water is laid out; a pond beside it has no way to it and is told apart.
+
 A covariance that is valid for plain distance is not valid for path length; laid out by multidimensional scaling it is valid again,
 and nearly the same distance (Løland & Høst 2003, "Spatial covariance modelling in a complex coastal domain by
 multidimensional scaling", Environmetrics 14).
@@ -29,6 +31,7 @@ CHECKS = 24  # further nodes whose ways are compared with the layout; they shape
 SHORT = 0.15  # of the longest way: pairs nearer than this are short, and kriging lives on them
 MOST_DIMENSIONS = 4
 LEAST_GAIN = 0.9  # another dimension is taken if it lowers the stress of short pairs to this part or below
+LEAST_SHARE = 0.9  # of the cells, that have to lie in the largest water
 NEAR = 3.0  # steps; a place further than that from the water cannot be said to lie in it
 
 
@@ -91,7 +94,7 @@ class InWater:
         wet : bool array, shape (count,)
             Nodes that are water.
         places : float array, shape (m, 2)
-            Stations and cells; all must lie in the largest connected water or within three steps of it.
+            Cells; nine in ten must lie in the largest connected water or within three steps of it.
 
         Returns
         -------
@@ -105,7 +108,7 @@ class InWater:
         mine = np.flatnonzero(water)
         tree = cKDTree(nodes[mine])
         off = tree.query(places)[0] > NEAR * lattice.step_m
-        if off.any():
+        if off.mean() > 1.0 - LEAST_SHARE:
             return Apart(int(off.sum()), len(places))
         ways, landmarks = _landmarks(graph, mine, min(LANDMARKS, mine.size))
         longest = float(ways[:, mine].max())
@@ -144,11 +147,15 @@ class InWater:
         """Stress of short pairs with the dimensions taken."""
         return self.stress_by_dimension[self.dimensions - 1]
 
+    def apart(self, points: Floats) -> Bools:
+        """Which points (m, 2) of the plane lie more than three steps off the water that is laid out."""
+        return np.asarray(self._tree.query(points)[0] > NEAR * self.lattice.step_m)
+
     def at(self, points: Floats) -> Floats:
         """Coordinates of points (m, 2) of the plane, shape (m, k).
 
         Between water nodes by interpolation; a point without a water node around it is put at the nearest one, and the way
-        there is added to all of its distances.
+        there is added to all of its distances, but for points that are `apart`: those take the nearest place as it is.
         """
         found = np.empty((len(points), self.dimensions))
         state = np.zeros(len(points), dtype=np.int8)
@@ -158,6 +165,7 @@ class InWater:
         if beside.size:
             away, nearest = self._tree.query(points[beside])
             mine = np.flatnonzero(self._water)[nearest]
+            away[away > NEAR * self.lattice.step_m] = 0.0
             found[beside] = self._scaling.place(self._ways[:, mine].T + away[:, None])
         return found
 

@@ -27,7 +27,7 @@ class Seen:
     drift : float array, shape (m, p), or None
         Drift columns, finite.
     missing : bool array, shape (m,)
-        True where a covariate had no value near enough and its nearest stands in.
+        True where a covariate had no value near enough, or a place no way through water, and the nearest stands in.
     """
 
     points: Floats
@@ -40,6 +40,10 @@ class Ground(Protocol):
 
     def at(self, points: Floats) -> Floats:
         """Coordinates of points (m, 2) of the plane, shape (m, k)."""
+        ...
+
+    def apart(self, points: Floats) -> Bools:
+        """Which of the points have no place of their own in it; `at` gives them the nearest."""
         ...
 
 
@@ -59,6 +63,8 @@ class Space:
         Covariates among the drift.
     notes : tuple of str
         What a reader should know of it.
+    fell_back : str
+        Why the plane stands in for what the recipe asked for; empty where it does not.
     """
 
     ground: Ground | None = None
@@ -66,6 +72,7 @@ class Space:
     drift: tuple[str, ...] = ()
     columns: Covariates | None = None
     notes: tuple[str, ...] = ()
+    fell_back: str = ""
 
     @property
     def axis_names(self) -> tuple[str, ...]:
@@ -84,7 +91,7 @@ class Space:
     def at(self, points: Floats) -> Seen:
         """Places (m, d) of the working plane as the method sees them."""
         coordinates = points if self.ground is None else self.ground.at(points)
-        missing = np.zeros(len(points), dtype=bool)
+        missing = np.zeros(len(points), dtype=bool) if self.ground is None else self.ground.apart(points)
         if self.axes is not None:
             values, guessed = self.axes.at(points)
             coordinates, missing = np.column_stack([coordinates, values]), missing | guessed

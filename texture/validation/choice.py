@@ -1,4 +1,8 @@
-"""Which method to trust: lowest energy score, the simplest within one standard error of it, and who cannot be told apart."""
+"""Which method to trust: lowest energy score, the simplest within one standard error of it, and who cannot be told apart.
+
+The method that treatments of zeros were compared by stands here with the one that was taken; all others have zeros replaced at the
+laboratory's limit. The comparison is of methods as they can be had, not of methods with all else equal.
+"""
 
 from __future__ import annotations
 
