@@ -65,9 +65,32 @@ def test_what_the_grid_can_give_is_proposed_and_can_be_switched_on(table, demo_r
     text = draft([table], table.parent / "new.toml", grid=demo_recipe.parent / "model_grid.nc")
     plain = read_recipe(table.parent / "new.toml")
     assert not plain.method.covariates
-    begin, end = text.index("# [[method.covariates]]"), text.index("# A coarse rim")
+    begin, end = text.index("# [[method.covariates]]"), text.index("# Places with a bed")
     proposal = text[begin:end].replace("# ", "", 1).replace("\n# ", "\n")
     (table.parent / "new.toml").write_text(text[:begin] + proposal + text[end:])
     recipe = read_recipe(table.parent / "new.toml")
     assert [c.name for c in recipe.method.covariates] == ["depth", "shore_distance"]
     assert recipe.validation.compare[-2:] == ("kriging_with_covariates", "kriging_in_water")
+
+
+def test_hard_ground_and_cores_are_proposed_where_rows_tell_of_them(table):
+    import tomllib
+
+    plain = draft([table], table.parent / "plain.toml")
+    assert "hard_ground" not in plain
+    assert "cores" not in plain
+    head, *rows = table.read_text().splitlines()
+    more = [f"{row},0,10," for row in rows]
+    more += ["R1,-26.4,44.2,,,,,,rock", "S1,-26.49,44.113,20,70,10,10,30,", "S1,-26.49,44.113,20,70,10,30,55,"]
+    table.write_text("\n".join([f"{head},top (cm),bottom (cm),remarks", *more]) + "\n")
+    text = draft([table], table.parent / "new.toml")
+    assert "# 1 row found hard ground" in text
+    assert "# 2 intervals of cores lie below the surface, down to 0.55 m" in text
+    begin, end = text.index("# [bed]"), text.index("# Places with a bed")
+    switched = "\n".join(line.removeprefix("# ") for line in text[begin:end].splitlines() if "lie below" not in line)
+    bed = tomllib.loads(text[:begin] + switched)["bed"]
+    assert bed["hard_ground_threshold"] == 0.5
+    assert bed["layers"] == [{"thickness_m": 0.1}, {"thickness_m": 0.45, "fill": "cores"}]
+    begin, end = text.index("# [[zones]]"), text.index("# A coarse rim")
+    zones = tomllib.loads("\n".join(line.removeprefix("# ") for line in text[begin:end].splitlines()))["zones"]
+    assert [z["name"] for z in zones] == ["channel"]

@@ -29,6 +29,13 @@ RIM = """
 # width_cells = 6
 # classes = { sand = 1.0 }
 """
+ZONES = """
+# Places with a bed of their own, such as a dredged channel or a river that nobody sampled.
+# [[zones]]
+# name = "channel"
+# polygons = "channel.geojson"   # or variable = "zone", values = [2] on the grid
+# kind = "stations"              # its own stations alone; "mean"; or "given", with composition = { sand = 1.0 }
+"""
 COVARIATES = """
 # Mud often follows depth and shore. Whether they help here, held-out error says: take the # away, run texture validate, and look at
 # kriging_with_covariates beside kriging; to map with them, set distance = "with_covariates" under [method].
@@ -92,7 +99,7 @@ def draft(
     extent = target.bounds if target is not None else None
     depth_at = _depth_at(target) if target is not None else None
     text = draft_recipe(files, recipe_path.absolute().parent, grid, extent, depth_at=depth_at)
-    text += _grid_lines(target, problem) + _covariate_lines(target) + RIM + CLASSES
+    text += _grid_lines(target, problem) + _covariate_lines(target) + ZONES + RIM + CLASSES
     aside = recipe_path.with_name(f".{recipe_path.name}.new")
     aside.write_text(text, encoding="utf-8")
     aside.replace(recipe_path)

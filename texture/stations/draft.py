@@ -13,7 +13,7 @@ from texture.errors import RecipeError, SampleError
 from texture.recipe import Intake, Samples
 from texture.stations.audit import AuditLog
 from texture.stations.certificates import CERTIFICATES
-from texture.stations.draft_lines import column_lines, target_lines, toml_path, toml_text
+from texture.stations.draft_lines import bed_lines, column_lines, target_lines, toml_path, toml_text
 from texture.stations.files import is_blank, read_sheets
 from texture.stations.plausible import (
     DepthAt,
@@ -51,6 +51,7 @@ class _Look:
     extent: Extent | None = None
     places: tuple[npt.NDArray[np.float64], ...] = ()
     rows: npt.NDArray[np.int64] | None = None
+    deepest_m: tuple[float, ...] = ()
 
     @property
     def metres(self) -> bool:
@@ -112,6 +113,9 @@ def draft_recipe(
     for look in looks:
         lines += _block_lines(look, Path(base), none)
     lines += target_lines(_together([look.extent for look in looks if look.extent]), Path(base), grid)
+    lines += bed_lines(
+        sum(look.counts.get("evidence", 0) for look in looks), [d for look in looks for d in look.deepest_m]
+    )
     return "\n".join(lines) + "\n"
 
 
@@ -151,6 +155,8 @@ def _look(file: Path, crs: str | None = None, sheet: str | None = None) -> _Look
             'then say degrees = "minutes"'
         )
     look.extent = extent_of(lon, lat)
+    core = frame["deep"].to_numpy(dtype=bool) & np.isfinite(frame[["mud", "bottom_m"]].to_numpy(np.float64)).all(axis=1)
+    look.deepest_m = tuple(frame["bottom_m"].to_numpy(np.float64)[core].tolist())
     look.places, look.rows = (lon, lat, frame["depth_m"].to_numpy()), frame["row"].to_numpy()
     return look
 

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 import os
+from collections.abc import Sequence
 from pathlib import Path
 
 import numpy as np
@@ -17,7 +18,7 @@ from texture.stations.sources import Source
 from texture.stations.tables import Table
 from texture.stations.where import shown
 
-__all__ = ["column_lines", "target_lines", "toml_path", "toml_text"]
+__all__ = ["bed_lines", "column_lines", "target_lines", "toml_path", "toml_text"]
 
 _ORDER = {role: i for i, role in enumerate(COLUMN_ROLES)}
 
@@ -87,6 +88,38 @@ def target_lines(extent: Extent | None, base: Path, grid: str | Path | None) -> 
         f"cell_size = {size:.0f}.0",
         f'crs = "EPSG:{code}"',
     ]
+
+
+def bed_lines(rocky: int, deepest_m: Sequence[float]) -> list[str]:
+    """What the rows tell of hard ground and of the bed below, as comments to switch on; nothing where they tell nothing.
+
+    Parameters
+    ----------
+    rocky : int
+        Rows that found hard ground.
+    deepest_m : sequence of float
+        Lower end of each interval of a core that begins below the surface and has fractions, metres below the bed.
+    """
+    lines: list[str] = []
+    if rocky:
+        lines += [
+            "",
+            f"# {rocky} row{'s' * (rocky != 1)} found hard ground: it is mapped as a probability, and from the threshold on nothing can erode.",
+            "# [bed]",
+            "# hard_ground_threshold = 0.5",
+            '# hard_ground = "rock.geojson"  # polygons of rock, if there are any',
+        ]
+    if len(deepest_m):
+        lines += [
+            "",
+            f"# {len(deepest_m)} interval{'s' * (len(deepest_m) != 1)} of cores lie below the surface, down to {max(deepest_m):g} m: a layer can be filled from them.",
+            "# [[bed.layers]]",
+            "# thickness_m = 0.1              # what the samples speak of",
+            "# [[bed.layers]]",
+            f"# thickness_m = {max(max(deepest_m) - 0.1, 0.1):.3g}",
+            '# fill = "cores"',
+        ]
+    return lines
 
 
 def _metric_bounds(extent: Extent, code: int) -> tuple[tuple[float, ...], float]:
