@@ -127,3 +127,11 @@ def test_a_plan_counts_them(small):
     assert both.memory_mb > alone.memory_mb
     assert any("further     inner: 18 × 18 cells" in line for line in both.summary_lines())
     assert both.summary()["further_targets"] == {"inner": 324}
+
+
+def test_a_names_file_of_its_own(small):
+    (small.parent / "names.toml").write_text('[dimensions]\ny = "north"\nx = "east"\n')
+    assert plan(small, further_targets=[{**INNER, "names": "names.toml"}]).further
+    (small.parent / "names.toml").write_text('[dimensions]\nrow = "north"\n')
+    with pytest.raises(RecipeError, match=r'further_targets "inner": names.toml: dimensions: unknown "row"'):
+        plan(small, further_targets=[{**INNER, "names": "names.toml"}])

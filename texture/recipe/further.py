@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from pathlib import Path
 from typing import Annotated
 
 from pydantic import Field, model_validator
@@ -22,6 +23,9 @@ class FurtherTarget(TargetSettings):
         description="folder of its files in the output folder"
     )
     rim: Rim | None = Field(None, description="coarse cells along its own open boundary; none if absent")
+    names: Path | None = Field(
+        None, description="names file of its own, where its dimensions differ; that of `outputs` if absent"
+    )
 
     @model_validator(mode="after")
     def _name_is_free(self) -> FurtherTarget:
@@ -33,4 +37,4 @@ class FurtherTarget(TargetSettings):
     def target(self) -> TargetSettings:
         """Its settings as those of a `[target]`."""
         own = {name: getattr(self, name) for name in TargetSettings.model_fields}
-        return TargetSettings.model_construct(_fields_set=self.model_fields_set - {"name", "rim"}, **own)
+        return TargetSettings.model_construct(_fields_set=self.model_fields_set - {"name", "rim", "names"}, **own)

@@ -167,7 +167,9 @@ def further_recipes(recipe: Recipe) -> tuple[Recipe, ...]:
                 "rim": further.rim,
                 "further_targets": (),
                 "mobility": (),
-                "outputs": recipe.outputs.model_copy(update={"into": None, "into_record": None}),
+                "outputs": recipe.outputs.model_copy(
+                    update={"into": None, "into_record": None, "names": further.names or recipe.outputs.names}
+                ),
             }
         )
         for further in recipe.further_targets
