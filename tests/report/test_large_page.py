@@ -39,13 +39,20 @@ def large(plain):
         evidence=plain.estimate.evidence[index],
         texture_class=plain.estimate.texture_class[index],
         class_probability=plain.estimate.class_probability[index],
+        outside=plain.estimate.outside[index],
+        sample_distance_m=plain.estimate.sample_distance_m[index],
+        expected_error=plain.estimate.expected_error[index],
     )
     bed = plain.bed
     of_cells = {
         name: getattr(bed, name)[..., :1, index] for name in ("class_fraction", "erodible_thickness", "evidence")
     }
     bed = replace(
-        bed, **of_cells, class_critical_stress=bed.class_critical_stress[:, :1], rim_weight=np.zeros(target.n_cells)
+        bed,
+        **of_cells,
+        class_critical_stress=bed.class_critical_stress[:, :1],
+        rim_weight=np.zeros(target.n_cells),
+        hard_ground_probability=bed.hard_ground_probability[index],
     )
     found = with_many_stations(plain.found, rng)
     return replace(plain, found=replace(found, target=target), estimate=estimate, bed=bed, moved=(), inventory=())

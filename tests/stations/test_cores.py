@@ -46,4 +46,4 @@ def test_deeper_intervals_are_written_where_there_are_any(read, tmp_path):
     back = pd.read_csv(tmp_path / "deeper.csv")
     assert back["bottom_m"].tolist() == [0.15, 0.35, 0.36]
     (tmp_path / "plain").mkdir()
-    assert len(write_tables(read([HEADER, *ROWS]), tmp_path / "plain")) == 3
+    assert "deeper.csv" not in {p.name for p in write_tables(read([HEADER, *ROWS]), tmp_path / "plain")}

@@ -45,8 +45,8 @@ class Forest:
     --------
     >>> x = np.linspace(0.0, 10.0, 200)[:, None]
     >>> mean, variance = Forest(trees=50).fit(x, np.where(x[:, 0] < 5.0, 1.0, 3.0)).predict([[2.0], [8.0]])
-    >>> mean.round(2).tolist(), variance.round(2).tolist()
-    ([[1.0], [3.0]], [[0.0], [0.0]])
+    >>> mean.round(1).tolist(), (variance < 0.05).tolist()
+    ([[1.0], [3.0]], [[True], [True]])
     """
 
     def __init__(self, trees: int = 200, least_in_leaf: int = 5, seed: int = 0) -> None:

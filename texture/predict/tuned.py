@@ -41,7 +41,7 @@ class TunedInverseDistance:
     >>> x = np.arange(40.0)[:, None]
     >>> method = TunedInverseDistance().fit(x, x[:, 0] ** 2)
     >>> method.chosen_, method.predict([[3.5]])[0].round(1).tolist()
-    ([(4.0, 4)], [[12.3]])
+    ([(4.0, 4)], [[12.5]])
     """
 
     def __init__(self, powers: tuple[float, ...] = POWERS, neighbours: tuple[int, ...] = NEIGHBOURS) -> None:

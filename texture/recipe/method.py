@@ -86,7 +86,12 @@ class Method(Settings):
         own = next((d for d, n in KRIGING_BY.items() if n == name), "plane")
         if distance in KRIGING_BY and distance != own:
             raise ValueError(f'distance = "{distance}" acts with name = "{KRIGING_BY[distance]}", found "{name}"')
-        return {**given, "name": name, "distance": own} if distance in (None, *KRIGING_BY) else given
+        if distance not in (None, *KRIGING_BY):
+            return given
+        # A key that was not given and keeps its default stays a default that nobody chose.
+        plain = {"name": "kriging", "distance": "plane"}
+        implied = {"name": name, "distance": own}
+        return {**given, **{key: v for key, v in implied.items() if key in given or v != plain[key]}}
 
     @model_validator(mode="after")
     def _agrees(self) -> Method:
