@@ -454,17 +454,6 @@ def zeros_lines(found: Validated) -> list[str]:
     return [line + (f", of {len(tried)} treatments by held-out error" if len(tried) > 1 else "")]
 
 
-def error_lines(found: Validated) -> list[str]:
-    """Say the held-out error of each method."""
-    lines: list[str] = []
-    parts = found.recipe.composition.parts
-    for method in found.validation.methods:
-        head = "error" if not lines else ""
-        scores = ", ".join(f"{part} {method.score(part, 'rmse'):.3f}" for part in parts)
-        lines.append(f"  {head:<11} held-out RMSE, {method.method.replace('_', ' ')}: {scores}")
-    return lines
-
-
 def quantity_lines(found: Validated) -> list[str]:
     """Say the held-out error of each further number, beside the methods it is compared with."""
     lines: list[str] = []

@@ -80,12 +80,6 @@ def padded(count: int) -> int:
 
 
 @compiled
-def column_width(columns: int) -> int:
-    """Columns rounded up to two vectors of eight: forward substitution on fewer takes longer."""
-    return (columns + 15) // 16 * 16
-
-
-@compiled
 def make_factors(models: Models, capacity: int) -> Factors:
     """Room for the factors of neighbourhoods of at most `capacity` stations."""
     v, q = models.columns.shape[0], models.columns.shape[2]
